@@ -1,0 +1,41 @@
+"""What may go wrong around a run, named for the fact; no door's vocabulary."""
+
+from service.runs.run import Run
+
+
+class RunUnknown(Exception):  # noqa: N818 - named for the fact, like every error of this house
+    """No such run for this tenant."""
+
+
+class ArtefactMissing(Exception):  # noqa: N818 - as above
+    """The run is known, but in its state it has no such artefact."""
+
+    def __init__(self, run: Run, artefact: str) -> None:
+        """Remember which ``run`` was asked for which ``artefact``."""
+        super().__init__(f"run {run.id} is {run.state} and has no {artefact}")
+        self.run = run
+        self.artefact = artefact
+
+
+class NumberTaken(Exception):  # noqa: N818 - as above
+    """Two submissions drew the same run number; only a broken lock can cause it."""
+
+
+class StoreUnavailable(Exception):  # noqa: N818 - as above
+    """The database cannot be reached, or not in time; the same call may work later."""
+
+
+class ChildTimeout(Exception):  # noqa: N818 - as above
+    """A child was ended at its time limit."""
+
+
+class ChildMemory(Exception):  # noqa: N818 - as above
+    """A child was ended, or gave up, at its memory limit."""
+
+
+class ChildCrashed(Exception):  # noqa: N818 - as above
+    """A child died by itself, or answered with something that is no answer."""
+
+
+class ChildReleased(Exception):  # noqa: N818 - as above
+    """A child was ended on purpose: the service drains, or the claim is gone."""

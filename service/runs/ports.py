@@ -1,0 +1,313 @@
+"""The seams of the house: what the use cases need from outside, and what every door receives.
+
+The other side of each seam lives elsewhere: ``Store`` in ``service/store``, ``Planner``,
+``Dispatcher`` and the intake child in ``service/engine``. Tests put fakes in their place. What
+travels over the seams is in ``runs/run.py`` and ``runs/faults.py``, and may be imported from here.
+"""
+
+from collections.abc import Collection, Mapping, Sequence
+from contextlib import AbstractContextManager
+from dataclasses import dataclass
+from datetime import date, datetime
+from pathlib import Path
+from typing import TYPE_CHECKING, Protocol
+
+from service.runs.faults import (
+    ArtefactMissing,
+    ChildCrashed,
+    ChildMemory,
+    ChildReleased,
+    ChildTimeout,
+    NumberTaken,
+    RunUnknown,
+    StoreUnavailable,
+)
+from service.runs.run import (
+    LOCAL,
+    Actor,
+    Claim,
+    Ending,
+    FailureReason,
+    Finish,
+    IndexRows,
+    Run,
+    RunId,
+    RunState,
+    Staged,
+    StoredEvent,
+    Submission,
+    Token,
+    engine_of,
+)
+
+if TYPE_CHECKING:
+    # For types alone: the planning modules load the solver, which belongs in a child process.
+    from service.network.intake import IntakeReport
+    from service.network.options import Options
+    from service.planning.task import Outcome
+
+__all__ = [
+    "LOCAL",
+    "Actor",
+    "Application",
+    "ArtefactMissing",
+    "BytesCall",
+    "ChildCrashed",
+    "ChildMemory",
+    "ChildReleased",
+    "ChildTimeout",
+    "Claim",
+    "Clock",
+    "Dispatcher",
+    "Ending",
+    "EvidenceCall",
+    "FailureReason",
+    "Finish",
+    "HistoryCall",
+    "IndexRows",
+    "IntakeCall",
+    "NetworkCall",
+    "NumberTaken",
+    "Planner",
+    "ReadinessCall",
+    "Run",
+    "RunCall",
+    "RunId",
+    "RunState",
+    "RunUnknown",
+    "Staged",
+    "Store",
+    "StoreUnavailable",
+    "StoredEvent",
+    "Submission",
+    "SubmitCall",
+    "Token",
+    "Transaction",
+    "engine_of",
+]
+
+
+class Clock(Protocol):
+    """Where the time comes from, so that tests can set it."""
+
+    def now(self) -> datetime:
+        """Return the present moment in UTC."""
+        ...
+
+
+class Dispatcher(Protocol):
+    """Wakes whoever executes runs."""
+
+    def notify(self, run_id: RunId) -> None:
+        """Say that ``run_id`` waits; losing or doubling the message changes no result."""
+        ...
+
+
+class Planner(Protocol):
+    """Runs ``planning/task.py`` in a supervised child."""
+
+    def plan(self, claim: Claim, source: Path, options: "Options", target: Path) -> "Outcome":
+        """Plan the network in folder ``source``; leave the artefacts in folder ``target``.
+
+        Raises
+        ------
+        ChildTimeout
+            When ``claim.seconds_left`` are over; the child is dead by then.
+        ChildMemory, ChildCrashed, ChildReleased
+            As named.
+        """
+        ...
+
+
+class Transaction(Protocol):
+    """One unit of work: all of it is on disk when the block ends, or none of it."""
+
+    @property
+    def now(self) -> datetime:
+        """The moment of this transaction: the database's on PostgreSQL, else the clock's."""
+        ...
+
+    def next_number(self, tenant: str, plan_for: date) -> int:
+        """Draw the next run number of ``plan_for``, gapless: a rolled-back one is drawn again."""
+        ...
+
+    def add_blob(self, staged: Staged) -> None:
+        """Write what is not yet written of ``staged``."""
+        ...
+
+    def add_run(self, submission: Submission) -> None:
+        """Insert a waiting run."""
+        ...
+
+    def run(self, run_id: RunId, tenant: str) -> Run:
+        """Return the run, or raise ``RunUnknown``."""
+        ...
+
+    def submission(self, run_id: RunId, tenant: str) -> Submission:
+        """Return what was submitted, or raise ``RunUnknown``."""
+        ...
+
+    def claim(self, run_id: RunId, *, token: Token, lease_seconds: float) -> Claim | None:
+        """Take the run for ``token`` if it waits, or if its holder's lease is over."""
+        ...
+
+    def finish(self, claim: Claim, ending: Ending) -> Finish:
+        """Make the run final, if ``claim`` still holds it."""
+        ...
+
+    def give_back(self, claim: Claim, *, crashed: bool) -> int | None:
+        """Let the run wait again; return its crashes, or None when the claim is gone."""
+        ...
+
+    def fail_waiting(self, run_id: RunId, tenant: str, ending: Ending) -> bool:
+        """Make a waiting run final without planning it; False when it no longer waits."""
+        ...
+
+    def renew(self, tokens: Collection[Token], *, lease_seconds: float) -> frozenset[Token]:
+        """Renew the leases of ``tokens``; return those that still hold a run."""
+        ...
+
+    def waiting(self, *, limit: int) -> Sequence[RunId]:
+        """Return runs that wait and whose deadline is ahead, oldest first."""
+        ...
+
+    def overdue(self, *, limit: int) -> Sequence[tuple[RunId, str]]:
+        """Return (run, tenant) of runs that wait although their deadline has passed."""
+        ...
+
+    def held(self, *, expired_only: bool, limit: int) -> Sequence[Claim]:
+        """Return the claims of running runs, oldest first; or only those whose lease is over."""
+        ...
+
+    def add_index_rows(self, run_id: RunId, tenant: str, rows: IndexRows) -> None:
+        """Insert the search rows of a plan."""
+        ...
+
+    def append(
+        self, stream: str, kind: str, actor: Actor, payload: Mapping[str, object] | None
+    ) -> StoredEvent:
+        """Append an event to ``stream`` of the actor's tenant, chained to the one before."""
+        ...
+
+    def events(self, stream: str, tenant: str) -> Sequence[StoredEvent]:
+        """Return all events of a stream in order."""
+        ...
+
+
+class Store(Protocol):
+    """Where everything is kept."""
+
+    def transaction(self) -> AbstractContextManager[Transaction]:
+        """Begin a unit of work that may write."""
+        ...
+
+    def reading(self) -> AbstractContextManager[Transaction]:
+        """Begin a unit of work that only reads, one moment of the store throughout."""
+        ...
+
+    def stage_file(self, tenant: str, path: Path) -> Staged:
+        """Take a file in as a blob, outside of any transaction."""
+        ...
+
+    def stage_bytes(self, tenant: str, content: bytes) -> Staged:
+        """Take bytes in as a blob, outside of any transaction."""
+        ...
+
+    def blob(self, tenant: str, digest: str) -> bytes:
+        """Return the whole blob, checked against its digest."""
+        ...
+
+    def blob_to_file(self, tenant: str, digest: str, path: Path) -> None:
+        """Write the blob to ``path`` part by part, checked against its digest."""
+        ...
+
+    def missing(self) -> list[str]:
+        """Return what keeps the store from working, in words; empty means ready."""
+        ...
+
+
+class IntakeCall(Protocol):
+    """Checks a spooled network in a child of its own."""
+
+    def __call__(
+        self,
+        spool: Path,
+        folder: Path,
+        *,
+        options: "Options",
+        media_type: str,
+        content_encoding: str | None,
+    ) -> "IntakeReport":
+        """Check ``spool``; leave ``received``, ``network.zip``, ``intake.json`` in ``folder``."""
+        ...
+
+
+class SubmitCall(Protocol):
+    """Stores a checked network as a waiting run."""
+
+    def __call__(self, folder: Path, options: "Options", actor: Actor, wire_digest: str) -> Run:
+        """Store what intake left in ``folder``; what is returned is on disk."""
+        ...
+
+
+class RunCall(Protocol):
+    """Reads one run."""
+
+    def __call__(self, run_id: RunId, tenant: str) -> Run:
+        """Return the run as it is now, or raise ``RunUnknown``."""
+        ...
+
+
+class BytesCall(Protocol):
+    """Reads one artefact of a run."""
+
+    def __call__(self, run_id: RunId, tenant: str) -> bytes:
+        """Return the bytes as stored, or raise ``RunUnknown`` or ``ArtefactMissing``."""
+        ...
+
+
+class NetworkCall(Protocol):
+    """Reads the network of a run."""
+
+    def __call__(self, run_id: RunId, tenant: str, *, form: str = "normal") -> bytes:
+        """Return the body as ``received`` or the ``normal`` form (a zip)."""
+        ...
+
+
+class HistoryCall(Protocol):
+    """Reads who did what to a run, and when."""
+
+    def __call__(self, run_id: RunId, tenant: str) -> list[dict[str, object]]:
+        """Return event documents ``{"event", "payload", "salt"}`` in order."""
+        ...
+
+
+class EvidenceCall(Protocol):
+    """Packs plan, certificate and history so that a stranger can check them."""
+
+    def __call__(self, run_id: RunId, tenant: str, path: Path) -> None:
+        """Write the evidence zip of a run to ``path``."""
+        ...
+
+
+class ReadinessCall(Protocol):
+    """Says whether the service can do its work."""
+
+    def __call__(self) -> list[str]:
+        """Return what is missing, in words; empty means ready."""
+        ...
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Application:
+    """The use cases, as every door receives them (built by ``runs/application.py``)."""
+
+    intake: IntakeCall
+    submit: SubmitCall
+    run: RunCall
+    plan_bytes: BytesCall
+    certificate_bytes: BytesCall
+    network_bytes: NetworkCall
+    history: HistoryCall
+    evidence: EvidenceCall
+    readiness: ReadinessCall
