@@ -1,0 +1,312 @@
+"""The normal form as bytes: one digest for one network, whatever way it was sent.
+
+A network is a head in canonical JSON and one entry per column; the head names the digest of every
+column, so that the digest of the head is the digest of the whole network.
+"""
+
+import hashlib
+import itertools
+import json
+import zipfile
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any, TypeVar, cast
+
+import numpy as np
+
+from service.network.canonical_head import item_document, item_of, site_document, site_of
+from service.network.canonical_json import NotCanonicalError, canonical_json
+from service.network.column_bytes import (
+    TABLE_FORMS,
+    ColumnForm,
+    NormalFormError,
+    code_bytes,
+    code_column,
+    decimal_bytes,
+    decimal_column,
+    text_bytes,
+    text_column,
+    texts_bytes,
+    texts_column,
+)
+from service.network.columns import (
+    Decimals,
+    DemandTable,
+    IdArray,
+    LaneTable,
+    Network,
+    SupplyTable,
+    Texts,
+)
+from service.network.normal_form import normal_form
+from service.network.normal_rows import check_head, check_rows
+
+__all__ = [
+    "NormalFormError",
+    "canonical_json",
+    "digest",
+    "network_digest",
+    "network_entries",
+    "network_from_entries",
+    "normal_form",
+    "read_network",
+    "read_stored_zip",
+    "write_network",
+    "write_stored_zip",
+]
+
+HEAD_ENTRY = "network/head.json"
+# Deeper than any head: an item's packs are three levels down, a rule's selectors four.
+_NESTING_MAX = 16
+
+_Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
+
+
+def digest(data: bytes) -> str:
+    """Return the SHA-256 of ``data`` as it is written everywhere: ``sha-256:`` and hex."""
+    return f"sha-256:{hashlib.sha256(data).hexdigest()}"
+
+
+def network_entries(network: Network) -> dict[str, bytes]:
+    """Return the entries of ``network``, which is in normal form, by name and sorted by it."""
+    entries: dict[str, bytes] = {}
+    tables: dict[str, object] = {}
+    for table, forms in TABLE_FORMS.items():
+        rows = getattr(network, table)
+        columns: dict[str, object] = {}
+        for form in forms:
+            written = _column_entry(getattr(rows, form.field), form)
+            if written is None:
+                continue
+            entry, described = written
+            entries[f"network/{table}/{form.name}"] = entry
+            columns[form.name] = described | {"digest": digest(entry)}
+        tables[table] = {"rows": len(rows), "columns": columns}
+    head = {
+        **network.head,
+        "items": [item_document(item) for item in network.items],
+        "sites": [site_document(site) for site in network.sites],
+        "tables": tables,
+    }
+    entries[HEAD_ENTRY] = canonical_json(head)
+    return dict(sorted(entries.items()))
+
+
+def network_digest(network: Network) -> str:
+    """Return the digest of ``network``, which is in normal form."""
+    return digest(network_entries(network)[HEAD_ENTRY])
+
+
+def write_network(network: Network, path: Path) -> str:
+    """Write the entries of ``network`` as a zip and return the network's digest."""
+    entries = network_entries(network)
+    write_stored_zip(path, entries)
+    return digest(entries[HEAD_ENTRY])
+
+
+def read_network(path: Path) -> Network:
+    """Return the network in the zip at ``path``; raise ``NormalFormError`` if it is not normal."""
+    return network_from_entries(read_stored_zip(path))
+
+
+def write_stored_zip(path: Path, entries: Mapping[str, bytes]) -> None:
+    """Write a zip whose bytes depend on nothing but ``entries``: stored, sorted, one time stamp."""
+    with zipfile.ZipFile(path, "w", compression=zipfile.ZIP_STORED) as archive:
+        for name in sorted(entries):
+            described = zipfile.ZipInfo(name, date_time=(1980, 1, 1, 0, 0, 0))
+            described.create_system = 3  # Unix, on every machine
+            described.external_attr = 0o100644 << 16
+            archive.writestr(described, entries[name])
+
+
+def read_stored_zip(path: Path) -> dict[str, bytes]:
+    """Return the entries of a zip that is stored without compression.
+
+    Raises ``NormalFormError`` for anything else; the memory needed is bounded by the file's size.
+    """
+    try:
+        size = path.stat().st_size
+        with zipfile.ZipFile(path) as archive:
+            described = archive.infolist()
+            names = [entry.filename for entry in described]
+            if len(set(names)) != len(names):
+                raise NormalFormError("an entry of the zip occurs twice")
+            if any(entry.compress_type != zipfile.ZIP_STORED for entry in described):
+                raise NormalFormError("an entry of the zip is compressed")
+            # Entries that overlap could make a small file unpack to many times its size.
+            if sum(entry.file_size for entry in described) > size:
+                raise NormalFormError("the entries of the zip are larger than the zip")
+            return {entry.filename: archive.read(entry) for entry in described}
+    except (zipfile.BadZipFile, OSError, EOFError, RuntimeError, NotImplementedError) as error:
+        raise NormalFormError(f"the zip cannot be read: {error}") from error
+
+
+def network_from_entries(entries: Mapping[str, bytes]) -> Network:
+    """Return the network that ``entries`` hold; raise ``NormalFormError`` if it is not normal."""
+    head = _head(entries)
+    documents, tables = head.pop("items"), head.pop("tables")
+    items = tuple(item_of(document) for document in documents)
+    known = frozenset(item.id for item in items)
+    sites = tuple(site_of(document, known) for document in head.pop("sites"))
+    for things in (items, sites):
+        ids = [thing.id.encode() for thing in things]
+        if any(former >= latter for former, latter in itertools.pairwise(ids)):
+            raise NormalFormError("ids are not sorted and distinct")
+    counts = {"items": len(items), "sites": len(sites)}
+    expected = {HEAD_ENTRY}
+    columns: dict[str, dict[str, object]] = {}
+    for table, forms in TABLE_FORMS.items():
+        columns[table] = _columns(table, forms, tables[table], entries, counts)
+        expected |= {f"network/{table}/{column}" for column in tables[table]["columns"]}
+    if set(entries) != expected:
+        raise NormalFormError("the entries are not those that the head names")
+    network = Network(
+        head=head,
+        items=items,
+        sites=sites,
+        supply=_table(SupplyTable, columns["supply"]),
+        demand=_table(DemandTable, columns["demand"]),
+        lanes=_table(LaneTable, columns["lanes"]),
+    )
+    check_rows(network)
+    return network
+
+
+def _table(kind: type[_Table], columns: Mapping[str, object]) -> _Table:
+    """Return the table of ``columns``, each of which was made for its field."""
+    return kind(**cast("Any", columns))
+
+
+def _head(entries: Mapping[str, bytes]) -> dict[str, Any]:
+    """Return the parsed head, its shape checked down to the columns of the tables."""
+    data = entries.get(HEAD_ENTRY)
+    if data is None:
+        raise NormalFormError("the head is missing")
+    if _nesting(data) > _NESTING_MAX:
+        raise NormalFormError("the head is nested too deeply")
+    try:
+        head = json.loads(data.decode())
+        # One comparison finds doubled keys, spaces, floats and every other spelling.
+        canonical = canonical_json(head)
+    except (ValueError, RecursionError, NotCanonicalError) as error:
+        raise NormalFormError(f"the head is not canonical JSON: {error}") from error
+    if canonical != data or not isinstance(head, dict):
+        raise NormalFormError("the head is not canonical JSON")
+    check_head(head)
+    return head
+
+
+def _nesting(data: bytes) -> int:
+    """Return a bound on the nesting of JSON: at most how often it opens anything."""
+    depth = deepest = 0
+    inside_text = escaped = False
+    if data.count(b"[") + data.count(b"{") <= _NESTING_MAX:
+        return 0
+    for octet in data:
+        if inside_text:
+            if escaped:
+                escaped = False
+            elif octet == 0x5C:
+                escaped = True
+            elif octet == 0x22:
+                inside_text = False
+        elif octet == 0x22:
+            inside_text = True
+        elif octet in (0x5B, 0x7B):
+            depth += 1
+            deepest = max(deepest, depth)
+        elif octet in (0x5D, 0x7D):
+            depth -= 1
+    return deepest
+
+
+def _column_entry(column: object, form: ColumnForm) -> tuple[bytes, dict[str, object]] | None:
+    """Return the bytes of a column and how the head describes it; None where all is absent."""
+    described: dict[str, object] = {"type": form.kind}
+    if isinstance(column, Decimals):
+        if not column.present.any():
+            return None
+        described["exponent"] = column.exponent
+        if not column.present.all():
+            described["nulls"] = True
+        return decimal_bytes(column), described
+    if isinstance(column, Texts):
+        return (texts_bytes(column), described) if column.values else None
+    if not isinstance(column, np.ndarray):
+        raise NormalFormError(f"{form.field} is no column")
+    if form.kind == "text":
+        ids: IdArray = column
+        return (text_bytes(ids), described) if (ids != b"").any() else None
+    absent = 0 if form.kind == "small" else -1
+    if not (column != absent).any():
+        return None
+    if form.of is not None:
+        described["of"] = form.of
+    return code_bytes(column), described
+
+
+def _columns(
+    table: str,
+    forms: tuple[ColumnForm, ...],
+    described: Mapping[str, Any],
+    entries: Mapping[str, bytes],
+    counts: Mapping[str, int],
+) -> dict[str, object]:
+    """Return the columns of a table by field, absent ones made up."""
+    rows = described["rows"]
+    known = {form.name for form in forms}
+    if not set(described["columns"]) <= known:
+        raise NormalFormError(f"{table} has an unknown column")
+    columns: dict[str, object] = {}
+    for form in forms:
+        column = described["columns"].get(form.name)
+        if column is None:
+            if form.required and rows:
+                raise NormalFormError(f"{table}/{form.name} is missing")
+            columns[form.field] = _absent_column(form, rows)
+            continue
+        entry = entries.get(f"network/{table}/{form.name}")
+        if entry is None or digest(entry) != column["digest"]:
+            raise NormalFormError(f"{table}/{form.name} does not have the digest in the head")
+        columns[form.field] = _read_column(entry, form, rows, column, counts)
+        if _column_entry(columns[form.field], form) != (
+            entry,
+            {key: value for key, value in column.items() if key != "digest"},
+        ):
+            raise NormalFormError(f"{table}/{form.name} is not described as it is")
+    return columns
+
+
+def _absent_column(form: ColumnForm, rows: int) -> object:
+    """Return a column in which every value is absent."""
+    if form.kind == "decimal":
+        return Decimals(
+            values=np.zeros(rows, dtype=np.int64),
+            present=np.zeros(rows, dtype=np.bool_),
+            exponent=0,
+        )
+    if form.kind == "texts":
+        return Texts(codes=np.full(rows, -1, dtype=np.int32), values=())
+    if form.kind == "text":
+        return np.zeros(rows, dtype="S1")
+    return np.full(rows, 0 if form.kind == "small" else -1, dtype=np.int32)
+
+
+def _read_column(
+    entry: bytes, form: ColumnForm, rows: int, column: Mapping[str, Any], counts: Mapping[str, int]
+) -> object:
+    """Return the column in ``entry``, its values in range."""
+    if form.kind == "decimal":
+        return decimal_column(
+            entry, rows, exponent=column.get("exponent", -1), nulls=column.get("nulls", False)
+        )
+    if form.kind == "texts":
+        return texts_column(entry, rows)
+    if form.kind == "text":
+        return text_column(entry, rows)
+    codes = code_column(entry, rows)
+    least = 0 if form.required or form.kind == "small" else -1
+    most = 9 if form.of is None else counts[form.of] - 1
+    if bool(((codes < least) | (codes > most)).any()):
+        raise NormalFormError(f"{form.name} is out of range")
+    return codes

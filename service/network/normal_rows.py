@@ -1,0 +1,212 @@
+"""What a stored network must satisfy before anything is computed from it.
+
+Not a second intake: this keeps a damaged or forged file from being taken for a network.
+"""
+
+import json
+import re
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+
+from service.network.canonical_json import NotCanonicalError, canonical_json
+from service.network.column_bytes import NormalFormError
+from service.network.columns import (
+    CodeArray,
+    Decimals,
+    DemandTable,
+    Item,
+    LaneTable,
+    Network,
+    SupplyTable,
+    Texts,
+)
+from service.network.normal_form import lane_order, rule_key, supply_order
+from service.network.units import item_units
+
+# int32 codes count the rows of a table.
+_ROWS_MAX = 2**31 - 1
+
+_HEAD_TEXTS = ("name", "currency", "cut_off", "release_by")
+_HEAD_FIELDS = frozenset({"format", "rules", "extra", "items", "sites", "tables", *_HEAD_TEXTS})
+_COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
+_CURRENCY = re.compile(r"[A-Z]{3}")
+
+
+def check_head(head: Mapping[str, Any]) -> None:
+    """Raise ``NormalFormError`` unless the head has the shape of one."""
+    _check(set(head) <= _HEAD_FIELDS, "an unknown field in the head")
+    _check(_is_whole(head.get("format")) and head["format"] == 1, "the head is not of format 1")
+    for field in _HEAD_TEXTS:
+        _check(isinstance(head.get(field, ""), str), f"{field} is not text")
+    _check(_CURRENCY.fullmatch(head.get("currency", "")) is not None, "no currency")
+    _check(bool(head.get("cut_off")), "no cut-off")
+    for field in ("items", "sites", "rules"):
+        _check(isinstance(head.get(field), list), f"{field} is not an array")
+    rules = head["rules"]
+    _check(all(isinstance(rule, dict) for rule in rules), "a rule is not an object")
+    _check(rules == sorted(rules, key=rule_key), "rules are not sorted")
+    if "extra" in head:
+        _check(_is_texts(head["extra"]) and bool(head["extra"]), "extra is not an object of text")
+    tables = head.get("tables")
+    _check(isinstance(tables, dict) and set(tables) == {"supply", "demand", "lanes"}, "no tables")
+    for described in head["tables"].values():
+        _check_table(described)
+
+
+def _check_table(described: object) -> None:
+    """Raise unless a table is described by its rows and columns."""
+    if not isinstance(described, dict) or set(described) != {"rows", "columns"}:
+        raise NormalFormError("a table is not described by rows and columns")
+    rows, columns = described["rows"], described["columns"]
+    _check(_is_whole(rows) and 0 <= rows <= _ROWS_MAX, "rows is not a count")
+    _check(isinstance(columns, dict), "columns is not an object")
+    _check(rows > 0 or not columns, "a table without rows has columns")
+    for column in columns.values():
+        _check(isinstance(column, dict) and set(column) <= _COLUMN_FIELDS, "no column")
+        _check(isinstance(column.get("digest"), str), "a column has no digest")
+        _check(column.get("nulls", True) is True, "nulls is not true")
+        _check(_is_whole(column.get("exponent", 0)), "exponent is not a whole number")
+
+
+def check_rows(network: Network) -> None:
+    """Raise ``NormalFormError`` unless rows are sorted, distinct and make sense one by one."""
+    _check_supply(network.supply, network.items)
+    _check_demand(network)
+    _check_lanes(network.lanes, network.items)
+
+
+def _check_supply(supply: SupplyTable, items: Sequence[Item]) -> None:
+    """Raise unless supply rows are in order and their quantities are none below zero."""
+    _check_units(supply.item, supply.unit, items)
+    _check(np.array_equal(supply_order(supply, items), np.arange(len(supply))), "supply order")
+    _check_required(supply.quantity)
+    for column in (supply.on_hand, supply.reserved, supply.on_hold, supply.keep_quantity):
+        _check_not_negative(column)
+    kept = supply.keep_priority > 0
+    _check(np.array_equal(kept, supply.keep_quantity.present), "keep without its priority")
+    pairs = supply.site[kept].astype(np.int64) * max(1, len(items)) + supply.item[kept]
+    _check(len(np.unique(pairs)) == len(pairs), "keep twice at one site and item")
+    _check_objects(supply.extra)
+
+
+def _check_demand(network: Network) -> None:
+    """Raise unless order lines are in order, distinct, and each is wanted in one way."""
+    demand: DemandTable = network.demand
+    _check_units(demand.item, demand.unit, network.items)
+    _check(bool((demand.reference[1:] > demand.reference[:-1]).all()), "demand order")
+    _check(not bool((demand.reference == b"").any()), "an order line without a reference")
+    _check_required(demand.quantity)
+    _check_not_negative(demand.shortage_cost)
+    _check_not_negative(demand.worth_at_most)
+    ways = (
+        (demand.priority > 0).astype(np.int8)
+        + demand.shortage_cost.present
+        + demand.worth_at_most.present
+    )
+    _check(not bool((ways > 1).any()), "an order line with two kinds of importance")
+    known = {site.id for site in network.sites}
+    for origins in _check_lists(demand.origins):
+        _check(set(origins) <= known, "an unknown site in origins")
+    _check_lists(demand.tags)
+    _check_objects(demand.extra)
+
+
+def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
+    """Raise unless lanes are in order, distinct, and their limits are none below zero."""
+    _check(np.array_equal(lane_order(lanes), np.arange(len(lanes))), "lane order")
+    _check(not bool((lanes.origin == lanes.destination).any()), "a lane from a site to itself")
+    named = lanes.ids[lanes.ids != b""].tolist()
+    _check(len(set(named)) == len(named), "a lane id occurs twice")
+    _check(bool(lanes.unit_cost.present.all()), "a lane without a cost")
+    _check(bool((lanes.measure.codes >= 0).all()), "a lane without a measure")
+    _check(set(lanes.per.values) <= {"item"}, "an unknown per")
+    _check_not_negative(lanes.capacity)
+    _check(bool((lanes.must_ship.values[lanes.must_ship.present] > 0).all()), "a must-ship of 0")
+    own = lanes.item >= 0
+    for item, measure in _pairs(lanes.item[own], lanes.measure.codes[own], lanes.measure):
+        _check(has_measure(items[item], measure), "an unknown measure")
+    _check_lists(lanes.tags)
+    _check_objects(lanes.extra)
+
+
+def has_measure(item: Item, measure: str) -> bool:
+    """Return whether ``item`` can be counted in ``measure``."""
+    if measure == "weight_kg":
+        return bool(item.weight_kg)
+    if measure == "volume_m3":
+        return bool(item.volume_m3)
+    return measure == "unit" or any(pack.unit == measure for pack in item.packs)
+
+
+def _check_units(item: CodeArray, unit: Texts, items: Sequence[Item]) -> None:
+    """Raise unless each row's unit is one of its item's."""
+    _check(bool((unit.codes >= 0).all()), "a row without a unit")
+    for place, text in _pairs(item, unit.codes, unit):
+        _check(item_units(items[place], text) is not None, "an unknown unit")
+
+
+def _pairs(item: CodeArray, codes: CodeArray, texts: Texts) -> list[tuple[int, str]]:
+    """Return the distinct pairs of an item's position and a text."""
+    width = max(1, len(texts.values))
+    distinct = np.unique(item.astype(np.int64) * width + codes).tolist()
+    return [(pair // width, texts.values[pair % width]) for pair in distinct]
+
+
+def _check_required(column: Decimals) -> None:
+    """Raise unless every row has a quantity of 0 or more."""
+    _check(bool(column.present.all()), "a row without a quantity")
+    _check_not_negative(column)
+
+
+def _check_not_negative(column: Decimals) -> None:
+    """Raise if any value is below 0."""
+    _check(not bool((column.values < 0).any()), "a negative quantity")
+
+
+def _check_lists(column: Texts) -> list[list[str]]:
+    """Return the arrays in ``column``; raise unless each holds sorted, distinct texts."""
+    arrays = []
+    for text in column.values:
+        array = _parsed(text)
+        if not isinstance(array, list) or not array:
+            raise NormalFormError("not an array with elements")
+        _check(all(isinstance(element, str) for element in array), "not an array of text")
+        _check(array == sorted(set(array)), "an array is not sorted and distinct")
+        arrays.append(array)
+    return arrays
+
+
+def _check_objects(column: Texts) -> None:
+    """Raise unless each text of ``column`` is an object of texts."""
+    for text in column.values:
+        value = _parsed(text)
+        _check(_is_texts(value) and bool(value), "not an object of text")
+
+
+def _parsed(text: str) -> object:
+    """Return the value of canonical JSON."""
+    try:
+        value: object = json.loads(text)
+        canonical = canonical_json(value)
+    except (ValueError, RecursionError, NotCanonicalError) as error:
+        raise NormalFormError("not canonical JSON") from error
+    _check(canonical == text.encode(), "not canonical JSON")
+    return value
+
+
+def _is_texts(value: object) -> bool:
+    """Return whether ``value`` is an object whose members are all text."""
+    return isinstance(value, dict) and all(isinstance(text, str) for text in value.values())
+
+
+def _is_whole(value: object) -> bool:
+    """Return whether ``value`` is a whole number of JSON."""
+    return isinstance(value, int) and not isinstance(value, bool)
+
+
+def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 # reads like an assertion
+    """Raise ``NormalFormError`` with ``detail`` unless ``holds``."""
+    if not holds:
+        raise NormalFormError(detail)
