@@ -1,0 +1,142 @@
+"""Which items can use which lane, and where goods can come from (MODEL.md, section 3).
+
+Item k can use a lane of its own, and a lane without an item if stock of k reaches its origin and
+from its destination wanted or forced goods of k are reached, moving along lanes of k or of any
+item, and on through cross-docks only. Every such lane on the way is then usable as well, so that
+"along lanes usable by k" needs no second round. Closures and all other rules are ignored.
+"""
+
+from collections.abc import Sequence
+from functools import cached_property
+
+import numpy as np
+
+from service.network.columns import BoolArray, CodeArray, IntArray, Network
+
+
+class LaneUse:
+    """Which lanes each item of a network can use, found item by item when asked."""
+
+    def __init__(self, network: Network) -> None:
+        """Prepare for ``network``; the tables may be in any order."""
+        self._network = network
+        self._passes_on = np.array(
+            ["cross_dock" in site.roles for site in network.sites], dtype=np.bool_
+        )
+        order = np.argsort(network.lanes.item, kind="stable")
+        self._order = order
+        self._bounds = np.searchsorted(
+            network.lanes.item[order], np.arange(-1, len(network.items) + 1)
+        )
+        self._found: dict[int, IntArray] = {}
+
+    @cached_property
+    def any_item(self) -> IntArray:
+        """Rows of the lanes without an item, ascending."""
+        return self._order[: self._bounds[1]]
+
+    @property
+    def passes_on(self) -> BoolArray:
+        """Which sites are cross-docks, in shape (sites,)."""
+        return self._passes_on
+
+    def own(self, item: int) -> IntArray:
+        """Return the rows of the lanes that name ``item``, ascending."""
+        return self._order[self._bounds[item + 1] : self._bounds[item + 2]]
+
+    def rows(self, item: int) -> IntArray:
+        """Return the rows of all lanes that ``item`` can use, ascending."""
+        if item not in self._found:
+            self._found[item] = self._usable(item)
+        return self._found[item]
+
+    def stock(self, item: int) -> BoolArray:
+        """Return, in shape (sites,), where a supply row of ``item`` has more than 0."""
+        supply = self._network.supply
+        return self._sites(supply.site[(supply.item == item) & (supply.quantity.values > 0)])
+
+    def wanted(self, item: int) -> BoolArray:
+        """Return, in shape (sites,), where an order line of ``item`` wants more than 0."""
+        demand = self._network.demand
+        return self._sites(demand.site[(demand.item == item) & (demand.quantity.values > 0)])
+
+    def stock_reaching(self, item: int, place: int) -> BoolArray:
+        """Return, in shape (sites,), whose stock of ``item`` can be at ``place`` to be sent on.
+
+        A place that is no cross-dock sends its own stock only.
+        """
+        stock = self.stock(item)
+        start = np.zeros(len(stock), dtype=np.bool_)
+        start[place] = True
+        if not self._passes_on[place]:
+            return start & stock
+        lanes, rows = self._network.lanes, self.rows(item)
+        back = Steps(lanes.destination[rows], lanes.origin[rows], len(stock))
+        return (start | reached((back,), start, through=self._passes_on)) & stock
+
+    def _usable(self, item: int) -> IntArray:
+        """Find the lanes of one item."""
+        own, free = self.own(item), self.any_item
+        if len(free) == 0:
+            return own
+        lanes = self._network.lanes
+        forced = self._sites(lanes.origin[own[lanes.must_ship.values[own] > 0]])
+        # Goods that arrive where a forced lane begins go on through a cross-dock, or not at all.
+        goal = self.wanted(item) | (forced & self._passes_on)
+        stock = self.stock(item)
+        on = self._passes_on
+        of_any_forward, of_any_back = self._any_steps
+        own_forward = Steps(lanes.origin[own], lanes.destination[own], len(on))
+        own_back = Steps(lanes.destination[own], lanes.origin[own], len(on))
+        sends = stock | (reached((of_any_forward, own_forward), stock, through=on) & on)
+        gets = goal | (reached((of_any_back, own_back), goal, through=on) & on)
+        usable = free[sends[lanes.origin[free]] & gets[lanes.destination[free]]]
+        return np.sort(np.concatenate((own, usable)))
+
+    @cached_property
+    def _any_steps(self) -> tuple["Steps", "Steps"]:
+        """Steps along lanes without an item, forward and back; the same for every item."""
+        lanes, free = self._network.lanes, self.any_item
+        origins, destinations = lanes.origin[free], lanes.destination[free]
+        sites = len(self._passes_on)
+        return Steps(origins, destinations, sites), Steps(destinations, origins, sites)
+
+    def _sites(self, places: CodeArray) -> BoolArray:
+        """Return flags in shape (sites,), True at ``places``."""
+        flags = np.zeros(len(self._network.sites), dtype=np.bool_)
+        flags[places] = True
+        return flags
+
+
+class Steps:
+    """Where one step leads from each site, along given lanes."""
+
+    def __init__(self, tails: CodeArray, heads: CodeArray, sites: int) -> None:
+        """Index the steps from ``tails`` to ``heads``, both of shape (lanes,)."""
+        pairs = np.unique(tails.astype(np.int64) * max(sites, 1) + heads)
+        self._heads = pairs % max(sites, 1)
+        self._bounds = np.searchsorted(pairs, np.arange(sites + 1) * max(sites, 1))
+
+    def after(self, places: IntArray) -> IntArray:
+        """Return the sites that one step from ``places`` leads to, repeats included."""
+        first = self._bounds[places]
+        counts = self._bounds[places + 1] - first
+        total = int(counts.sum())
+        shift = np.repeat(first - (np.cumsum(counts) - counts), counts)
+        return self._heads[shift + np.arange(total)]
+
+
+def reached(ways: Sequence[Steps], start: BoolArray, *, through: BoolArray) -> BoolArray:
+    """Return the sites that one step or more leads to from ``start``, in shape (sites,).
+
+    From sites that were reached, only those of ``through`` lead on.
+    """
+    found = np.zeros(len(start), dtype=np.bool_)
+    done = start.copy()
+    places = np.flatnonzero(start)
+    while len(places):
+        news = np.concatenate([way.after(places) for way in ways])
+        found[news] = True
+        places = np.unique(news[through[news] & ~done[news]])
+        done[places] = True
+    return found
