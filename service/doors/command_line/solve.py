@@ -1,0 +1,140 @@
+"""``lanewright solve``: plan a network without a server and without a database."""
+
+import tempfile
+import zipfile
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Annotated, Any
+
+import orjson
+import typer
+
+from service.doors.command_line import parameters
+from service.doors.command_line.backing import Backing
+from service.doors.command_line.check import accepted
+from service.doors.command_line.ending import EndingError, Exit, put, put_lines, tell
+from service.doors.command_line.layout import count_of
+from service.doors.command_line.progress import progress_bar
+from service.doors.command_line.summary import summary_lines
+from service.doors.plan_tables import COLUMNS, table_csv
+from service.network.options import Options
+from service.runs.faults import ChildCrashed, ChildMemory, ChildReleased, ChildTimeout
+
+Csv = Annotated[
+    str | None,
+    typer.Option("--csv", metavar="TABLE", help=f"Write one table as CSV: {', '.join(COLUMNS)}."),
+]
+Evidence = Annotated[
+    Path | None,
+    typer.Option("--evidence", metavar="ZIP", help="Also write network, plan and proof to a zip."),
+]
+RequireComplete = Annotated[
+    bool, typer.Option("--require-complete", help="Exit with 4 when anything is short.")
+]
+
+
+def solve(  # noqa: PLR0913 - one parameter for each option that a person can type
+    context: typer.Context,
+    file: parameters.File,
+    *,
+    as_json: parameters.AsJson = False,
+    csv: Csv = None,
+    evidence: Evidence = None,
+    require_complete: RequireComplete = False,
+    shortages: parameters.Shortages = None,
+    worth_at_most: parameters.WorthAtMost = None,
+    demand_rounding: parameters.DemandRounding = None,
+    bad_rows: parameters.BadRows = None,
+    label: parameters.Label = None,
+    plan_for: parameters.PlanFor = None,
+    deadline_seconds: parameters.DeadlineSeconds = None,
+    maximum_age_minutes: parameters.MaximumAgeMinutes = None,
+) -> None:
+    """Plan a network and show what came of it.
+
+    The summary, or the JSON or CSV that was asked for, goes to standard output, everything else to
+    standard error. Exit codes: 0 done, 1 failed, 2 bad input or usage, 3 no plan exists, 4 with
+    --require-complete something is short. Ctrl-C ends the planning at once.
+    """
+    options = parameters.given_options(
+        {
+            "shortages": shortages,
+            "worth_at_most": worth_at_most,
+            "demand_rounding": demand_rounding,
+            "bad_rows": bad_rows,
+            "label": label,
+            "plan_for": plan_for,
+            "deadline_seconds": deadline_seconds,
+            "maximum_age_minutes": maximum_age_minutes,
+        }
+    )
+    if csv is not None and as_json:
+        raise EndingError(
+            Exit.BAD_INPUT, "usage", "--json and --csv exclude each other: choose one"
+        )
+    if csv is not None and csv not in COLUMNS:
+        detail = f"there is no table {csv!r}; the tables are {', '.join(COLUMNS)}"
+        raise EndingError(Exit.BAD_INPUT, "usage", detail)
+    backing = context.ensure_object(Backing)
+    with tempfile.TemporaryDirectory(prefix="lanewright-") as name:
+        folder = Path(name)
+        _planned(backing, file, folder, options)
+        plan_bytes = (folder / "plan.json").read_bytes()
+        if evidence is not None:
+            _write_evidence(evidence, folder, options, backing.versions())
+    plan: Mapping[str, Any] = orjson.loads(plan_bytes)
+    if as_json:
+        put(plan_bytes + b"\n")
+    elif csv is not None:
+        put(table_csv(plan, csv))
+    else:
+        put_lines(summary_lines(plan))
+    if plan["status"] == "no_plan":
+        raise typer.Exit(Exit.NO_PLAN)
+    if require_complete and plan["shortages"]:
+        tell(f"lanewright: {count_of(len(plan['shortages']), 'shortage')}, and --require-complete")
+        raise typer.Exit(Exit.INCOMPLETE)
+
+
+def _planned(backing: Backing, file: str, folder: Path, options: Options) -> None:
+    """Check and plan ``file`` in ``folder``; raise ``EndingError`` when there is no answer."""
+    with progress_bar("checking") as moved:
+        accepted(backing, file, folder, options)
+        try:
+            answer = backing.plan(folder, folder, options=options, on_progress=moved)
+        except ChildTimeout as error:
+            detail = f"no plan within {options.deadline_seconds} s: raise --deadline-seconds"
+            raise EndingError(Exit.FAILED, "time_limit", detail) from error
+        except ChildMemory as error:
+            detail = "planning needs more memory than it may use (a setting, see README)"
+            raise EndingError(Exit.FAILED, "memory_limit", detail) from error
+        except (ChildCrashed, ChildReleased) as error:
+            detail = f"planning broke off: {error}"
+            raise EndingError(Exit.FAILED, "solver_crashed", detail) from error
+    if answer["state"] == "failed":
+        detail = f"planning failed: {answer['detail'] or answer['reason']}"
+        raise EndingError(Exit.FAILED, str(answer["reason"]), detail)
+
+
+def _write_evidence(
+    path: Path, folder: Path, options: Options, versions: Mapping[str, str]
+) -> None:
+    """Pack everything that a stranger needs to check the plan."""
+    # Only here: without --evidence nothing of the proof is loaded.
+    from service.proof.evidence import write_evidence  # noqa: PLC0415
+
+    with zipfile.ZipFile(folder / "network.zip") as network:
+        entries = {name: network.read(name) for name in network.namelist()}
+    try:
+        write_evidence(
+            path,
+            network_entries=entries,
+            options=options,
+            plan_bytes=(folder / "plan.json").read_bytes(),
+            certificate_bytes=(folder / "certificate.json").read_bytes(),
+            history=[],
+            versions=versions,
+        )
+    except OSError as error:
+        detail = f"{path} cannot be written: {error.strerror}"
+        raise EndingError(Exit.FAILED, "unwritable", detail) from error
