@@ -12,17 +12,17 @@ from pathlib import Path
 from typing import Any
 
 import orjson
-
-from service.network.canonical import read_network
-from service.network.columns import Network
 from service.network.intake import IntakeReport, Limits, intake
-from service.network.options import Options, read_options
 from service.planning.task import Outcome, plan
 from service.proof.check import Violation, check
 
-type Amount = int | str
-type Arc = tuple[str, str, Amount, Amount | None]
-type Document = dict[str, Any]
+from service.network.canonical import read_network
+from service.network.columns import Network
+from service.network.options import Options, read_options
+
+Amount = int | str
+Arc = tuple[str, str, Amount, Amount | None]
+Document = dict[str, Any]
 
 CUT_OFF = "2026-02-03T16:00:00+01:00"
 

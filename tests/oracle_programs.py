@@ -47,6 +47,10 @@ class Program:
         """Add sum(columns) >= least."""
         self.at_most.append((_row((), columns), -least))
 
+    def limit_cost(self, most: int) -> None:
+        """Let no point cost more than ``most``."""
+        self.at_most.append((dict(enumerate(self.cost)), most))
+
     def optimum(self, cost: Sequence[float]) -> float | None:
         """Return the least value of ``cost``, or None where nothing fits all rows."""
         result: OptimizeResult = linprog(
@@ -220,22 +224,26 @@ class WrittenProblem:
 
 
 def _is_only_plan(written: WrittenProblem, cost: int) -> bool:
-    """Return whether all best plans have the same flow on every lane, by two looks.
+    """Return whether all best plans have the same flow on every lane, by random looks.
 
-    The best plans form a polytope; what they ship on the lanes has whole corners. Random whole
-    weights with the same least and greatest value on it make it one point, but for a chance of
-    about one in a million.
+    The best plans form a polytope, and what they ship on the lanes has whole corners. Where random
+    whole weights have the same least and greatest value on it, it is one point but for a chance of
+    one in a thousand, so that three directions leave one in a thousand million.
     """
     program = written.program
-    program.at_most.append((dict(enumerate(program.cost)), cost + NEAR_WHOLE))
+    program.limit_cost(cost)
     random = Random(cost)  # noqa: S311 - a direction, no secret; the same for the same problem
-    weights = [0.0] * len(program.cost)
+    return all(_is_flat(written, random) for _ in range(3))
+
+
+def _is_flat(written: WrittenProblem, random: Random) -> bool:
+    weights = [0.0] * len(written.program.cost)
     for columns in written.moved:
-        weight = float(random.randrange(1, 10**6))
+        weight = float(random.randrange(1, 1000))
         for column in columns.values():
             weights[column] = weight
-    least = program.optimum(weights)
-    negative_greatest = program.optimum([-weight for weight in weights])
+    least = written.program.optimum(weights)
+    negative_greatest = written.program.optimum([-weight for weight in weights])
     assert least is not None, "the best plan itself fits"
     assert negative_greatest is not None, "the best plan itself fits"
     return abs(-negative_greatest - least) < 0.5
