@@ -12,7 +12,7 @@ from random import Random
 from scipy.optimize import OptimizeResult, linprog
 from scipy.sparse import csr_array
 
-from tests.oracle_reading import ItemAnswer, ItemProblem, OracleLine
+from tests.oracle_problem import ItemAnswer, ItemProblem, OracleLine
 
 # All optima are whole numbers here; HiGHS is trusted to come this near to one, or it is refused.
 NEAR_WHOLE = 1e-3

@@ -5,11 +5,18 @@ number of steps, every cost the exact money of one step. Reads lanes, supply and
 """
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
 from datetime import date, datetime
 from fractions import Fraction
-from math import floor, lcm
+from math import floor
 from typing import Any
+
+from tests.oracle_problem import (
+    ItemProblem,
+    OracleKept,
+    OracleLane,
+    OracleLine,
+    OracleStock,
+)
 
 Document = Mapping[str, Any]
 
@@ -18,98 +25,6 @@ RECOMMENDATION_20 = {
     ("KGM", "TNE"): Fraction(1000),
     ("KGM", "GRM"): Fraction(1, 1000),
 }
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OracleLane:
-    """A lane as one item sees it: money per step, least and most in steps (None: unlimited)."""
-
-    row: int
-    origin: str
-    destination: str
-    cost: Fraction
-    least: int
-    most: int | None
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OracleStock:
-    """Stock of one site at one cost: money per step and whole steps."""
-
-    site: str
-    cost: Fraction
-    steps: int
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OracleLine:
-    """An order line: either ``priority`` or ``money`` per step that is short, never both."""
-
-    reference: str
-    site: str
-    steps: int
-    priority: int | None
-    money: Fraction | None
-    origins: frozenset[str] | None
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OracleKept:
-    """Stock that is to stay at a site, in steps, with the priority of what is missing of it."""
-
-    site: str
-    steps: int
-    priority: int
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class ItemProblem:
-    """All that concerns one item.
-
-    ``stocked`` are the sites with a supply row above 0; ``limits`` is by (site, flow), in steps.
-    """
-
-    item: str
-    step: Fraction
-    sites: tuple[str, ...]
-    cross_docks: frozenset[str]
-    closed: frozenset[str]
-    stocked: frozenset[str]
-    handling: Mapping[str, Fraction]
-    lanes: tuple[OracleLane, ...]
-    stocks: tuple[OracleStock, ...]
-    lines: tuple[OracleLine, ...]
-    kept: tuple[OracleKept, ...]
-    limits: Mapping[tuple[str, str], int] = field(default_factory=dict)
-
-    def scale(self) -> int:
-        """Return a whole factor that makes the money of every step a whole number."""
-        money = [
-            *(lane.cost for lane in self.lanes),
-            *(stock.cost for stock in self.stocks),
-            *self.handling.values(),
-            *(line.money for line in self.lines if line.money is not None),
-        ]
-        return lcm(1, *(amount.denominator for amount in money))
-
-    def priorities(self) -> list[int]:
-        """Return the priorities that occur, first served first."""
-        named = [line.priority for line in self.lines if line.steps]
-        kept = [keep.priority for keep in self.kept if keep.steps]
-        return sorted({priority for priority in [*named, *kept] if priority is not None})
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class ItemAnswer:
-    """What one item costs at least, in money, and is short by priority, in item units.
-
-    ``only_plan`` says whether no other plan is as good, where the judge was asked.
-    """
-
-    item: str
-    shortages: Mapping[int, Fraction]
-    cost: Fraction
-    only_plan: bool | None = None
 
 
 def exact(value: object) -> Fraction:
@@ -252,7 +167,11 @@ def _usable_rows(document: Document, item: Document) -> list[int]:
     }
     docks = {site["id"] for site in document["sites"] if "cross_dock" in site["roles"]}
     stocked = _sites_above_zero(document["supply"], item)
-    wanting = _sites_above_zero(document["demand"], item)
+    wanting = _sites_above_zero(document["demand"], item) | {
+        lane["origin"]
+        for lane in carries.values()
+        if "item" in lane and exact(lane.get("must_ship", "0")) > 0 and lane["origin"] in docks
+    }
     leaving = _spread(stocked, docks, [(x["origin"], x["destination"]) for x in carries.values()])
     arriving = _spread(wanting, docks, [(x["destination"], x["origin"]) for x in carries.values()])
     return [

@@ -9,7 +9,7 @@ from fractions import Fraction
 
 import networkx as nx
 
-from tests.oracle_reading import ItemAnswer, ItemProblem, OracleLane, OracleLine
+from tests.oracle_problem import ItemAnswer, ItemProblem, OracleLane, OracleLine
 
 Node = tuple[Hashable, ...]
 ROOT: Node = ("root",)
@@ -119,7 +119,7 @@ class SplitNetwork:
         ways: dict[Node, tuple[frozenset[str] | None, bool]] = {}
         stocked = any(stock.site == site for stock in self.problem.stocks)
         dock = site in self.problem.cross_docks
-        if self._is_joined(site):
+        if self.problem.is_joined(site):
             self._arc(("arrived", site), ("joined", site), most=self._limit(site, "received"))
             self._arc(("drawn", site), ("joined", site))
             self._arc(("joined", site), ("passed", site), most=self._limit(site, "through"))
@@ -127,7 +127,7 @@ class SplitNetwork:
         else:
             ways["drawn", site] = (frozenset([site]), True)
             for lane in arriving:
-                ways["arrived", site, lane.origin] = (self._stock_behind(lane), dock)
+                ways["arrived", site, lane.origin] = (self.problem.stock_behind(lane), dock)
         for node, (origins, may_leave) in ways.items():
             # One node for each way in, so that handling is paid once by whatever passes.
             closed = 0 if site in self.problem.closed else None
@@ -137,20 +137,11 @@ class SplitNetwork:
             for line in self._lines(site, origins):
                 self._arc((*node, "handled"), ("line", line.reference))
 
-    def _is_joined(self, site: str) -> bool:
-        """Return whether goods that arrive and goods drawn here may serve and leave alike."""
-        problem = self.problem
-        if any(line.site == site and line.origins is not None for line in problem.lines):
-            return False
-        stocked = any(stock.site == site for stock in problem.stocks)
-        fed = any(lane.destination == site for lane in problem.lanes)
-        return site in problem.cross_docks or not (stocked and fed)
-
     def _limit(self, site: str, flow: str) -> int | None:
         return self.problem.limits.get((site, flow))
 
     def _arrive(self, lane: OracleLane) -> Node:
-        if self._is_joined(lane.destination):
+        if self.problem.is_joined(lane.destination):
             return ("arrived", lane.destination)
         return ("arrived", lane.destination, lane.origin)
 
@@ -169,18 +160,3 @@ class SplitNetwork:
                 yield line
             else:
                 assert not origins & line.origins, "partly allowed: refused at the door"
-
-    def _stock_behind(self, lane: OracleLane) -> frozenset[str]:
-        """Return the sites whose stock of the item can leave on ``lane``."""
-        stocked = self.problem.stocked
-        behind, todo, seen = set(), [lane.origin], set()
-        while todo:
-            site = todo.pop()
-            if site in seen:
-                continue
-            seen.add(site)
-            if site in stocked:
-                behind.add(site)
-            if site in self.problem.cross_docks:
-                todo += [other.origin for other in self.problem.lanes if other.destination == site]
-        return frozenset(behind)

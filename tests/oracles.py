@@ -8,8 +8,9 @@ how the document is read (``oracle_reading.py``), and nothing with the service.
 from collections.abc import Mapping
 from typing import Any
 
+from tests.oracle_problem import ItemAnswer
 from tests.oracle_programs import solve_programs
-from tests.oracle_reading import Document, ItemAnswer, read_items
+from tests.oracle_reading import Document, read_items
 from tests.oracle_simplex import solve_simplex
 
 Answers = Mapping[str, ItemAnswer | None]
