@@ -21,6 +21,10 @@ class NumberTaken(Exception):  # noqa: N818 - as above
     """Two submissions drew the same run number; only a broken lock can cause it."""
 
 
+class BlobBroken(Exception):  # noqa: N818 - as above
+    """A blob is missing, incomplete, or not what its digest says."""
+
+
 class StoreUnavailable(Exception):  # noqa: N818 - as above
     """The database cannot be reached, or not in time; the same call may work later."""
 

@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Protocol
 
 from service.runs.faults import (
     ArtefactMissing,
+    BlobBroken,
     ChildCrashed,
     ChildMemory,
     ChildReleased,
@@ -51,6 +52,7 @@ __all__ = [
     "Actor",
     "Application",
     "ArtefactMissing",
+    "BlobBroken",
     "BytesCall",
     "ChildCrashed",
     "ChildMemory",
@@ -147,16 +149,22 @@ class Transaction(Protocol):
         """Return what was submitted, or raise ``RunUnknown``."""
         ...
 
-    def claim(self, run_id: RunId, *, token: Token, lease_seconds: float) -> Claim | None:
-        """Take the run for ``token`` if it waits, or if its holder's lease is over."""
+    def claim(
+        self, run_id: RunId, *, token: Token, lease_seconds: float, crashes_max: int
+    ) -> Claim | None:
+        """Take the run for ``token`` if it waits, or if its holder's lease is over.
+
+        A lease that ran out counts as a crash; where that would be crash ``crashes_max``, the run
+        is left for the sweep to end.
+        """
         ...
 
-    def finish(self, claim: Claim, ending: Ending) -> Finish:
-        """Make the run final, if ``claim`` still holds it."""
+    def finish(self, claim: Claim, ending: Ending, *, crashed: bool = False) -> Finish:
+        """Make the run final, if ``claim`` still holds it; count a crash if it ends by one."""
         ...
 
     def give_back(self, claim: Claim, *, crashed: bool) -> int | None:
-        """Let the run wait again; return its crashes, or None when the claim is gone."""
+        """Let the run wait again; return its crashes by now, or None when the claim is gone."""
         ...
 
     def fail_waiting(self, run_id: RunId, tenant: str, ending: Ending) -> bool:

@@ -87,11 +87,10 @@ class Run:
 class Submission:
     """What a run is from its first moment on; nothing of it ever changes.
 
-    ``received_digest`` and so on are the keys of the blobs: ``request_digest`` is that of the body
-    as received, ``normal_digest`` of the file ``network.zip``, ``intake_digest`` of
-    ``intake.json``.
-    ``wire_digest`` is taken over the bytes that came over the wire, ``network_digest`` over the
-    meaning.
+    Four digests are keys of blobs: ``request_digest`` (the body as received, unpacked),
+    ``normal_digest`` (the file ``network.zip``), ``intake_digest`` (``intake.json``) and
+    ``options_digest``. ``wire_digest`` is taken over the bytes that came over the wire,
+    ``network_digest`` over the meaning.
     """
 
     id: RunId

@@ -1,0 +1,60 @@
+"""Search rows of plans: millions at times, so they go in by the driver's bulk call."""
+
+from collections.abc import Iterator, Mapping, Sequence
+from typing import Any, cast
+
+from sqlalchemy import Table, insert, select
+from sqlalchemy.orm import Session
+
+from service.runs.run import IndexRows, RunId
+from service.store.tables import OrderLineRow, PlanLineRow
+
+_AT_ONCE = 5_000
+
+
+class SqlIndexRepository:
+    """Rows of plan lines and order lines."""
+
+    def __init__(self, session: Session) -> None:
+        """Work inside the caller's transaction; never commit here."""
+        self._session = session
+
+    def add(self, run_id: RunId, tenant: str, rows: IndexRows) -> None:
+        """Insert the rows of one plan."""
+        key = {"tenant": tenant, "run": run_id}
+        connection = self._session.connection()
+        for table, lines in (
+            (PlanLineRow.__table__, rows.plan_lines),
+            (OrderLineRow.__table__, rows.order_lines),
+        ):
+            for start in range(0, len(lines), _AT_ONCE):
+                batch: list[dict[str, Any]] = [
+                    {**line, **key} for line in lines[start : start + _AT_ONCE]
+                ]
+                connection.execute(insert(cast("Table", table)), batch)
+
+    def plan_lines(self, run_id: str, tenant: str) -> Iterator[Mapping[str, object]]:
+        """Yield the rows of plan lines in order, without their key."""
+        return self._rows(PlanLineRow, run_id, tenant)
+
+    def order_lines(self, run_id: str, tenant: str) -> Iterator[Mapping[str, object]]:
+        """Yield the rows of order lines in order, without their key."""
+        return self._rows(OrderLineRow, run_id, tenant)
+
+    def _rows(
+        self,
+        row: type[PlanLineRow] | type[OrderLineRow],
+        run_id: str,
+        tenant: str,
+    ) -> Iterator[Mapping[str, object]]:
+        columns: Sequence[Any] = [
+            column for column in row.__table__.columns if column.name not in {"tenant", "run"}
+        ]
+        statement = (
+            select(*columns)
+            .where(row.tenant == tenant, row.run == run_id)
+            .order_by(row.position)
+            .execution_options(yield_per=_AT_ONCE)
+        )
+        for found in self._session.execute(statement):
+            yield dict(found._mapping)  # noqa: SLF001 - SQLAlchemy's public name for it

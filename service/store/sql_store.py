@@ -1,0 +1,170 @@
+"""The port ``Store`` over a database: transactions, and blobs on their way in and out."""
+
+import hashlib
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+from typing import BinaryIO
+
+from sqlalchemy import Engine
+from sqlalchemy.exc import InterfaceError, OperationalError
+from sqlalchemy.exc import TimeoutError as PoolTimeoutError
+from sqlalchemy.orm import Session
+
+from service.runs.faults import BlobBroken, StoreUnavailable
+from service.runs.ports import Clock
+from service.runs.run import Staged
+from service.store.blob_repository import PART_BYTES, SqlBlobRepository, pack
+from service.store.database import READ_ONLY, Database
+from service.store.migrate import pending_in
+from service.store.transaction import SqlTransaction
+from service.store.triggers import trigger_faults
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SystemClock:
+    """The clock of this machine."""
+
+    def now(self) -> datetime:
+        """Return the present moment in UTC."""
+        return datetime.now(UTC)
+
+
+class SqlStore:
+    """Everything that is kept, in one database."""
+
+    def __init__(self, database: Database, clock: Clock) -> None:
+        """Keep everything in ``database``; the caller closes it."""
+        self._database = database
+        self._clock = clock
+        options: dict[str, object] = {READ_ONLY: True}
+        if not database.is_sqlite:
+            # One snapshot for the whole reading, as SQLite gives by itself.
+            options |= {"isolation_level": "REPEATABLE READ", "postgresql_readonly": True}
+        self._reader = database.engine.execution_options(**options)
+
+    @contextmanager
+    def transaction(self) -> Iterator[SqlTransaction]:
+        """Begin a unit of work: committed when the block ends well, else rolled back."""
+        with self._writing() as session:
+            yield SqlTransaction(session, self._clock)
+
+    @contextmanager
+    def reading(self) -> Iterator[SqlTransaction]:
+        """Begin a unit of work that the database itself keeps from writing."""
+        with self._session(self._reader) as session:
+            yield SqlTransaction(session, self._clock)
+
+    def stage_bytes(self, tenant: str, content: bytes) -> Staged:
+        """Take bytes in; only content above one part is written before its transaction."""
+        digest = "sha-256:" + hashlib.sha256(content).hexdigest()
+        if len(content) <= PART_BYTES:
+            return Staged(
+                tenant=tenant,
+                digest=digest,
+                unpacked_bytes=len(content),
+                part=pack(content),
+            )
+        pieces = (
+            content[start : start + PART_BYTES] for start in range(0, len(content), PART_BYTES)
+        )
+        return self._stage_large(tenant, digest, len(content), pieces)
+
+    def stage_file(self, tenant: str, path: Path) -> Staged:
+        """Take a file in without ever holding the whole of it."""
+        size = path.stat().st_size
+        if size <= PART_BYTES:
+            return self.stage_bytes(tenant, path.read_bytes())
+        with path.open("rb") as file:
+            digest = "sha-256:" + hashlib.file_digest(file, "sha256").hexdigest()
+            file.seek(0)
+            return self._stage_large(tenant, digest, size, _pieces(file))
+
+    def blob(self, tenant: str, digest: str) -> bytes:
+        """Return the whole blob; raise ``BlobBroken`` when it is not what its digest says."""
+        with self._session(self._reader) as session:
+            content = b"".join(SqlBlobRepository(session).parts(tenant, digest))
+        if "sha-256:" + hashlib.sha256(content).hexdigest() != digest:
+            raise BlobBroken(f"blob {digest} has other content")
+        return content
+
+    def blob_to_file(self, tenant: str, digest: str, path: Path) -> None:
+        """Write the blob to ``path``; raise ``BlobBroken`` when it is not what it should be."""
+        running = hashlib.sha256()
+        with self._session(self._reader) as session, path.open("wb") as file:
+            for part in SqlBlobRepository(session).parts(tenant, digest):
+                running.update(part)
+                file.write(part)
+        if "sha-256:" + running.hexdigest() != digest:
+            raise BlobBroken(f"blob {digest} has other content")
+
+    def missing(self) -> list[str]:
+        """Return what keeps the store from working, in words; empty means ready."""
+        try:
+            with self._translated(), self._database.engine.connect() as connection:
+                waiting = pending_in(connection)
+                if waiting:
+                    return [f"migrations {', '.join(waiting)}: run lanewright migrate"]
+                return trigger_faults(connection)
+        except StoreUnavailable as error:
+            return [f"database: {error}"]
+
+    def _stage_large(
+        self,
+        tenant: str,
+        digest: str,
+        size: int,
+        pieces: Iterator[bytes],
+    ) -> Staged:
+        staged = Staged(tenant=tenant, digest=digest, unpacked_bytes=size, part=None)
+        with self._session(self._reader) as session:
+            if SqlBlobRepository(session).has(tenant, digest):
+                return staged
+        parts = -(-size // PART_BYTES)
+        for part, piece in enumerate(pieces):
+            packed = pack(piece)  # before the transaction: others may write meanwhile
+            with self._writing() as session:
+                SqlBlobRepository(session).add(
+                    tenant,
+                    digest,
+                    part=part,
+                    parts=parts,
+                    unpacked_bytes=size,
+                    packed=packed,
+                )
+        return staged
+
+    @contextmanager
+    def _writing(self) -> Iterator[Session]:
+        with self._database.writing, self._session(self._database.engine) as session:
+            yield session
+
+    @contextmanager
+    def _session(self, engine: Engine) -> Iterator[Session]:
+        with (
+            self._translated(),
+            Session(engine, expire_on_commit=False) as session,
+            session.begin(),
+        ):
+            yield session
+
+    @contextmanager
+    def _translated(self) -> Iterator[None]:
+        """Say in the use cases' words that the database cannot be reached, or not in time."""
+        try:
+            yield
+        except (OperationalError, InterfaceError, PoolTimeoutError) as error:
+            raise StoreUnavailable(_first_line(error)) from error
+
+
+def _pieces(file: BinaryIO) -> Iterator[bytes]:
+    while piece := file.read(PART_BYTES):
+        yield piece
+
+
+def _first_line(error: Exception) -> str:
+    # The rest would be the statement with its values, which belong in no log.
+    cause = error.orig if isinstance(error, OperationalError | InterfaceError) else error
+    return str(cause).strip().split("\n", maxsplit=1)[0]
