@@ -1,0 +1,349 @@
+"""From columns to the formal network of each item, and the method that represents them exactly."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from service.network.columns import IntArray, Network
+from service.network.options import Options
+from service.network.reach import LaneUse
+from service.planning.arcs import ROOT, UNLIMITED, Arcs, Kind, MoneyArray, largest, widened
+from service.planning.bounds import LaneBounds, lane_bounds
+from service.planning.groups import IN_MONEY, Groups, groups_of
+from service.planning.layout import Layout, layout_of
+from service.planning.rule_book import RuleBook, rule_book
+from service.planning.scaling import Rationals, cost_scale
+from service.planning.stock import Stock, stock_of
+
+METHOD = "min_cost_flow"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ItemNetwork:
+    """The formal network of one item.
+
+    ``arcs.cost`` is scaled money per step, ``money`` the same before scaling. ``kind`` (a
+    ``Kind``) and ``subject`` say what each arc stands for; lanes come first, in the order of
+    ``lanes.rows``, so that the position of a lane's arc is its position there. ``priorities`` are
+    those that occur, ascending; ``base`` is C: the r-th of T priorities weighs (T + 1 - r) * C.
+    """
+
+    item: int
+    lanes: LaneBounds
+    stock: Stock
+    groups: Groups
+    layout: Layout
+    arcs: Arcs
+    money: Rationals
+    kind: IntArray
+    subject: IntArray
+    priorities: tuple[int, ...]
+    base: int
+
+    @property
+    def node_count(self) -> int:
+        """Return the number of nodes, the root included."""
+        return len(self.layout.nodes)
+
+    def of_kind(self, *kinds: Kind) -> IntArray:
+        """Return the positions of the arcs of some kinds, ascending."""
+        return np.flatnonzero(np.isin(self.kind, [int(kind) for kind in kinds]))
+
+    def weighted(self) -> MoneyArray:
+        """Return what the solver minimises: money, and the weight of its priority a step short."""
+        bound = largest(self.arcs.cost) + len(self.priorities) * self.base
+        cost = widened(self.arcs.cost, bound=bound).copy()
+        for arc, rank in self.ranked_shortages():
+            cost[arc] += (len(self.priorities) - rank) * self.base
+        return cost
+
+    def ranked_shortages(self) -> Iterator[tuple[int, int]]:
+        """Yield each shortage arc of a priority, with the priority's position in ``priorities``."""
+        rank = {priority: at for at, priority in enumerate(self.priorities)}
+        for kind, priority in (
+            (Kind.SHORT, self.groups.priority),
+            (Kind.KEEP_SHORT, self.stock.kept_priority),
+        ):
+            for arc in self.of_kind(kind).tolist():
+                own = int(priority[self.subject[arc]])
+                if own != IN_MONEY:
+                    yield arc, rank[own]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Compiled:
+    """A network ready to solve: one formal network an item, and the scale of all their money."""
+
+    network: Network
+    options: Options
+    use: LaneUse
+    book: RuleBook
+    items: tuple[ItemNetwork, ...]
+    cost_scale: Fraction
+    method: str
+    method_reasons: tuple[str, ...]
+
+
+def compile_network(network: Network, options: Options) -> Compiled:
+    """Return the formal networks of all items.
+
+    The method is always ``min_cost_flow``, and no rule forces another: whatever needs one is
+    refused at the door until it is built.
+
+    Raises ``NumbersTooLargeError`` where a quantity in steps reaches 2**62.
+    """
+    use, book = LaneUse(network), rule_book(network)
+    raw = [
+        _item_arcs(network, options, item, use=use, book=book)
+        for item in range(len(network.items))
+    ]
+    scale = cost_scale(own.money.grid() for own in raw)
+    return Compiled(
+        network=network,
+        options=options,
+        use=use,
+        book=book,
+        items=tuple(own.finish(scale) for own in raw),
+        cost_scale=scale,
+        method=METHOD,
+        method_reasons=(),
+    )
+
+
+@dataclass(slots=True, kw_only=True)
+class _ArcList:
+    """Collects the arcs of one item block by block, before the scale of money is known."""
+
+    item: int
+    lanes: LaneBounds
+    stock: Stock
+    groups: Groups
+    layout: Layout
+    blocks: list[tuple[Kind, IntArray, IntArray, IntArray, IntArray, IntArray, Rationals]]
+    money: Rationals
+
+    def add(  # noqa: PLR0913 - the columns of an arc
+        self,
+        kind: Kind,
+        tail: IntArray,
+        head: IntArray,
+        subject: IntArray,
+        *,
+        minimum: IntArray | int = 0,
+        capacity: IntArray | int = UNLIMITED,
+        money: Rationals | None = None,
+    ) -> None:
+        """Add arcs of one kind; a missing cost is 0."""
+        rows = subject.shape[0]
+        self.blocks.append(
+            (
+                kind,
+                np.broadcast_to(np.asarray(tail, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(head, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(minimum, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(capacity, np.int64), (rows,)),
+                subject.astype(np.int64),
+                Rationals.zeros(rows) if money is None else money,
+            )
+        )
+
+    def finish(self, scale: Fraction) -> ItemNetwork:
+        """Return the item's network at ``scale``."""
+        tail, head, minimum, capacity, subject = (
+            np.concatenate([block[column] for block in self.blocks])  # type: ignore[misc]  # columns 1 to 5 are arrays
+            for column in range(1, 6)
+        )
+        cost = self.money.times(scale).on(Fraction(1))
+        priorities = sorted(
+            (set(self.groups.priority.tolist()) | set(self.stock.kept_priority.tolist()))
+            - {IN_MONEY}
+        )
+        return ItemNetwork(
+            item=self.item,
+            lanes=self.lanes,
+            stock=self.stock,
+            groups=self.groups,
+            layout=self.layout,
+            arcs=Arcs(tail=tail, head=head, minimum=minimum, capacity=capacity, cost=cost),
+            money=self.money,
+            kind=np.concatenate(
+                [np.full(block[1].shape[0], int(block[0]), np.int64) for block in self.blocks]
+            ),
+            subject=subject,
+            priorities=tuple(priorities),
+            # Any loop trades at most one short step for another and gains at most n * max|c|
+            # twice over in money; more than that for each step of priority (MODEL.md, section 4).
+            base=2 * len(self.layout.nodes) * largest(cost) + 1,
+        )
+
+
+def _item_arcs(
+    network: Network, options: Options, item: int, *, use: LaneUse, book: RuleBook
+) -> _ArcList:
+    """Build the arcs of one item."""
+    lanes = lane_bounds(network, item, use.rows(item), book)
+    stock, groups = stock_of(network, item), groups_of(network, item, options)
+    layout = layout_of(
+        network,
+        item,
+        lanes=lanes,
+        stock=stock,
+        groups=groups,
+        book=book,
+        passes_on=use.passes_on,
+    )
+    arcs = _ArcList(
+        item=item,
+        lanes=lanes,
+        stock=stock,
+        groups=groups,
+        layout=layout,
+        blocks=[],
+        money=Rationals.zeros(0),
+    )
+    arcs.add(
+        Kind.LANE,
+        layout.lane_tail,
+        layout.lane_head,
+        np.arange(lanes.rows.shape[0]),
+        minimum=lanes.minimum,
+        capacity=lanes.capacity,
+        money=lanes.money,
+    )
+    _add_stock(arcs)
+    _add_sites(arcs, network, item)
+    _add_serving(arcs, network, item, use)
+    _add_wanting(arcs, shortages=options.shortages == "allow")
+    arcs.money = Rationals.joined([block[6] for block in arcs.blocks])
+    return arcs
+
+
+def _add_stock(arcs: _ArcList) -> None:
+    """Add what can be drawn, and what of it is kept."""
+    stock, layout = arcs.stock, arcs.layout
+    tiers = np.arange(stock.site.shape[0])
+    plain, kept = tiers[layout.stock < 0], tiers[layout.stock >= 0]
+    root = np.array(ROOT)
+    arcs.add(
+        Kind.SUPPLY,
+        root,
+        layout.inside[stock.site[plain]],
+        plain,
+        capacity=stock.steps[plain],
+        money=stock.money.at(plain),
+    )
+    at = layout.stock[kept]
+    arcs.add(Kind.SUPPLY, root, at, kept, capacity=stock.steps[kept])
+    arcs.add(
+        Kind.DRAW, at, layout.inside[stock.site[kept]], kept, money=stock.money.at(kept)
+    )
+    keep_of_site = dict(zip(stock.kept_site.tolist(), layout.keep.tolist(), strict=True))
+    keep = np.array([keep_of_site[site] for site in stock.site[kept].tolist()], np.int64)
+    arcs.add(Kind.KEPT, at, keep, kept)
+
+
+def _add_sites(arcs: _ArcList, network: Network, item: int) -> None:
+    """Add what passes a site: handling, throughput limits, closures."""
+    layout = arcs.layout
+    places = layout.relevant
+    thing = network.items[item]
+    handling = Rationals.given(
+        [network.sites[place].handling(thing.id) * thing.step for place in places.tolist()]
+    )
+    arcs.add(
+        Kind.THROUGH,
+        layout.inside[places],
+        layout.outside[places],
+        places,
+        capacity=np.where(layout.closed[places], 0, layout.limit["through"][places]),
+        money=handling,
+    )
+    sending = places[layout.sent[places] >= 0]
+    arcs.add(
+        Kind.LEAVE,
+        layout.outside[sending],
+        layout.sent[sending],
+        sending,
+        capacity=layout.limit["sent"][sending],
+    )
+    node, site, _ = layout.arrivals
+    joined = np.flatnonzero(~layout.apart[site])
+    arcs.add(
+        Kind.ARRIVE,
+        node[joined],
+        layout.inside[site[joined]],
+        site[joined],
+        capacity=layout.limit["received"][site[joined]],
+    )
+    passing = np.flatnonzero(layout.apart[site] & layout.passes_on[site])
+    arcs.add(
+        Kind.PASS,
+        node[passing],
+        layout.sent[site[passing]],
+        site[passing],
+        capacity=np.where(layout.closed[site[passing]], 0, UNLIMITED),
+        money=handling.at(np.searchsorted(places, site[passing])),
+    )
+
+
+def _add_serving(arcs: _ArcList, network: Network, item: int, use: LaneUse) -> None:
+    """Add who may serve which group."""
+    groups, layout = arcs.groups, arcs.layout
+    own = np.array(
+        [
+            allowed is None or int(site) in allowed
+            for site, allowed in zip(groups.site, groups.origins, strict=True)
+        ],
+        np.bool_,
+    )
+    served = np.flatnonzero(own)
+    arcs.add(
+        Kind.SERVE, layout.outside[groups.site[served]], layout.demand[served], served
+    )
+    node, site, origin = layout.arrivals
+    sources = use.stock_reaching(
+        item, sorted(set(origin[origin >= 0].tolist()))
+    )
+    stock_at = {place: frozenset(np.flatnonzero(mask)) for place, mask in sources.items()}
+    arrivals_of: dict[int, list[int]] = {}
+    for at in np.flatnonzero(layout.apart[site]).tolist():
+        arrivals_of.setdefault(int(site[at]), []).append(at)
+    pairs = [
+        (at, group)
+        for group, (place, allowed) in enumerate(
+            zip(groups.site.tolist(), groups.origins, strict=True)
+        )
+        for at in arrivals_of.get(place, ())
+        if allowed is None or stock_at[int(origin[at])] <= allowed
+    ]
+    at, group = (np.array(column, np.int64) for column in zip(*pairs, strict=True)) if pairs else (
+        np.zeros(0, np.int64),
+        np.zeros(0, np.int64),
+    )
+    thing = network.items[item]
+    arcs.add(
+        Kind.SERVE_ARRIVED,
+        node[at],
+        layout.demand[group],
+        group,
+        capacity=np.where(layout.closed[site[at]], 0, UNLIMITED),
+        money=Rationals.given(
+            [network.sites[place].handling(thing.id) * thing.step for place in site[at].tolist()]
+        ),
+    )
+
+
+def _add_wanting(arcs: _ArcList, *, shortages: bool) -> None:
+    """Add what is wanted and kept, and what may stay short of it."""
+    groups, stock, layout = arcs.groups, arcs.stock, arcs.layout
+    root = np.array(ROOT)
+    for want, short, node, steps, money in (
+        (Kind.WANT, Kind.SHORT, layout.demand, groups.steps, groups.money),
+        (Kind.KEEP_WANT, Kind.KEEP_SHORT, layout.keep, stock.kept_steps, None),
+    ):
+        rows = np.arange(node.shape[0])
+        arcs.add(want, node, root, rows, minimum=steps, capacity=steps)
+        if shortages:
+            arcs.add(short, root, node, rows, money=money)

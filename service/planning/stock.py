@@ -1,0 +1,126 @@
+"""Stock of one item: rows, tiers of equal cost, and what of it is kept."""
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from service.network.columns import CodeArray, IntArray, Item, Network, Texts
+from service.network.units import item_units
+from service.planning.arcs import SAFE, largest
+from service.planning.limits import NumbersTooLargeError
+from service.planning.scaling import Rationals
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Stock:
+    """Supply rows of one item and the tiers they form; the table's order throughout.
+
+    ``rows`` are positions in the network's supply, ``row_tier`` their tier, ``row_steps`` what
+    each adds to its site in whole steps. Tiers: ``site``, ``number`` (1-based at its site),
+    ``steps`` and ``money`` per step. Kept rows: ``kept_site``, ``kept_steps``, ``kept_priority``.
+    """
+
+    rows: IntArray
+    row_tier: IntArray
+    row_steps: IntArray
+    site: CodeArray
+    number: CodeArray
+    steps: IntArray
+    money: Rationals
+    kept_site: CodeArray
+    kept_steps: IntArray
+    kept_priority: CodeArray
+
+
+def factors_of(item: Item, units: Texts, codes: CodeArray) -> tuple[Fraction, ...]:
+    """Return the item units in one of each unit of a table; 1 for units that only others use."""
+    used = set(np.unique(codes).tolist())
+    return tuple(
+        _known(item, unit) if code in used else Fraction(1)
+        for code, unit in enumerate(units.values)
+    )
+
+
+def stock_of(network: Network, item: int) -> Stock:
+    """Return the stock of ``item``."""
+    supply, thing = network.supply, network.items[item]
+    rows = np.flatnonzero(supply.item == item)
+    site, codes = supply.site[rows], supply.unit.codes[rows]
+    factors = factors_of(thing, supply.unit, codes)
+    money = Rationals(
+        values=supply.unit_cost.values[rows],
+        codes=codes,
+        multipliers=tuple(
+            thing.step / (factor * 10**supply.unit_cost.exponent) for factor in factors
+        ),
+    )
+    quantity = Rationals(
+        values=supply.quantity.values[rows],
+        codes=codes,
+        multipliers=tuple(
+            factor / (thing.step * 10**supply.quantity.exponent) for factor in factors
+        ),
+    )
+    new_site = _changes(site)
+    new_tier = new_site | _changes(money.on(money.grid() or Fraction(1)))
+    row_tier = np.cumsum(new_tier) - 1
+    first = np.flatnonzero(new_tier)
+    row_steps = _whole_steps(quantity, new_site)
+    steps = np.zeros(first.shape[0], np.int64)
+    np.add.at(steps, row_tier, row_steps)
+    first_of_site = np.maximum.accumulate(np.where(new_site[first], np.arange(first.shape[0]), 0))
+    kept = np.flatnonzero(supply.keep_priority[rows] > 0)
+    kept_quantity = Rationals(
+        values=supply.keep_quantity.values[rows][kept],
+        codes=codes[kept],
+        multipliers=tuple(
+            factor / (thing.step * 10**supply.keep_quantity.exponent) for factor in factors
+        ),
+    )
+    return Stock(
+        rows=rows,
+        row_tier=row_tier,
+        row_steps=row_steps,
+        site=site[first],
+        number=(np.arange(first.shape[0]) - first_of_site + 1).astype(np.int32),
+        steps=steps,
+        money=money.at(first),
+        kept_site=site[kept],
+        kept_steps=kept_quantity.rounded(up=False, what="keep quantity of a supply row"),
+        kept_priority=supply.keep_priority[rows][kept],
+    )
+
+
+def _whole_steps(quantity: Rationals, new_site: np.ndarray[tuple[int], np.dtype[np.bool_]]) -> IntArray:
+    """Return what each row adds to the whole steps of its site: differences of rounded sums."""
+    if new_site.shape[0] == 0:
+        return np.zeros(0, np.int64)
+    grid = quantity.grid() or Fraction(1)
+    parts = quantity.on(grid)
+    if parts.dtype == object or largest(parts) * parts.shape[0] * grid.numerator >= SAFE:
+        parts = parts.astype(object)
+    sums = np.cumsum(parts)
+    starts = np.flatnonzero(new_site)
+    before = (sums[starts] - parts[starts])[np.cumsum(new_site) - 1]
+    whole = (sums - before) * grid.numerator // grid.denominator
+    if largest(whole) >= SAFE:
+        raise NumbersTooLargeError("The supply of an item at a site is 2^62 steps or more.")
+    whole = whole.astype(np.int64)
+    former = np.concatenate(([0], whole[:-1]))
+    return whole - np.where(new_site, 0, former)
+
+
+def _changes(column: np.ndarray[tuple[int], np.dtype[np.generic]]) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    """Return where a value differs from the one before, the first row included."""
+    changed = np.ones(column.shape[0], np.bool_)
+    changed[1:] = column[1:] != column[:-1]
+    return changed
+
+
+def _known(item: Item, unit: str) -> Fraction:
+    """Return the item units in one ``unit``; the intake has seen that there is an answer."""
+    factor = item_units(item, unit)
+    if factor is None:
+        raise ValueError(f"item {item.id} says nothing of {unit}")
+    return factor
