@@ -10,10 +10,10 @@ _CELL_MAX = 40
 def grouped(value: str | int | Fraction, *, digits: int = 3) -> str:
     """Return a number in groups of three, with at most ``digits`` decimals.
 
-    A value with more is rounded half to even and marked with ``~``: the exact one is in the plan.
+    A value with more is rounded and marked with ``~``: the exact one is in the plan.
     """
     exact = Fraction(value)
-    rounded = Fraction(round(exact, digits))
+    rounded = _rounded(exact, digits)
     whole, _, decimals = _plain(abs(rounded), digits).partition(".")
     whole = f"{int(whole):,}".replace(",", " ")
     sign = "-" if rounded < 0 else ""
@@ -23,8 +23,8 @@ def grouped(value: str | int | Fraction, *, digits: int = 3) -> str:
 
 
 def money(value: str | Fraction, digits: int) -> str:
-    """Return an amount in groups of three, always with ``digits`` decimals, half to even."""
-    rounded = Fraction(round(Fraction(value), digits))
+    """Return an amount in groups of three, always with ``digits`` decimals."""
+    rounded = _rounded(Fraction(value), digits)
     whole, _, decimals = _plain(abs(rounded), digits).partition(".")
     whole = f"{int(whole):,}".replace(",", " ")
     return f"{'-' if rounded < 0 else ''}{whole}{'.' if decimals else ''}{decimals}"
@@ -62,6 +62,12 @@ def table(
         )
         for row in [header, *cells]
     ]
+
+
+def _rounded(value: Fraction, digits: int) -> Fraction:
+    """Return ``value`` rounded half away from zero, as the plan rounds its total."""
+    steps = (abs(value) * 10**digits + Fraction(1, 2)) // 1
+    return Fraction(steps, 10**digits) * (-1 if value < 0 else 1)
 
 
 def _plain(value: Fraction, digits: int) -> str:

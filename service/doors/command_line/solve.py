@@ -120,8 +120,7 @@ def _write_evidence(
     path: Path, folder: Path, options: Options, versions: Mapping[str, str]
 ) -> None:
     """Pack everything that a stranger needs to check the plan."""
-    # Only here: without --evidence nothing of the proof is loaded.
-    from service.proof.evidence import write_evidence  # noqa: PLC0415
+    from service.proof.evidence import write_evidence  # noqa: PLC0415 - NumPy, only for --evidence
 
     with zipfile.ZipFile(folder / "network.zip") as network:
         entries = {name: network.read(name) for name in network.namelist()}

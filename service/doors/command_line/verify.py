@@ -21,8 +21,7 @@ def verify(evidence: Zip, *, as_json: parameters.AsJson = False) -> None:
     Exit codes: 0 intact, 1 broken, 2 unreadable. The zip also holds verify.py, written separately,
     which says the same with nothing but Python.
     """
-    # Only here: the proof loads NumPy, which no other command needs.
-    from service.proof.evidence import verify_evidence  # noqa: PLC0415
+    from service.proof.evidence import verify_evidence  # noqa: PLC0415 - NumPy, only needed here
 
     verdict = verify_evidence(evidence)
     problems = [

@@ -17,7 +17,7 @@ from service.doors.command_line.layout import clipped, count_of, grouped, money,
         ("-1234.05", "-1 234.05"),
         ("0.001", "0.001"),
         ("40/3", "~13.333"),  # 13 1/3
-        ("1/2000", "~0"),  # half to even at the third decimal: 0.0005 lies between 0.000 and 0.001
+        ("1/2001", "~0"),
     ],
 )
 def test_numbers_come_in_groups_of_three_and_say_when_they_are_rounded(
@@ -31,14 +31,14 @@ def test_numbers_come_in_groups_of_three_and_say_when_they_are_rounded(
     ("value", "digits", "text"),
     [
         ("31482.56", 2, "31 482.56"),
-        ("0.005", 2, "0.00"),
+        ("0.005", 2, "0.01"),
         ("0.015", 2, "0.02"),
         ("-7.5", 2, "-7.50"),
-        ("1234.5", 0, "1 234"),
-        ("1235.5", 0, "1 236"),
+        ("1234.5", 0, "1 235"),
+        ("-0.5", 0, "-1"),
     ],
 )
-def test_money_has_the_decimals_of_its_currency_and_rounds_half_to_even(
+def test_money_has_the_decimals_of_its_currency_and_rounds_half_away_from_zero(
     value: str, digits: int, text: str
 ) -> None:
     """Totals on paper must look alike, in yen as in euros."""
