@@ -53,6 +53,10 @@ class Program:
 
     def optimum(self, cost: Sequence[float]) -> float | None:
         """Return the least value of ``cost``, or None where nothing fits all rows."""
+        if not self.cost:
+            # linprog refuses a program without variables; zero is then the only point.
+            fits = all(value == 0 for _, value in self.equal)
+            return 0.0 if fits and all(most >= 0 for _, most in self.at_most) else None
         result: OptimizeResult = linprog(
             cost,
             A_eq=self._matrix(self.equal),
