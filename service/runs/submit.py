@@ -1,0 +1,89 @@
+"""Submitting: what intake found good becomes a waiting run; what is returned is on disk."""
+
+import hashlib
+import zipfile
+from dataclasses import dataclass
+from datetime import date, timedelta
+from pathlib import Path
+from typing import Any, Final
+
+import orjson
+
+from service.network.canonical import canonical_json
+from service.network.options import Options
+from service.runs.events import run_stream
+from service.runs.identity import new_run_id
+from service.runs.ports import Dispatcher, Store
+from service.runs.records import EventKind, submitted_payload
+from service.runs.run import Actor, Run, Submission
+
+RECEIVED: Final = "received"
+NETWORK: Final = "network.zip"
+INTAKE: Final = "intake.json"
+_HEAD: Final = "network/head.json"
+
+
+class IntakeBroken(Exception):  # noqa: N818 - named for the fact, like every error of this house
+    """What intake left does not fit together; our mistake, never a client's."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Submit:
+    """Stores a checked network as a waiting run."""
+
+    store: Store
+    dispatcher: Dispatcher
+
+    def __call__(self, folder: Path, options: Options, actor: Actor, wire_digest: str) -> Run:
+        """Store what intake left in ``folder``; what is returned is on disk.
+
+        The planning itself happens elsewhere (``runs/execute.py``): no transaction is ever open
+        while a solver works. Large blobs are written before the transaction that names them.
+        """
+        tenant = actor.tenant
+        intake_bytes = (folder / INTAKE).read_bytes()
+        summary: dict[str, Any] = orjson.loads(intake_bytes)
+        received = self.store.stage_file(tenant, folder / RECEIVED)
+        normal = self.store.stage_file(tenant, folder / NETWORK)
+        intake = self.store.stage_bytes(tenant, intake_bytes)
+        option_bytes = self.store.stage_bytes(tenant, canonical_json(options.to_document()))
+        # Digests that a child reported are proved here once more: they are written for good.
+        if received.digest != summary["request_digest"]:
+            raise IntakeBroken("the bytes received are not those that were checked")
+        if _network_digest(folder / NETWORK) != summary["network_digest"]:
+            raise IntakeBroken("the normal form is not the one that was reported")
+        plan_for = options.plan_for or date.fromisoformat(summary["plan_for"])
+
+        with self.store.transaction() as store:
+            now = store.now
+            submission = Submission(
+                id=new_run_id(now),
+                tenant=tenant,
+                plan_for=plan_for,
+                number=store.next_number(tenant, plan_for),
+                label=options.label,
+                created_at=now,
+                deadline_at=now + timedelta(seconds=options.deadline_seconds),
+                wire_digest=wire_digest,
+                request_digest=received.digest,
+                network_digest=summary["network_digest"],
+                options_digest=option_bytes.digest,
+                normal_digest=normal.digest,
+                intake_digest=intake.digest,
+                counts=summary["counts"],
+                submitted_by=actor.name,
+                authentication=actor.authentication,
+            )
+            for staged in (received, normal, intake, option_bytes):
+                store.add_blob(staged)
+            store.add_run(submission)
+            stream = run_stream(submission.id)
+            store.append(stream, EventKind.SUBMITTED, actor, submitted_payload(submission))
+            run = store.run(submission.id, tenant)
+        self.dispatcher.notify(run.id)  # only a wake-up: losing it must not lose the run
+        return run
+
+
+def _network_digest(path: Path) -> str:
+    with zipfile.ZipFile(path) as archive:
+        return "sha-256:" + hashlib.sha256(archive.read(_HEAD)).hexdigest()

@@ -1,0 +1,62 @@
+"""Sweeping: runs that wait beyond their deadline fail; runs whose holder is silent wait again."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Final
+
+from service.runs.events import run_stream
+from service.runs.lifecycle import CRASHES_MAX
+from service.runs.ports import Store
+from service.runs.records import EventKind, GivenBack, finished_payload
+from service.runs.run import FailureReason, RunId, engine_of
+from service.runs.settle import failure, settle_crash
+
+_AT_ONCE: Final = 100
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Sweep:
+    """Brings every accepted run to an end; to be called every few seconds."""
+
+    store: Store
+    crashes_max: int = CRASHES_MAX
+
+    def __call__(self) -> Sequence[RunId]:
+        """Settle what is overdue, then return runs that wait to be planned, oldest first."""
+        self._expire()
+        self._take_back()
+        with self.store.reading() as store:
+            return store.waiting(limit=_AT_ONCE)
+
+    def _expire(self) -> None:
+        """Fail what waited too long, one transaction a run, so that none is long."""
+        with self.store.reading() as store:
+            overdue = store.overdue(limit=_AT_ONCE)
+        for run_id, tenant in overdue:
+            with self.store.transaction() as store:
+                ending = failure(
+                    FailureReason.DEADLINE,
+                    "The deadline passed while the run waited for its turn.",
+                    attempt=store.run(run_id, tenant).attempt,
+                    started_at=None,
+                    finished_at=store.now,
+                )
+                if store.fail_waiting(run_id, tenant, ending):
+                    store.append(
+                        run_stream(run_id),
+                        EventKind.FINISHED,
+                        engine_of(tenant),
+                        finished_payload(ending),
+                    )
+
+    def _take_back(self) -> None:
+        """Let runs wait again whose leases are over; with the last crash they fail."""
+        with self.store.transaction() as store:
+            for claim in store.held(expired_only=True, limit=_AT_ONCE):
+                settle_crash(
+                    store,
+                    claim,
+                    GivenBack.LEASE,
+                    detail="its holder went silent.",
+                    crashes_max=self.crashes_max,
+                )
