@@ -1,12 +1,15 @@
 """The tables of a plan document as CSV (RFC 4180), for every door that hands them out.
 
 A cell that holds more than one thing (sources, order references, tags) holds it as compact JSON, so
-that nothing is lost and a row stays a row; an absent value is an empty cell.
+that nothing is lost and a row stays a row; an absent value is an empty cell. A text that a
+spreadsheet would run as a formula gets an apostrophe in front, which spreadsheets do not show.
 """
 
 import csv
 import io
+import re
 from collections.abc import Mapping, Sequence
+from typing import Final
 
 import orjson
 
@@ -81,10 +84,17 @@ def table_csv(plan: Mapping[str, object], table: str) -> bytes:
     return text.getvalue().encode()
 
 
+# Ids and references come from outside: "=..." in one must not run where the table is opened.
+_RUN_BY_SPREADSHEETS: Final = ("=", "+", "-", "@", "\t", "\r", "\n", "＝", "＋", "－", "＠")  # noqa: RUF001 - the wide forms run too
+_NUMBER: Final = re.compile(r"-?[0-9]+(\.[0-9]+)?(/[0-9]+)?")
+
+
 def _cell(value: object) -> str:
     """Return a value as the text of a cell."""
     if value is None:
         return ""
-    if isinstance(value, str):
-        return value
-    return orjson.dumps(value).decode()
+    if not isinstance(value, str):
+        return orjson.dumps(value).decode()
+    if value.startswith(_RUN_BY_SPREADSHEETS) and not _NUMBER.fullmatch(value):
+        return f"'{value}"
+    return value

@@ -35,3 +35,17 @@ def test_what_holds_several_things_is_json_in_its_cell() -> None:
 
     (row,) = csv.DictReader(io.StringIO(text, newline=""))
     assert orjson.loads(row["sources"]) == sources
+
+
+def test_a_formula_in_an_id_is_text_in_a_spreadsheet() -> None:
+    """Whoever may write an order reference must not run commands at the planner's desk."""
+    dangerous = ["=1+1", "+1+1", "-1+1", "@SUM(A1)", "\t=1", "\r=1", "\n=1", "＝1"]  # noqa: RUF001 - runs too
+    plan = {"site_use": [{"site": text, "item": "SAFE=1", "left": "-1.05"} for text in dangerous]}
+
+    text = table_csv(plan, "site_use").decode()
+
+    rows = list(csv.DictReader(io.StringIO(text, newline="")))
+    assert [row["site"] for row in rows] == [f"'{text}" for text in dangerous]
+    assert {row["item"] for row in rows} == {"SAFE=1"}
+    # A negative number is a number, and must stay one.
+    assert {row["left"] for row in rows} == {"-1.05"}

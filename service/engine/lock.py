@@ -1,0 +1,43 @@
+"""The lock that lets one process alone execute the runs of a database file."""
+
+import os
+import sys
+from pathlib import Path
+
+
+class EngineLocked(Exception):  # noqa: N818 - named for the fact, like every error of this house
+    """Another process executes the runs of this database."""
+
+
+class EngineLock:
+    """An advisory lock on a file beside the database, held until ``release`` or the process ends.
+
+    The kernel lets go of it when the holder dies, however it dies, so that no lock is ever stale;
+    the file itself stays, since to remove it would let two processes lock two files of one name.
+    """
+
+    def __init__(self, path: Path) -> None:
+        """Lock ``path``; raise ``EngineLocked`` when another process has it."""
+        path.parent.mkdir(parents=True, exist_ok=True)
+        self._descriptor = os.open(path, os.O_RDWR | os.O_CREAT, 0o600)
+        try:
+            _lock(self._descriptor)
+        except OSError as error:
+            os.close(self._descriptor)
+            raise EngineLocked(f"{path} is locked: another process executes its runs") from error
+
+    def release(self) -> None:
+        """Let another process take over."""
+        os.close(self._descriptor)
+
+
+def _lock(descriptor: int) -> None:
+    """Lock the file without waiting; raise ``OSError`` when that cannot be."""
+    if sys.platform == "win32":
+        import msvcrt  # noqa: PLC0415 - does not exist elsewhere
+
+        msvcrt.locking(descriptor, msvcrt.LK_NBLCK, 1)
+    else:
+        import fcntl  # noqa: PLC0415 - does not exist on Windows
+
+        fcntl.flock(descriptor, fcntl.LOCK_EX | fcntl.LOCK_NB)

@@ -1,0 +1,161 @@
+"""The two kinds of work that children do, in the form in which the use cases call them."""
+
+import threading
+import time
+from collections.abc import Collection, Mapping
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import structlog
+
+from service.engine.children import Nursery
+from service.network.options import Options
+from service.runs.faults import ChildCrashed, ChildTimeout
+from service.runs.run import Claim, Token
+
+if TYPE_CHECKING:
+    from service.network.intake import IntakeReport
+    from service.planning.outcome import Outcome
+
+_log = structlog.get_logger(__name__)
+
+
+class IntakeChildren:
+    """Checks networks, each in a child; an ``IntakeCall``.
+
+    It may be called from any thread, and by as many at a time as there shall be children.
+    """
+
+    def __init__(
+        self,
+        nursery: Nursery,
+        *,
+        seconds: float,
+        memory_bytes: int,
+        limits: Mapping[str, int],
+    ) -> None:
+        """Check with children of ``nursery``; ``limits`` are those of the intake itself."""
+        self._nursery = nursery
+        self._seconds = seconds
+        self._memory_bytes = memory_bytes
+        self._limits = dict(limits)
+        self._closed = threading.Event()
+
+    def __call__(
+        self,
+        spool: Path,
+        folder: Path,
+        *,
+        options: Options,
+        media_type: str,
+        content_encoding: str | None,
+    ) -> "IntakeReport":
+        """Check ``spool``; leave ``received``, ``network.zip``, ``intake.json`` in ``folder``."""
+        from service.network.intake import IntakeReport  # noqa: PLC0415 - loads when first needed
+
+        task = {
+            "spool": str(spool),
+            "folder": str(folder),
+            "options": options.to_document(),
+            "media_type": media_type,
+            "content_encoding": content_encoding,
+            "limits": self._limits,
+        }
+        child = self._nursery.take()
+        answer = child.ask(
+            task, seconds=self._seconds, memory_bytes=self._memory_bytes, released=self._closed
+        )
+        received = folder / "received"
+        size = received.stat().st_size if received.exists() else spool.stat().st_size
+        self._nursery.give_back(child, input_bytes=size)
+        return IntakeReport.from_document(answer)
+
+    def close(self) -> None:
+        """End every check that is under way and every child."""
+        self._closed.set()
+        self._nursery.close()
+
+
+class PlanningChildren:
+    """Plans networks, each in a child; a ``Planner``.
+
+    It remembers under which claim each of its callers works, so that leases are renewed and a child
+    whose claim is gone is ended. A claim is remembered until its caller says ``settled``: to store
+    a large plan takes a while, too, in which the lease must not run out.
+    """
+
+    def __init__(self, nursery: Nursery, *, memory_bytes: int) -> None:
+        """Plan with children of ``nursery``, each within ``memory_bytes``."""
+        self._nursery = nursery
+        self._memory_bytes = memory_bytes
+        self._lock = threading.Lock()
+        # By the calling thread, which works on one run at a time.
+        self._busy: dict[int, tuple[Token, threading.Event]] = {}
+        self._closed = False
+
+    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> "Outcome":
+        """Plan the network in ``source`` within the seconds that ``claim`` has left."""
+        until = time.monotonic() + claim.seconds_left
+        released = threading.Event()
+        with self._lock:
+            self._busy[threading.get_ident()] = (claim.token, released)
+            if self._closed:
+                released.set()
+
+        def progress(phase: str, numbers: Mapping[str, int]) -> None:
+            _log.info("planning", run_id=claim.run_id, phase=phase, **numbers)
+
+        child = self._nursery.take()
+        seconds = until - time.monotonic()
+        if seconds <= 0:
+            self._nursery.give_back(child, input_bytes=0)
+            raise ChildTimeout("there was no time left to plan in")
+        answer = child.ask(
+            {"source": str(source), "options": options.to_document(), "target": str(target)},
+            seconds=seconds,
+            memory_bytes=self._memory_bytes,
+            released=released,
+            on_progress=progress,
+        )
+        self._nursery.give_back(child, input_bytes=(source / "network.zip").stat().st_size)
+        return read_outcome(answer)
+
+    def settled(self) -> None:
+        """Forget the claim of the calling thread: its run is stored, or given back."""
+        with self._lock:
+            self._busy.pop(threading.get_ident(), None)
+
+    def tokens(self) -> frozenset[Token]:
+        """Return the claims under which something is being planned or stored now."""
+        with self._lock:
+            return frozenset(token for token, _ in self._busy.values())
+
+    def release(self, tokens: Collection[Token]) -> None:
+        """End the children that work under ``tokens``; their callers get ``ChildReleased``."""
+        with self._lock:
+            for token, released in self._busy.values():
+                if token in tokens:
+                    released.set()
+
+    def close(self) -> None:
+        """End every child, now and for good."""
+        with self._lock:
+            self._closed = True
+            for _, released in self._busy.values():
+                released.set()
+        self._nursery.close()
+
+
+def read_outcome(answer: Mapping[str, object]) -> "Outcome":
+    """Return the outcome that a planning child answered; raise ``ChildCrashed`` if it is none."""
+    from service.planning.outcome import Outcome  # noqa: PLC0415 - loads when first needed
+
+    match answer:
+        case {
+            "state": str(state),
+            "reason": str() | None as reason,
+            "detail": str() | None as detail,
+            "seconds": dict(seconds),
+        }:
+            return Outcome(state=state, reason=reason, detail=detail, seconds=seconds)  # type: ignore[arg-type] # the use case reads them into its own enumerations
+    raise ChildCrashed("answered with something that is no outcome")
