@@ -82,9 +82,11 @@ class ItemProblem:
         """Return whether goods that arrive at ``site`` and goods drawn there are free alike."""
         if any(line.site == site and line.origins is not None for line in self.lines):
             return False
-        drawn = any(stock.site == site for stock in self.stocks)
         fed = any(lane.destination == site for lane in self.lanes)
-        return site in self.cross_docks or not (drawn and fed)
+        leaves = any(lane.origin == site for lane in self.lanes)
+        drawn = any(stock.site == site for stock in self.stocks)
+        # Elsewhere than at a cross-dock what arrives must not leave, nor be taken for own stock.
+        return site in self.cross_docks or not fed or not (drawn or leaves)
 
     def stock_behind(self, lane: OracleLane) -> frozenset[str]:
         """Return the sites whose stock of the item can leave on ``lane``, whatever is closed."""
