@@ -59,13 +59,14 @@ def given_back_payload(claim: Claim, why: GivenBack, *, crashes: int) -> dict[st
     return {"attempt": claim.attempt, "because": why.value, "crashes": crashes}
 
 
-def finished_payload(ending: Ending) -> dict[str, object]:
+def finished_payload(ending: Ending, *, crashes: int) -> dict[str, object]:
     """Return what the last event of a run says."""
     return {
         "state": ending.state.value,
         "reason": None if ending.reason is None else ending.reason.value,
         "detail": ending.detail,
         "attempt": ending.attempt,
+        "crashes": crashes,
         "started_at": None if ending.started_at is None else moment_text(ending.started_at),
         "finished_at": moment_text(ending.finished_at),
         "plan_digest": ending.plan_digest,

@@ -18,11 +18,12 @@ def end(store: Transaction, claim: Claim, ending: Ending, *, crashed: bool = Fal
     """Make the run final if ``claim`` holds it, and say so in its history."""
     finish = store.finish(claim, ending, crashed=crashed)
     if finish is Finish.STORED:
+        crashes = store.run(claim.run_id, claim.tenant).crashes
         store.append(
             run_stream(claim.run_id),
             EventKind.FINISHED,
             engine_of(claim.tenant),
-            finished_payload(ending),
+            finished_payload(ending, crashes=crashes),
         )
     return finish
 

@@ -34,11 +34,12 @@ class Sweep:
             overdue = store.overdue(limit=_AT_ONCE)
         for run_id, tenant in overdue:
             with self.store.transaction() as store:
+                run = store.run(run_id, tenant)
                 ending = failure(
                     FailureReason.DEADLINE,
                     "The deadline passed while the run waited for its turn.",
-                    attempt=store.run(run_id, tenant).attempt,
-                    started_at=None,
+                    attempt=run.attempt,
+                    started_at=run.started_at,
                     finished_at=store.now,
                 )
                 if store.fail_waiting(run_id, tenant, ending):
@@ -46,7 +47,7 @@ class Sweep:
                         run_stream(run_id),
                         EventKind.FINISHED,
                         engine_of(tenant),
-                        finished_payload(ending),
+                        finished_payload(ending, crashes=run.crashes),
                     )
 
     def _take_back(self) -> None:

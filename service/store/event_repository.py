@@ -8,7 +8,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from service.network.canonical import canonical_json
-from service.runs.events import moment_text, next_event
+from service.runs.events import next_event
 from service.runs.run import Actor, StoredEvent
 from service.store.tables import EventPayloadRow, EventRow
 
@@ -49,7 +49,7 @@ class SqlEventRepository:
                 stream=event.stream,
                 seq=event.seq,
                 format=event.format,
-                recorded_at=recorded_at,
+                recorded_at=event.recorded_at,
                 kind=event.kind,
                 actor=event.actor,
                 authentication=event.authentication,
@@ -74,7 +74,26 @@ class SqlEventRepository:
 
     def events(self, stream: str, tenant: str) -> Sequence[StoredEvent]:
         """Return all events of one stream in order; empty when there is no such stream."""
-        return list(self._select(stream, tenant))
+        return [
+            event_of(row, None if payload is None else orjson.loads(payload.payload), payload)
+            for row, payload in self.rows(stream, tenant)
+        ]
+
+    def rows(self, stream: str, tenant: str) -> Iterator[tuple[EventRow, EventPayloadRow | None]]:
+        """Yield the rows of one stream in order, unread: an audit trusts none of them."""
+        statement = (
+            select(EventRow, EventPayloadRow)
+            .outerjoin(
+                EventPayloadRow,
+                (EventPayloadRow.tenant == EventRow.tenant)
+                & (EventPayloadRow.stream == EventRow.stream)
+                & (EventPayloadRow.seq == EventRow.seq),
+            )
+            .where(EventRow.tenant == tenant, EventRow.stream == stream)
+            .order_by(EventRow.seq)
+        )
+        for row in self._session.execute(statement):
+            yield row[0], row[1]
 
     def streams(self) -> Iterator[tuple[str, str]]:
         """Yield (tenant, stream) of every stream there is."""
@@ -95,37 +114,27 @@ class SqlEventRepository:
             .limit(1)
         )
         row = self._session.scalar(statement)
-        return None if row is None else _event(row, None)
-
-    def _select(self, stream: str, tenant: str) -> Iterator[StoredEvent]:
-        statement = (
-            select(EventRow, EventPayloadRow)
-            .outerjoin(
-                EventPayloadRow,
-                (EventPayloadRow.tenant == EventRow.tenant)
-                & (EventPayloadRow.stream == EventRow.stream)
-                & (EventPayloadRow.seq == EventRow.seq),
-            )
-            .where(EventRow.tenant == tenant, EventRow.stream == stream)
-            .order_by(EventRow.seq)
-        )
-        for row in self._session.execute(statement):
-            yield _event(row[0], row[1])
+        return None if row is None else event_of(row, None, None)
 
 
-def _event(row: EventRow, payload: EventPayloadRow | None) -> StoredEvent:
+def event_of(
+    row: EventRow,
+    payload: Mapping[str, object] | None,
+    payload_row: EventPayloadRow | None,
+) -> StoredEvent:
+    """Return the row as the use cases know it, with what was read of its payload."""
     return StoredEvent(
         tenant=row.tenant,
         stream=row.stream,
         seq=row.seq,
         format=row.format,
-        recorded_at=moment_text(row.recorded_at),
+        recorded_at=row.recorded_at,
         kind=row.kind,
         actor=row.actor,
         authentication=row.authentication,
         payload_digest=row.payload_digest,
         previous=row.previous,
         hash=row.hash,
-        payload=None if payload is None else orjson.loads(payload.payload),
-        salt=None if payload is None else payload.salt,
+        payload=payload,
+        salt=None if payload_row is None else payload_row.salt,
     )

@@ -212,7 +212,7 @@ class EventRow(Base):
     stream: Mapped[str]
     seq: Mapped[int]
     format: Mapped[int]
-    recorded_at: Mapped[datetime]
+    recorded_at: Mapped[str]
     kind: Mapped[str]
     actor: Mapped[str]
     authentication: Mapped[str]

@@ -1,0 +1,34 @@
+"""Putting the use cases together, for whoever composes the service."""
+
+from collections.abc import Callable
+
+from service.runs.evidence import Evidence
+from service.runs.ports import Application, Dispatcher, IntakeCall, Store
+from service.runs.read import Read
+from service.runs.submit import Submit
+
+
+def application(
+    *,
+    store: Store,
+    dispatcher: Dispatcher,
+    intake: IntakeCall,
+    engine_missing: Callable[[], list[str]],
+) -> Application:
+    """Return the use cases over ``store``.
+
+    ``intake`` checks networks in a child of the engine's, ``engine_missing`` says what keeps the
+    engine from working.
+    """
+    read = Read(store=store)
+    return Application(
+        intake=intake,
+        submit=Submit(store=store, dispatcher=dispatcher),
+        run=read.run,
+        plan_bytes=read.plan_bytes,
+        certificate_bytes=read.certificate_bytes,
+        network_bytes=read.network_bytes,
+        history=read.history,
+        evidence=Evidence(read=read),
+        readiness=lambda: [*store.missing(), *engine_missing()],
+    )

@@ -1,0 +1,147 @@
+"""Runs for tests of store and use cases: small, but with true digests everywhere."""
+
+import hashlib
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import orjson
+
+from service.network.canonical import canonical_json, write_stored_zip
+from service.network.options import Options
+from service.runs.execute import Execute
+from service.runs.ports import Claim, Run, RunId, Store
+from service.runs.run import LOCAL, Actor
+from service.runs.submit import Submit
+
+WIRE_DIGEST = "sha-256:" + "a" * 64
+
+
+def sha256(content: bytes) -> str:
+    """Return the digest of ``content`` as the house writes it."""
+    return "sha-256:" + hashlib.sha256(content).hexdigest()
+
+
+def intake_folder(
+    folder: Path, *, body: bytes = b'{"format":1}', plan_for: str = "2026-02-03"
+) -> Path:
+    """Write what intake leaves behind; the network has one column, for its digest."""
+    folder.mkdir(parents=True, exist_ok=True)
+    column = hashlib.sha256(body).digest()
+    head = canonical_json(
+        {
+            "format": 1,
+            "currency": "EUR",
+            "tables": {
+                "lanes": {
+                    "rows": 8,
+                    "columns": {"origin": {"type": "code", "digest": sha256(column)}},
+                }
+            },
+        },
+    )
+    entries = {"network/head.json": head, "network/lanes/origin": column}
+    write_stored_zip(folder / "network.zip", entries)
+    (folder / "received").write_bytes(body)
+    summary = {
+        "cautions": [],
+        "set_aside": [],
+        "counts": {"items": 1, "sites": 2, "supply_rows": 1, "demand_rows": 1, "lanes": 8},
+        "request_digest": sha256(body),
+        "network_digest": sha256(head),
+        "currency": "EUR",
+        "cut_off": "2026-02-03T16:00:00+01:00",
+        "plan_for": plan_for,
+        "name": None,
+    }
+    (folder / "intake.json").write_bytes(orjson.dumps(summary))
+    return folder
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FakeOutcome:
+    """What a planning child answers."""
+
+    state: str = "planned"
+    reason: str | None = None
+    detail: str | None = None
+    seconds: Mapping[str, float] = field(default_factory=lambda: {"read": 0.25, "solved": 0.5})
+
+
+@dataclass(slots=True, kw_only=True)
+class FakePlanner:
+    """Writes a small plan of the network it was given, or does what a test tells it to."""
+
+    outcome: FakeOutcome = field(default_factory=FakeOutcome)
+    instead: Callable[[Claim], object] | None = None
+    lines: int = 2
+    seen: list[Claim] = field(default_factory=list)
+
+    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> FakeOutcome:
+        """Plan as the real one would: files in, files out."""
+        self.seen.append(claim)
+        if self.instead is not None:
+            self.instead(claim)
+        intake = orjson.loads((source / "intake.json").read_bytes())
+        plan = {
+            "format": 1,
+            "status": self.outcome.state,
+            "network_digest": intake["network_digest"],
+            "options_digest": sha256(canonical_json(options.to_document())),
+            "plan_lines": [
+                {"lane": f"L{n}", "origin": "A", "destination": "B", "item": "I", "quantity": "4"}
+                for n in range(self.lines)
+            ],
+            "order_lines": [
+                {
+                    "reference": f"#{n}",
+                    "site": "B",
+                    "item": "I",
+                    "quantity": "4",
+                    "served": "3.5",
+                    "short": "0.5",
+                }
+                for n in range(self.lines)
+            ],
+        }
+        if self.outcome.state != "failed" or self.outcome.reason == "proof_failed":
+            (target / "plan.json").write_bytes(orjson.dumps(plan))
+            (target / "certificate.json").write_bytes(b'{"format":1}')
+        return self.outcome
+
+
+@dataclass(slots=True, kw_only=True)
+class FakeDispatcher:
+    """Remembers who was woken up."""
+
+    notified: list[RunId] = field(default_factory=list)
+
+    def notify(self, run_id: RunId) -> None:
+        """Note the wake-up."""
+        self.notified.append(run_id)
+
+
+def submitted(  # noqa: PLR0913 - each names one thing that a test may want to differ
+    store: Store,
+    folder: Path,
+    *,
+    actor: Actor = LOCAL,
+    body: bytes = b'{"format":1}',
+    plan_for: str = "2026-02-03",
+    deadline_seconds: int = 60,
+) -> Run:
+    """Submit a run as a door would."""
+    submit = Submit(store=store, dispatcher=FakeDispatcher())
+    left = intake_folder(folder, body=body, plan_for=plan_for)
+    return submit(left, Options(deadline_seconds=deadline_seconds), actor, WIRE_DIGEST)
+
+
+def execution(store: Store, scratch: Path, planner: FakePlanner | None = None) -> Execute:
+    """Return the use case that executes runs, with a planner that needs no solver."""
+    return Execute(
+        store=store,
+        planner=planner or FakePlanner(),  # type: ignore[arg-type] # its outcome only looks alike
+        scratch=scratch,
+        lease_seconds=30,
+        pause=lambda _: None,
+    )
