@@ -7,6 +7,9 @@ from collections.abc import Sequence
 import pytest
 from hypothesis import settings
 
+# Fixtures for both databases, wherever a test asks for them.
+pytest_plugins = ("tests.databases",)
+
 # The law is checked on the same examples everywhere, so that a red build is red for everybody;
 # ``--long`` looks for new ones.
 settings.register_profile("short", derandomize=True, deadline=None, max_examples=20)
