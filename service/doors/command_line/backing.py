@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Protocol
 if TYPE_CHECKING:
     from service.network.intake import IntakeReport
     from service.network.options import Options
+    from service.planning.outcome import Outcome
     from service.runs.ports import Application
 
 OnProgress = Callable[[str, Mapping[str, int]], None]
@@ -43,12 +44,8 @@ class PlanWork(Protocol):
 
     def __call__(
         self, source: Path, target: Path, *, options: "Options", on_progress: OnProgress
-    ) -> Mapping[str, object]:
-        """Plan the network in folder ``source``; return the child's answer.
-
-        The answer has ``state`` (``planned``, ``no_plan`` or ``failed``), ``reason``, ``detail``
-        and ``seconds``; ``plan.json`` and ``certificate.json`` lie in folder ``target``.
-        """
+    ) -> "Outcome":
+        """Plan the network in ``source``; leave plan and certificate in ``target``."""
         ...
 
 
@@ -65,7 +62,7 @@ class Audit:
     """What an audit of the whole store found: ``intact``, ``broken`` or ``unreadable``."""
 
     verdict: str
-    problems: tuple[Mapping[str, object], ...]
+    problems: tuple[Mapping[str, str], ...]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -73,15 +70,15 @@ class Backing:
     """All work behind the commands.
 
     ``application`` opens the store and runs the engine for as long as its block lasts; ``migrate``
-    brings the database to the newest form and returns what it is now; ``address`` is where
-    ``serve`` would listen; ``versions`` is what made a plan.
+    brings the database to the newest form and returns the revisions it applied; ``address`` is
+    where ``serve`` would listen; ``versions`` is what made a plan.
     """
 
     intake: IntakeWork
     plan: PlanWork
     application: Callable[[], AbstractContextManager["Application"]]
     serve: Serve
-    migrate: Callable[[], str]
+    migrate: Callable[[], list[str]]
     audit: Callable[[], Audit]
     address: Callable[[], str]
     versions: Callable[[], Mapping[str, str]]

@@ -26,7 +26,7 @@ POLL_SECONDS = 0.05
 
 
 def demo(context: typer.Context, *, as_json: parameters.AsJson = False) -> None:
-    """Plan the demo network, store it, show the summary and how to look at it.
+    """Plan and store the demo network, show what came of it.
 
     With --json the demo network itself is written, to be changed and planned with solve.
     """

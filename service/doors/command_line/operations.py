@@ -30,7 +30,9 @@ def serve(context: typer.Context, *, port: Port = None) -> None:
 
 def migrate(context: typer.Context) -> None:
     """Bring the database to the form that this version needs."""
-    put_lines([f"The database is at {context.ensure_object(Backing).migrate()}."])
+    applied = context.ensure_object(Backing).migrate()
+    done = f"Applied {', '.join(applied)}. " if applied else ""
+    put_lines([f"{done}The database is up to date."])
 
 
 @audit.command(
@@ -46,7 +48,7 @@ def audit_check(context: typer.Context, *, as_json: parameters.AsJson = False) -
         put_json({"verdict": found.verdict, "problems": found.problems})
     else:
         problems = [
-            "  " + ", ".join(f"{name} {value}" for name, value in problem.items())
+            f"  {problem['place']}: {problem['detail']} [{problem['code']}]"
             for problem in found.problems[:PROBLEMS_SHOWN]
         ]
         put_lines([found.verdict, *problems])

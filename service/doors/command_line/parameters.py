@@ -19,6 +19,11 @@ def _option(name: str, help_text: str, metavar: str) -> object:
     return typer.Option(*spellings, help=help_text, metavar=metavar, show_default=False)
 
 
+def _later(name: str) -> object:
+    """Return an option that is refused by its name, as ``not_yet``, and not shown."""
+    return typer.Option(f"--{name.replace('_', '-')}", f"--{name}", hidden=True)
+
+
 File = Annotated[
     str, typer.Argument(metavar="FILE", help="The network; - reads it from standard input.")
 ]
@@ -50,6 +55,10 @@ MaximumAgeMinutes = Annotated[
     str | None,
     _option("maximum_age_minutes", "Refuse stock counted longer before the cut-off.", "MINUTES"),
 ]
+FairShares = Annotated[str | None, _later("fair_shares")]
+FormerRun = Annotated[str | None, _later("former_run")]
+Allowance = Annotated[str | None, _later("allowance")]
+Gap = Annotated[str | None, _later("gap")]
 AsJson = Annotated[
     bool, typer.Option("--json", help="Write JSON to standard output, faults included.")
 ]

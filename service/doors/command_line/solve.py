@@ -49,6 +49,10 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
     plan_for: parameters.PlanFor = None,
     deadline_seconds: parameters.DeadlineSeconds = None,
     maximum_age_minutes: parameters.MaximumAgeMinutes = None,
+    fair_shares: parameters.FairShares = None,
+    former_run: parameters.FormerRun = None,
+    allowance: parameters.Allowance = None,
+    gap: parameters.Gap = None,
 ) -> None:
     """Plan a network and show what came of it.
 
@@ -66,6 +70,10 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
             "plan_for": plan_for,
             "deadline_seconds": deadline_seconds,
             "maximum_age_minutes": maximum_age_minutes,
+            "fair_shares": fair_shares,
+            "former_run": former_run,
+            "allowance": allowance,
+            "gap": gap,
         }
     )
     if csv is not None and as_json:
@@ -101,7 +109,7 @@ def _planned(backing: Backing, file: str, folder: Path, options: Options) -> Non
     with progress_bar("checking") as moved:
         accepted(backing, file, folder, options)
         try:
-            answer = backing.plan(folder, folder, options=options, on_progress=moved)
+            outcome = backing.plan(folder, folder, options=options, on_progress=moved)
         except ChildTimeout as error:
             detail = f"no plan within {options.deadline_seconds} s: raise --deadline-seconds"
             raise EndingError(Exit.FAILED, "time_limit", detail) from error
@@ -111,9 +119,9 @@ def _planned(backing: Backing, file: str, folder: Path, options: Options) -> Non
         except (ChildCrashed, ChildReleased) as error:
             detail = f"planning broke off: {error}"
             raise EndingError(Exit.FAILED, "solver_crashed", detail) from error
-    if answer["state"] == "failed":
-        detail = f"planning failed: {answer['detail'] or answer['reason']}"
-        raise EndingError(Exit.FAILED, str(answer["reason"]), detail)
+    if outcome.state == "failed":
+        detail = f"planning failed: {outcome.detail or outcome.reason}"
+        raise EndingError(Exit.FAILED, str(outcome.reason), detail)
 
 
 def _write_evidence(
