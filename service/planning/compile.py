@@ -303,10 +303,10 @@ def _add_serving(arcs: _ArcList, network: Network, item: int, use: LaneUse) -> N
         Kind.SERVE, layout.outside[groups.site[served]], layout.demand[served], served
     )
     node, site, origin = layout.arrivals
-    sources = use.stock_reaching(
-        item, sorted(set(origin[origin >= 0].tolist()))
-    )
-    stock_at = {place: frozenset(np.flatnonzero(mask)) for place, mask in sources.items()}
+    stock_at = {
+        place: frozenset(np.flatnonzero(use.stock_reaching(item, place)).tolist())
+        for place in sorted(set(origin[origin >= 0].tolist()))
+    }
     arrivals_of: dict[int, list[int]] = {}
     for at in np.flatnonzero(layout.apart[site]).tolist():
         arrivals_of.setdefault(int(site[at]), []).append(at)
@@ -316,7 +316,7 @@ def _add_serving(arcs: _ArcList, network: Network, item: int, use: LaneUse) -> N
             zip(groups.site.tolist(), groups.origins, strict=True)
         )
         for at in arrivals_of.get(place, ())
-        if allowed is None or stock_at[int(origin[at])] <= allowed
+        if allowed is None or _all_named(stock_at[int(origin[at])], allowed)
     ]
     at, group = (np.array(column, np.int64) for column in zip(*pairs, strict=True)) if pairs else (
         np.zeros(0, np.int64),
@@ -333,6 +333,14 @@ def _add_serving(arcs: _ArcList, network: Network, item: int, use: LaneUse) -> N
             [network.sites[place].handling(thing.id) * thing.step for place in site[at].tolist()]
         ),
     )
+
+
+def _all_named(stock: frozenset[int], allowed: frozenset[int]) -> bool:
+    """Return whether some stock can come this way and all of it may serve.
+
+    Where only a part is named the intake has refused the line (``origins_behind_cross_dock``).
+    """
+    return bool(stock) and stock <= allowed
 
 
 def _add_wanting(arcs: _ArcList, *, shortages: bool) -> None:

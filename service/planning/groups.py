@@ -21,7 +21,8 @@ class Groups:
 
     ``rows`` are positions in the network's demand (all order lines of the item, by reference),
     ``row_steps`` what each wants in whole steps, ``row_group`` its group (-1: it wants nothing),
-    ``row_priority`` its priority (``IN_MONEY``: it competes in money). Groups: ``site``,
+    ``row_priority`` its priority (``IN_MONEY``: it competes in money), ``row_money`` its money a
+    step short, ``row_exact`` what it wants in steps before rounding. Groups: ``site``,
     ``steps``, ``priority``, ``money`` for a step short (0 where a priority decides), ``label`` (the
     row of the smallest reference) and ``origins`` (site positions, or None where any may serve).
     """
@@ -30,6 +31,8 @@ class Groups:
     row_steps: IntArray
     row_group: IntArray
     row_priority: CodeArray
+    row_money: Rationals
+    row_exact: Rationals
     site: CodeArray
     steps: IntArray
     priority: CodeArray
@@ -44,13 +47,16 @@ def groups_of(network: Network, item: int, options: Options) -> Groups:
     rows = np.flatnonzero(demand.item == item)
     codes = demand.unit.codes[rows]
     factors = factors_of(thing, demand.unit, codes)
-    row_steps = Rationals(
+    exact = Rationals(
         values=demand.quantity.values[rows],
         codes=codes,
         multipliers=tuple(
             factor / (thing.step * 10**demand.quantity.exponent) for factor in factors
         ),
-    ).rounded(up=options.demand_rounding == "up", what="quantity of an order line")
+    )
+    row_steps = exact.rounded(
+        up=options.demand_rounding == "up", what="quantity of an order line"
+    )
     priority, money = _claims(network, rows, codes, factors, step=thing.step, options=options)
     wanting = np.flatnonzero(row_steps > 0)
     _, money_code = np.unique(money.on(money.grid() or Fraction(1)), return_inverse=True)
@@ -78,6 +84,8 @@ def groups_of(network: Network, item: int, options: Options) -> Groups:
         row_steps=row_steps,
         row_group=row_group,
         row_priority=priority,
+        row_money=money,
+        row_exact=exact,
         site=demand.site[rows][first],
         steps=steps,
         priority=priority[first],

@@ -61,14 +61,15 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
     """Return nodes and attachments of ``item``; ``passes_on`` tells the cross-docks."""
     sites = len(network.sites)
     origin, destination = network.lanes.origin[lanes.rows], network.lanes.destination[lanes.rows]
-    has_stock, arrives, relevant, by_origin = (np.zeros(sites, np.bool_) for _ in range(4))
+    has_stock, arrives, leaves, relevant, by_origin = (np.zeros(sites, np.bool_) for _ in range(5))
     has_stock[stock.site] = True
     arrives[destination] = True
+    leaves[origin] = True
     for place in (stock.site, groups.site, origin, destination):
         relevant[place] = True
     named = np.array([allowed is not None for allowed in groups.origins], np.bool_)
     by_origin[groups.site[named]] = True
-    apart = by_origin | (~passes_on & has_stock & arrives)
+    apart = by_origin | (~passes_on & arrives & (has_stock | leaves))
     limit = _limits(network, item, book)
     received = relevant & ~apart & (limit["received"] != UNLIMITED)
     sent = relevant & (apart | (limit["sent"] != UNLIMITED))

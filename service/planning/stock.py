@@ -69,6 +69,7 @@ def stock_of(network: Network, item: int) -> Stock:
     row_steps = _whole_steps(quantity, new_site)
     steps = np.zeros(first.shape[0], np.int64)
     np.add.at(steps, row_tier, row_steps)
+    # A tier's number counts all tiers of its site.
     first_of_site = np.maximum.accumulate(np.where(new_site[first], np.arange(first.shape[0]), 0))
     kept = np.flatnonzero(supply.keep_priority[rows] > 0)
     kept_quantity = Rationals(
@@ -78,6 +79,10 @@ def stock_of(network: Network, item: int) -> Stock:
             factor / (thing.step * 10**supply.keep_quantity.exponent) for factor in factors
         ),
     )
+    kept_steps = kept_quantity.rounded(up=False, what="keep quantity of a supply row")
+    # What is less than a step cannot be kept, and so is not wanted.
+    whole = np.flatnonzero(kept_steps > 0)
+    kept = kept[whole]
     return Stock(
         rows=rows,
         row_tier=row_tier,
@@ -87,7 +92,7 @@ def stock_of(network: Network, item: int) -> Stock:
         steps=steps,
         money=money.at(first),
         kept_site=site[kept],
-        kept_steps=kept_quantity.rounded(up=False, what="keep quantity of a supply row"),
+        kept_steps=kept_steps[whole],
         kept_priority=supply.keep_priority[rows][kept],
     )
 

@@ -1,0 +1,84 @@
+"""Why there is no plan, in words: what must leave a set of places, and what can come in."""
+
+import numpy as np
+
+from service.network.columns import IntArray, Network
+from service.network.naming import lane_names
+from service.planning.amounts import text
+from service.planning.arcs import ROOT, SIDES, UNLIMITED, Kind, Side
+from service.planning.certificate import Document
+from service.planning.compile import ItemNetwork
+from service.planning.limits import NoCirculationError
+
+NAMES_MAX = 3
+
+
+def contradiction_reason(
+    network: Network, cuts: list[tuple[ItemNetwork, NoCirculationError]]
+) -> Document:
+    """Return the ``reason`` of a network without a plan: one row for each item that has none."""
+    items = [_item(network, own, cut) for own, cut in cuts]
+    details = " ".join(str(row["detail"]) for row in items[:NAMES_MAX])
+    more = f" So it is for {len(items) - NAMES_MAX} more items." if len(items) > NAMES_MAX else ""
+    return {"detail": details + more, "items": items}
+
+
+def _item(network: Network, own: ItemNetwork, cut: NoCirculationError) -> Document:
+    """Return the contradiction of one item."""
+    item = network.items[own.item]
+    nodes = own.layout.nodes
+    sites = sorted(set(nodes.site[np.flatnonzero(cut.places)].tolist()) - {-1})
+    forced, entering = text(cut.forced_out * item.step), text(cut.can_enter * item.step)
+    leaving = cut.places[own.arcs.tail] & ~cut.places[own.arcs.head] & (own.arcs.minimum > 0)
+    coming = ~cut.places[own.arcs.tail] & cut.places[own.arcs.head] & (own.arcs.capacity > 0)
+    must = _words(network, own, np.flatnonzero(leaving))
+    can = _words(network, own, np.flatnonzero(coming)) or "nothing"
+    if cut.places[ROOT]:
+        place = "everything but " + _list(_outside(network, own, cut))
+    else:
+        place = _list([network.sites[site].id for site in sites])
+    return {
+        "item": item.id,
+        "places": [network.sites[site].id for site in sites],
+        "must_leave": forced,
+        "can_enter": entering,
+        "detail": f"{item.id}: {must} must take {forced} {item.unit} out of {place}, "
+        f"but only {entering} can come in ({can}).",
+    }
+
+
+def _outside(network: Network, own: ItemNetwork, cut: NoCirculationError) -> list[str]:
+    """Return the ids of the sites with a node outside the set."""
+    sites = set(own.layout.nodes.site[np.flatnonzero(~cut.places)].tolist()) - {-1}
+    return [network.sites[site].id for site in sorted(sites)]
+
+
+def _words(network: Network, own: ItemNetwork, arcs: IntArray) -> str:
+    """Return what some arcs stand for, in words, the first few of each kind by name."""
+    lanes = arcs[own.kind[arcs] == Kind.LANE]
+    names = [f"lane {name}" for name in lane_names(network, own.lanes.rows[own.subject[lanes]])]
+    for arc in arcs[own.kind[arcs] != Kind.LANE].tolist():
+        kind, subject = Kind(int(own.kind[arc])), int(own.subject[arc])
+        if kind == Kind.WANT:
+            label = network.demand.reference[own.groups.label[subject]].decode()
+            others = int((own.groups.row_group == subject).sum()) - 1
+            names.append(f"order line {label}" + (f" and {others} like it" if others else ""))
+        elif kind == Kind.SUPPLY:
+            names.append(f"stock at {network.sites[own.stock.site[subject]].id}")
+        elif kind == Kind.KEEP_WANT:
+            names.append(f"stock kept at {network.sites[own.stock.kept_site[subject]].id}")
+        elif own.arcs.capacity[arc] != UNLIMITED:
+            side = SIDES[own.layout.nodes.side[own.arcs.tail[arc]]]
+            what = "arrives at" if side == Side.RECEIVED else "passes"
+            site = int(own.layout.nodes.site[own.arcs.tail[arc]])
+            names.append(f"what {what} {network.sites[site].id}")
+    return _list(list(dict.fromkeys(names)))
+
+
+def _list(names: list[str]) -> str:
+    """Return names as a list in a sentence, the rest of a long one as a number."""
+    if len(names) > NAMES_MAX + 1:
+        names = [*names[:NAMES_MAX], f"{len(names) - NAMES_MAX} more"]
+    if len(names) <= 1:
+        return "".join(names)
+    return ", ".join(names[:-1]) + " and " + names[-1]

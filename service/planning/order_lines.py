@@ -1,0 +1,74 @@
+"""Who gets what from where: the paths of an item shared out to its order lines."""
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from datetime import datetime
+
+from service.network.columns import Network
+from service.planning.groups import Groups
+from service.planning.paths import Path
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Share:
+    """``steps`` of one path that go to one order line."""
+
+    path: Path
+    steps: int
+
+
+def shares_of(
+    network: Network, groups: Groups, paths: Iterable[Path], *, names: dict[int, bytes]
+) -> dict[int, list[Share]]:
+    """Return the shares of each order line, by its row in the network's demand.
+
+    Within a group, sources (by origin, lanes, stock row) and lines (by time of order, reference)
+    are walked side by side: at most one line for each source but the last is split, a line that
+    equals what is left of a source takes it whole, and what is short falls on the last lines.
+    ``names`` are those of the lanes in use, by position in ``LaneBounds.rows``.
+    """
+    waiting: dict[int, list[Path]] = {}
+    for path in paths:
+        waiting.setdefault(path.group, []).append(path)
+    shares: dict[int, list[Share]] = {}
+    for group, lines in _lines(network, groups).items():
+        sources = sorted(
+            waiting.get(group, ()),
+            key=lambda path: (path.site, [names[leg] for leg in path.legs], path.row),
+        )
+        at, left = 0, sources[0].steps if sources else 0
+        for row, wanted in lines:
+            missing = wanted
+            own = shares.setdefault(row, [])
+            while missing and at < len(sources):
+                steps = min(missing, left)
+                own.append(Share(path=sources[at], steps=steps))
+                missing -= steps
+                left -= steps
+                if not left:
+                    at += 1
+                    left = sources[at].steps if at < len(sources) else 0
+    return shares
+
+
+def _lines(network: Network, groups: Groups) -> dict[int, list[tuple[int, int]]]:
+    """Return (row, wanted steps) of each group's order lines, first come first."""
+    instants = [_instant(text) for text in network.demand.ordered_at.values]
+    codes = network.demand.ordered_at.codes
+    lines: dict[int, list[tuple[int, int]]] = {}
+    for row, group, steps in zip(
+        groups.rows.tolist(), groups.row_group.tolist(), groups.row_steps.tolist(), strict=True
+    ):
+        if group >= 0:
+            lines.setdefault(group, []).append((row, steps))
+    for own in lines.values():
+        # Rows are in the order of references, which the stable sort keeps among equals; a line
+        # without a time of order comes last.
+        own.sort(key=lambda line: instants[codes[line[0]]] if codes[line[0]] >= 0 else (1, 0.0, ""))
+    return lines
+
+
+def _instant(text: str) -> tuple[int, float, str]:
+    """Return a key that sorts RFC 3339 times by instant, and equal ones by their text."""
+    # Seconds since 1970 with microseconds fit a float exactly until the year 2255.
+    return 0, datetime.fromisoformat(text.upper()).timestamp(), text

@@ -1,0 +1,322 @@
+"""The plan as a document: every table, added up exactly from the flow of each item."""
+
+import json
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Any
+
+from service.network.columns import Network
+from service.network.currencies import minor_units
+from service.planning.amounts import Measured, text
+from service.planning.arcs import Kind
+from service.planning.certificate import Document
+from service.planning.compile import Compiled
+from service.planning.consignments import consignments
+from service.planning.groups import IN_MONEY
+from service.planning.order_lines import Share, shares_of
+from service.planning.plan_lines import ItemPlan, PlanLine, item_plan, plan_line_documents
+from service.planning.rules_in_force import rules_in_force
+from service.planning.shortages import shortage_rows
+from service.planning.solve import ItemFlow
+
+FORMAT = 1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Setting:
+    """What a plan repeats of its input: digests, warnings, rows set aside."""
+
+    network_digest: str
+    options_digest: str
+    warnings: Sequence[Mapping[str, Any]]
+    set_aside: Sequence[Mapping[str, Any]]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlanDocument:
+    """The document of a plan, and its total cost."""
+
+    document: Document
+    total_cost: Fraction
+
+
+@dataclass(slots=True)
+class _Tables:
+    """Collects the rows of all items."""
+
+    lines: list[PlanLine]
+    order_lines: dict[int, Document]
+    shortages: dict[int, Document]
+    kept_short: list[tuple[tuple[int, int], Document]]
+    site_use: list[tuple[tuple[int, int], Document]]
+    quantities: list[Document]
+    references: dict[int, set[bytes]]
+    shortage_money: Fraction
+    circling: list[str]
+
+
+def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> PlanDocument:
+    """Return the document of a plan from the flow of all items."""
+    network = compiled.network
+    tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), [])
+    for flow in solved:
+        _add_item(network, flow, tables)
+    parts = {
+        "supply": sum((line.supply for line in tables.lines), Fraction(0)),
+        "handling": sum((line.handling for line in tables.lines), Fraction(0)),
+        "transport": sum((line.transport for line in tables.lines), Fraction(0)),
+        "charges": Fraction(0),
+        "shortage": tables.shortage_money,
+        "lateness": Fraction(0),
+    }
+    cost = sum(parts.values(), Fraction(0))
+    rounded = rounded_money(cost, str(network.head["currency"]))
+    order_lines = [tables.order_lines[row] for row in sorted(tables.order_lines)]
+    document = {
+        **_head(compiled, "planned", setting),
+        "total_cost": text(cost),
+        "total_cost_rounded": rounded,
+        "rounding_difference": text(Fraction(rounded) - cost),
+        "cost_parts": {name: text(part) for name, part in parts.items()},
+        "totals": _totals(order_lines, tables.quantities, setting),
+        "plan_lines": plan_line_documents(network, tables.lines),
+        "order_lines": order_lines,
+        "consignments": consignments(network, tables.lines, references=tables.references),
+        "shortages": [
+            *(tables.shortages[row] for row in sorted(tables.shortages)),
+            *(row for _, row in sorted(tables.kept_short, key=lambda pair: pair[0])),
+        ],
+        "site_use": [row for _, row in sorted(tables.site_use, key=lambda pair: pair[0])],
+        "rules_in_force": rules_in_force(compiled, solved),
+        "set_aside": list(setting.set_aside),
+        "warnings": [*setting.warnings, *_doubts(tables.circling)],
+        "certificate": {
+            "format": FORMAT,
+            "feasible": True,
+            "lower_bound": text(cost),
+            "gap": "0",
+            "lexicographic": "proved",
+            "solver_bound": None,
+            "reproducible": True,
+            "network_digest": setting.network_digest,
+        },
+    }
+    return PlanDocument(document=document, total_cost=cost)
+
+
+def unplanned(compiled: Compiled, reason: Document, setting: Setting) -> Document:
+    """Return the document of a network without a plan."""
+    return {
+        **_head(compiled, "no_plan", setting),
+        "total_cost": None,
+        "total_cost_rounded": None,
+        "rounding_difference": None,
+        "cost_parts": None,
+        "totals": _totals([], [], setting),
+        "plan_lines": [],
+        "order_lines": [],
+        "consignments": [],
+        "shortages": [],
+        "site_use": [],
+        "rules_in_force": rules_in_force(compiled, []),
+        "set_aside": list(setting.set_aside),
+        "warnings": list(setting.warnings),
+        "reason": reason,
+        "certificate": {
+            "format": FORMAT,
+            "feasible": False,
+            "lower_bound": None,
+            "gap": None,
+            "lexicographic": "no_plan",
+            "solver_bound": None,
+            "reproducible": True,
+            "network_digest": setting.network_digest,
+        },
+    }
+
+
+def rounded_money(amount: Fraction, currency: str) -> str:
+    """Return ``amount`` with the decimals of ``currency`` (ISO 4217), half away from zero."""
+    decimals = minor_units(currency)
+    if decimals is None:
+        raise ValueError(f"{currency} has no minor unit; the intake refuses it")
+    scaled = abs(amount) * 10**decimals
+    units = (2 * scaled.numerator + scaled.denominator) // (2 * scaled.denominator)
+    sign = "-" if amount < 0 and units else ""
+    digits = str(units).rjust(decimals + 1, "0")
+    return sign + (f"{digits[:-decimals]}.{digits[-decimals:]}" if decimals else digits)
+
+
+def _head(compiled: Compiled, status: str, setting: Setting) -> Document:
+    """Return the fields that every plan begins with."""
+    head = compiled.network.head
+    return {
+        "format": FORMAT,
+        "status": status,
+        "method": compiled.method,
+        "method_reasons": list(compiled.method_reasons),
+        "name": head.get("name"),
+        "currency": head["currency"],
+        "cut_off": head["cut_off"],
+        "release_by": head.get("release_by"),
+        "network_digest": setting.network_digest,
+        "options_digest": setting.options_digest,
+    }
+
+
+def _totals(
+    order_lines: list[Document], quantities: list[Document], setting: Setting
+) -> Document:
+    """Return how many lines go complete, in part, not at all, and the quantities by item."""
+    none = sum(line["served"] == "0" and line["short"] != "0" for line in order_lines)
+    complete = sum(line["short"] == "0" for line in order_lines)
+    return {
+        "lines_complete": complete,
+        "lines_in_part": len(order_lines) - complete - none,
+        "lines_none": none,
+        "set_aside": len(setting.set_aside),
+        "quantities": quantities,
+    }
+
+
+def _add_item(network: Network, flow: ItemFlow, tables: _Tables) -> None:
+    """Add the rows of one item to all tables."""
+    plan = item_plan(network, flow)
+    own, groups = flow.own, flow.own.groups
+    item = network.items[own.item]
+    shares = shares_of(network, groups, plan.paths.paths, names=plan.name_bytes())
+    served = {
+        row: sum(share.steps for share in shares.get(row, ())) for row in groups.rows.tolist()
+    }
+    tables.lines.extend(plan.lines)
+    tables.order_lines.update(_order_lines(network, plan, shares, served))
+    for row, own_shares in shares.items():
+        for share in own_shares:
+            for leg in share.path.legs:
+                tables.references.setdefault(int(own.lanes.rows[leg]), set()).add(
+                    network.demand.reference[row]
+                )
+    lines, kept = shortage_rows(network, flow, served=served)
+    tables.shortages.update(lines)
+    tables.kept_short.extend(kept)
+    tables.shortage_money += sum(
+        (steps * groups.money.fraction(group) for group, steps in flow.amounts(Kind.SHORT).items()),
+        Fraction(0),
+    )
+    tables.site_use.extend(_site_use(network, flow))
+    tables.circling.extend(plan.names[lane] for lane in plan.paths.circling)
+    wanted = sum(groups.row_steps.tolist())
+    if wanted:
+        goes = sum(served.values()) * item.step
+        tables.quantities.append(
+            {
+                "item": item.id,
+                "unit": item.unit,
+                "wanted": text(wanted * item.step),
+                "served": text(goes),
+                "short": text(wanted * item.step - goes),
+                "weight_kg": Measured().plus(goes, item.weight_kg).text,
+            }
+        )
+
+
+def _order_lines(
+    network: Network,
+    plan: ItemPlan,
+    shares: Mapping[int, list[Share]],
+    served: Mapping[int, int],
+) -> dict[int, Document]:
+    """Return the order lines of one item by their row in the network's demand."""
+    own, demand = plan.solved.own, network.demand
+    groups, item = own.groups, network.items[own.item]
+    rows = {}
+    for at, row in enumerate(groups.rows.tolist()):
+        wanted, priority = int(groups.row_steps[at]), int(groups.row_priority[at])
+        line: Document = {
+            "reference": demand.reference[row].decode(),
+            "order": demand.order.text(row),
+            "site": network.sites[demand.site[row]].id,
+            "item": item.id,
+            "quantity": text(wanted * item.step),
+            "served": text(served[row] * item.step),
+            "short": text((wanted - served[row]) * item.step),
+            "priority": None if priority == IN_MONEY else priority,
+        }
+        if priority == IN_MONEY:
+            line["shortage_cost"] = text(groups.row_money.fraction(at) / item.step)
+        ordered = groups.row_exact.fraction(at)
+        if ordered != wanted:
+            line["ordered"] = text(ordered * item.step)
+        line["sources"] = _sources(network, plan, shares.get(row, ()))
+        for name, column in (("tags", demand.tags), ("extra", demand.extra)):
+            value = column.text(row)
+            if value is not None:
+                line[name] = json.loads(value)
+        rows[row] = line
+    return rows
+
+
+def _sources(network: Network, plan: ItemPlan, shares: Sequence[Share]) -> list[Document]:
+    """Return the sources of one order line, those alike in origin, lot and legs as one."""
+    own, supply = plan.solved.own, network.supply
+    item = network.items[own.item]
+    together: dict[tuple[int, str | None, tuple[int, ...]], int] = {}
+    for share in shares:
+        path = share.path
+        key = (path.site, supply.lot.text(int(own.stock.rows[path.row])), path.legs)
+        together[key] = together.get(key, 0) + share.steps
+    return [
+        {
+            "origin": network.sites[site].id,
+            "item": item.id,
+            "lot": lot,
+            "quantity": text(steps * item.step),
+            "legs": [{"lane": plan.names[leg]} for leg in legs],
+        }
+        for (site, lot, legs), steps in together.items()
+    ]
+
+
+def _site_use(network: Network, flow: ItemFlow) -> list[tuple[tuple[int, int], Document]]:
+    """Return what becomes of the stock of one item, by site, where there is any."""
+    stock = flow.own.stock
+    item = network.items[flow.own.item]
+    supplied, kept = flow.amounts(Kind.SUPPLY), flow.amounts(Kind.KEPT)
+    sums: dict[int, list[int]] = {}
+    for tier, site in enumerate(stock.site.tolist()):
+        own = sums.setdefault(site, [0, 0, 0])
+        own[0] += int(stock.steps[tier])
+        own[1] += supplied.get(tier, 0) - kept.get(tier, 0)
+        own[2] += kept.get(tier, 0)
+    return [
+        (
+            (site, flow.own.item),
+            {
+                "site": network.sites[site].id,
+                "item": item.id,
+                "available": text(available * item.step),
+                "shipped": text(shipped * item.step),
+                "kept": text(held * item.step),
+                "left": text((available - shipped - held) * item.step),
+            },
+        )
+        for site, (available, shipped, held) in sums.items()
+        if available
+    ]
+
+
+def _doubts(circling: Sequence[str]) -> list[Document]:
+    """Return the warnings that only planning can give."""
+    if not circling:
+        return []
+    return [
+        {
+            "code": "flow_circles",
+            "count": len(circling),
+            "detail": "Goods go round on these lanes because minimums force them to; no order "
+            "line gets them. Check must_ship and fixed quantities.",
+            "examples": [{"pointer": "/lanes", "value": name} for name in sorted(circling)[:3]],
+        }
+    ]
+

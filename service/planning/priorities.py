@@ -1,0 +1,40 @@
+"""What was achieved in each step of the order of aims: shortage by priority, then cost."""
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+from service.planning.arcs import product_total
+from service.planning.solve import ItemFlow
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Achieved:
+    """Steps short by priority (ascending) and the scaled money of one item."""
+
+    short: tuple[tuple[int, int], ...]
+    money: int
+
+
+def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
+    """Return what the plan of one item achieves.
+
+    The weights prove that each is as small as it can be once those before it are: the bound of
+    every step equals what is achieved (MODEL.md, section 4).
+    """
+    own = solved.own
+    short = dict.fromkeys(range(len(own.priorities)), 0)
+    for arc, rank in own.ranked_shortages():
+        short[rank] += int(solved.flow[arc])
+    return Achieved(
+        short=tuple(
+            (priority, short[rank]) for rank, priority in enumerate(own.priorities)
+        )
+        if shortages
+        else (),
+        money=product_total(solved.flow, own.arcs.cost),
+    )
+
+
+def money_of(scaled: int, scale: Fraction) -> Fraction:
+    """Return scaled money as money."""
+    return scaled / scale

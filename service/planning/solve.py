@@ -1,0 +1,77 @@
+"""One item solved: contracted, feasible, of least weighted cost, canonical, with prices."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+from service.network.columns import IntArray, Network
+from service.planning.arcs import ROOT, Kind, MoneyArray
+from service.planning.canonical_plan import canonical_flow
+from service.planning.compile import ItemNetwork
+from service.planning.contraction import Contraction, contract
+from service.planning.forced_flow import contradiction
+from service.planning.limits import NoCirculationError, NoFlowError, SolverFaultError
+from service.planning.prices import residual_prices
+from service.planning.ranges import exact_flow
+from service.planning.tie_break import ItemTieBreak
+
+# A solver front: contracted arcs and their number of nodes in, a flow of least cost out. Whatever
+# replaces the default (a shortlist, say) is proved by the same prices over all arcs.
+Front = Callable[..., IntArray]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ItemFlow:
+    """The plan of one item as flow: steps on every arc, and the price of every node.
+
+    ``contraction`` is kept for questions that are asked of the plan later (reasons of shortages).
+    """
+
+    own: ItemNetwork
+    contraction: Contraction
+    flow: IntArray
+    price: MoneyArray
+
+    def amounts(self, kind: Kind) -> dict[int, int]:
+        """Return the flow above 0 on the arcs of one kind, by subject."""
+        arcs = self.own.of_kind(kind)
+        carried = self.flow[arcs]
+        used = carried != 0
+        return dict(
+            zip(
+                self.own.subject[arcs[used]].tolist(), carried[used].tolist(), strict=True
+            )
+        )
+
+
+def solve_item(network: Network, own: ItemNetwork, *, front: Front = exact_flow) -> ItemFlow:
+    """Return the canonical plan of one item.
+
+    Raises
+    ------
+    NoCirculationError
+        Minimums and capacities contradict each other; it holds the set that shows it.
+    NumbersTooLargeError, SolverFaultError
+        As ``least_cost_flow``.
+    """
+    whole = contract(own.arcs, nodes=own.node_count)
+    weighted = own.weighted()
+    arcs = whole.arcs(weighted)
+    try:
+        flow = front(arcs, nodes=whole.nodes)
+    except NoFlowError as none:
+        found = contradiction(own.arcs, nodes=own.node_count)
+        if found is None:
+            raise SolverFaultError("the solver found no flow where there is one") from none
+        places, forced_out, can_enter = found
+        raise NoCirculationError(places, forced_out=forced_out, can_enter=can_enter) from none
+    price = residual_prices(arcs, flow, nodes=whole.nodes)
+    settled = canonical_flow(
+        whole, arcs, flow, price, tie_break=ItemTieBreak(network=network, own=own)
+    )
+    if settled is not flow:
+        price = residual_prices(arcs, settled, nodes=whole.nodes)
+    prices: Any = whole.prices(price, weighted)
+    return ItemFlow(
+        own=own, contraction=whole, flow=whole.flow(settled), price=prices - prices[ROOT]
+    )

@@ -1,0 +1,171 @@
+"""All that a planning child runs: a checked network in, a proved plan out, as files."""
+
+import hashlib
+import time
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, Literal
+
+import orjson
+
+from service.network.canonical import canonical_json, network_digest, read_network
+from service.network.columns import Network
+from service.network.options import Options
+from service.planning.certificate import (
+    Document,
+    contradiction_certificate,
+    proved_certificate,
+)
+from service.planning.compile import Compiled, ItemNetwork, compile_network
+from service.planning.contradictions import contradiction_reason
+from service.planning.limits import NoCirculationError, NumbersTooLargeError
+from service.planning.plan import Setting, planned, unplanned
+from service.planning.priorities import achieved
+from service.planning.solve import ItemFlow, solve_item
+from service.proof.check import check
+
+State = Literal["planned", "no_plan", "failed"]
+FailureReason = Literal["numbers_too_large", "proof_failed", "internal"]
+Progress = Callable[[str, Mapping[str, int]], None]
+
+PLAN_FILE = "plan.json"
+CERTIFICATE_FILE = "certificate.json"
+VIOLATIONS_NAMED_MAX = 5
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Outcome:
+    """How a planning task ended; ``seconds`` are wall time by phase.
+
+    ``planned`` and ``no_plan`` are answers with a proof. ``proof_failed`` leaves both files for
+    whoever looks into it; no one else may be shown them as a plan.
+    """
+
+    state: State
+    reason: FailureReason | None
+    detail: str | None
+    seconds: Mapping[str, float]
+
+
+def plan(
+    input_folder: Path,
+    options: Options,
+    output_folder: Path,
+    *,
+    progress: Progress | None = None,
+) -> Outcome:
+    """Plan the network in ``input_folder`` and write plan and certificate to ``output_folder``.
+
+    ``input_folder`` holds ``network.zip`` and ``intake.json`` as the intake wrote them. What is
+    neither an answer nor a number out of range is our mistake and passes on as its exception.
+    """
+    clock = _Clock(progress)
+    network = read_network(input_folder / "network.zip")
+    intake: Any = orjson.loads((input_folder / "intake.json").read_bytes())
+    setting = Setting(
+        network_digest=network_digest(network),
+        options_digest=_digest(canonical_json(options.to_document())),
+        warnings=intake["cautions"],
+        set_aside=intake["set_aside"],
+    )
+    clock.phase("read", lanes=len(network.lanes), order_lines=len(network.demand))
+    try:
+        compiled = compile_network(network, options)
+        arcs = sum(len(own.arcs) for own in compiled.items)
+        clock.phase("compiled", items=len(compiled.items), arcs=arcs)
+        solved, cuts = _solve(compiled)
+    except NumbersTooLargeError as error:
+        return clock.outcome("failed", "numbers_too_large", str(error))
+    clock.phase("solved", items=len(solved))
+    if cuts:
+        document = unplanned(compiled, contradiction_reason(network, cuts), setting)
+        certificate = contradiction_certificate(
+            compiled,
+            cuts,
+            network_digest=setting.network_digest,
+            options_digest=setting.options_digest,
+        )
+    else:
+        document, certificate = _documents(compiled, solved, setting)
+    plan_bytes, certificate_bytes = orjson.dumps(document), orjson.dumps(certificate)
+    (output_folder / PLAN_FILE).write_bytes(plan_bytes)
+    (output_folder / CERTIFICATE_FILE).write_bytes(certificate_bytes)
+    clock.phase("written", bytes=len(plan_bytes) + len(certificate_bytes))
+    failure = _violations(network, options, plan_bytes, certificate_bytes)
+    clock.phase("proved", violations=0 if failure is None else 1)
+    if failure is not None:
+        return clock.outcome("failed", "proof_failed", failure)
+    return clock.outcome("no_plan" if cuts else "planned", None, None)
+
+
+def _solve(
+    compiled: Compiled,
+) -> tuple[list[ItemFlow], list[tuple[ItemNetwork, NoCirculationError]]]:
+    """Solve every item; return the flows, and the contradictions of items without any."""
+    solved: list[ItemFlow] = []
+    cuts: list[tuple[ItemNetwork, NoCirculationError]] = []
+    for own in compiled.items:
+        try:
+            solved.append(solve_item(compiled.network, own))
+        except NoCirculationError as cut:
+            cuts.append((own, cut))
+    return solved, cuts
+
+
+def _documents(
+    compiled: Compiled, solved: list[ItemFlow], setting: Setting
+) -> tuple[Document, Document]:
+    """Return plan and certificate."""
+    made = planned(compiled, solved, setting)
+    shortages = compiled.options.shortages == "allow"
+    certificate = proved_certificate(
+        compiled,
+        solved,
+        [achieved(flow, shortages=shortages) for flow in solved],
+        total_cost=made.total_cost,
+        network_digest=setting.network_digest,
+        options_digest=setting.options_digest,
+    )
+    return made.document, certificate
+
+
+def _violations(
+    network: Network, options: Options, plan_bytes: bytes, certificate_bytes: bytes
+) -> str | None:
+    """Check what was written, as it was written; return what is wrong with it, None if nothing."""
+    found = check(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
+    if not found:
+        return None
+    named = "; ".join(
+        f"{violation.code} at {violation.place}: {violation.detail}"
+        for violation in found[:VIOLATIONS_NAMED_MAX]
+    )
+    return f"The proof found {len(found)} violations: {named}"
+
+
+def _digest(content: bytes) -> str:
+    """Return the SHA-256 of ``content`` as it is written everywhere."""
+    return "sha-256:" + hashlib.sha256(content).hexdigest()
+
+
+class _Clock:
+    """Tells the phases and how long each took."""
+
+    def __init__(self, progress: Progress | None) -> None:
+        """Start now."""
+        self._progress = progress
+        self._since = time.perf_counter()
+        self._seconds: dict[str, float] = {}
+
+    def phase(self, name: str, **counts: int) -> None:
+        """End a phase."""
+        now = time.perf_counter()
+        self._seconds[name] = round(now - self._since, 6)
+        self._since = now
+        if self._progress is not None:
+            self._progress(name, counts)
+
+    def outcome(self, state: State, reason: FailureReason | None, detail: str | None) -> Outcome:
+        """Return how the task ended."""
+        return Outcome(state=state, reason=reason, detail=detail, seconds=dict(self._seconds))
