@@ -3,9 +3,8 @@
 import hashlib
 import time
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, Literal
+from typing import Any
 
 import orjson
 
@@ -20,32 +19,17 @@ from service.planning.certificate import (
 from service.planning.compile import Compiled, ItemNetwork, compile_network
 from service.planning.contradictions import contradiction_reason
 from service.planning.limits import NoCirculationError, NumbersTooLargeError
+from service.planning.outcome import FailureReason, Outcome, State
 from service.planning.plan import Setting, planned, unplanned
 from service.planning.priorities import achieved
 from service.planning.solve import ItemFlow, solve_item
 from service.proof.check import check
 
-State = Literal["planned", "no_plan", "failed"]
-FailureReason = Literal["numbers_too_large", "proof_failed", "internal"]
 Progress = Callable[[str, Mapping[str, int]], None]
 
 PLAN_FILE = "plan.json"
 CERTIFICATE_FILE = "certificate.json"
 VIOLATIONS_NAMED_MAX = 5
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Outcome:
-    """How a planning task ended; ``seconds`` are wall time by phase.
-
-    ``planned`` and ``no_plan`` are answers with a proof. ``proof_failed`` leaves both files for
-    whoever looks into it; no one else may be shown them as a plan.
-    """
-
-    state: State
-    reason: FailureReason | None
-    detail: str | None
-    seconds: Mapping[str, float]
 
 
 def plan(
