@@ -9,6 +9,9 @@ import signal
 import sys
 import time
 from collections.abc import Mapping
+from pathlib import Path
+
+import orjson
 
 from service.engine.child import Progress, Task, Work, main
 
@@ -87,6 +90,26 @@ def _work() -> Work:
     return misbehave
 
 
+def _plan() -> Work:
+    """Return planning that misbehaves as the label of the run says, else leaves a small plan."""
+
+    def work(task: Task, progress: Progress) -> Mapping[str, object]:
+        target = Path(task["target"])
+        label = task["options"]["label"] or ""
+        progress("read", {})
+        first_time = not (marks := Path(task["source"]).parents[1] / "marks").exists()
+        marks.mkdir(exist_ok=True)
+        if label.startswith("{") and (first_time or "once" not in label):
+            misbehave(orjson.loads(label), progress)
+        plan = {"format": 1, "status": "planned", "plan_lines": [], "order_lines": []}
+        content = b"{" if label == "rubbish" else orjson.dumps(plan)
+        (target / "plan.json").write_bytes(content)
+        (target / "certificate.json").write_bytes(b'{"format":1}')
+        return {"state": "planned", "reason": None, "detail": None, "seconds": {"read": 0.1}}
+
+    return work
+
+
 def _slow_start() -> Work:
     time.sleep(60)
     return misbehave
@@ -97,4 +120,4 @@ def _broken_start() -> Work:
 
 
 if __name__ == "__main__":
-    main({"test": _work, "slow_start": _slow_start, "broken_start": _broken_start})
+    main({"test": _work, "plan": _plan, "slow_start": _slow_start, "broken_start": _broken_start})

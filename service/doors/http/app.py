@@ -12,7 +12,7 @@ from service.doors.http.request_scope import HeadRequests, RequestScope
 from service.doors.http.routes import artefacts, health, runs
 from service.doors.http.security import LocalDoor
 from service.doors.http.spool import Spool
-from service.network.definition import network_schema
+from service.network.schema import network_schema
 from service.runs.ports import Application
 from service.settings import Settings
 

@@ -15,7 +15,7 @@ from fastapi.openapi.utils import get_openapi
 
 import service
 from service.doors.http.schemas import ProblemOut
-from service.network.definition import network_schema
+from service.network.schema import network_schema
 
 DESCRIPTION: Final = """\
 Lanewright decides shipment allocation: which warehouse ships how much of what, over which lane, to

@@ -1,0 +1,47 @@
+"""How the tests of the engine start children that misbehave, and tell whether they are gone."""
+
+import sys
+import threading
+import time
+from collections.abc import Mapping
+from pathlib import Path
+
+from service.engine.process import Child
+
+COMMAND = (sys.executable, str(Path(__file__).with_name("faulty_child.py")))
+GIBIBYTE = 2**30
+
+
+def ask(
+    child: Child,
+    do: str,
+    *,
+    seconds: float = 20,
+    memory_bytes: int = GIBIBYTE,
+    released: threading.Event | None = None,
+    **task: object,
+) -> Mapping[str, object]:
+    """Have ``child`` do what ``do`` and ``task`` say."""
+    return child.ask(
+        {"do": do, **task},
+        seconds=seconds,
+        memory_bytes=memory_bytes,
+        released=released or threading.Event(),
+    )
+
+
+def running(pid: int) -> bool:
+    """Say whether a process exists and is more than a zombie that nobody has reaped yet."""
+    try:
+        fields = Path(f"/proc/{pid}/stat").read_text(encoding="ascii").rpartition(")")[2].split()
+    except FileNotFoundError:
+        return False
+    return fields[0] != "Z"
+
+
+def await_end(pid: int, seconds: float = 5) -> bool:
+    """Wait until ``pid`` no longer runs."""
+    until = time.monotonic() + seconds
+    while running(pid) and time.monotonic() < until:
+        time.sleep(0.02)
+    return not running(pid)

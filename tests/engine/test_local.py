@@ -1,0 +1,271 @@
+"""The embedded engine over a real store: whatever its children do, every run comes to its end."""
+
+import os
+import signal
+import time
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from pathlib import Path
+
+import orjson
+import pytest
+
+from service.engine.children import Nursery
+from service.engine.local import LocalEngine
+from service.engine.lock import EngineLock, EngineLocked
+from service.engine.tasks import PlanningChildren
+from service.network.options import Options
+from service.runs.execute import Execute
+from service.runs.recover import Recover
+from service.runs.run import LOCAL, FailureReason, Run, RunState
+from service.runs.submit import Submit
+from service.runs.sweep import Sweep
+from service.runs.watch import Watch
+from service.store.database import Database
+from service.store.sql_store import SqlStore, SystemClock
+from tests.engine.processes import COMMAND, await_end
+from tests.run_factories import WIRE_DIGEST, intake_folder
+
+FINAL = {RunState.PLANNED, RunState.NO_PLAN, RunState.FAILED, RunState.CANCELLED}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class House:
+    """A store with an engine over it, and how to use them."""
+
+    store: SqlStore
+    engine: LocalEngine
+    planner: PlanningChildren
+    folder: Path
+
+    def submit(self, label: str | None = None, *, seconds: int = 60) -> Run:
+        """Submit a run whose child does what ``label`` says."""
+        left = intake_folder(self.folder / f"in-{time.monotonic_ns()}")
+        options = Options(label=label, deadline_seconds=seconds)
+        return Submit(store=self.store, dispatcher=self.engine)(left, options, LOCAL, WIRE_DIGEST)
+
+    def read(self, run: Run) -> Run:
+        """Return the run as it is now."""
+        with self.store.reading() as store:
+            return store.run(run.id, run.tenant)
+
+    def await_run(self, run: Run, wanted: Callable[[Run], bool], seconds: float = 20) -> Run:
+        """Wait until the run is as ``wanted``, and return it."""
+        until = time.monotonic() + seconds
+        while not wanted(now := self.read(run)):
+            assert time.monotonic() < until, f"{now.state} after {seconds} s"
+            time.sleep(0.02)
+        return now
+
+    def finished(self, run: Run) -> Run:
+        """Wait until the run is final."""
+        return self.await_run(run, lambda now: now.state in FINAL)
+
+    def busy_pid(self) -> int:
+        """Return the process that plans now: the one child that is not idle."""
+        (ppid, stat) = (os.getpid(), "")
+        for entry in Path("/proc").iterdir():
+            if entry.name.isdigit():
+                try:
+                    stat = (entry / "stat").read_text(encoding="ascii")
+                    words = (entry / "cmdline").read_bytes().split(b"\0")
+                except OSError:
+                    continue
+                parent = int(stat.rpartition(")")[2].split()[1])
+                if parent == ppid and b"plan" in words and int(entry.name) not in self.idle():
+                    return int(entry.name)
+        raise AssertionError("nobody plans")
+
+    def idle(self) -> tuple[int, ...]:
+        """Return the processes that wait for work."""
+        return self.planner._nursery.pids()
+
+
+def engine_over(store: SqlStore, scratch: Path) -> tuple[LocalEngine, PlanningChildren]:
+    """Return an engine whose children misbehave on request."""
+    planner = PlanningChildren(Nursery("plan", command=COMMAND), memory_bytes=512 * 2**20)
+    engine = LocalEngine(
+        execute=Execute(store=store, planner=planner, scratch=scratch, lease_seconds=30),
+        sweep=Sweep(store=store),
+        watch=Watch(store=store, lease_seconds=30),
+        recover=Recover(store=store),
+        planner=planner,
+        poll_seconds=0.1,
+    )
+    return engine, planner
+
+
+@pytest.fixture
+def house(database: Database, tmp_path: Path) -> Iterator[House]:
+    """Start an engine over a fresh store."""
+    store = SqlStore(database, SystemClock())
+    engine, planner = engine_over(store, tmp_path / "scratch")
+    engine.start(EngineLock(tmp_path / "lanewright.db.engine"))
+    yield House(store=store, engine=engine, planner=planner, folder=tmp_path)
+    engine.stop()
+
+
+def fault(**task: object) -> str:
+    """Return the label that makes a child do ``task``."""
+    return orjson.dumps(task).decode()
+
+
+def test_run_is_planned_as_soon_as_it_is_submitted(house: House) -> None:
+    """The wake-up, not the sweep, starts it: a client waits for a second, not for five."""
+    house.finished(house.submit())  # the first waits for the child's start
+    began = time.monotonic()
+
+    run = house.finished(house.submit())
+
+    assert run.state is RunState.PLANNED
+    assert run.attempt == 1
+    assert time.monotonic() - began < 2
+
+
+def test_lost_wake_up_loses_no_run(house: House) -> None:
+    """A run is found by the sweep although nobody said that it waits."""
+    house.finished(house.submit())
+    left = intake_folder(house.folder / "unannounced")
+
+    class Deaf:
+        def notify(self, run_id: str) -> None:
+            """Lose the wake-up."""
+
+    run = Submit(store=house.store, dispatcher=Deaf())(left, Options(), LOCAL, WIRE_DIGEST)
+
+    assert house.finished(run).state is RunState.PLANNED
+
+
+@pytest.mark.parametrize(
+    "task",
+    [
+        {"do": "kill", "signal": int(signal.SIGKILL)},
+        {"do": "kill", "signal": int(signal.SIGSEGV)},
+        {"do": "exit", "code": 7},
+    ],
+)
+def test_run_whose_children_die_fails_after_the_third(
+    house: House, task: dict[str, object]
+) -> None:
+    """Row 5: retried twice, then a reason; the next run is served."""
+    poisoned = house.finished(house.submit(fault(**task)))
+    healthy = house.finished(house.submit())
+
+    assert (poisoned.state, poisoned.reason) == (RunState.FAILED, FailureReason.SOLVER_CRASHED)
+    assert (poisoned.attempt, poisoned.crashes) == (3, 3)
+    assert healthy.state is RunState.PLANNED
+
+
+def test_run_whose_child_died_once_is_planned(house: House) -> None:
+    """An accident is not poison: the second child plans it, and one crash is on record."""
+    run = house.finished(house.submit(fault(do="exit", code=7, once=True)))
+
+    assert run.state is RunState.PLANNED
+    assert (run.attempt, run.crashes) == (2, 1)
+
+
+def test_run_that_hangs_in_c_ends_at_its_time_limit(house: House) -> None:
+    """Row 6: failed with a reason within a second of the limit, and the slot is free again."""
+    house.finished(house.submit())
+    began = time.monotonic()
+
+    hung = house.finished(house.submit(fault(do="hang_in_c"), seconds=2))
+    waited = time.monotonic() - began
+    healthy = house.finished(house.submit())
+
+    assert (hung.state, hung.reason) == (RunState.FAILED, FailureReason.TIME_LIMIT)
+    assert waited < 2 + 1
+    assert healthy.state is RunState.PLANNED
+
+
+def test_run_that_eats_memory_fails_with_that_reason(house: House) -> None:
+    """Row 7: never a plan, never "no plan", and not retried, since it would eat as much again."""
+    run = house.finished(house.submit(fault(do="memory_error", mebibytes_each=16)))
+
+    assert (run.state, run.reason) == (RunState.FAILED, FailureReason.MEMORY_LIMIT)
+    assert run.attempt == 1
+
+
+def test_run_that_waits_beyond_its_deadline_fails(house: House) -> None:
+    """A busy slot must not leave a waiting run undecided: the watcher settles it."""
+    hung = house.submit(fault(do="hang_in_c"), seconds=12)
+    house.await_run(hung, lambda now: now.state is RunState.RUNNING)
+
+    late = house.finished(house.submit(seconds=1))
+
+    assert (late.state, late.reason) == (RunState.FAILED, FailureReason.DEADLINE)
+    assert house.read(hung).state is RunState.RUNNING
+
+
+def test_stop_gives_the_run_back_uncounted_and_leaves_nobody(house: House) -> None:
+    """A restart says nothing about a run: it waits again, and no solver outlives its service."""
+    run = house.submit(fault(do="hang_in_c"))
+    house.await_run(run, lambda now: now.state is RunState.RUNNING)
+    time.sleep(0.5)  # until the child has the task
+    pids = [house.busy_pid(), *house.idle()]
+    began = time.monotonic()
+
+    house.engine.stop()
+
+    assert time.monotonic() - began < 2
+    now = house.read(run)
+    assert (now.state, now.crashes) == (RunState.WAITING, 0)
+    assert all(await_end(pid) for pid in pids)
+
+
+def test_next_engine_takes_over_what_a_killed_one_was_planning(
+    database: Database, tmp_path: Path
+) -> None:
+    """Row 3: after kill -9 a run is still called running; the next start plans it, uncounted."""
+    store = SqlStore(database, SystemClock())
+    engine, planner = engine_over(store, tmp_path / "scratch")
+    house = House(store=store, engine=engine, planner=planner, folder=tmp_path)
+    run = house.submit()
+    with store.transaction() as transaction:
+        claim = transaction.claim(run.id, token="0" * 32, lease_seconds=30, crashes_max=3)  # type: ignore[arg-type]
+    assert claim is not None
+
+    engine.start(EngineLock(tmp_path / "lanewright.db.engine"))
+
+    now = house.finished(run)
+    assert (now.state, now.attempt, now.crashes) == (RunState.PLANNED, 2, 0)
+    engine.stop()
+
+
+def test_child_whose_claim_is_gone_is_ended(house: House) -> None:
+    """Whoever cancels a run, or takes it over, ends the work on it within a second."""
+    run = house.submit(fault(do="hang_in_c"))
+    house.await_run(run, lambda now: now.state is RunState.RUNNING)
+    time.sleep(0.5)  # until the child has the task
+    pid = house.busy_pid()
+    (token,) = house.planner.tokens()
+    with house.store.transaction() as transaction:
+        (claim,) = [
+            claim
+            for claim in transaction.held(expired_only=False, limit=10)
+            if claim.token == token
+        ]
+        transaction.give_back(claim, crashed=False)
+
+    assert await_end(pid, 1)
+
+
+def test_second_engine_on_one_database_refuses_to_start(tmp_path: Path) -> None:
+    """Row 4: two executors would each take the other's running runs for leftovers of a crash."""
+    first = EngineLock(tmp_path / "lanewright.db.engine")
+
+    with pytest.raises(EngineLocked, match="another process"):
+        EngineLock(tmp_path / "lanewright.db.engine")
+
+    first.release()
+    EngineLock(tmp_path / "lanewright.db.engine").release()
+
+
+def test_mistake_of_ours_in_one_run_stops_no_other(house: House) -> None:
+    """An exception that nobody foresaw is logged; the slot lives on and plans the next run."""
+    broken = house.finished(house.submit("rubbish"))
+    healthy = house.finished(house.submit())
+
+    assert (broken.state, broken.reason) == (RunState.FAILED, FailureReason.INTERNAL)
+    assert house.engine.working()
+    assert healthy.state is RunState.PLANNED
