@@ -1,0 +1,300 @@
+"""The formal network of one item, built from the columns by code that planning does not share.
+
+Goods circulate: from the root to stock, over lanes to the places where they are wanted, and back to
+the root. What is short comes to where it is wanted straight from the root. Quantities are in steps
+of the item. Every lane that the item can use has its arc, also one that no solver was shown.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Literal, NamedTuple
+
+import numpy as np
+
+from service.network.columns import CodeArray, IntArray, Network
+from service.network.options import Options
+from service.proof.exact import Whole, joined, whole, whole_of
+from service.proof.groups import Wanted, wanted_of
+from service.proof.rulings import LaneLimits, Rulings, measures_on
+from service.proof.sides import UNLIMITED, SiteSides, site_sides
+from service.proof.stock import Stock, stock_of
+from service.proof.usable import usable_lanes
+
+Kind = Literal[
+    "supply", "draw", "keep", "enter", "handle", "leave", "serve", "pass", "want", "short"
+]
+
+
+class Node(NamedTuple):
+    """A place in the formal network; the root has site -1."""
+
+    site: int
+    side: str
+    qualifier: str | None
+
+
+ROOT = Node(-1, "root", None)
+
+
+class Arc(NamedTuple):
+    """An arc that is no lane. ``money`` is per step; ``rank`` is 1 for the first priority, or 0.
+
+    ``capacity`` is -1 where there is no limit. ``key`` says what a certificate calls its flow.
+    """
+
+    kind: Kind
+    tail: int
+    head: int
+    minimum: int
+    capacity: int
+    money: Fraction
+    rank: int
+    key: tuple[object, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ItemArcs:
+    """The formal network of one item.
+
+    ``rows`` are the usable lanes (shape (lanes,), ascending), which are the first arcs; ``arcs``
+    are the others. ``lane_tail`` and ``lane_head`` are positions in ``nodes``, of which the root is
+    the first. ``priorities`` are those that occur, ascending. ``sides`` has what a site is made of,
+    by its position.
+    """
+
+    item: int
+    step: Fraction
+    rows: IntArray
+    lane_tail: CodeArray
+    lane_head: CodeArray
+    limits: LaneLimits
+    arcs: tuple[Arc, ...]
+    nodes: tuple[Node, ...]
+    place: Mapping[Node, int]
+    priorities: tuple[int, ...]
+    sides: Mapping[int, SiteSides]
+    stock: Mapping[int, Stock]
+    wanted: Wanted
+
+    def tails(self) -> CodeArray:
+        """Return the node that each arc leaves, lanes first."""
+        return np.append(self.lane_tail, _codes([arc.tail for arc in self.arcs]))
+
+    def heads(self) -> CodeArray:
+        """Return the node that each arc enters, lanes first."""
+        return np.append(self.lane_head, _codes([arc.head for arc in self.arcs]))
+
+    def minimums(self) -> Whole:
+        """Return the least flow on each arc, lanes first."""
+        return joined([self.limits.minimum, whole([arc.minimum for arc in self.arcs])])
+
+    def capacities(self) -> Whole:
+        """Return the most flow on each arc, lanes first; -1 is unlimited."""
+        return joined([self.limits.capacity, whole([arc.capacity for arc in self.arcs])])
+
+    def ranks(self) -> Whole:
+        """Return on each arc 1 for shortage of the first priority, 2 of the second, else 0."""
+        return joined(
+            [np.zeros(len(self.rows), dtype=np.int64), whole([arc.rank for arc in self.arcs])]
+        )
+
+
+def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -> ItemArcs:
+    """Return the formal network of ``item``; raise ``UnusableNetworkError`` if there is none."""
+    rows = usable_lanes(network, item)
+    limits = rulings.lane_limits(network, item, rows)
+    stock = stock_of(network, item)
+    wanted = wanted_of(network, options, item)
+    sides = site_sides(network, rulings, item, rows=rows, stock=stock, wanted=wanted)
+    build = _Build(network=network, item=item, step=network.items[item].step)
+    occurring = {group.priority for group in wanted.groups if group.priority} | {
+        held.keep_priority for held in stock.values() if held.keep_steps
+    }
+    priorities = tuple(sorted(occurring))
+    allowed = options.shortages == "allow"
+    for site, made in sides.items():
+        build.site(site, made)
+        if site in stock:
+            build.stock(site, stock[site])
+            build.keep(site, stock[site], priorities=priorities, shortage=allowed)
+    for group in wanted.groups:
+        node = build.node(group.site, "demand", group.label)
+        made = sides[group.site]
+        build.serve(group.site, made, label=group.label, origins=group.origins)
+        build.add("want", node, 0, minimum=group.wanted, capacity=group.wanted, key=())
+        if allowed:
+            rank = priorities.index(group.priority) + 1 if group.priority else 0
+            money = (group.shortage_cost or Fraction(0)) * build.step
+            key = (group.site, group.label)
+            build.add("short", 0, node, money=money, rank=rank, key=key)
+    tail, head = build.lane_ends(rows, sides)
+    return ItemArcs(
+        item=item,
+        step=build.step,
+        rows=rows,
+        lane_tail=tail,
+        lane_head=head,
+        limits=limits,
+        arcs=tuple(build.arcs),
+        nodes=tuple(build.place),
+        place=build.place,
+        priorities=priorities,
+        sides=sides,
+        stock=stock,
+        wanted=wanted,
+    )
+
+
+def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | None:
+    """Return the money of one step on each arc, times ``scale``; None if any is not whole.
+
+    Weights of shortage are not in it.
+    """
+    lanes = network.lanes
+    codes = lanes.measure.codes[arcs.rows]
+    lane_costs: Whole = np.zeros(len(arcs.rows), dtype=np.int64)
+    for code, amount in measures_on(network, arcs.item, arcs.rows).items():
+        here = np.flatnonzero(codes == code)
+        ratio = amount * scale / 10**lanes.unit_cost.exponent
+        part, broken = whole_of(lanes.unit_cost.values[arcs.rows[here]], ratio)
+        if broken.any():
+            return None
+        if part.dtype == object:
+            lane_costs = lane_costs.astype(object)
+        lane_costs[here] = part
+    others = [arc.money * scale if arc.money else Fraction(0) for arc in arcs.arcs]
+    if any(cost.denominator != 1 for cost in others):
+        return None
+    return joined([lane_costs, whole([cost.numerator for cost in others])])
+
+
+class _Build:
+    """Collects nodes and arcs; node 0 is the root."""
+
+    def __init__(self, *, network: Network, item: int, step: Fraction) -> None:
+        """Start with the root alone."""
+        self.step = step
+        self.place: dict[Node, int] = {ROOT: 0}
+        self.arcs: list[Arc] = []
+        self._network = network
+        self._handling = [site.handling(network.items[item].id) * step for site in network.sites]
+
+    def node(self, site: int, side: str, qualifier: str | None = None) -> int:
+        """Return the position of a node, which is made if it is not there."""
+        return self.place.setdefault(Node(site, side, qualifier), len(self.place))
+
+    def add(  # noqa: PLR0913 - an arc has that many numbers
+        self,
+        kind: Kind,
+        tail: int,
+        head: int,
+        *,
+        minimum: int = 0,
+        capacity: int = UNLIMITED,
+        money: Fraction = Fraction(0),
+        rank: int = 0,
+        key: tuple[object, ...],
+    ) -> None:
+        """Add an arc from ``tail`` to ``head``."""
+        self.arcs.append(Arc(kind, tail, head, minimum, capacity, money, rank, key))
+
+    def site(self, site: int, made: SiteSides) -> None:
+        """Add what a site is made of: receiving, handling and sending."""
+        entry, exit_ = self.node(site, "in"), self.node(site, "out")
+        handling = self._handling[site]
+        key: tuple[object, ...] = (site,)
+        self.add("handle", entry, exit_, capacity=made.through, money=handling, key=key)
+        if made.has_sent:
+            self.add("leave", exit_, self.node(site, "sent"), capacity=made.sent, key=key)
+        for origin in made.received_from:
+            received = self.node(site, "received", self._id(origin))
+            if not made.apart:
+                self.add("enter", received, entry, capacity=made.received, key=key)
+            elif made.passes:
+                self.add(
+                    "pass",
+                    received,
+                    self.node(site, "sent"),
+                    capacity=made.past,
+                    money=handling,
+                    key=(site, self._id(origin)),
+                )
+
+    def stock(self, site: int, held: Stock) -> None:
+        """Add the tiers of a site's stock, straight into it unless some of it should stay."""
+        entry = self.node(site, "in")
+        for tier, (cost, steps) in enumerate(
+            zip(held.tier_cost, held.tier_steps, strict=True), start=1
+        ):
+            money, key = cost * self.step, (site, tier)
+            if held.keep_steps:
+                node = self.node(site, "stock", str(tier))
+                self.add("supply", 0, node, capacity=steps, key=key)
+                self.add("draw", node, entry, money=money, key=key)
+            else:
+                self.add("draw", 0, entry, capacity=steps, money=money, key=key)
+
+    def keep(self, site: int, held: Stock, *, priorities: Sequence[int], shortage: bool) -> None:
+        """Add what should stay of a site's stock, which is wanted like a demand."""
+        if not held.keep_steps:
+            return
+        keep = self.node(site, "keep")
+        for tier in range(1, len(held.tier_cost) + 1):
+            self.add("keep", self.node(site, "stock", str(tier)), keep, key=(site, tier))
+        steps = held.keep_steps
+        self.add("want", keep, 0, minimum=steps, capacity=steps, key=())
+        if shortage:
+            rank = priorities.index(held.keep_priority) + 1
+            self.add("short", 0, keep, rank=rank, key=(site, None))
+
+    def serve(
+        self, site: int, made: SiteSides, *, label: str, origins: frozenset[int] | None
+    ) -> None:
+        """Add the ways in which goods at a site reach a group there."""
+        node = self.node(site, "demand", label)
+        if origins is None or site in origins:
+            self.add("serve", self.node(site, "out"), node, key=(site, label, "out", None))
+        if not made.apart:
+            return
+        for origin in made.received_from:
+            if origins is not None and not made.allowed(origin, origins):
+                continue
+            name = self._id(origin)
+            self.add(
+                "serve",
+                self.node(site, "received", name),
+                node,
+                capacity=made.past,
+                money=self._handling[site],
+                key=(site, label, "received", name),
+            )
+
+    def lane_ends(
+        self, rows: IntArray, sides: Mapping[int, SiteSides]
+    ) -> tuple[CodeArray, CodeArray]:
+        """Return the nodes that the lanes ``rows`` leave and enter."""
+        lanes, sites = self._network.lanes, len(self._network.sites)
+        leaving = np.full(sites, -1, dtype=np.int32)
+        entering = np.full(sites, -1, dtype=np.int32)
+        for site, made in sides.items():
+            leaving[site] = self.place[Node(site, "sent" if made.has_sent else "out", None)]
+            if made.by_origin:
+                continue
+            received = Node(site, "received", None)
+            entering[site] = self.place.get(received, self.place[Node(site, "in", None)])
+        tail, head = leaving[lanes.origin[rows]], entering[lanes.destination[rows]]
+        for position in np.flatnonzero(head < 0).tolist():
+            row = int(rows[position])
+            origin = self._id(int(lanes.origin[row]))
+            head[position] = self.place[Node(int(lanes.destination[row]), "received", origin)]
+        return tail, head
+
+    def _id(self, site: int | None) -> str | None:
+        """Return the id of a site, None for none."""
+        return None if site is None else self._network.sites[site].id
+
+
+def _codes(values: list[int]) -> CodeArray:
+    """Return positions as int32."""
+    return np.array(values, dtype=np.int32)

@@ -1,0 +1,198 @@
+"""Whether a certificate proves its plan, decided without any solver.
+
+The order of work: shapes, what belongs together, then each item by itself (names, limits, balance,
+prices), and at last the documents as a whole. What a step needs is not looked at where an earlier
+one failed: nothing would follow from it.
+"""
+
+from collections.abc import Mapping, Sequence
+from fractions import Fraction
+from typing import Any
+
+import numpy as np
+
+from service.network.canonical import canonical_json, digest, network_digest
+from service.network.columns import Network
+from service.network.options import Options
+from service.proof.arcs import item_arcs
+from service.proof.bounds import check_bounds
+from service.proof.certificate import certificate_shape, plan_shape
+from service.proof.consignments import check_consignments
+from service.proof.cuts import check_cuts
+from service.proof.feasibility import check_feasibility
+from service.proof.flows import Names, PlanLine, item_flows
+from service.proof.heads import check_heads, check_rules_listed
+from service.proof.order_lines import check_order_lines
+from service.proof.plan_lines import check_plan_lines
+from service.proof.results import ItemResult, item_result
+from service.proof.rulings import Rulings, UnusableNetworkError, check_limits_are_clear
+from service.proof.shapes import amount
+from service.proof.slackness import check_slackness
+from service.proof.totals import check_shortages, check_site_limits, check_site_use, check_totals
+from service.proof.usable import usable_lanes
+from service.proof.violations import Findings, Violation
+
+__all__ = ["Violation", "check", "check_documents"]
+
+
+def check(
+    network: Network, options: Options, plan: Mapping[str, Any], certificate: Mapping[str, Any]
+) -> tuple[Violation, ...]:
+    """Return everything that keeps ``certificate`` from proving ``plan``; empty means proved.
+
+    ``network`` is in normal form; both documents are parsed JSON of whatever shape.
+    """
+    findings = Findings()
+    check_documents(
+        network,
+        options,
+        plan,
+        certificate,
+        digests=(network_digest(network), digest(canonical_json(options.to_document()))),
+        findings=findings,
+    )
+    return findings.violations()
+
+
+def check_documents(  # noqa: PLR0913 - what a proof is about comes in four documents
+    network: Network,
+    options: Options,
+    plan: object,
+    certificate: object,
+    *,
+    digests: tuple[str, str],
+    findings: Findings,
+) -> None:
+    """Note everything that keeps ``certificate`` from proving ``plan``.
+
+    ``digests`` are those of the network and of the options.
+    """
+    for code, wrong in (
+        ("plan_malformed", plan_shape(plan)),
+        ("certificate_malformed", certificate_shape(certificate)),
+    ):
+        if wrong is not None:
+            findings.add(code, "the document does not have its shape", place=wrong)
+    if findings or not isinstance(plan, dict) or not isinstance(certificate, dict):
+        return
+    check_heads(network, plan, certificate, digests=digests, findings=findings)
+    rulings = Rulings.of(network)
+    check_rules_listed(network, rulings, plan["rules_in_force"], findings)
+    names = Names(network)
+    try:
+        _check_limits_are_clear(network)
+    except UnusableNetworkError as error:
+        findings.add("network_unusable", str(error))
+        return
+    if (plan["status"] == "no_plan") != (certificate["lexicographic"] == "no_plan"):
+        findings.add("bound_wrong", "plan and certificate are about different answers")
+    elif plan["status"] == "no_plan":
+        cuts = certificate["cuts"]
+        check_cuts(network, options, rulings, cuts, names=names, findings=findings)
+    else:
+        _check_planned(network, options, rulings, plan, certificate, findings=findings)
+
+
+def _check_limits_are_clear(network: Network) -> None:
+    """Raise where a limit on a lane that several items can use does not say per what."""
+    lanes = network.lanes
+    unclear = (lanes.item == -1) & (lanes.per.codes < 0)
+    if not (unclear & (lanes.capacity.present | lanes.must_ship.present)).any():
+        return
+    users = np.zeros(len(lanes), dtype=np.int64)
+    for item in range(len(network.items)):
+        users[usable_lanes(network, item)] += 1
+    check_limits_are_clear(lanes, users > 1)
+
+
+def _check_planned(  # noqa: PLR0913 - see check_documents
+    network: Network,
+    options: Options,
+    rulings: Rulings,
+    plan: Mapping[str, Any],
+    certificate: Mapping[str, Any],
+    *,
+    findings: Findings,
+) -> None:
+    """Note what is wrong with a plan that serves something."""
+    names = Names(network)
+    lines = names.plan_lines(plan["plan_lines"], findings)
+    proofs = certificate["items"]
+    if [proof["item"] for proof in proofs] != [item.id for item in network.items]:
+        findings.add("name_unknown", "the items are not those of the network", place="/items")
+        return
+    if lines is None:
+        return
+    scale = amount(certificate["cost_scale"])
+    if scale <= 0:
+        findings.add("cost_scale_wrong", "the scale is not above 0", place="/cost_scale")
+        return
+    results = []
+    by_item: list[list[PlanLine]] = [[] for _ in network.items]
+    for line in lines:
+        if line.row >= 0:
+            by_item[line.item].append(line)
+    for item, proof in enumerate(proofs):
+        result = _check_item(
+            network,
+            options,
+            rulings,
+            by_item[item],
+            proof,
+            scale=scale,
+            names=names,
+            findings=findings,
+        )
+        if result is not None:
+            results.append(result)
+    if len(results) == len(network.items):
+        _check_tables(network, options, rulings, results, lines, plan, certificate, findings)
+
+
+def _check_item(  # noqa: PLR0913 - see check_documents
+    network: Network,
+    options: Options,
+    rulings: Rulings,
+    lines: Sequence[PlanLine],
+    proof: Mapping[str, Any],
+    *,
+    scale: Fraction,
+    names: Names,
+    findings: Findings,
+) -> ItemResult | None:
+    """Note what is wrong with one item; return what its flow comes to, if it can be read."""
+    try:
+        arcs = item_arcs(network, options, rulings, names.items[proof["item"]])
+    except UnusableNetworkError as error:
+        findings.add("network_unusable", str(error), place=proof["item"])
+        return None
+    flow = item_flows(arcs, lines, proof, names=names, findings=findings)
+    if flow is None:
+        return None
+    check_feasibility(network, arcs, flow, findings)
+    check_slackness(network, arcs, flow, proof, scale=scale, names=names, findings=findings)
+    return item_result(network, arcs, flow)
+
+
+def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
+    network: Network,
+    options: Options,
+    rulings: Rulings,
+    results: Sequence[ItemResult],
+    lines: Sequence[PlanLine],
+    plan: Mapping[str, Any],
+    certificate: Mapping[str, Any],
+    findings: Findings,
+) -> None:
+    """Note what is wrong with totals, bounds and tables, whose items are all known."""
+    allowed = options.shortages == "allow"
+    check_bounds(network, results, plan, certificate, shortages=allowed, findings=findings)
+    check_site_limits(network, rulings, results, findings)
+    check_site_use(network, results, plan["site_use"], findings)
+    check_totals(network, results, plan, findings)
+    paths = check_order_lines(network, results, plan["order_lines"], findings)
+    if paths is None:
+        return
+    check_shortages(network, results, plan, findings)
+    check_plan_lines(network, results, lines, paths, findings)
+    check_consignments(network, results, lines, paths, plan["consignments"], findings=findings)

@@ -1,0 +1,75 @@
+"""Why there is no plan: places that must send more than can come in.
+
+A circulation exists exactly if no set of nodes has minimums on the arcs that leave it above the
+capacities of the arcs that enter it (Hoffman 1960). One such set, counted again here, is proof.
+"""
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+
+from service.network.columns import Network
+from service.network.options import Options
+from service.proof.arcs import ItemArcs, Node, item_arcs
+from service.proof.exact import total
+from service.proof.flows import Names
+from service.proof.rulings import Rulings, UnusableNetworkError
+from service.proof.shapes import amount
+from service.proof.violations import Findings
+
+
+def check_cuts(  # noqa: PLR0913 - a cut is about all of a run
+    network: Network,
+    options: Options,
+    rulings: Rulings,
+    cuts: Sequence[Mapping[str, Any]],
+    *,
+    names: Names,
+    findings: Findings,
+) -> None:
+    """Note every cut that does not prove that there is no plan, and that there is none at all."""
+    if not cuts:
+        findings.add("cut_wrong", "there is no cut", place="/cuts")
+    for position, cut in enumerate(cuts):
+        place = f"/cuts/{position}"
+        item = names.items.get(cut["item"])
+        if item is None:
+            findings.add("name_unknown", "there is no such item", place=place)
+            continue
+        try:
+            arcs = item_arcs(network, options, rulings, item)
+        except UnusableNetworkError as error:
+            findings.add("network_unusable", str(error), place=cut["item"])
+            continue
+        _check_cut(arcs, cut, names=names, findings=findings, place=place)
+
+
+def _check_cut(
+    arcs: ItemArcs, cut: Mapping[str, Any], *, names: Names, findings: Findings, place: str
+) -> None:
+    """Note what is wrong with one cut."""
+    inside = np.zeros(len(arcs.nodes), dtype=np.bool_)
+    inside[0] = cut["root"]
+    for entry in cut["nodes"]:
+        site = names.sites.get(entry["site"], -1)
+        node = arcs.place.get(Node(site, entry["side"], entry["qualifier"]))
+        if node is None:
+            findings.add("name_unknown", "a cut names a node that is not there", place=place)
+            return
+        if inside[node]:
+            findings.add("listed_twice", "a cut names a node twice", place=place)
+            return
+        inside[node] = True
+    from_inside, to_inside = inside[arcs.tails()], inside[arcs.heads()]
+    forced_out = total(arcs.minimums()[from_inside & ~to_inside])
+    capacity = arcs.capacities()[to_inside & ~from_inside]
+    if bool((capacity < 0).any()):
+        findings.add("cut_wrong", "an unlimited arc enters the cut", place=place)
+        return
+    can_enter = total(capacity)
+    if forced_out <= can_enter:
+        findings.add("cut_wrong", "no more must leave than can enter", place=place)
+    stated = (amount(cut["forced_out"]), amount(cut["can_enter"]))
+    if stated != (forced_out * arcs.step, can_enter * arcs.step):
+        findings.add("cut_wrong", "the quantities are not those of the cut", place=place)

@@ -1,0 +1,107 @@
+"""What the flow of one item comes to: quantities, money and shortage, for the documents' checks."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from service.network.columns import Network
+from service.network.units import per_unit
+from service.proof.arcs import Arc, ItemArcs
+from service.proof.exact import Whole
+from service.proof.groups import Wanted
+from service.proof.stock import Stock
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ItemResult:
+    """A checked item. Quantities are in steps, by row of a lane, site, tier or group.
+
+    ``money`` are the parts of landed cost and shortage; ``short_by_priority`` has every priority
+    that occurs, ascending.
+    """
+
+    item: int
+    step: Fraction
+    stock: Mapping[int, Stock]
+    wanted: Wanted
+    on_lane: Mapping[int, int]
+    drawn: Mapping[tuple[int, int], int]
+    kept: Mapping[int, int]
+    served: Mapping[tuple[int, str], int]
+    keep_short: Mapping[int, int]
+    money: Mapping[str, Fraction]
+    short_by_priority: Mapping[int, int]
+
+
+def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
+    """Return what ``flow`` (in steps, lanes first) comes to."""
+    lanes = len(arcs.rows)
+    moved = np.flatnonzero(flow[:lanes] != 0)
+    on_lane = dict(zip(arcs.rows[moved].tolist(), flow[moved].tolist(), strict=True))
+    drawn: dict[tuple[int, int], int] = {}
+    kept: dict[int, int] = {}
+    served: dict[tuple[int, str], int] = {}
+    keep_short: dict[int, int] = {}
+    money = dict.fromkeys(("supply", "handling", "transport", "shortage"), Fraction(0))
+    money["transport"] = sum(
+        (steps * arcs.step * lane_cost(network, row, arcs.item) for row, steps in on_lane.items()),
+        Fraction(0),
+    )
+    short = dict.fromkeys(arcs.priorities, 0)
+    for arc, steps in zip(arcs.arcs, flow[lanes:].tolist(), strict=True):
+        if not steps:
+            continue
+        part = _PARTS.get(arc.kind)
+        if part is not None:
+            money[part] += steps * arc.money
+        if arc.rank:
+            short[arcs.priorities[arc.rank - 1]] += steps
+        site = _site(arc)
+        if arc.kind == "draw":
+            drawn[(site, int(str(arc.key[1])))] = steps
+        elif arc.kind == "keep":
+            kept[site] = kept.get(site, 0) + steps
+        elif arc.kind == "serve":
+            group = (site, str(arc.key[1]))
+            served[group] = served.get(group, 0) + steps
+        elif arc.kind == "short" and arc.key[1] is None:
+            keep_short[site] = steps
+    return ItemResult(
+        item=arcs.item,
+        step=arcs.step,
+        stock=arcs.stock,
+        wanted=arcs.wanted,
+        on_lane=on_lane,
+        drawn=drawn,
+        kept=kept,
+        served=served,
+        keep_short=keep_short,
+        money=money,
+        short_by_priority=short,
+    )
+
+
+_PARTS: Mapping[str, str] = {
+    "draw": "supply",
+    "handle": "handling",
+    "serve": "handling",
+    "pass": "handling",
+    "short": "shortage",
+}
+
+
+def lane_cost(network: Network, row: int, item: int) -> Fraction:
+    """Return the money that one unit of ``item`` costs on the lane ``row``."""
+    lanes = network.lanes
+    cost, measure = lanes.unit_cost.fraction(row), lanes.measure.text(row)
+    per = None if measure is None else per_unit(network.items[item], measure)
+    if cost is None or per is None:
+        raise ValueError(f"lane {row} has no cost for {network.items[item].id!r}")
+    return cost * per
+
+
+def _site(arc: Arc) -> int:
+    """Return the site that an arc's key begins with, -1 where it has no key."""
+    return int(str(arc.key[0])) if arc.key else -1

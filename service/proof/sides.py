@@ -1,0 +1,126 @@
+"""What a site is made of for one item: where goods come in, pass, and leave."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from service.network.columns import IntArray, Network
+from service.network.rules import Throughput
+from service.proof.groups import Wanted
+from service.proof.rulings import Rulings, UnusableNetworkError, measure_of
+from service.proof.stock import Stock
+from service.proof.usable import cross_docks, stock_behind
+
+UNLIMITED = -1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SiteSides:
+    """One site as an item sees it.
+
+    ``apart`` sites keep what they receive from what they send: it may not be passed on, or some
+    order lines there accept only certain origins. ``received_from`` are the qualifiers of the
+    received nodes: None, or positions of sites (``by_origin``). ``through``, ``received`` and
+    ``sent`` are limits in steps, -1 for none; ``past`` is the limit of what goes from a received
+    node to order lines or on. ``stock_behind`` are the sites whose stock can come from an origin.
+    """
+
+    apart: bool
+    passes: bool
+    by_origin: bool
+    received_from: tuple[int | None, ...]
+    has_sent: bool
+    through: int
+    received: int
+    sent: int
+    past: int
+    stock_behind: Mapping[int, frozenset[int]]
+
+    def allowed(self, origin: int | None, origins: frozenset[int]) -> bool:
+        """Return whether goods from ``origin`` may serve who accepts only ``origins``.
+
+        Raises ``UnusableNetworkError`` where some of the stock behind ``origin`` is accepted and
+        some is not, since it cannot be told apart on arrival.
+        """
+        if origin is None:
+            raise KeyError(origin)
+        behind = self.stock_behind[origin]
+        if behind & origins and behind - origins:
+            raise UnusableNetworkError("origins behind a cross-dock are accepted only in part")
+        return bool(behind & origins)
+
+
+def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
+    network: Network,
+    rulings: Rulings,
+    item: int,
+    *,
+    rows: IntArray,
+    stock: Mapping[int, Stock],
+    wanted: Wanted,
+) -> dict[int, SiteSides]:
+    """Return the sites that matter to ``item``, ascending, and what each is made of."""
+    lanes = network.lanes
+    ends = np.zeros((2, len(network.sites)), dtype=np.bool_)
+    ends[0, lanes.origin[rows]] = True
+    ends[1, lanes.destination[rows]] = True
+    choosy = {group.site for group in wanted.groups if group.origins is not None}
+    relevant = (
+        set(stock)
+        | {group.site for group in wanted.groups}
+        | set(np.flatnonzero(ends.any(axis=0)).tolist())
+    )
+    passing = cross_docks(network)
+    closed = rulings.closed_sites(item, len(network.sites))
+    limits = _throughput_limits(network, rulings, item, relevant)
+    sides = {}
+    for site in sorted(relevant):
+        starts, arrives = bool(ends[0, site]), bool(ends[1, site])
+        mixed = not passing[site] and arrives and (site in stock or starts)
+        apart = site in choosy or mixed
+        limit = limits.get(site, {})
+        if apart and (limit.keys() & {"through", "received"} or (passing[site] and limit)):
+            raise UnusableNetworkError(
+                f"a throughput limit at {network.sites[site].id!r} is not built"
+            )
+        origins: list[int | None] = []
+        behind = {}
+        if site in choosy:
+            before = np.unique(lanes.origin[rows[lanes.destination[rows] == site]]).tolist()
+            origins = list(before)
+            behind = {origin: stock_behind(network, item, rows, origin) for origin in before}
+        elif (apart and arrives) or "received" in limit:
+            origins = [None]
+        sides[site] = SiteSides(
+            apart=apart,
+            passes=bool(passing[site]),
+            by_origin=site in choosy,
+            received_from=tuple(origins),
+            has_sent=apart or "sent" in limit,
+            through=0 if closed[site] else limit.get("through", UNLIMITED),
+            received=limit.get("received", UNLIMITED),
+            sent=limit.get("sent", UNLIMITED),
+            past=0 if closed[site] else UNLIMITED,
+            stock_behind=behind,
+        )
+    return sides
+
+
+def _throughput_limits(
+    network: Network, rulings: Rulings, item: int, relevant: set[int]
+) -> dict[int, dict[str, int]]:
+    """Return by site and flow the least limit in steps of the rules that pick both."""
+    thing = network.items[item]
+    limits: dict[int, dict[str, int]] = {}
+    for ruling in rulings.throughputs(item):
+        rule = ruling.rule
+        assert isinstance(rule, Throughput)  # noqa: S101 - what throughputs() returns
+        for site in np.flatnonzero(ruling.sites).tolist():
+            if site not in relevant:
+                continue
+            exact = rule.maximum / (measure_of(thing, rule.measure) * thing.step)
+            of_site = limits.setdefault(site, {})
+            steps = exact.numerator // exact.denominator
+            of_site[rule.flow] = min(steps, of_site.get(rule.flow, steps))
+    return limits

@@ -1,0 +1,90 @@
+"""The stock of one item: tiers of equal cost, whole steps, and what each row gives to them."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from service.network.columns import Network
+from service.network.units import item_units
+from service.proof.rulings import UnusableNetworkError
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class StockRow:
+    """What one supply row gives: whole steps of a tier (from 1), and its lot."""
+
+    row: int
+    tier: int
+    steps: int
+    lot: str | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Stock:
+    """The stock of an item at a site.
+
+    ``tier_cost`` is money per item unit and ``tier_steps`` what there is, dearer tiers later.
+    ``keep_steps`` is what should stay (0: no node for it), of ``keep_priority``.
+    """
+
+    tier_cost: tuple[Fraction, ...]
+    tier_steps: tuple[int, ...]
+    rows: tuple[StockRow, ...]
+    keep_steps: int
+    keep_priority: int
+
+
+def stock_of(network: Network, item: int) -> Mapping[int, Stock]:
+    """Return the stock of ``item`` by site (a position), sites ascending."""
+    supply = network.supply
+    at_site: dict[int, list[int]] = {}
+    for row in np.flatnonzero(supply.item == item).tolist():
+        at_site.setdefault(int(supply.site[row]), []).append(row)
+    return {site: _stock(network, item, rows) for site, rows in at_site.items()}
+
+
+def _stock(network: Network, item: int, rows: list[int]) -> Stock:
+    """Return the stock that ``rows`` of one site and item, in the table's order, add up to.
+
+    Cumulative sums are rounded down to the step and then differenced, so that what no row holds
+    alone is not lost where rows add up to a step.
+    """
+    supply, step = network.supply, network.items[item].step
+    costs: list[Fraction] = []
+    steps: list[int] = []
+    parts: list[StockRow] = []
+    held = Fraction(0)
+    keep_steps = keep_priority = 0
+    for row in rows:
+        units = _row_units(network, item, row)
+        cost = (supply.unit_cost.fraction(row) or Fraction(0)) / units
+        if not costs or cost != costs[-1]:
+            costs.append(cost)
+            steps.append(0)
+        before = held // step
+        held += (supply.quantity.fraction(row) or Fraction(0)) * units
+        gained = held // step - before
+        steps[-1] += gained
+        parts.append(StockRow(row=row, tier=len(costs), steps=gained, lot=supply.lot.text(row)))
+        kept = supply.keep_quantity.fraction(row)
+        if kept is not None and kept * units >= step:
+            keep_steps = kept * units // step
+            keep_priority = int(supply.keep_priority[row])
+    return Stock(
+        tier_cost=tuple(costs),
+        tier_steps=tuple(steps),
+        rows=tuple(parts),
+        keep_steps=keep_steps,
+        keep_priority=keep_priority,
+    )
+
+
+def _row_units(network: Network, item: int, row: int) -> Fraction:
+    """Return the item units in one unit of a supply row."""
+    unit = network.supply.unit.text(row)
+    units = None if unit is None else item_units(network.items[item], unit)
+    if units is None:
+        raise UnusableNetworkError(f"supply row {row} has an unknown unit")
+    return units
