@@ -27,8 +27,11 @@ class EngineLock:
             raise EngineLocked(f"{path} is locked: another process executes its runs") from error
 
     def release(self) -> None:
-        """Let another process take over."""
-        os.close(self._descriptor)
+        """Let another process take over; may be called twice."""
+        # Closed once only: the number may belong to another file by then.
+        descriptor, self._descriptor = self._descriptor, -1
+        if descriptor >= 0:
+            os.close(descriptor)
 
 
 def _lock(descriptor: int) -> None:

@@ -71,7 +71,7 @@ class Backing:
 
     ``application`` opens the store and runs the engine for as long as its block lasts; ``migrate``
     brings the database to the newest form and returns the revisions it applied; ``address`` is
-    where ``serve`` would listen; ``versions`` is what made a plan.
+    where ``serve`` would listen.
     """
 
     intake: IntakeWork
@@ -81,4 +81,3 @@ class Backing:
     migrate: Callable[[], list[str]]
     audit: Callable[[], Audit]
     address: Callable[[], str]
-    versions: Callable[[], Mapping[str, str]]

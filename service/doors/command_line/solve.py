@@ -2,7 +2,6 @@
 
 import tempfile
 import zipfile
-from collections.abc import Mapping
 from pathlib import Path
 from typing import Annotated, Any
 
@@ -89,8 +88,8 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
         _planned(backing, file, folder, options)
         plan_bytes = (folder / "plan.json").read_bytes()
         if evidence is not None:
-            _write_evidence(evidence, folder, options, backing.versions())
-    plan: Mapping[str, Any] = orjson.loads(plan_bytes)
+            _write_evidence(evidence, folder, options)
+    plan: dict[str, Any] = orjson.loads(plan_bytes)
     if as_json:
         put(plan_bytes + b"\n")
     elif csv is not None:
@@ -124,23 +123,22 @@ def _planned(backing: Backing, file: str, folder: Path, options: Options) -> Non
         raise EndingError(Exit.FAILED, str(outcome.reason), detail)
 
 
-def _write_evidence(
-    path: Path, folder: Path, options: Options, versions: Mapping[str, str]
-) -> None:
+def _write_evidence(path: Path, folder: Path, options: Options) -> None:
     """Pack everything that a stranger needs to check the plan."""
     from service.proof.evidence import write_evidence  # noqa: PLC0415 - NumPy, only for --evidence
 
     with zipfile.ZipFile(folder / "network.zip") as network:
         entries = {name: network.read(name) for name in network.namelist()}
+    certificate_bytes = (folder / "certificate.json").read_bytes()
     try:
         write_evidence(
             path,
             network_entries=entries,
             options=options,
             plan_bytes=(folder / "plan.json").read_bytes(),
-            certificate_bytes=(folder / "certificate.json").read_bytes(),
+            certificate_bytes=certificate_bytes,
             history=[],
-            versions=versions,
+            versions=orjson.loads(certificate_bytes)["versions"],
         )
     except OSError as error:
         detail = f"{path} cannot be written: {error.strerror}"

@@ -1,0 +1,273 @@
+"""The composition root: settings, then store, engine, use cases and doors; entry point ``main``.
+
+Whatever only some commands need is imported inside the function that needs it: ``solve``, ``check``
+and ``verify`` must run where there is no database, and start without loading one.
+"""
+
+import contextlib
+import signal
+import sys
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from service.doors.command_line.backing import Audit, Backing, NotReadyError, OnProgress
+from service.doors.command_line.commands import run_command
+from service.doors.command_line.ending import Exit, tell
+from service.settings import Settings, SettingsError, read_settings
+from service.telemetry import configure_logs
+
+if TYPE_CHECKING:
+    from service.engine.local import LocalEngine
+    from service.engine.lock import EngineLock
+    from service.engine.tasks import IntakeChildren
+    from service.network.intake import IntakeReport
+    from service.network.options import Options
+    from service.planning.outcome import Outcome
+    from service.runs.ports import Application, Store
+    from service.store.database import Database
+
+
+def main() -> None:
+    """Run the command that the arguments of this process name, and exit with its code."""
+    try:
+        settings = read_settings()
+    except SettingsError as error:
+        tell(f"lanewright: a setting cannot be used\n{error}")
+        sys.exit(Exit.BAD_INPUT)
+    configure_logs(settings.log_level)
+    sys.exit(run_command(sys.argv[1:], Work(settings).backing()))
+
+
+class Work:
+    """The work behind the commands; nothing is opened or started before a command asks for it."""
+
+    def __init__(self, settings: Settings) -> None:
+        """Work as ``settings`` say."""
+        self._settings = settings
+
+    def backing(self) -> Backing:
+        """Return the work in the form that the command line takes."""
+        return Backing(
+            intake=self.intake,
+            plan=self.plan,
+            application=lambda: working_application(self._settings),
+            serve=self.serve,
+            migrate=self.migrate,
+            audit=self.audit,
+            address=lambda: address(self._settings.host, self._settings.port),
+        )
+
+    def intake(
+        self,
+        spool: Path,
+        folder: Path,
+        *,
+        options: "Options",
+        media_type: str,
+        content_encoding: str | None,
+    ) -> "IntakeReport":
+        """Check a network in a child that is started for it."""
+        from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
+        from service.network.intake import IntakeReport  # noqa: PLC0415 - see the module
+
+        task = {
+            "spool": str(spool),
+            "folder": str(folder),
+            "options": options.to_document(),
+            "media_type": media_type,
+            "content_encoding": content_encoding,
+            "limits": intake_limits(self._settings),
+        }
+        answer = do_one_task(
+            "intake",
+            task,
+            seconds=self._settings.intake_seconds_max,
+            memory_bytes=self._settings.intake_memory_bytes_max,
+        )
+        return IntakeReport.from_document(answer)
+
+    def plan(
+        self, source: Path, target: Path, *, options: "Options", on_progress: OnProgress
+    ) -> "Outcome":
+        """Plan a checked network in a child that is started for it."""
+        from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
+        from service.engine.tasks import read_outcome  # noqa: PLC0415 - see the module
+
+        answer = do_one_task(
+            "plan",
+            {"source": str(source), "target": str(target), "options": options.to_document()},
+            seconds=options.deadline_seconds,
+            memory_bytes=self._settings.plan_memory_bytes_max,
+            on_progress=on_progress,
+        )
+        return read_outcome(answer)
+
+    def serve(self, *, port: int | None) -> None:
+        """Serve until SIGINT or SIGTERM, then let go of everything in order."""
+        from service.doors.http.app import create_app  # noqa: PLC0415 - see the module
+        from service.doors.http.server import http_server, listen  # noqa: PLC0415 - see the module
+
+        settings = self._settings
+        wanted = settings.port if port is None else port
+        try:
+            listening = listen(settings.host, wanted)
+        except OSError as error:
+            detail = f"{address(settings.host, wanted)} cannot be listened on: {error.strerror}"
+            raise NotReadyError(detail) from error
+        # Both signals end the block below from inside; else SIGTERM would leave no time to let go.
+        signal.signal(signal.SIGTERM, signal.default_int_handler)
+        with (
+            contextlib.suppress(KeyboardInterrupt),
+            listening,
+            working_application(settings) as application,
+        ):
+            server = http_server(create_app(application, settings))
+            where = address(settings.host, listening.getsockname()[1])
+            tell(f"lanewright: serving at {where}, documented at {where}/docs; Ctrl-C ends it")
+            server.run(sockets=[listening])
+
+    def migrate(self) -> list[str]:
+        """Bring the database up to date; return what was applied."""
+        with _opened_database(self._settings) as database:
+            return _migrated(database)
+
+    def audit(self) -> Audit:
+        """Audit the store, which must be there: an audit makes no database."""
+        from service.store.audit import audit  # noqa: PLC0415 - see the module
+        from service.store.database import database_url, sqlite_file  # noqa: PLC0415 - likewise
+
+        url = self._settings.database_url
+        file = sqlite_file(database_url(url))
+        if file is not None and not file.exists():
+            problem = {"code": "unreadable", "place": str(file), "detail": "There is no such file."}
+            return Audit(verdict="unreadable", problems=(problem,))
+        found = audit(url)
+        return Audit(
+            verdict=found.verdict,
+            problems=tuple(problem.to_document() for problem in found.problems),
+        )
+
+
+@contextmanager
+def working_application(settings: Settings) -> Iterator["Application"]:
+    """Open the store, run the engine while the block lasts, let go of both in order.
+
+    An SQLite file is brought up to date first: it belongs to this process alone. Raises
+    ``NotReadyError`` when the database cannot be used or another process executes its runs.
+    """
+    from service.runs.application import application  # noqa: PLC0415 - see the module
+    from service.store.sql_store import SqlStore, SystemClock  # noqa: PLC0415 - see the module
+
+    with _opened_database(settings) as database, contextlib.ExitStack() as stack:
+        lock = _engine_lock(settings, database)
+        if lock is not None:
+            stack.callback(lock.release)
+            _migrated(database)
+        store = SqlStore(database, SystemClock())
+        missing = store.missing()
+        if missing:
+            raise NotReadyError("; ".join(missing))
+        intake, engine = _engine(settings, store)
+        stack.callback(intake.close)
+        stack.callback(engine.stop)
+        engine.start(lock)
+        yield application(
+            store=store,
+            dispatcher=engine,
+            intake=intake,
+            engine_missing=lambda: [] if engine.working() else ["engine: it has stopped"],
+        )
+
+
+def _engine(settings: Settings, store: "Store") -> tuple["IntakeChildren", "LocalEngine"]:
+    """Return the children that check and the engine that plans, neither of them started."""
+    from service.engine.children import Nursery  # noqa: PLC0415 - see the module
+    from service.engine.local import LocalEngine  # noqa: PLC0415 - likewise
+    from service.engine.tasks import IntakeChildren, PlanningChildren  # noqa: PLC0415 - likewise
+    from service.runs.execute import Execute  # noqa: PLC0415 - likewise
+    from service.runs.recover import Recover  # noqa: PLC0415 - likewise
+    from service.runs.sweep import Sweep  # noqa: PLC0415 - likewise
+    from service.runs.watch import Watch  # noqa: PLC0415 - likewise
+
+    intake = IntakeChildren(
+        Nursery("intake", spares=settings.intake_slots),
+        seconds=settings.intake_seconds_max,
+        memory_bytes=settings.intake_memory_bytes_max,
+        limits=intake_limits(settings),
+    )
+    planner = PlanningChildren(Nursery("plan"), memory_bytes=settings.plan_memory_bytes_max)
+    engine = LocalEngine(
+        execute=Execute(
+            store=store,
+            planner=planner,
+            scratch=settings.data / "scratch",
+            lease_seconds=settings.lease_seconds,
+            crashes_max=settings.crashes_max,
+        ),
+        sweep=Sweep(store=store, crashes_max=settings.crashes_max),
+        watch=Watch(store=store, lease_seconds=settings.lease_seconds),
+        recover=Recover(store=store),
+        planner=planner,
+        poll_seconds=settings.poll_seconds,
+    )
+    return intake, engine
+
+
+@contextmanager
+def _opened_database(settings: Settings) -> Iterator["Database"]:
+    """Open the database of the settings, close it after the block."""
+    from service.store.database import DatabaseRefused, open_database  # noqa: PLC0415 - see above
+
+    # Nobody else on this machine needs to read what lies there.
+    settings.data.mkdir(mode=0o700, parents=True, exist_ok=True)
+    try:
+        database = open_database(settings.database_url)
+    except DatabaseRefused as error:
+        raise NotReadyError(str(error)) from error
+    try:
+        yield database
+    finally:
+        database.close()
+
+
+def _migrated(database: "Database") -> list[str]:
+    """Bring an open database up to date; return what was applied."""
+    from service.runs.faults import StoreUnavailable  # noqa: PLC0415 - see the module
+    from service.store.migrate import MigrationBroken, migrate_database  # noqa: PLC0415 - likewise
+
+    try:
+        return migrate_database(database)
+    except MigrationBroken as error:
+        raise NotReadyError(f"the database is not what it should be: {error}") from error
+    except StoreUnavailable as error:
+        raise NotReadyError(f"the database cannot be reached: {error}") from error
+
+
+def _engine_lock(settings: Settings, database: "Database") -> "EngineLock | None":
+    """Return the lock of an SQLite file, None for PostgreSQL, where leases decide."""
+    from service.engine.lock import EngineLock, EngineLocked  # noqa: PLC0415 - see the module
+    from service.store.database import database_url, sqlite_file  # noqa: PLC0415 - likewise
+
+    file = sqlite_file(database_url(settings.database_url))
+    if file is None or not database.is_sqlite:
+        return None
+    try:
+        return EngineLock(file.with_name(file.name + ".engine"))
+    except EngineLocked as error:
+        detail = f"{error}. Stop it, or set LANEWRIGHT_DATA to another folder."
+        raise NotReadyError(detail) from error
+
+
+def intake_limits(settings: Settings) -> Mapping[str, int]:
+    """Return the limits of the input check as they travel to a child."""
+    return {
+        "unpacked_bytes_max": settings.body_unpacked_bytes_max,
+        "nesting_max": settings.nesting_max,
+    }
+
+
+def address(host: str, port: int) -> str:
+    """Return where the service answers; an IPv6 address stands in brackets (RFC 3986 3.2.2)."""
+    return f"http://[{host}]:{port}" if ":" in host else f"http://{host}:{port}"
