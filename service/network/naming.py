@@ -123,7 +123,9 @@ def _narrow(
 ) -> tuple[int, int]:
     """Return the part of the sorted rows ``low`` to ``high`` whose value is ``value``."""
     part = np.asarray(column)[low:high]
+    # A plain int would make NumPy copy the whole part to int64 at every search.
+    code = np.int32(value)
     return (
-        low + int(np.searchsorted(part, value, side="left")),
-        low + int(np.searchsorted(part, value, side="right")),
+        low + int(np.searchsorted(part, code, side="left")),
+        low + int(np.searchsorted(part, code, side="right")),
     )
