@@ -47,7 +47,6 @@ class Settings(BaseSettings):
     intake_seconds_max: Annotated[int, Field(ge=1, le=900)] = 60
     intake_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 4 * GIBIBYTE
 
-    plan_slots: Annotated[int, Field(ge=1, le=1)] = 1
     plan_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 8 * GIBIBYTE
     # A child that died by itself this often takes its run with it: three strikes tell a poisonous
     # network from a passing accident, and more would only keep the slot from others.

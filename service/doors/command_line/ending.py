@@ -10,15 +10,13 @@ from service.network.faults import Fault
 
 
 class Exit(IntEnum):
-    """The exit codes of every command."""
+    """The exit codes of every command; Ctrl-C ends with 130, as shells expect."""
 
     DONE = 0
     FAILED = 1
     BAD_INPUT = 2
     NO_PLAN = 3
     INCOMPLETE = 4
-    # What a shell reports for a program that was ended by Ctrl-C: 128 + SIGINT.
-    INTERRUPTED = 130
 
 
 class EndingError(Exception):
