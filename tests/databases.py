@@ -4,7 +4,7 @@ A test that finds no PostgreSQL fails and says how to get one; it is never skipp
 """
 
 import itertools
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
@@ -17,6 +17,7 @@ from service.store.migrate import migrate
 from service.store.sql_store import SqlStore
 from tests.servers import PostgresServer, postgres
 
+Opened = Callable[[str], Database]
 DATABASES = ("sqlite", "postgresql")
 _TEMPLATE = "lanewright_template"
 _names = itertools.count(1)
@@ -103,11 +104,23 @@ def database_url(database_kind: str, request: pytest.FixtureRequest, tmp_path: P
 
 
 @pytest.fixture
-def database(database_url: str) -> Iterator[Database]:
+def opened() -> Iterator[Opened]:
+    """Return a function that opens a database until the test is over."""
+    databases: list[Database] = []
+
+    def open_until_the_end(url: str) -> Database:
+        databases.append(open_database(url))
+        return databases[-1]
+
+    yield open_until_the_end
+    for database in databases:
+        database.close()
+
+
+@pytest.fixture
+def database(database_url: str, opened: Opened) -> Database:
     """Open the fresh database."""
-    opened = open_database(database_url)
-    yield opened
-    opened.close()
+    return opened(database_url)
 
 
 @pytest.fixture

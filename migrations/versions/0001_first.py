@@ -82,13 +82,13 @@ def _create_runs() -> None:
         _digest("run", "options_digest"),
         _digest("run", "request_digest"),
         sa.CheckConstraint(
-            "tenant <> '' AND submitted_by <> '' AND authentication <> ''", name="ck_run_who"
+            "tenant <> '' AND submitted_by <> '' AND authentication <> ''", name=op.f("ck_run_who")
         ),
         _digest("run", "wire_digest"),
-        sa.CheckConstraint("deadline_at > created_at", name="ck_run_deadline"),
+        sa.CheckConstraint("deadline_at > created_at", name=op.f("ck_run_deadline")),
         _moment("run", "created_at"),
         _moment("run", "deadline_at"),
-        sa.CheckConstraint("number >= 1", name="ck_run_number"),
+        sa.CheckConstraint("number >= 1", name=op.f("ck_run_number")),
         sa.PrimaryKeyConstraint("tenant", "id", name="pk_run"),
         sa.UniqueConstraint("id", name="uq_run_id"),
         sa.UniqueConstraint("tenant", "plan_for", "number", name="uq_run_tenant_plan_for_number"),
@@ -107,17 +107,17 @@ def _create_runs() -> None:
         _text("certificate_digest", nullable=True),
         _text("seconds"),
         sa.CheckConstraint(
-            "(state = 'failed') = (reason IS NOT NULL)", name="ck_run_ending_reason"
+            "(state = 'failed') = (reason IS NOT NULL)", name=op.f("ck_run_ending_reason")
         ),
         _digest("run_ending", "certificate_digest", nullable=True),
         _digest("run_ending", "plan_digest", nullable=True),
         sa.CheckConstraint(
             "state NOT IN ('planned', 'no_plan')"
             " OR (plan_digest IS NOT NULL AND certificate_digest IS NOT NULL)",
-            name="ck_run_ending_artefacts",
+            name=op.f("ck_run_ending_artefacts"),
         ),
-        sa.CheckConstraint("state NOT IN ('waiting', 'running')", name="ck_run_ending_state"),
-        sa.CheckConstraint("attempt >= 0", name="ck_run_ending_attempt"),
+        sa.CheckConstraint("state NOT IN ('waiting', 'running')", name=op.f("ck_run_ending_state")),
+        sa.CheckConstraint("attempt >= 0", name=op.f("ck_run_ending_attempt")),
         _moment("run_ending", "finished_at"),
         sa.ForeignKeyConstraint(
             ["tenant", "run"], ["run.tenant", "run.id"], name="fk_run_ending_run"
@@ -137,17 +137,17 @@ def _create_runs() -> None:
         _text("deadline_at"),
         _text("started_at", nullable=True),
         sa.CheckConstraint(
-            "(state = 'running') = (lease_until IS NOT NULL)", name="ck_run_dispatch_lease"
+            "(state = 'running') = (lease_until IS NOT NULL)", name=op.f("ck_run_dispatch_lease")
         ),
         sa.CheckConstraint(
-            "(state = 'running') = (token IS NOT NULL)", name="ck_run_dispatch_token"
+            "(state = 'running') = (token IS NOT NULL)", name=op.f("ck_run_dispatch_token")
         ),
         sa.CheckConstraint(
             "finished_token IS NULL OR state NOT IN ('waiting', 'running')",
-            name="ck_run_dispatch_finished_token",
+            name=op.f("ck_run_dispatch_finished_token"),
         ),
-        sa.CheckConstraint("attempt >= 0", name="ck_run_dispatch_attempt"),
-        sa.CheckConstraint("crashes >= 0", name="ck_run_dispatch_crashes"),
+        sa.CheckConstraint("attempt >= 0", name=op.f("ck_run_dispatch_attempt")),
+        sa.CheckConstraint("crashes >= 0", name=op.f("ck_run_dispatch_crashes")),
         sa.ForeignKeyConstraint(
             ["tenant", "run"], ["run.tenant", "run.id"], name="fk_run_dispatch_run"
         ),
@@ -178,11 +178,11 @@ def _create_events() -> None:
         _digest("event", "previous"),
         sa.CheckConstraint(
             "tenant <> '' AND stream <> '' AND kind <> '' AND actor <> '' AND authentication <> ''",
-            name="ck_event_who",
+            name=op.f("ck_event_who"),
         ),
-        sa.CheckConstraint("format >= 1", name="ck_event_format"),
+        sa.CheckConstraint("format >= 1", name=op.f("ck_event_format")),
         _moment("event", "recorded_at"),
-        sa.CheckConstraint("seq >= 1", name="ck_event_seq"),
+        sa.CheckConstraint("seq >= 1", name=op.f("ck_event_seq")),
         sa.PrimaryKeyConstraint("tenant", "stream", "seq", name="pk_event"),
     )
     op.create_table(
@@ -192,7 +192,7 @@ def _create_events() -> None:
         sa.Column("seq", sa.Integer(), nullable=False),
         sa.Column("salt", sa.LargeBinary(), nullable=False),
         _text("payload"),
-        sa.CheckConstraint("length(salt) = 16", name="ck_event_payload_salt"),
+        sa.CheckConstraint("length(salt) = 16", name=op.f("ck_event_payload_salt")),
         sa.ForeignKeyConstraint(
             ["tenant", "stream", "seq"],
             ["event.tenant", "event.stream", "event.seq"],
@@ -213,9 +213,9 @@ def _create_contents() -> None:
         sa.Column("unpacked_bytes", sa.BigInteger(), nullable=False),
         sa.Column("bytes", sa.LargeBinary(), nullable=False),
         _digest("blob", "digest"),
-        sa.CheckConstraint("tenant <> ''", name="ck_blob_tenant"),
-        sa.CheckConstraint("part >= 0 AND part < parts", name="ck_blob_part"),
-        sa.CheckConstraint("unpacked_bytes >= 0", name="ck_blob_unpacked_bytes"),
+        sa.CheckConstraint("tenant <> ''", name=op.f("ck_blob_tenant")),
+        sa.CheckConstraint("part >= 0 AND part < parts", name=op.f("ck_blob_part")),
+        sa.CheckConstraint("unpacked_bytes >= 0", name=op.f("ck_blob_unpacked_bytes")),
         sa.PrimaryKeyConstraint("tenant", "digest", "part", name="pk_blob"),
     )
     op.create_table(
@@ -228,7 +228,7 @@ def _create_contents() -> None:
         _text("destination"),
         _text("item"),
         _text("quantity"),
-        sa.CheckConstraint("position >= 0", name="ck_plan_line_position"),
+        sa.CheckConstraint("position >= 0", name=op.f("ck_plan_line_position")),
         sa.ForeignKeyConstraint(
             ["tenant", "run"], ["run.tenant", "run.id"], name="fk_plan_line_run"
         ),
@@ -247,7 +247,7 @@ def _create_contents() -> None:
         _text("quantity"),
         _text("served"),
         _text("short"),
-        sa.CheckConstraint("position >= 0", name="ck_order_line_position"),
+        sa.CheckConstraint("position >= 0", name=op.f("ck_order_line_position")),
         sa.ForeignKeyConstraint(
             ["tenant", "run"], ["run.tenant", "run.id"], name="fk_order_line_run"
         ),
@@ -264,12 +264,12 @@ def _digest(table: str, column: str, *, nullable: bool = False) -> sa.CheckConst
     form = f"{column} LIKE 'sha-256:%' AND length({column}) = 72"
     return sa.CheckConstraint(
         f"{column} IS NULL OR {form}" if nullable else form,
-        name=f"ck_{table}_{column}",
+        name=op.f(f"ck_{table}_{column}"),
     )
 
 
 def _moment(table: str, column: str) -> sa.CheckConstraint:
-    return sa.CheckConstraint(f"length({column}) = 27", name=f"ck_{table}_{column}")
+    return sa.CheckConstraint(f"length({column}) = 27", name=op.f(f"ck_{table}_{column}"))
 
 
 def _create_sqlite_triggers() -> None:

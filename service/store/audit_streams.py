@@ -95,10 +95,10 @@ def stray_problems(session: Session) -> Iterator[Problem]:
             .where(RunRow.tenant.is_(None))
             .order_by(table.tenant, table.run)
         )
-        for row in session.execute(strays):
+        for stray in session.execute(strays):
             yield Problem(
                 code="row_without_run",
-                place=f"{row.tenant}/{name} {row.run}",
+                place=f"{stray.tenant}/{name} {stray.run}",
                 detail="a row of a run that is not there",
             )
 
