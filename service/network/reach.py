@@ -60,6 +60,26 @@ class LaneUse:
         demand = self._network.demand
         return self._sites(demand.site[(demand.item == item) & (demand.quantity.values > 0)])
 
+    def received(self, item: int) -> BoolArray:
+        """Return, in shape (sites,), where a lane that ``item`` can use ends."""
+        return self._sites(self._network.lanes.destination[self.rows(item)])
+
+    def sent(self, item: int) -> BoolArray:
+        """Return, in shape (sites,), where a lane that ``item`` can use begins."""
+        return self._sites(self._network.lanes.origin[self.rows(item)])
+
+    def apart(self, item: int) -> BoolArray:
+        """Return, in shape (sites,), which sites keep received goods of ``item`` from their stock.
+
+        They do where received goods may not leave again although own stock may, and where an order
+        line of the item names the origins that may serve it.
+        """
+        network = self._network
+        stocked = self._sites(network.supply.site[network.supply.item == item])
+        demand = network.demand
+        choosy = (demand.item == item) & (demand.origins.codes >= 0) & (demand.quantity.values > 0)
+        return (~self._passes_on & stocked & self.received(item)) | self._sites(demand.site[choosy])
+
     def stock_reaching(self, item: int, place: int) -> BoolArray:
         """Return, in shape (sites,), whose stock of ``item`` can be at ``place`` to be sent on.
 
@@ -113,7 +133,9 @@ class Steps:
 
     def __init__(self, tails: CodeArray, heads: CodeArray, sites: int) -> None:
         """Index the steps from ``tails`` to ``heads``, both of shape (lanes,)."""
-        pairs = np.unique(tails.astype(np.int64) * max(sites, 1) + heads)
+        # Sorting, where np.unique would hash: 1.9 s against 0.1 s for a million pairs.
+        pairs = np.sort(tails.astype(np.int64) * max(sites, 1) + heads)
+        pairs = pairs[np.append(True, pairs[1:] != pairs[:-1])[: len(pairs)]]
         self._heads = pairs % max(sites, 1)
         self._bounds = np.searchsorted(pairs, np.arange(sites + 1) * max(sites, 1))
 

@@ -36,7 +36,7 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
     """Return bounds and costs of the lanes at ``rows`` for ``item``."""
     lanes, thing = network.lanes, network.items[item]
     codes = lanes.measure.codes[rows]
-    used = set(np.unique(codes).tolist())
+    used = set(np.flatnonzero(np.bincount(codes)).tolist())
     # How much of each measure one step is; a measure that only other items know is not used here.
     step_is = tuple(
         _measured(thing, measure) * thing.step if code in used else Fraction(1)

@@ -35,7 +35,7 @@ class Stock:
 
 def factors_of(item: Item, units: Texts, codes: CodeArray) -> tuple[Fraction, ...]:
     """Return the item units in one of each unit of a table; 1 for units that only others use."""
-    used = set(np.unique(codes).tolist())
+    used = set(np.flatnonzero(np.bincount(codes)).tolist())
     return tuple(
         _known(item, unit) if code in used else Fraction(1)
         for code, unit in enumerate(units.values)
