@@ -128,7 +128,7 @@ def test_every_silenced_check_says_why() -> None:
     silenced = re.compile("# " + r"(?:noqa|type: ignore)\b.*")
     reasoned = re.compile(
         "# " + r"noqa: [A-Z]+[0-9]+(?:, ?[A-Z]+[0-9]+)* - \S"
-        "|# " + r"type: ignore\[[a-z, -]+\] # \S"
+        "|# " + r"type: ignore\[[a-z, -]+\] +# \S"
         "|# " + r"ruff: noqa: [A-Z]+[0-9]+ - \S"
     )
     found = [

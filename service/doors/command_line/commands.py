@@ -1,6 +1,8 @@
 """All commands of ``lanewright``, and how each of them ends."""
 
+import importlib.metadata
 from collections.abc import Sequence
+from typing import Annotated
 
 import typer
 
@@ -8,19 +10,37 @@ from service.doors.command_line import operations
 from service.doors.command_line.backing import Backing, NotReadyError
 from service.doors.command_line.check import check
 from service.doors.command_line.demo import demo
-from service.doors.command_line.ending import EndingError, Exit, put_json, tell
+from service.doors.command_line.ending import EndingError, Exit, put_json, put_lines, tell
 from service.doors.command_line.solve import solve
 from service.doors.command_line.verify import verify
 
 lanewright = typer.Typer(
     name="lanewright",
-    help="Decides which warehouse ships how much of what, over which lane, to which ship-to.",
     no_args_is_help=True,
     add_completion=False,
     # Plain help: it reads the same in a log, and needs no table characters.
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
 )
+
+
+def _tell_version(value: bool) -> None:  # noqa: FBT001 - Typer calls it so
+    """Print the version and end, where it was asked for."""
+    if value:
+        put_lines([f"lanewright {importlib.metadata.version('lanewright')}"])
+        raise typer.Exit
+
+
+@lanewright.callback()
+def options(
+    *,
+    version: Annotated[
+        bool, typer.Option("--version", callback=_tell_version, is_eager=True, help="Show it.")
+    ] = False,
+) -> None:
+    """Decide which warehouse ships how much of what, over which lane, to which ship-to."""
+
+
 lanewright.command(epilog="Example: lanewright solve network.json --csv plan_lines > plan.csv")(
     solve
 )
