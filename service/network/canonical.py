@@ -6,8 +6,6 @@ column, so that the digest of the head is the digest of the whole network.
 
 import hashlib
 import itertools
-import json
-import zipfile
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any, TypeVar, cast
@@ -40,6 +38,8 @@ from service.network.columns import (
 )
 from service.network.normal_form import normal_form
 from service.network.normal_rows import check_head, check_rows
+from service.network.stored_zip import ZipFormError, read_stored_zip, write_stored_zip
+from service.network.strict_json import StrictJsonError, strict_json
 
 __all__ = [
     "NormalFormError",
@@ -50,14 +50,10 @@ __all__ = [
     "network_from_entries",
     "normal_form",
     "read_network",
-    "read_stored_zip",
     "write_network",
-    "write_stored_zip",
 ]
 
 HEAD_ENTRY = "network/head.json"
-# Deeper than any head: an item's packs are three levels down, a rule's selectors four.
-_NESTING_MAX = 16
 
 _Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
 
@@ -106,39 +102,13 @@ def write_network(network: Network, path: Path) -> str:
 
 def read_network(path: Path) -> Network:
     """Return the network in the zip at ``path``; raise ``NormalFormError`` if it is not normal."""
-    return network_from_entries(read_stored_zip(path))
-
-
-def write_stored_zip(path: Path, entries: Mapping[str, bytes]) -> None:
-    """Write a zip whose bytes depend on nothing but ``entries``: stored, sorted, one time stamp."""
-    with zipfile.ZipFile(path, "w", compression=zipfile.ZIP_STORED) as archive:
-        for name in sorted(entries):
-            described = zipfile.ZipInfo(name, date_time=(1980, 1, 1, 0, 0, 0))
-            described.create_system = 3  # Unix, on every machine
-            described.external_attr = 0o100644 << 16
-            archive.writestr(described, entries[name])
-
-
-def read_stored_zip(path: Path) -> dict[str, bytes]:
-    """Return the entries of a zip that is stored without compression.
-
-    Raises ``NormalFormError`` for anything else; the memory needed is bounded by the file's size.
-    """
     try:
-        size = path.stat().st_size
-        with zipfile.ZipFile(path) as archive:
-            described = archive.infolist()
-            names = [entry.filename for entry in described]
-            if len(set(names)) != len(names):
-                raise NormalFormError("an entry of the zip occurs twice")
-            if any(entry.compress_type != zipfile.ZIP_STORED for entry in described):
-                raise NormalFormError("an entry of the zip is compressed")
-            # Entries that overlap could make a small file unpack to many times its size.
-            if sum(entry.file_size for entry in described) > size:
-                raise NormalFormError("the entries of the zip are larger than the zip")
-            return {entry.filename: archive.read(entry) for entry in described}
-    except (zipfile.BadZipFile, OSError, EOFError, RuntimeError, NotImplementedError) as error:
+        entries, damaged = read_stored_zip(path.read_bytes())
+    except ZipFormError as error:
         raise NormalFormError(f"the zip cannot be read: {error}") from error
+    if damaged:
+        raise NormalFormError(f"the zip is damaged at {damaged[0]}")
+    return network_from_entries(entries)
 
 
 def network_from_entries(entries: Mapping[str, bytes]) -> Network:
@@ -182,42 +152,16 @@ def _head(entries: Mapping[str, bytes]) -> dict[str, Any]:
     data = entries.get(HEAD_ENTRY)
     if data is None:
         raise NormalFormError("the head is missing")
-    if _nesting(data) > _NESTING_MAX:
-        raise NormalFormError("the head is nested too deeply")
     try:
-        head = json.loads(data.decode())
-        # One comparison finds doubled keys, spaces, floats and every other spelling.
+        head = strict_json(data)
+        # One comparison finds spaces, floats and every other spelling.
         canonical = canonical_json(head)
-    except (ValueError, RecursionError, NotCanonicalError) as error:
+    except (StrictJsonError, NotCanonicalError) as error:
         raise NormalFormError(f"the head is not canonical JSON: {error}") from error
     if canonical != data or not isinstance(head, dict):
         raise NormalFormError("the head is not canonical JSON")
     check_head(head)
     return head
-
-
-def _nesting(data: bytes) -> int:
-    """Return a bound on the nesting of JSON: at most how often it opens anything."""
-    depth = deepest = 0
-    inside_text = escaped = False
-    if data.count(b"[") + data.count(b"{") <= _NESTING_MAX:
-        return 0
-    for octet in data:
-        if inside_text:
-            if escaped:
-                escaped = False
-            elif octet == 0x5C:
-                escaped = True
-            elif octet == 0x22:
-                inside_text = False
-        elif octet == 0x22:
-            inside_text = True
-        elif octet in (0x5B, 0x7B):
-            depth += 1
-            deepest = max(deepest, depth)
-        elif octet in (0x5D, 0x7D):
-            depth -= 1
-    return deepest
 
 
 def _column_entry(column: object, form: ColumnForm) -> tuple[bytes, dict[str, object]] | None:

@@ -11,7 +11,7 @@ from service.network.quantities import exact_text
 
 ROLES = frozenset({"warehouse", "cross_dock", "ship_to"})
 
-_DECIMAL = re.compile(r"-?(0|[1-9][0-9]{0,18})(\.[0-9]{0,5}[1-9])?")
+DECIMAL = re.compile(r"-?(0|[1-9][0-9]{0,18})(\.[0-9]{0,5}[1-9])?")
 # An id has 1 to 64 characters and no control characters (C0, DEL).
 _ID = re.compile(r"[^\x00-\x1f\x7f]{1,64}")
 
@@ -106,7 +106,7 @@ def site_of(document: object, items: frozenset[str]) -> Site:
     )
 
 
-def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 # reads like an assertion
+def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 - reads like an assertion
     """Raise ``NormalFormError`` with ``detail`` unless ``holds``."""
     if not holds:
         raise NormalFormError(detail)
@@ -158,7 +158,7 @@ def _id(fields: Mapping[str, Any]) -> str:
 def _decimal(fields: Mapping[str, Any], key: str) -> Fraction:
     """Return the decimal whose shortest text the field holds."""
     value = fields.get(key)
-    if not isinstance(value, str) or not _DECIMAL.fullmatch(value) or value == "-0":
+    if not isinstance(value, str) or not DECIMAL.fullmatch(value) or value == "-0":
         raise NormalFormError(f"{key} is not a shortest decimal")
     return Fraction(value)
 

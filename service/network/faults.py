@@ -162,16 +162,16 @@ def in_order(faults: Iterable[Fault], document: object) -> tuple[Fault, ...]:
             return ((-1, fault.pointer),)
         for raw in fault.pointer.split("/")[1:]:
             token = raw.replace("~1", "/").replace("~0", "~")
-            if isinstance(here, dict):
+            if token.isascii() and token.isdigit() and not isinstance(here, dict):
+                row = int(token[:18])
+                place.append((row, token))
+                here = here[row] if isinstance(here, list) and row < len(here) else None
+            elif isinstance(here, dict):
                 order = positions.setdefault(
                     id(here), {name: number for number, name in enumerate(here)}
                 )
                 place.append((order.get(token, len(order)), token))
                 here = here.get(token)
-            elif isinstance(here, list) and token.isascii() and token.isdigit():
-                row = int(token[:18])
-                place.append((row, token))
-                here = here[row] if row < len(here) else None
             else:
                 place.append((0, token))
                 here = None

@@ -19,12 +19,21 @@ def encoded(identifier: str) -> str:
     return identifier.translate(_ENCODED)
 
 
-def base_name(network: Network, *, origin: int, destination: int, item: int) -> str:
-    """Return the name of the first lane without an id between two sites (item -1: any item)."""
-    ends = [network.sites[origin].id, network.sites[destination].id]
-    if item >= 0:
-        ends.append(network.items[item].id)
-    return ">".join(encoded(end) for end in ends)
+def base_names(network: Network, rows: IntArray) -> list[str]:
+    """Return, for each lane of ``rows``, the name of the first lane without an id on its way."""
+    lanes = network.lanes
+    sites = [encoded(site.id) for site in network.sites]
+    items = [">" + encoded(item.id) for item in network.items]
+    items.append("")  # position -1: a lane that carries any item
+    return [
+        f"{sites[origin]}>{sites[destination]}{items[item]}"
+        for origin, destination, item in zip(
+            lanes.origin[rows].tolist(),
+            lanes.destination[rows].tolist(),
+            lanes.item[rows].tolist(),
+            strict=True,
+        )
+    ]
 
 
 def ranks(lanes: LaneTable) -> IntArray:
@@ -47,20 +56,12 @@ def ranks(lanes: LaneTable) -> IntArray:
 
 def lane_names(network: Network, rows: IntArray) -> list[str]:
     """Return the name of each lane of ``rows`` (positions in ``network.lanes``)."""
-    lanes = network.lanes
-    rank = ranks(lanes)[rows].tolist()
-    sites = [encoded(site.id) for site in network.sites]
-    items = [">" + encoded(item.id) for item in network.items]
-    items.append("")  # position -1: a lane that carries any item
     return [
-        given.decode()
-        or f"{sites[origin]}>{sites[destination]}{items[item]}{f'#{before + 1}' if before else ''}"
-        for given, origin, destination, item, before in zip(
-            lanes.ids[rows].tolist(),
-            lanes.origin[rows].tolist(),
-            lanes.destination[rows].tolist(),
-            lanes.item[rows].tolist(),
-            rank,
+        given.decode() or (f"{base}#{before + 1}" if before else base)
+        for given, base, before in zip(
+            network.lanes.ids[rows].tolist(),
+            base_names(network, rows),
+            ranks(network.lanes)[rows].tolist(),
             strict=True,
         )
     ]
@@ -76,15 +77,15 @@ def lane_rows(network: Network, names: Iterable[str]) -> list[int]:
     if encodable and len(lanes):
         rows = np.flatnonzero(np.isin(lanes.ids, np.array(encodable)) & (lanes.ids != b""))
         found = {lanes.ids[row].decode(): row for row in rows.tolist()}
-    places = _Places(network)
+    places = UnnamedLanes(network)
     return [found[name] if name in found else places.row(name) for name in wanted]
 
 
-class _Places:
-    """Finds a lane without an id by its name."""
+class UnnamedLanes:
+    """Finds lanes without an id by their names."""
 
     def __init__(self, network: Network) -> None:
-        """Index the names of sites and items; the lanes are searched where they are sorted."""
+        """Index the names of sites and items; lanes are in normal form and searched as such."""
         self._lanes = network.lanes
         self._sites = {encoded(site.id): place for place, site in enumerate(network.sites)}
         self._items = {encoded(item.id): place for place, item in enumerate(network.items)}

@@ -3,7 +3,6 @@
 Not a second intake: this keeps a damaged or forged file from being taken for a network.
 """
 
-import json
 import re
 from collections.abc import Mapping, Sequence
 from typing import Any
@@ -23,6 +22,8 @@ from service.network.columns import (
     Texts,
 )
 from service.network.normal_form import lane_order, rule_key, supply_order
+from service.network.normal_rules import check_rule
+from service.network.strict_json import StrictJsonError, strict_json
 from service.network.units import item_units
 
 # int32 codes count the rows of a table.
@@ -46,7 +47,10 @@ def check_head(head: Mapping[str, Any]) -> None:
         _check(isinstance(head.get(field), list), f"{field} is not an array")
     rules = head["rules"]
     _check(all(isinstance(rule, dict) for rule in rules), "a rule is not an object")
+    for rule in rules:
+        check_rule(rule)
     _check(rules == sorted(rules, key=rule_key), "rules are not sorted")
+    _check(len({rule["id"] for rule in rules}) == len(rules), "two rules have one id")
     if "extra" in head:
         _check(_is_texts(head["extra"]) and bool(head["extra"]), "extra is not an object of text")
     tables = head.get("tables")
@@ -188,9 +192,9 @@ def _check_objects(column: Texts) -> None:
 def _parsed(text: str) -> object:
     """Return the value of canonical JSON."""
     try:
-        value: object = json.loads(text)
+        value = strict_json(text.encode())
         canonical = canonical_json(value)
-    except (ValueError, RecursionError, NotCanonicalError) as error:
+    except (StrictJsonError, NotCanonicalError) as error:
         raise NormalFormError("not canonical JSON") from error
     _check(canonical == text.encode(), "not canonical JSON")
     return value
@@ -206,7 +210,7 @@ def _is_whole(value: object) -> bool:
     return isinstance(value, int) and not isinstance(value, bool)
 
 
-def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 # reads like an assertion
+def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 - reads like an assertion
     """Raise ``NormalFormError`` with ``detail`` unless ``holds``."""
     if not holds:
         raise NormalFormError(detail)

@@ -23,17 +23,19 @@ class LaneUse:
         self._passes_on = np.array(
             ["cross_dock" in site.roles for site in network.sites], dtype=np.bool_
         )
-        order = np.argsort(network.lanes.item, kind="stable")
-        self._order = order
-        self._bounds = np.searchsorted(
-            network.lanes.item[order], np.arange(-1, len(network.items) + 1)
-        )
+        supply, demand, items = network.supply, network.demand, len(network.items)
+        self._lanes = _ByItem(network.lanes.item, items)
+        stock = np.flatnonzero(supply.quantity.values > 0)
+        wanted = np.flatnonzero(demand.quantity.values > 0)
+        self._supply = _ByItem(supply.item, items)
+        self._stock = _ByItem(supply.item, items, stock)
+        self._wanted = _ByItem(demand.item, items, wanted)
         self._found: dict[int, IntArray] = {}
 
     @cached_property
     def any_item(self) -> IntArray:
         """Rows of the lanes without an item, ascending."""
-        return self._order[: self._bounds[1]]
+        return self._lanes.rows(-1)
 
     @property
     def passes_on(self) -> BoolArray:
@@ -42,7 +44,7 @@ class LaneUse:
 
     def own(self, item: int) -> IntArray:
         """Return the rows of the lanes that name ``item``, ascending."""
-        return self._order[self._bounds[item + 1] : self._bounds[item + 2]]
+        return self._lanes.rows(item)
 
     def rows(self, item: int) -> IntArray:
         """Return the rows of all lanes that ``item`` can use, ascending."""
@@ -52,13 +54,11 @@ class LaneUse:
 
     def stock(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where a supply row of ``item`` has more than 0."""
-        supply = self._network.supply
-        return self._sites(supply.site[(supply.item == item) & (supply.quantity.values > 0)])
+        return self._sites(self._network.supply.site[self._stock.rows(item)])
 
     def wanted(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where an order line of ``item`` wants more than 0."""
-        demand = self._network.demand
-        return self._sites(demand.site[(demand.item == item) & (demand.quantity.values > 0)])
+        return self._sites(self._network.demand.site[self._wanted.rows(item)])
 
     def received(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where a lane that ``item`` can use ends."""
@@ -74,10 +74,9 @@ class LaneUse:
         They do where received goods may not leave again although own stock may, and where an order
         line of the item names the origins that may serve it.
         """
-        network = self._network
-        stocked = self._sites(network.supply.site[network.supply.item == item])
-        demand = network.demand
-        choosy = (demand.item == item) & (demand.origins.codes >= 0) & (demand.quantity.values > 0)
+        demand, lines = self._network.demand, self._wanted.rows(item)
+        choosy = lines[demand.origins.codes[lines] >= 0]
+        stocked = self._sites(self._network.supply.site[self._supply.rows(item)])
         return (~self._passes_on & stocked & self.received(item)) | self._sites(demand.site[choosy])
 
     def stock_reaching(self, item: int, place: int) -> BoolArray:
@@ -128,6 +127,20 @@ class LaneUse:
         return flags
 
 
+class _ByItem:
+    """Row numbers by item (-1: any), ascending within each."""
+
+    def __init__(self, item: CodeArray, items: int, rows: IntArray | None = None) -> None:
+        """Sort ``rows`` (None: all) of a table with this column of items."""
+        picked = np.arange(len(item), dtype=np.int64) if rows is None else rows
+        self._order: IntArray = picked[np.argsort(item[picked], kind="stable")]
+        self._bounds = np.searchsorted(item[self._order], np.arange(-1, items + 1))
+
+    def rows(self, item: int) -> IntArray:
+        """Return the rows of one item."""
+        return self._order[self._bounds[item + 1] : self._bounds[item + 2]]
+
+
 class Steps:
     """Where one step leads from each site, along given lanes."""
 
@@ -145,7 +158,8 @@ class Steps:
         counts = self._bounds[places + 1] - first
         total = int(counts.sum())
         shift = np.repeat(first - (np.cumsum(counts) - counts), counts)
-        return self._heads[shift + np.arange(total)]
+        heads: IntArray = self._heads[shift + np.arange(total)]
+        return heads
 
 
 def reached(ways: Sequence[Steps], start: BoolArray, *, through: BoolArray) -> BoolArray:

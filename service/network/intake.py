@@ -1,0 +1,138 @@
+"""The whole input check: a spooled body in, a network in normal form or all its faults out.
+
+This is all that an intake child runs. It writes nothing but its output folder, and what it returns
+is small: the network itself goes to disk.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+import orjson
+
+from service.network.canonical import write_network
+from service.network.faults import FAULTS_REPORTED_MAX, Fault, Status, in_order
+from service.network.files.json import read_json
+from service.network.files.unpack import unpack
+from service.network.options import Options
+from service.network.reading import read_network
+
+BYTES_MAX_DEFAULT = 1 << 30
+NESTING_MAX_DEFAULT = 16
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Limits:
+    """What a body may be at most: bytes when unpacked, and levels of arrays and objects."""
+
+    unpacked_bytes_max: int = BYTES_MAX_DEFAULT
+    nesting_max: int = NESTING_MAX_DEFAULT
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class IntakeReport:
+    """What the check found. ``faults`` are at most 100, in the order of their places.
+
+    ``fault_count`` is how many there are in all; ``summary`` is what ``intake.json`` holds, None
+    where the input was not accepted.
+    """
+
+    faults: tuple[Fault, ...]
+    fault_count: int
+    status: Status
+    summary: Mapping[str, object] | None
+
+    def to_document(self) -> dict[str, object]:
+        """Return the report as a JSON object, for the pipe between processes."""
+        return {
+            "faults": [fault.to_document() for fault in self.faults],
+            "fault_count": self.fault_count,
+            "status": str(self.status),
+            "summary": None if self.summary is None else dict(self.summary),
+        }
+
+    @staticmethod
+    def from_document(document: Mapping[str, object]) -> "IntakeReport":
+        """Read back what ``to_document`` wrote."""
+        faults, summary, count = document["faults"], document["summary"], document["fault_count"]
+        if not isinstance(faults, list) or not isinstance(count, int):
+            raise TypeError("not the document of an intake report")
+        if summary is not None and not isinstance(summary, dict):
+            raise TypeError("not the document of an intake report")
+        return IntakeReport(
+            faults=tuple(Fault.from_document(fault) for fault in faults),
+            fault_count=count,
+            status=Status(str(document["status"])),
+            summary=summary,
+        )
+
+
+def intake(  # noqa: PLR0913 - the six things that a child process is told, by name
+    spool: Path,
+    output: Path,
+    *,
+    options: Options,
+    media_type: str,
+    content_encoding: str | None,
+    limits: Limits,
+) -> IntakeReport:
+    """Check the body in ``spool``; if it is sound, write what planning needs into ``output``.
+
+    There are then ``received`` (the unpacked bytes), ``network.zip`` (the normal form) and
+    ``intake.json`` (the summary). The folder must exist. ``media_type`` is the HTTP header's value.
+    """
+    if not _is_json(media_type):
+        detail = "Send application/json; other forms of a network come later."
+        fault = Fault(
+            pointer="", code="unsupported_media_type", detail=detail, value=media_type[:200]
+        )
+        return _refused(Status.UNSUPPORTED, (fault,), 1)
+    received = output / "received"
+    unpacked = unpack(
+        spool,
+        received,
+        content_encoding=content_encoding,
+        bytes_max=limits.unpacked_bytes_max,
+    )
+    if unpacked.fault is not None:
+        return _refused(Status(unpacked.status), (unpacked.fault,), 1)
+    parsed = read_json(received.read_bytes(), nesting_max=limits.nesting_max)
+    if parsed.unreadable:
+        return _refused(Status.UNREADABLE, parsed.unreadable, len(parsed.unreadable))
+    if parsed.invalid:
+        shown = parsed.invalid[:FAULTS_REPORTED_MAX]
+        return _refused(Status.INVALID, shown, len(parsed.invalid))
+    document = parsed.value
+    del parsed
+    reading = read_network(document, options)
+    if reading.network is None or reading.cut_off is None:
+        found = reading.faults
+        return _refused(Status.INVALID, in_order(found.kept, document), found.count)
+    network_digest = write_network(reading.network, output / "network.zip")
+    plan_for = options.plan_for or reading.cut_off.local_date
+    summary: dict[str, object] = {
+        "cautions": [caution.to_document() for caution in reading.faults.cautions.values()],
+        "set_aside": reading.set_aside,
+        "counts": dict(reading.counts),
+        "request_digest": unpacked.digest,
+        "network_digest": network_digest,
+        "currency": reading.network.head["currency"],
+        "cut_off": reading.network.head["cut_off"],
+        "plan_for": plan_for.isoformat(),
+        "name": reading.network.head.get("name"),
+    }
+    (output / "intake.json").write_bytes(orjson.dumps(summary))
+    return IntakeReport(faults=(), fault_count=0, status=Status.ACCEPTED, summary=summary)
+
+
+def _refused(status: Status, faults: tuple[Fault, ...], count: int) -> IntakeReport:
+    """Return the report of an input that was not accepted."""
+    return IntakeReport(faults=faults, fault_count=count, status=status, summary=None)
+
+
+def _is_json(media_type: str) -> bool:
+    """Return whether a media type is that of JSON in UTF-8, whatever its spelling."""
+    kind, *parameters = (part.strip().lower() for part in media_type.split(";"))
+    return kind == "application/json" and all(
+        parameter in ("", "charset=utf-8", 'charset="utf-8"') for parameter in parameters
+    )

@@ -1,0 +1,147 @@
+"""Checks of lanes against the items that can use them, and of order lines that name origins."""
+
+import json
+
+import numpy as np
+
+from service.network.assembly import Assembly
+from service.network.columns import IntArray
+from service.network.faults import FaultList
+from service.network.lane_names import identical_lanes, taken_names
+from service.network.loops import loop_below_zero
+from service.network.naming import lane_names
+from service.network.reach import LaneUse
+from service.network.row_checks import MEASURE_ADVICE, measure_grain, off_step_detail
+from service.network.table_rows import off_grid
+from service.network.units import per_unit
+
+LANES_NAMED_MAX = 8
+
+
+def check_names(assembly: Assembly) -> None:
+    """Find lanes that no name could tell apart, and ids that are the name of another lane."""
+    network, faults = assembly.network, assembly.sent.lanes.faults
+    rows = np.sort(assembly.lane_rows[identical_lanes(network)])
+    detail = "Another lane without an id is the same in all that names it. Give both an id."
+    faults.at_rows("", rows, "identical_lanes", detail)
+    rows = np.sort(assembly.lane_rows[taken_names(network)])
+    detail = "This is the name of another lane, which has no id. Choose another id."
+    faults.at_rows("id", rows, "lane_name_taken", detail)
+
+
+def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList) -> None:
+    """Find what a lane without an item leaves open, or says in a measure that an item lacks."""
+    network, lanes = assembly.network, assembly.network.lanes
+    if len(use.any_item) == 0:
+        return
+    users = np.zeros(len(lanes), dtype=np.int32)
+    first_unit = np.full(len(lanes), -1, dtype=np.int32)
+    unlike = np.zeros(len(lanes), dtype=np.bool_)
+    units = {unit: code for code, unit in enumerate({item.unit for item in network.items})}
+    for item, thing in enumerate(network.items):
+        rows = use.rows(item)
+        rows = rows[lanes.item[rows] < 0]
+        users[rows] += 1
+        unit = units[thing.unit]
+        unlike[rows] |= (first_unit[rows] >= 0) & (first_unit[rows] != unit)
+        first_unit[rows] = unit
+        _check_measures(assembly, item, rows)
+    open_limit = (users > 1) & (lanes.per.codes < 0)
+    detail = (
+        "More than one item can use this lane, so its limit must say per: item "
+        "(for each item by itself); together comes later."
+    )
+    for name, column in (("must_ship", lanes.must_ship), ("capacity", lanes.capacity)):
+        rows = assembly.lane_rows[np.flatnonzero(open_limit & column.present)]
+        assembly.sent.lanes.faults.at_rows(name, np.sort(rows), "per_missing", detail)
+    rows = assembly.lane_rows[np.flatnonzero(unlike)]
+    rows = np.sort(rows[~assembly.sent.lanes.measured[rows]])
+    faults = assembly.sent.lanes.faults
+    doubts.caution(
+        "rate_for_unlike_units",
+        "Items in different units can use this lane, and its unit_cost states no measure.",
+        [
+            (faults.place("unit_cost", row), faults.value("unit_cost", row))
+            for row in rows[:3].tolist()
+        ],
+        len(rows),
+    )
+
+
+def _check_measures(assembly: Assembly, item: int, rows: IntArray) -> None:
+    """Check the measures and forced quantities of lanes without an item for one of their users."""
+    network, lanes = assembly.network, assembly.network.lanes
+    thing, faults = network.items[item], assembly.sent.lanes.faults
+    for code in np.unique(lanes.measure.codes[rows]).tolist():
+        measure = lanes.measure.values[code]
+        members = rows[lanes.measure.codes[rows] == code]
+        if not per_unit(thing, measure):
+            detail = f"{thing.id} can use this lane. {MEASURE_ADVICE}"
+            name = "measure" if "measure" in faults.sheet.columns else ""
+            sent = np.sort(assembly.lane_rows[members])
+            faults.at_rows(name, sent, "measure_unknown", detail, once=True)
+            continue
+        size = measure_grain(thing, measure)
+        forced = members[lanes.must_ship.present[members]]
+        if size is not None and len(forced):
+            off = np.sort(assembly.lane_rows[off_grid(lanes.must_ship, forced, size)])
+            faults.at_rows("must_ship", off, "off_step", off_step_detail(thing, size, measure))
+
+
+def check_loops(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
+    """Find, for each item, a loop of lanes that costs less than nothing."""
+    network, lanes = assembly.network, assembly.sent.lanes.faults
+    seen: set[tuple[int, ...]] = set()
+    for item, thing in enumerate(network.items):
+        loop = loop_below_zero(network, use, item)
+        if loop is None or tuple(sorted(loop.tolist())) in seen:
+            continue
+        seen.add(tuple(sorted(loop.tolist())))
+        names = lane_names(network, loop[:LANES_NAMED_MAX])
+        more = f" and {len(loop) - LANES_NAMED_MAX} more" if len(loop) > LANES_NAMED_MAX else ""
+        detail = (
+            f"For {thing.id} these lanes lead in a loop whose costs, handling included, add up to "
+            f"less than zero: {', '.join(names)}{more}. Correct a cost."
+        )
+        row = int(assembly.lane_rows[loop[0]])
+        place = lanes.place("unit_cost", row)
+        faults.add(place, "loop_below_zero", detail, lanes.value("unit_cost", row))
+
+
+def check_origins(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
+    """Find order lines that name some, but not all, sites whose stock a cross-dock mixes.
+
+    Goods that arrive through a cross-dock no longer tell where they come from.
+    """
+    network, demand = assembly.network, assembly.network.demand
+    choosy = np.flatnonzero((demand.origins.codes >= 0) & (demand.quantity.values > 0))
+    if len(choosy) == 0:
+        return
+    keys = np.stack((demand.item[choosy], demand.site[choosy], demand.origins.codes[choosy]))
+    distinct, group = np.unique(keys, axis=1, return_inverse=True)
+    sites = {site.id: position for position, site in enumerate(network.sites)}
+    wrong: list[int] = []
+    for number, (item, site, code) in enumerate(distinct.T.tolist()):
+        named = np.zeros(len(sites), dtype=np.bool_)
+        named[[sites[origin] for origin in json.loads(demand.origins.values[code])]] = True
+        rows = use.rows(item)
+        rows = rows[network.lanes.destination[rows] == site]
+        before = np.unique(network.lanes.origin[rows])
+        # A site that is no cross-dock sends its own stock alone: all of it is named or none.
+        for place in before[use.passes_on[before]].tolist():
+            mixed = use.stock_reaching(item, place)
+            if bool((mixed & named).any()) and bool((mixed & ~named).any()):
+                wrong.extend(choosy[group.ravel() == number].tolist())
+                break
+    lines = assembly.sent.demand.faults
+    detail = (
+        "Through a cross-dock comes stock of named and of other sites, and nobody can tell which "
+        "is which there. Name all of them, or none."
+    )
+    for row in sorted(assembly.demand_rows[wrong].tolist()):
+        faults.add(
+            lines.place("origins", row),
+            "origins_behind_cross_dock",
+            detail,
+            lines.value("origins", row),
+        )

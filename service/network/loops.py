@@ -1,0 +1,115 @@
+"""Loops of lanes whose costs, handling included, add up to less than zero.
+
+Goods could circle there for ever and earn money each time, so no plan would be the cheapest. Only
+cross-docks pass goods on, so a loop runs over lanes between cross-docks alone. Method: shortest
+walks from everywhere at once (Bellman 1958, Ford 1956), all lanes in one array operation a round.
+A loop in the graph of "where the shortest walk came from" is a loop below zero (Cormen et al.,
+*Introduction to Algorithms*, section 24.5, lemma 24.16 turned round). Exact.
+"""
+
+from fractions import Fraction
+from math import lcm
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.network.columns import IntArray, Network
+from service.network.reach import LaneUse
+from service.network.units import per_unit
+
+# int64, or Python integers where a sum of as many costs as a loop has sites could leave 64 bits.
+_Costs = NDArray[Any]
+
+
+def loop_below_zero(network: Network, use: LaneUse, item: int) -> IntArray | None:
+    """Return the lanes (rows) of a loop below zero that ``item`` can go, in order; None if none."""
+    lanes, on = network.lanes, use.passes_on
+    rows = use.rows(item)
+    rows = rows[on[lanes.origin[rows]] & on[lanes.destination[rows]]]
+    rows, costs = _costs(network, rows, item)
+    if len(rows) == 0 or costs.min() >= 0:
+        return None
+    # Of lanes that join the same two sites only the cheapest matters. Rows end up by destination.
+    order = np.argsort(costs, kind="stable")
+    order = order[np.lexsort((lanes.origin[rows[order]], lanes.destination[rows[order]]))]
+    rows, costs = rows[order], costs[order]
+    first = np.ones(len(rows), dtype=np.bool_)
+    first[1:] = (np.diff(lanes.origin[rows]) != 0) | (np.diff(lanes.destination[rows]) != 0)
+    rows, costs = rows[first], costs[first]
+    found = _loop(lanes.origin[rows], lanes.destination[rows], costs, sites=len(network.sites))
+    return None if found is None else rows[found]
+
+
+def _costs(network: Network, rows: IntArray, item: int) -> tuple[IntArray, _Costs]:
+    """Return the lanes that can be priced, and what each costs per item unit, in one whole scale.
+
+    A lane in a measure that the item does not have is left out: that is a fault of its own.
+    """
+    lanes, thing = network.lanes, network.items[item]
+    factors = [per_unit(thing, measure) for measure in lanes.measure.values]
+    known = np.array([factor is not None for factor in factors], dtype=np.bool_)
+    rows = rows[known[lanes.measure.codes[rows]]]
+    if len(rows) == 0:
+        return rows, np.zeros(0, dtype=np.int64)
+    power = 10**lanes.unit_cost.exponent
+    rates = [(factor or Fraction(0)) / power for factor in factors]
+    handling = [site.handling(thing.id) for site in network.sites]
+    scale = lcm(*(number.denominator for number in (*rates, *handling)))
+    rate = [int(number * scale) for number in rates]
+    extra = [int(number * scale) for number in handling]
+    values = lanes.unit_cost.values[rows]
+    largest = int(np.abs(values).max()) * max(map(abs, rate)) + max(map(abs, extra))
+    kind: Any = np.int64 if largest * 2 * (len(network.sites) + 1) < 2**62 else object
+    costs: _Costs = values.astype(kind) * np.array(rate, dtype=kind)[lanes.measure.codes[rows]]
+    return rows, costs + np.array(extra, dtype=kind)[lanes.destination[rows]]
+
+
+def _loop(
+    tails: NDArray[np.int32], heads: NDArray[np.int32], costs: _Costs, *, sites: int
+) -> list[int] | None:
+    """Return the positions of the lanes of a loop below zero, in order; lanes come by head."""
+    starts = np.flatnonzero(np.concatenate(([True], np.diff(heads) != 0)))
+    places = heads[starts]
+    group = np.cumsum(np.concatenate(([0], (np.diff(heads) != 0).astype(np.int64))))
+    price: _Costs = np.zeros(sites, dtype=costs.dtype)
+    came_by = np.full(sites, -1, dtype=np.int64)
+    # A walk that repeats no site takes at most one round for each site that a lane leads to.
+    for round_number in range(1, len(places) + 2):
+        walks = price[tails] + costs
+        least = np.minimum.reduceat(walks, starts)
+        better = least < price[places]
+        if not better.any():
+            return None
+        best = np.flatnonzero(better[group] & (walks == least[group]))
+        _, which = np.unique(group[best], return_index=True)
+        came_by[heads[best[which]]] = best[which]
+        price[places[better]] = least[better]
+        # Looking for a loop costs as much as a round: look after 1, 2, 4, 8 ... rounds.
+        if round_number & (round_number - 1) == 0 or round_number > len(places):
+            loop = _closed_walk(tails, came_by)
+            if loop is not None:
+                return loop
+    raise AssertionError("walks got shorter for ever, yet there is no loop")
+
+
+def _closed_walk(tails: NDArray[np.int32], came_by: IntArray) -> list[int] | None:
+    """Return the lanes of a loop in the graph of where walks came from, in order; None if none."""
+    sites = len(came_by)
+    # One more place, which leads to itself, stands for "the walk begins here".
+    before = np.append(np.where(came_by >= 0, tails[came_by].astype(np.int64), sites), sites)
+    ahead = before
+    for _ in range(sites.bit_length()):
+        ahead = ahead[ahead]
+    endless = np.flatnonzero(ahead[:-1] < sites)
+    if len(endless) == 0:
+        return None
+    # As many steps back as there are sites lead into the loop itself.
+    start = int(ahead[endless[0]])
+    loop: list[int] = []
+    place = start
+    while True:
+        loop.append(int(came_by[place]))
+        place = int(before[place])
+        if place == start:
+            return loop[::-1]

@@ -1,0 +1,152 @@
+"""The faults of one table, found by array operations and kept by row until it is known what to do.
+
+With the option to set bad rows aside, an order line with faults is listed and left out; otherwise
+its faults refuse the network.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from service.network.columns import BoolArray, IntArray
+from service.network.faults import FAULTS_REPORTED_MAX, Fault, FaultList, pointer, value_text
+from service.network.table_forms import Column, Sheet
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Report:
+    """One check that failed at ``rows`` (ascending), once for each of ``positions`` of a column."""
+
+    field: str
+    column: Column | None
+    positions: IntArray
+    rows: IntArray
+    code: str
+    detail: str
+
+
+@dataclass(slots=True)
+class TableFaults:
+    """Collects what is wrong in ``sheet``; ``bad`` marks the rows that no plan can use."""
+
+    sheet: Sheet
+    bad: BoolArray = field(init=False)
+    _reports: list[_Report] = field(default_factory=list)
+
+    def __post_init__(self) -> None:
+        """Start with every row good."""
+        self.bad = np.zeros(self.sheet.rows, dtype=np.bool_)
+
+    def at_values(
+        self, name: str, positions: IntArray | Sequence[int], code: str, detail: str
+    ) -> None:
+        """Report values of a column that are wrong, each once, whatever rows share it."""
+        self._add(name, np.asarray(positions, dtype=np.int64), None, code, detail)
+
+    def at_rows(
+        self,
+        name: str,
+        rows: IntArray | Sequence[int],
+        code: str,
+        detail: str,
+        *,
+        once: bool = False,
+    ) -> None:
+        """Report rows in which the value of field ``name`` is wrong beside the others.
+
+        With the empty name it is the row as a whole that is wrong.
+
+        ``once`` reports a value that many rows share one time: the mistake is in the value itself.
+        """
+        wanted = np.asarray(rows, dtype=np.int64)
+        column = self.sheet.columns.get(name)
+        positions = None
+        if once and column is not None and column.take is not None:
+            positions = np.unique(column.take[wanted])
+        self._add(name, positions, wanted, code, detail)
+
+    def adopt(self, name: str, inner: "TableFaults") -> None:
+        """Take over what is wrong inside the values of a column, which was read as a table."""
+        for report in inner._reports:  # noqa: SLF001 - its own kind
+            self.bad[report.rows] = True
+            self._reports.append(replace(report, field=name))
+
+    def faulty(self, name: str) -> BoolArray:
+        """Return in which rows a fault of field ``name`` was reported."""
+        rows = np.zeros(self.sheet.rows, dtype=np.bool_)
+        for report in self._reports:
+            if report.field == name:
+                rows[report.rows] = True
+        return rows
+
+    def _add(
+        self, name: str, positions: IntArray | None, rows: IntArray | None, code: str, detail: str
+    ) -> None:
+        """Keep a report unless nothing is wrong."""
+        column = self.sheet.columns.get(name)
+        if rows is None and positions is not None and column is not None:
+            rows = column.rows_with(positions, self.sheet.rows)
+        if rows is None:
+            return
+        if positions is None:
+            positions = rows if column is None or column.take is None else column.take[rows]
+        if len(positions) == 0:
+            return
+        self.bad[rows] = True
+        self._reports.append(
+            _Report(
+                field=name, column=column, positions=positions, rows=rows, code=code, detail=detail
+            )
+        )
+
+    def refuse(self, faults: FaultList) -> None:
+        """Report everything as faults of the network."""
+        for report in self._reports:
+            shown = report.positions[:FAULTS_REPORTED_MAX].tolist()
+            if report.column is None and report.field and not self.sheet.in_rows:
+                # The whole column is missing: that is one fault, not one a row.
+                faults.extend([self._fault(report, 0)])
+                continue
+            faults.extend(self._fault(report, position) for position in shown)
+            faults.add_uncounted(len(report.positions) - len(shown))
+
+    def by_row(self) -> dict[int, list[Fault]]:
+        """Return the faults of each bad row; the rows ascend."""
+        found: dict[int, list[Fault]] = {row: [] for row in np.flatnonzero(self.bad).tolist()}
+        for report in self._reports:
+            for row, position in zip(report.rows.tolist(), report.positions.tolist(), strict=False):
+                found[row].append(self._fault(report, position))
+        return found
+
+    def whole_column_missing(self) -> bool:
+        """Return whether a column that every row needs was not sent at all."""
+        return not self.sheet.in_rows and any(
+            report.column is None and report.field for report in self._reports
+        )
+
+    def place(self, name: str, row: int) -> str:
+        """Return the pointer of a field in a row, or of the row where it has no such value."""
+        column = self.sheet.columns.get(name)
+        return self.sheet.row_place(row) if column is None else column.place(column.position(row))
+
+    def value(self, name: str, row: int) -> object:
+        """Return the value of a field in a row as sent."""
+        column = self.sheet.columns.get(name)
+        return None if column is None else column.values[column.position(row)]
+
+    def _fault(self, report: _Report, position: int) -> Fault:
+        """Return the fault of one value."""
+        if report.column is not None:
+            place = report.column.place(position)
+            value = value_text(report.column.values[position])
+        elif not report.field:
+            place, value = self.sheet.row_place(position), None
+        else:
+            value = None
+            place = (
+                pointer(self.sheet.name, position, report.field)
+                if self.sheet.in_rows
+                else pointer(self.sheet.name, report.field)
+            )
+        return Fault(pointer=place, code=report.code, detail=report.detail, value=value)

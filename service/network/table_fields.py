@@ -1,0 +1,77 @@
+"""The fields of the three big tables, as API.md lists them, each with its JSON Schema."""
+
+from collections.abc import Mapping
+from typing import Final
+
+from service.network import kinds
+from service.network.kinds import Schema, decimal_schema
+
+PRIORITY_MAX: Final = 9
+PRIORITY_DEFAULT: Final = 5
+
+_PRIORITY: Schema = {"type": "integer", "minimum": 1, "maximum": PRIORITY_MAX}
+_QUANTITY = decimal_schema(3, signed=False)
+_MONEY = decimal_schema(6, signed=False)
+_RATE = decimal_schema(6, signed=True)
+
+SUPPLY_FIELDS: Final[Mapping[str, Schema]] = {
+    "site": kinds.ID_SCHEMA,
+    "item": kinds.ID_SCHEMA,
+    "quantity": _QUANTITY,
+    "unit": kinds.ID_SCHEMA,
+    "unit_cost": _RATE,
+    "on_hand": _QUANTITY,
+    "reserved": _QUANTITY,
+    "on_hold": _QUANTITY,
+    "as_of": kinds.INSTANT_SCHEMA,
+    "lot": kinds.ID_SCHEMA,
+    "best_before": kinds.DATE_SCHEMA,
+    "keep": {
+        "type": "object",
+        "properties": {"quantity": _QUANTITY, "priority": _PRIORITY},
+        "required": ["quantity"],
+        "additionalProperties": False,
+    },
+    "extra": kinds.EXTRA_SCHEMA,
+}
+DEMAND_FIELDS: Final[Mapping[str, Schema]] = {
+    "reference": kinds.ID_SCHEMA,
+    "order": kinds.ID_SCHEMA,
+    "ordered_at": kinds.INSTANT_SCHEMA,
+    "site": kinds.ID_SCHEMA,
+    "item": kinds.ID_SCHEMA,
+    "quantity": _QUANTITY,
+    "unit": kinds.ID_SCHEMA,
+    "priority": _PRIORITY,
+    "shortage_cost": _MONEY,
+    "worth_at_most": _MONEY,
+    "origins": {**kinds.IDS_SCHEMA, "minItems": 1},
+    "tags": kinds.IDS_SCHEMA,
+    "extra": kinds.EXTRA_SCHEMA,
+}
+LANE_FIELDS: Final[Mapping[str, Schema]] = {
+    "id": kinds.ID_SCHEMA,
+    "origin": kinds.ID_SCHEMA,
+    "destination": kinds.ID_SCHEMA,
+    "item": kinds.ID_SCHEMA,
+    "unit_cost": _RATE,
+    "measure": kinds.ID_SCHEMA,
+    "must_ship": _QUANTITY,
+    "capacity": _QUANTITY,
+    "per": {"enum": ["item"]},
+    "carrier": kinds.ID_SCHEMA,
+    "tags": kinds.IDS_SCHEMA,
+    "extra": kinds.EXTRA_SCHEMA,
+}
+TABLE_FIELDS: Final[Mapping[str, Mapping[str, Schema]]] = {
+    "supply": SUPPLY_FIELDS,
+    "demand": DEMAND_FIELDS,
+    "lanes": LANE_FIELDS,
+}
+REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
+    "supply": ("site", "item", "quantity"),
+    "demand": ("site", "item", "quantity"),
+    "lanes": ("origin", "destination", "unit_cost"),
+}
+# Fields whose single value is itself an array, so that an array need not be a column of a table.
+LISTED_FIELDS: Final = frozenset({"tags", "origins"})

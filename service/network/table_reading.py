@@ -1,0 +1,321 @@
+"""Columns of values as sent, read into arrays; every fault is found, none stops the reading.
+
+What is faulty comes out as absent, so that no later check sees a guess; its row is marked in
+``TableFaults.bad``. Values that repeat are checked once.
+"""
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Final, TypeVar
+
+import numpy as np
+
+from service.network.canonical import canonical_json
+from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, IntArray, Texts
+from service.network.files.json import Number
+from service.network.quantities import (
+    NOT_A_NUMBER,
+    TOO_LARGE,
+    least_exponent,
+    read_decimals,
+    too_many_decimals,
+)
+from service.network.table_faults import TableFaults
+from service.network.table_forms import Column
+from service.network.wording import (
+    EXTRA_ADVICE,
+    ID_ADVICE,
+    TAGS_ADVICE,
+    are_ids,
+    is_extra,
+    is_id,
+    is_id_list,
+)
+
+_Values = TypeVar("_Values", BoolArray, CodeArray, IntArray)
+
+NONE: Final = type(None)
+ABSENT: Final = -1
+FAULTY: Final = -2
+# A thing that is known but was itself refused: the row is left out without a fault of its own.
+UNSURE: Final = -3
+
+TEXT_WANTED: Final = "Send text."
+NUMBER_WANTED: Final = "Send a number, or a number as text."
+
+
+@dataclass(frozen=True, slots=True)
+class Spelled:
+    """What a text means: ``text`` as it is kept, or None with the advice that refuses it."""
+
+    text: str | None
+    code: str = ""
+    detail: str = ""
+
+
+class TableReader:
+    """Reads the fields of one table, one after the other."""
+
+    def __init__(self, faults: TableFaults) -> None:
+        """Read the sheet that ``faults`` is about."""
+        self._faults = faults
+        self._columns = faults.sheet.columns
+        self.rows = faults.sheet.rows
+
+    def require(self, name: str, present: BoolArray) -> None:
+        """Report rows in which a field that every row needs is missing."""
+        rows = np.flatnonzero(~present & ~self._faults.faulty(name))
+        detail = f"Every row of {self._faults.sheet.name} needs {name}."
+        self._faults.at_rows(name, rows, "missing_field", detail)
+
+    def given(self, name: str) -> BoolArray:
+        """Return in which rows a field has a value at all, sound or not."""
+        column = self._columns.get(name)
+        if column is None:
+            return np.zeros(self.rows, dtype=np.bool_)
+        has = np.fromiter((value is not None for value in column.values), dtype=np.bool_)
+        return _by_row(column, has)
+
+    def codes(self, name: str, known: Mapping[str, int], *, unknown: str, thing: str) -> CodeArray:
+        """Return the position of each id in ``known``, else ABSENT, FAULTY or UNSURE."""
+        column, values = self._texts(name)
+        if column is None:
+            return np.full(self.rows, ABSENT, dtype=np.int32)
+        distinct: dict[str | None, int] = dict.fromkeys(values, FAULTY)
+        distinct |= {text: known[text] for text in distinct if text is not None and text in known}
+        distinct[None] = ABSENT
+        found = np.fromiter(map(distinct.__getitem__, values), dtype=np.int32, count=len(values))
+        wrong = np.flatnonzero(found == FAULTY)
+        detail = f"There is no {thing} of this id. Add it to the network, or correct the id."
+        self._faults.at_values(name, wrong, unknown, detail)
+        by_row = _by_row(column, found)
+        self._faults.bad |= by_row == UNSURE
+        return by_row
+
+    def texts(self, name: str, spell: Callable[[str], Spelled]) -> Texts:
+        """Return a column of texts in their one spelling."""
+        column, values = self._texts(name)
+        if column is None:
+            return no_texts(self.rows)
+        spelled = {text: spell(text) for text in dict.fromkeys(values) if text is not None}
+        refused = {text: word for text, word in spelled.items() if word.text is None}
+        if refused:
+            self._refuse_texts(name, values, refused)
+        kept = {text: word.text for text, word in spelled.items()}
+        return _texts_column(column, values, kept)
+
+    def ids(self, name: str) -> list[str | None]:
+        """Return one id or None a row, as sent; faulty ones are None."""
+        column, values = self._texts(name)
+        if column is None:
+            return [None] * self.rows
+        if not are_ids([text for text in values if text is not None]):
+            wrong = [
+                place for place, text in enumerate(values) if text is not None and not is_id(text)
+            ]
+            self._faults.at_values(name, wrong, "bad_id", ID_ADVICE)
+            for place in wrong:
+                values[place] = None
+        return values if column.take is None else [values[place] for place in column.take.tolist()]
+
+    def decimals(self, name: str, *, decimals_max: int, least: int | None) -> Decimals:
+        """Return a column of exact decimals, none below ``least`` (None: any)."""
+        column = self._columns.get(name)
+        if column is None:
+            return no_decimals(self.rows)
+        read = self._decimals_of(name, column.values, decimals_max)
+        if least is not None and bool((read.values < least).any()):
+            wrong = read.present & (read.values < least)
+            detail = "A negative number makes no sense here."
+            self._faults.at_values(name, _places(wrong), "negative_number", detail)
+            read = without(read, wrong)
+        if column.take is None:
+            return read
+        return Decimals(
+            values=read.values[column.take],
+            present=read.present[column.take],
+            exponent=read.exponent,
+        )
+
+    def small(self, name: str, *, most: int) -> CodeArray:
+        """Return a column of whole numbers from 1 to ``most``, 0 where absent."""
+        column = self._columns.get(name)
+        if column is None:
+            return np.zeros(self.rows, dtype=np.int32)
+        accepted: dict[object, int] = {Number(number): number for number in range(1, most + 1)}
+        found = np.zeros(len(column.values), dtype=np.int32)
+        wrong: list[int] = []
+        for place, value in enumerate(column.values):
+            if value is None:
+                continue
+            if isinstance(value, Number) and value in accepted:
+                found[place] = accepted[value]
+            else:
+                wrong.append(place)
+        self._faults.at_values(name, wrong, "bad_number", f"Say a whole number from 1 to {most}.")
+        return _by_row(column, found)
+
+    def lists(self, name: str, known: Mapping[str, int] | None = None, *, empty: bool) -> Texts:
+        """Return a column of arrays of ids as sorted JSON arrays; ``empty`` ones count as absent.
+
+        With ``known``, every element must be one of its keys.
+        """
+
+        def spell(value: object) -> Spelled:
+            if not is_id_list(value):
+                return Spelled(None, "wrong_type", TAGS_ADVICE)
+            elements: list[str] = value  # type: ignore[assignment] # is_id_list says so
+            if not elements:
+                detail = "Name at least one, or leave the field out."
+                return Spelled("") if empty else Spelled(None, "empty_list", detail)
+            if known is not None and not all(element in known for element in elements):
+                strange = next(element for element in elements if element not in known)
+                return Spelled(None, "unknown_site", f"There is no site of the id '{strange}'.")
+            return Spelled(canonical_json(sorted(elements)).decode())
+
+        return self._structures(name, spell)
+
+    def extras(self, name: str = "extra") -> Texts:
+        """Return a column of objects of text as canonical JSON; empty ones count as absent."""
+
+        def spell(value: object) -> Spelled:
+            if not is_extra(value):
+                return Spelled(None, "bad_extra", EXTRA_ADVICE)
+            return Spelled(canonical_json(value).decode() if value else "")
+
+        return self._structures(name, spell)
+
+    def _structures(self, name: str, spell: Callable[[object], Spelled]) -> Texts:
+        """Return a column of arrays or objects, each as the text that ``spell`` makes of it."""
+        column = self._columns.get(name)
+        if column is None:
+            return no_texts(self.rows)
+        texts: list[str | None] = []
+        wrong: dict[tuple[str, str], list[int]] = {}
+        for place, value in enumerate(column.values):
+            word = Spelled("") if value is None else spell(value)
+            if word.text is None:
+                wrong.setdefault((word.code, word.detail), []).append(place)
+            texts.append(word.text or None)
+        for (code, detail), places in wrong.items():
+            self._faults.at_values(name, places, code, detail)
+        return _texts_column(column, texts, {text: text for text in texts if text is not None})
+
+    def _texts(self, name: str) -> tuple[Column | None, list[str | None]]:
+        """Return the values of a column of text; what is no text is reported and becomes None."""
+        column = self._columns.get(name)
+        if column is None:
+            return None, []
+        values = list(column.values)
+        if set(map(type, values)) - {str, NONE}:
+            wrong = [place for place, value in enumerate(values) if type(value) not in (str, NONE)]
+            self._faults.at_values(name, wrong, "wrong_type", TEXT_WANTED)
+            for place in wrong:
+                values[place] = None
+        return column, values  # type: ignore[return-value] # only text and None are left
+
+    def _decimals_of(self, name: str, values: Sequence[object], decimals_max: int) -> Decimals:
+        """Return the values of a column as decimals and report the faulty ones."""
+        kinds = set(map(type, values))
+        if kinds - {str, Number, NONE}:
+            wrong = [
+                place
+                for place, value in enumerate(values)
+                if type(value) not in (str, Number, NONE)
+            ]
+            self._faults.at_values(name, wrong, "wrong_type", NUMBER_WANTED)
+            strange = set(wrong)
+            values = [None if place in strange else value for place, value in enumerate(values)]
+            kinds.add(NONE)
+        present: BoolArray | None = None
+        if NONE in kinds:
+            present = np.fromiter((value is not None for value in values), dtype=np.bool_)
+            values = ["" if value is None else value for value in values]
+        read = read_decimals(
+            values,  # type: ignore[arg-type] # only text is left
+            present=present,
+            decimals_max=decimals_max,
+        )
+        for places, (code, detail) in (
+            (read.malformed, NOT_A_NUMBER),
+            (read.too_fine, too_many_decimals(decimals_max)),
+            (read.too_large, TOO_LARGE),
+        ):
+            self._faults.at_values(name, places, code, detail)
+        return read.decimals
+
+    def _refuse_texts(
+        self, name: str, values: Sequence[str | None], refused: Mapping[str, Spelled]
+    ) -> None:
+        """Report the places of refused texts, those of one advice together."""
+        by_advice: dict[tuple[str, str], list[int]] = {}
+        for place, text in enumerate(values):
+            if text is not None and text in refused:
+                word = refused[text]
+                by_advice.setdefault((word.code, word.detail), []).append(place)
+        for (code, detail), places in by_advice.items():
+            self._faults.at_values(name, places, code, detail)
+
+
+def no_texts(rows: int) -> Texts:
+    """Return a column without any text."""
+    return Texts(codes=np.full(rows, ABSENT, dtype=np.int32), values=())
+
+
+def no_decimals(rows: int) -> Decimals:
+    """Return a column without any number."""
+    return Decimals(
+        values=np.zeros(rows, dtype=np.int64), present=np.zeros(rows, dtype=np.bool_), exponent=0
+    )
+
+
+def without(column: Decimals, rows: BoolArray) -> Decimals:
+    """Return a column in which ``rows`` have no number."""
+    values = np.where(rows, 0, column.values)
+    return least_exponent(values, column.present & ~rows, column.exponent)
+
+
+def as_ids(texts: Sequence[str | None]) -> IdArray:
+    """Return ids as a column of UTF-8, ``b""`` where there is none."""
+    encoded = [b"" if text is None else text.encode() for text in texts]
+    return np.array(encoded, dtype=np.bytes_) if encoded else np.zeros(0, dtype="S1")
+
+
+def _by_row(column: Column, found: _Values) -> _Values:
+    """Return what was found for each value as what holds for each row."""
+    return found if column.take is None else found[column.take]
+
+
+def _places(flags: BoolArray) -> IntArray:
+    """Return where ``flags`` is True."""
+    return np.flatnonzero(flags)
+
+
+def _texts_column(
+    column: Column, values: Sequence[str | None], kept: Mapping[str, str | None]
+) -> Texts:
+    """Return a column of texts: for each value the text that ``kept`` has for it, if any.
+
+    The values of the result are sorted, distinct and all used.
+    """
+    distinct = sorted({text for text in kept.values() if text})
+    code = {text: number for number, text in enumerate(distinct)}
+    by_value: dict[str | None, int] = {
+        value: code[text] if text else ABSENT for value, text in kept.items()
+    }
+    by_value[None] = ABSENT
+    codes = np.fromiter(map(by_value.__getitem__, values), dtype=np.int32, count=len(values))
+    return used_only(Texts(codes=_by_row(column, codes), values=tuple(distinct)))
+
+
+def used_only(column: Texts) -> Texts:
+    """Return a column of texts without the values that no row has."""
+    used = np.zeros(len(column.values) + 1, dtype=np.bool_)
+    used[column.codes] = True
+    used[-1] = True
+    if bool(used.all()):
+        return column
+    code = np.cumsum(used, dtype=np.int32) - 1
+    code[-1] = ABSENT
+    values = tuple(text for text, kept in zip(column.values, used.tolist(), strict=False) if kept)
+    return Texts(codes=code[column.codes], values=values)

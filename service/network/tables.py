@@ -1,0 +1,280 @@
+"""Supply, demand and lanes read from the definition straight into columns.
+
+Each reader returns all rows as sent, faulty ones included (their codes are below 0, their numbers
+absent), with a ``TableFaults`` that says which rows those are. Checks that need more than one table
+follow in ``supply_checks.py``, ``demand_checks.py`` and ``lane_checks.py``.
+"""
+
+from collections import Counter
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from service.network.columns import (
+    BoolArray,
+    CodeArray,
+    Decimals,
+    DemandTable,
+    LaneTable,
+    SupplyTable,
+)
+from service.network.moments import read_date, read_instant
+from service.network.not_yet import SHARED, refusal
+from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
+from service.network.table_faults import TableFaults
+from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
+from service.network.table_forms import Column, Sheet
+from service.network.table_reading import Spelled, TableReader, as_ids, no_decimals, without
+from service.network.table_rows import with_measure, with_units
+from service.network.things import Things
+from service.network.wording import ID_ADVICE, is_id
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ReadSupply:
+    """Supply as sent, and what is wrong with it by itself."""
+
+    table: SupplyTable
+    faults: TableFaults
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ReadDemand:
+    """Order lines as sent, and what is wrong with them by themselves."""
+
+    table: DemandTable
+    faults: TableFaults
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ReadLanes:
+    """Lanes as sent, and what is wrong with them by themselves.
+
+    ``table.ids`` holds the ids as given; ``measured`` tells which rows state their measure.
+    """
+
+    table: LaneTable
+    faults: TableFaults
+    measured: BoolArray
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class ReadTables:
+    """The three tables as sent."""
+
+    supply: ReadSupply
+    demand: ReadDemand
+    lanes: ReadLanes
+
+
+def read_supply(sheet: Sheet, things: Things) -> ReadSupply:
+    """Read the supply table."""
+    faults = TableFaults(sheet)
+    reader = TableReader(faults)
+    site = reader.codes("site", things.site_positions, unknown="unknown_site", thing="site")
+    item = reader.codes("item", things.item_positions, unknown="unknown_item", thing="item")
+    quantity = _quantity(reader, "quantity")
+    keep_quantity, keep_priority = _keep(sheet, faults)
+    table = SupplyTable(
+        site=site,
+        item=item,
+        quantity=quantity,
+        unit=with_units(reader.texts("unit", _id), item, things.items),
+        unit_cost=reader.decimals("unit_cost", decimals_max=RATE_DECIMALS_MAX, least=None),
+        on_hand=_quantity(reader, "on_hand"),
+        reserved=_quantity(reader, "reserved"),
+        on_hold=_quantity(reader, "on_hold"),
+        as_of=reader.texts("as_of", _instant),
+        lot=reader.texts("lot", _id),
+        best_before=reader.texts("best_before", _date),
+        keep_quantity=keep_quantity,
+        keep_priority=keep_priority,
+        extra=reader.extras(),
+    )
+    _require(reader, site=site, item=item, quantity=quantity)
+    return ReadSupply(table=table, faults=faults)
+
+
+def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
+    """Read the order lines; a line without a reference is called ``#`` and its number as sent."""
+    faults = TableFaults(sheet)
+    reader = TableReader(faults)
+    references = [
+        f"#{number}" if text is None else text
+        for number, text in enumerate(reader.ids("reference"), start=1)
+    ]
+    _refuse_repeats(
+        faults,
+        "reference",
+        references,
+        "duplicate_reference",
+        "Another order line has this reference. Give each line one of its own.",
+    )
+    site = reader.codes("site", things.site_positions, unknown="unknown_site", thing="site")
+    item = reader.codes("item", things.item_positions, unknown="unknown_item", thing="item")
+    quantity = _quantity(reader, "quantity")
+    table = DemandTable(
+        reference=as_ids(references),
+        order=reader.texts("order", _id),
+        ordered_at=reader.texts("ordered_at", _instant),
+        site=site,
+        item=item,
+        quantity=quantity,
+        unit=with_units(reader.texts("unit", _id), item, things.items),
+        priority=reader.small("priority", most=PRIORITY_MAX),
+        shortage_cost=reader.decimals("shortage_cost", decimals_max=RATE_DECIMALS_MAX, least=0),
+        worth_at_most=reader.decimals("worth_at_most", decimals_max=RATE_DECIMALS_MAX, least=0),
+        origins=reader.lists("origins", things.site_positions, empty=False),
+        tags=reader.lists("tags", empty=True),
+        extra=reader.extras(),
+    )
+    _require(reader, site=site, item=item, quantity=quantity)
+    return ReadDemand(table=table, faults=faults)
+
+
+def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
+    """Read the lanes. A must-ship of 0 and the ``per`` of a lane with an item say nothing."""
+    faults = TableFaults(sheet)
+    reader = TableReader(faults)
+    ids = reader.ids("id")
+    _refuse_repeats(
+        faults,
+        "id",
+        ids,
+        "duplicate_id",
+        "Another lane has this id. Give each lane one of its own, or none.",
+    )
+    origin = reader.codes("origin", things.site_positions, unknown="unknown_site", thing="site")
+    destination = reader.codes(
+        "destination", things.site_positions, unknown="unknown_site", thing="site"
+    )
+    item = reader.codes("item", things.item_positions, unknown="unknown_item", thing="item")
+    unit_cost = reader.decimals("unit_cost", decimals_max=RATE_DECIMALS_MAX, least=None)
+    must_ship = _quantity(reader, "must_ship")
+    measure = reader.texts("measure", _id)
+    per = reader.texts("per", _per)
+    table = LaneTable(
+        ids=as_ids(ids),
+        origin=origin,
+        destination=destination,
+        item=item,
+        unit_cost=unit_cost,
+        measure=with_measure(measure),
+        must_ship=without(must_ship, must_ship.values == 0),
+        capacity=_quantity(reader, "capacity"),
+        per=replace(per, codes=np.where(item >= 0, np.int32(-1), per.codes)),
+        carrier=reader.texts("carrier", _id),
+        tags=reader.lists("tags", empty=True),
+        extra=reader.extras(),
+    )
+    reader.require("origin", origin != -1)
+    reader.require("destination", destination != -1)
+    reader.require("unit_cost", unit_cost.present)
+    return ReadLanes(table=table, faults=faults, measured=measure.codes >= 0)
+
+
+def _quantity(reader: TableReader, name: str) -> Decimals:
+    """Read a column of quantities, which are never negative."""
+    return reader.decimals(name, decimals_max=QUANTITY_DECIMALS_MAX, least=0)
+
+
+def _require(reader: TableReader, *, site: CodeArray, item: CodeArray, quantity: Decimals) -> None:
+    """Report rows of supply or demand that lack what each of them needs."""
+    reader.require("site", site != -1)
+    reader.require("item", item != -1)
+    reader.require("quantity", quantity.present)
+
+
+def _refuse_repeats(
+    faults: TableFaults, name: str, texts: Sequence[str | None], code: str, detail: str
+) -> None:
+    """Report every row whose id another row has too: which of them is meant would be a guess."""
+    given = [text for text in texts if text is not None]
+    if len(set(given)) == len(given):
+        return
+    counts = Counter(given)
+    rows = [row for row, text in enumerate(texts) if text is not None and counts[text] > 1]
+    faults.at_rows(name, rows, code, detail)
+
+
+def _id(text: str) -> Spelled:
+    """Spell an id, a unit, a carrier or a lot: as it is."""
+    return Spelled(text) if is_id(text) else Spelled(None, "bad_id", ID_ADVICE)
+
+
+def _instant(text: str) -> Spelled:
+    """Spell a point in time: in UTC."""
+    try:
+        return Spelled(read_instant(text).utc)
+    except ValueError as error:
+        return Spelled(None, "bad_time", str(error))
+
+
+def _date(text: str) -> Spelled:
+    """Spell a calendar date."""
+    try:
+        return Spelled(read_date(text).isoformat())
+    except ValueError as error:
+        return Spelled(None, "bad_date", str(error))
+
+
+def _per(text: str) -> Spelled:
+    """Spell whom a limit of a lane for any item concerns."""
+    if text == "together":
+        return Spelled(None, "not_yet", refusal("per: together", SHARED))
+    if text != "item":
+        return Spelled(None, "bad_choice", "Say 'item': the limit holds for each item by itself.")
+    return Spelled(text)
+
+
+def _keep(sheet: Sheet, faults: TableFaults) -> tuple[Decimals, CodeArray]:
+    """Read what stays in stock; a quantity of 0 says nothing and counts as absent."""
+    column = sheet.columns.get("keep")
+    if column is None:
+        return no_decimals(sheet.rows), np.zeros(sheet.rows, dtype=np.int32)
+    values = column.values
+    wrong = [
+        place
+        for place, value in enumerate(values)
+        if value is not None and not (isinstance(value, dict) and set(value) <= _KEEP_FIELDS)
+    ]
+    detail = "Send an object with quantity and, if you like, priority (1 to 9; default 5)."
+    faults.at_values("keep", wrong, "bad_keep", detail)
+    strange = set(wrong)
+    parts = [
+        value if isinstance(value, dict) and place not in strange else {}
+        for place, value in enumerate(values)
+    ]
+    # The parts are read as a small table of their own, so that they get the same checks.
+    inner = TableFaults(
+        Sheet(
+            name="keep",
+            rows=len(parts),
+            columns={
+                name: Column(
+                    values=[part.get(name) for part in parts],
+                    take=None,
+                    place=lambda place, name=name: f"{column.place(place)}/{name}",  # type: ignore[misc] # bound now
+                )
+                for name in _KEEP_FIELDS
+            },
+            row_place=column.place,
+        )
+    )
+    reader = TableReader(inner)
+    quantity = _quantity(reader, "quantity")
+    priority = reader.small("priority", most=PRIORITY_MAX)
+    given = np.array(
+        [value is not None and place not in strange for place, value in enumerate(values)],
+        dtype=np.bool_,
+    )
+    reader.require("quantity", quantity.present | ~given)
+    faults.adopt("keep", inner)
+    kept = quantity.values > 0
+    priority = np.where(kept & (priority == 0), np.int32(PRIORITY_DEFAULT), priority)
+    priority = np.where(kept, priority, np.int32(0))
+    return without(quantity, ~kept), priority
+
+
+_KEEP_FIELDS = frozenset({"quantity", "priority"})
