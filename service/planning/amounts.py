@@ -8,8 +8,6 @@ from service.network.quantities import exact_text
 
 UNKNOWN = "unknown"
 
-# ISO 4217 minor units that are not 2; kept in network/currencies.py.
-
 
 def text(value: Fraction | int) -> str:
     """Return the exact text of an amount."""

@@ -105,7 +105,8 @@ class Arcs:
 
     def can_take_more(self, flow: IntArray) -> BoolArray:
         """Return where one more step would fit."""
-        return (self.capacity == UNLIMITED) | (flow < self.capacity)
+        room: BoolArray = (self.capacity == UNLIMITED) | (flow < self.capacity)
+        return room
 
     def can_give_up(self, flow: IntArray) -> BoolArray:
         """Return where one step less would still meet the minimum."""

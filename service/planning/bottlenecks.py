@@ -73,9 +73,7 @@ class Bottlenecks:
     def went_first(self, place: frozenset[int], rank: tuple[int, int]) -> list[int]:
         """Return the shortage arcs of demand in a bottleneck that is served and ranks as high."""
         return [
-            arc
-            for arc, own, component in self.served_shorts
-            if own <= rank and component in place
+            arc for arc, own, component in self.served_shorts if own <= rank and component in place
         ]
 
     @cached_property
@@ -102,8 +100,8 @@ class Bottlenecks:
         graph = coo_array(
             (np.ones(self._tail.shape[0], np.int8), (self._tail, self._head)), shape=(nodes, nodes)
         ).tocsr()
-        count, component = connected_components(graph, directed=True, connection="strong")
-        component = component.astype(np.int64)
+        count, found = connected_components(graph, directed=True, connection="strong")
+        component: IntArray = found.astype(np.int64)
         tail, head = component[self._tail], component[self._head]
         across = tail != head
         pairs = np.sort(tail[across] * count + head[across])

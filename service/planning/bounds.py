@@ -69,9 +69,7 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
             quantity = Rationals(
                 values=np.full(rows.shape[0], entry.rule.quantity.numerator, object)[picked],
                 codes=codes[picked],
-                multipliers=tuple(
-                    factor / entry.rule.quantity.denominator for factor in steps_in
-                ),
+                multipliers=tuple(factor / entry.rule.quantity.denominator for factor in steps_in),
             ).rounded(up=False, what="quantity of a fixed_quantity rule")
             minimum[picked] = quantity
             capacity[picked] = quantity

@@ -10,7 +10,8 @@ from typing import Any
 from service.network.columns import Network
 from service.planning.amounts import text
 from service.planning.arcs import ROOT, SIDES, Kind, Side
-from service.planning.compile import Compiled, ItemNetwork
+from service.planning.compile import Compiled
+from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError
 from service.planning.priorities import Achieved, money_of
 from service.planning.solve import ItemFlow
@@ -129,7 +130,8 @@ def _item(network: Network, solved: ItemFlow) -> Document:
         return network.sites[int(place)].id
 
     def label(group: int) -> str:
-        return network.demand.reference[groups.label[group]].decode()
+        name: bytes = network.demand.reference[groups.label[group]]
+        return name.decode()
 
     def tiers(amounts: Mapping[int, int]) -> list[Document]:
         return _in_order(
@@ -174,9 +176,7 @@ def _item(network: Network, solved: ItemFlow) -> Document:
     ]
     shelved = own.layout.stock >= 0
     plain = {
-        tier: steps
-        for tier, steps in solved.amounts(Kind.SUPPLY).items()
-        if not shelved[tier]
+        tier: steps for tier, steps in solved.amounts(Kind.SUPPLY).items() if not shelved[tier]
     }
     prices = solved.price.tolist()
     return {

@@ -20,7 +20,7 @@ def consignments(
     for line in lines:
         if line.row >= 0:
             by_lane.setdefault(line.row, []).append(line)
-    rows = []
+    rows: list[dict[str, object]] = []
     for row, own in sorted(by_lane.items()):
         pallets, weight, volume = Measured(), Measured(), Measured()
         cost = Fraction(0)

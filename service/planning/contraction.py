@@ -48,8 +48,8 @@ class Contraction:
         With these, the arcs that were merged over have a reduced cost of exactly 0.
         """
         node_count = self.place.shape[0]
-        merged_over = sum((list(step.arc) for step in self.rounds), [])
-        cost = widened(cost, bound=4 * total(np.abs(cost[np.array(merged_over, np.int64)])))
+        moved_by = sum(total(np.abs(cost[step.arc])) for step in self.rounds)
+        cost = widened(cost, bound=4 * moved_by)
         offset: MoneyArray = np.zeros(node_count, cost.dtype)
         for step in self.rounds:
             tail, head = self.original.tail[step.arc], self.original.head[step.arc]

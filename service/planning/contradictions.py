@@ -7,7 +7,7 @@ from service.network.naming import lane_names
 from service.planning.amounts import text
 from service.planning.arcs import ROOT, SIDES, UNLIMITED, Kind, Side
 from service.planning.certificate import Document
-from service.planning.compile import ItemNetwork
+from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError
 
 NAMES_MAX = 3

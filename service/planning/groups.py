@@ -54,9 +54,7 @@ def groups_of(network: Network, item: int, options: Options) -> Groups:
             factor / (thing.step * 10**demand.quantity.exponent) for factor in factors
         ),
     )
-    row_steps = exact.rounded(
-        up=options.demand_rounding == "up", what="quantity of an order line"
-    )
+    row_steps = exact.rounded(up=options.demand_rounding == "up", what="quantity of an order line")
     priority, money = _claims(network, rows, codes, factors, step=thing.step, options=options)
     wanting = np.flatnonzero(row_steps > 0)
     _, money_code = np.unique(money.on(money.grid() or Fraction(1)), return_inverse=True)
@@ -134,9 +132,7 @@ def _origins(network: Network, rows: IntArray) -> tuple[frozenset[int] | None, .
     origins = network.demand.origins
     codes = origins.codes[rows]
     if not origins.values or bool((codes < 0).all()):
-        return (None,) * rows.shape[0]
+        return tuple(None for _ in range(rows.shape[0]))
     position = {site.id: place for place, site in enumerate(network.sites)}
-    named = [
-        frozenset(position[site] for site in json.loads(text)) for text in origins.values
-    ]
+    named = [frozenset(position[site] for site in json.loads(text)) for text in origins.values]
     return tuple(named[code] if code >= 0 else None for code in codes.tolist())

@@ -62,9 +62,7 @@ def drawn_rows(solved: ItemFlow) -> list[tuple[int, int, int]]:
     """Return (site, row, steps) of the stock that leaves the shelf, in the order of the table."""
     stock = solved.own.stock
     kept = solved.amounts(Kind.KEPT)
-    drawn = {
-        tier: steps - kept.get(tier, 0) for tier, steps in solved.amounts(Kind.SUPPLY).items()
-    }
+    drawn = {tier: steps - kept.get(tier, 0) for tier, steps in solved.amounts(Kind.SUPPLY).items()}
     rows = []
     for row, (tier, has) in enumerate(
         zip(stock.row_tier.tolist(), stock.row_steps.tolist(), strict=True)
@@ -100,9 +98,7 @@ class _Walker:
         kind, subject = own.kind[moving], own.subject[moving]
         lanes = np.flatnonzero(kind == Kind.LANE)
         name = [b""] * moving.shape[0]
-        for at, own_name in zip(
-            lanes.tolist(), lane_key(subject[lanes].tolist()), strict=True
-        ):
+        for at, own_name in zip(lanes.tolist(), lane_key(subject[lanes].tolist()), strict=True):
             name[at] = own_name
         serves = np.isin(kind, [Kind.SERVE, Kind.SERVE_ARRIVED])
         tail = own.arcs.tail[moving]
@@ -152,7 +148,7 @@ class _Walker:
 
     def _next_arc(self, node: int) -> int:
         """Return the first arc out of ``node`` that has flow left; there is one by balance."""
-        arc = self._next[node]
+        arc: int = self._next[node]
         while not self._left[arc]:
             arc += 1
         self._next[node] = arc

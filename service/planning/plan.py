@@ -165,9 +165,7 @@ def _head(compiled: Compiled, status: str, setting: Setting) -> Document:
     }
 
 
-def _totals(
-    order_lines: list[Document], quantities: list[Document], setting: Setting
-) -> Document:
+def _totals(order_lines: list[Document], quantities: list[Document], setting: Setting) -> Document:
     """Return how many lines go complete, in part, not at all, and the quantities by item."""
     none = sum(line["served"] == "0" and line["short"] != "0" for line in order_lines)
     complete = sum(line["short"] == "0" for line in order_lines)
@@ -319,4 +317,3 @@ def _doubts(circling: Sequence[str]) -> list[Document]:
             "examples": [{"pointer": "/lanes", "value": name} for name in sorted(circling)[:3]],
         }
     ]
-

@@ -60,9 +60,7 @@ def item_plan(network: Network, solved: ItemFlow) -> ItemPlan:
     positions = list(on_lanes)
     rows: IntArray = own.lanes.rows[positions] if positions else own.lanes.rows[:0]
     names = dict(zip(positions, lane_names(network, rows), strict=True))
-    paths = paths_of(
-        solved, lane_key=lambda lanes: [names[lane].encode() for lane in lanes]
-    )
+    paths = paths_of(solved, lane_key=lambda lanes: [names[lane].encode() for lane in lanes])
     return ItemPlan(
         solved=solved,
         paths=paths,

@@ -36,7 +36,8 @@ def residual_prices(arcs: Arcs, flow: IntArray, *, nodes: int) -> MoneyArray:
         np.concatenate((arcs.cost[more], -arcs.cost[less])),
         nodes=nodes,
     )
-    return distance - distance[ROOT]
+    price: MoneyArray = distance - distance[ROOT]
+    return price
 
 
 def shortest_distances(
@@ -77,4 +78,3 @@ def holds(arcs: Arcs, flow: IntArray, price: MoneyArray) -> bool:
         ((reduced < 0) & arcs.can_take_more(flow)).any()
         or ((reduced > 0) & arcs.can_give_up(flow)).any()
     )
-

@@ -26,9 +26,7 @@ def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
     for arc, rank in own.ranked_shortages():
         short[rank] += int(solved.flow[arc])
     return Achieved(
-        short=tuple(
-            (priority, short[rank]) for rank, priority in enumerate(own.priorities)
-        )
+        short=tuple((priority, short[rank]) for rank, priority in enumerate(own.priorities))
         if shortages
         else (),
         money=product_total(solved.flow, own.arcs.cost),

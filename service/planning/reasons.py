@@ -72,11 +72,7 @@ class Reasons:
         want = int(self._arcs.minimum[self.bottlenecks.want_of[node]])
         alone = self._alone(short_arc, None, want=want)
         if alone >= want:
-            return (
-                Reason.NOT_WORTH_IT
-                if self._could_be_paid_for(short_arc)
-                else Reason.OUTRANKED
-            )
+            return Reason.NOT_WORTH_IT if self._could_be_paid_for(short_arc) else Reason.OUTRANKED
         more: Reason | None = None
         for relief in RELIEFS:
             lifted = self._alone(short_arc, relief, want=want)

@@ -29,10 +29,7 @@ class Entry:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RuleBook:
-    """All rules of a network; ``entries`` are those in force, in the order of their ids.
-
-    ``kept_in_force`` false stands for the network without closures (when reasons are sought).
-    """
+    """All rules of a network; ``entries`` are those in force, in the order of their ids."""
 
     rules: tuple[Rule, ...]
     entries: tuple[Entry, ...]

@@ -3,7 +3,7 @@
 import numpy as np
 
 from service.network.columns import IntArray
-from service.network.rules import Closure, FixedQuantity, Throughput
+from service.network.rules import FixedQuantity, Throughput
 from service.planning.arcs import Kind
 from service.planning.compile import Compiled
 from service.planning.prices import reduced_cost
@@ -63,5 +63,5 @@ def _binds(entry: Entry, flow: ItemFlow, gain: IntArray) -> bool:
         return bool((on_lanes != 0).any())
     if bool((on_lanes < 0).any()):
         return True
-    arcs = own.of_kind(Kind.THROUGH, Kind.PASS) if isinstance(rule, Closure) else own.of_kind()
+    arcs = own.of_kind(Kind.THROUGH, Kind.PASS)
     return bool((gain[arcs[entry.sites[own.subject[arcs]]]] < 0).any())

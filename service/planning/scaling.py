@@ -7,7 +7,6 @@ from fractions import Fraction
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from service.network.columns import CodeArray, IntArray
 from service.planning.arcs import SAFE, MoneyArray, largest
@@ -130,9 +129,7 @@ def common_grid(grids: Iterable[Fraction]) -> Fraction:
     """Return the largest number of which all ``grids`` are whole multiples; 0 of nothing."""
     found = Fraction(0)
     for grid in grids:
-        above = math.gcd(
-            found.numerator * grid.denominator, grid.numerator * found.denominator
-        )
+        above = math.gcd(found.numerator * grid.denominator, grid.numerator * found.denominator)
         found = Fraction(above, found.denominator * grid.denominator)
     return found
 
@@ -143,7 +140,7 @@ def common_divisor(values: MoneyArray) -> int:
         return math.gcd(0, *(int(value) for value in values.tolist()))
     # A few values bring the divisor down almost always; the rest is only checked against it.
     found, sample = 0, 1024
-    rest: NDArray[np.int64] = values[values != 0] if values.shape[0] > sample else values
+    rest: IntArray = values[values != 0] if values.shape[0] > sample else values
     while rest.shape[0]:
         found = math.gcd(found, int(np.gcd.reduce(rest[:sample])))
         if found == 1:

@@ -7,9 +7,9 @@ from typing import Any
 from service.network.columns import IntArray, Network
 from service.planning.arcs import ROOT, Kind, MoneyArray
 from service.planning.canonical_plan import canonical_flow
-from service.planning.compile import ItemNetwork
 from service.planning.contraction import Contraction, contract
 from service.planning.forced_flow import contradiction
+from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError, NoFlowError, SolverFaultError
 from service.planning.prices import residual_prices
 from service.planning.ranges import exact_flow
@@ -37,11 +37,7 @@ class ItemFlow:
         arcs = self.own.of_kind(kind)
         carried = self.flow[arcs]
         used = carried != 0
-        return dict(
-            zip(
-                self.own.subject[arcs[used]].tolist(), carried[used].tolist(), strict=True
-            )
-        )
+        return dict(zip(self.own.subject[arcs[used]].tolist(), carried[used].tolist(), strict=True))
 
 
 def solve_item(network: Network, own: ItemNetwork, *, front: Front = exact_flow) -> ItemFlow:

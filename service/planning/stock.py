@@ -97,7 +97,9 @@ def stock_of(network: Network, item: int) -> Stock:
     )
 
 
-def _whole_steps(quantity: Rationals, new_site: np.ndarray[tuple[int], np.dtype[np.bool_]]) -> IntArray:
+def _whole_steps(
+    quantity: Rationals, new_site: np.ndarray[tuple[int], np.dtype[np.bool_]]
+) -> IntArray:
     """Return what each row adds to the whole steps of its site: differences of rounded sums."""
     if new_site.shape[0] == 0:
         return np.zeros(0, np.int64)
@@ -111,12 +113,14 @@ def _whole_steps(quantity: Rationals, new_site: np.ndarray[tuple[int], np.dtype[
     whole = (sums - before) * grid.numerator // grid.denominator
     if largest(whole) >= SAFE:
         raise NumbersTooLargeError("The supply of an item at a site is 2^62 steps or more.")
-    whole = whole.astype(np.int64)
-    former = np.concatenate(([0], whole[:-1]))
-    return whole - np.where(new_site, 0, former)
+    steps: IntArray = whole.astype(np.int64)
+    former = np.concatenate(([0], steps[:-1]))
+    return steps - np.where(new_site, 0, former)
 
 
-def _changes(column: np.ndarray[tuple[int], np.dtype[np.generic]]) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+def _changes(
+    column: np.ndarray[tuple[int], np.dtype[np.generic]],
+) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
     """Return where a value differs from the one before, the first row included."""
     changed = np.ones(column.shape[0], np.bool_)
     changed[1:] = column[1:] != column[:-1]

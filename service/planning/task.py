@@ -16,8 +16,9 @@ from service.planning.certificate import (
     contradiction_certificate,
     proved_certificate,
 )
-from service.planning.compile import Compiled, ItemNetwork, compile_network
+from service.planning.compile import Compiled, compile_network
 from service.planning.contradictions import contradiction_reason
+from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError, NumbersTooLargeError
 from service.planning.outcome import FailureReason, Outcome, State
 from service.planning.plan import Setting, planned, unplanned

@@ -1,4 +1,4 @@
-"""What the arcs of an item are called when ties are broken: (kind, id), the same for every route."""
+"""What arcs are called when ties are broken: (kind, id), whatever way led to the tie."""
 
 from dataclasses import dataclass
 
@@ -8,7 +8,7 @@ from service.network.columns import IntArray, Network
 from service.network.naming import encoded, lane_names
 from service.planning.arcs import SIDES, Kind, Side
 from service.planning.canonical_plan import tie_weight
-from service.planning.compile import ItemNetwork
+from service.planning.item_network import ItemNetwork
 
 _RECEIVED = SIDES.index(Side.RECEIVED)
 

@@ -1,0 +1,258 @@
+"""The arcs of one item: lanes, stock, what passes a site, who may serve whom, what is wanted."""
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from service.network.columns import CodeArray, IntArray, Network
+from service.network.options import Options
+from service.network.reach import LaneUse
+from service.planning.arcs import ROOT, UNLIMITED, Arcs, Kind, largest
+from service.planning.bounds import LaneBounds, lane_bounds
+from service.planning.groups import IN_MONEY, Groups, groups_of
+from service.planning.item_network import ItemNetwork
+from service.planning.layout import Layout, layout_of
+from service.planning.rule_book import RuleBook
+from service.planning.scaling import Rationals
+from service.planning.stock import Stock, stock_of
+
+
+@dataclass(slots=True, kw_only=True)
+class ArcList:
+    """Collects the arcs of one item block by block, before the scale of money is known."""
+
+    item: int
+    lanes: LaneBounds
+    stock: Stock
+    groups: Groups
+    layout: Layout
+    blocks: list[tuple[Kind, IntArray, IntArray, IntArray, IntArray, IntArray, Rationals]]
+    money: Rationals
+
+    def add(  # noqa: PLR0913 - the columns of an arc
+        self,
+        kind: Kind,
+        tail: IntArray,
+        head: IntArray,
+        subject: IntArray | CodeArray,
+        *,
+        minimum: IntArray | int = 0,
+        capacity: IntArray | int = UNLIMITED,
+        money: Rationals | None = None,
+    ) -> None:
+        """Add arcs of one kind; a missing cost is 0."""
+        rows = subject.shape[0]
+        self.blocks.append(
+            (
+                kind,
+                np.broadcast_to(np.asarray(tail, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(head, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(minimum, np.int64), (rows,)),
+                np.broadcast_to(np.asarray(capacity, np.int64), (rows,)),
+                subject.astype(np.int64),
+                Rationals.zeros(rows) if money is None else money,
+            )
+        )
+
+    def finish(self, scale: Fraction) -> ItemNetwork:
+        """Return the item's network at ``scale``."""
+        tail, head, minimum, capacity, subject = (
+            np.concatenate([block[column] for block in self.blocks]) for column in range(1, 6)
+        )
+        cost = self.money.times(scale).on(Fraction(1))
+        priorities = sorted(
+            (set(self.groups.priority.tolist()) | set(self.stock.kept_priority.tolist()))
+            - {IN_MONEY}
+        )
+        return ItemNetwork(
+            item=self.item,
+            lanes=self.lanes,
+            stock=self.stock,
+            groups=self.groups,
+            layout=self.layout,
+            arcs=Arcs(tail=tail, head=head, minimum=minimum, capacity=capacity, cost=cost),
+            money=self.money,
+            kind=np.concatenate(
+                [np.full(block[1].shape[0], int(block[0]), np.int64) for block in self.blocks]
+            ),
+            subject=subject,
+            priorities=tuple(priorities),
+            # Any loop trades at most one short step for another and gains at most n * max|c|
+            # twice over in money; more than that for each step of priority (MODEL.md, section 4).
+            base=2 * len(self.layout.nodes) * largest(cost) + 1,
+        )
+
+
+def item_arcs(
+    network: Network, options: Options, item: int, *, use: LaneUse, book: RuleBook
+) -> ArcList:
+    """Build the arcs of one item."""
+    lanes = lane_bounds(network, item, use.rows(item), book)
+    stock, groups = stock_of(network, item), groups_of(network, item, options)
+    layout = layout_of(
+        network,
+        item,
+        lanes=lanes,
+        stock=stock,
+        groups=groups,
+        book=book,
+        passes_on=use.passes_on,
+    )
+    arcs = ArcList(
+        item=item,
+        lanes=lanes,
+        stock=stock,
+        groups=groups,
+        layout=layout,
+        blocks=[],
+        money=Rationals.zeros(0),
+    )
+    arcs.add(
+        Kind.LANE,
+        layout.lane_tail,
+        layout.lane_head,
+        np.arange(lanes.rows.shape[0]),
+        minimum=lanes.minimum,
+        capacity=lanes.capacity,
+        money=lanes.money,
+    )
+    _add_stock(arcs)
+    _add_sites(arcs, network, item)
+    _add_serving(arcs, network, item, use)
+    _add_wanting(arcs, shortages=options.shortages == "allow")
+    arcs.money = Rationals.joined([block[6] for block in arcs.blocks])
+    return arcs
+
+
+def _add_stock(arcs: ArcList) -> None:
+    """Add what can be drawn, and what of it is kept."""
+    stock, layout = arcs.stock, arcs.layout
+    tiers = np.arange(stock.site.shape[0])
+    plain, kept = tiers[layout.stock < 0], tiers[layout.stock >= 0]
+    root = np.array(ROOT)
+    arcs.add(
+        Kind.SUPPLY,
+        root,
+        layout.inside[stock.site[plain]],
+        plain,
+        capacity=stock.steps[plain],
+        money=stock.money.at(plain),
+    )
+    at = layout.stock[kept]
+    arcs.add(Kind.SUPPLY, root, at, kept, capacity=stock.steps[kept])
+    arcs.add(Kind.DRAW, at, layout.inside[stock.site[kept]], kept, money=stock.money.at(kept))
+    keep_of_site = dict(zip(stock.kept_site.tolist(), layout.keep.tolist(), strict=True))
+    keep = np.array([keep_of_site[site] for site in stock.site[kept].tolist()], np.int64)
+    arcs.add(Kind.KEPT, at, keep, kept)
+
+
+def _add_sites(arcs: ArcList, network: Network, item: int) -> None:
+    """Add what passes a site: handling, throughput limits, closures."""
+    layout = arcs.layout
+    places = layout.relevant
+    thing = network.items[item]
+    handling = Rationals.given(
+        [network.sites[place].handling(thing.id) * thing.step for place in places.tolist()]
+    )
+    arcs.add(
+        Kind.THROUGH,
+        layout.inside[places],
+        layout.outside[places],
+        places,
+        capacity=np.where(layout.closed[places], 0, layout.limit["through"][places]),
+        money=handling,
+    )
+    sending = places[layout.sent[places] >= 0]
+    arcs.add(
+        Kind.LEAVE,
+        layout.outside[sending],
+        layout.sent[sending],
+        sending,
+        capacity=layout.limit["sent"][sending],
+    )
+    node, site, _ = layout.arrivals
+    joined = np.flatnonzero(~layout.apart[site])
+    arcs.add(
+        Kind.ARRIVE,
+        node[joined],
+        layout.inside[site[joined]],
+        site[joined],
+        capacity=layout.limit["received"][site[joined]],
+    )
+    passing = np.flatnonzero(layout.apart[site] & layout.passes_on[site])
+    arcs.add(
+        Kind.PASS,
+        node[passing],
+        layout.sent[site[passing]],
+        site[passing],
+        capacity=np.where(layout.closed[site[passing]], 0, UNLIMITED),
+        money=handling.at(np.searchsorted(places, site[passing])),
+    )
+
+
+def _add_serving(arcs: ArcList, network: Network, item: int, use: LaneUse) -> None:
+    """Add who may serve which group."""
+    groups, layout = arcs.groups, arcs.layout
+    own = np.array(
+        [
+            allowed is None or int(site) in allowed
+            for site, allowed in zip(groups.site, groups.origins, strict=True)
+        ],
+        np.bool_,
+    )
+    served = np.flatnonzero(own)
+    arcs.add(Kind.SERVE, layout.outside[groups.site[served]], layout.demand[served], served)
+    node, site, origin = layout.arrivals
+    stock_at = {
+        place: frozenset(np.flatnonzero(use.stock_reaching(item, place)).tolist())
+        for place in sorted(set(origin[origin >= 0].tolist()))
+    }
+    arrivals_of: dict[int, list[int]] = {}
+    for at in np.flatnonzero(layout.apart[site]).tolist():
+        arrivals_of.setdefault(int(site[at]), []).append(at)
+    pairs = [
+        (at, group)
+        for group, (place, allowed) in enumerate(
+            zip(groups.site.tolist(), groups.origins, strict=True)
+        )
+        for at in arrivals_of.get(place, ())
+        if allowed is None or _all_named(stock_at[int(origin[at])], allowed)
+    ]
+    arrived, group = np.array(pairs, np.int64).reshape(len(pairs), 2).T
+    thing = network.items[item]
+    arcs.add(
+        Kind.SERVE_ARRIVED,
+        node[arrived],
+        layout.demand[group],
+        group,
+        capacity=np.where(layout.closed[site[arrived]], 0, UNLIMITED),
+        money=Rationals.given(
+            [
+                network.sites[place].handling(thing.id) * thing.step
+                for place in site[arrived].tolist()
+            ]
+        ),
+    )
+
+
+def _all_named(stock: frozenset[int], allowed: frozenset[int]) -> bool:
+    """Return whether some stock can come this way and all of it may serve.
+
+    Where only a part is named the intake has refused the line (``origins_behind_cross_dock``).
+    """
+    return bool(stock) and stock <= allowed
+
+
+def _add_wanting(arcs: ArcList, *, shortages: bool) -> None:
+    """Add what is wanted and kept, and what may stay short of it."""
+    groups, stock, layout = arcs.groups, arcs.stock, arcs.layout
+    root = np.array(ROOT)
+    for want, short, node, steps, money in (
+        (Kind.WANT, Kind.SHORT, layout.demand, groups.steps, groups.money),
+        (Kind.KEEP_WANT, Kind.KEEP_SHORT, layout.keep, stock.kept_steps, None),
+    ):
+        rows = np.arange(node.shape[0])
+        arcs.add(want, node, root, rows, minimum=steps, capacity=steps)
+        if shortages:
+            arcs.add(short, root, node, rows, money=money)
