@@ -36,7 +36,8 @@ def main() -> None:
     except SettingsError as error:
         tell(f"lanewright: a setting cannot be used\n{error}")
         sys.exit(Exit.BAD_INPUT)
-    configure_logs(settings.log_level)
+    # A command talks to a person: its log is for what went wrong. ``serve`` says more.
+    configure_logs("warning")
     sys.exit(run_command(sys.argv[1:], Work(settings).backing()))
 
 
@@ -110,6 +111,7 @@ class Work:
         from service.doors.http.server import http_server, listen  # noqa: PLC0415 - see the module
 
         settings = self._settings
+        configure_logs(settings.log_level)
         wanted = settings.port if port is None else port
         try:
             listening = listen(settings.host, wanted)
@@ -136,10 +138,17 @@ class Work:
     def audit(self) -> Audit:
         """Audit the store, which must be there: an audit makes no database."""
         from service.store.audit import audit  # noqa: PLC0415 - see the module
-        from service.store.database import database_url, sqlite_file  # noqa: PLC0415 - likewise
+        from service.store.database import (  # noqa: PLC0415 - see the module
+            DatabaseRefused,
+            database_url,
+            sqlite_file,
+        )
 
         url = self._settings.database_url
-        file = sqlite_file(database_url(url))
+        try:
+            file = sqlite_file(database_url(url))
+        except DatabaseRefused as error:
+            raise NotReadyError(str(error)) from error
         if file is not None and not file.exists():
             problem = {"code": "unreadable", "place": str(file), "detail": "There is no such file."}
             return Audit(verdict="unreadable", problems=(problem,))

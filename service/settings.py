@@ -75,9 +75,9 @@ class Settings(BaseSettings):
         """Refuse a database that the store was never tested on; write its driver out."""
         if value is None:
             return None
-        scheme, separator, rest = value.partition("://")
-        if not separator or scheme not in _DRIVERS:
-            raise ValueError("must begin with sqlite:/// or postgresql://")
+        scheme, _, rest = value.partition("://")
+        if not rest or scheme not in _DRIVERS or (scheme == "sqlite" and rest[:1] != "/"):
+            raise ValueError("must be sqlite:///FILE or postgresql://USER@HOST/NAME")
         return f"{_DRIVERS[scheme]}://{rest}"
 
     @model_validator(mode="after")

@@ -25,7 +25,8 @@ def configure_logs(level: str = "info", *, stream: TextIO | None = None) -> None
     """Write every log line from ``level`` on as JSON to ``stream`` (standard error if absent).
 
     Lines of libraries that use the standard library's ``logging`` come out in the same form, so
-    that whoever collects the logs needs one parser.
+    that whoever collects the logs needs one parser; only warnings and worse, for what they do when
+    all is well is their own affair.
     """
     out = sys.stderr if stream is None else stream
     shared: list[structlog.typing.Processor] = [
@@ -53,7 +54,7 @@ def configure_logs(level: str = "info", *, stream: TextIO | None = None) -> None
     )
     root = logging.getLogger()
     root.handlers[:] = [handler]
-    root.setLevel(_LEVELS[level])
+    root.setLevel(max(_LEVELS[level], logging.WARNING))
 
 
 @contextmanager

@@ -65,7 +65,7 @@ def test_lines_of_libraries_come_in_the_same_form(log: io.StringIO) -> None:
 def test_lines_below_the_level_are_left_out(log: io.StringIO) -> None:
     """Otherwise the level would be a decoration."""
     structlog.get_logger().debug("detail")
-    logging.getLogger("some.library").debug("detail")
+    logging.getLogger("some.library").info("all is well")
 
     assert log.getvalue() == ""
 
