@@ -71,7 +71,7 @@ class Work:
     ) -> "IntakeReport":
         """Check a network in a child that is started for it."""
         from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
-        from service.network.intake import IntakeReport  # noqa: PLC0415 - see the module
+        from service.engine.tasks import read_report  # noqa: PLC0415 - see the module
 
         task = {
             "spool": str(spool),
@@ -87,7 +87,7 @@ class Work:
             seconds=self._settings.intake_seconds_max,
             memory_bytes=self._settings.intake_memory_bytes_max,
         )
-        return IntakeReport.from_document(answer)
+        return read_report(answer, folder)
 
     def plan(
         self, source: Path, target: Path, *, options: "Options", on_progress: OnProgress

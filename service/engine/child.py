@@ -43,7 +43,8 @@ def intake_work() -> Work:
             content_encoding=task["content_encoding"],
             limits=Limits(**task["limits"]),
         )
-        return report.to_document()
+        # The summary lists every row set aside: too long for a message, and on disk already.
+        return {**report.to_document(), "summary": None}
 
     return work
 
@@ -144,12 +145,14 @@ def main(kinds: Mapping[str, Callable[[], Work]] = KINDS) -> None:
     kind, descriptor, parent = sys.argv[1], int(sys.argv[2]), int(sys.argv[3])
     die_with_parent(parent)
     offer_as_victim()
-    keep_private()
     # Solvers print to standard output, which therefore must not be where answers go.
     os.dup2(2, 1)
     # The supervisor decides when a child ends; Ctrl-C in the terminal is meant for it alone.
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    serve(Channel(socket.socket(fileno=descriptor)), kinds[kind]())
+    work = kinds[kind]()
+    # Only now, so that compiled modules that Python stores are for every user of the program.
+    keep_private()
+    serve(Channel(socket.socket(fileno=descriptor)), work)
 
 
 if __name__ == "__main__":

@@ -50,7 +50,6 @@ def child_environment() -> dict[str, str]:
         "PYTHONPATH": str(Path(service.__path__[0]).parent),
         "PYTHONUTF8": "1",
         "PYTHONUNBUFFERED": "1",
-        "PYTHONDONTWRITEBYTECODE": "1",
         "OMP_NUM_THREADS": "1",
         "OPENBLAS_NUM_THREADS": "1",
     }

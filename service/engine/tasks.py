@@ -6,9 +6,11 @@ from collections.abc import Collection, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import orjson
 import structlog
 
 from service.engine.children import Nursery
+from service.network.faults import Status
 from service.network.options import Options
 from service.runs.faults import ChildCrashed, ChildTimeout
 from service.runs.run import Claim, Token
@@ -51,8 +53,6 @@ class IntakeChildren:
         content_encoding: str | None,
     ) -> "IntakeReport":
         """Check ``spool``; leave ``received``, ``network.zip``, ``intake.json`` in ``folder``."""
-        from service.network.intake import IntakeReport  # noqa: PLC0415 - loads when first needed
-
         task = {
             "spool": str(spool),
             "folder": str(folder),
@@ -68,7 +68,7 @@ class IntakeChildren:
         received = folder / "received"
         size = received.stat().st_size if received.exists() else spool.stat().st_size
         self._nursery.give_back(child, input_bytes=size)
-        return IntakeReport.from_document(answer)
+        return read_report(answer, folder)
 
     def close(self) -> None:
         """End every check that is under way and every child."""
@@ -146,13 +146,23 @@ class PlanningChildren:
         self._nursery.close()
 
 
+def read_report(answer: Mapping[str, object], folder: Path) -> "IntakeReport":
+    """Return the report that an intake child answered, with the summary that it left on disk."""
+    from service.network.intake import IntakeReport  # noqa: PLC0415 - loads when first needed
+
+    summary = None
+    if answer["status"] == Status.ACCEPTED:
+        summary = orjson.loads((folder / "intake.json").read_bytes())
+    return IntakeReport.from_document({**answer, "summary": summary})
+
+
 def read_outcome(answer: Mapping[str, object]) -> "Outcome":
     """Return the outcome that a planning child answered; raise ``ChildCrashed`` if it is none."""
     from service.planning.outcome import Outcome  # noqa: PLC0415 - loads when first needed
 
     match answer:
         case {
-            "state": str(state),
+            "state": "planned" | "no_plan" | "failed" as state,
             "reason": str() | None as reason,
             "detail": str() | None as detail,
             "seconds": dict(seconds),

@@ -59,7 +59,6 @@ def test_child_knows_no_secrets(child: Child, monkeypatch: pytest.MonkeyPatch) -
         "PYTHONPATH",
         "PYTHONUTF8",
         "PYTHONUNBUFFERED",
-        "PYTHONDONTWRITEBYTECODE",
         "OMP_NUM_THREADS",
         "OPENBLAS_NUM_THREADS",
         "LC_CTYPE",  # set by Python itself when the locale is C

@@ -12,11 +12,11 @@ from pathlib import Path
 import orjson
 from fastapi import FastAPI
 from fastapi.testclient import TestClient
-from service.network.intake import IntakeReport
 
 from service.doors.http.app import create_app
 from service.doors.http.server import http_server, listen
 from service.network.faults import Fault, Status
+from service.network.intake import IntakeReport
 from service.network.options import Options
 from service.runs.faults import ArtefactMissing, RunUnknown
 from service.runs.ports import Application
