@@ -28,25 +28,25 @@ _YARD_COUNT = 40
 _YARD_HEADS = ("Alv", "Brun", "Corm", "Drosk", "Esk", "Furl", "Gann", "Hov")
 _YARD_TAILS = ("uvel", "ombra", "iskar", "athule", "equor")
 
-_BAG, _LOOSE, _GRIT, _TABLETS = "ROAD-25", "ROAD-LOOSE", "GRIT-10", "SOFT-15"
+_BAG, _SACK, _GRIT, _TABLETS = "ROAD-25", "ROAD-SACK", "GRIT-10", "SOFT-15"
 
 # Stock: depot, item, quantity, unit cost, lot. The works dig cheaply, the stores buy in.
 _STOCK: Sequence[tuple[str, str, str, str, str | None]] = (
     ("DEP-OSKMERE", _BAG, "6200", "1.85", "OSK-0126"),
     ("DEP-OSKMERE", _BAG, "2400", "1.85", "OSK-0131"),
-    ("DEP-OSKMERE", _LOOSE, "640.5", "31.4", None),
+    ("DEP-OSKMERE", _SACK, "640.5", "31.4", None),
     ("DEP-OSKMERE", _GRIT, "5200", "1.1", None),
     ("DEP-TARNUVIK", _BAG, "4100", "2.05", None),
-    ("DEP-TARNUVIK", _LOOSE, "300", "34.9", None),
+    ("DEP-TARNUVIK", _SACK, "300", "34.9", None),
     ("DEP-TARNUVIK", _TABLETS, "3900", "3.2", None),
     ("DEP-VELQUAR", _BAG, "7300", "1.78", "VEL-0202"),
-    ("DEP-VELQUAR", _LOOSE, "820", "29.75", None),
+    ("DEP-VELQUAR", _SACK, "820", "29.75", None),
     ("DEP-VELQUAR", _GRIT, "2600", "1.04", None),
     ("DEP-HESTRUL", _BAG, "2900", "2.1", None),
     ("DEP-HESTRUL", _GRIT, "3300", "1.22", None),
     ("DEP-HESTRUL", _TABLETS, "2500", "3.35", None),
     ("DEP-BRANDOVE", _BAG, "3400", "2.02", None),
-    ("DEP-BRANDOVE", _LOOSE, "410", "33.2", None),
+    ("DEP-BRANDOVE", _SACK, "410", "33.2", None),
     ("DEP-BRANDOVE", _TABLETS, "1800", "3.3", None),
 )
 
@@ -105,12 +105,13 @@ def _items() -> list[dict[str, object]]:
             "packs": [{"unit": "pallet", "contains": "40"}],
         },
         {
-            "id": _LOOSE,
-            "name": "Road salt, loose",
+            "id": _SACK,
+            "name": "Road salt, sacks of half a tonne",
             "unit": "tonne",
             "step": "0.5",
-            "weight_kg": "1000",
+            "weight_kg": "1004",
             "volume_m3": "0.82",
+            "packs": [{"unit": "pallet", "contains": "1"}],
         },
         {
             "id": _GRIT,
@@ -150,10 +151,10 @@ def _sites(yards: Mapping[str, tuple[str, int, int]]) -> list[dict[str, object]]
     """Return all places with what it costs to pass goods through them."""
     sites: list[dict[str, object]] = []
     for depot, (name, east, north) in _DEPOTS.items():
-        handling = {_BAG: "0.06", _LOOSE: "1.15", _GRIT: "0.04", _TABLETS: "0.05"}
+        handling = {_BAG: "0.06", _SACK: "1.15", _GRIT: "0.04", _TABLETS: "0.05"}
         sites.append(_site(depot, "warehouse", name, east, north) | {"handling_cost": handling})
     for dock, (name, east, north) in _CROSS_DOCKS.items():
-        handling = {_BAG: "0.03", _LOOSE: "0.6", _GRIT: "0.02", _TABLETS: "0.03"}
+        handling = {_BAG: "0.03", _SACK: "0.6", _GRIT: "0.02", _TABLETS: "0.03"}
         sites.append(_site(dock, "cross_dock", name, east, north) | {"handling_cost": handling})
     sites.extend(_site(yard, "ship_to", *place) for yard, place in yards.items())
     return sites
@@ -200,7 +201,7 @@ def _demand(
             # The motorway yards and the hospitals' suppliers come before towns and trade.
             priority = (1, 2, 2, 3, 3, 4, 5, 5)[numbers.below(8)]
             hour, minute = 7 + numbers.below(7), numbers.below(60)
-            items = [_BAG, _BAG, _LOOSE, _GRIT, _TABLETS][: 1 + numbers.below(5)]
+            items = [_BAG, _BAG, _SACK, _GRIT, _TABLETS][: 1 + numbers.below(5)]
             for line, item in enumerate(items, start=1):
                 row: dict[str, object] = {
                     "reference": f"{order_id}/{line}",
@@ -219,7 +220,7 @@ def _demand(
             "site": yard,
             "item": _TABLETS,
             "quantity": "96",
-            "worth_at_most": "4.2",
+            "worth_at_most": "3.6",
         }
         for yard in ("YARD-01", "YARD-20", "YARD-40")
     )
@@ -228,7 +229,7 @@ def _demand(
 
 def _wanted(numbers: _Numbers, item: str, line: int) -> dict[str, object]:
     """Return quantity and unit of one order line; some orders are written in pallets."""
-    if item == _LOOSE:
+    if item == _SACK:
         return {"quantity": f"{6 + numbers.below(30)}.{(0, 5)[numbers.below(2)]}"}
     if item == _BAG and line == 2:
         return {"quantity": str(1 + numbers.below(5)), "unit": "pallet"}
@@ -303,7 +304,7 @@ def _rules(yards: Mapping[str, tuple[str, int, int]]) -> list[dict[str, object]]
             "sites": {"ids": ["DOCK-MIDMOOR"]},
             "flow": "through",
             "measure": "unit",
-            "maximum": "2400",
+            "maximum": "1600",
             "per": "each",
             "items": {"ids": [_BAG]},
         },

@@ -22,8 +22,8 @@ def grouped(value: str | int | Fraction, *, digits: int = 3) -> str:
     return f"{mark}{sign}{whole}{'.' if decimals else ''}{decimals}"
 
 
-def money(value: str | Fraction, digits: int) -> str:
-    """Return an amount in groups of three, always with ``digits`` decimals."""
+def to_digits(value: str | Fraction, digits: int) -> str:
+    """Return a number in groups of three, always with ``digits`` decimals, such as money."""
     rounded = _rounded(Fraction(value), digits)
     whole, _, decimals = _plain(abs(rounded), digits).partition(".")
     whole = f"{int(whole):,}".replace(",", " ")

@@ -13,9 +13,9 @@ from service.doors.command_line.backing import OnProgress
 _NEXT: Mapping[str, str] = {
     "read": "building the model",
     "compiled": "solving",
-    "solved": "proving",
-    "proved": "writing",
-    "written": "done",
+    "solved": "writing",
+    "written": "proving",
+    "proved": "done",
 }
 
 

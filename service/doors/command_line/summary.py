@@ -16,9 +16,9 @@ from service.doors.command_line.layout import (
     clipped,
     count_of,
     grouped,
-    money,
     percent,
     table,
+    to_digits,
 )
 
 # The plan document as parsed JSON: the one place where Any is what it is.
@@ -134,11 +134,11 @@ def _cost_sentence(plan: Document) -> str:
     """Return what the plan costs, part by part."""
     digits = _money_digits(plan)
     parts = [
-        f"{name} {money(amount, digits)}"
+        f"{name} {to_digits(amount, digits)}"
         for name, amount in plan["cost_parts"].items()
         if Fraction(amount) != 0
     ]
-    total = f"It costs {money(plan['total_cost_rounded'], digits)} {plan['currency']}"
+    total = f"It costs {to_digits(plan['total_cost_rounded'], digits)} {plan['currency']}"
     return f"{total}: {', '.join(parts)}." if len(parts) > 1 else f"{total}."
 
 
@@ -154,7 +154,7 @@ def _proof_sentence(plan: Document) -> str:
         return "Proved: no plan serves the same for less money."
     return (
         f"Not proved to be the best: no plan costs less than"
-        f" {money(certificate['lower_bound'], _money_digits(plan))} {plan['currency']}."
+        f" {to_digits(certificate['lower_bound'], _money_digits(plan))} {plan['currency']}."
     )
 
 
@@ -232,13 +232,13 @@ def _what_leaves(plan: Document) -> list[str]:
         (
             site,
             grouped(number),
-            "unknown" if pallets is None else grouped(pallets, digits=1),
-            "unknown" if weight is None else grouped(weight, digits=0),
-            "unknown" if cost is None else money(cost, digits),
+            "unknown" if pallets is None else to_digits(pallets, 1),
+            "unknown" if weight is None else to_digits(weight / 1000, 1),
+            "unknown" if cost is None else to_digits(cost, digits),
         )
         for _, site, number, pallets, weight, cost in sites[:SITES_SHOWN]
     ]
-    header = ("from", "consignments", "pallets", "kg", f"transport {plan['currency']}")
+    header = ("from", "consignments", "pallets", "tonnes", f"transport {plan['currency']}")
     more = len(sites) - len(rows)
     return [
         "",

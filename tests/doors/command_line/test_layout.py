@@ -4,7 +4,7 @@ from fractions import Fraction
 
 import pytest
 
-from service.doors.command_line.layout import clipped, count_of, grouped, money, percent, table
+from service.doors.command_line.layout import clipped, count_of, grouped, percent, table, to_digits
 
 
 @pytest.mark.parametrize(
@@ -42,7 +42,7 @@ def test_money_has_the_decimals_of_its_currency_and_rounds_half_away_from_zero(
     value: str, digits: int, text: str
 ) -> None:
     """Totals on paper must look alike, in yen as in euros."""
-    assert money(value, digits) == text
+    assert to_digits(value, digits) == text
 
 
 def test_almost_all_is_not_a_hundred_percent() -> None:

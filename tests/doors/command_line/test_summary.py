@@ -94,8 +94,8 @@ def test_a_plan_without_a_shortage_says_so_in_one_sentence() -> None:
         "Proved: no plan serves the same for less money.",
         "",
         "WHAT LEAVES",
-        "  from   consignments  pallets      kg  transport EUR",
-        "  NORTH             1       22  22 176         189.20",
+        "  from   consignments  pallets  tonnes  transport EUR",
+        "  NORTH             1     22.0    22.2         189.20",
         "",
         f"EVIDENCE   network {DIGEST}",
     ]
