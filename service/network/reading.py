@@ -24,7 +24,7 @@ from service.network.rule_checks import check_rules
 from service.network.rule_reading import read_rules
 from service.network.stock_age import check_stock_age
 from service.network.table_fields import LISTED_FIELDS, TABLE_FIELDS
-from service.network.table_forms import Sheet, sheet_of
+from service.network.table_forms import Sheet, refuse_field, sheet_of
 from service.network.tables import ReadTables, read_demand, read_lanes, read_supply
 from service.network.things import read_things
 
@@ -99,7 +99,12 @@ def read_network(document: object, options: Options) -> Reading:
 
 def _read_head(document: Mapping[str, object], faults: FaultList) -> Head | None:
     """Read what a network says of itself, and see that no part is missing."""
-    head = {name: value for name, value in document.items() if name not in PARTS}
+    head: dict[str, object] = {}
+    for name, value in document.items():
+        if name in Head.model_fields:
+            head[name] = value
+        elif name not in PARTS:
+            refuse_field("network", name, pointer(name), faults)
     for name in LISTS:
         if name not in document:
             detail = f"A network needs {name}; send an empty array if there are none."

@@ -53,6 +53,10 @@ class Spelled:
     detail: str = ""
 
 
+# Names a thing that is itself refused: no fault of this value, but nothing to plan with either.
+_UNSURE_WORD: Final = Spelled(None)
+
+
 class TableReader:
     """Reads the fields of one table, one after the other."""
 
@@ -171,6 +175,8 @@ class TableReader:
             if known is not None and not all(element in known for element in elements):
                 strange = next(element for element in elements if element not in known)
                 return Spelled(None, "unknown_site", f"There is no site of the id '{strange}'.")
+            if known is not None and any(known[element] == UNSURE for element in elements):
+                return _UNSURE_WORD
             return Spelled(canonical_json(sorted(elements)).decode())
 
         return self._structures(name, spell)
@@ -197,6 +203,8 @@ class TableReader:
             if word.text is None:
                 wrong.setdefault((word.code, word.detail), []).append(place)
             texts.append(word.text or None)
+        unsure = wrong.pop((_UNSURE_WORD.code, _UNSURE_WORD.detail), [])
+        self._faults.bad[column.rows_with(np.array(unsure, dtype=np.int64), self.rows)] = True
         for (code, detail), places in wrong.items():
             self._faults.at_values(name, places, code, detail)
         return _texts_column(column, texts, {text: text for text in texts if text is not None})
