@@ -23,14 +23,7 @@ BODIES_MAX: Final = 32
 
 def create_app(application: Application, settings: Settings) -> FastAPI:
     """Return the ASGI application that offers ``application`` over HTTP."""
-    app = FastAPI(
-        title="Lanewright",
-        # All three are our own: FastAPI's pages load from other hosts.
-        docs_url=None,
-        redoc_url=None,
-        openapi_url=None,
-        redirect_slashes=False,
-    )
+    app = described_app()
     spool = Spool(settings.data / "spool", wire_bytes_max=settings.body_wire_bytes_max)
     spool.prepare()
     app.state.door = Door(
@@ -40,16 +33,29 @@ def create_app(application: Application, settings: Settings) -> FastAPI:
         bodies_max=BODIES_MAX,
         bodies=[],
     )
+    # The last one added is the outermost.
+    app.add_middleware(LocalDoor)
+    app.add_middleware(HeadRequests)
+    app.add_middleware(RequestScope)
+    return app
+
+
+def described_app() -> FastAPI:
+    """Return the routes and their description, with nothing behind them yet."""
+    app = FastAPI(
+        title="Lanewright",
+        # All three are our own: FastAPI's pages load from other hosts.
+        docs_url=None,
+        redoc_url=None,
+        openapi_url=None,
+        redirect_slashes=False,
+    )
     app.state.network_schema = network_schema()
     app.include_router(health.router)
     app.include_router(runs.router)
     app.include_router(artefacts.router)
     documentation.install(app)
     problems.install(app)
-    # The last one added is the outermost.
-    app.add_middleware(LocalDoor)
-    app.add_middleware(HeadRequests)
-    app.add_middleware(RequestScope)
 
     def described() -> dict[str, Any]:
         if app.openapi_schema is None:
