@@ -1,7 +1,11 @@
 """How numbers and tables look to a person on the command line."""
 
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from fractions import Fraction
+from typing import Any
+
+# The plan document as parsed JSON: the one place where Any is what it is.
+Document = Mapping[str, Any]
 
 WIDTH = 100
 _CELL_MAX = 40
@@ -28,6 +32,11 @@ def to_digits(value: str | Fraction, digits: int) -> str:
     whole, _, decimals = _plain(abs(rounded), digits).partition(".")
     whole = f"{int(whole):,}".replace(",", " ")
     return f"{'-' if rounded < 0 else ''}{whole}{'.' if decimals else ''}{decimals}"
+
+
+def money_digits(plan: Document) -> int:
+    """Return how many decimals the currency has, which the rounded total shows."""
+    return len(str(plan["total_cost_rounded"]).partition(".")[2])
 
 
 def percent(part: Fraction, whole: Fraction) -> str:

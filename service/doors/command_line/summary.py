@@ -5,42 +5,29 @@ by colour, so paper, a log file and a screen reader get the same. Parts without 
 """
 
 import textwrap
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from datetime import datetime
 from fractions import Fraction
-from itertools import groupby
-from typing import Any
 
 from service.doors.command_line.layout import (
     WIDTH,
+    Document,
     clipped,
     count_of,
     grouped,
+    money_digits,
     percent,
-    table,
     to_digits,
 )
+from service.doors.command_line.summary_leaving import what_leaves
+from service.doors.command_line.summary_shortages import who_to_call
 
-# The plan document as parsed JSON: the one place where Any is what it is.
-Document = Mapping[str, Any]
+# With seven shortages and seven sites beside these the whole stays near thirty lines.
 
-# With five parts at these sizes the whole stays near thirty lines.
-SHORTAGES_SHOWN = 7
-SITES_SHOWN = 7
 RULES_SHOWN = 3
 DOUBTS_SHOWN = 3
 ITEMS_NAMED = 3
 CAUSES_SHOWN = 10
-
-_BECAUSE = {
-    "no_lane": "no lane leads there",
-    "closed": "only closed lanes lead there",
-    "no_stock": "not enough stock",
-    "lane_full": "the lanes there are full",
-    "site_full": "a site on the way is full",
-    "rule": "a rule stands in the way",
-    "not_worth_it": "costs more than it is worth",
-}
 
 
 def summary_lines(plan: Document, *, run_number: str | None = None) -> list[str]:
@@ -53,8 +40,8 @@ def summary_lines(plan: Document, *, run_number: str | None = None) -> list[str]
         lines += _no_plan(plan)
     else:
         lines += _sentences(plan)
-        lines += _who_to_call(plan)
-        lines += _what_leaves(plan)
+        lines += who_to_call(plan)
+        lines += what_leaves(plan)
     lines += _rules(plan)
     lines += _doubts(plan)
     lines += _evidence(plan)
@@ -132,14 +119,14 @@ def _fraction_short(entry: Document) -> Fraction:
 
 def _cost_sentence(plan: Document) -> str:
     """Return what the plan costs, part by part."""
-    digits = _money_digits(plan)
+    digits = money_digits(plan)
     parts = [
         f"{name} {to_digits(amount, digits)}"
         for name, amount in plan["cost_parts"].items()
         if Fraction(amount) != 0
     ]
     total = f"It costs {to_digits(plan['total_cost_rounded'], digits)} {plan['currency']}"
-    return f"{total}: {', '.join(parts)}." if len(parts) > 1 else f"{total}."
+    return f"{total}: {', '.join(parts)}." if parts else f"{total}."
 
 
 def _proof_sentence(plan: Document) -> str:
@@ -154,106 +141,8 @@ def _proof_sentence(plan: Document) -> str:
         return "Proved: no plan serves the same for less money."
     return (
         f"Not proved to be the best: no plan costs less than"
-        f" {to_digits(certificate['lower_bound'], _money_digits(plan))} {plan['currency']}."
+        f" {to_digits(certificate['lower_bound'], money_digits(plan))} {plan['currency']}."
     )
-
-
-def _who_to_call(plan: Document) -> list[str]:
-    """Return the shortages, most urgent and largest first."""
-    shortages = sorted(
-        plan["shortages"],
-        key=lambda row: (row["priority"] or 10, -Fraction(row["quantity"]), row["reference"] or ""),
-    )
-    if not shortages:
-        return []
-    wanted = {row["reference"]: row["quantity"] for row in plan["order_lines"]}
-    rows = [
-        (
-            grouped(row["quantity"]),
-            grouped(wanted[row["reference"]]) if row["reference"] is not None else "",
-            row["item"],
-            row["site"],
-            row["reference"] if row["reference"] is not None else "stock to keep",
-            str(row["priority"] or "-"),
-            _because(row),
-        )
-        for row in shortages[:SHORTAGES_SHOWN]
-    ]
-    header = ("short", "of", "item", "ship-to", "order line", "pr", "because")
-    more = len(shortages) - len(rows)
-    return [
-        "",
-        f"WHO TO CALL   {count_of(len(shortages), 'shortage')}{_served_priorities(plan)}",
-        *table(header, rows, right=(0, 1, 5)),
-        *([f"  and {grouped(more)} more: --csv shortages lists all"] if more else []),
-    ]
-
-
-def _served_priorities(plan: Document) -> str:
-    """Return which of the first priorities are served in full, or nothing."""
-    present = sorted({row["priority"] for row in plan["order_lines"] if row["priority"]})
-    short = {row["priority"] for row in plan["shortages"] if row["priority"]}
-    complete = [
-        str(priority)
-        for priority in present
-        if priority < min(short, default=10)  # the first that is short ends the list
-    ]
-    if not complete:
-        return ""
-    if len(complete) == 1:
-        return f"; priority {complete[0]} is complete"
-    return f"; priorities {', '.join(complete[:-1])} and {complete[-1]} are complete"
-
-
-def _because(row: Document) -> str:
-    """Return why a shortage is there, in words."""
-    by = row.get("outranked_by")
-    if row["reason"] == "outranked" and by is not None:
-        rank = f", pr {by['priority']}" if by["priority"] else ""
-        lines = count_of(by["lines"], "line")
-        return f"outranked by {lines}, most by {by['reference']}{rank}"
-    return _BECAUSE.get(row["reason"], str(row["reason"]).replace("_", " "))
-
-
-def _what_leaves(plan: Document) -> list[str]:
-    """Return what leaves each site, the heaviest first."""
-    consignments = sorted(plan["consignments"], key=lambda row: str(row["origin"]))
-    sites = []
-    for site, group in groupby(consignments, key=lambda row: str(row["origin"])):
-        own = list(group)
-        pallets, weight = _sum(own, "pallets"), _sum(own, "weight_kg")
-        cost = _sum(own, "cost")
-        sites.append((weight or Fraction(0), site, len(own), pallets, weight, cost))
-    if not sites:
-        return []
-    sites.sort(key=lambda entry: (-entry[0], entry[1]))
-    digits = _money_digits(plan)
-    rows = [
-        (
-            site,
-            grouped(number),
-            "unknown" if pallets is None else to_digits(pallets, 1),
-            "unknown" if weight is None else to_digits(weight / 1000, 1),
-            "unknown" if cost is None else to_digits(cost, digits),
-        )
-        for _, site, number, pallets, weight, cost in sites[:SITES_SHOWN]
-    ]
-    header = ("from", "consignments", "pallets", "tonnes", f"transport {plan['currency']}")
-    more = len(sites) - len(rows)
-    return [
-        "",
-        "WHAT LEAVES",
-        *table(header, rows, right=(1, 2, 3, 4)),
-        *([f"  and {count_of(more, 'more site')}: --csv consignments lists all"] if more else []),
-    ]
-
-
-def _sum(rows: Sequence[Document], column: str) -> Fraction | None:
-    """Return the exact sum of a column, or None where a row does not know its value."""
-    values = [row[column] for row in rows]
-    if any(value in {None, "unknown"} for value in values):
-        return None
-    return sum((Fraction(value) for value in values), Fraction(0))
 
 
 def _rules(plan: Document) -> list[str]:
@@ -312,11 +201,6 @@ def _no_plan(plan: Document) -> list[str]:
         )
     more = len(items) - CAUSES_SHOWN
     return lines + ([f"  and {count_of(more, 'more item')}: --json lists all"] if more > 0 else [])
-
-
-def _money_digits(plan: Document) -> int:
-    """Return how many decimals the currency has, which the rounded total shows."""
-    return len(str(plan["total_cost_rounded"]).partition(".")[2])
 
 
 def _paragraph(text: str) -> list[str]:

@@ -158,10 +158,20 @@ def test_an_unknown_weight_is_not_nothing() -> None:
     rows = [
         consignment("NORTH", pallets="22", weight_kg="unknown", cost="5"),
         consignment("NORTH", pallets="unknown", weight_kg="7", cost="5"),
+        consignment("SOUTH", pallets="1", weight_kg="1", cost="5"),
     ]
     lines = summary_lines(a_plan(consignments=rows))
 
     assert "  NORTH             2  unknown  unknown          10.00" in lines
+
+
+def test_a_total_that_nobody_knows_has_no_column() -> None:
+    """Items without weights are common; a column of one word is noise."""
+    rows = [consignment("NORTH", pallets="unknown", weight_kg="unknown", cost="5")]
+
+    lines = summary_lines(a_plan(consignments=rows))
+
+    assert "  from   consignments  transport EUR" in lines
 
 
 def test_rules_doubts_and_lines_set_aside_are_told() -> None:
