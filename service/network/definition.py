@@ -25,7 +25,7 @@ from service.network import kinds
 from service.network.faults import FaultList, pointer, value_text
 from service.network.kinds import Kind, RefusedError
 from service.network.moments import Instant
-from service.network.table_forms import refuse_field
+from service.network.sheets import refuse_field
 
 
 def _read(kind: Kind, *, optional: bool) -> Callable[[object], Any]:

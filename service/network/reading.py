@@ -22,9 +22,10 @@ from service.network.reach import LaneUse
 from service.network.row_checks import check_demand, check_lanes, check_supply
 from service.network.rule_checks import check_rules
 from service.network.rule_reading import read_rules
+from service.network.sheets import Sheet, refuse_field
 from service.network.stock_age import check_stock_age
 from service.network.table_fields import LISTED_FIELDS, TABLE_FIELDS
-from service.network.table_forms import Sheet, refuse_field, sheet_of
+from service.network.table_forms import sheet_of
 from service.network.tables import ReadTables, read_demand, read_lanes, read_supply
 from service.network.things import read_things
 

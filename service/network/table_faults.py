@@ -11,7 +11,7 @@ import numpy as np
 
 from service.network.columns import BoolArray, IntArray
 from service.network.faults import FAULTS_REPORTED_MAX, Fault, FaultList, pointer, value_text
-from service.network.table_forms import Column, Sheet
+from service.network.sheets import Column, Sheet
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -20,8 +20,8 @@ from service.network.quantities import (
     read_decimals,
     too_many_decimals,
 )
+from service.network.sheets import Column
 from service.network.table_faults import TableFaults
-from service.network.table_forms import Column
 from service.network.wording import (
     EXTRA_ADVICE,
     ID_ADVICE,

@@ -22,9 +22,9 @@ from service.network.columns import (
 from service.network.moments import read_date, read_instant
 from service.network.not_yet import SHARED, refusal
 from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
+from service.network.sheets import Column, Sheet
 from service.network.table_faults import TableFaults
 from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
-from service.network.table_forms import Column, Sheet
 from service.network.table_reading import Spelled, TableReader, as_ids, no_decimals, without
 from service.network.table_rows import with_measure, with_units
 from service.network.things import Things
