@@ -13,7 +13,8 @@ from typing import Any
 
 import orjson
 from service.network.intake import IntakeReport, Limits, intake
-from service.planning.task import Outcome, plan
+from service.planning.outcome import Outcome
+from service.planning.task import plan
 from service.proof.check import Violation, check
 
 from service.network.canonical import read_network
@@ -130,7 +131,7 @@ def plan_bytes(body: bytes, **options: str) -> Planned:
         outcome=outcome,
         violations=violations,
         plan_bytes=written,
-        network_digest=report.summary["network_digest"],
+        network_digest=str(report.summary["network_digest"]),
         network=network,
         options=effective,
     )

@@ -112,12 +112,8 @@ class ItemProblem:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ItemAnswer:
-    """What one item costs at least, in money, and is short by priority, in item units.
-
-    ``only_plan`` says whether no other plan is as good, where the judge was asked.
-    """
+    """What one item costs at least, in money, and is short by priority, in item units."""
 
     item: str
     shortages: Mapping[int, Fraction]
     cost: Fraction
-    only_plan: bool | None = None

@@ -96,9 +96,29 @@ def _row(plus: Iterable[int], minus: Iterable[int]) -> dict[int, int]:
     return row
 
 
-def solve_programs(problem: ItemProblem, *, shortages: bool, uniqueness: bool) -> ItemAnswer | None:
+def solve_programs(problem: ItemProblem, *, shortages: bool) -> ItemAnswer | None:
     """Return the best answer, priority by priority and then in money, or None without a plan."""
+    return _solve(problem, WrittenProblem(problem, shortages=shortages))
+
+
+def has_one_best_plan(problem: ItemProblem, *, shortages: bool) -> bool:
+    """Return whether there is a best plan and all best plans ship the same on every lane.
+
+    Best plans form a polytope, and what they ship on the lanes has whole corners. Where random
+    whole weights have the same least and greatest value on it, it is one point but for a chance of
+    one in ten thousand, so that two directions leave one in a hundred million.
+    """
     written = WrittenProblem(problem, shortages=shortages)
+    answer = _solve(problem, written)
+    if answer is None:
+        return False
+    written.program.limit_cost(int(answer.cost * written.scale))
+    random = Random(problem.item)  # noqa: S311 - a direction, no secret; the same for one item
+    return all(_is_flat(written, random) for _ in range(2))
+
+
+def _solve(problem: ItemProblem, written: "WrittenProblem") -> ItemAnswer | None:
+    """Return the best answer, leaving the program with every priority capped at its best."""
     program = written.program
     achieved: dict[int, Fraction] = {}
     for priority in problem.priorities():
@@ -111,12 +131,7 @@ def solve_programs(problem: ItemProblem, *, shortages: bool, uniqueness: bool) -
     cost = program.whole_optimum(program.cost)
     if cost is None:
         return None
-    return ItemAnswer(
-        item=problem.item,
-        shortages=achieved,
-        cost=Fraction(cost, written.scale),
-        only_plan=_is_only_plan(written, cost) if uniqueness else None,
-    )
+    return ItemAnswer(item=problem.item, shortages=achieved, cost=Fraction(cost, written.scale))
 
 
 def _indicator(columns: Iterable[int], length: int) -> list[int]:
@@ -227,23 +242,10 @@ class WrittenProblem:
             self.program.balance(filled, (), value=line.steps)
 
 
-def _is_only_plan(written: WrittenProblem, cost: int) -> bool:
-    """Return whether all best plans have the same flow on every lane, by random looks.
-
-    The best plans form a polytope, and what they ship on the lanes has whole corners. Where random
-    whole weights have the same least and greatest value on it, it is one point but for a chance of
-    one in a thousand, so that three directions leave one in a thousand million.
-    """
-    program = written.program
-    program.limit_cost(cost)
-    random = Random(cost)  # noqa: S311 - a direction, no secret; the same for the same problem
-    return all(_is_flat(written, random) for _ in range(3))
-
-
 def _is_flat(written: WrittenProblem, random: Random) -> bool:
     weights = [0.0] * len(written.program.cost)
     for columns in written.moved:
-        weight = float(random.randrange(1, 1000))
+        weight = float(random.randrange(1, 10_000))
         for column in columns.values():
             weights[column] = weight
     least = written.program.optimum(weights)

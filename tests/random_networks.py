@@ -61,7 +61,7 @@ class _Draft(Witness):
                     [Fraction(1), Fraction(1), Fraction(3, 2), Fraction(2)]
                 )
                 lane["capacity"] = self.quantity_text(Fraction(ceil(room * 1000), 1000))
-            if min(walked) > 0 and self.often(0.3):
+            if min(walked) > 0 and self.often(0.4):
                 self._force(lane, able, walked, measure)
             if "item" not in lane and ("capacity" in lane or "must_ship" in lane):
                 lane["per"] = "item"
@@ -78,7 +78,7 @@ class _Draft(Witness):
         text = plain_text(least, decimals=3)
         if text is None:
             return
-        fixed = "id" in lane and len(able) == 1 and self.often(0.3)
+        fixed = "id" in lane and len(able) == 1 and self.often(0.6)
         if fixed and self.lanes.index(lane) not in self.closed_lanes:
             self.rules.append(
                 {"rule": "fixed_quantity", "lanes": {"ids": [lane["id"]]}, "quantity": text}
@@ -241,13 +241,13 @@ def _keep_to_what_is_built(document: Document, options: dict[str, str]) -> Docum
                 # Refused as "origins_behind_cross_dock": the line could not tell its goods apart.
                 rows[line.reference].pop("origins", None)
     for problem in read_items(document, options):
-        # A limit on all that passes or arrives where goods are kept apart needs a linear program.
+        # Where goods are kept apart a limit on all of them needs a linear program.
         document["rules"] = [
             rule
             for rule in document["rules"]
             if rule["rule"] != "throughput"
-            or rule["flow"] == "sent"
             or rule["items"] != {"ids": [problem.item]}
             or all(problem.is_joined(site) for site in rule["sites"]["ids"])
+            or (rule["flow"] == "sent" and not problem.cross_docks & {*rule["sites"]["ids"]})
         ]
     return document

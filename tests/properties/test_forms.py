@@ -130,6 +130,7 @@ def test_a_number_means_the_same_however_it_is_written(network: RandomNetwork, r
 
 def _written(text: str, rng: Random) -> str | int:
     """Return the same number in another of its forms."""
+    as_number = rng.random() < 0.5
     if "." not in text:
-        return rng.choice([text, int(text)])
-    return text + rng.choice(["", "0"] if len(text.partition(".")[2]) < 3 else [""])
+        return int(text) if as_number else text
+    return text + "0" if as_number and len(text.partition(".")[2]) < 3 else text

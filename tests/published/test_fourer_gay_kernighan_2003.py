@@ -10,7 +10,7 @@ from fractions import Fraction
 import pytest
 
 from tests.factories import Arc, cost_table, flow_network, plan_network, transportation_network
-from tests.oracles import by_linear_programs
+from tests.oracles import is_only_plan
 
 SUPPLY_TONS = {"GARY": 1400, "CLEV": 2600, "PITT": 2900}
 DEMAND_TONS = {
@@ -100,9 +100,7 @@ def test_packages_follow_the_published_plan() -> None:
 
     planned = plan_network(network, shortages="forbid")
 
-    answer = by_linear_programs(network, uniqueness=True, shortages="forbid")["GOODS"]
-    assert answer is not None
-    assert answer.only_plan
+    assert is_only_plan(network, shortages="forbid")
     assert planned.total_cost == PUBLISHED_PACKAGE_COST
     assert planned.gap == 0
     assert planned.moves() == PUBLISHED_PACKAGE_PLAN

@@ -41,11 +41,14 @@ def test_too_little_stock_has_no_plan_where_shortages_are_forbidden() -> None:
 
 
 def test_too_little_stock_is_short_by_exactly_what_is_missing() -> None:
-    """Where shortages are allowed the same network has a plan that lacks 100 crates."""
+    """Where shortages are allowed the same network has a plan that lacks 100 crates.
+
+    There is enough for any one bar alone, so that whoever is short came after others.
+    """
     network = transportation_network(TOO_LITTLE_CRATES, DEMAND_CRATES, COST_DOLLARS)
 
     planned = plan_network(network)
 
     assert planned.outcome.state == "planned"
     assert planned.short() == SHORT_CRATES
-    assert {row["reason"] for row in planned.plan["shortages"]} == {"no_stock"}
+    assert {row["reason"] for row in planned.plan["shortages"]} == {"outranked"}
