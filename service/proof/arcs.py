@@ -103,6 +103,8 @@ class ItemArcs:
 def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -> ItemArcs:
     """Return the formal network of ``item``; raise ``UnusableNetworkError`` if there is none."""
     rows = usable_lanes(network, item)
+    # Raises here, and not where costs are scaled, if a lane's measure says nothing of the item.
+    measures_on(network, item, rows)
     limits = rulings.lane_limits(network, item, rows)
     stock = stock_of(network, item)
     wanted = wanted_of(network, options, item)

@@ -6,7 +6,7 @@ The stand-alone verifier knows the same codes; a test compares the two lists.
 from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Final
+from typing import Final, Self
 
 CODES: Final[Mapping[str, str]] = {
     # The file.
@@ -82,6 +82,11 @@ class Findings:
         self._counts[code] += 1
         if self._counts[code] <= EXAMPLES_MAX:
             self._found.append(Violation(code=code, detail=detail, place=place))
+
+    def take(self, others: Self) -> None:
+        """Add what was found elsewhere."""
+        self._found += others._found
+        self._counts += others._counts
 
     def __bool__(self) -> bool:
         """Return whether anything was found."""

@@ -1,0 +1,2531 @@
+"""Check the evidence of a planning run with nothing but Python.
+
+    python3 verify.py evidence.zip
+
+Prints one line for each problem, then the verdict: intact (exit code 0), broken (1) or unreadable
+(2). Needs Python 3.9 or later and no other package. Nothing is taken from the file on trust: it is
+read as bytes, within bounds, and nothing in it is run.
+
+How to read this program, from top to bottom:
+
+1. the zip and its JSON, read strictly
+2. the network in normal form, and whether it is in normal form
+3. options, and the shapes of plan and certificate
+4. the history, a chain of hashes
+5. the formal network of one item: places, and arcs between them
+6. the proof: limits, balance, prices; or the cut that shows that there is no plan
+7. the tables of the plan, which must say the same as the proof
+
+Quantities and money are exact (whole numbers and fractions); there is no floating point.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+import hashlib
+import itertools
+import json
+import re
+import struct
+import sys
+import zlib
+from array import array
+from collections import defaultdict
+from fractions import Fraction
+from typing import Any
+
+# Sites, references and the like, in the order that is written where it is made.
+Key = tuple[Any, ...]
+# A value of JSON, or a column; what it is in truth is checked where it is read.
+Value = Any
+
+NOTHING_BEFORE = "sha-256:" + "0" * 64
+PROBLEMS_OF_A_KIND_MAX = 20
+
+
+class Bad(Exception):  # noqa: N818 - short, and read aloud: "bad, because"
+    """What is read is not what it should be; the text says why."""
+
+
+class Report:
+    """The problems found so far: code, sentence and place."""
+
+    def __init__(self) -> None:
+        """Start with none."""
+        self.problems: list[tuple[str, str, str]] = []
+        self.counts: dict[str, int] = defaultdict(int)
+
+    def add(self, code: str, detail: str, place: str = "") -> None:
+        """Note a problem, but no more than some of one kind."""
+        self.counts[code] += 1
+        if self.counts[code] <= PROBLEMS_OF_A_KIND_MAX:
+            self.problems.append((code, detail, place))
+
+
+# ------------------------------------------------------------------ 1. the zip and its JSON
+
+
+def sha256(data: bytes) -> str:
+    """Return a digest as it is written in all documents."""
+    return "sha-256:" + hashlib.sha256(data).hexdigest()
+
+
+def unzip(data: bytes) -> tuple[dict[str, bytes], list[str]]:
+    """Return the entries of an evidence zip, and the names of those with a wrong check sum.
+
+    The zips that count as evidence are of one rigid form: nothing compressed, entries sorted, one
+    time stamp, no gaps, no comments. So there is nothing to inflate, and no two ways to read one.
+    """
+    if len(data) >= 2**32:
+        raise Bad("too large for a zip of this form")
+    entries: dict[str, bytes] = {}
+    damaged, directory, at, last = [], b"", 0, b""
+    while data[at : at + 4] == b"PK\x03\x04":
+        if len(data) < at + 30:
+            raise Bad("an entry is cut off")
+        check_sum, size, _, length = struct.unpack_from("<IIIH", data, at + 14)
+        name = data[at + 30 : at + 30 + length]
+        same = struct.pack("<5H3I2H", 20, 0, 0, 0, 33, check_sum, size, size, length, 0)
+        start = at + 30 + length
+        content = data[start : start + size]
+        if data[at + 4 : at + 30] != same or len(content) < size or len(name) < length:
+            raise Bad("the header of an entry is of another form")
+        if name <= last or max(name) > 127:
+            raise Bad("the entries are not sorted and distinct")
+        if zlib.crc32(content) != check_sum:
+            damaged.append(name.decode())
+        entries[name.decode()] = content
+        directory += b"PK\x01\x02" + struct.pack("<H", 3 * 256 + 20) + same
+        directory += struct.pack("<3H2I", 0, 0, 0, 0o100644 << 16, at) + name
+        at, last = start + size, name
+    count = len(entries)
+    if count > 65535:
+        raise Bad("too many entries")
+    end = struct.pack("<4H2IH", 0, 0, count, count, len(directory), at, 0)
+    if data[at:] != directory + b"PK\x05\x06" + end:
+        raise Bad("the directory of the zip does not match its entries")
+    return entries, damaged
+
+
+def parse(data: bytes) -> Value:
+    """Return the value of JSON that is not nested deeply and says nothing twice."""
+    depth = 0
+    for mark in re.sub(rb'"[^"\\]*(?:\\.[^"\\]*)*"|[^\[\]{}"]+', b"", data, flags=re.DOTALL):
+        depth += (mark in b"[{") - (mark in b"]}")
+        if depth > 32:
+            raise Bad("nested too deeply")
+
+    def members(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
+        if len({key for key, _ in pairs}) < len(pairs):
+            raise Bad("a key occurs twice")
+        return dict(pairs)
+
+    def number(digits: str) -> int:
+        if len(digits) > 18:
+            raise Bad("a number is too long")
+        return int(digits)
+
+    def constant(name: str) -> None:
+        raise Bad(name + " is not JSON")
+
+    try:
+        value = json.loads(
+            data.decode("utf-8"),
+            object_pairs_hook=members,
+            parse_int=number,
+            parse_constant=constant,
+        )
+        if b"\\u" in data:
+            json.dumps(value, ensure_ascii=False).encode("utf-8")
+    except (ValueError, RecursionError) as error:
+        raise Bad(f"not JSON: {error}") from None
+    return value
+
+
+def canonical(value: Value) -> bytes:
+    """Return the bytes of RFC 8785 for values without fractions; Bad if there are none."""
+    if value is None or value is True or value is False:
+        return {None: b"null", True: b"true", False: b"false"}[value]
+    if isinstance(value, str):
+        return json.dumps(value, ensure_ascii=False).encode("utf-8")
+    if isinstance(value, int):
+        if abs(value) >= 2**53:
+            raise Bad("a whole number is too large")
+        return str(value).encode()
+    if isinstance(value, list):
+        return b"[" + b",".join(canonical(element) for element in value) + b"]"
+    if isinstance(value, dict):
+        ordered = sorted(value, key=lambda key: key.encode("utf-16-be"))
+        parts = (canonical(key) + b":" + canonical(value[key]) for key in ordered)
+        return b"{" + b",".join(parts) + b"}"
+    raise Bad("a fraction has no canonical form here")
+
+
+def parse_canonical(data: bytes) -> Value:
+    """Return the value of JSON that is spelled in the one canonical way."""
+    value = parse(data)
+    if canonical(value) != data:
+        raise Bad("not in canonical form")
+    return value
+
+
+def need(holds: object, why: str) -> None:
+    """Raise Bad with the reason unless something holds."""
+    if not holds:
+        raise Bad(why)
+
+
+def is_whole(value: object) -> bool:
+    """Return whether a value of JSON is a whole number."""
+    return isinstance(value, int) and not isinstance(value, bool)
+
+
+def rises(values: list[Any]) -> bool:
+    """Return whether each value is above the one before."""
+    return all(former < latter for former, latter in zip(values, values[1:]))  # noqa: B905, RUF007 - Python 3.9
+
+
+# ------------------------------------------------------------------ 2. the network
+
+DECIMAL = re.compile(r"-?(0|[1-9][0-9]{0,18})(\.[0-9]{0,5}[1-9])?")
+
+# Name, kind, and for positions what they count; "!" marks what every row must have.
+COLUMNS = {
+    "supply": (
+        "site!sites item!items quantity!decimal unit!texts unit_cost:decimal on_hand:decimal "
+        "reserved:decimal on_hold:decimal as_of:texts lot:texts best_before:texts "
+        "keep_quantity:decimal keep_priority:small extra:texts"
+    ),
+    "demand": (
+        "reference!text order:texts ordered_at:texts site!sites item!items quantity!decimal "
+        "unit!texts priority:small shortage_cost:decimal worth_at_most:decimal origins:texts "
+        "tags:texts extra:texts"
+    ),
+    "lanes": (
+        "id:text origin!sites destination!sites item:items unit_cost!decimal measure!texts "
+        "must_ship:decimal capacity:decimal per:texts carrier:texts tags:texts extra:texts"
+    ),
+}
+
+# UN/ECE Recommendation 20: each unit in the base unit of its dimension (kg, m3, m, m2, one).
+UNITS = {
+    "mass": (
+        "MGM 0.000001 GRM 0.001 HGM 0.1 KGM 1 DTN 100 TNE 1000 2U 1000 KTN 1000000 "
+        "ONZ 0.028349523125 LBR 0.45359237 STI 6.35029318 CWA 45.359237 CWI 50.80234544 "
+        "STN 907.18474 LTN 1016.0469088"
+    ),
+    "volume": (
+        "MMQ 0.000000001 CMQ 0.000001 MLT 0.000001 CLT 0.00001 DLT 0.0001 DMQ 0.001 LTR 0.001 "
+        "HLT 0.1 MTQ 1 INQ 0.000016387064 FTQ 0.028316846592 YDQ 0.764554857984 "
+        "GLL 0.003785411784 QTL 0.000946352946 PTL 0.000473176473 BLL 0.158987294928 "
+        "GLI 0.00454609 QTI 0.0011365225 PTI 0.00056826125"
+    ),
+    "length": "MMT 0.001 CMT 0.01 DMT 0.1 MTR 1 KTM 1000 INH 0.0254 FOT 0.3048 YRD 0.9144",
+    "area": (
+        "MMK 0.000001 CMK 0.0001 DMK 0.01 MTK 1 HAR 10000 KMK 1000000 INK 0.00064516 "
+        "FTK 0.09290304 YDK 0.83612736"
+    ),
+    "count": (
+        "C62 1 H87 1 EA 1 NAR 1 PR 2 DZN 12 SC 20 DPR 24 CEN 100 GRO 144 MIL 1000 T3 1000 GGR 1728"
+    ),
+}
+WORDS = (
+    "mg=MGM,g=GRM,gram=GRM,kg=KGM,kilogram=KGM,t=TNE,tonne=TNE,oz=ONZ,lb=LBR,pound=LBR,ml=MLT,"
+    "cl=CLT,dl=DLT,l=LTR,litre=LTR,hl=HLT,m3=MTQ,cubic metre=MTQ,mm=MMT,cm=CMT,m=MTR,metre=MTR,"
+    "km=KTM,kilometre=KTM,m2=MTK,square metre=MTK,piece=H87,each=EA,one=C62,pair=PR,dozen=DZN,"
+    "gross=GRO,hundred=CEN,thousand=MIL"
+)
+
+
+def standard_units() -> dict[str, tuple[str, Fraction]]:
+    """Return for each code and word the dimension and the amount in its base unit."""
+    units = {}
+    for dimension, text in UNITS.items():
+        parts = text.split()
+        for code, amount in zip(parts[::2], parts[1::2]):  # noqa: B905 - Python 3.9
+            units[code] = (dimension, Fraction(amount))
+    for pair in WORDS.split(","):
+        word, code = pair.split("=")
+        units[word] = units[code]
+    return units
+
+
+STANDARD_UNITS = standard_units()
+
+
+def decimal(text: Value) -> Fraction:
+    """Return the value of a shortest decimal."""
+    need(isinstance(text, str) and DECIMAL.fullmatch(text) and text != "-0", "not a decimal")
+    return Fraction(text)
+
+
+def filled_texts(value: Value) -> list[str]:
+    """Return an array of distinct sorted texts that is not empty."""
+    need(isinstance(value, list) and value, "not an array with elements")
+    need(all(isinstance(text, str) for text in value), "not an array of text")
+    need(value == sorted(set(value)), "not sorted and distinct")
+    texts: list[str] = value
+    return texts
+
+
+def text_members(value: Value) -> None:
+    """Check an object of texts that is not empty."""
+    need(isinstance(value, dict) and value, "not an object with members")
+    need(all(isinstance(text, str) for text in value.values()), "not an object of text")
+
+
+def common_fields(thing: Value, allowed: str) -> None:
+    """Check what items and sites have in common."""
+    need(isinstance(thing, dict) and set(thing) <= set(allowed.split()), "other fields")
+    name = thing.get("id")
+    need(isinstance(name, str) and re.fullmatch("[^\x00-\x1f\x7f]{1,64}", name), "not an id")
+    for field in ("name", "gtin", "gln", "time_zone", "country"):
+        need(isinstance(thing.get(field, ""), str), field + " is not text")
+    for field in ("weight_kg", "volume_m3", "latitude", "longitude"):
+        if field in thing:
+            thing[field] = decimal(thing[field])
+    if "tags" in thing:
+        filled_texts(thing["tags"])
+    if "extra" in thing:
+        text_members(thing["extra"])
+
+
+def read_item(item: Value) -> None:
+    """Check an item and turn its numbers into fractions."""
+    common_fields(item, "id unit step name gtin weight_kg volume_m3 packs tags extra")
+    need(isinstance(item.get("unit"), str) and item["unit"], "an item without a unit")
+    item["step"] = decimal(item.get("step"))
+    need(item["step"] > 0, "a step of 0 or less")
+    packs = item.get("packs", ())
+    need(packs == () or (isinstance(packs, list) and packs), "packs are not an array")
+    contents = {}
+    for pack in packs:
+        need(isinstance(pack, dict) and set(pack) == {"unit", "contains"}, "not a pack")
+        need(isinstance(pack["unit"], str) and pack["unit"], "a pack without a unit")
+        contents[pack["unit"]] = decimal(pack["contains"])
+        need(contents[pack["unit"]] > 0, "a pack of nothing")
+    need(rises([pack["unit"].encode() for pack in packs]), "packs are not sorted")
+    item["packs"] = contents
+
+
+def read_site(site: Value, item_ids: set[str]) -> None:
+    """Check a site and turn its numbers into fractions."""
+    common_fields(
+        site,
+        "id roles name gln latitude longitude time_zone country handling_cost tags extra",
+    )
+    roles = filled_texts(site.get("roles"))
+    need(set(roles) <= {"warehouse", "cross_dock", "ship_to"}, "an unknown role")
+    cost = site.get("handling_cost", "0")
+    if isinstance(cost, dict):
+        need(cost and set(cost) <= item_ids, "handling of unknown items")
+        cost = {item: decimal(text) for item, text in cost.items()}
+        site["handling"] = lambda item: cost.get(item, Fraction(0))
+    else:
+        anything = decimal(cost)
+        site["handling"] = lambda _: anything
+
+
+def read_selector(selector: Value, allowed: str) -> None:
+    """Check a selector of a rule."""
+    need(isinstance(selector, dict) and set(selector) <= set(allowed.split()), "not a selector")
+    for texts in selector.values():
+        need(texts == [] or filled_texts(texts), "not a list of text")
+
+
+def read_rule(rule: Value) -> None:
+    """Check a rule of the head."""
+    need(isinstance(rule, dict), "a rule is not an object")
+    kinds = {
+        "closure": ("", "lanes sites"),
+        "fixed_quantity": ("lanes quantity", ""),
+        "throughput": ("sites flow maximum", "measure per"),
+    }
+    need(isinstance(rule.get("rule"), str) and rule["rule"] in kinds, "an unknown rule")
+    first, second = kinds[rule["rule"]]
+    needed = {"rule", "id", *first.split()}
+    possible = {"note", "owner", "from", "until", "items", *second.split()}
+    need(needed <= set(rule) <= needed | possible, "a rule has other fields")
+    for field, value in rule.items():
+        if field in ("lanes", "sites", "items"):
+            keys = {
+                "lanes": "ids origin destination carrier tag",
+                "sites": "ids role tag",
+                "items": "ids tag",
+            }
+            read_selector(value, keys[field])
+            continue
+        need(isinstance(value, str), "a field of a rule is not text")
+        if field in ("from", "until"):
+            need(is_date(value), "not a date")
+        elif field in ("quantity", "maximum"):
+            need(DECIMAL.fullmatch(value) and value[0] != "-", "not a quantity")
+        elif field in ("id", "measure"):
+            need(value, "an empty field of a rule")
+    need(rule.get("flow", "sent") in ("received", "sent", "through"), "an unknown flow")
+    need(rule.get("per", "each") == "each", "an unknown per")
+    if rule["rule"] == "closure":
+        need(("lanes" in rule) != ("sites" in rule), "a closure is of lanes or of sites")
+
+
+def is_date(text: str) -> bool:
+    """Return whether a text is a calendar date."""
+    try:
+        dt.date.fromisoformat(text)
+    except ValueError:
+        return False
+    return re.fullmatch("[0-9]{4}-[0-9]{2}-[0-9]{2}", text) is not None
+
+
+def read_head(data: bytes) -> dict[str, Any]:
+    """Return the head of the network, its items and sites read."""
+    head: dict[str, Any] = parse_canonical(data)
+    need(isinstance(head, dict), "the head is not an object")
+    texts = {"name", "currency", "cut_off", "release_by"}
+    fields = {"format", "rules", "extra", "items", "sites", "tables"}
+    need(set(head) <= fields | texts, "other fields in the head")
+    need(is_whole(head.get("format")) and head["format"] == 1, "another format")
+    need(all(isinstance(head.get(field, ""), str) for field in texts), "a field is not text")
+    need(re.fullmatch("[A-Z]{3}", head.get("currency", "")), "no currency")
+    need(head.get("cut_off"), "no cut-off")
+    need(all(isinstance(head.get(f), list) for f in ("items", "sites", "rules")), "no arrays")
+    if "extra" in head:
+        text_members(head["extra"])
+    for rule in head["rules"]:
+        read_rule(rule)
+    need(rises([rule["id"].encode() for rule in head["rules"]]), "rules are not sorted")
+    for item in head["items"]:
+        read_item(item)
+    for site in head["sites"]:
+        read_site(site, {item["id"] for item in head["items"]})
+    for things in (head["items"], head["sites"]):
+        need(rises([thing["id"].encode() for thing in things]), "ids are not sorted")
+    need(isinstance(head.get("tables"), dict) and set(head["tables"]) == set(COLUMNS), "no tables")
+    return head
+
+
+class Decimals:
+    """A column of decimals: whole numbers, the power of ten below them, and which are there."""
+
+    def __init__(self, numbers: array[int], power: int, absent: bytes | None) -> None:
+        """Keep the parts; ``absent`` is a byte for each row, or None where all are there."""
+        self.numbers, self.power, self.absent = numbers, power, absent
+
+    def has(self, row: int) -> bool:
+        """Return whether the row has a value."""
+        return self.absent is None or not self.absent[row]
+
+    def __getitem__(self, row: int) -> Value:
+        """Return the value of a row, None where there is none."""
+        return Fraction(self.numbers[row], self.power) if self.has(row) else None
+
+
+class Texts:
+    """A column of text: the distinct texts, and for each row a position or -1."""
+
+    def __init__(self, codes: array[int], values: list[str]) -> None:
+        """Keep the parts."""
+        self.codes, self.values = codes, values
+
+    def __getitem__(self, row: int) -> Value:
+        """Return the text of a row, None where there is none."""
+        return self.values[self.codes[row]] if self.codes[row] >= 0 else None
+
+
+def numbers_of(data: bytes, kind: str, rows: int) -> array[int]:
+    """Return whole numbers of 4 (kind i) or 8 (kind q) bytes, little endian."""
+    numbers: array[int] = array(kind)
+    need(len(data) == rows * numbers.itemsize, "a column of another length")
+    numbers.frombytes(data)
+    if sys.byteorder == "big":
+        numbers.byteswap()
+    return numbers
+
+
+def records_of(data: bytes, at: int, count: int) -> tuple[list[bytes], int]:
+    """Return ``count`` length-prefixed texts that start at ``at``, and where they end."""
+    texts = []
+    for _ in range(count):
+        start = at + 4
+        end = start + int.from_bytes(data[at:start], "little")
+        need(len(data) >= start and end <= len(data), "a text is cut off")
+        texts.append(data[start:end])
+        at = end
+    return texts, at
+
+
+def utf8(data: bytes) -> str:
+    """Return the text of bytes."""
+    try:
+        return data.decode("utf-8")
+    except UnicodeDecodeError:
+        raise Bad("not UTF-8") from None
+
+
+def read_column(
+    data: bytes, kind: str, rows: int, described: dict[str, Any], counts: dict[str, int]
+) -> tuple[Any, dict[str, Any]]:
+    """Return a column, and how the head has to describe it."""
+    if kind == "decimal":
+        return read_decimals(data, rows, described)
+    if kind == "texts":
+        need(len(data) >= 4, "a column without a count")
+        count = int.from_bytes(data[:4], "little")
+        need(1 <= count <= rows, "more texts than rows")
+        texts, at = records_of(data, 4, count)
+        values = [utf8(text) for text in texts]
+        need(rises(values), "texts are not sorted")
+        codes = numbers_of(data[at:], "i", rows)
+        need(set(codes) | {-1} == set(range(-1, count)), "texts and codes do not fit")
+        return Texts(codes, values), {"type": kind}
+    if kind == "text":
+        texts, at = records_of(data, 0, rows)
+        need(at == len(data), "bytes are left over")
+        for text in texts:
+            need(len(text) <= 256 and (not text or min(text) >= 32), "not an id")
+            utf8(text)
+        need(any(texts), "a column of nothing")
+        return texts, {"type": kind}
+    codes = numbers_of(data, "i", rows)
+    if kind == "small":
+        need(min(codes) >= 0 and 0 < max(codes) <= 9, "out of range")
+        return codes, {"type": kind}
+    need(min(codes) >= -1 and 0 <= max(codes) < counts[kind], "out of range")
+    return codes, {"type": "code", "of": kind}
+
+
+def read_decimals(
+    data: bytes, rows: int, described: dict[str, Any]
+) -> tuple[Decimals, dict[str, Any]]:
+    """Return a column of decimals, and how the head has to describe it."""
+    power: Value = described.get("exponent")
+    nulls = described.get("nulls", False)
+    need(is_whole(power) and 0 <= power <= 6, "not an exponent")
+    numbers = numbers_of(data[: 8 * rows], "q", rows)
+    absent = None
+    if nulls:
+        bits = data[8 * rows :]
+        need(len(bits) == (rows + 7) // 8, "a bitmap of another length")
+        absent = bytes(bits[row >> 3] >> (row & 7) & 1 for row in range(8 * len(bits)))
+        need(not any(absent[rows:]) and 0 < sum(absent) < rows, "a bitmap that is not needed")
+        need(not any(map(int.__and__, numbers, map(int.__neg__, absent))), "absent, but not 0")
+    else:
+        need(len(data) == 8 * rows, "a column of another length")
+    need(min(numbers) > -(2**62) and max(numbers) < 2**62, "a number out of range")
+    need(power == 0 or any(number % 10 for number in numbers), "not the least exponent")
+    expected: dict[str, Any] = {"type": "decimal", "exponent": power}
+    if nulls:
+        expected["nulls"] = True
+    return Decimals(numbers, 10**power, absent), expected
+
+
+def read_table(
+    name: str, table: Value, entries: dict[str, bytes], counts: dict[str, int], used: set[str]
+) -> dict[str, Any]:
+    """Return the columns of a table, absent ones made up, and the number of rows."""
+    need(isinstance(table, dict) and set(table) == {"rows", "columns"}, "not a table")
+    rows, described = table["rows"], table["columns"]
+    need(is_whole(rows) and 0 <= rows < 2**31 and isinstance(described, dict), "not a table")
+    need(rows or not described, "a table without rows has columns")
+    columns: dict[str, Any] = {"rows": rows}
+    known = [re.split("([!:])", part) for part in COLUMNS[name].split()]
+    need(set(described) <= {column for column, _, _ in known}, "an unknown column")
+    for column, mark, kind in known:
+        required = mark == "!"
+        if column not in described:
+            need(rows == 0 or not required, column + " is missing")
+            columns[column] = absent_column(kind, rows)
+            continue
+        says, entry = described[column], f"network/{name}/{column}"
+        need(isinstance(says, dict) and says.get("nulls", True) is True, "not a column")
+        need(entry in entries and sha256(entries[entry]) == says.get("digest"), "another digest")
+        used.add(entry)
+        values, expected = read_column(entries[entry], kind, rows, says, counts)
+        # 1 and true are equal in Python, but not here.
+        exact = {key: (type(value), value) for key, value in says.items() if key != "digest"}
+        need(exact == {key: (type(v), v) for key, v in expected.items()}, "described otherwise")
+        if required:
+            need(is_complete(values, kind), "a row without " + column)
+        columns[column] = values
+    return columns
+
+
+def absent_column(kind: str, rows: int) -> Value:
+    """Return a column in which every value is absent."""
+    if kind == "decimal":
+        return Decimals(array("q", bytes(8 * rows)), 1, b"\x01" * rows)
+    if kind == "texts":
+        return Texts(array("i", [-1]) * rows, [])
+    if kind == "text":
+        return [b""] * rows
+    return array("i", [0 if kind == "small" else -1]) * rows
+
+
+def is_complete(values: Value, kind: str) -> bool:
+    """Return whether every row of a column has a value."""
+    if kind == "decimal":
+        return values.absent is None
+    if kind == "text":
+        return all(values)
+    least: int = min(values.codes if kind == "texts" else values)
+    return least >= 0
+
+
+class Network:
+    """The network: head fields, items, sites, and three tables of columns."""
+
+    def __init__(self, entries: dict[str, bytes]) -> None:
+        """Read the entries of a network; Bad unless they are in normal form."""
+        head = read_head(entries.get("network/head.json", b""))
+        self.head, self.items, self.sites = head, head["items"], head["sites"]
+        counts = {"items": len(self.items), "sites": len(self.sites)}
+        used = {"network/head.json"}
+        self.supply, self.demand, self.lanes = (
+            read_table(name, head["tables"][name], entries, counts, used)
+            for name in ("supply", "demand", "lanes")
+        )
+        need(used == set(entries), "entries that the head does not name")
+        self.site_at = {site["id"]: at for at, site in enumerate(self.sites)}
+        self.item_at = {item["id"]: at for at, item in enumerate(self.items)}
+        self.passing = ["cross_dock" in site["roles"] for site in self.sites]
+        self._check_supply()
+        self._check_demand()
+        self._check_lanes()
+        self.lane_names = LaneNames(self)
+        self._rows: dict[str, dict[int, list[int]]] = {}
+
+    def _of(self, table: dict[str, Any], name: str, item: int) -> list[int]:
+        """Return the rows of a table that are of one item."""
+        if name not in self._rows:
+            rows: dict[int, list[int]] = defaultdict(list)
+            for row, own in enumerate(table["item"]):
+                rows[own].append(row)
+            self._rows[name] = dict(rows)
+        return self._rows[name].get(item, [])
+
+    def lanes_of(self, item: int) -> list[int]:
+        """Return the lanes of one item only, or (-1) of any item."""
+        return self._of(self.lanes, "lanes", item)
+
+    def supply_of(self, item: int) -> list[int]:
+        """Return the supply rows of an item."""
+        return self._of(self.supply, "supply", item)
+
+    def order_lines_of(self, item: int) -> list[int]:
+        """Return the order lines of an item."""
+        return self._of(self.demand, "demand", item)
+
+    def units(self, at: int, unit: str) -> Value:
+        """Return how many units of an item one ``unit`` is, None if it says nothing of it."""
+        item = self.items[at]
+        if unit == item["unit"]:
+            return Fraction(1)
+        if unit in item["packs"]:
+            return item["packs"][unit]
+        row, own = STANDARD_UNITS.get(unit), STANDARD_UNITS.get(item["unit"])
+        if row is None or own is None or row[0] != own[0]:
+            return None
+        return row[1] / own[1]
+
+    def measure(self, at: int, measure: str) -> Value:
+        """Return how much of a measure one unit of an item is, None if it does not say."""
+        item = self.items[at]
+        if measure == "unit":
+            return Fraction(1)
+        if measure in ("weight_kg", "volume_m3"):
+            return item.get(measure)
+        return 1 / item["packs"][measure] if measure in item["packs"] else None
+
+    def _check_units(self, table: dict[str, Any]) -> None:
+        """Check that every row is in a unit of its item, and has a quantity that is not below 0."""
+        for item, unit in set(zip(table["item"], table["unit"].codes)):  # noqa: B905 - Python 3.9
+            need(self.units(item, table["unit"].values[unit]), "an unknown unit")
+        need(not_below_0(table["quantity"]), "a quantity below 0")
+
+    def _check_supply(self) -> None:
+        """Check the supply rows."""
+        supply = self.supply
+        self._check_units(supply)
+        for column in ("on_hand", "reserved", "on_hold", "keep_quantity"):
+            need(not_below_0(supply[column]), "a quantity below 0")
+        kept = [row for row in range(supply["rows"]) if supply["keep_priority"][row]]
+        has = [row for row in range(supply["rows"]) if supply["keep_quantity"].has(row)]
+        need(kept == has, "kept stock without its priority")
+        pairs = {(supply["site"][row], supply["item"][row]) for row in kept}
+        need(len(pairs) == len(kept), "stock is kept twice at one site")
+        for text in supply["extra"].values:
+            text_members(parse_canonical(text.encode()))
+        keys = [self._supply_key(row) for row in range(supply["rows"])]
+        need(keys == sorted(keys), "supply is not sorted")
+
+    def _supply_key(self, row: int) -> Key:
+        """Return what supply is sorted by."""
+        supply = self.supply
+        site, item = supply["site"][row], supply["item"][row]
+        cost = (supply["unit_cost"][row] or 0) / self.units(item, supply["unit"][row])
+        date = supply["best_before"].codes[row]
+        rest = []
+        for (
+            column
+        ) in "quantity unit unit_cost on_hand reserved on_hold as_of keep_quantity".split():
+            values = supply[column]
+            if isinstance(values, Texts):
+                rest.append(values.codes[row])
+            else:
+                rest += (values.has(row), values.numbers[row])
+        rest += (supply["keep_priority"][row], supply["extra"].codes[row])
+        return (site, item, cost, date < 0, date, supply["lot"].codes[row], *rest)
+
+    def _check_demand(self) -> None:
+        """Check the order lines."""
+        demand = self.demand
+        self._check_units(demand)
+        need(rises(demand["reference"]), "order lines are not sorted")
+        need(not_below_0(demand["shortage_cost"]), "a cost below 0")
+        need(not_below_0(demand["worth_at_most"]), "a cost below 0")
+        for row in range(demand["rows"]):
+            ways = (
+                demand["priority"][row] > 0,
+                demand["shortage_cost"].has(row),
+                demand["worth_at_most"].has(row),
+            )
+            need(sum(ways) <= 1, "an order line with two kinds of importance")
+        self.origins = [
+            filled_texts(parse_canonical(text.encode())) for text in demand["origins"].values
+        ]
+        for origins in self.origins:
+            need(set(origins) <= set(self.site_at), "an unknown site in origins")
+        for text in demand["tags"].values:
+            filled_texts(parse_canonical(text.encode()))
+        for text in demand["extra"].values:
+            text_members(parse_canonical(text.encode()))
+
+    def _check_lanes(self) -> None:
+        """Check the lanes."""
+        lanes = self.lanes
+        need(set(lanes["per"].values) <= {"item"}, "an unknown per")
+        need(not_below_0(lanes["capacity"]), "a capacity below 0")
+        must = lanes["must_ship"]
+        for row in range(lanes["rows"]):
+            need(lanes["origin"][row] != lanes["destination"][row], "a lane to where it starts")
+            need(must.numbers[row] > 0 or not must.has(row), "a must-ship of 0")
+        named = [name for name in lanes["id"] if name]
+        need(len(set(named)) == len(named), "a lane id occurs twice")
+        for item, code in set(zip(lanes["item"], lanes["measure"].codes)):  # noqa: B905 - Python 3.9
+            measure = lanes["measure"].values[code]
+            need(item < 0 or self.measure(item, measure), "an unknown measure")
+        for text in lanes["tags"].values:
+            filled_texts(parse_canonical(text.encode()))
+        for text in lanes["extra"].values:
+            text_members(parse_canonical(text.encode()))
+        ends = (lanes["origin"], lanes["destination"], lanes["item"])
+        for row in range(1, lanes["rows"]):
+            before = tuple(column[row - 1] for column in ends)
+            here = tuple(column[row] for column in ends)
+            same = before == here and self._lane_key(row - 1) <= self._lane_key(row)
+            need(before < here or same, "lanes are not sorted")
+
+    def _lane_key(self, row: int) -> Key:
+        """Return what lanes between the same sites are sorted by."""
+        lanes, capacity = self.lanes, self.lanes["capacity"]
+        codes = (lanes[column].codes[row] for column in ("tags", "measure", "per", "extra"))
+        return (
+            lanes["id"][row],
+            lanes["carrier"].codes[row],
+            lanes["unit_cost"].numbers[row],
+            lanes["must_ship"].numbers[row],
+            not capacity.has(row),
+            capacity.numbers[row],
+            *codes,
+        )
+
+
+def not_below_0(column: Decimals) -> bool:
+    """Return whether no decimal of a column is below 0."""
+    return not len(column.numbers) or min(column.numbers) >= 0
+
+
+class LaneNames:
+    """Lanes by name: the id that was given, or ORIGIN>DESTINATION[>ITEM][#NUMBER]."""
+
+    def __init__(self, network: Network) -> None:
+        """Index given ids and the ends of lanes."""
+        self.network = network
+        lanes = network.lanes
+        self.given = {name.decode(): row for row, name in enumerate(lanes["id"]) if name}
+        self.sites = {encoded(site["id"]): at for at, site in enumerate(network.sites)}
+        self.items = {encoded(item["id"]): at for at, item in enumerate(network.items)}
+        self.ends: dict[Key, int] | None = None
+
+    def row(self, name: str) -> int:
+        """Return the row of a lane, -1 if there is none of that name."""
+        if name in self.given:
+            return self.given[name]
+        match = re.fullmatch(
+            "([^#>]*)>([^#>]*)(?:>([^#>]*))?(?:#([1-9][0-9]{0,17}))?", name, re.DOTALL
+        )
+        if not match or match[4] == "1":
+            return -1
+        ends = (
+            self.sites.get(match[1], -2),
+            self.sites.get(match[2], -2),
+            -1 if match[3] is None else self.items.get(match[3], -2),
+        )
+        first = self.first_row(ends)
+        row = first + int(match[4] or 1) - 1
+        lanes = self.network.lanes
+        columns = (lanes["origin"], lanes["destination"], lanes["item"])
+        if first < 0 or row >= lanes["rows"] or lanes["id"][row]:
+            return -1
+        return row if tuple(column[row] for column in columns) == ends else -1
+
+    def first_row(self, ends: Key) -> int:
+        """Return the first lane with these ends, -1 if there is none."""
+        if self.ends is None:
+            lanes = self.network.lanes
+            self.ends = {}
+            keys = zip(lanes["origin"], lanes["destination"], lanes["item"])  # noqa: B905 - Python 3.9
+            for row, key in enumerate(keys):
+                self.ends.setdefault(key, row)
+        return self.ends.get(ends, -1)
+
+    def name(self, row: int) -> str:
+        """Return the name of a lane."""
+        network, lanes = self.network, self.network.lanes
+        given: bytes = lanes["id"][row]
+        if given:
+            return given.decode()
+        ends = (lanes["origin"][row], lanes["destination"][row], lanes["item"][row])
+        parts = [network.sites[ends[0]]["id"], network.sites[ends[1]]["id"]]
+        if ends[2] >= 0:
+            parts.append(network.items[ends[2]]["id"])
+        number = row - self.first_row(ends)
+        return ">".join(map(encoded, parts)) + (f"#{number + 1}" if number else "")
+
+
+def encoded(name: str) -> str:
+    """Return an id as it stands in the name of a lane."""
+    return name.replace("%", "%25").replace(">", "%3E").replace("#", "%23")
+
+
+# ------------------------------------------------------------------ 3. options and shapes
+
+
+def read_options(data: bytes) -> dict[str, Any]:
+    """Return the options of the run."""
+    options: Value = parse_canonical(data)
+    fields = (
+        "shortages worth_at_most demand_rounding bad_rows label plan_for deadline_seconds "
+        "maximum_age_minutes"
+    )
+    need(isinstance(options, dict) and set(options) == set(fields.split()), "other options")
+    need(options["shortages"] in ("allow", "forbid"), "shortages")
+    need(options["demand_rounding"] in ("refuse", "up", "down"), "demand_rounding")
+    need(options["bad_rows"] in ("refuse", "set_aside"), "bad_rows")
+    worth, label, day = (options[field] for field in ("worth_at_most", "label", "plan_for"))
+    if worth is not None:
+        options["worth_at_most"] = decimal(worth)
+        need(worth[0] != "-" and int(worth.replace(".", "")) < 2**62, "worth_at_most")
+    if label is not None:
+        need(isinstance(label, str) and 1 <= len(label) <= 200, "label")
+        need(not re.search("[\x00-\x1f\x7f-\x9f]", label), "label")
+    need(day is None or (isinstance(day, str) and is_date(day)), "plan_for")
+    need(is_whole(options["deadline_seconds"]), "deadline_seconds")
+    need(1 <= options["deadline_seconds"] <= 900, "deadline_seconds")
+    age = options["maximum_age_minutes"]
+    need(age is None or (is_whole(age) and 0 <= age <= 10 * 366 * 24 * 60), "maximum_age_minutes")
+    return options
+
+
+DIGEST = re.compile("sha-256:[0-9a-f]{64}")
+AMOUNT = re.compile("-?(?:0|[1-9][0-9]*)(?:[.][0-9]+)?|-?[1-9][0-9]*/[1-9][0-9]*")
+WHOLE = re.compile("0|-?[1-9][0-9]*")
+
+# The kinds of values. "?" allows null; a list of one kind is an array of it; a dict is an object
+# with exactly these keys ("?key" may be absent); a tuple lists the values that are allowed.
+KINDS: dict[str, Any] = {
+    "text": lambda value: isinstance(value, str),
+    "flag": lambda value: isinstance(value, bool),
+    "count": lambda value: is_whole(value) and 0 <= value < 2**53,
+    "amount": lambda value: is_number(value, AMOUNT),
+    "known": lambda value: value == "unknown" or is_number(value, AMOUNT),
+    "whole": lambda value: is_number(value, WHOLE),
+    "digest": lambda value: isinstance(value, str) and DIGEST.fullmatch(value) is not None,
+    "object": lambda value: isinstance(value, dict),
+    "texts": lambda value: (
+        isinstance(value, dict) and all(isinstance(text, str) for text in value.values())
+    ),
+}
+
+
+def is_number(value: object, form: re.Pattern[str]) -> bool:
+    """Return whether a value is a text of one of the forms of numbers."""
+    return isinstance(value, str) and len(value) <= 1000 and form.fullmatch(value) is not None
+
+
+def keys(text: str, kind: Value) -> dict[str, Any]:
+    """Return a shape in which all the keys have one kind."""
+    return dict.fromkeys(text.split(), kind)
+
+
+def has_shape(value: Value, shape: Value) -> bool:  # noqa: PLR0911 - one return for each kind of shape
+    """Return whether a value of JSON has a shape."""
+    if isinstance(shape, str):
+        return (value is None and shape[0] == "?") or KINDS[shape.lstrip("?")](value)
+    if isinstance(shape, tuple):
+        return any(type(value) is type(one) and value == one for one in shape)
+    if isinstance(shape, list):
+        if not isinstance(value, list):
+            return False
+        return not value or (shape != [] and all(has_shape(one, shape[0]) for one in value))
+    if not isinstance(value, dict):
+        return False
+    allowed = {key.lstrip("?"): one for key, one in shape.items()}
+    needed = {key for key in shape if key[0] != "?"}
+    if not needed <= set(value) <= set(allowed):
+        return False
+    return all(has_shape(member, allowed[key]) for key, member in value.items())
+
+
+SUMMARY = {
+    "format": (1,),
+    "feasible": (True,),
+    "lower_bound": "amount",
+    "gap": ("0",),
+    "lexicographic": ("proved",),
+    "solver_bound": (None,),
+    "reproducible": "flag",
+    "network_digest": "digest",
+}
+PLAN: dict[str, Any] = {
+    "format": (1,),
+    "status": ("planned",),
+    "method": ("min_cost_flow",),
+    "method_reasons": [],
+    **keys("name release_by", "?text"),
+    **keys("currency cut_off", "text"),
+    **keys("network_digest options_digest", "digest"),
+    **keys("total_cost total_cost_rounded rounding_difference", "amount"),
+    "cost_parts": keys("supply handling transport charges shortage lateness", "amount"),
+    "totals": {
+        **keys("lines_complete lines_in_part lines_none set_aside", "count"),
+        "quantities": [
+            {
+                **keys("item unit", "text"),
+                **keys("wanted served short", "amount"),
+                "weight_kg": "known",
+            }
+        ],
+    },
+    "plan_lines": [
+        {
+            "lane": "?text",
+            **keys("origin destination item", "text"),
+            **keys("quantity unit_cost transport_cost supply_cost", "amount"),
+            **keys("handling_cost charges cost", "amount"),
+        }
+    ],
+    "order_lines": [
+        {
+            **keys("reference site item", "text"),
+            "order": "?text",
+            **keys("quantity served short", "amount"),
+            "priority": "?count",
+            "sources": [
+                {
+                    **keys("origin item", "text"),
+                    "lot": "?text",
+                    "quantity": "amount",
+                    "legs": [{"lane": "text"}],
+                }
+            ],
+            **keys("?shortage_cost ?ordered", "amount"),
+            "?tags": ["text"],
+            "?extra": "texts",
+        }
+    ],
+    "consignments": [
+        {
+            **keys("lane origin destination", "text"),
+            "carrier": "?text",
+            **keys("pallets weight_kg volume_m3", "known"),
+            "cost": "amount",
+            "order_references": ["text"],
+        }
+    ],
+    "shortages": [
+        {
+            "reference": "?text",
+            **keys("site item reason", "text"),
+            "priority": "?count",
+            "quantity": "amount",
+            "next_chance": (None,),
+            "?outranked_by": "object",
+            "?kept": (True,),
+        }
+    ],
+    "site_use": [{**keys("site item", "text"), **keys("available shipped kept left", "amount")}],
+    "rules_in_force": [
+        {
+            **keys("rule id", "text"),
+            **keys("note owner", "?text"),
+            **keys("applied binding", "flag"),
+        }
+    ],
+    "set_aside": ["object"],
+    "warnings": ["object"],
+    "certificate": SUMMARY,
+}
+NO_PLAN: dict[str, Any] = {
+    **PLAN,
+    "status": ("no_plan",),
+    **keys("total_cost total_cost_rounded rounding_difference cost_parts", (None,)),
+    "totals": {**PLAN["totals"], "quantities": []},
+    **keys("plan_lines order_lines consignments shortages site_use", []),
+    "reason": "object",
+    "certificate": {
+        **SUMMARY,
+        "feasible": (False,),
+        **keys("lower_bound gap", (None,)),
+        "lexicographic": ("no_plan",),
+    },
+}
+CERTIFICATE_HEAD = {
+    "format": (1,),
+    "method": ("min_cost_flow",),
+    **keys("network_digest options_digest", "digest"),
+    "currency": "text",
+    "versions": "texts",
+}
+SIDES = ("received", "in", "out", "sent", "demand", "stock", "keep")
+TIER_FLOW = {"site": "text", "tier": "count", "quantity": "amount"}
+CERTIFICATE = {
+    **CERTIFICATE_HEAD,
+    **keys("cost_scale total_cost lower_bound", "amount"),
+    "gap": ("0",),
+    "lexicographic": ("proved",),
+    "steps": ["object"],
+    "items": [
+        {
+            "item": "text",
+            "base": "whole",
+            "draws": [TIER_FLOW],
+            "kept": [TIER_FLOW],
+            "serves": [
+                {
+                    **keys("site group", "text"),
+                    "from": ("out", "received"),
+                    "origin": "?text",
+                    "quantity": "amount",
+                }
+            ],
+            "passes": [{"site": "text", "origin": "?text", "quantity": "amount"}],
+            "shortages": [{"site": "text", "group": "?text", "quantity": "amount"}],
+            "prices": [{"site": "text", "side": SIDES, "qualifier": "?text", "price": "whole"}],
+        }
+    ],
+}
+SHORTAGE_STEP = {
+    "item": "text",
+    "of": ("shortage",),
+    "priority": "count",
+    **keys("achieved bound", "amount"),
+}
+COST_STEP = {"item": "text", "of": ("cost",), **keys("achieved bound", "amount")}
+NO_PLAN_CERTIFICATE = {
+    **CERTIFICATE_HEAD,
+    **keys("cost_scale total_cost lower_bound gap", (None,)),
+    "lexicographic": ("no_plan",),
+    "cuts": [
+        {
+            "item": "text",
+            "nodes": [{"site": "text", "side": SIDES, "qualifier": "?text"}],
+            "root": "flag",
+            **keys("forced_out can_enter", "amount"),
+        }
+    ],
+}
+
+
+def is_plan(plan: Value) -> bool:
+    """Return whether a value has the shape of a plan."""
+    without = isinstance(plan, dict) and plan.get("status") == "no_plan"
+    return has_shape(plan, NO_PLAN if without else PLAN)
+
+
+def is_certificate(certificate: Value) -> bool:
+    """Return whether a value has the shape of a certificate."""
+    if isinstance(certificate, dict) and certificate.get("lexicographic") == "no_plan":
+        return has_shape(certificate, NO_PLAN_CERTIFICATE)
+    return has_shape(certificate, CERTIFICATE) and all(
+        has_shape(step, COST_STEP if step.get("of") == "cost" else SHORTAGE_STEP)
+        for step in certificate["steps"]
+    )
+
+
+# ------------------------------------------------------------------ 4. the history
+
+EVENT = {
+    **keys("tenant stream recorded_at kind actor authentication", "text"),
+    "seq": "count",
+    "format": (1,),
+    "payload_digest": "?digest",
+    **keys("previous hash", "digest"),
+}
+HISTORY = [{"event": EVENT, "payload": "?object", "salt": "?text"}]
+
+
+def check_history(history: Value, report: Report) -> None:
+    """Follow the chain of events."""
+    if not has_shape(history, HISTORY):
+        report.add("history_malformed", "not a list of events", "history.json")
+        return
+    chains: dict[tuple[str, str], tuple[int, str]] = {}
+    for number, entry in enumerate(history):
+        event, place = dict(entry["event"]), f"history/{number}"
+        stream = (event["tenant"], event["stream"])
+        count, last = chains.get(stream, (0, NOTHING_BEFORE))
+        if (event["seq"], event["previous"]) != (count + 1, last):
+            report.add("event_chain", "it does not follow the event before it", place)
+        stated = event.pop("hash")
+        chains[stream] = (event["seq"], stated)
+        if sha256(canonical(event)) != stated:
+            report.add("event_hash", "the hash is not that of the event", place)
+        if not payload_fits(event["payload_digest"], entry["payload"], entry["salt"]):
+            report.add("event_payload", "the payload is not that of the event", place)
+
+
+def payload_fits(stated: str | None, payload: Value, salt: str | None) -> bool:
+    """Return whether payload and salt have the digest that an event names."""
+    if stated is None or payload is None or salt is None:
+        return stated is None and payload is None and salt is None
+    if not re.fullmatch("[0-9a-f]{32}", salt):
+        return False
+    try:
+        return sha256(bytes.fromhex(salt) + canonical(payload)) == stated
+    except Bad:
+        return False
+
+
+# ------------------------------------------------------------------ 5. the formal network
+
+ROOT = 0
+UNLIMITED = None
+
+
+class Unusable(Exception):  # noqa: N818 - short, and read aloud
+    """The network states something that cannot be planned."""
+
+
+class Rule:
+    """A rule in force, and what it picks."""
+
+    def __init__(self, network: Network, rule: dict[str, Any]) -> None:
+        """Work out which items, sites and lanes the rule picks."""
+        self.rule = rule
+        self.kind = rule["rule"]
+        items, sites = rule.get("items", {}), rule.get("sites")
+        self.items = {at for at, item in enumerate(network.items) if picks(items, item)}
+        self.sites: set[int] = set()
+        if sites is not None:
+            self.sites = {at for at, site in enumerate(network.sites) if picks(sites, site)}
+        self.lanes: set[int] = set()
+        if self.kind == "closure" and sites is not None:
+            ends = zip(network.lanes["origin"], network.lanes["destination"])  # noqa: B905 - 3.9
+            self.lanes = {row for row, both in enumerate(ends) if not self.sites.isdisjoint(both)}
+        elif "lanes" in rule:
+            self.lanes = lanes_picked(network, rule["lanes"])
+
+
+def picks(selector: dict[str, list[str]], thing: dict[str, Any]) -> bool:
+    """Return whether a selector picks a site or an item."""
+    has = {"ids": [thing["id"]], "role": thing.get("roles", ()), "tag": thing.get("tags", ())}
+    return all(not set(texts).isdisjoint(has[key]) for key, texts in selector.items())
+
+
+def lanes_picked(network: Network, selector: dict[str, list[str]]) -> set[int]:
+    """Return the rows of the lanes that a selector picks."""
+    lanes = network.lanes
+    rows = set(range(lanes["rows"]))
+    for key, texts in selector.items():
+        if key == "ids":
+            rows &= {network.lane_names.row(name) for name in texts}
+        elif key in ("origin", "destination"):
+            sites = {network.site_at.get(site, -1) for site in texts}
+            rows = {row for row in rows if lanes[key][row] in sites}
+        elif key == "carrier":
+            rows = {row for row in rows if lanes["carrier"][row] in texts}
+        else:
+            tagged = [not set(texts).isdisjoint(json.loads(tags)) for tags in lanes["tags"].values]
+            rows = {row for row in rows if tagged[lanes["tags"].codes[row]] and lanes["tags"][row]}
+    return rows
+
+
+def rules_in_force(network: Network) -> list[Rule]:
+    """Return the rules that hold on the local date of the cut-off."""
+    day = network.head["cut_off"][:10]
+    return [
+        Rule(network, rule)
+        for rule in network.head["rules"]
+        if rule.get("from", day) <= day <= rule.get("until", day)
+    ]
+
+
+def usable_lanes(network: Network, item: int) -> list[int]:
+    """Return the lanes that an item can use: its own, and those of any item that help it.
+
+    A lane of any item helps if stock can come to where it starts and is wanted where it leads, or
+    behind that, moving on only at cross-docks. Closures do not matter.
+    """
+    lanes = network.lanes
+    own, general = network.lanes_of(item), network.lanes_of(-1)
+    if not general:
+        return own
+    candidates = sorted(own + general)
+    ends = [(lanes["origin"][row], lanes["destination"][row]) for row in candidates]
+    wanted = {
+        network.demand["site"][row]
+        for row in network.order_lines_of(item)
+        if network.demand["quantity"].numbers[row] > 0
+    }
+    sends = spread(network, stocked(network, item), ends)
+    takes = spread(network, wanted, [(end, start) for start, end in ends])
+    return [
+        row
+        for row, (start, end) in zip(candidates, ends)  # noqa: B905 - Python 3.9
+        if lanes["item"][row] == item or (start in sends and end in takes)
+    ]
+
+
+def stocked(network: Network, item: int) -> set[int]:
+    """Return the sites that have stock of an item."""
+    supply = network.supply
+    rows = network.supply_of(item)
+    return {supply["site"][row] for row in rows if supply["quantity"].numbers[row] > 0}
+
+
+def spread(network: Network, start: set[int], ends: list[tuple[int, int]]) -> set[int]:
+    """Return the start, and each cross-dock that pairs lead to from there, step by step."""
+    onward = defaultdict(list)
+    for before, after in ends:
+        if network.passing[after]:
+            onward[before].append(after)
+    reached, new = set(start), list(start)
+    while new:
+        for site in onward.pop(new.pop(), ()):
+            if site not in reached:
+                reached.add(site)
+                new.append(site)
+    return reached
+
+
+class Arc:
+    """An arc that is no lane: from a place to another, with limits, money, and what it is for.
+
+    ``high`` is None where there is no limit; ``rank`` is 1 for shortage of the first priority.
+    """
+
+    __slots__ = ("head", "high", "key", "kind", "low", "money", "rank", "tail")
+
+    def __init__(  # noqa: PLR0913, PLR0917 - what an arc is
+        self,
+        kind: str,
+        tail: int,
+        head: int,
+        low: int,
+        high: int | None,
+        money: Fraction,
+        rank: int,
+        key: Key,
+    ) -> None:
+        """Keep the parts."""
+        self.kind, self.tail, self.head, self.low, self.high = kind, tail, head, low, high
+        self.money, self.rank, self.key = money, rank, key
+
+
+class Tiers:
+    """The stock of an item at a site: tiers of one cost, in whole steps, and the rows in them."""
+
+    def __init__(self) -> None:
+        """Start with nothing."""
+        self.costs: list[Fraction] = []
+        self.steps: list[int] = []
+        self.rows: list[tuple[int, int, str | None]] = []  # tier from 1, steps, lot
+        self.keep = self.keep_priority = 0
+
+
+class Line:
+    """An order line in steps: what it wants, and how much it matters."""
+
+    def __init__(self, row: int, site: int, wanted: int, rank: Key) -> None:
+        """Keep the parts; ``rank`` is priority (0 for money), money, and a position of origins."""
+        self.row, self.site, self.wanted = row, site, wanted
+        self.priority, self.money, self.origins = rank
+        self.group = ""
+
+
+class Formal:
+    """The formal network of one item: places, lanes between them, and other arcs.
+
+    Goods circulate from the root over stock, lanes and order lines back to the root; what is short
+    comes straight from the root. All quantities are in steps of the item.
+    """
+
+    def __init__(
+        self, network: Network, options: dict[str, Any], rules: list[Rule], item: int
+    ) -> None:
+        """Build the network; Unusable if it cannot be."""
+        self.network, self.options, self.item = network, options, item
+        self.name = network.items[item]["id"]
+        self.step: Fraction = network.items[item]["step"]
+        self.rules = [rule for rule in rules if item in rule.items]
+        self.rows = usable_lanes(network, item)
+        self.amounts = self._measures()
+        self.low: dict[int, int] = {}
+        self.high: dict[int, int] = {}
+        self._limit_lanes()
+        self.stock = self._stock()
+        self.lines = self._lines()
+        self.groups = self._groups()
+        self.places: dict[Key, int] = {(-1, "root", None): ROOT}
+        self.arcs: list[Arc] = []
+        self.priorities = sorted(
+            {line.priority for line in self.groups.values() if line.priority}
+            | {tiers.keep_priority for tiers in self.stock.values() if tiers.keep}
+        )
+        self._build()
+
+    def _measures(self) -> dict[int, Fraction]:
+        """Return for each measure on a usable lane how much of it one step is."""
+        measures = self.network.lanes["measure"]
+        codes = {measures.codes[row] for row in self.rows}
+        return {code: self._per_step(measures.values[code]) for code in codes}
+
+    def _per_step(self, measure: str) -> Fraction:
+        """Return how much of a measure one step of the item is."""
+        per: Fraction | None = self.network.measure(self.item, measure)
+        if per is None or per <= 0:
+            raise Unusable(f"item {self.name!r} has no {measure}")
+        return per * self.step
+
+    def _limit_lanes(self) -> None:  # noqa: C901, PLR0912 - one table of limits, in the order of precedence
+        """Work out what must and what can go on each lane, in steps; rules in their order."""
+        lanes, codes = self.network.lanes, self.network.lanes["measure"].codes
+        must, capacity = lanes["must_ship"], lanes["capacity"]
+        broken = set()
+        for row in self.rows:
+            if must.has(row):
+                steps = must[row] / self.amounts[codes[row]]
+                self.low[row] = steps.numerator // steps.denominator
+                if steps.denominator != 1:
+                    broken.add(row)
+            if capacity.has(row):
+                per = self.amounts[codes[row]] * capacity.power
+                self.high[row] = capacity.numbers[row] * per.denominator // per.numerator
+        fixed: set[int] = set()
+        for rule in self.rules:
+            if rule.kind != "fixed_quantity":
+                continue
+            for row in rule.lanes.intersection(self.rows):
+                steps = Fraction(rule.rule["quantity"]) / self.amounts[codes[row]]
+                whole = steps.numerator // steps.denominator
+                if row in fixed and self.low[row] != whole:
+                    raise Unusable("fixed quantities contradict each other")
+                self.low[row] = self.high[row] = whole
+                fixed.add(row)
+                broken.discard(row)
+                if steps.denominator != 1:
+                    broken.add(row)
+        for rule in self.rules:
+            if rule.kind == "closure":
+                for row in rule.lanes.intersection(self.rows):
+                    self.low[row] = self.high[row] = 0
+                    broken.discard(row)
+        if broken:
+            raise Unusable("a must-ship or fixed quantity is off the step")
+        if any(low > self.high[row] for row, low in self.low.items() if row in self.high):
+            raise Unusable("a must-ship is above its capacity")
+
+    def _stock(self) -> dict[int, Tiers]:
+        """Return the stock by site; running sums are rounded down to steps, then differenced."""
+        network, supply = self.network, self.network.supply
+        stock: dict[int, Tiers] = {}
+        held: dict[int, Fraction] = {}
+        for row in network.supply_of(self.item):
+            site = supply["site"][row]
+            tiers = stock.setdefault(site, Tiers())
+            units = network.units(self.item, supply["unit"][row])
+            cost = (supply["unit_cost"][row] or 0) / units
+            if not tiers.costs or tiers.costs[-1] != cost:
+                tiers.costs.append(cost)
+                tiers.steps.append(0)
+            before = held.get(site, Fraction(0))
+            held[site] = before + supply["quantity"][row] * units
+            gained = held[site] // self.step - before // self.step
+            tiers.steps[-1] += gained
+            tiers.rows.append((len(tiers.costs), gained, supply["lot"][row]))
+            kept = supply["keep_quantity"][row]
+            if kept is not None and kept * units >= self.step:
+                tiers.keep = kept * units // self.step
+                tiers.keep_priority = supply["keep_priority"][row]
+        return stock
+
+    def _lines(self) -> list[Line]:
+        """Return the order lines of the item, rounded as the options say."""
+        network, demand = self.network, self.network.demand
+        lines = []
+        for row in network.order_lines_of(self.item):
+            units = network.units(self.item, demand["unit"][row])
+            exact = demand["quantity"][row] * units / self.step
+            wanted = exact.numerator // exact.denominator
+            if exact.denominator != 1:
+                if self.options["demand_rounding"] == "refuse":
+                    raise Unusable("an order line is off the step")
+                wanted += self.options["demand_rounding"] == "up"
+            money = demand["shortage_cost"][row]
+            if money is None:
+                money = demand["worth_at_most"][row]
+            priority = demand["priority"][row]
+            if money is not None:
+                money /= units
+            elif not priority and self.options["worth_at_most"] is not None:
+                money = self.options["worth_at_most"]
+            elif not priority:
+                priority = 5
+            rank = (priority if money is None else 0, money, demand["origins"].codes[row])
+            lines.append(Line(row, demand["site"][row], wanted, rank))
+        return lines
+
+    def _groups(self) -> dict[str, Line]:
+        """Return the groups, by their smallest reference, each with the sum of what it wants."""
+        groups: dict[str, Line] = {}
+        labels: dict[Key, str] = {}
+        for line in self.lines:
+            if not line.wanted:
+                continue
+            rank = (line.priority, line.money, line.origins)
+            label = self.network.demand["reference"][line.row].decode()
+            line.group = labels.setdefault((line.site, *rank), label)
+            group = groups.setdefault(line.group, Line(line.row, line.site, 0, rank))
+            group.wanted += line.wanted
+        return groups
+
+    def place(self, site: int, side: str, qualifier: str | None = None) -> int:
+        """Return the number of a place, a new one if it is not known."""
+        return self.places.setdefault((site, side, qualifier), len(self.places))
+
+    def arc(  # noqa: PLR0913, PLR0917 - what an arc is
+        self,
+        kind: str,
+        tail: int,
+        head: int,
+        key: Key = (),
+        money: Fraction = Fraction(0),
+        high: int | None = UNLIMITED,
+        low: int = 0,
+        rank: int = 0,
+    ) -> None:
+        """Add an arc."""
+        self.arcs.append(Arc(kind, tail, head, low, high, money, rank, key))
+
+    def allowed(self, group: Line) -> set[int] | None:
+        """Return the sites whose stock may serve a group, None if all may."""
+        if group.origins < 0:
+            return None
+        return {self.network.site_at[site] for site in self.network.origins[group.origins]}
+
+    def _build(self) -> None:
+        """Add all places and arcs."""
+        lanes = self.network.lanes
+        self.starts = {lanes["origin"][row] for row in self.rows}
+        self.before = defaultdict(set)
+        for row in self.rows:
+            self.before[lanes["destination"][row]].add(lanes["origin"][row])
+        at_site = defaultdict(list)
+        for label, group in self.groups.items():
+            at_site[group.site].append((label, group))
+        relevant = self.starts | set(self.before) | set(self.stock) | set(at_site)
+        self.closed = set()
+        for rule in self.rules:
+            if rule.kind == "closure":
+                self.closed |= rule.sites
+        self.limits = self._throughput(relevant)
+        self.leave: dict[int, int] = {}
+        self.enter: dict[int, int] = {}
+        for site in sorted(relevant):
+            self._build_site(site, at_site[site])
+            if site in self.stock:
+                self._build_stock(site, self.stock[site])
+        self.lane_tail = array("i", [self.leave[lanes["origin"][row]] for row in self.rows])
+        self.lane_head = array("i", [self._end(row) for row in self.rows])
+
+    def _end(self, row: int) -> int:
+        """Return the place where a lane ends."""
+        lanes = self.network.lanes
+        site = lanes["destination"][row]
+        if site in self.enter:
+            return self.enter[site]
+        return self.places[(site, "received", self.network.sites[lanes["origin"][row]]["id"])]
+
+    def _throughput(self, relevant: set[int]) -> dict[int, dict[str, int]]:
+        """Return by site and flow the least limit in steps."""
+        limits: dict[int, dict[str, int]] = defaultdict(dict)
+        for rule in self.rules:
+            if rule.kind != "throughput":
+                continue
+            for site in rule.sites & relevant:
+                per = self._per_step(rule.rule.get("measure", "unit"))
+                most, flow = Fraction(rule.rule["maximum"]) // per, rule.rule["flow"]
+                limits[site][flow] = min(most, limits[site].get(flow, most))
+        return limits
+
+    def _build_site(self, site: int, groups: list[tuple[str, Line]]) -> None:  # noqa: C901 - a site is built in one place
+        """Add what a site is made of, and the order lines there."""
+        network, limit = self.network, self.limits.get(site, {})
+        passing, arrivals = network.passing[site], self.before.get(site, set())
+        choosy = any(group.origins >= 0 for _, group in groups)
+        mixed = not passing and arrivals and (site in self.stock or site in self.starts)
+        apart = bool(choosy or mixed)
+        if apart and limit and (passing or set(limit) != {"sent"}):
+            raise Unusable("a throughput limit is not built")
+        handling = network.sites[site]["handling"](self.name) * self.step
+        shut = 0 if site in self.closed else UNLIMITED
+        through = 0 if site in self.closed else limit.get("through")
+        entry, exit_ = self.place(site, "in"), self.place(site, "out")
+        self.arc("handle", entry, exit_, (site,), handling, through)
+        self.leave[site] = exit_
+        if apart or "sent" in limit:
+            self.leave[site] = self.place(site, "sent")
+            self.arc("leave", exit_, self.leave[site], (site,), high=limit.get("sent"))
+        received: list[tuple[int | None, str | None]] = []
+        if choosy:
+            received = [(origin, network.sites[origin]["id"]) for origin in sorted(arrivals)]
+        elif (apart and arrivals) or "received" in limit:
+            received = [(None, None)]
+        if not choosy:
+            self.enter[site] = self.place(site, "received") if received else entry
+        for _, name in received:
+            at = self.place(site, "received", name)
+            if not apart:
+                self.arc("enter", at, entry, (site,), high=limit["received"])
+            elif passing:
+                self.arc("pass", at, self.leave[site], (site, name), handling, shut)
+        for label, group in groups:
+            node, allowed = self.place(site, "demand", label), self.allowed(group)
+            if allowed is None or site in allowed:
+                self.arc("serve", exit_, node, (site, label, "out", None))
+            for origin, name in received if apart else ():
+                if allowed is None or self._accepts(origin, allowed):
+                    at, key = self.place(site, "received", name), (site, label, "received", name)
+                    self.arc("serve", at, node, key, handling, shut)
+            self._want(node, group.wanted, (site, label), group.priority, group.money)
+
+    def _accepts(self, origin: int | None, allowed: set[int]) -> bool:
+        """Return whether all stock that can come from ``origin`` is allowed; none of it: no."""
+        assert origin is not None  # noqa: S101 - only sites with origins ask
+        behind, new = {origin}, [origin]
+        while new:
+            here = new.pop()
+            for before in self.before.get(here, ()) if self.network.passing[here] else ():
+                if before not in behind:
+                    behind.add(before)
+                    new.append(before)
+        behind &= stocked(self.network, self.item)
+        if behind & allowed and behind - allowed:
+            raise Unusable("origins behind a cross-dock are allowed only in part")
+        return bool(behind & allowed)
+
+    def _build_stock(self, site: int, tiers: Tiers) -> None:
+        """Add the stock of a site, and what of it should stay."""
+        entry = self.place(site, "in")
+        for tier, (cost, steps) in enumerate(zip(tiers.costs, tiers.steps), 1):  # noqa: B905 - 3.9
+            key, money = (site, tier), cost * self.step
+            if not tiers.keep:
+                self.arc("draw", ROOT, entry, key, money, steps)
+                continue
+            at = self.place(site, "stock", str(tier))
+            self.arc("supply", ROOT, at, key, high=steps)
+            self.arc("draw", at, entry, key, money)
+            self.arc("keep", at, self.place(site, "keep"), key)
+        if tiers.keep:
+            keep = self.place(site, "keep")
+            self._want(keep, tiers.keep, (site, None), tiers.keep_priority, None)
+
+    def _want(
+        self, node: int, wanted: int, key: Key, priority: int, money: Fraction | None
+    ) -> None:
+        """Add what is wanted at a place, and how short it may be."""
+        self.arc("want", node, ROOT, high=wanted, low=wanted)
+        if self.options["shortages"] == "allow":
+            rank = self.priorities.index(priority) + 1 if priority else 0
+            cost = (money or Fraction(0)) * self.step
+            self.arc("short", ROOT, node, key, cost, rank=rank)
+
+
+# ------------------------------------------------------------------ 6. the proof
+
+
+class Flow:
+    """The flow of one item as plan and certificate state it, on lanes and on other arcs."""
+
+    def __init__(  # noqa: C901 - three passes over the arcs, each needing the one before
+        self, formal: Formal, on_lane: dict[int, int], stated: dict[Key, int]
+    ) -> None:
+        """Put stated flows on their arcs, and work out the rest: entering, handling, leaving."""
+        self.formal, self.on_lane = formal, on_lane
+        at_row = {row: at for at, row in enumerate(formal.rows)} if on_lane else {}
+        self.lanes = {at_row[row]: steps for row, steps in on_lane.items()}
+        came: dict[int, int] = defaultdict(int)
+        went: dict[int, int] = defaultdict(int)
+        for at, steps in self.lanes.items():
+            came[formal.lane_head[at]] += steps
+            went[formal.lane_tail[at]] += steps
+        self.arcs = [0] * len(formal.arcs)
+        for at, arc in enumerate(formal.arcs):
+            if arc.kind == "want":
+                self.arcs[at] = arc.low
+            elif arc.kind == "supply":
+                self.arcs[at] = stated.get(("draw", *arc.key), 0) + stated.get(
+                    ("keep", *arc.key), 0
+                )
+            else:
+                self.arcs[at] = stated.get((arc.kind, *arc.key), 0)
+            if arc.kind == "draw":
+                came[arc.head] += self.arcs[at]
+            elif arc.kind == "pass":
+                went[arc.head] -= self.arcs[at]
+        for at, arc in enumerate(formal.arcs):
+            if arc.kind == "enter":
+                self.arcs[at] = came[arc.tail]
+                came[arc.head] += came[arc.tail]
+            elif arc.kind == "leave":
+                self.arcs[at] = went[arc.head]
+        for at, arc in enumerate(formal.arcs):
+            if arc.kind == "handle":
+                self.arcs[at] = came[arc.tail]
+
+    def of(self, kind: str) -> dict[Key, int]:
+        """Return the flows above 0 on arcs of a kind, by their key."""
+        pairs = zip(self.formal.arcs, self.arcs)  # noqa: B905 - Python 3.9
+        return {arc.key: steps for arc, steps in pairs if arc.kind == kind and steps}
+
+
+def amount(text: str) -> Fraction:
+    """Return the value of the text of an exact number."""
+    return Fraction(text)
+
+
+def in_steps(text: str, step: Fraction) -> int | None:
+    """Return a quantity in steps, None unless it is a whole number above 0."""
+    steps = Fraction(text) / step
+    return steps.numerator if steps.denominator == 1 and steps > 0 else None
+
+
+def read_flow(
+    formal: Formal, lines: list[PlanLine], proof: dict[str, Any], report: Report
+) -> Flow | None:
+    """Return the flow of an item, None if documents do not state one."""
+    usable, sound = set(formal.rows), True
+    on_lane = {}
+    for line in lines:
+        steps = in_steps(line.document["quantity"], formal.step)
+        if line.row not in usable:
+            report.add("name_unknown", "the item cannot use this lane", line.place)
+            sound = False
+        if steps is None:
+            report.add("quantity_wrong", "not a whole number of steps above 0", line.place)
+            sound = False
+        on_lane[line.row] = steps or 0
+    known = {(arc.kind, *arc.key) for arc in formal.arcs if arc.key}
+    stated: dict[Key, int] = {}
+    tables = (
+        ("draws", "draw", ("tier",)),
+        ("kept", "keep", ("tier",)),
+        ("serves", "serve", ("group", "from", "origin")),
+        ("passes", "pass", ("origin",)),
+        ("shortages", "short", ("group",)),
+    )
+    for table, kind, fields in tables:
+        for number, entry in enumerate(proof[table]):
+            place = f"items/{formal.name}/{table}/{number}"
+            site = formal.network.site_at.get(entry["site"], -1)
+            key = (kind, site, *(entry[field] for field in fields))
+            steps = in_steps(entry["quantity"], formal.step)
+            if key not in known:
+                report.add("name_unknown", "there is no such arc", place)
+                sound = False
+            elif key in stated:
+                report.add("listed_twice", "this flow is stated twice", place)
+                sound = False
+            if steps is None:
+                report.add("quantity_wrong", "not a whole number of steps above 0", place)
+                sound = False
+            stated[key] = steps or 0
+    return Flow(formal, on_lane, stated) if sound else None
+
+
+def check_flow(flow: Flow, report: Report) -> None:
+    """Check every limit, and that as much leaves every place as comes to it."""
+    formal = flow.formal
+    balance: dict[int, int] = defaultdict(int)
+    for row, low in formal.low.items():
+        if flow.on_lane.get(row, 0) < low:
+            report.add("limit_broken", "less than must go", formal.network.lane_names.name(row))
+    for row, high in formal.high.items():
+        if flow.on_lane.get(row, 0) > high:
+            report.add("limit_broken", "more than can go", formal.network.lane_names.name(row))
+    for at, steps in flow.lanes.items():
+        balance[formal.lane_tail[at]] -= steps
+        balance[formal.lane_head[at]] += steps
+    for arc, steps in zip(formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
+        if steps < arc.low or (arc.high is not None and steps > arc.high):
+            report.add("limit_broken", f"{arc.kind} {steps}", formal.name)
+        balance[arc.tail] -= steps
+        balance[arc.head] += steps
+    for place, at in formal.places.items():
+        if balance[at]:
+            report.add("not_conserved", f"{balance[at]} steps are lost at {place[1]}", formal.name)
+
+
+def read_prices(formal: Formal, proof: dict[str, Any], report: Report) -> list[int] | None:
+    """Return the price of every place, None if the certificate does not state them."""
+    prices, sound = {ROOT: 0}, True
+    for number, entry in enumerate(proof["prices"]):
+        place = f"items/{formal.name}/prices/{number}"
+        site = formal.network.site_at.get(entry["site"], -1)
+        node = formal.places.get((site, entry["side"], entry["qualifier"]))
+        if node is None:
+            report.add("name_unknown", "there is no such place", place)
+            sound = False
+        elif node in prices:
+            report.add("listed_twice", "a place has two prices", place)
+            sound = False
+        else:
+            prices[node] = int(entry["price"])
+    if not sound:
+        return None
+    for key, node in formal.places.items():
+        if node not in prices:
+            report.add("price_missing", f"no price at {key[1]}", formal.name)
+    if len(prices) < len(formal.places):
+        return None
+    return [prices[node] for node in range(len(formal.places))]
+
+
+def check_prices(  # noqa: C901 - the argument of the proof, from top to bottom
+    flow: Flow, proof: dict[str, Any], scale: Fraction, report: Report
+) -> None:
+    """Check that no flow costs less, over every lane (complementary slackness).
+
+    With prices at the places, an arc from i to j has the reduced cost: cost + price(i) - price(j).
+    Where it is above 0 nothing beyond the minimum may flow; below 0 the arc must be full. Then any
+    other flow costs at least as much. One step short of the r-th of T priorities costs
+    (T + 1 - r) * base; a base above what any way round the network can cost makes less shortage
+    of a priority better than any saving, and better than any shortage of later priorities.
+    """
+    formal = flow.formal
+    prices = read_prices(formal, proof, report)
+    lanes = formal.network.lanes
+    costs, codes = lanes["unit_cost"], lanes["measure"].codes
+    factors = {}
+    for code, per in formal.amounts.items():
+        ratio = per * scale / costs.power
+        factors[code] = (ratio.numerator, ratio.denominator)
+    lane_costs, whole = [], True
+    for row in formal.rows:
+        times, over = factors[codes[row]]
+        cost, rest = divmod(costs.numbers[row] * times, over)
+        whole = whole and not rest
+        lane_costs.append(cost)
+    arc_costs = [arc.money * scale for arc in formal.arcs]
+    if not whole or any(cost.denominator != 1 for cost in arc_costs):
+        report.add("cost_scale_wrong", "a scaled cost is not whole", formal.name)
+        return
+    base = int(proof["base"])
+    largest = max(map(abs, itertools.chain([0], lane_costs, arc_costs)))
+    if base < 2 * len(formal.places) * largest + 1:
+        report.add("weights_too_small", "the base does not prove the order", formal.name)
+    if prices is None:
+        return
+    for at, cost in enumerate(lane_costs):
+        reduced = cost + prices[formal.lane_tail[at]] - prices[formal.lane_head[at]]
+        if reduced:
+            row, steps = formal.rows[at], flow.lanes.get(at, 0)
+            right = formal.low.get(row, 0) if reduced > 0 else formal.high.get(row)
+            if steps != right:
+                name = formal.network.lane_names.name(row)
+                report.add("not_optimal", f"{steps} steps contradict the prices", name)
+    for arc, steps, cost in zip(formal.arcs, flow.arcs, arc_costs):  # noqa: B905 - Python 3.9
+        weight = (len(formal.priorities) + 1 - arc.rank) * base if arc.rank else 0
+        reduced = cost.numerator + weight + prices[arc.tail] - prices[arc.head]
+        if reduced and steps != (arc.low if reduced > 0 else arc.high):
+            report.add("not_optimal", f"{arc.kind} {steps} contradicts the prices", formal.name)
+
+
+def check_cut(formal: Formal, cut: dict[str, Any], place: str, report: Report) -> None:
+    """Check that more must leave a set of places than can come into it."""
+    inside = {ROOT} if cut["root"] else set()
+    for entry in cut["nodes"]:
+        site = formal.network.site_at.get(entry["site"], -1)
+        node = formal.places.get((site, entry["side"], entry["qualifier"]))
+        if node is None or node in inside:
+            code = "name_unknown" if node is None else "listed_twice"
+            report.add(code, "a place of the cut", place)
+            return
+        inside.add(node)
+    lanes = (
+        (formal.lane_tail[at], formal.lane_head[at], formal.low.get(row, 0), formal.high.get(row))
+        for at, row in enumerate(formal.rows)
+    )
+    others = ((arc.tail, arc.head, arc.low, arc.high) for arc in formal.arcs)
+    out = can_enter = 0
+    for tail, head, low, high in itertools.chain(lanes, others):
+        if tail in inside and head not in inside:
+            out += low
+        elif tail not in inside and head in inside:
+            if high is None:
+                report.add("cut_wrong", "an arc without limit leads into the cut", place)
+                return
+            can_enter += high
+    if out <= can_enter:
+        report.add("cut_wrong", "no more must leave than can come in", place)
+    if (amount(cut["forced_out"]), amount(cut["can_enter"])) != (
+        out * formal.step,
+        can_enter * formal.step,
+    ):
+        report.add("cut_wrong", "the quantities are not those of the cut", place)
+
+
+class PlanLine:
+    """A plan line, with what it names found; ``row`` is -1 for goods used where they are drawn."""
+
+    def __init__(self, document: dict[str, Any], number: int, ends: Key) -> None:
+        """Keep the parts."""
+        self.document, self.place = document, f"plan_lines/{number}"
+        self.row, self.origin, self.destination, self.item = ends
+
+
+def read_plan_lines(
+    network: Network, plan: dict[str, Any], report: Report
+) -> list[PlanLine] | None:
+    """Return the plan lines, None if one names what is not there."""
+    lines, seen, sound = [], set(), True
+    for number, document in enumerate(plan["plan_lines"]):
+        local = document["lane"] is None
+        row = -1 if local else network.lane_names.row(document["lane"])
+        origin = network.site_at.get(document["origin"], -1)
+        destination = network.site_at.get(document["destination"], -1)
+        item = network.item_at.get(document["item"], -1)
+        line = PlanLine(document, number, (row, origin, destination, item))
+        if min(origin, destination, item) < 0 or (row < 0 and not local):
+            report.add("name_unknown", "a plan line names what is not there", line.place)
+            sound = False
+            continue
+        key = (row, item, origin if local else -1)
+        if key in seen:
+            report.add("listed_twice", "two plan lines for one lane and item", line.place)
+            sound = False
+        seen.add(key)
+        lines.append(line)
+    return lines if sound else None
+
+
+# ------------------------------------------------------------------ 7. the tables of the plan
+
+
+class Audit:
+    """One plan and its certificate, checked against the network."""
+
+    def __init__(
+        self,
+        network: Network,
+        options: dict[str, Any],
+        plan: Value,
+        certificate: Value,
+        report: Report,
+    ) -> None:
+        """Keep the documents."""
+        self.network, self.options, self.report = network, options, report
+        self.plan, self.certificate = plan, certificate
+        self.flows: list[Flow] = []
+
+    def run(self, network_digest: str, options_digest: str) -> None:
+        """Check everything."""
+        for code, sound in (
+            ("plan_malformed", is_plan(self.plan)),
+            ("certificate_malformed", is_certificate(self.certificate)),
+        ):
+            if not sound:
+                self.report.add(code, "the document does not have its shape")
+        if self.report.problems:
+            return
+        self._check_heads(network_digest, options_digest)
+        rules = rules_in_force(self.network)
+        self._check_rules(rules)
+        if self._has_unclear_limits():
+            self.report.add("network_unusable", "a limit of several items does not say per what")
+            return
+        without = self.certificate["lexicographic"] == "no_plan"
+        if without != (self.plan["status"] == "no_plan"):
+            self.report.add("bound_wrong", "plan and certificate are about different answers")
+        elif without:
+            self._check_cuts(rules)
+        else:
+            self._check_planned(rules)
+
+    def _check_heads(self, network_digest: str, options_digest: str) -> None:
+        """Check digests and what the documents repeat of the head."""
+        plan, certificate, head = self.plan, self.certificate, self.network.head
+        digests = {
+            "network_digest": network_digest,
+            "options_digest": options_digest,
+        }
+        for document in (plan, certificate, plan["certificate"]):
+            for field, right in digests.items():
+                if document.get(field, right) != right:
+                    self.report.add("digest_mismatch", "it belongs to something else", field)
+        for field in ("name", "currency", "cut_off", "release_by"):
+            if plan[field] != head.get(field):
+                self.report.add("plan_head", "not that of the network", field)
+        if certificate["currency"] != head["currency"]:
+            self.report.add("plan_head", "not that of the network", "certificate currency")
+
+    def _check_rules(self, rules: list[Rule]) -> None:
+        """Check the list of rules."""
+        applied = {rule.rule["id"] for rule in rules}
+        expected = [
+            {field: rule.get(field) for field in ("rule", "id", "note", "owner")}
+            for rule in self.network.head["rules"]
+        ]
+        stated = [dict(rule) for rule in self.plan["rules_in_force"]]
+        right = [rule.pop("applied") == (rule["id"] in applied) for rule in stated]
+        for rule in stated:
+            del rule["binding"]
+        if stated != expected or not all(right):
+            self.report.add("rules_wrong", "not the rules of the network", "rules_in_force")
+
+    def _has_unclear_limits(self) -> bool:
+        """Return whether a limit on a lane of several items does not say that it is per item."""
+        lanes = self.network.lanes
+        unclear = {
+            row
+            for row in self.network.lanes_of(-1)
+            if lanes["per"][row] is None
+            and (lanes["capacity"].has(row) or lanes["must_ship"].has(row))
+        }
+        users: dict[int, int] = defaultdict(int)
+        for item in range(len(self.network.items) if unclear else 0):
+            for row in unclear.intersection(usable_lanes(self.network, item)):
+                users[row] += 1
+        return any(count > 1 for count in users.values())
+
+    def _check_cuts(self, rules: list[Rule]) -> None:
+        """Check the proof that there is no plan."""
+        cuts = self.certificate["cuts"]
+        if not cuts:
+            self.report.add("cut_wrong", "there is no cut")
+        for number, cut in enumerate(cuts):
+            item = self.network.item_at.get(cut["item"])
+            if item is None:
+                self.report.add("name_unknown", "no such item", f"cuts/{number}")
+                continue
+            try:
+                formal = Formal(self.network, self.options, rules, item)
+            except Unusable as error:
+                self.report.add("network_unusable", str(error), cut["item"])
+                continue
+            check_cut(formal, cut, f"cuts/{number}", self.report)
+
+    def _check_planned(self, rules: list[Rule]) -> None:
+        """Check each item, and then what is said of all of them."""
+        report, proofs = self.report, self.certificate["items"]
+        lines = read_plan_lines(self.network, self.plan, report)
+        if [proof["item"] for proof in proofs] != [item["id"] for item in self.network.items]:
+            report.add("name_unknown", "not the items of the network", "items")
+            return
+        if lines is None:
+            return
+        scale = amount(self.certificate["cost_scale"])
+        if scale <= 0:
+            report.add("cost_scale_wrong", "not above 0", "cost_scale")
+            return
+        on_lanes = defaultdict(list)
+        for line in lines:
+            if line.row >= 0:
+                on_lanes[line.item].append(line)
+        for item, proof in enumerate(proofs):
+            try:
+                formal = Formal(self.network, self.options, rules, item)
+            except Unusable as error:
+                report.add("network_unusable", str(error), proof["item"])
+                continue
+            flow = read_flow(formal, on_lanes[item], proof, report)
+            if flow is not None:
+                check_flow(flow, report)
+                check_prices(flow, proof, scale, report)
+                self.flows.append(flow)
+        if len(self.flows) == len(proofs):
+            Tables(self, lines, rules).check()
+
+
+class Tables:
+    """The tables of a plan whose flow is known for every item."""
+
+    def __init__(self, audit: Audit, lines: list[PlanLine], rules: list[Rule]) -> None:
+        """Keep what is compared."""
+        self.network, self.plan, self.report = audit.network, audit.plan, audit.report
+        self.certificate, self.options = audit.certificate, audit.options
+        self.flows, self.lines, self.rules = audit.flows, lines, rules
+        self.drawn = [flow.of("draw") for flow in self.flows]
+        # What sources of order lines use, in steps: by lane and item, or by site and item.
+        self.used: dict[Key, int] = defaultdict(int)
+        self.first: dict[Key, int] = defaultdict(int)
+        self.last: dict[Key, int] = defaultdict(int)
+        self.local: dict[Key, int] = defaultdict(int)
+        self.lots: dict[Key, int] = defaultdict(int)
+        self.references: dict[int, set[str]] = defaultdict(set)
+
+    def wrong(self, code: str, detail: str, place: str) -> None:
+        """Note a problem."""
+        self.report.add(code, detail, place)
+
+    def check(self) -> None:
+        """Check all tables."""
+        parts = self._money()
+        self._check_steps(parts)
+        self._check_site_limits()
+        self._check_site_use()
+        self._check_totals(parts)
+        if not self._check_order_lines():
+            return
+        self._check_use()
+        self._check_shortages()
+        self._check_plan_lines()
+        self._check_consignments()
+
+    def lane_money(self, row: int, item: int) -> Fraction:
+        """Return what one unit of an item costs on a lane."""
+        lanes = self.network.lanes
+        cost: Fraction = lanes["unit_cost"][row]
+        per: Fraction = self.network.measure(item, lanes["measure"][row])
+        return cost * per
+
+    def _money(self) -> list[dict[str, Fraction]]:
+        """Return the parts of the cost of every item."""
+        kinds = {
+            "draw": "supply",
+            "handle": "handling",
+            "serve": "handling",
+            "pass": "handling",
+            "short": "shortage",
+        }
+        parts = []
+        for flow in self.flows:
+            money = dict.fromkeys(("supply", "handling", "transport", "shortage"), Fraction(0))
+            for arc, steps in zip(flow.formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
+                if arc.kind in kinds:
+                    money[kinds[arc.kind]] += steps * arc.money
+            for row, steps in flow.on_lane.items():
+                per_step = self.lane_money(row, flow.formal.item) * flow.formal.step
+                money["transport"] += steps * per_step
+            parts.append(money)
+        return parts
+
+    def _check_steps(self, parts: list[dict[str, Fraction]]) -> None:
+        """Check the steps of what is minimised, and the bounds."""
+        expected: list[tuple[str, int | None, Fraction]] = []
+        total = Fraction(0)
+        for flow, money in zip(self.flows, parts):  # noqa: B905 - Python 3.9
+            formal = flow.formal
+            short = dict.fromkeys(formal.priorities, 0)
+            for arc, steps in zip(formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
+                if arc.rank:
+                    short[formal.priorities[arc.rank - 1]] += steps
+            if self.options["shortages"] == "allow":
+                expected += [(formal.name, p, steps * formal.step) for p, steps in short.items()]
+            expected.append((formal.name, None, sum(money.values(), Fraction(0))))
+            total += expected[-1][2]
+        steps_ = self.certificate["steps"]
+        stated = [(one["item"], one.get("priority"), amount(one["achieved"])) for one in steps_]
+        if stated != expected:
+            self.wrong("bound_wrong", "not what was achieved", "steps")
+        if any(amount(one["achieved"]) != amount(one["bound"]) for one in steps_):
+            self.wrong("bound_wrong", "a bound that is not achieved", "steps")
+        for value in (
+            self.certificate["total_cost"],
+            self.certificate["lower_bound"],
+            self.plan["certificate"]["lower_bound"],
+        ):
+            if amount(value) != total:
+                self.wrong("bound_wrong", "not the cost of the plan", "lower_bound")
+
+    def _check_site_limits(self) -> None:
+        """Check throughput limits over all items of a rule together."""
+        lanes = self.network.lanes
+        for rule in self.rules:
+            if rule.kind != "throughput":
+                continue
+            passed: dict[int, Fraction] = defaultdict(Fraction)
+            end = lanes["origin" if rule.rule["flow"] == "sent" else "destination"]
+            for flow in self.flows:
+                formal = flow.formal
+                moved = [(end[row], steps) for row, steps in flow.on_lane.items()]
+                if rule.rule["flow"] == "through":
+                    moved += [(key[0], steps) for key, steps in flow.of("draw").items()]
+                moved = [(site, steps) for site, steps in moved if site in rule.sites]
+                if formal.item not in rule.items or not moved:
+                    continue
+                measure = rule.rule.get("measure", "unit")
+                per = self.network.measure(formal.item, measure) * formal.step
+                for site, steps in moved:
+                    passed[site] += steps * per
+            if any(quantity > Fraction(rule.rule["maximum"]) for quantity in passed.values()):
+                self.wrong("limit_broken", "a throughput limit over items", rule.rule["id"])
+
+    def _check_site_use(self) -> None:
+        """Check the use of stock."""
+        expected = []
+        for flow in self.flows:
+            drawn, kept = flow.of("draw"), flow.of("keep")
+            for site, tiers in flow.formal.stock.items():
+                there = sum(tiers.steps)
+                numbers = range(1, len(tiers.steps) + 1)
+                shipped = sum(drawn.get((site, tier), 0) for tier in numbers)
+                stays = sum(kept.get((site, tier), 0) for tier in numbers)
+                if there:
+                    steps = (there, shipped, stays, there - shipped - stays)
+                    exact = tuple(flow.formal.step * number for number in steps)
+                    expected.append((site, flow.formal.item, *exact))
+        stated = []
+        for entry in self.plan["site_use"]:
+            ends = self.network.site_at.get(entry["site"]), self.network.item_at.get(entry["item"])
+            fields = ("available", "shipped", "kept", "left")
+            stated.append((*ends, *(amount(entry[field]) for field in fields)))
+        if stated != sorted(expected):
+            self.wrong("site_use_wrong", "not what is drawn and kept", "site_use")
+
+    def _check_totals(self, parts: list[dict[str, Fraction]]) -> None:  # noqa: C901 - one table
+        """Check money, its rounding, counts of order lines, and quantities."""
+        plan, totals = self.plan, self.plan["totals"]
+        sums = dict.fromkeys(plan["cost_parts"], Fraction(0))
+        for money in parts:
+            for part, value in money.items():
+                sums[part] += value
+        total = sum(sums.values(), Fraction(0))
+        right = all(amount(plan["cost_parts"][part]) == value for part, value in sums.items())
+        if not right or amount(plan["total_cost"]) != total:
+            self.wrong("total_wrong", "not the sum of costs", "cost_parts")
+        rounded = amount(plan["total_cost_rounded"])
+        if plan["total_cost_rounded"] not in rounded_forms(total):
+            self.wrong("total_wrong", "not the total, rounded", "total_cost_rounded")
+        if amount(plan["rounding_difference"]) != rounded - total:
+            self.wrong("total_wrong", "not the difference", "rounding_difference")
+        lines = [(amount(line["served"]), amount(line["short"])) for line in plan["order_lines"]]
+        complete = sum(not short for _, short in lines)
+        none = sum(bool(short) and not served for served, short in lines)
+        counts = (complete, len(lines) - complete - none, none, len(plan["set_aside"]))
+        fields = ("lines_complete", "lines_in_part", "lines_none", "set_aside")
+        if tuple(totals[field] for field in fields) != counts:
+            self.wrong("total_wrong", "not the number of order lines", "totals")
+        expected = []
+        for flow in self.flows:
+            item, step = self.network.items[flow.formal.item], flow.formal.step
+            wanted = sum(line.wanted for line in flow.formal.lines) * step
+            served = sum(flow.of("serve").values()) * step
+            weight = served * item["weight_kg"] if "weight_kg" in item else "unknown"
+            if wanted:
+                expected.append([item["id"], item["unit"], wanted, served, wanted - served, weight])
+        stated = []
+        for entry in totals["quantities"]:
+            numbers = [amount(entry[field]) for field in ("wanted", "served", "short")]
+            weight = entry["weight_kg"]
+            weight = weight if weight == "unknown" else amount(weight)
+            stated.append([entry["item"], entry["unit"], *numbers, weight])
+        if stated != expected:
+            self.wrong("total_wrong", "not the quantities", "totals")
+
+    def _check_order_lines(self) -> bool:  # noqa: C901 - one table
+        """Check each order line; return whether all of their ways could be followed."""
+        documents, demand = self.plan["order_lines"], self.network.demand
+        names = [name.decode() for name in demand["reference"]]
+        if [document["reference"] for document in documents] != names:
+            self.wrong("order_line_wrong", "not the order lines of the network", "order_lines")
+            return False
+        sound = True
+        served: dict[Key, Fraction] = defaultdict(Fraction)
+        for flow in self.flows:
+            formal = flow.formal
+            for line in formal.lines:
+                document, place = documents[line.row], f"order_lines/{line.row}"
+                if not self._is_ordered(formal, line, document):
+                    self.wrong("order_line_wrong", "not what was ordered", place)
+                if not adds_up(document):
+                    self.wrong("order_line_wrong", "it does not add up", place)
+                for source in document["sources"]:
+                    sound = self._follow(flow, line, source, place) and sound
+                served[(formal.item, line.group)] += amount(document["served"])
+        if not sound:
+            return False
+        for flow in self.flows:
+            formal = flow.formal
+            got: dict[str, int] = defaultdict(int)
+            for key, steps in flow.of("serve").items():
+                got[key[1]] += steps
+            for label in formal.groups:
+                if served[(formal.item, label)] != got[label] * formal.step:
+                    self.wrong("order_line_wrong", "a group gets other than its flow", label)
+        return True
+
+    def _is_ordered(self, formal: Formal, line: Line, document: dict[str, Any]) -> bool:
+        """Return whether an order line repeats what the network says of it."""
+        demand, row = self.network.demand, line.row
+        units = self.network.units(formal.item, demand["unit"][row])
+        ordered, wanted = demand["quantity"][row] * units, line.wanted * formal.step
+        said = {field: document.get(field) for field in ("order", "site", "item", "priority")}
+        right = {
+            "order": demand["order"][row],
+            "site": self.network.sites[line.site]["id"],
+            "item": formal.name,
+            "priority": line.priority or None,
+        }
+        numbers: list[tuple[str, Fraction | None]] = [("quantity", wanted)]
+        numbers += [
+            ("shortage_cost", line.money),
+            ("ordered", None if ordered == wanted else ordered),
+        ]
+        for field, value in numbers:
+            text = document.get(field)
+            if (None if text is None else amount(text)) != value:
+                return False
+        for field in ("tags", "extra"):
+            text = demand[field][row]
+            if document.get(field) != (None if text is None else json.loads(text)):
+                return False
+        return said == right
+
+    def _follow(self, flow: Flow, line: Line, source: dict[str, Any], place: str) -> bool:
+        """Follow one source from its origin to the site of its line, and count what it uses."""
+        network, formal = self.network, flow.formal
+        steps = in_steps(source["quantity"], formal.step)
+        origin = network.site_at.get(source["origin"], -1)
+        rows = [network.lane_names.row(leg["lane"]) for leg in source["legs"]]
+        allowed = formal.allowed(line)
+        here, right = origin, origin >= 0 and source["item"] == formal.name
+        right = right and (allowed is None or origin in allowed)
+        for number, row in enumerate(rows):
+            right = right and row in flow.on_lane and network.lanes["origin"][row] == here
+            right = right and (number == 0 or network.passing[here])
+            here = network.lanes["destination"][row] if right else -1
+        if steps is None:
+            self.wrong("order_line_wrong", "not a whole number of steps above 0", place)
+            return False
+        if not right or here != line.site:
+            self.wrong("route_wrong", "no way from origin to site", place)
+            return False
+        self.lots[(origin, formal.item, source["lot"])] += steps
+        for row in rows:
+            self.used[(row, formal.item)] += steps
+            self.references[row].add(network.demand["reference"][line.row].decode())
+        if rows:
+            self.first[(rows[0], formal.item)] += steps
+            self.last[(rows[-1], formal.item)] += steps
+        else:
+            self.local[(line.site, formal.item)] += steps
+        return True
+
+    def _check_use(self) -> None:
+        """Check that sources use lots and lanes as the flow does; the rest may only circle."""
+        lanes = self.network.lanes
+        lots: dict[Key, int] = defaultdict(int)
+        for flow in self.flows:
+            item, drawn = flow.formal.item, flow.of("draw")
+            for site, tiers in flow.formal.stock.items():
+                left = {
+                    tier + 1: drawn.get((site, tier + 1), 0) for tier in range(len(tiers.steps))
+                }
+                for tier, steps, lot in tiers.rows:
+                    taken = min(steps, left[tier])
+                    left[tier] -= taken
+                    if taken:
+                        lots[(site, item, lot)] += taken
+            balance: dict[int, int] = defaultdict(int)
+            overdrawn = False
+            for row, steps in flow.on_lane.items():
+                rest = steps - self.used.get((row, item), 0)
+                overdrawn = overdrawn or rest < 0
+                balance[lanes["origin"][row]] -= rest
+                balance[lanes["destination"][row]] += rest
+            if overdrawn or any(balance.values()):
+                self.wrong("lane_use_wrong", "sources and flow differ", flow.formal.name)
+        if lots != self.lots:
+            self.wrong("lot_wrong", "not the lots at the head of the stock", "order_lines")
+
+    def _check_shortages(self) -> None:
+        """Check the list of what is short."""
+        network = self.network
+        expected = [
+            (line["reference"], line["site"], line["item"], line["priority"], amount(line["short"]))
+            for line in self.plan["order_lines"]
+            if amount(line["short"]) > 0
+        ]
+        kept = []
+        for flow in self.flows:
+            for (site, group), steps in flow.of("short").items():
+                if group is None:
+                    priority = flow.formal.stock[site].keep_priority
+                    kept.append((site, flow.formal.item, priority, steps * flow.formal.step))
+        for site, item, priority, quantity in sorted(kept):
+            ends = (network.sites[site]["id"], network.items[item]["id"])
+            expected.append((None, *ends, priority, quantity))
+        fields = ("reference", "site", "item", "priority")
+        stated = []
+        for entry in self.plan["shortages"]:
+            stated.append((*(entry[field] for field in fields), amount(entry["quantity"])))
+            if ("kept" in entry) != (entry["reference"] is None):
+                self.wrong("shortage_wrong", "kept is for stock that stays", "shortages")
+        if stated != expected:
+            self.wrong("shortage_wrong", "not what order lines are short of", "shortages")
+
+    def _check_plan_lines(self) -> None:
+        """Check the order of plan lines and all their costs."""
+        fields = ("origin", "destination", "item", "lane")
+        keys_ = [tuple((line.document[f] or "").encode() for f in fields) for line in self.lines]
+        if not rises(keys_):
+            self.wrong("plan_line_wrong", "not sorted", "plan_lines")
+        supply: dict[Key, Fraction] = defaultdict(Fraction)
+        for line in self.lines:
+            if not self._is_priced(line):
+                self.wrong("plan_line_wrong", "its costs do not follow", line.place)
+            supply[(line.origin, line.item)] += amount(line.document["supply_cost"])
+        local = {(line.origin, line.item) for line in self.lines if line.row < 0}
+        if local != set(self.local):
+            self.wrong("plan_line_wrong", "goods used where they are drawn", "plan_lines")
+        for flow in self.flows:
+            formal, drawn = flow.formal, flow.of("draw")
+            for site, tiers in formal.stock.items():
+                money = sum(
+                    drawn.get((site, tier), 0) * formal.step * cost
+                    for tier, cost in enumerate(tiers.costs, 1)
+                )
+                if supply[(site, formal.item)] != money:
+                    self.wrong("plan_line_wrong", "not the cost of what is drawn", formal.name)
+
+    def _is_priced(self, line: PlanLine) -> bool:
+        """Return whether the ends and every cost of a plan line are right."""
+        document, lanes, flow = line.document, self.network.lanes, self.flows[line.item]
+        sites, name, step = self.network.sites, flow.formal.name, flow.formal.step
+        quantity, unit_cost = amount(document["quantity"]), Fraction(0)
+        handling = quantity * sites[line.origin]["handling"](name)
+        if line.row < 0:
+            first = quantity / step
+            right = line.origin == line.destination
+            right = right and first == self.local.get((line.origin, line.item), 0)
+        else:
+            unit_cost = self.lane_money(line.row, line.item)
+            first = Fraction(self.first.get((line.row, line.item), 0))
+            consumed = self.last.get((line.row, line.item), 0) * step
+            handling += consumed * sites[line.destination]["handling"](name)
+            ends = (lanes["origin"][line.row], lanes["destination"][line.row])
+            right = ends == (line.origin, line.destination)
+        supply, transport = amount(document["supply_cost"]), quantity * unit_cost
+        site, tiers = line.origin, flow.formal.stock.get(line.origin, Tiers())
+        drawn = self.drawn[line.item]
+        pile = [
+            (cost * step, drawn.get((site, tier), 0)) for tier, cost in enumerate(tiers.costs, 1)
+        ]
+        return (
+            right
+            and cost_of_first(pile, first) <= supply <= cost_of_first(pile[::-1], first)
+            and amount(document["unit_cost"]) == unit_cost
+            and amount(document["transport_cost"]) == transport
+            and amount(document["handling_cost"]) == handling
+            and amount(document["charges"]) == 0
+            and amount(document["cost"]) == transport + supply + handling
+        )
+
+    def _check_consignments(self) -> None:
+        """Check what is on each lane."""
+        network, lanes = self.network, self.network.lanes
+        loads = defaultdict(list)
+        for flow in self.flows:
+            for row, steps in flow.on_lane.items():
+                item = network.items[flow.formal.item]
+                loads[row].append((item, steps * flow.formal.step))
+        costs: dict[int, Fraction] = defaultdict(Fraction)
+        for line in self.lines:
+            costs[line.row] += amount(line.document["transport_cost"])
+            costs[line.row] += amount(line.document["charges"])
+        expected = []
+        for row, load in sorted(loads.items(), key=lambda pair: pair[0]):
+            pallets = total_of(load, per_pallet)
+            expected.append(
+                {
+                    "lane": network.lane_names.name(row),
+                    "carrier": lanes["carrier"][row],
+                    "origin": network.sites[lanes["origin"][row]]["id"],
+                    "destination": network.sites[lanes["destination"][row]]["id"],
+                    "pallets": pallets,
+                    "weight_kg": total_of(load, lambda item: item.get("weight_kg")),
+                    "volume_m3": total_of(load, lambda item: item.get("volume_m3")),
+                    "cost": costs[row],
+                    "order_references": sorted(self.references[row], key=str.encode),
+                }
+            )
+        stated = []
+        for entry in self.plan["consignments"]:
+            numbers = {
+                field: entry[field] if entry[field] == "unknown" else amount(entry[field])
+                for field in ("pallets", "weight_kg", "volume_m3", "cost")
+            }
+            stated.append({**entry, **numbers})
+        if stated != expected:
+            self.wrong("consignment_wrong", "not what is on the lanes", "consignments")
+
+
+def adds_up(document: dict[str, Any]) -> bool:
+    """Return whether an order line adds up: sources, what is served, and what is short."""
+    served, short = amount(document["served"]), amount(document["short"])
+    sources = document["sources"]
+    ways = {
+        (source["origin"], source["lot"], *(leg["lane"] for leg in source["legs"]))
+        for source in sources
+    }
+    return (
+        min(served, short) >= 0
+        and served + short == amount(document["quantity"])
+        and sum(amount(source["quantity"]) for source in sources) == served
+        and len(ways) == len(sources)
+    )
+
+
+def rounded_forms(total: Fraction) -> list[str]:
+    """Return the total with 0 to 4 decimals (ISO 4217 has no more), half away from zero."""
+    forms = []
+    for decimals in range(5):
+        units = abs(total) * 10**decimals
+        digits = str((2 * units.numerator + units.denominator) // (2 * units.denominator))
+        digits = digits.rjust(decimals + 1, "0")
+        text = digits if decimals == 0 else f"{digits[:-decimals]}.{digits[-decimals:]}"
+        forms.append(text if total >= 0 else "-" + text)
+        if not int(digits):
+            forms.append("-" + text if total >= 0 else text)
+    return forms
+
+
+def cost_of_first(pile: list[tuple[Fraction, int]], steps: Fraction) -> Fraction:
+    """Return what the first steps of a pile cost, which is a list of (cost of one, number)."""
+    cost = Fraction(0)
+    for each, there in pile:
+        taken = min(steps, Fraction(there))
+        cost, steps = cost + taken * each, steps - taken
+    return cost
+
+
+def per_pallet(item: dict[str, Any]) -> Fraction | None:
+    """Return how many pallets one unit of an item is, None if it does not say."""
+    return 1 / item["packs"]["pallet"] if "pallet" in item["packs"] else None
+
+
+def total_of(load: list[tuple[dict[str, Any], Fraction]], per_unit: Value) -> Fraction | str:
+    """Return the sum of quantity times a measure, unknown if an item does not have it."""
+    total = Fraction(0)
+    for item, quantity in load:
+        per = per_unit(item)
+        if per is None:
+            return "unknown"
+        total += quantity * per
+    return total
+
+
+# ------------------------------------------------------------------ the verdict
+
+NEEDED = (
+    "README.txt certificate.json history.json network/head.json options.json plan.json verify.py"
+)
+
+
+def read_manifest(data: bytes) -> dict[str, str]:
+    """Return the digest of each entry that the manifest names."""
+    manifest = parse_canonical(data)
+    formats = keys("certificate event network plan", (1,))
+    shape = {"format": (1,), "formats": formats, "versions": "texts", "entries": "texts"}
+    need(has_shape(manifest, shape), "not a manifest of this format")
+    entries: dict[str, str] = manifest["entries"]
+    need(all(KINDS["digest"](value) for value in entries.values()), "not a digest")
+    need(set(NEEDED.split()) <= set(entries), "the manifest leaves something out")
+    return entries
+
+
+def check_entries(entries: dict[str, bytes], report: Report) -> None:
+    """Check the entries of the evidence, whose digests are those of the manifest."""
+    parts = {name: data for name, data in entries.items() if name.startswith("network/")}
+    values: dict[str, Any] = {}
+    for name, code, read in (
+        ("network", "network_malformed", lambda: Network(parts)),
+        ("options", "options_malformed", lambda: read_options(entries["options.json"])),
+        ("plan", "plan_malformed", lambda: parse(entries["plan.json"])),
+        ("certificate", "certificate_malformed", lambda: parse(entries["certificate.json"])),
+        ("history", "history_malformed", lambda: parse(entries["history.json"])),
+    ):
+        try:
+            values[name] = read()
+        except Bad as error:
+            report.add(code, str(error), name)
+    if "history" in values:
+        check_history(values.pop("history"), report)
+    if len(values) < 4:
+        return
+    proof = Report()
+    audit = Audit(
+        values["network"], values["options"], values["plan"], values["certificate"], proof
+    )
+    audit.run(sha256(entries["network/head.json"]), sha256(entries["options.json"]))
+    report.problems += proof.problems
+
+
+def verify(data: bytes) -> tuple[str, list[tuple[str, str, str]]]:
+    """Return the verdict on the bytes of an evidence zip, and its problems."""
+    report = Report()
+    code = "zip_unreadable"
+    try:
+        entries, damaged = unzip(data)
+        code = "manifest_malformed"
+        listed = read_manifest(entries.pop("manifest.json", b""))
+    except Bad as error:
+        report.add(code, str(error))
+        return "unreadable", report.problems
+    for name in damaged:
+        report.add("entry_changed", "its check sum is wrong", name)
+    for name in sorted(set(listed) | set(entries)):
+        if name not in entries:
+            report.add("entry_missing", "the manifest names it", name)
+        elif name not in listed:
+            report.add("entry_unknown", "the manifest does not name it", name)
+        elif sha256(entries[name]) != listed[name]:
+            report.add("entry_changed", "it does not have its digest", name)
+    if not report.problems:
+        check_entries(entries, report)
+    return ("broken" if report.problems else "intact"), report.problems
+
+
+def main(arguments: list[str]) -> int:
+    """Verify the file that is named, print what was found, and return the exit code."""
+    if len(arguments) != 1 or arguments[0] in ("-h", "--help"):
+        print("usage: python3 verify.py EVIDENCE.zip", file=sys.stderr)  # noqa: T201 - a program
+        return 0 if arguments in (["-h"], ["--help"]) else 2
+    try:
+        with open(arguments[0], "rb") as file:  # noqa: PTH123 - one less import for a reader
+            data = file.read()
+    except OSError as error:
+        print(f"unreadable: {error.strerror}")  # noqa: T201 - a program
+        return 2
+    verdict, problems = verify(data)
+    for code, detail, place in problems:
+        line = f"{code}: {detail} [{place}]"
+        print(line.encode("ascii", "backslashreplace").decode())  # noqa: T201 - a program
+    print(verdict)  # noqa: T201 - a program
+    return ("intact", "broken", "unreadable").index(verdict)
+
+
+if __name__ == "__main__":
+    sys.exit(main(sys.argv[1:]))
