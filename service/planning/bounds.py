@@ -96,7 +96,7 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
 
 
 def _measured(item: Item, measure: str) -> Fraction:
-    """Return how much of ``measure`` one unit of ``item`` is; the intake has seen that it is known."""
+    """Return how much of ``measure`` one unit of ``item`` is, which the intake has seen known."""
     amount = per_unit(item, measure)
     if amount is None:
         raise ValueError(f"item {item.id} says nothing of {measure}")
