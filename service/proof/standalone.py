@@ -813,12 +813,13 @@ def encoded(name: str) -> str:
 
 def read_options(data: bytes) -> dict[str, Any]:
     """Return the options of the run."""
-    options: Value = parse_canonical(data)
+    value = parse_canonical(data)
     fields = (
         "shortages worth_at_most demand_rounding bad_rows label plan_for deadline_seconds "
         "maximum_age_minutes"
     )
-    need(isinstance(options, dict) and set(options) == set(fields.split()), "other options")
+    need(isinstance(value, dict) and set(value) == set(fields.split()), "other options")
+    options: dict[str, Any] = value
     need(options["shortages"] in ("allow", "forbid"), "shortages")
     need(options["demand_rounding"] in ("refuse", "up", "down"), "demand_rounding")
     need(options["bad_rows"] in ("refuse", "set_aside"), "bad_rows")
