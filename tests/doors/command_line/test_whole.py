@@ -260,8 +260,8 @@ def test_the_demo_stores_what_it_shows(stored: tuple[Path, str, str]) -> None:
     assert audit.returncode == 0
 
 
-def test_an_audit_finds_what_was_changed_behind_the_back(tmp_path: Path) -> None:
-    """And it makes no database where there is none."""
+def test_an_audit_of_nothing_makes_nothing(tmp_path: Path) -> None:
+    """A mistyped folder must not look like an empty, intact store."""
     result = lanewright(tmp_path, "audit", "check")
 
     assert result.returncode == 2
