@@ -36,6 +36,8 @@ def main() -> None:
     except SettingsError as error:
         tell(f"lanewright: a setting cannot be used\n{error}")
         sys.exit(Exit.BAD_INPUT)
+    # SIGTERM ends like Ctrl-C, from inside: with time to end children and to clear up.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     # A command talks to a person: its log is for what went wrong. ``serve`` says more.
     configure_logs("warning")
     sys.exit(run_command(sys.argv[1:], Work(settings).backing()))
@@ -118,8 +120,6 @@ class Work:
         except OSError as error:
             detail = f"{address(settings.host, wanted)} cannot be listened on: {error.strerror}"
             raise NotReadyError(detail) from error
-        # Both signals end the block below from inside; else SIGTERM would leave no time to let go.
-        signal.signal(signal.SIGTERM, signal.default_int_handler)
         with (
             contextlib.suppress(KeyboardInterrupt),
             listening,

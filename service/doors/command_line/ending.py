@@ -47,7 +47,8 @@ class EndingError(Exception):
         """Return what a person reads."""
         lines = [f"lanewright: {self.detail}"]
         for fault in self.faults:
-            value = "" if fault.value is None else f" (it says {fault.value!r})"
+            shown = fault.pointer and fault.value is not None
+            value = f" (it says {fault.value!r})" if shown else ""
             lines.append(f"  {_place(fault)}{value}")
             lines.append(f"      {fault.detail} [{fault.code}]")
         more = self.fault_count - len(self.faults)
