@@ -33,6 +33,9 @@ PLAN_FILE = "plan.json"
 CERTIFICATE_FILE = "certificate.json"
 VIOLATIONS_NAMED_MAX = 5
 
+# What callers get back stands in a module of its own, which needs no solver.
+__all__ = ["Outcome", "plan"]
+
 
 def plan(
     input_folder: Path,
