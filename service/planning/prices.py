@@ -69,12 +69,3 @@ def shortest_distances(
             return distance
         distance[reached] = nearer
     raise SolverFaultError("a loop below zero is left in what the solver called a least-cost flow")
-
-
-def holds(arcs: Arcs, flow: IntArray, price: MoneyArray) -> bool:
-    """Return whether ``price`` proves ``flow`` to be of least cost over all ``arcs``."""
-    reduced = reduced_cost(arcs, price)
-    return not bool(
-        ((reduced < 0) & arcs.can_take_more(flow)).any()
-        or ((reduced > 0) & arcs.can_give_up(flow)).any()
-    )

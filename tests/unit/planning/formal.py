@@ -6,7 +6,8 @@ import networkx as nx
 import numpy as np
 
 from service.network.columns import IntArray
-from service.planning.arcs import UNLIMITED, Arcs
+from service.planning.arcs import UNLIMITED, Arcs, MoneyArray
+from service.planning.prices import reduced_cost
 
 Row = tuple[int, int, int, int, int]
 
@@ -85,3 +86,12 @@ def simplex_cost(arcs: Arcs, *, nodes: int) -> int | None:
 def cost_of(arcs: Arcs, flow: IntArray) -> int:
     """Return the cost of a flow in Python ints."""
     return sum(a * b for a, b in zip(arcs.cost.tolist(), flow.tolist(), strict=True))
+
+
+def holds(arcs: Arcs, flow: IntArray, price: MoneyArray) -> bool:
+    """Return whether ``price`` proves ``flow`` to be of least cost over all ``arcs``."""
+    reduced = reduced_cost(arcs, price)
+    return not bool(
+        ((reduced < 0) & arcs.can_take_more(flow)).any()
+        or ((reduced > 0) & arcs.can_give_up(flow)).any()
+    )

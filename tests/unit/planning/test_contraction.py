@@ -4,9 +4,16 @@ import numpy as np
 
 from service.planning.contraction import contract
 from service.planning.limits import NoFlowError
-from service.planning.prices import holds, residual_prices
+from service.planning.prices import residual_prices
 from service.planning.ranges import exact_flow
-from tests.unit.planning.formal import arcs_of, cost_of, is_circulation, random_arcs, simplex_cost
+from tests.unit.planning.formal import (
+    arcs_of,
+    cost_of,
+    holds,
+    is_circulation,
+    random_arcs,
+    simplex_cost,
+)
 
 
 def test_chain_merges_into_one_place_and_carries_its_cost() -> None:

@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 
 from service.planning.limits import SolverFaultError
-from service.planning.prices import holds, residual_prices, shortest_distances
-from tests.unit.planning.formal import arcs_of
+from service.planning.prices import residual_prices, shortest_distances
+from tests.unit.planning.formal import arcs_of, holds
 
 
 def test_prices_are_the_cheapest_way_from_the_root() -> None:

@@ -6,9 +6,16 @@ import pytest
 from service.planning.contraction import contract
 from service.planning.limits import NoFlowError
 from service.planning.min_cost_flow import cost_limit
-from service.planning.prices import holds, residual_prices
+from service.planning.prices import residual_prices
 from service.planning.ranges import exact_flow
-from tests.unit.planning.formal import arcs_of, cost_of, is_circulation, random_arcs, simplex_cost
+from tests.unit.planning.formal import (
+    arcs_of,
+    cost_of,
+    holds,
+    is_circulation,
+    random_arcs,
+    simplex_cost,
+)
 
 
 @pytest.mark.parametrize("bits", [58, 70, 130])
