@@ -143,16 +143,18 @@ def _currency(value: object) -> str:
 
 def _instant(value: object) -> Instant:
     """Read a point in time."""
+    text = _text(value)
     try:
-        return read_instant(_text(value))
+        return read_instant(text)
     except ValueError as error:
         raise RefusedError("bad_time", str(error)) from None
 
 
 def _date(value: object) -> date:
     """Read a calendar date."""
+    text = _text(value)
     try:
-        return read_date(_text(value))
+        return read_date(text)
     except ValueError as error:
         raise RefusedError("bad_date", str(error)) from None
 
