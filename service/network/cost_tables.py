@@ -1,7 +1,7 @@
 """Cost tables of lanes: the ids once, a cost for each pair, null where there is no lane."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import chain
 
 import numpy as np
@@ -39,6 +39,7 @@ def cost_tables_sheet(
         rows=int(ends[-1]),
         columns={field: _joined(field, sheets) for field in given},
         row_place=lambda row: _part(sheets, ends, row),
+        refused=frozenset().union(*(sheet.refused for sheet in sheets)),
     )
 
 
@@ -115,7 +116,9 @@ def cost_table_sheet(
         take=np.tile(np.arange(width, dtype=np.int64), height),
         place=lambda position: pointer(*path, "destinations", position),
     )
-    return _lanes_only(path, height * width, grids, faults)
+    sheet = _lanes_only(path, height * width, grids, faults)
+    refused = {field for field in fields if table.get(field) is not None} - set(grids)
+    return replace(sheet, refused=frozenset(refused))
 
 
 def _lanes_only(

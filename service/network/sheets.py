@@ -48,6 +48,7 @@ class Sheet:
 
     ``row_place`` points to a row, or to the value that stands for it. ``in_rows`` tells that each
     row was sent as an object, so that a field can be missing in one row and not in another.
+    ``refused`` names the fields that were sent but are no columns, which is a fault by itself.
     """
 
     name: str
@@ -55,6 +56,7 @@ class Sheet:
     columns: Mapping[str, Column]
     row_place: Callable[[int], str]
     in_rows: bool = False
+    refused: frozenset[str] = frozenset()
 
 
 def refuse_field(table: str, field: str, place: str, faults: FaultList, count: int = 1) -> None:

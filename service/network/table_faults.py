@@ -66,6 +66,21 @@ class TableFaults:
             positions = np.unique(column.take[wanted])
         self._add(name, positions, wanted, code, detail)
 
+    def missing_column(self, name: str, detail: str) -> None:
+        """Report that a column which every row needs was not sent at all."""
+        rows = np.arange(self.sheet.rows, dtype=np.int64)
+        self.bad[:] = True
+        self._reports.append(
+            _Report(
+                field=name,
+                column=None,
+                positions=np.zeros(1, dtype=np.int64),
+                rows=rows,
+                code="missing_field",
+                detail=detail,
+            )
+        )
+
     def adopt(self, name: str, inner: "TableFaults") -> None:
         """Take over what is wrong inside the values of a column, which was read as a table."""
         for report in inner._reports:  # noqa: SLF001 - its own kind

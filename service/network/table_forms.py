@@ -96,4 +96,10 @@ def _from_columns(
             detail = f"Columns have one length; this has {len(column.values)}, {first} has {rows}."
             faults.add(pointer(name, field), "unequal_columns", detail)
             del columns[field]
-    return Sheet(name=name, rows=rows, columns=columns, row_place=lead.place)
+    return Sheet(
+        name=name,
+        rows=rows,
+        columns=columns,
+        row_place=lead.place,
+        refused=frozenset(value) - set(columns),
+    )

@@ -68,8 +68,14 @@ class TableReader:
 
     def require(self, name: str, present: BoolArray) -> None:
         """Report rows in which a field that every row needs is missing."""
-        rows = np.flatnonzero(~present & ~self._faults.faulty(name))
         detail = f"Every row of {self._faults.sheet.name} needs {name}."
+        if name in self._faults.sheet.refused:
+            self._faults.bad[:] = True
+            return
+        if name not in self._columns and not self._faults.sheet.in_rows:
+            self._faults.missing_column(name, detail)
+            return
+        rows = np.flatnonzero(~present & ~self._faults.faulty(name))
         self._faults.at_rows(name, rows, "missing_field", detail)
 
     def given(self, name: str) -> BoolArray:
