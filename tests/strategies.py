@@ -2,6 +2,8 @@
 
 from random import Random
 
+import orjson
+from hypothesis import note
 from hypothesis import strategies as st
 
 from tests.random_networks import RandomNetwork, draw_network
@@ -16,6 +18,10 @@ def randoms() -> st.SearchStrategy[Random]:
     return st.randoms(use_true_random=False) | st.integers(0, 2**32 - 1).map(Random)
 
 
-def networks(*, sites: int = 4, walks: int = 5) -> st.SearchStrategy[RandomNetwork]:
-    """Return a strategy of networks that are feasible by construction, but for what is scarce."""
-    return randoms().map(lambda rng: draw_network(rng, sites=sites, walks=walks))
+@st.composite
+def networks(draw: st.DrawFn, *, sites: int = 4, walks: int = 5) -> RandomNetwork:
+    """Draw a network that is feasible by construction, but for what is scarce on purpose."""
+    network = draw_network(draw(randoms()), sites=sites, walks=walks)
+    # Shown for the example that fails, as it would be sent.
+    note(f"{network.options} {orjson.dumps(network.document).decode()}")
+    return network

@@ -146,39 +146,30 @@ def test_a_useless_lane_keeps_the_plan(network: RandomNetwork, rng: Random) -> N
 @given(network=networks(), rng=randoms())
 def test_splitting_a_lane_keeps_cost_and_shortages(network: RandomNetwork, rng: Random) -> None:
     """Two lanes with the room of one are as good; where one plan is best, goods move as before."""
-    named = {
+    halves: Document = copy.deepcopy(network.document)
+    ruled = {
         lane_id
         for rule in network.document["rules"]
         for lane_id in rule.get("lanes", {}).get("ids", [])
     }
-    rows = [
-        r for r in unlimited_rows(network) if network.document["lanes"][r].get("id") not in named
+    # Limits of lanes for one item, in its own unit and on its step, can be shared out exactly.
+    steps = {item["id"]: exact(item["step"]) for item in network.document["items"]}
+    lanes = [
+        lane
+        for lane in halves["lanes"]
+        if lane.get("id") not in ruled
+        and ("capacity" not in lane or ("item" in lane and "measure" not in lane))
+        and ("must_ship" not in lane or ("item" in lane and "measure" not in lane))
+        and exact(lane.get("capacity", 0)) % steps.get(lane.get("item"), Fraction(1)) == 0
     ]
-    capped = [
-        (lane.row, problem)
-        for problem in read_items(network.document, network.options)
-        for lane in problem.lanes
-        if lane.most is not None
-        and "item" in network.document["lanes"][lane.row]
-        and network.document["lanes"][lane.row].get("measure") is None
-        and network.document["lanes"][lane.row].get("id") not in named
-        and lane.most == exact(network.document["lanes"][lane.row]["capacity"]) / problem.step
-    ]
-    assume(rows or capped)
-    halves: Document = copy.deepcopy(network.document)
-    if rows and (not capped or rng.random() < 0.5):
-        lane = halves["lanes"][rng.choice(rows)]
-        other = {name: value for name, value in lane.items() if name != "must_ship"}
-    else:
-        row, problem = rng.choice(capped)
-        lane = halves["lanes"][row]
-        other = dict(lane)
-        for name in ("capacity", "must_ship"):
-            if name in lane:
-                steps = int(exact(lane[name]) / problem.step)
-                part = steps // 2
-                lane[name] = text(part * problem.step)
-                other[name] = text((steps - part) * problem.step)
+    assume(lanes)
+    lane = rng.choice(lanes)
+    other = dict(lane)
+    for name in ("capacity", "must_ship"):
+        if name in lane:
+            step = steps[lane["item"]]
+            part = int(exact(lane[name]) / step) // 2 * step
+            lane[name], other[name] = text(part), text(exact(lane[name]) - part)
     halves["lanes"].append(other | {"id": "other half"})
 
     before = plan_network(network.document, **network.options)
