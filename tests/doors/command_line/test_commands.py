@@ -9,11 +9,11 @@ from typing import Any, Literal
 
 import orjson
 import pytest
-from service.network.intake import IntakeReport
 
 from service.doors.command_line.backing import Audit, Backing, NotReadyError, OnProgress
 from service.doors.command_line.commands import run_command
 from service.network.faults import Fault, Status
+from service.network.intake import IntakeReport
 from service.network.options import Options
 from service.planning.outcome import Outcome
 from service.runs.faults import ChildCrashed, ChildMemory, ChildTimeout
