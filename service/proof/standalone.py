@@ -19,6 +19,8 @@ How to read this program, from top to bottom:
 Quantities and money are exact (whole numbers and fractions); there is no floating point.
 """
 
+# ruff: noqa: SIM905 - a text of words is easier to read than a list of quoted words
+
 from __future__ import annotations
 
 import datetime as dt
@@ -235,6 +237,23 @@ WORDS = (
     "km=KTM,kilometre=KTM,m2=MTK,square metre=MTK,piece=H87,each=EA,one=C62,pair=PR,dozen=DZN,"
     "gross=GRO,hundred=CEN,thousand=MIL"
 )
+
+
+# ISO 4217: the decimals of the smallest unit of each currency.
+CURRENCIES = {
+    0: "BIF CLP DJF GNF ISK JPY KMF KRW PYG RWF UGX UYI VND VUV XAF XOF XPF".split(),
+    2: (
+        "AED AFN ALL AMD AOA ARS AUD AWG AZN BAM BBD BDT BMD BND BOB BOV BRL BSD BTN BWP BYN BZD "
+        "CAD CDF CHE CHF CHW CNY COP COU CRC CUP CVE CZK DKK DOP DZD EGP ERN ETB EUR FJD FKP GBP "
+        "GEL GHS GIP GMD GTQ GYD HKD HNL HTG HUF IDR ILS INR IRR JMD KES KGS KHR KPW KYD KZT LAK "
+        "LBP LKR LRD LSL MAD MDL MGA MKD MMK MNT MOP MRU MUR MVR MWK MXN MXV MYR MZN NAD NGN NIO "
+        "NOK NPR NZD PAB PEN PGK PHP PKR PLN QAR RON RSD RUB SAR SBD SCR SDG SEK SGD SHP SLE SOS "
+        "SRD SSP STN SVC SYP SZL THB TJS TMT TOP TRY TTD TWD TZS UAH USD USN UYU UZS VED VES WST "
+        "XAD XCD XCG YER ZAR ZMW ZWG"
+    ).split(),
+    3: "BHD IQD JOD KWD LYD OMR TND".split(),
+    4: "CLF UYW".split(),
+}
 
 
 def standard_units() -> dict[str, tuple[str, Fraction]]:
@@ -2117,7 +2136,7 @@ class Tables:
         if not right or amount(plan["total_cost"]) != total:
             self.wrong("total_wrong", "not the sum of costs", "cost_parts")
         rounded = amount(plan["total_cost_rounded"])
-        if plan["total_cost_rounded"] not in rounded_forms(total):
+        if plan["total_cost_rounded"] not in rounded_forms(total, plan["currency"]):
             self.wrong("total_wrong", "not the total, rounded", "total_cost_rounded")
         if amount(plan["rounding_difference"]) != rounded - total:
             self.wrong("total_wrong", "not the difference", "rounding_difference")
@@ -2399,18 +2418,16 @@ def adds_up(document: dict[str, Any]) -> bool:
     )
 
 
-def rounded_forms(total: Fraction) -> list[str]:
-    """Return the total with 0 to 4 decimals (ISO 4217 has no more), half away from zero."""
-    forms = []
-    for decimals in range(5):
-        units = abs(total) * 10**decimals
-        digits = str((2 * units.numerator + units.denominator) // (2 * units.denominator))
-        digits = digits.rjust(decimals + 1, "0")
-        text = digits if decimals == 0 else f"{digits[:-decimals]}.{digits[-decimals:]}"
-        forms.append(text if total >= 0 else "-" + text)
-        if not int(digits):
-            forms.append("-" + text if total >= 0 else text)
-    return forms
+def rounded_forms(total: Fraction, currency: str) -> list[str]:
+    """Return the total in the smallest unit of a currency, half away from zero; 0 has two forms."""
+    decimals = next((number for number, codes in CURRENCIES.items() if currency in codes), None)
+    if decimals is None:
+        return []
+    units = abs(total) * 10**decimals
+    digits = str((2 * units.numerator + units.denominator) // (2 * units.denominator))
+    digits = digits.rjust(decimals + 1, "0")
+    text = digits if decimals == 0 else f"{digits[:-decimals]}.{digits[-decimals:]}"
+    return [text, "-" + text] if not int(digits) else [text if total >= 0 else "-" + text]
 
 
 def cost_of_first(pile: list[tuple[Fraction, int]], steps: Fraction) -> Fraction:

@@ -6,14 +6,14 @@ from fractions import Fraction
 from typing import Any
 
 from service.network.columns import Network
+from service.network.currencies import minor_units
 from service.network.rules import Throughput
 from service.proof.results import ItemResult
 from service.proof.rulings import Ruling, Rulings, measure_of
 from service.proof.shapes import amount
 from service.proof.violations import Findings
 
-# ISO 4217 has no currency with more than four decimals.
-_ROUNDED = re.compile(r"-?(?:0|[1-9][0-9]*)(?:\.([0-9]{1,4}))?")
+_ROUNDED = re.compile(r"-?(?:0|[1-9][0-9]*)(?:\.([0-9]+))?")
 
 
 def check_totals(
@@ -34,7 +34,7 @@ def check_totals(
     if amount(plan["total_cost"]) != total:
         findings.add("total_wrong", "not the sum of its parts", place="/total_cost")
     rounded = plan["total_cost_rounded"]
-    if not is_rounded(rounded, total):
+    if not is_rounded(rounded, total, decimals=minor_units(plan["currency"])):
         findings.add("total_wrong", "not the total, rounded", place="/total_cost_rounded")
     if amount(plan["rounding_difference"]) != amount(rounded) - total:
         findings.add("total_wrong", "not the difference", place="/rounding_difference")
@@ -42,15 +42,19 @@ def check_totals(
     _check_quantities(network, results, plan["totals"]["quantities"], findings)
 
 
-def is_rounded(text: str, total: Fraction) -> bool:
-    """Return whether ``text`` is ``total`` at its own decimals, half away from zero."""
+def is_rounded(text: str, total: Fraction, *, decimals: int | None) -> bool:
+    """Return whether ``text`` is ``total`` at ``decimals``, half away from zero.
+
+    Nothing can be planned in a currency without a smallest unit (``decimals`` is None).
+    """
     match = _ROUNDED.fullmatch(text)
-    if match is None:
+    if match is None or decimals is None:
         return False
-    units = 10 ** len(match[1] or "")
+    units = 10**decimals
     doubled = abs(total) * units * 2 + 1
     rounded = Fraction(doubled.numerator // (2 * doubled.denominator), units)
-    return amount(text) == (rounded if total >= 0 else -rounded)
+    written = len(match[1] or "") == decimals
+    return written and amount(text) == (rounded if total >= 0 else -rounded)
 
 
 def _check_line_counts(plan: Mapping[str, Any], findings: Findings) -> None:
