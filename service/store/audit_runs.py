@@ -138,13 +138,15 @@ def _dispatch_problems(
         "state": _state_after(events),
         "attempt": sum(event.kind == EventKind.CLAIMED for event in events),
         "crashes": _last_said(events, "crashes", 0),
-        "deadline_at": run.deadline_at,
+        "deadline_at": moment_text(run.deadline_at),
+        "started_at": _last_claimed_at(events),
     }
     found: dict[str, object] = {
         "state": row.state,
         "attempt": row.attempt,
         "crashes": row.crashes,
-        "deadline_at": row.deadline_at,
+        "deadline_at": moment_text(row.deadline_at),
+        "started_at": None if row.started_at is None else moment_text(row.started_at),
     }
     for column, value in expected.items():
         if found[column] != value:
@@ -162,6 +164,11 @@ def _state_after(events: list[StoredEvent]) -> str:
     if last.kind == EventKind.CLAIMED:
         return RunState.RUNNING
     return str((last.payload or {}).get("state"))
+
+
+def _last_claimed_at(events: list[StoredEvent]) -> str | None:
+    claims = [event.recorded_at for event in events if event.kind == EventKind.CLAIMED]
+    return claims[-1] if claims else None
 
 
 def _last_said(events: list[StoredEvent], name: str, default: object) -> object:

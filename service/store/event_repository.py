@@ -103,8 +103,9 @@ class SqlEventRepository:
             .order_by(EventRow.tenant, EventRow.stream)
             .execution_options(yield_per=_FETCHED_AT_ONCE)
         )
-        for row in self._session.execute(statement):
-            yield row.tenant, row.stream
+        with self._session.execute(statement) as found:
+            for row in found:
+                yield row.tenant, row.stream
 
     def _last(self, stream: str, tenant: str) -> StoredEvent | None:
         statement = (

@@ -56,5 +56,7 @@ class SqlIndexRepository:
             .order_by(row.position)
             .execution_options(yield_per=_AT_ONCE)
         )
-        for found in self._session.execute(statement):
-            yield dict(found._mapping)  # noqa: SLF001 - SQLAlchemy's public name for it
+        # Whoever stops reading half-way closes the cursor with this generator.
+        with self._session.execute(statement) as found:
+            for line in found.mappings():
+                yield dict(line)

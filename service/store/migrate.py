@@ -4,6 +4,7 @@ A migration works while the previous release still runs, so a database that is a
 is no fault.
 """
 
+import functools
 from pathlib import Path
 from typing import Final
 
@@ -78,15 +79,22 @@ def pending_in(connection: Connection) -> list[str]:
 
     Empty when it is up to date, or ahead of this release.
     """
-    scripts = ScriptDirectory.from_config(_config(connection))
-    known = [script.revision for script in scripts.walk_revisions()]
+    known = _revisions(migrations_folder())
     heads = MigrationContext.configure(connection).get_current_heads()
     if any(head not in known for head in heads):
         return []
-    applied = {
-        script.revision for head in heads for script in scripts.iterate_revisions(head, "base")
-    }
-    return [revision for revision in reversed(known) if revision not in applied]
+    applied = max((known.index(head) + 1 for head in heads), default=0)
+    return list(known[applied:])
+
+
+@functools.cache
+def _revisions(folder: Path) -> tuple[str, ...]:
+    """Return all revisions, oldest first; read once, since readiness is asked for often.
+
+    There is one line of them: a second head would make Alembic itself fail.
+    """
+    scripts = ScriptDirectory(str(folder))
+    return tuple(reversed([script.revision for script in scripts.walk_revisions()]))
 
 
 def _config(connection: Connection) -> Config:

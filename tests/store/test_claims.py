@@ -218,7 +218,7 @@ def test_no_run_ends_twice(store: SqlStore, run: Run, database: Database) -> Non
     """Even one who could bring the dispatch row back would meet the key of the ending."""
     finished(store, taken(store, run))
 
-    with pytest.raises(Exception, match="(?i)unique"), database.engine.begin() as connection:
+    with pytest.raises(Exception, match=r"(?i)unique"), database.engine.begin() as connection:
         connection.execute(
             text("INSERT INTO run_ending SELECT * FROM run_ending WHERE run = :run"),
             {"run": run.id},
