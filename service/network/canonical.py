@@ -201,17 +201,25 @@ def _columns(
     known = {form.name for form in forms}
     if not set(described["columns"]) <= known:
         raise NormalFormError(f"{table} has an unknown column")
-    columns: dict[str, object] = {}
     for form in forms:
         column = described["columns"].get(form.name)
         if column is None:
             if form.required and rows:
                 raise NormalFormError(f"{table}/{form.name} is missing")
-            columns[form.field] = _absent_column(form, rows)
             continue
         entry = entries.get(f"network/{table}/{form.name}")
         if entry is None or digest(entry) != column["digest"]:
             raise NormalFormError(f"{table}/{form.name} does not have the digest in the head")
+        # Every kind has at least four bytes a row: the number of rows is bounded by the file.
+        if len(entry) < 4 * rows:
+            raise NormalFormError(f"{table}/{form.name} is shorter than its table")
+    columns: dict[str, object] = {}
+    for form in forms:
+        column = described["columns"].get(form.name)
+        if column is None:
+            columns[form.field] = _absent_column(form, rows)
+            continue
+        entry = entries[f"network/{table}/{form.name}"]
         columns[form.field] = _read_column(entry, form, rows, column, counts)
         if _column_entry(columns[form.field], form) != (
             entry,

@@ -19,8 +19,6 @@ How to read this program, from top to bottom:
 Quantities and money are exact (whole numbers and fractions); there is no floating point.
 """
 
-# ruff: noqa: SIM905 - a text of words is easier to read than a list of quoted words
-
 from __future__ import annotations
 
 import datetime as dt
@@ -549,21 +547,26 @@ def read_table(
     columns: dict[str, Any] = {"rows": rows}
     known = [re.split("([!:])", part) for part in COLUMNS[name].split()]
     need(set(described) <= {column for column, _, _ in known}, "an unknown column")
+    for column, mark, _ in known:
+        need(column in described or mark != "!" or not rows, column + " is missing")
+    for column, says in described.items():
+        data = entries.get(f"network/{name}/{column}", b"")
+        need(isinstance(says, dict) and says.get("nulls", True) is True, "not a column")
+        need(sha256(data) == says.get("digest"), "another digest")
+        # Each kind has four bytes or more in a row, so that the file bounds the number of rows.
+        need(len(data) >= 4 * rows, "a column is shorter than its table")
+        used.add(f"network/{name}/{column}")
     for column, mark, kind in known:
-        required = mark == "!"
         if column not in described:
-            need(rows == 0 or not required, column + " is missing")
             columns[column] = absent_column(kind, rows)
             continue
-        says, entry = described[column], f"network/{name}/{column}"
-        need(isinstance(says, dict) and says.get("nulls", True) is True, "not a column")
-        need(entry in entries and sha256(entries[entry]) == says.get("digest"), "another digest")
-        used.add(entry)
-        values, expected = read_column(entries[entry], kind, rows, says, counts)
+        says = described[column]
+        data = entries[f"network/{name}/{column}"]
+        values, expected = read_column(data, kind, rows, says, counts)
         # 1 and true are equal in Python, but not here.
         exact = {key: (type(value), value) for key, value in says.items() if key != "digest"}
         need(exact == {key: (type(v), v) for key, v in expected.items()}, "described otherwise")
-        if required:
+        if mark == "!":
             need(is_complete(values, kind), "a row without " + column)
         columns[column] = values
     return columns
