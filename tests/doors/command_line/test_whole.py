@@ -181,6 +181,18 @@ def test_planning_and_checking_load_no_database(folder: Path, arguments: tuple[s
     assert not (folder / "data").exists()
 
 
+@pytest.fixture
+def _ctrl_c_reaches_programs() -> Iterator[None]:
+    """Let programs be interrupted also where these tests run behind somebody's ``&``.
+
+    There the shell has SIGINT ignored, and programs inherit what is ignored but not a handler.
+    """
+    former = signal.signal(signal.SIGINT, signal.default_int_handler)
+    yield
+    signal.signal(signal.SIGINT, former)
+
+
+@pytest.mark.usefixtures("_ctrl_c_reaches_programs")
 def test_ctrl_c_ends_the_child_too(tmp_path: Path) -> None:
     """A planner who gives up must not leave a process behind that eats the machine."""
     os.mkfifo(tmp_path / "network.json")
