@@ -84,7 +84,10 @@ def describe(app: FastAPI, examples: Mapping[str, Any]) -> dict[str, Any]:
     }
     operations["create_run"]["requestBody"] = {
         "required": True,
-        "description": "The network definition.",
+        # In words and not as a header parameter, since the header must fit the bytes: a tool that
+        # fills in parameters would announce a packing that it does not do.
+        "description": "The network definition in UTF-8, plain, or packed as a whole with gzip "
+        "(RFC 1952) or zstd (RFC 8878) and the header Content-Encoding saying so.",
         "content": {"application/json": {"schema": {"$ref": "#/components/schemas/Network"}}},
     }
     _place_examples(operations, examples)

@@ -94,11 +94,4 @@ HEADER_PARAMETERS: Final = [
         "schema": {"type": "string"},
         "example": "respond-async",
     },
-    {
-        "name": "Content-Encoding",
-        "in": "header",
-        "required": False,
-        "description": "How the body is packed; absent means plain.",
-        "schema": {"type": "string", "enum": ["gzip", "zstd", "identity"]},
-    },
 ]
