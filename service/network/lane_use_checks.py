@@ -5,7 +5,7 @@ import json
 import numpy as np
 
 from service.network.assembly import Assembly
-from service.network.columns import IntArray
+from service.network.columns import IntArray, Network
 from service.network.faults import FaultList
 from service.network.lane_names import identical_lanes, taken_names
 from service.network.loops import loop_below_zero
@@ -34,13 +34,14 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
     network, lanes = assembly.network, assembly.network.lanes
     if len(use.any_item) == 0:
         return
+    any_item = lanes.item < 0
     users = np.zeros(len(lanes), dtype=np.int32)
     first_unit = np.full(len(lanes), -1, dtype=np.int32)
     unlike = np.zeros(len(lanes), dtype=np.bool_)
     units = {unit: code for code, unit in enumerate({item.unit for item in network.items})}
     for item, thing in enumerate(network.items):
         rows = use.rows(item)
-        rows = rows[lanes.item[rows] < 0]
+        rows = rows[any_item[rows]]
         users[rows] += 1
         unit = units[thing.unit]
         unlike[rows] |= (first_unit[rows] >= 0) & (first_unit[rows] != unit)
@@ -54,16 +55,23 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
     for name, column in (("must_ship", lanes.must_ship), ("capacity", lanes.capacity)):
         rows = assembly.lane_rows[np.flatnonzero(open_limit & column.present)]
         assembly.sent.lanes.faults.at_rows(name, np.sort(rows), "per_missing", detail)
+    forced = assembly.lane_rows[np.flatnonzero((users == 0) & lanes.must_ship.present & any_item)]
+    sent = assembly.sent.lanes.faults
+    doubts.caution(
+        "must_ship_without_item",
+        "No item can use this lane: no stock reaches it, or nobody behind it wants any.",
+        [
+            (sent.place("must_ship", row), sent.value("must_ship", row))
+            for row in np.sort(forced)[:3].tolist()
+        ],
+        len(forced),
+    )
     rows = assembly.lane_rows[np.flatnonzero(unlike)]
     rows = np.sort(rows[~assembly.sent.lanes.measured[rows]])
-    faults = assembly.sent.lanes.faults
     doubts.caution(
         "rate_for_unlike_units",
         "Items in different units can use this lane, and its unit_cost states no measure.",
-        [
-            (faults.place("unit_cost", row), faults.value("unit_cost", row))
-            for row in rows[:3].tolist()
-        ],
+        [(sent.place("unit_cost", row), sent.value("unit_cost", row)) for row in rows[:3].tolist()],
         len(rows),
     )
 
@@ -117,22 +125,9 @@ def check_origins(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
     choosy = np.flatnonzero((demand.origins.codes >= 0) & (demand.quantity.values > 0))
     if len(choosy) == 0:
         return
-    keys = np.stack((demand.item[choosy], demand.site[choosy], demand.origins.codes[choosy]))
-    distinct, group = np.unique(keys, axis=1, return_inverse=True)
-    sites = {site.id: position for position, site in enumerate(network.sites)}
-    wrong: list[int] = []
-    for number, (item, site, code) in enumerate(distinct.T.tolist()):
-        named = np.zeros(len(sites), dtype=np.bool_)
-        named[[sites[origin] for origin in json.loads(demand.origins.values[code])]] = True
-        rows = use.rows(item)
-        rows = rows[network.lanes.destination[rows] == site]
-        before = np.unique(network.lanes.origin[rows])
-        # A site that is no cross-dock sends its own stock alone: all of it is named or none.
-        for place in before[use.passes_on[before]].tolist():
-            mixed = use.stock_reaching(item, place)
-            if bool((mixed & named).any()) and bool((mixed & ~named).any()):
-                wrong.extend(choosy[group.ravel() == number].tolist())
-                break
+    order = choosy[np.argsort(demand.item[choosy], kind="stable")]
+    bounds = np.flatnonzero(np.diff(demand.item[order])) + 1
+    wrong = [row for rows in np.split(order, bounds) for row in _mixed_lines(network, use, rows)]
     lines = assembly.sent.demand.faults
     detail = (
         "Through a cross-dock comes stock of named and of other sites, and nobody can tell which "
@@ -145,3 +140,34 @@ def check_origins(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
             detail,
             lines.value("origins", row),
         )
+
+
+def _mixed_lines(network: Network, use: LaneUse, lines: IntArray) -> list[int]:
+    """Return those of some order lines of one item whose named stock mixes with other stock."""
+    demand, lanes = network.demand, network.lanes
+    item = int(demand.item[lines[0]])
+    rows = use.rows(item)
+    # A site that is no cross-dock sends its own stock alone: all of it is named or none.
+    rows = rows[use.passes_on[lanes.origin[rows]]]
+    rows = rows[np.argsort(lanes.destination[rows], kind="stable")]
+    ends = lanes.destination[rows]
+    sites = {site.id: position for position, site in enumerate(network.sites)}
+    behind: dict[int, frozenset[int]] = {}
+    answers: dict[tuple[int, int], bool] = {}
+    wrong: list[int] = []
+    for line in lines.tolist():
+        key = site, code = int(demand.site[line]), int(demand.origins.codes[line])
+        if key not in answers:
+            low, high = np.searchsorted(ends, [site, site + 1])
+            named = {sites[origin] for origin in json.loads(demand.origins.values[code])}
+            answers[key] = False
+            for place in set(lanes.origin[rows[low:high]].tolist()):
+                if place not in behind:
+                    reaching = np.flatnonzero(use.stock_reaching(item, place))
+                    behind[place] = frozenset(reaching.tolist())
+                if not named.isdisjoint(behind[place]) and not named.issuperset(behind[place]):
+                    answers[key] = True
+                    break
+        if answers[key]:
+            wrong.append(line)
+    return wrong

@@ -13,6 +13,9 @@ import numpy as np
 
 from service.network.columns import BoolArray, CodeArray, IntArray, Network
 
+# 256 MiB of row numbers.
+ROWS_KEPT_MAX = 2**25
+
 
 class LaneUse:
     """Which lanes each item of a network can use, found item by item when asked."""
@@ -31,6 +34,7 @@ class LaneUse:
         self._stock = _ByItem(supply.item, items, stock)
         self._wanted = _ByItem(demand.item, items, wanted)
         self._found: dict[int, IntArray] = {}
+        self._kept = 0
 
     @cached_property
     def any_item(self) -> IntArray:
@@ -48,9 +52,14 @@ class LaneUse:
 
     def rows(self, item: int) -> IntArray:
         """Return the rows of all lanes that ``item`` can use, ascending."""
-        if item not in self._found:
-            self._found[item] = self._usable(item)
-        return self._found[item]
+        found = self._found.get(item)
+        if found is None:
+            found = self._usable(item)
+            # Many items on many lanes for any item would fill the memory; then each asks again.
+            if self._kept + len(found) <= ROWS_KEPT_MAX:
+                self._found[item] = found
+                self._kept += len(found)
+        return found
 
     def stock(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where a supply row of ``item`` has more than 0."""

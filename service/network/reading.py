@@ -75,6 +75,7 @@ def read_network(document: object, options: Options) -> Reading:
     check_lanes(tables.lanes, things)
     set_aside = _refuse_or_set_aside(tables, options, faults)
     if head is not None:
+        _doubt_head(head, faults)
         assembly = assemble(_head_document(head), things, tables, rules)
         _check_together(assembly, head.cut_off, options, faults)
     else:
@@ -124,6 +125,14 @@ def _head_document(head: Head) -> dict[str, object]:
         "extra": dict(sorted(head.extra.items())) if head.extra else None,
     }
     return {name: value for name, value in document.items() if value is not None}
+
+
+def _doubt_head(head: Head, faults: FaultList) -> None:
+    """Doubt a plan that is needed before its orders close."""
+    release = head.release_by
+    if release is not None and release.nanoseconds < head.cut_off.nanoseconds:
+        detail = "The plan is needed (release_by) before its orders close (cut_off)."
+        faults.caution("release_before_cut_off", detail, [("/release_by", release.local)])
 
 
 def _read_control(value: object, faults: FaultList) -> Control | None:

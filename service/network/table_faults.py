@@ -116,15 +116,31 @@ class TableFaults:
         )
 
     def refuse(self, faults: FaultList) -> None:
-        """Report everything as faults of the network."""
+        """Report everything as faults of the network: of each field the first ones, and a count.
+
+        The first hundred faults of all are among the first hundred of each field, whatever form the
+        table has.
+        """
+        by_field: dict[str, list[_Report]] = {}
         for report in self._reports:
-            shown = report.positions[:FAULTS_REPORTED_MAX].tolist()
             if report.column is None and report.field and not self.sheet.in_rows:
                 # The whole column is missing: that is one fault, not one a row.
                 faults.extend([self._fault(report, 0)])
-                continue
-            faults.extend(self._fault(report, position) for position in shown)
-            faults.add_uncounted(len(report.positions) - len(shown))
+            else:
+                by_field.setdefault(report.field, []).append(report)
+        for reports in by_field.values():
+            positions = np.concatenate([report.positions for report in reports])
+            number = np.repeat(
+                np.arange(len(reports)), [len(report.positions) for report in reports]
+            )
+            first = np.argsort(positions, kind="stable")[:FAULTS_REPORTED_MAX]
+            faults.extend(
+                self._fault(reports[which], position)
+                for which, position in zip(
+                    number[first].tolist(), positions[first].tolist(), strict=True
+                )
+            )
+            faults.add_uncounted(len(positions) - len(first))
 
     def by_row(self) -> dict[int, list[Fault]]:
         """Return the faults of each bad row; the rows ascend."""

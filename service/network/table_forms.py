@@ -43,13 +43,21 @@ def _from_rows(
         if len(wrong) == len(rows):
             return None
     objects: list[dict[str, object]] = rows  # type: ignore[assignment] # all were checked
-    seen: dict[str, None] = {}
-    for row in objects:
-        seen.update(dict.fromkeys(row))
-    for field in seen:
-        if field not in fields:
-            places = [place for place, row in enumerate(objects) if field in row]
-            refuse_field(name, field, pointer(name, places[0], field), faults, len(places))
+    seen: set[str] = set()
+    strange: dict[str, tuple[int, int]] = {}
+    known = frozenset(fields)
+    for place, row in enumerate(objects):
+        if known.issuperset(row):
+            seen.update(row)
+            continue
+        for field in row:
+            if field in known:
+                seen.add(field)
+            else:
+                first, count = strange.get(field, (place, 0))
+                strange[field] = first, count + 1
+    for field, (first, count) in strange.items():
+        refuse_field(name, field, pointer(name, first, field), faults, count)
     columns = {
         field: Column(
             values=[row.get(field) for row in objects],

@@ -19,6 +19,29 @@ def test_the_sound_network_has_one_doubt(tmp_path: Path) -> None:
     assert set(cautions(sound(), tmp_path)) == {"rule_not_begun"}
 
 
+def test_a_plan_that_is_needed_before_orders_close_is_doubted(tmp_path: Path) -> None:
+    """Two hours of a time zone are easily mixed up; equal times are fine."""
+    document = sound() | {"release_by": "2026-02-03T14:59:59Z"}
+
+    assert "release_before_cut_off" in cautions(document, tmp_path / "a")
+    document["release_by"] = "2026-02-03T15:00:00Z"
+    assert "release_before_cut_off" not in cautions(document, tmp_path / "b")
+
+
+def test_a_forced_lane_that_no_item_can_use_is_doubted(tmp_path: Path) -> None:
+    """Nothing can be forced there, and whoever wrote it expects something to move."""
+    document = sound()
+    document["supply"].pop(1)
+    document["demand"].pop(1)
+    document["rules"] = []
+    del document["control"]
+    document["lanes"][1] |= {"must_ship": "6"}
+
+    caution = cautions(document, tmp_path)["must_ship_without_item"]
+
+    assert caution["examples"] == [{"pointer": "/lanes/1/must_ship", "value": "6"}]
+
+
 def test_an_order_line_over_nothing_is_doubted(tmp_path: Path) -> None:
     """It is kept, with quantity 0."""
     document = sound()
