@@ -46,9 +46,10 @@ def demo(context: typer.Context, *, as_json: parameters.AsJson = False) -> None:
         [
             *summary_lines(plan, run_number=run.number),
             "",
-            "The run is stored. To look at it, start the service here:   lanewright serve",
-            f"  the run          {address}/v1/runs/{run.id}",
-            f"  documentation    {address}/docs",
+            "The run is stored. To look at it, start the service in this folder:",
+            "  lanewright serve     (without it on the path: .venv/bin/lanewright)",
+            f"  {address}/v1/runs/{run.id}",
+            f"  {address}/docs#/runs/read_run     to try the interface with that id",
         ]
     )
 
