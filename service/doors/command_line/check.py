@@ -97,7 +97,10 @@ def _lines(summary: Mapping[str, object]) -> list[str]:
     assert isinstance(counts, Mapping)  # noqa: S101 - our own document
     assert isinstance(cautions, list)  # noqa: S101 - likewise
     assert isinstance(aside, list)  # noqa: S101 - likewise
-    told = ", ".join(f"{number} {str(name).replace('_', ' ')}" for name, number in counts.items())
+    told = ", ".join(
+        count_of(number, str(name).replace("_", " ").removesuffix("s"))
+        for name, number in counts.items()
+    )
     lines = [f"Nothing is wrong: {told}.", f"Network {summary['network_digest']}"]
     if aside:
         lines.append(

@@ -247,7 +247,7 @@ def test_an_accepted_network_is_counted(run: Run, network: Path) -> None:
 
     assert code == 0
     assert out.splitlines() == [
-        "Nothing is wrong: 1 items, 2 sites, 1 supply rows, 1 demand rows, 1 lanes.",
+        "Nothing is wrong: 1 item, 2 sites, 1 supply row, 1 demand row, 1 lane.",
         f"Network {DIGEST}",
     ]
 
