@@ -37,7 +37,9 @@ def whole(values: list[int]) -> Whole:
 
 def times(values: Whole, factor: int) -> Whole:
     """Return ``values * factor``."""
-    if values.dtype != object and magnitude(values) * abs(factor) < _ROOM:
+    # Zeros times a factor beyond int64 are small, but the factor is not.
+    small = abs(factor) < _ROOM and values.dtype != object
+    if small and magnitude(values) * abs(factor) < _ROOM:
         return values * np.int64(factor)
     return values.astype(object) * factor
 

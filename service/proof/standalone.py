@@ -1198,7 +1198,8 @@ def usable_lanes(network: Network, item: int) -> list[int]:
     """Return the lanes that an item can use: its own, and those of any item that help it.
 
     A lane of any item helps if stock can come to where it starts and is wanted where it leads, or
-    behind that, moving on only at cross-docks. Closures do not matter.
+    behind that, moving on only at cross-docks. An own lane that must ship from a cross-dock wants
+    stock there. Closures do not matter.
     """
     lanes = network.lanes
     own, general = network.lanes_of(item), network.lanes_of(-1)
@@ -1211,6 +1212,8 @@ def usable_lanes(network: Network, item: int) -> list[int]:
         for row in network.order_lines_of(item)
         if network.demand["quantity"].numbers[row] > 0
     }
+    forced = {lanes["origin"][row] for row in own if lanes["must_ship"].numbers[row] > 0}
+    wanted |= {site for site in forced if network.passing[site]}
     sends = spread(network, stocked(network, item), ends)
     takes = spread(network, wanted, [(end, start) for start, end in ends])
     return [

@@ -24,7 +24,8 @@ def usable_lanes(network: Network, item: int) -> IntArray:
 
     Its own lanes, and those of any item whose origin can send it (it has stock, or passes on what
     a sending site can bring) and whose destination can take it (it is wanted there, or at a site
-    that can be reached from there).
+    that can be reached from there). Where an own lane must ship from a cross-dock the item is
+    wanted as well.
     """
     lanes, demand = network.lanes, network.demand
     own = lanes.item == item
@@ -36,6 +37,8 @@ def usable_lanes(network: Network, item: int) -> IntArray:
     sends = _spread(stocked_sites(network, item), origin, destination, passing)
     takes = np.zeros(len(network.sites), dtype=np.bool_)
     takes[demand.site[(demand.item == item) & (demand.quantity.values > 0)]] = True
+    forced = lanes.origin[own & (lanes.must_ship.values > 0)]
+    takes[forced[passing[forced]]] = True
     takes = _spread(takes, destination, origin, passing)
     useful: BoolArray = own[candidates] | (sends[origin] & takes[destination])
     return np.compress(useful, candidates)
