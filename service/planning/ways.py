@@ -16,6 +16,7 @@ class Ways:
         order = open_[np.argsort(head[open_].astype(np.int32), kind="stable")]
         self._tail, self._head, self._room = tail[order], head[order], room[order]
         self._bounds = np.searchsorted(self._head, np.arange(nodes + 1))
+        self._from_root = np.flatnonzero(self._tail == ROOT)
         self._nodes = nodes
 
     def into(self, places: IntArray) -> IntArray:
@@ -51,21 +52,28 @@ class Ways:
         seen = np.zeros(self._nodes, np.bool_)
         seen[[node, ROOT]] = True
         frontier = np.array([node])
-        collected: list[IntArray] = []
+        fresh = seen.copy()
+        # Positions of the arcs looked at, without and with those from the root.
+        inner: list[IntArray] = []
+        outer: list[IntArray] = []
         while True:
-            arcs = self.into(frontier)
-            if not direct and not collected:
-                arcs = arcs[self._tail[arcs] != ROOT]
-            collected.append(arcs)
-            tails = self._tail[arcs]
-            fresh = np.zeros(self._nodes, np.bool_)
-            fresh[tails] = True
-            frontier = np.flatnonzero(fresh & ~seen)
-            seen[frontier] = True
-            if frontier.shape[0] == 0 or bool(fresh[ROOT]):
-                flow = self._flow(np.concatenate(collected), node, enough=enough)
-                if frontier.shape[0] == 0 or flow == enough:
+            # What the root can send to the places reached last is tried before all that lies
+            # before them is looked at: a place that a million arcs enter may not need them.
+            supplied = self._from_root[fresh[self._head[self._from_root]]]
+            if inner or direct:
+                outer.append(supplied)
+            if frontier.shape[0] == 0 or (outer and outer[-1].shape[0]):
+                flow = self._flow(np.concatenate((*inner, *outer)), node, enough=enough)
+                if flow == enough or frontier.shape[0] == 0:
                     return flow
+            arcs = self.into(frontier)
+            arcs = arcs[self._tail[arcs] != ROOT]
+            inner.append(arcs)
+            fresh = np.zeros(self._nodes, np.bool_)
+            fresh[self._tail[arcs]] = True
+            fresh &= ~seen
+            frontier = np.flatnonzero(fresh)
+            seen[frontier] = True
 
     def _flow(self, arcs: IntArray, node: int, *, enough: int) -> int:
         """Return the maximum flow from the root to ``node`` over ``arcs``, cut at ``enough``."""
