@@ -52,11 +52,11 @@ BODY = network_document(
 OPTIONS = Options()
 
 
-def network_from(body: Document) -> Network:
+def network_from(body: Document, options: Options = OPTIONS) -> Network:
     """Return the network that a body says, through the real intake."""
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
-        report = take_in(orjson.dumps(body), folder, OPTIONS)
+        report = take_in(orjson.dumps(body), folder, options)
         assert report.status == "accepted", report
         return read_network(folder / "network.zip")
 
