@@ -104,7 +104,7 @@ class Reasons:
         """
         served = want - int(self._solved.flow[short_arc]) if self._forced else 0
         node = int(self._solved.contraction.place[self._arcs.head[short_arc]])
-        found = self._ways_with(relief).most(node, enough=want - served, direct=not self._forced)
+        found = self._ways_with(relief).most(node, enough=want - served)
         return served + found
 
     def _ways_with(self, relief: Reason | None) -> Ways:
@@ -114,7 +114,11 @@ class Reasons:
             minimum, capacity = (bounds[whole.kept] for bounds in self._bounds(relief))
             tail = whole.place[self._arcs.tail[whole.kept]]
             head = whole.place[self._arcs.head[whole.kept]]
+            shortage = np.zeros(len(self._arcs), np.bool_)
+            shortage[self.bottlenecks.shorts] = True
+            shortage = shortage[whole.kept]
             if self._forced:
+                shortage = np.concatenate((shortage, np.zeros_like(shortage)))
                 flow = self._solved.flow[whole.kept]
                 tail, head = np.concatenate((tail, head)), np.concatenate((head, tail))
                 room = np.concatenate(
@@ -123,7 +127,7 @@ class Reasons:
             else:
                 room = np.where(capacity == UNLIMITED, self._most, capacity)
                 room = np.where(self._goods[whole.kept], room, 0)
-            self._ways[relief] = Ways(tail, head, room, nodes=whole.nodes)
+            self._ways[relief] = Ways(tail, head, room, nodes=whole.nodes, shortage=shortage)
         return self._ways[relief]
 
     def _bounds(self, relief: Reason | None) -> tuple[IntArray, IntArray]:

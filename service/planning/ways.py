@@ -10,12 +10,22 @@ from service.planning.forced_flow import maximum_flow
 class Ways:
     """Arcs with room, indexed by where they lead to."""
 
-    def __init__(self, tail: IntArray, head: IntArray, room: IntArray, *, nodes: int) -> None:
-        """Index arcs; those without room are left out."""
+    def __init__(
+        self,
+        tail: IntArray,
+        head: IntArray,
+        room: IntArray,
+        *,
+        nodes: int,
+        shortage: BoolArray | None = None,
+    ) -> None:
+        """Index arcs; those without room are left out. ``shortage`` marks arcs that bring none."""
         open_ = np.flatnonzero((room > 0) & (tail != head))
         order = open_[np.argsort(head[open_].astype(np.int32), kind="stable")]
         self._tail, self._head, self._room = tail[order], head[order], room[order]
         self._bounds = np.searchsorted(self._head, np.arange(nodes + 1))
+        none = np.zeros(order.shape[0], np.bool_)
+        self._shortage = none if shortage is None else shortage[order]
         self._from_root = np.flatnonzero(self._tail == ROOT)
         self._nodes = nodes
 
@@ -43,11 +53,11 @@ class Ways:
             seen[frontier] = True
         return seen
 
-    def most(self, node: int, *, enough: int, direct: bool) -> int:
+    def most(self, node: int, *, enough: int) -> int:
         """Return the maximum flow from the root to ``node``, cut at ``enough``.
 
         The network is looked at from ``node`` backwards, only as far as needed to bring ``enough``.
-        Arcs straight from the root to ``node`` count only if ``direct``.
+        The shortage of ``node`` itself does not count; that of others is what they give up.
         """
         seen = np.zeros(self._nodes, np.bool_)
         seen[[node, ROOT]] = True
@@ -60,9 +70,10 @@ class Ways:
             # What the root can send to the places reached last is tried before all that lies
             # before them is looked at: a place that a million arcs enter may not need them.
             supplied = self._from_root[fresh[self._head[self._from_root]]]
-            if inner or direct:
-                outer.append(supplied)
-            if frontier.shape[0] == 0 or (outer and outer[-1].shape[0]):
+            if not inner:
+                supplied = supplied[~self._shortage[supplied]]
+            outer.append(supplied)
+            if frontier.shape[0] == 0 or supplied.shape[0]:
                 flow = self._flow(np.concatenate((*inner, *outer)), node, enough=enough)
                 if flow == enough or frontier.shape[0] == 0:
                     return flow

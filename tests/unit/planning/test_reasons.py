@@ -3,6 +3,8 @@
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+import pytest
+
 from tests.factories import network_document, plan_network
 
 Row = Mapping[str, Any]
@@ -117,6 +119,34 @@ def test_minimum_elsewhere_takes_stock_first() -> None:
     lanes = [W_TO_Y, {"origin": "W", "destination": "Z", "must_ship": "7", "per": "item"}]
 
     assert reason(stock={"W": "10"}, demand=demand, lanes=lanes) == "no_stock"
+
+
+@pytest.mark.parametrize("lines", [1, 2])
+def test_stock_of_its_own_counts_beside_minimums_elsewhere(lines: int) -> None:
+    """Z has 2 at 8 each: enough for the first line, not for both; the minimum changes nothing."""
+    sites = [{"id": "W", "roles": ["warehouse"]}, {"id": "Y", "roles": ["ship_to"]}]
+    dear = {"reference": "dear", "quantity": "2", "worth_at_most": "5"}
+    more = {"reference": "more", "quantity": "9", "worth_at_most": "4"}
+    planned = plan_network(
+        network_document(
+            sites=[*sites, {"id": "Z", "roles": ["ship_to", "warehouse"]}],
+            supply=[
+                {"site": "W", "item": "GOODS", "quantity": "1"},
+                {"site": "Z", "item": "GOODS", "quantity": "2", "unit_cost": "8"},
+            ],
+            demand=[
+                {"site": "Y", "item": "GOODS", "quantity": "1"},
+                *({"site": "Z", "item": "GOODS", **line} for line in (dear, more)[:lines]),
+            ],
+            lanes=[
+                {"origin": "W", "destination": "Y", "unit_cost": "3", "item": "GOODS"}
+                | {"must_ship": "1"}
+            ],
+        )
+    )
+
+    reasons = [(row["reference"], row["reason"]) for row in planned.plan["shortages"]]
+    assert reasons == [("dear", "not_worth_it"), ("more", "no_stock")][:lines]
 
 
 def test_outranked_names_the_largest_that_went_first() -> None:
