@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 
 from service.network.columns import IdArray, IntArray, LaneTable, Network
-from service.network.naming import UnnamedLanes, base_names, lane_names, ranks
+from service.network.naming import base_names, lane_names, ranks
 from service.network.normal_form import lane_order
 from service.network.table_rows import rows_of
 
@@ -61,11 +61,13 @@ def identical_lanes(network: Network) -> IntArray:
 def taken_names(network: Network) -> IntArray:
     """Return rows of lanes whose id is the name of another lane, which has no id."""
     suspects = _named_like_ours(network.lanes)
-    names = [network.lanes.ids[row].decode() for row in suspects.tolist()]
-    unnamed = UnnamedLanes(network)
-    found = np.array([unnamed.row(name) for name in names], dtype=np.int64)
-    taken: IntArray = suspects[found >= 0]
-    return taken
+    unnamed = np.flatnonzero(network.lanes.ids == b"")
+    if len(suspects) == 0 or len(unnamed) == 0:
+        return suspects[:0]
+    names = {name.encode() for name in lane_names(network, unnamed)}
+    taken = [identifier in names for identifier in network.lanes.ids[suspects].tolist()]
+    found: IntArray = suspects[np.array(taken, dtype=np.bool_)]
+    return found
 
 
 def _named_like_ours(lanes: LaneTable) -> IntArray:

@@ -3,8 +3,8 @@
 Goods could circle there for ever and earn money each time, so no plan would be the cheapest. Only
 cross-docks pass goods on, so a loop runs over lanes between cross-docks alone. Method: shortest
 walks from everywhere at once (Bellman 1958, Ford 1956), all lanes in one array operation a round.
-A loop in the graph of "where the shortest walk came from" is a loop below zero (Cormen et al.,
-*Introduction to Algorithms*, section 24.5, lemma 24.16 turned round). Exact.
+A loop in the graph of "where the shortest walk came from" is a loop below zero: along it each price
+is at least the one before plus the cost between, and more than that where a price fell last. Exact.
 """
 
 from fractions import Fraction
@@ -75,7 +75,7 @@ def _loop(
     price: _Costs = np.zeros(sites, dtype=costs.dtype)
     came_by = np.full(sites, -1, dtype=np.int64)
     # A walk that repeats no site takes at most one round for each site that a lane leads to.
-    for round_number in range(1, len(places) + 2):
+    for _ in range(len(places) + 1):
         walks = price[tails] + costs
         least = np.minimum.reduceat(walks, starts)
         better = least < price[places]
@@ -84,32 +84,42 @@ def _loop(
         best = np.flatnonzero(better[group] & (walks == least[group]))
         _, which = np.unique(group[best], return_index=True)
         came_by[heads[best[which]]] = best[which]
-        price[places[better]] = least[better]
-        # Looking for a loop costs as much as a round: look after 1, 2, 4, 8 ... rounds.
-        if round_number & (round_number - 1) == 0 or round_number > len(places):
-            loop = _closed_walk(tails, came_by)
-            if loop is not None:
-                return loop
+        walked = _along(tails, costs, came_by, price)
+        if walked is None:
+            return _closed_walk(tails, came_by)
+        price = walked
     raise AssertionError("walks got shorter for ever, yet there is no loop")
 
 
-def _closed_walk(tails: NDArray[np.int32], came_by: IntArray) -> list[int] | None:
-    """Return the lanes of a loop in the graph of where walks came from, in order; None if none."""
+def _along(
+    tails: NDArray[np.int32], costs: _Costs, came_by: IntArray, price: _Costs
+) -> _Costs | None:
+    """Return the length of each walk as it now is, back to where it begins; None if it never does.
+
+    Long rows of sites are priced in one round instead of a round for each: sums are taken over
+    2, 4, 8 ... steps back.
+    """
     sites = len(came_by)
-    # One more place, which leads to itself, stands for "the walk begins here".
+    # One more place, which leads to itself at no cost, stands for "the walk begins here".
     before = np.append(np.where(came_by >= 0, tails[came_by].astype(np.int64), sites), sites)
-    ahead = before
+    length: _Costs = np.append(np.where(came_by >= 0, costs[came_by], price), costs[:1] * 0)
     for _ in range(sites.bit_length()):
-        ahead = ahead[ahead]
-    endless = np.flatnonzero(ahead[:-1] < sites)
-    if len(endless) == 0:
-        return None
-    # As many steps back as there are sites lead into the loop itself.
-    start = int(ahead[endless[0]])
-    loop: list[int] = []
-    place = start
-    while True:
-        loop.append(int(came_by[place]))
-        place = int(before[place])
-        if place == start:
-            return loop[::-1]
+        length = length + length[before]
+        before = before[before]
+    return None if bool((before[:-1] < sites).any()) else length[:-1]
+
+
+def _closed_walk(tails: NDArray[np.int32], came_by: IntArray) -> list[int]:
+    """Return the lanes of a loop in the graph of where walks came from, which has one, in order."""
+    order: dict[int, int] = {}
+    for start in np.flatnonzero(came_by >= 0).tolist():
+        walk: list[int] = []
+        place = start
+        while came_by[place] >= 0 and place not in order:
+            order[place] = start
+            walk.append(place)
+            place = int(tails[came_by[place]])
+        if came_by[place] >= 0 and order[place] == start:
+            loop = walk[walk.index(place) :]
+            return [int(came_by[site]) for site in reversed(loop)]
+    raise AssertionError("a walk without a beginning, yet no loop")

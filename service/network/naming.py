@@ -77,11 +77,11 @@ def lane_rows(network: Network, names: Iterable[str]) -> list[int]:
     if encodable and len(lanes):
         rows = np.flatnonzero(np.isin(lanes.ids, np.array(encodable)) & (lanes.ids != b""))
         found = {lanes.ids[row].decode(): row for row in rows.tolist()}
-    places = UnnamedLanes(network)
+    places = _UnnamedLanes(network)
     return [found[name] if name in found else places.row(name) for name in wanted]
 
 
-class UnnamedLanes:
+class _UnnamedLanes:
     """Finds lanes without an id by their names."""
 
     def __init__(self, network: Network) -> None:
