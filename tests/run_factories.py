@@ -1,14 +1,17 @@
 """Runs for tests of store and use cases: small, but with true digests everywhere."""
 
 import hashlib
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 
 import orjson
 
-from service.network.canonical import canonical_json, write_stored_zip
+from service.network.canonical import canonical_json
 from service.network.options import Options
+from service.network.stored_zip import write_stored_zip
+from service.planning.outcome import FailureReason as Reason
+from service.planning.outcome import Outcome, State
 from service.runs.execute import Execute
 from service.runs.ports import Claim, Run, RunId, Store
 from service.runs.run import LOCAL, Actor
@@ -43,7 +46,7 @@ def intake_folder(
     entries = {"network/head.json": head, "network/lanes/origin": column}
     write_stored_zip(folder / "network.zip", entries)
     (folder / "received").write_bytes(body)
-    summary = {
+    summary: dict[str, object] = {
         "cautions": [],
         "set_aside": [],
         "counts": {"items": 1, "sites": 2, "supply_rows": 1, "demand_rows": 1, "lanes": 8},
@@ -58,26 +61,31 @@ def intake_folder(
     return folder
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class FakeOutcome:
-    """What a planning child answers."""
-
-    state: str = "planned"
-    reason: str | None = None
-    detail: str | None = None
-    seconds: Mapping[str, float] = field(default_factory=lambda: {"read": 0.25, "solved": 0.5})
+def outcome(
+    state: State = "planned",
+    *,
+    reason: Reason | None = None,
+    detail: str | None = None,
+) -> Outcome:
+    """Return what a planning child answers."""
+    return Outcome(
+        state=state,
+        reason=reason,
+        detail=detail,
+        seconds={"read": 0.25, "solved": 0.5},
+    )
 
 
 @dataclass(slots=True, kw_only=True)
 class FakePlanner:
     """Writes a small plan of the network it was given, or does what a test tells it to."""
 
-    outcome: FakeOutcome = field(default_factory=FakeOutcome)
+    outcome: Outcome = field(default_factory=outcome)
     instead: Callable[[Claim], object] | None = None
     lines: int = 2
     seen: list[Claim] = field(default_factory=list)
 
-    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> FakeOutcome:
+    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> Outcome:
         """Plan as the real one would: files in, files out."""
         self.seen.append(claim)
         if self.instead is not None:
@@ -140,7 +148,7 @@ def execution(store: Store, scratch: Path, planner: FakePlanner | None = None) -
     """Return the use case that executes runs, with a planner that needs no solver."""
     return Execute(
         store=store,
-        planner=planner or FakePlanner(),  # type: ignore[arg-type] # its outcome only looks alike
+        planner=planner or FakePlanner(),
         scratch=scratch,
         lease_seconds=30,
         pause=lambda _: None,

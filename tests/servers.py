@@ -152,7 +152,9 @@ def _initialise(programs: Path, data: Path, account: pwd.struct_passwd | None) -
         capture_output=True,
         env=_environment(),
         cwd=data.parent,
-        **_as(account),
+        user=None if account is None else account.pw_uid,
+        group=None if account is None else account.pw_gid,
+        extra_groups=None if account is None else [],
     )
     if done.returncode != 0:
         raise NoServer(f"initdb failed: {done.stderr.decode(errors='replace').strip()}")
@@ -179,7 +181,9 @@ def _running(
             env=_environment(),
             cwd=data.parent,
             start_new_session=True,
-            **_as(account),
+            user=None if account is None else account.pw_uid,
+            group=None if account is None else account.pw_gid,
+            extra_groups=None if account is None else [],
         )
     try:
         _await(process, port, log)
@@ -198,12 +202,6 @@ def _running(
             except subprocess.TimeoutExpired:
                 process.kill()
                 process.wait()
-
-
-def _as(account: pwd.struct_passwd | None) -> dict[str, int | list[int]]:
-    if account is None:
-        return {}
-    return {"user": account.pw_uid, "group": account.pw_gid, "extra_groups": []}
 
 
 def _await(process: "subprocess.Popen[bytes]", port: int, log: Path) -> None:

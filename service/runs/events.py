@@ -21,9 +21,6 @@ SALT_BYTES: Final = 16
 NOTHING_BEFORE: Final = "sha-256:" + "0" * 64
 """The ``previous`` of the first event of a stream."""
 
-ADMIN_STREAM: Final = "admin"
-ACCESS_STREAM: Final = "access"
-
 _DIGEST: Final = re.compile(r"sha-256:[0-9a-f]{64}", re.ASCII)
 _MOMENT: Final = re.compile(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{6}Z", re.ASCII)
 

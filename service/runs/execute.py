@@ -45,8 +45,7 @@ from service.runs.settle import count_crash, end, give_back
 from service.runs.submit import INTAKE, NETWORK
 
 if TYPE_CHECKING:
-    # For types alone: the planning modules load the solver, which belongs in a child process.
-    from service.planning.task import Outcome
+    from service.planning.outcome import Outcome
 
 PLAN: Final = "plan.json"
 CERTIFICATE: Final = "certificate.json"

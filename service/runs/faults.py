@@ -17,10 +17,6 @@ class ArtefactMissing(Exception):  # noqa: N818 - as above
         self.artefact = artefact
 
 
-class NumberTaken(Exception):  # noqa: N818 - as above
-    """Two submissions drew the same run number; only a broken lock can cause it."""
-
-
 class BlobBroken(Exception):  # noqa: N818 - as above
     """A blob is missing, incomplete, or not what its digest says."""
 

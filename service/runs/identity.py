@@ -17,11 +17,6 @@ def new_run_id(moment: datetime) -> RunId:
     return RunId("run_" + "".join(_ALPHABET[number >> shift & 31] for shift in range(125, -1, -5)))
 
 
-def is_run_id(text: str) -> bool:
-    """Return whether ``text`` has the form of a run id."""
-    return len(text) == 30 and text.startswith("run_") and set(text[4:]) <= set(_ALPHABET)
-
-
 def new_token() -> Token:
     """Return a fresh token of 128 random bits for one claim."""
     return Token(secrets.token_hex(16))

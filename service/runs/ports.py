@@ -19,7 +19,6 @@ from service.runs.faults import (
     ChildMemory,
     ChildReleased,
     ChildTimeout,
-    NumberTaken,
     RunUnknown,
     StoreUnavailable,
 )
@@ -42,10 +41,9 @@ from service.runs.run import (
 )
 
 if TYPE_CHECKING:
-    # For types alone: the planning modules load the solver, which belongs in a child process.
     from service.network.intake import IntakeReport
     from service.network.options import Options
-    from service.planning.task import Outcome
+    from service.planning.outcome import Outcome
 
 __all__ = [
     "LOCAL",
@@ -69,7 +67,6 @@ __all__ = [
     "IndexRows",
     "IntakeCall",
     "NetworkCall",
-    "NumberTaken",
     "Planner",
     "ReadinessCall",
     "Run",

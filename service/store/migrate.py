@@ -15,6 +15,7 @@ from alembic.script import ScriptDirectory
 from sqlalchemy import Connection, text
 
 from service.store.database import Database, open_database
+from service.store.reaching import reaching
 from service.store.triggers import trigger_faults
 
 _HERE: Final = Path(__file__).parent
@@ -46,8 +47,12 @@ def migrate(url: str) -> list[str]:
 
 
 def migrate_database(database: Database, *, revision: str = "head") -> list[str]:
-    """Bring an open database to ``revision``; return what was applied."""
-    with database.writing, database.engine.begin() as connection:
+    """Bring an open database to ``revision``; return what was applied.
+
+    Raises ``StoreUnavailable`` when the database cannot be reached, ``MigrationBroken`` when it is
+    not what the migrations should have made of it.
+    """
+    with reaching(), database.writing, database.engine.begin() as connection:
         if not database.is_sqlite:
             connection.execute(text("SELECT pg_advisory_xact_lock(:key)"), {"key": _MIGRATION_LOCK})
         waiting = pending_in(connection)
@@ -62,16 +67,6 @@ def downgrade_database(database: Database, *, revision: str = "base") -> None:
     """Take migrations back, facts and all; for tests of the migrations."""
     with database.writing, database.engine.begin() as connection:
         command.downgrade(_config(connection), revision)
-
-
-def pending(url: str) -> list[str]:
-    """Return the revisions that the database at ``url`` still lacks, oldest first."""
-    database = open_database(url)
-    try:
-        with database.engine.connect() as connection:
-            return pending_in(connection)
-    finally:
-        database.close()
 
 
 def pending_in(connection: Connection) -> list[str]:

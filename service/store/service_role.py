@@ -1,7 +1,10 @@
-"""The rights that the service needs on PostgreSQL, and no more.
+r"""The rights that the service needs on PostgreSQL, and no more.
 
 Triggers refuse to change facts; a role that owns the tables could drop them. So an operator lets
-the owner migrate (``lanewright migrate``) and the service run as a role of this kind.
+the owner migrate (``lanewright migrate``) and the service run as a role of this kind:
+
+    python -c "from service.store.service_role import service_role_sql as sql
+    print(*sql('lanewright_service'), sep=';\n', end=';')" | psql ... as the owner
 """
 
 from typing import Final

@@ -9,8 +9,6 @@ from pathlib import Path
 from typing import BinaryIO
 
 from sqlalchemy import Engine
-from sqlalchemy.exc import InterfaceError, OperationalError
-from sqlalchemy.exc import TimeoutError as PoolTimeoutError
 from sqlalchemy.orm import Session
 
 from service.runs.faults import BlobBroken, StoreUnavailable
@@ -19,6 +17,7 @@ from service.runs.run import Staged
 from service.store.blob_repository import PART_BYTES, SqlBlobRepository, pack
 from service.store.database import READ_ONLY, Database
 from service.store.migrate import pending_in
+from service.store.reaching import reaching
 from service.store.transaction import SqlTransaction
 from service.store.triggers import trigger_faults
 
@@ -103,7 +102,7 @@ class SqlStore:
     def missing(self) -> list[str]:
         """Return what keeps the store from working, in words; empty means ready."""
         try:
-            with self._translated(), self._database.engine.connect() as connection:
+            with reaching(), self._database.engine.connect() as connection:
                 waiting = pending_in(connection)
                 if waiting:
                     return [f"migrations {', '.join(waiting)}: run lanewright migrate"]
@@ -144,27 +143,13 @@ class SqlStore:
     @contextmanager
     def _session(self, engine: Engine) -> Iterator[Session]:
         with (
-            self._translated(),
+            reaching(),
             Session(engine, expire_on_commit=False) as session,
             session.begin(),
         ):
             yield session
 
-    @contextmanager
-    def _translated(self) -> Iterator[None]:
-        """Say in the use cases' words that the database cannot be reached, or not in time."""
-        try:
-            yield
-        except (OperationalError, InterfaceError, PoolTimeoutError) as error:
-            raise StoreUnavailable(_first_line(error)) from error
-
 
 def _pieces(file: BinaryIO) -> Iterator[bytes]:
     while piece := file.read(PART_BYTES):
         yield piece
-
-
-def _first_line(error: Exception) -> str:
-    # The rest would be the statement with its values, which belong in no log.
-    cause = error.orig if isinstance(error, OperationalError | InterfaceError) else error
-    return str(cause).strip().split("\n", maxsplit=1)[0]

@@ -53,6 +53,7 @@ def test_killed_writer_loses_nothing_that_it_acknowledged(
     """Kill -9 in the middle of commits, over and over; the next writer goes on from there."""
     rounds = 12 if request.config.getoption("--long") else 2
 
+    acknowledged: list[tuple[str, str]] = []
     for turn in range(rounds):
         acknowledged = written_until_killed(database_url, tmp_path, seconds=0.2 + 0.13 * turn)
 

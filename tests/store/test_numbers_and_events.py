@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 from sqlalchemy import text
 
-from service.runs.events import ACCESS_STREAM, chain_faults, event_document
+from service.runs.events import chain_faults, event_document
 from service.runs.run import LOCAL, Actor
 from service.store.audit import check_store
 from service.store.database import Database
@@ -81,7 +81,7 @@ def test_chain_has_no_fork_under_concurrency(store: SqlStore, database: Database
         try:
             for turn in range(5):
                 with store.transaction() as transaction:
-                    transaction.append(ACCESS_STREAM, "read", LOCAL, {"who": name, "turn": turn})
+                    transaction.append("access", "read", LOCAL, {"who": name, "turn": turn})
         except Exception as error:  # noqa: BLE001 - a thread's fault must reach the test
             faults.append(error)
 
@@ -92,7 +92,7 @@ def test_chain_has_no_fork_under_concurrency(store: SqlStore, database: Database
         thread.join(60)
 
     with store.reading() as reading:
-        events = reading.events(ACCESS_STREAM, "local")
+        events = reading.events("access", "local")
     assert faults == []
     assert [event.seq for event in events] == list(range(1, 41))
     assert chain_faults(events) == []
@@ -104,11 +104,11 @@ def test_event_comes_back_as_it_was_hashed(store: SqlStore) -> None:
     payload = {"text": 'é "\\\u0000😀', "none": None, "most": 2**53 - 1, "list": [True, {"b": "1"}]}
 
     with store.transaction() as transaction:
-        written = transaction.append(ACCESS_STREAM, "read", LOCAL, payload)
-        empty = transaction.append(ACCESS_STREAM, "read", OTHER, None)
+        written = transaction.append("access", "read", LOCAL, payload)
+        empty = transaction.append("access", "read", OTHER, None)
 
     with store.reading() as reading:
-        assert reading.events(ACCESS_STREAM, "local") == [written]
-        assert reading.events(ACCESS_STREAM, "other") == [empty]
+        assert reading.events("access", "local") == [written]
+        assert reading.events("access", "other") == [empty]
     assert (empty.seq, empty.payload_digest, empty.salt) == (1, None, None)
     assert event_document(written)["payload"] == payload

@@ -1,5 +1,6 @@
 """The private servers of the tests: found wherever they are, never missed in silence."""
 
+import sys
 from pathlib import Path
 
 import psycopg
@@ -14,7 +15,7 @@ from tests.servers import NoServer, binaries, postgres
 def test_missing_server_fails_and_says_how_to_get_one(monkeypatch: pytest.MonkeyPatch) -> None:
     """A skipped test of PostgreSQL would look like one that passed."""
     monkeypatch.setattr(servers, "_DEBIAN", Path("/nowhere"))
-    monkeypatch.setattr(servers.sys, "path", [])
+    monkeypatch.setattr(sys, "path", [])
     monkeypatch.setenv("PATH", "")
 
     with pytest.raises(NoServer, match="apt-get install postgresql"):

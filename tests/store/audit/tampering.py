@@ -7,13 +7,12 @@ from typing import Any
 
 from sqlalchemy import ColumnElement, Engine, Table, and_
 
-from service.runs.events import ACCESS_STREAM
 from service.runs.run import LOCAL, Run
 from service.store.audit import Problem, check_store
 from service.store.database import Database
 from service.store.sql_store import SqlStore, SystemClock
 from service.store.tables import Base
-from tests.run_factories import FakeOutcome, FakePlanner, execution, submitted
+from tests.run_factories import FakePlanner, execution, outcome, submitted
 
 TABLES = sorted(Base.metadata.tables)
 # What only fences or tells who works on a run for the moment; history does not know it.
@@ -35,14 +34,14 @@ def fill(database: Database, folder: Path) -> list[Run]:
     planned = submitted(store, folder / "1", body=b"1", deadline_seconds=900)
     execution(store, scratch)(planned.id)
     failed = submitted(store, folder / "2", body=b"2", deadline_seconds=900)
-    planner = FakePlanner(outcome=FakeOutcome(state="failed", reason="internal", detail="x"))
+    planner = FakePlanner(outcome=outcome("failed", reason="internal", detail="x"))
     execution(store, scratch, planner)(failed.id)
     no_plan = submitted(store, folder / "3", body=b"3", deadline_seconds=900)
-    planner = FakePlanner(outcome=FakeOutcome(state="no_plan"), lines=0)
+    planner = FakePlanner(outcome=outcome("no_plan"), lines=0)
     execution(store, scratch, planner)(no_plan.id)
     waiting = submitted(store, folder / "4", body=b"4", deadline_seconds=900)
     with store.transaction() as transaction:
-        transaction.append(ACCESS_STREAM, "read", LOCAL, {"run": planned.id})
+        transaction.append("access", "read", LOCAL, {"run": planned.id})
     assert check_store(database).problems == ()
     return [planned, failed, no_plan, waiting]
 
