@@ -1,7 +1,11 @@
 """However a network is written down, it means the same: one digest, one plan, to the byte."""
 
 import copy
+import os
+import subprocess
+import sys
 from collections.abc import Mapping
+from pathlib import Path
 from random import Random
 from typing import Any
 
@@ -134,3 +138,35 @@ def _written(text: str, rng: Random) -> str | int:
     if "." not in text:
         return int(text) if as_number else text
     return text + "0" if as_number and len(text.partition(".")[2]) < 3 else text
+
+
+# Planned in a process of its own: the order of sets of text differs with the seed of hashes.
+PLANNED_ELSEWHERE = """
+import hashlib, random, orjson
+from tests.factories import plan_network
+from tests.random_networks import draw_network
+digest = hashlib.sha256()
+for seed in range(8):
+    network = draw_network(random.Random(seed))
+    planned = plan_network(network.document, **network.options)
+    digest.update(planned.plan_bytes + orjson.dumps(planned.certificate))
+print(digest.hexdigest())
+"""
+
+
+def test_plan_and_certificate_do_not_depend_on_the_process() -> None:
+    """A plan is a function of network, options and versions, not of how a process hashes text."""
+    digests = {
+        subprocess.run(
+            [sys.executable, "-c", PLANNED_ELSEWHERE],
+            cwd=Path(__file__).parents[2],
+            env=os.environ | {"PYTHONHASHSEED": seed, "PYTHONPATH": "."},
+            capture_output=True,
+            check=True,
+            text=True,
+        ).stdout
+        for seed in ("0", "1")
+    }
+
+    assert len(digests) == 1
+    assert len(digests.pop().strip()) == 64
