@@ -23,6 +23,21 @@ from service.network.quantities import (
     NumberFaultError,
     read_decimal,
 )
+from service.network.value_schemas import (
+    DATE_SCHEMA,
+    EXTRA_SCHEMA,
+    ID_SCHEMA,
+    IDS_SCHEMA,
+    INSTANT_SCHEMA,
+    NAME_SCHEMA,
+    NOTE_SCHEMA,
+    QUANTITY_SCHEMA,
+    RATE_SCHEMA,
+    ROLES,
+    ROLES_SCHEMA,
+    SIGNED_SCHEMA,
+    Schema,
+)
 from service.network.wording import (
     EXTRA_ADVICE,
     ID_ADVICE,
@@ -35,32 +50,8 @@ from service.network.wording import (
     is_note,
 )
 
-Schema = dict[str, Any]
-
-ROLES: Final = ("warehouse", "cross_dock", "ship_to")
 # A name is up to three ids with every character percent-encoded, and a number.
 LANE_NAME_CHARACTERS_MAX: Final = 3 * 3 * 64 + 24
-
-ID_SCHEMA: Final[Schema] = {"type": "string", "minLength": 1, "maxLength": 64}
-NAME_SCHEMA: Final[Schema] = {"type": "string", "minLength": 1, "maxLength": 200}
-NOTE_SCHEMA: Final[Schema] = {"type": "string", "maxLength": 2000}
-IDS_SCHEMA: Final[Schema] = {"type": "array", "items": ID_SCHEMA, "uniqueItems": True}
-EXTRA_SCHEMA: Final[Schema] = {
-    "type": "object",
-    "maxProperties": 16,
-    "propertyNames": ID_SCHEMA,
-    "additionalProperties": NOTE_SCHEMA,
-}
-INSTANT_SCHEMA: Final[Schema] = {"type": "string", "format": "date-time"}
-DATE_SCHEMA: Final[Schema] = {"type": "string", "format": "date"}
-
-
-def decimal_schema(decimals_max: int, *, signed: bool) -> Schema:
-    """Return the schema of a decimal: a number, or better its exact digits as text."""
-    sign = "-?" if signed else ""
-    pattern = rf"^{sign}(0|[1-9][0-9]*)(\.[0-9]{{1,{decimals_max}}})?$"
-    number: Schema = {"type": "number"} if signed else {"type": "number", "minimum": 0}
-    return {"anyOf": [{"type": "string", "pattern": pattern, "maxLength": 32}, number]}
 
 
 class RefusedError(ValueError):
@@ -286,16 +277,6 @@ _read_zone = _checked(
     is_time_zone, "unknown_time_zone", "Say a time zone of the IANA database: Europe/Oslo."
 )
 _read_country = _checked(is_country, "bad_country", "Say two capital letters (ISO 3166): NO.")
-_RATE_SCHEMA = decimal_schema(6, signed=False)
-_SIGNED_SCHEMA = decimal_schema(6, signed=True)
-_QUANTITY_SCHEMA = decimal_schema(3, signed=False)
-_ROLES_SCHEMA: Schema = {
-    "type": "array",
-    "items": {"enum": list(ROLES)},
-    "minItems": 1,
-    "uniqueItems": True,
-}
-
 FORMAT = Kind(read=_format, schema={"const": 1})
 CURRENCY = Kind(read=_currency, schema={"type": "string", "pattern": "^[A-Z]{3}$"})
 INSTANT = Kind(read=_instant, schema=INSTANT_SCHEMA)
@@ -307,20 +288,20 @@ GTIN = Kind(read=_read_gtin, schema={"type": "string", "pattern": "^([0-9]{8}|[0
 GLN = Kind(read=_read_gln, schema={"type": "string", "pattern": "^[0-9]{13}$"})
 ZONE = Kind(read=_read_zone, schema={"type": "string"})
 COUNTRY = Kind(read=_read_country, schema={"type": "string", "pattern": "^[A-Z]{2}$"})
-RATE = Kind(read=_rate, schema=_RATE_SCHEMA)
-QUANTITY = Kind(read=_quantity, schema=_QUANTITY_SCHEMA)
-POSITIVE = Kind(read=_positive, schema=_QUANTITY_SCHEMA)
-LATITUDE = Kind(read=_degrees(90), schema=_SIGNED_SCHEMA)
-LONGITUDE = Kind(read=_degrees(180), schema=_SIGNED_SCHEMA)
-ROLE_LIST = Kind(read=_roles, schema=_ROLES_SCHEMA)
+RATE = Kind(read=_rate, schema=RATE_SCHEMA)
+QUANTITY = Kind(read=_quantity, schema=QUANTITY_SCHEMA)
+POSITIVE = Kind(read=_positive, schema=QUANTITY_SCHEMA)
+LATITUDE = Kind(read=_degrees(90), schema=SIGNED_SCHEMA)
+LONGITUDE = Kind(read=_degrees(180), schema=SIGNED_SCHEMA)
+ROLE_LIST = Kind(read=_roles, schema=ROLES_SCHEMA)
 TAGS = Kind(read=_tags, schema=IDS_SCHEMA)
 EXTRA = Kind(read=_extra, schema=EXTRA_SCHEMA)
 HANDLING_COST = Kind(
     read=_handling_cost,
     schema={
         "anyOf": [
-            *_SIGNED_SCHEMA["anyOf"],
-            {"type": "object", "additionalProperties": _SIGNED_SCHEMA},
+            *SIGNED_SCHEMA["anyOf"],
+            {"type": "object", "additionalProperties": SIGNED_SCHEMA},
         ]
     },
 )

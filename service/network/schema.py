@@ -10,8 +10,8 @@ from typing import Final
 from pydantic import BaseModel
 
 from service.network.definition import RULE_PARTS, Control, Head, ItemPart, SitePart
-from service.network.kinds import Schema
 from service.network.table_fields import REQUIRED_FIELDS, TABLE_FIELDS
+from service.network.value_schemas import Schema
 
 DIALECT: Final = "https://json-schema.org/draft/2020-12/schema"
 TITLE: Final = "Network definition"

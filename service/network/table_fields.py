@@ -3,8 +3,8 @@
 from collections.abc import Mapping
 from typing import Final
 
-from service.network import kinds
-from service.network.kinds import Schema, decimal_schema
+from service.network import value_schemas as schemas
+from service.network.value_schemas import Schema, decimal_schema
 
 PRIORITY_MAX: Final = 9
 PRIORITY_DEFAULT: Final = 5
@@ -15,53 +15,53 @@ _MONEY = decimal_schema(6, signed=False)
 _RATE = decimal_schema(6, signed=True)
 
 SUPPLY_FIELDS: Final[Mapping[str, Schema]] = {
-    "site": kinds.ID_SCHEMA,
-    "item": kinds.ID_SCHEMA,
+    "site": schemas.ID_SCHEMA,
+    "item": schemas.ID_SCHEMA,
     "quantity": _QUANTITY,
-    "unit": kinds.ID_SCHEMA,
+    "unit": schemas.ID_SCHEMA,
     "unit_cost": _RATE,
     "on_hand": _QUANTITY,
     "reserved": _QUANTITY,
     "on_hold": _QUANTITY,
-    "as_of": kinds.INSTANT_SCHEMA,
-    "lot": kinds.ID_SCHEMA,
-    "best_before": kinds.DATE_SCHEMA,
+    "as_of": schemas.INSTANT_SCHEMA,
+    "lot": schemas.ID_SCHEMA,
+    "best_before": schemas.DATE_SCHEMA,
     "keep": {
         "type": "object",
         "properties": {"quantity": _QUANTITY, "priority": _PRIORITY},
         "required": ["quantity"],
         "additionalProperties": False,
     },
-    "extra": kinds.EXTRA_SCHEMA,
+    "extra": schemas.EXTRA_SCHEMA,
 }
 DEMAND_FIELDS: Final[Mapping[str, Schema]] = {
-    "reference": kinds.ID_SCHEMA,
-    "order": kinds.ID_SCHEMA,
-    "ordered_at": kinds.INSTANT_SCHEMA,
-    "site": kinds.ID_SCHEMA,
-    "item": kinds.ID_SCHEMA,
+    "reference": schemas.ID_SCHEMA,
+    "order": schemas.ID_SCHEMA,
+    "ordered_at": schemas.INSTANT_SCHEMA,
+    "site": schemas.ID_SCHEMA,
+    "item": schemas.ID_SCHEMA,
     "quantity": _QUANTITY,
-    "unit": kinds.ID_SCHEMA,
+    "unit": schemas.ID_SCHEMA,
     "priority": _PRIORITY,
     "shortage_cost": _MONEY,
     "worth_at_most": _MONEY,
-    "origins": {**kinds.IDS_SCHEMA, "minItems": 1},
-    "tags": kinds.IDS_SCHEMA,
-    "extra": kinds.EXTRA_SCHEMA,
+    "origins": {**schemas.IDS_SCHEMA, "minItems": 1},
+    "tags": schemas.IDS_SCHEMA,
+    "extra": schemas.EXTRA_SCHEMA,
 }
 LANE_FIELDS: Final[Mapping[str, Schema]] = {
-    "id": kinds.ID_SCHEMA,
-    "origin": kinds.ID_SCHEMA,
-    "destination": kinds.ID_SCHEMA,
-    "item": kinds.ID_SCHEMA,
+    "id": schemas.ID_SCHEMA,
+    "origin": schemas.ID_SCHEMA,
+    "destination": schemas.ID_SCHEMA,
+    "item": schemas.ID_SCHEMA,
     "unit_cost": _RATE,
-    "measure": kinds.ID_SCHEMA,
+    "measure": schemas.ID_SCHEMA,
     "must_ship": _QUANTITY,
     "capacity": _QUANTITY,
     "per": {"enum": ["item"]},
-    "carrier": kinds.ID_SCHEMA,
-    "tags": kinds.IDS_SCHEMA,
-    "extra": kinds.EXTRA_SCHEMA,
+    "carrier": schemas.ID_SCHEMA,
+    "tags": schemas.IDS_SCHEMA,
+    "extra": schemas.EXTRA_SCHEMA,
 }
 TABLE_FIELDS: Final[Mapping[str, Mapping[str, Schema]]] = {
     "supply": SUPPLY_FIELDS,

@@ -6,17 +6,24 @@ What is faulty comes out as absent, so that no later check sees a guess; its row
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Final, TypeVar
+from typing import Final
 
 import numpy as np
 
 from service.network.canonical import canonical_json
-from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, IntArray, Texts
+from service.network.column_making import (
+    ABSENT,
+    by_row,
+    no_decimals,
+    no_texts,
+    texts_column,
+    without,
+)
+from service.network.columns import BoolArray, CodeArray, Decimals, Texts
 from service.network.files.json import Number
 from service.network.quantities import (
     NOT_A_NUMBER,
     TOO_LARGE,
-    least_exponent,
     read_decimals,
     too_many_decimals,
 )
@@ -32,10 +39,7 @@ from service.network.wording import (
     is_id_list,
 )
 
-_Values = TypeVar("_Values", BoolArray, CodeArray, IntArray)
-
 NONE: Final = type(None)
-ABSENT: Final = -1
 FAULTY: Final = -2
 # A thing that is known but was itself refused: the row is left out without a fault of its own.
 UNSURE: Final = -3
@@ -84,7 +88,7 @@ class TableReader:
         if column is None:
             return np.zeros(self.rows, dtype=np.bool_)
         has = np.fromiter((value is not None for value in column.values), dtype=np.bool_)
-        return _by_row(column, has)
+        return by_row(column, has)
 
     def codes(self, name: str, known: Mapping[str, int], *, unknown: str, thing: str) -> CodeArray:
         """Return the position of each id in ``known``, else ABSENT, FAULTY or UNSURE."""
@@ -98,9 +102,9 @@ class TableReader:
         wrong = np.flatnonzero(found == FAULTY)
         detail = f"There is no {thing} of this id. Add it to the network, or correct the id."
         self._faults.at_values(name, wrong, unknown, detail)
-        by_row = _by_row(column, found)
-        self._faults.bad |= by_row == UNSURE
-        return by_row
+        by_rows = by_row(column, found)
+        self._faults.bad |= by_rows == UNSURE
+        return by_rows
 
     def texts(self, name: str, spell: Callable[[str], Spelled]) -> Texts:
         """Return a column of texts in their one spelling."""
@@ -112,7 +116,7 @@ class TableReader:
         if refused:
             self._refuse_texts(name, values, refused)
         kept = {text: word.text for text, word in spelled.items()}
-        return _texts_column(column, values, kept)
+        return texts_column(column, values, kept)
 
     def ids(self, name: str) -> list[str | None]:
         """Return one id or None a row, as sent; faulty ones are None."""
@@ -137,7 +141,7 @@ class TableReader:
         if least is not None and bool((read.values < least).any()):
             wrong = read.present & (read.values < least)
             detail = "A negative number makes no sense here."
-            self._faults.at_values(name, _places(wrong), "negative_number", detail)
+            self._faults.at_values(name, np.flatnonzero(wrong), "negative_number", detail)
             read = without(read, wrong)
         if column.take is None:
             return read
@@ -163,7 +167,7 @@ class TableReader:
             else:
                 wrong.append(place)
         self._faults.at_values(name, wrong, "bad_number", f"Say a whole number from 1 to {most}.")
-        return _by_row(column, found)
+        return by_row(column, found)
 
     def lists(self, name: str, known: Mapping[str, int] | None = None, *, empty: bool) -> Texts:
         """Return a column of arrays of ids as sorted JSON arrays; ``empty`` ones count as absent.
@@ -213,7 +217,7 @@ class TableReader:
         self._faults.bad[column.rows_with(np.array(unsure, dtype=np.int64), self.rows)] = True
         for (code, detail), places in wrong.items():
             self._faults.at_values(name, places, code, detail)
-        return _texts_column(column, texts, {text: text for text in texts if text is not None})
+        return texts_column(column, texts, {text: text for text in texts if text is not None})
 
     def _texts(self, name: str) -> tuple[Column | None, list[str | None]]:
         """Return the values of a column of text; what is no text is reported and becomes None."""
@@ -269,67 +273,3 @@ class TableReader:
                 by_advice.setdefault((word.code, word.detail), []).append(place)
         for (code, detail), places in by_advice.items():
             self._faults.at_values(name, places, code, detail)
-
-
-def no_texts(rows: int) -> Texts:
-    """Return a column without any text."""
-    return Texts(codes=np.full(rows, ABSENT, dtype=np.int32), values=())
-
-
-def no_decimals(rows: int) -> Decimals:
-    """Return a column without any number."""
-    return Decimals(
-        values=np.zeros(rows, dtype=np.int64), present=np.zeros(rows, dtype=np.bool_), exponent=0
-    )
-
-
-def without(column: Decimals, rows: BoolArray) -> Decimals:
-    """Return a column in which ``rows`` have no number."""
-    values = np.where(rows, 0, column.values)
-    return least_exponent(values, column.present & ~rows, column.exponent)
-
-
-def as_ids(texts: Sequence[str | None]) -> IdArray:
-    """Return ids as a column of UTF-8, ``b""`` where there is none."""
-    encoded = [b"" if text is None else text.encode() for text in texts]
-    return np.array(encoded, dtype=np.bytes_) if encoded else np.zeros(0, dtype="S1")
-
-
-def _by_row(column: Column, found: _Values) -> _Values:
-    """Return what was found for each value as what holds for each row."""
-    return found if column.take is None else found[column.take]
-
-
-def _places(flags: BoolArray) -> IntArray:
-    """Return where ``flags`` is True."""
-    return np.flatnonzero(flags)
-
-
-def _texts_column(
-    column: Column, values: Sequence[str | None], kept: Mapping[str, str | None]
-) -> Texts:
-    """Return a column of texts: for each value the text that ``kept`` has for it, if any.
-
-    The values of the result are sorted, distinct and all used.
-    """
-    distinct = sorted({text for text in kept.values() if text})
-    code = {text: number for number, text in enumerate(distinct)}
-    by_value: dict[str | None, int] = {
-        value: code[text] if text else ABSENT for value, text in kept.items()
-    }
-    by_value[None] = ABSENT
-    codes = np.fromiter(map(by_value.__getitem__, values), dtype=np.int32, count=len(values))
-    return used_only(Texts(codes=_by_row(column, codes), values=tuple(distinct)))
-
-
-def used_only(column: Texts) -> Texts:
-    """Return a column of texts without the values that no row has."""
-    used = np.zeros(len(column.values) + 1, dtype=np.bool_)
-    used[column.codes] = True
-    used[-1] = True
-    if bool(used.all()):
-        return column
-    code = np.cumsum(used, dtype=np.int32) - 1
-    code[-1] = ABSENT
-    values = tuple(text for text, kept in zip(column.values, used.tolist(), strict=False) if kept)
-    return Texts(codes=code[column.codes], values=values)

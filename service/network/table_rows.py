@@ -8,6 +8,7 @@ from typing import TypeVar
 
 import numpy as np
 
+from service.network.column_making import used_only
 from service.network.columns import (
     BoolArray,
     CodeArray,
@@ -20,7 +21,6 @@ from service.network.columns import (
     Texts,
 )
 from service.network.quantities import least_exponent
-from service.network.table_reading import used_only
 
 _Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
 

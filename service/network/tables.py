@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from service.network.column_making import as_ids, no_decimals, without
 from service.network.columns import (
     BoolArray,
     CodeArray,
@@ -25,7 +26,7 @@ from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
 from service.network.sheets import Column, Sheet
 from service.network.table_faults import TableFaults
 from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
-from service.network.table_reading import Spelled, TableReader, as_ids, no_decimals, without
+from service.network.table_reading import Spelled, TableReader
 from service.network.table_rows import with_measure, with_units
 from service.network.things import Things
 from service.network.wording import ID_ADVICE, is_id

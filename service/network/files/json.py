@@ -86,9 +86,10 @@ def nesting(data: bytes) -> int:
     marks = np.frombuffer(data.translate(None, _NOT_STRUCTURE), dtype=np.uint8)
     quotes = marks == ord('"')
     # Between an odd and an even quote is a string, whose brackets count for nothing.
-    outside = ~quotes & (np.cumsum(quotes, dtype=np.int64) % 2 == 0)
+    # Eight bits suffice to tell odd from even.
+    outside = ~quotes & (np.cumsum(quotes, dtype=np.uint8) % 2 == 0)
     # [ and { are 0x5b and 0x7b, their partners 0x5d and 0x7d: bit 2 tells which is which.
-    steps = np.where(marks[outside] & 4, -1, 1)
+    steps = np.where(marks[outside] & 4, np.int8(-1), np.int8(1))
     return max(0, int(np.cumsum(steps, dtype=np.int64).max(initial=0)))
 
 

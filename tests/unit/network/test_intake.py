@@ -9,6 +9,7 @@ import tempfile
 from pathlib import Path
 from typing import Any
 
+import jsonschema_rs
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -17,6 +18,7 @@ from service.network.canonical import network_digest, network_entries, normal_fo
 from service.network.faults import Status
 from service.network.intake import IntakeReport, Limits, intake
 from service.network.options import Options
+from service.network.schema import network_schema
 from tests.network_samples import check, found, sound
 
 NAMES = sorted(
@@ -33,6 +35,9 @@ VALUES: list[Any] = [
     *([], {}, ["X"], ["Y"], ["warehouse"], ["cross_dock", "ship_to", "warehouse"], [[]]),
     *([["0.1", None]], {"a": "b"}, {"quantity": "5"}, {"ids": ["X"]}, {"origin": ["X"]}),
 ]
+
+
+SCHEMA = jsonschema_rs.validator_for(network_schema())
 
 
 def places(value: object, path: tuple[Any, ...] = ()) -> list[tuple[Any, ...]]:
@@ -110,7 +115,10 @@ def in_form(document: dict[str, Any], form: str) -> dict[str, Any]:
 def test_every_mutation_of_a_network_is_accepted_or_has_faults(
     source: random.Random, form: str, mutations: int, options: Options
 ) -> None:
-    """Nothing that a client sends may crash the check; what is accepted is in normal form."""
+    """Nothing that a client sends may crash the check.
+
+    What is accepted is valid by the published schema, and written in normal form.
+    """
     document = in_form(sound(), form)
     for _ in range(mutations):
         if places(document):
@@ -121,6 +129,7 @@ def test_every_mutation_of_a_network_is_accepted_or_has_faults(
         report = check(document, folder, options)
 
         assert report.status in (Status.ACCEPTED, Status.INVALID)
+        assert report.status == Status.INVALID or SCHEMA.is_valid(document)
         assert (report.status == Status.ACCEPTED) == (report.fault_count == 0)
         assert len(report.faults) == min(report.fault_count, 100)
         assert IntakeReport.from_document(json.loads(json.dumps(report.to_document()))) == report

@@ -1,0 +1,73 @@
+"""Columns made of what was read: absent ones, thinned ones, and texts in their one spelling."""
+
+from collections.abc import Mapping, Sequence
+from typing import Final, TypeVar
+
+import numpy as np
+
+from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, IntArray, Texts
+from service.network.quantities import least_exponent
+from service.network.sheets import Column
+
+_Values = TypeVar("_Values", BoolArray, CodeArray, IntArray)
+
+ABSENT: Final = -1
+
+
+def no_texts(rows: int) -> Texts:
+    """Return a column without any text."""
+    return Texts(codes=np.full(rows, ABSENT, dtype=np.int32), values=())
+
+
+def no_decimals(rows: int) -> Decimals:
+    """Return a column without any number."""
+    return Decimals(
+        values=np.zeros(rows, dtype=np.int64), present=np.zeros(rows, dtype=np.bool_), exponent=0
+    )
+
+
+def without(column: Decimals, rows: BoolArray) -> Decimals:
+    """Return a column in which ``rows`` have no number."""
+    values = np.where(rows, 0, column.values)
+    return least_exponent(values, column.present & ~rows, column.exponent)
+
+
+def as_ids(texts: Sequence[str | None]) -> IdArray:
+    """Return ids as a column of UTF-8, ``b""`` where there is none."""
+    encoded = [b"" if text is None else text.encode() for text in texts]
+    return np.array(encoded, dtype=np.bytes_) if encoded else np.zeros(0, dtype="S1")
+
+
+def by_row(column: Column, found: _Values) -> _Values:
+    """Return what was found for each value as what holds for each row."""
+    return found if column.take is None else found[column.take]
+
+
+def texts_column(
+    column: Column, values: Sequence[str | None], kept: Mapping[str, str | None]
+) -> Texts:
+    """Return a column of texts: for each value the text that ``kept`` has for it, if any.
+
+    The values of the result are sorted, distinct and all used.
+    """
+    distinct = sorted({text for text in kept.values() if text})
+    code = {text: number for number, text in enumerate(distinct)}
+    by_value: dict[str | None, int] = {
+        value: code[text] if text else ABSENT for value, text in kept.items()
+    }
+    by_value[None] = ABSENT
+    codes = np.fromiter(map(by_value.__getitem__, values), dtype=np.int32, count=len(values))
+    return used_only(Texts(codes=by_row(column, codes), values=tuple(distinct)))
+
+
+def used_only(column: Texts) -> Texts:
+    """Return a column of texts without the values that no row has."""
+    used = np.zeros(len(column.values) + 1, dtype=np.bool_)
+    used[column.codes] = True
+    used[-1] = True
+    if bool(used.all()):
+        return column
+    code = np.cumsum(used, dtype=np.int32) - 1
+    code[-1] = ABSENT
+    values = tuple(text for text, kept in zip(column.values, used.tolist(), strict=False) if kept)
+    return Texts(codes=code[column.codes], values=values)
