@@ -33,7 +33,10 @@ def configure_logs(level: str = "info", *, stream: TextIO | None = None) -> None
         structlog.contextvars.merge_contextvars,
         structlog.processors.add_log_level,
         structlog.processors.TimeStamper(fmt="iso", utc=True),
-        structlog.processors.dict_tracebacks,
+        # Without local variables: among them are networks of clients and addresses with passwords.
+        structlog.processors.ExceptionRenderer(
+            structlog.tracebacks.ExceptionDictTransformer(show_locals=False)
+        ),
     ]
     structlog.configure(
         processors=[*shared, structlog.processors.JSONRenderer(serializer=_json)],

@@ -5,6 +5,7 @@ import sys
 from collections.abc import Sequence
 
 import pytest
+import structlog
 from hypothesis import settings
 
 # Fixtures for both databases, wherever a test asks for them.
@@ -24,6 +25,15 @@ def pytest_addoption(parser: pytest.Parser) -> None:
 def pytest_configure(config: pytest.Config) -> None:
     """Choose the examples that Hypothesis draws, and close the door to the network."""
     settings.load_profile("long" if config.getoption("--long") else "short")
+    # Lines go where pytest keeps them for a test that fails, and tracebacks without the values of
+    # variables, which may be megabytes.
+    structlog.configure(
+        processors=[
+            structlog.processors.format_exc_info,
+            structlog.processors.KeyValueRenderer(key_order=["event"]),
+        ],
+        logger_factory=structlog.stdlib.LoggerFactory(),
+    )
     # An audit hook can be neither patched away nor removed by a library under test.
     sys.addaudithook(_refuse_other_machines)
 

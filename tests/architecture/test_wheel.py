@@ -24,6 +24,11 @@ def test_the_wheel_brings_the_migrations_and_the_pages(tmp_path: Path) -> None:
         for path in (ROOT / "service").rglob("*")
         if path.is_file() and "__pycache__" not in path.parts
     }
+    wanted |= {
+        f"service/doors/http/examples/{path.name}"
+        for path in (ROOT / "openapi" / "examples").iterdir()
+    }
     assert "service/store/migrations/env.py" in wanted
+    assert "service/doors/http/examples/plan.json" in wanted
     assert wanted - packed == set()
     assert {name for name in packed if name.startswith("tests")} == set()

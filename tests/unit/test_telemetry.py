@@ -16,10 +16,11 @@ def log() -> Iterator[io.StringIO]:
     """Catch the log of one test and leave logging as it was."""
     root = logging.getLogger()
     handlers, level = root.handlers[:], root.level
+    former = structlog.get_config()
     stream = io.StringIO()
     configure_logs("info", stream=stream)
     yield stream
-    structlog.reset_defaults()
+    structlog.configure(**former)
     root.handlers[:], root.level = handlers, level
 
 
@@ -79,3 +80,16 @@ def test_an_exception_is_data_not_lines(log: io.StringIO) -> None:
 
     (line,) = _lines(log)
     assert "no salt" in json.dumps(line["exception"])
+
+
+def test_traceback_in_the_log_shows_no_values(log: io.StringIO) -> None:
+    """A network, or the password of a database, may be in a variable when something fails."""
+    secret = "pass" + "word"
+
+    try:
+        secret.index("no such part")
+    except ValueError:
+        structlog.get_logger().exception("failed")
+
+    assert secret not in log.getvalue()
+    assert "test_traceback_in_the_log_shows_no_values" in log.getvalue()

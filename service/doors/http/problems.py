@@ -79,7 +79,10 @@ class Problem(Exception):  # noqa: N818 - RFC 9457 calls it a problem
 
 def problem_response(problem: Problem, scope: Scope) -> Response:
     """Return ``problem`` as the answer to the request of ``scope``."""
-    request_id = scope.get("state", {}).get("request_id", "unknown")
+    state = scope.setdefault("state", {})
+    # For the line that the log gets about this request.
+    state["problem"] = problem.kind.slug
+    request_id = state.get("request_id", "unknown")
     document = problem.to_document(instance=scope["path"], request_id=request_id)
     # The id also as a header here, because the answer to a mistake of ours leaves the application
     # outside of the layer that would add it.

@@ -75,6 +75,7 @@ class RequestScope:
                     method=scope["method"],
                     path=scope["path"],
                     status=status,
+                    problem=scope["state"].get("problem"),
                     seconds=round(time.monotonic() - began, 4),
                 )
 

@@ -37,7 +37,6 @@ class Spooled:
     path: Path
     folder: Path
     wire_digest: str
-    wire_bytes: int
 
 
 class Spool:
@@ -99,7 +98,6 @@ class Spool:
             path=path,
             folder=folder,
             wire_digest=f"sha-256:{digest.hexdigest()}",
-            wire_bytes=count,
         )
 
     def refuse_declared_size(self, request: Request) -> None:

@@ -125,6 +125,7 @@ def test_every_request_is_logged_once_without_its_content(client: TestClient) ->
 
     (line,) = lines
     assert (line["method"], line["path"], line["status"]) == ("POST", "/v1/runs", 415)
+    assert line["problem"] == "unsupported-media-type"
     assert "private" not in repr(line)
 
 
