@@ -6,7 +6,6 @@ from random import Random
 import networkx as nx
 import numpy as np
 import orjson
-import pytest
 
 from service.network.options import Options
 from service.proof.arcs import ItemArcs, item_arcs, scaled_costs
@@ -33,12 +32,20 @@ def residual(arcs: ItemArcs, flow: list[int]) -> "nx.DiGraph[int]":
     return graph
 
 
-@pytest.mark.parametrize("seed", SEEDS)
-def test_step_around_a_cycle_is_refused_exactly_if_it_costs_more(seed: int) -> None:
+def test_step_around_a_cycle_is_refused_exactly_if_it_costs_more() -> None:
     """Every shifted flow is feasible; the same prices accept it only if it costs the same.
 
     What it costs is counted here, weights included; a cheaper one would refute the proof.
     """
+    tried = [_shift(seed) for seed in SEEDS]
+
+    # Small networks may have no other way at all; most have several.
+    assert sum(tried) > 100
+    assert sum(map(bool, tried)) > len(SEEDS) // 2
+
+
+def _shift(seed: int) -> int:
+    """Shift a step around cycles of one network, check each, and return how many there were."""
     entries = entries_of(good_zip(seed))
     network = network_of(entries)
     options = Options.from_document(orjson.loads(entries["options.json"]))
@@ -78,9 +85,7 @@ def test_step_around_a_cycle_is_refused_exactly_if_it_costs_more(seed: int) -> N
             assert added >= 0
             assert bool(len(refused)) == (added > 0)
             tried += 1
-
-    # Shortage alone gives a way around, by the root; without a plan there is nothing to shift.
-    assert tried or plan["status"] == "no_plan" or not len(network.demand)
+    return tried
 
 
 def _some_cycles(graph: "nx.DiGraph[int]", rng: Random) -> list[list[int]]:
