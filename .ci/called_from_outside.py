@@ -21,5 +21,6 @@ _.pids  # tests/engine watches the processes
 downgrade_database  # tests/store undoes every migration
 service_role_sql  # operators of PostgreSQL run it, as its module says
 NUMBERS_TOO_LARGE  # a planning child answers with its value
+_.size_bytes  # tests/unit/network look at it
 _.extract_id  # pydantic checks it; it stays with the body as received
 _.extracted_at  # likewise
