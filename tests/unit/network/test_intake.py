@@ -129,7 +129,8 @@ def test_every_mutation_of_a_network_is_accepted_or_has_faults(
         report = check(document, folder, options)
 
         assert report.status in (Status.ACCEPTED, Status.INVALID)
-        assert report.status == Status.INVALID or SCHEMA.is_valid(document)
+        if report.status == Status.ACCEPTED and options.bad_rows == "refuse":
+            assert SCHEMA.is_valid(document)
         assert (report.status == Status.ACCEPTED) == (report.fault_count == 0)
         assert len(report.faults) == min(report.fault_count, 100)
         assert IntakeReport.from_document(json.loads(json.dumps(report.to_document()))) == report
