@@ -29,6 +29,7 @@ _SQLITE_BUSY_SECONDS: Final = 30.0
 _CONNECT_SECONDS: Final = 3
 _POOL_SECONDS: Final = 3.0
 _POOL_SIZE: Final = 16
+_LOG_BYTES_KEPT: Final = 16 * 2**20
 
 
 class DatabaseRefused(Exception):  # noqa: N818 - named for the fact, like every error here
@@ -129,6 +130,8 @@ def _prepare_sqlite(connection: DBAPIConnection, entry: "ConnectionPoolEntry") -
         "foreign_keys = ON",
         # Without it, INSERT OR REPLACE would remove a fact and fire no trigger.
         "recursive_triggers = ON",
+        # After a large network the log would keep its size for ever.
+        f"journal_size_limit = {_LOG_BYTES_KEPT}",
     ):
         cursor.execute(f"PRAGMA {pragma}")
     cursor.close()

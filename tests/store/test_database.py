@@ -1,5 +1,6 @@
 """Opening a database: the settings that make an acknowledged run survive, and what is refused."""
 
+import os
 import sqlite3
 import time
 from pathlib import Path
@@ -13,6 +14,7 @@ from service.runs.faults import StoreUnavailable
 from service.store import local_disk
 from service.store.database import Database, DatabaseRefused, database_url, open_database
 from service.store.local_disk import file_system_of, network_file_system
+from service.store.migrate import migrate
 from service.store.sql_store import SqlStore
 from tests.databases import FakeClock, Opened, plain
 from tests.run_factories import submitted
@@ -150,6 +152,24 @@ def test_error_within_a_transaction_takes_everything_back(store: SqlStore, tmp_p
 
     with store.reading() as reading:
         assert reading.run(run.id, "local").attempt == 0
+
+
+def test_log_that_grew_behind_a_slow_reader_shrinks_again(tmp_path: Path, opened: Opened) -> None:
+    """A reader keeps SQLite from emptying its log; once it is gone the disk is given back."""
+    url = f"sqlite:///{tmp_path / 'lanewright.db'}"
+    migrate(url)
+    store = SqlStore(opened(url), FakeClock())
+    log = tmp_path / "lanewright.db-wal"
+
+    with store.reading() as reading:
+        reading.waiting(limit=1)
+        store.stage_bytes("local", os.urandom(24 * 2**20))
+        grown = log.stat().st_size
+    for turn in range(3):
+        submitted(store, tmp_path / "in", body=b"%d" % turn)
+
+    assert grown > 24 * 2**20
+    assert log.stat().st_size <= 16 * 2**20
 
 
 def test_database_that_is_away_is_said_to_be_within_seconds(opened: Opened) -> None:
