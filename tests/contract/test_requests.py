@@ -4,6 +4,7 @@ The seed is fixed and the number small, unless ``--long``.
 """
 
 from collections.abc import Iterator
+from typing import Any
 
 import pytest
 import schemathesis
@@ -19,7 +20,7 @@ from tests.doors.http.fakes import await_true, client_of, real_server
 
 # What a network means (that a lane's origin is one of its sites, that totals match) cannot be said
 # in JSON Schema, so a network of the right form may well be refused.
-EXCLUDED = [positive_data_acceptance]
+EXCLUDED: list[Any] = [positive_data_acceptance]
 
 
 @pytest.fixture(scope="module")
@@ -59,7 +60,7 @@ without_boundaries = schemathesis.openapi.from_path(
 
 @without_boundaries.include(method="POST").parametrize()
 def test_network_of_the_described_form_gets_a_documented_answer(
-    case: schemathesis.Case, address: str
+    case: schemathesis.Case[Any], address: str
 ) -> None:
     """Networks right and wrong: status, headers, media type and body are as described."""
     case.call_and_validate(base_url=address, excluded_checks=EXCLUDED)
@@ -68,21 +69,23 @@ def test_network_of_the_described_form_gets_a_documented_answer(
 @pytest.mark.long
 @documented.include(method="POST").parametrize()
 def test_network_at_every_boundary_gets_a_documented_answer(
-    case: schemathesis.Case, address: str
+    case: schemathesis.Case[Any], address: str
 ) -> None:
     """Likewise, with each member at, below and above each of its bounds."""
     case.call_and_validate(base_url=address, excluded_checks=EXCLUDED)
 
 
 @documented.include(method="GET").parametrize()
-def test_documented_request_gets_a_documented_answer(case: schemathesis.Case, address: str) -> None:
+def test_documented_request_gets_a_documented_answer(
+    case: schemathesis.Case[Any], address: str
+) -> None:
     """Right and wrong requests alike: status, headers, media type and body are as described."""
     case.call_and_validate(base_url=address, excluded_checks=EXCLUDED)
 
 
 @reads.parametrize()
 def test_read_of_a_real_run_gets_a_documented_answer(
-    case: schemathesis.Case, address: str, planned_run: str
+    case: schemathesis.Case[Any], address: str, planned_run: str
 ) -> None:
     """With an id that exists, so that the reads come further than to 404."""
     case.path_parameters = {"run_id": planned_run}

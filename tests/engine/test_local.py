@@ -222,7 +222,7 @@ def test_next_engine_takes_over_what_a_killed_one_was_planning(
     house = House(store=store, engine=engine, planner=planner, folder=tmp_path)
     run = house.submit()
     with store.transaction() as transaction:
-        claim = transaction.claim(run.id, token="0" * 32, lease_seconds=30, crashes_max=3)  # type: ignore[arg-type]
+        claim = transaction.claim(run.id, token="0" * 32, lease_seconds=30, crashes_max=3)  # type: ignore[arg-type] # any token
     assert claim is not None
 
     engine.start(EngineLock(tmp_path / "lanewright.db.engine"))
