@@ -265,11 +265,9 @@ def _read_kept(document: Document, item: Document) -> Iterable[OracleKept]:
     for row in document["supply"]:
         if row["item"] == item["id"] and "keep" in row:
             quantity = exact(row["keep"]["quantity"]) * _factor(item, row.get("unit"))
-            yield OracleKept(
-                site=row["site"],
-                steps=floor(quantity / step),
-                priority=row["keep"]["priority"],
-            )
+            steps, priority = floor(quantity / step), row["keep"]["priority"]
+            if steps:
+                yield OracleKept(site=row["site"], steps=steps, priority=priority)
 
 
 def _read_limits(

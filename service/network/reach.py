@@ -80,13 +80,14 @@ class LaneUse:
     def apart(self, item: int) -> BoolArray:
         """Return, in shape (sites,), which sites keep received goods of ``item`` from their stock.
 
-        They do where received goods may not leave again although own stock may, and where an order
-        line of the item names the origins that may serve it.
+        They do where received goods may not leave again although own stock, or a lane, may take
+        goods out, and where an order line of the item names the origins that may serve it.
         """
         demand, lines = self._network.demand, self._wanted.rows(item)
         choosy = lines[demand.origins.codes[lines] >= 0]
         stocked = self._sites(self._network.supply.site[self._supply.rows(item)])
-        return (~self._passes_on & stocked & self.received(item)) | self._sites(demand.site[choosy])
+        mixed = ~self._passes_on & self.received(item) & (stocked | self.sent(item))
+        return mixed | self._sites(demand.site[choosy])
 
     def stock_reaching(self, item: int, place: int) -> BoolArray:
         """Return, in shape (sites,), whose stock of ``item`` can be at ``place`` to be sent on.

@@ -139,11 +139,11 @@ class _RuleChecks:
                     self.faults.add(
                         pointer(*place, "measure"), "measure_unknown", MEASURE_ADVICE, rule.measure
                     )
-                if rule.flow != "sent" and self.use.apart(item)[site]:
-                    detail = refusal(
-                        f"{rule.flow} at a site that keeps what it receives apart", SHARED
-                    )
-                    self.faults.add(pointer(*place, "flow"), "not_yet", detail, rule.flow)
+            # Also where nothing can pass: goods of such a site have no one place to be counted at.
+            by_two_ways = rule.flow != "sent" or self.use.passes_on[site]
+            if by_two_ways and any(self.use.apart(item)[site] for item in allowed):
+                detail = refusal(f"{rule.flow} at a site that keeps what it receives apart", SHARED)
+                self.faults.add(pointer(*place, "flow"), "not_yet", detail, rule.flow)
 
     def _can_pass(self, item: int, flow: str) -> BoolArray:
         """Return, in shape (sites,), where an item can be received, sent, or pass through."""

@@ -4,7 +4,7 @@ from typing import Any
 
 import pytest
 
-from tests.factories import Document, network_document, plan_network
+from tests.factories import Document, NetworkRefused, network_document, plan_network
 from tests.judging import achieved, outcomes
 from tests.oracles import by_linear_programs, by_network_simplex
 
@@ -69,3 +69,43 @@ def test_network_is_planned_as_two_solvers_would(document: Document) -> None:
     # Amounts beyond 2**53 are no numbers of a solver in floating point.
     if planned.total_cost < 2**40:
         assert own == outcomes(by_linear_programs(document))
+
+
+def limited(flow: str, site: str, **tables: list[dict[str, Any]]) -> Document:
+    """Return a network with a limit on all that passes a place in two ways."""
+    rule = {"rule": "throughput", "id": "R", "sites": {"ids": [site]}, "flow": flow, "maximum": "1"}
+    return network_document(supply=[], rules=[rule], **{"demand": [], "lanes": [], **tables})  # type: ignore[arg-type] # tables by name
+
+
+@pytest.mark.parametrize(
+    "document",
+    [
+        pytest.param(
+            limited(
+                "through",
+                "X",
+                sites=[WAREHOUSE, {"id": "X", "roles": ["ship_to", "warehouse"]}, SHIP_TO],
+                lanes=[
+                    {"origin": "W", "destination": "X", "unit_cost": "1", "item": "GOODS"},
+                    {"origin": "X", "destination": "S", "unit_cost": "1", "item": "GOODS"},
+                ],
+            ),
+            id="what arrives may not leave, what leaves is not there",
+        ),
+        pytest.param(
+            limited(
+                "sent",
+                "X",
+                sites=[WAREHOUSE, {"id": "X", "roles": ["cross_dock", "ship_to"]}],
+                demand=[{"site": "X", "item": "GOODS", "quantity": "1", "origins": ["W"]}],
+            ),
+            id="a line at a cross-dock says whose stock may serve it",
+        ),
+    ],
+)
+def test_limit_on_goods_that_are_kept_apart_is_refused_by_name(document: Document) -> None:
+    """The door must refuse what the proof does not know, not let a run fail on it."""
+    with pytest.raises(NetworkRefused) as refused:
+        plan_network(document)
+
+    assert [fault.code for fault in refused.value.report.faults] == ["not_yet"]
