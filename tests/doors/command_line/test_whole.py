@@ -205,24 +205,41 @@ def test_ctrl_c_ends_the_child_too(tmp_path: Path) -> None:
     ) as process:
         # The child blocks on the pipe that nobody writes to, like a solver that does not return.
         writer = os.open(tmp_path / "network.json", os.O_WRONLY)
-        child = wait_for_child(process.pid)
+        child = wait_for_reader(process.pid, tmp_path / "network.json")
         os.kill(process.pid, signal.SIGINT)
         code = process.wait(timeout=SECONDS_MAX)
         os.close(writer)
 
     assert code == 130
-    assert not Path(f"/proc/{child}").exists()
+    assert ended(child)
 
 
-def wait_for_child(parent: int) -> int:
-    """Return the process id of the one child that ``parent`` soon has."""
+def wait_for_reader(parent: int, file: Path) -> int:
+    """Return the process id of the child of ``parent`` that has soon opened ``file``."""
     until = time.monotonic() + SECONDS_MAX
     while time.monotonic() < until:
-        children = Path(f"/proc/{parent}/task/{parent}/children").read_text().split()
-        if children:
-            return int(children[0])
+        children = Path(f"/proc/{parent}/task/{parent}/children").read_text(encoding="ascii")
+        for child in map(int, children.split()):
+            opened = Path(f"/proc/{child}/fd").iterdir()
+            if any(link.is_symlink() and link.resolve() == file for link in opened):
+                return child
         time.sleep(0.02)
-    raise AssertionError("no child was started")
+    raise AssertionError("no child began to read")
+
+
+def ended(process: int) -> bool:
+    """Say whether a process is soon gone, or dead and only waits for process 1 to look."""
+    until = time.monotonic() + SECONDS_MAX
+    while time.monotonic() < until:
+        try:
+            status = Path(f"/proc/{process}/stat").read_text(encoding="utf-8")
+        except (FileNotFoundError, ProcessLookupError):
+            return True
+        # The name stands in brackets and may hold anything; the state comes after it.
+        if status.rpartition(")")[2].split()[0] in "ZX":
+            return True
+        time.sleep(0.02)
+    return False
 
 
 @contextmanager
