@@ -48,11 +48,6 @@ def is_note(text: str) -> bool:
     return len(text) <= NOTE_CHARACTERS_MAX and not CONTROL_IN_LINES.search(text)
 
 
-def is_text(value: object) -> bool:
-    """Return whether a JSON value is text; a number is none, although it is kept as its digits."""
-    return type(value) is str
-
-
 def is_extra(value: object) -> bool:
     """Return whether a JSON value can be ``extra``: at most 16 pairs of text."""
     return (
