@@ -59,7 +59,7 @@ class Sheet:
     refused: frozenset[str] = frozenset()
 
 
-def refuse_field(table: str, field: str, place: str, faults: FaultList, count: int = 1) -> None:
+def refuse_field(table: str, field: str, place: str, faults: FaultList) -> None:
     """Report a field that is not known, or not built yet."""
     subject = NOT_YET_FIELDS.get(table, {}).get(field)
     if subject is not None:
@@ -68,4 +68,3 @@ def refuse_field(table: str, field: str, place: str, faults: FaultList, count: i
         faults.add(
             place, "unknown_field", f"There is no such field in {table}. Correct or drop it."
         )
-    faults.add_uncounted(count - 1)

@@ -3,7 +3,7 @@
 from collections.abc import Sequence
 
 from service.network.cost_tables import cost_table_sheet, cost_tables_sheet
-from service.network.faults import FaultList, pointer
+from service.network.faults import FAULTS_REPORTED_MAX, FaultList, pointer
 from service.network.sheets import Column, Sheet, refuse_field
 
 
@@ -44,7 +44,7 @@ def _from_rows(
             return None
     objects: list[dict[str, object]] = rows  # type: ignore[assignment] # all were checked
     seen: set[str] = set()
-    strange: dict[str, tuple[int, int]] = {}
+    strange: dict[str, list[int]] = {}
     known = frozenset(fields)
     for place, row in enumerate(objects):
         if known.issuperset(row):
@@ -54,10 +54,11 @@ def _from_rows(
             if field in known:
                 seen.add(field)
             else:
-                first, count = strange.get(field, (place, 0))
-                strange[field] = first, count + 1
-    for field, (first, count) in strange.items():
-        refuse_field(name, field, pointer(name, first, field), faults, count)
+                strange.setdefault(field, []).append(place)
+    for field, places in strange.items():
+        for place in places[:FAULTS_REPORTED_MAX]:
+            refuse_field(name, field, pointer(name, place, field), faults)
+        faults.add_uncounted(len(places[FAULTS_REPORTED_MAX:]))
     columns = {
         field: Column(
             values=[row.get(field) for row in objects],

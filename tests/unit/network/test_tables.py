@@ -271,6 +271,18 @@ def test_a_shared_value_is_blamed_once(tmp_path: Path) -> None:
     assert found(check(document, tmp_path)) == [("/lanes/origins/0", "role_missing")]
 
 
+def test_an_unknown_field_is_shown_in_every_row_that_has_it(tmp_path: Path) -> None:
+    """One wrong column name of an export stands in every row; the count says so."""
+    document = sound()
+    for row in document["demand"]:
+        row["colour"] = "red"
+
+    report = check(document, tmp_path)
+
+    assert found(report) == [(f"/demand/{row}/colour", "unknown_field") for row in range(2)]
+    assert report.fault_count == 2
+
+
 def test_a_value_beside_a_missing_cost_is_doubted(tmp_path: Path) -> None:
     """Where there is no lane, a capacity does nothing; perhaps a cost was forgotten."""
     document = dense()
