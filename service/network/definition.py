@@ -25,7 +25,7 @@ from service.network import kinds
 from service.network.faults import FaultList, pointer, value_text
 from service.network.kinds import Kind, RefusedError
 from service.network.moments import Instant
-from service.network.sheets import refuse_field
+from service.network.sheets import Odd, refuse_field
 
 
 def _read(kind: Kind, *, optional: bool) -> Callable[[object], Any]:
@@ -34,6 +34,8 @@ def _read(kind: Kind, *, optional: bool) -> Callable[[object], Any]:
     def read(value: object) -> Any:  # noqa: ANN401 - the field's own type says what comes out
         if optional and value is None:
             return None
+        if isinstance(value, Odd):
+            raise PydanticCustomError(value.code, value.detail)
         try:
             return kind.read(value)
         except RefusedError as error:

@@ -47,12 +47,13 @@ class Reading:
     counts: Mapping[str, int] = field(default_factory=dict)
 
 
-def read_network(document: object, options: Options) -> Reading:
+def read_network(document: object, options: Options, faults: FaultList | None = None) -> Reading:
     """Read and check a definition; every fault is found, whatever else is wrong.
 
-    The rows of the three tables are taken out of ``document`` as soon as they are in columns.
+    The rows of the three tables are taken out of ``document`` as soon as they are in columns; a
+    table that came from a file is a ``Sheet`` already. ``faults`` are those found on the way here.
     """
-    faults = FaultList()
+    faults = FaultList() if faults is None else faults
     if not isinstance(document, dict):
         faults.add("", "wrong_type", "Send a network definition: a JSON object.", document)
         return Reading(network=None, cut_off=None, faults=faults)
@@ -152,6 +153,10 @@ def _take_sheets(document: dict[str, object], faults: FaultList) -> dict[str, Sh
         if name not in document:
             continue
         value = document[name]
+        if isinstance(value, Sheet):
+            sheets[name] = value
+            document[name] = None
+            continue
         sheet = sheet_of(name, value, fields=tuple(fields), listed=LISTED_FIELDS, faults=faults)
         if sheet is not None:
             sheets[name] = sheet

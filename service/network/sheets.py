@@ -5,7 +5,7 @@ sent once for many rows is checked once.
 """
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Final
 
 import numpy as np
@@ -18,20 +18,49 @@ from service.network.not_yet import NOT_YET_FIELDS, refusal
 ROWS_MAX: Final = 2**31 - 1
 
 
+@dataclass(frozen=True, slots=True)
+class Odd:
+    """A cell of a file that is no value of any field: what it is, and the value to show for it.
+
+    A workbook has such cells (an error, TRUE, a number that is not exact); JSON has none.
+    """
+
+    code: str
+    detail: str
+    value: str | None = None
+
+    def __str__(self) -> str:
+        """Return the value to show."""
+        return self.value or ""
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Column:
     """The values of one field. ``take`` tells which value each row has; None: its own, in order.
 
-    ``place`` gives the pointer of the value at a position of ``values``.
+    ``place`` gives the pointer of the value at a position of ``values``. With ``by_rows`` it gives
+    that of the value in a row: each row was sent with a value of its own, and ``take`` only says
+    which of them are equal. ``odd`` holds what stood at positions whose value is None because no
+    field could have it.
     """
 
     values: Sequence[object]
     take: IntArray | None
     place: Callable[[int], str]
+    by_rows: bool = False
+    odd: Mapping[int, Odd] = field(default_factory=dict)
 
     def position(self, row: int) -> int:
         """Return which value ``row`` has."""
         return row if self.take is None else int(self.take[row])
+
+    def place_in(self, row: int) -> str:
+        """Return the pointer of the value that ``row`` has."""
+        return self.place(row if self.by_rows else self.position(row))
+
+    def shown(self, position: int) -> object:
+        """Return the value at ``position`` as it may be shown, an odd one too."""
+        return self.odd.get(position, self.values[position])
 
     def rows_with(self, positions: IntArray, rows: int) -> IntArray:
         """Return the rows, ascending, that have one of the values at ``positions``."""

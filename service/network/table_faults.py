@@ -104,7 +104,9 @@ class TableFaults:
             rows = column.rows_with(positions, self.sheet.rows)
         if rows is None:
             return
-        if positions is None:
+        if column is not None and column.by_rows:
+            positions = rows
+        elif positions is None:
             positions = rows if column is None or column.take is None else column.take[rows]
         if len(positions) == 0:
             return
@@ -159,18 +161,18 @@ class TableFaults:
     def place(self, name: str, row: int) -> str:
         """Return the pointer of a field in a row, or of the row where it has no such value."""
         column = self.sheet.columns.get(name)
-        return self.sheet.row_place(row) if column is None else column.place(column.position(row))
+        return self.sheet.row_place(row) if column is None else column.place_in(row)
 
     def value(self, name: str, row: int) -> object:
         """Return the value of a field in a row as sent."""
         column = self.sheet.columns.get(name)
-        return None if column is None else column.values[column.position(row)]
+        return None if column is None else column.shown(column.position(row))
 
     def _fault(self, report: _Report, position: int) -> Fault:
-        """Return the fault of one value."""
+        """Return the fault of one value; ``position`` is a row where the column goes by rows."""
         if report.column is not None:
-            place = report.column.place(position)
-            value = value_text(report.column.values[position])
+            at = report.column.position(position) if report.column.by_rows else position
+            place, value = report.column.place(position), value_text(report.column.shown(at))
         elif not report.field:
             place, value = self.sheet.row_place(position), None
         else:

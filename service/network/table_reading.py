@@ -20,10 +20,12 @@ from service.network.column_making import (
     without,
 )
 from service.network.columns import BoolArray, CodeArray, Decimals, Texts
+from service.network.exact_numbers import ExactNumbers
 from service.network.files.json import Number
 from service.network.quantities import (
     NOT_A_NUMBER,
     TOO_LARGE,
+    ReadDecimals,
     read_decimals,
     too_many_decimals,
 )
@@ -69,6 +71,8 @@ class TableReader:
         self._faults = faults
         self._columns = faults.sheet.columns
         self.rows = faults.sheet.rows
+        for name, column in self._columns.items():
+            self._refuse_odd(name, column)
 
     def require(self, name: str, present: BoolArray) -> None:
         """Report rows in which a field that every row needs is missing."""
@@ -219,6 +223,14 @@ class TableReader:
             self._faults.at_values(name, places, code, detail)
         return texts_column(column, texts, {text: text for text in texts if text is not None})
 
+    def _refuse_odd(self, name: str, column: Column) -> None:
+        """Report the cells of a file that no field could have; their values are absent already."""
+        by_advice: dict[tuple[str, str], list[int]] = {}
+        for position, cell in column.odd.items():
+            by_advice.setdefault((cell.code, cell.detail), []).append(position)
+        for (code, detail), positions in by_advice.items():
+            self._faults.at_values(name, sorted(positions), code, detail)
+
     def _texts(self, name: str) -> tuple[Column | None, list[str | None]]:
         """Return the values of a column of text; what is no text is reported and becomes None."""
         column = self._columns.get(name)
@@ -234,6 +246,8 @@ class TableReader:
 
     def _decimals_of(self, name: str, values: Sequence[object], decimals_max: int) -> Decimals:
         """Return the values of a column as decimals and report the faulty ones."""
+        if isinstance(values, ExactNumbers):
+            return self._report_decimals(name, values.read(decimals_max), decimals_max)
         kinds = set(map(type, values))
         if kinds - {str, Number, NONE}:
             wrong = [
@@ -254,6 +268,10 @@ class TableReader:
             present=present,
             decimals_max=decimals_max,
         )
+        return self._report_decimals(name, read, decimals_max)
+
+    def _report_decimals(self, name: str, read: ReadDecimals, decimals_max: int) -> Decimals:
+        """Return the sound decimals of a column and report the faulty ones."""
         for places, (code, detail) in (
             (read.malformed, NOT_A_NUMBER),
             (read.too_fine, too_many_decimals(decimals_max)),
