@@ -5,6 +5,7 @@ A test that finds no PostgreSQL fails and says how to get one; it is never skipp
 
 import itertools
 from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
@@ -71,6 +72,22 @@ def new_postgres_database(
     return server.url(name)
 
 
+@contextmanager
+def postgres_database(
+    server: PostgresServer,
+    prefix: str,
+    *,
+    template: str = "template0",
+) -> Iterator[str]:
+    """Give a database for the length of the block; hundreds of them would fill a small disk."""
+    name = f"{prefix}_{next(_names)}"
+    yield new_postgres_database(server, name, template=template)
+    with psycopg.connect(plain(server.url("postgres")), autocommit=True) as connection:
+        connection.execute(
+            sql.SQL("DROP DATABASE {} WITH (FORCE)").format(sql.Identifier(name)),
+        )
+
+
 def plain(url: str) -> str:
     """Return the address as the driver itself reads it."""
     return url.replace("postgresql+psycopg://", "postgresql://")
@@ -83,24 +100,36 @@ def database_kind(request: pytest.FixtureRequest) -> str:
 
 
 @pytest.fixture
-def empty_url(database_kind: str, request: pytest.FixtureRequest, tmp_path: Path) -> str:
+def empty_url(
+    database_kind: str,
+    request: pytest.FixtureRequest,
+    tmp_path: Path,
+) -> Iterator[str]:
     """Return the address of a database without tables."""
     if database_kind == "sqlite":
-        return f"sqlite:///{tmp_path / 'lanewright.db'}"
+        yield f"sqlite:///{tmp_path / 'lanewright.db'}"
+        return
     server: PostgresServer = request.getfixturevalue("postgres_server")
-    return new_postgres_database(server, f"empty_{next(_names)}")
+    with postgres_database(server, "empty") as url:
+        yield url
 
 
 @pytest.fixture
-def database_url(database_kind: str, request: pytest.FixtureRequest, tmp_path: Path) -> str:
+def database_url(
+    database_kind: str,
+    request: pytest.FixtureRequest,
+    tmp_path: Path,
+) -> Iterator[str]:
     """Return the address of a fresh, migrated database."""
     if database_kind == "sqlite":
         url = f"sqlite:///{tmp_path / 'lanewright.db'}"
         migrate(url)
-        return url
+        yield url
+        return
     template: str = request.getfixturevalue("postgres_template")
     server: PostgresServer = request.getfixturevalue("postgres_server")
-    return new_postgres_database(server, f"test_{next(_names)}", template=template)
+    with postgres_database(server, "test", template=template) as url:
+        yield url
 
 
 @pytest.fixture

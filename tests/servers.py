@@ -196,7 +196,8 @@ def _running(
         )
     finally:
         if process.poll() is None:
-            process.send_signal(signal.SIGINT)  # fast shutdown: sessions are ended
+            # At once, without writing out what is thrown away next.
+            process.send_signal(signal.SIGQUIT)
             try:
                 process.wait(_STOP_SECONDS)
             except subprocess.TimeoutExpired:

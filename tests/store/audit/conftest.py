@@ -1,6 +1,5 @@
 """Copies of one filled database, for each test of the audit to tamper with."""
 
-import itertools
 import shutil
 from collections.abc import Iterator
 from pathlib import Path
@@ -11,11 +10,9 @@ from sqlalchemy import Engine, create_engine
 from service.runs.run import Run
 from service.store.database import Database, open_database
 from service.store.migrate import migrate
-from tests.databases import Opened, new_postgres_database
+from tests.databases import Opened, new_postgres_database, postgres_database
 from tests.servers import PostgresServer
 from tests.store.audit.tampering import disarm, fill
-
-_copies = itertools.count(1)
 
 
 @pytest.fixture(scope="session")
@@ -56,16 +53,17 @@ def copied(
     request: pytest.FixtureRequest,
     tmp_path: Path,
     opened: Opened,
-) -> tuple[Database, list[Run]]:
+) -> Iterator[tuple[Database, list[Run]]]:
     """Return a copy of the filled database, for one test to tamper with."""
     if database_kind == "sqlite":
         file, runs = request.getfixturevalue("filled_sqlite")
         shutil.copy(file, tmp_path / "copy.db")
-        return opened(f"sqlite:///{tmp_path / 'copy.db'}"), runs
+        yield opened(f"sqlite:///{tmp_path / 'copy.db'}"), runs
+        return
     name, runs = request.getfixturevalue("filled_postgres")
     server: PostgresServer = request.getfixturevalue("postgres_server")
-    url = new_postgres_database(server, f"copy_{next(_copies)}", template=name)
-    return opened(url), runs
+    with postgres_database(server, "copy", template=name) as url:
+        yield opened(url), runs
 
 
 @pytest.fixture
