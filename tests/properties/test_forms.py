@@ -4,7 +4,7 @@ import copy
 import os
 import subprocess
 import sys
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 from random import Random
 from typing import Any
@@ -33,9 +33,16 @@ def _without_places(planned: Planned) -> bytes:
     return orjson.dumps(plan)
 
 
-def as_columns(rows: Rows) -> dict[str, list[Any]]:
+REQUIRED = {
+    "supply": ("site", "item", "quantity"),
+    "demand": ("site", "item", "quantity"),
+    "lanes": ("origin", "destination", "unit_cost"),
+}
+
+
+def as_columns(rows: Rows, required: Iterable[str]) -> dict[str, list[Any]]:
     """Return a table as one array for each field, null where a row has none."""
-    fields = list(dict.fromkeys(field for row in rows for field in row))
+    fields = list(dict.fromkeys([*required, *(field for row in rows for field in row)]))
     return {field: [row.get(field) for row in rows] for field in fields}
 
 
@@ -103,8 +110,8 @@ def test_order_of_arrays_and_keys_says_nothing(network: RandomNetwork, rng: Rand
 def test_rows_columns_and_cost_tables_mean_the_same(network: RandomNetwork) -> None:
     """Each form is read by code of its own and ends in the same columns."""
     columns: Document = copy.deepcopy(network.document)
-    for table in ("supply", "demand", "lanes"):
-        columns[table] = as_columns(columns[table])
+    for table, required in REQUIRED.items():
+        columns[table] = as_columns(columns[table], required)
     tables: Document = copy.deepcopy(network.document)
     tables["lanes"] = as_cost_tables(tables["lanes"])
 
