@@ -20,12 +20,11 @@ from service.telemetry import configure_logs
 
 if TYPE_CHECKING:
     from service.engine.local import LocalEngine
-    from service.engine.lock import EngineLock
     from service.engine.tasks import IntakeChildren
     from service.network.intake import IntakeReport
     from service.network.options import Options
     from service.planning.outcome import Outcome
-    from service.runs.ports import Application, Store
+    from service.runs.ports import Application, ExecutorLock, Store
     from service.store.database import Database
 
 
@@ -170,9 +169,9 @@ def working_application(settings: Settings) -> Iterator["Application"]:
     from service.store.sql_store import SqlStore, SystemClock  # noqa: PLC0415 - see the module
 
     with _opened_database(settings) as database, contextlib.ExitStack() as stack:
-        lock = _engine_lock(settings, database)
-        if lock is not None:
-            stack.callback(lock.release)
+        lock = _executor_lock(settings, database)
+        stack.callback(lock.release)
+        if database.is_sqlite:
             _migrated(database)
         store = SqlStore(database, SystemClock())
         missing = store.missing()
@@ -254,19 +253,24 @@ def _migrated(database: "Database") -> list[str]:
         raise NotReadyError(f"the database cannot be reached: {error}") from error
 
 
-def _engine_lock(settings: Settings, database: "Database") -> "EngineLock | None":
-    """Return the lock of an SQLite file, None for PostgreSQL, where leases decide."""
-    from service.engine.lock import EngineLock, EngineLocked  # noqa: PLC0415 - see the module
+def _executor_lock(settings: Settings, database: "Database") -> "ExecutorLock":
+    """Return the lock that lets this process alone execute the runs of ``database``."""
+    from service.engine.lock import EngineLock  # noqa: PLC0415 - see the module
+    from service.runs.faults import EngineLocked, StoreUnavailable  # noqa: PLC0415 - likewise
     from service.store.database import database_url, sqlite_file  # noqa: PLC0415 - likewise
+    from service.store.executor_lock import DatabaseExecutorLock  # noqa: PLC0415 - likewise
 
     file = sqlite_file(database_url(settings.database_url))
-    if file is None or not database.is_sqlite:
-        return None
+    other = "LANEWRIGHT_DATABASE to another database"
     try:
+        if file is None:
+            return DatabaseExecutorLock(database)
+        other = "LANEWRIGHT_DATA to another folder"
         return EngineLock(file.with_name(file.name + ".engine"))
     except EngineLocked as error:
-        detail = f"{error}. Stop it, or set LANEWRIGHT_DATA to another folder."
-        raise NotReadyError(detail) from error
+        raise NotReadyError(f"{error}. Stop it, or set {other}.") from error
+    except StoreUnavailable as error:
+        raise NotReadyError(f"the database cannot be reached: {error}") from error
 
 
 def intake_limits(settings: Settings) -> Mapping[str, int]:

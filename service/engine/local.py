@@ -10,10 +10,10 @@ from typing import Final
 
 import structlog
 
-from service.engine.lock import EngineLock
 from service.engine.tasks import PlanningChildren
 from service.runs.execute import Execute
 from service.runs.lifecycle import FINAL
+from service.runs.ports import ExecutorLock
 from service.runs.recover import Recover
 from service.runs.run import RunId
 from service.runs.sweep import Sweep
@@ -54,7 +54,9 @@ class LocalEngine:
         self._poll_seconds = poll_seconds
         self._wake = threading.Event()
         self._stopping = threading.Event()
-        self._lock: EngineLock | None = None
+        self._lock: ExecutorLock | None = None
+        # Whether runs may be claimed: nobody else executes them, as far as can be known.
+        self._alone = True
         self._threads = [
             threading.Thread(target=self._supervise, args=args, name=name, daemon=True)
             for name, args in (
@@ -64,16 +66,15 @@ class LocalEngine:
         ]
         self._sweep_in = 0.0
 
-    def start(self, lock: EngineLock | None) -> None:
+    def start(self, lock: ExecutorLock) -> None:
         """Begin to execute runs.
 
         ``lock`` proves that no other process does so on this database; what a former process was
-        working on is then taken over at once. Without it, leases have to run out first.
+        working on is therefore taken over at once, without waiting for its leases.
         """
         self._lock = lock
-        if lock is not None:
-            recovered = self._recover()
-            _log.info("engine_started", recovered=recovered)
+        recovered = self._recover()
+        _log.info("engine_started", recovered=recovered)
         for thread in self._threads:
             thread.start()
 
@@ -98,8 +99,8 @@ class LocalEngine:
             self._lock = None
 
     def working(self) -> bool:
-        """Say whether both threads live, which they do until ``stop``."""
-        return all(thread.is_alive() for thread in self._threads)
+        """Say whether runs are executed: both threads live and the lock is held."""
+        return self._alone and all(thread.is_alive() for thread in self._threads)
 
     def _supervise(self, work: Callable[[], None], wake: threading.Event, seconds: float) -> None:
         """Do ``work`` whenever woken and every few ``seconds``, whatever happens in it."""
@@ -113,14 +114,14 @@ class LocalEngine:
 
     def _plan_waiting(self) -> None:
         """Plan what waits, oldest first, until nothing does."""
-        while not self._stopping.is_set():
+        while self._alone and not self._stopping.is_set():
             # Before the look: what is added after it sets the event again.
             self._wake.clear()
             waiting: Sequence[RunId] = self._sweep()
             if not waiting:
                 return
             for run_id in waiting:
-                if self._stopping.is_set():
+                if self._stopping.is_set() or not self._alone:
                     return
                 self._plan_one(run_id)
 
@@ -141,5 +142,13 @@ class LocalEngine:
         self._sweep_in -= self._poll_seconds
         if self._sweep_in <= 0:
             self._sweep_in = SWEEP_SECONDS
+            self._look_at_lock()
             if self._sweep():
                 self._wake.set()
+
+    def _look_at_lock(self) -> None:
+        """Claim nothing while another process has the lock; what is under way is fenced anyway."""
+        alone = self._lock is not None and self._lock.held()
+        if alone != self._alone:
+            self._alone = alone
+            _log.warning("engine_lock_is_back" if alone else "engine_lock_lost")

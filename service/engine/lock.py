@@ -1,16 +1,16 @@
-"""The lock that lets one process alone execute the runs of a database file."""
+"""The lock that lets one process alone execute the runs of an SQLite file."""
 
 import os
 import sys
 from pathlib import Path
 
-
-class EngineLocked(Exception):  # noqa: N818 - named for the fact, like every error of this house
-    """Another process executes the runs of this database."""
+from service.runs.faults import EngineLocked
 
 
 class EngineLock:
     """An advisory lock on a file beside the database, held until ``release`` or the process ends.
+
+    An ``ExecutorLock``.
 
     The kernel lets go of it when the holder dies, however it dies, so that no lock is ever stale;
     the file itself stays, since to remove it would let two processes lock two files of one name.
@@ -25,6 +25,10 @@ class EngineLock:
         except OSError as error:
             os.close(self._descriptor)
             raise EngineLocked(f"{path} is locked: another process executes its runs") from error
+
+    def held(self) -> bool:
+        """Say whether the file is locked: nobody can take that away."""
+        return self._descriptor >= 0
 
     def release(self) -> None:
         """Let another process take over; may be called twice."""

@@ -25,6 +25,10 @@ class StoreUnavailable(Exception):  # noqa: N818 - as above
     """The database cannot be reached, or not in time; the same call may work later."""
 
 
+class EngineLocked(Exception):  # noqa: N818 - as above
+    """Another process executes the runs of this database."""
+
+
 class ChildTimeout(Exception):  # noqa: N818 - as above
     """A child was ended at its time limit."""
 

@@ -61,6 +61,7 @@ __all__ = [
     "Dispatcher",
     "Ending",
     "EvidenceCall",
+    "ExecutorLock",
     "FailureReason",
     "Finish",
     "HistoryCall",
@@ -99,6 +100,21 @@ class Dispatcher(Protocol):
 
     def notify(self, run_id: RunId) -> None:
         """Say that ``run_id`` waits; losing or doubling the message changes no result."""
+        ...
+
+
+class ExecutorLock(Protocol):
+    """Proves that no other process executes the runs of this database."""
+
+    def held(self) -> bool:
+        """Say whether it is held now, having tried to take it again if it was lost.
+
+        Raises ``StoreUnavailable`` when that cannot be known.
+        """
+        ...
+
+    def release(self) -> None:
+        """Let another process take over; may be called twice."""
         ...
 
 

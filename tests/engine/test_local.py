@@ -12,10 +12,11 @@ import pytest
 
 from service.engine.children import Nursery
 from service.engine.local import LocalEngine
-from service.engine.lock import EngineLock, EngineLocked
+from service.engine.lock import EngineLock
 from service.engine.tasks import PlanningChildren
 from service.network.options import Options
 from service.runs.execute import Execute
+from service.runs.faults import EngineLocked
 from service.runs.recover import Recover
 from service.runs.run import LOCAL, FailureReason, Run, RunState
 from service.runs.submit import Submit
@@ -259,6 +260,54 @@ def test_second_engine_on_one_database_refuses_to_start(tmp_path: Path) -> None:
 
     first.release()
     EngineLock(tmp_path / "lanewright.db.engine").release()
+
+
+@dataclass(slots=True)
+class FakeLock:
+    """A lock that a test takes away."""
+
+    here: bool = True
+
+    def held(self) -> bool:
+        """Say whether it is held."""
+        return self.here
+
+    def release(self) -> None:
+        """Let go."""
+        self.here = False
+
+
+def test_engine_that_lost_its_lock_claims_nothing_until_it_has_it_again(
+    database: Database, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """A database that restarts lets go of the lock, and another process may have it by now."""
+    monkeypatch.setattr("service.engine.local.SWEEP_SECONDS", 0.2)
+    store = SqlStore(database, SystemClock())
+    engine, planner = engine_over(store, tmp_path / "scratch")
+    house = House(store=store, engine=engine, planner=planner, folder=tmp_path)
+    lock = FakeLock()
+    engine.start(lock)
+    house.finished(house.submit())
+
+    lock.here = False
+    await_true(lambda: not engine.working())
+    run = house.submit()
+    time.sleep(1)
+    meanwhile = house.read(run).state
+    lock.here = True
+    after = house.finished(run)
+    engine.stop()
+
+    assert meanwhile is RunState.WAITING
+    assert (after.state, after.attempt) == (RunState.PLANNED, 1)
+
+
+def await_true(condition: Callable[[], bool], seconds: float = 20) -> None:
+    """Wait until ``condition`` holds."""
+    until = time.monotonic() + seconds
+    while not condition():
+        assert time.monotonic() < until, "waited in vain"
+        time.sleep(0.02)
 
 
 def test_mistake_of_ours_in_one_run_stops_no_other(house: House) -> None:
