@@ -14,6 +14,7 @@ from service.network.canonical import write_network
 from service.network.faults import FAULTS_REPORTED_MAX, Fault, Status, in_order
 from service.network.files.json import read_json
 from service.network.files.unpack import unpack
+from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
 from service.network.reading import read_network
 
@@ -87,7 +88,7 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
             pointer="", code="unsupported_media_type", detail=detail, value=media_type[:200]
         )
         return _refused(Status.UNSUPPORTED, (fault,), 1)
-    received = output / "received"
+    received = output / RECEIVED_FILE
     unpacked = unpack(
         spool,
         received,
@@ -108,7 +109,7 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
     if reading.network is None or reading.cut_off is None:
         found = reading.faults
         return _refused(Status.INVALID, in_order(found.kept, document), found.count)
-    network_digest = write_network(reading.network, output / "network.zip")
+    network_digest = write_network(reading.network, output / NETWORK_FILE)
     plan_for = options.plan_for or reading.cut_off.local_date
     summary: dict[str, object] = {
         "cautions": [caution.to_document() for caution in reading.faults.cautions.values()],
@@ -121,7 +122,7 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
         "plan_for": plan_for.isoformat(),
         "name": reading.network.head.get("name"),
     }
-    (output / "intake.json").write_bytes(orjson.dumps(summary))
+    (output / INTAKE_FILE).write_bytes(orjson.dumps(summary))
     return IntakeReport(faults=(), fault_count=0, status=Status.ACCEPTED, summary=summary)
 
 

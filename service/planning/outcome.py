@@ -1,8 +1,11 @@
-"""How a planning task ended: small enough to be loaded where no solver may be."""
+"""How a planning task ended, and its files: small enough to be loaded where no solver may be."""
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Literal
+from typing import Final, Literal
+
+PLAN_FILE: Final = "plan.json"
+CERTIFICATE_FILE: Final = "certificate.json"
 
 State = Literal["planned", "no_plan", "failed"]
 FailureReason = Literal["numbers_too_large", "proof_failed", "internal"]

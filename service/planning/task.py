@@ -1,6 +1,5 @@
 """All that a planning child runs: a checked network in, a proved plan out, as files."""
 
-import hashlib
 import time
 from collections.abc import Callable, Mapping
 from pathlib import Path
@@ -8,8 +7,9 @@ from typing import Any
 
 import orjson
 
-from service.network.canonical import canonical_json, network_digest, read_network
+from service.network.canonical import canonical_json, digest, network_digest, read_network
 from service.network.columns import Network
+from service.network.intake_files import INTAKE_FILE, NETWORK_FILE
 from service.network.options import Options
 from service.planning.certificate import (
     Document,
@@ -20,7 +20,13 @@ from service.planning.compile import Compiled, compile_network
 from service.planning.contradictions import contradiction_reason
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError, NumbersTooLargeError
-from service.planning.outcome import FailureReason, Outcome, State
+from service.planning.outcome import (
+    CERTIFICATE_FILE,
+    PLAN_FILE,
+    FailureReason,
+    Outcome,
+    State,
+)
 from service.planning.plan import Setting, planned, unplanned
 from service.planning.priorities import achieved
 from service.planning.solve import ItemFlow, solve_item
@@ -29,8 +35,6 @@ from service.proof.check import Violation, check
 Progress = Callable[[str, Mapping[str, int]], None]
 Prove = Callable[[Network, Options, Mapping[str, Any], Mapping[str, Any]], tuple[Violation, ...]]
 
-PLAN_FILE = "plan.json"
-CERTIFICATE_FILE = "certificate.json"
 VIOLATIONS_NAMED_MAX = 5
 
 # What callers get back stands in a module of its own, which needs no solver.
@@ -52,11 +56,11 @@ def plan(
     ``prove`` looks at both documents as they were written; what it objects to is never a plan.
     """
     clock = _Clock(progress)
-    network = read_network(input_folder / "network.zip")
-    intake: Any = orjson.loads((input_folder / "intake.json").read_bytes())
+    network = read_network(input_folder / NETWORK_FILE)
+    intake: Any = orjson.loads((input_folder / INTAKE_FILE).read_bytes())
     setting = Setting(
         network_digest=network_digest(network),
-        options_digest=_digest(canonical_json(options.to_document())),
+        options_digest=digest(canonical_json(options.to_document())),
         warnings=intake["cautions"],
         set_aside=intake["set_aside"],
     )
@@ -83,12 +87,10 @@ def plan(
     (output_folder / PLAN_FILE).write_bytes(plan_bytes)
     (output_folder / CERTIFICATE_FILE).write_bytes(certificate_bytes)
     clock.phase("written", bytes=len(plan_bytes) + len(certificate_bytes))
-    failure = _violations(
-        prove(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
-    )
-    clock.phase("proved", violations=0 if failure is None else 1)
-    if failure is not None:
-        return clock.outcome("failed", "proof_failed", failure)
+    found = prove(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
+    clock.phase("proved", violations=len(found))
+    if found:
+        return clock.outcome("failed", "proof_failed", _in_words(found))
     return clock.outcome("no_plan" if cuts else "planned", None, None)
 
 
@@ -123,20 +125,13 @@ def _documents(
     return made.document, certificate
 
 
-def _violations(found: tuple[Violation, ...]) -> str | None:
-    """Return what the proof found, the first few in words; None if nothing."""
-    if not found:
-        return None
+def _in_words(found: tuple[Violation, ...]) -> str:
+    """Return what the proof found, the first few in words."""
     named = "; ".join(
         f"{violation.code} at {violation.place}: {violation.detail}"
         for violation in found[:VIOLATIONS_NAMED_MAX]
     )
     return f"The proof found {len(found)} violations: {named}"
-
-
-def _digest(content: bytes) -> str:
-    """Return the SHA-256 of ``content`` as it is written everywhere."""
-    return "sha-256:" + hashlib.sha256(content).hexdigest()
 
 
 class _Clock:

@@ -6,14 +6,13 @@ its digest, so that it can be erased one day without breaking the chain, and so 
 guess an erased payload by trying.
 """
 
-import hashlib
 import re
 import secrets
 from collections.abc import Mapping, Sequence
 from datetime import UTC, datetime
 from typing import Final
 
-from service.network.canonical import canonical_json
+from service.network.canonical import canonical_json, digest
 from service.runs.run import Actor, RunId, StoredEvent
 
 EVENT_FORMAT: Final = 1
@@ -28,11 +27,6 @@ _MOMENT: Final = re.compile(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{6}Z", re.ASCII)
 def run_stream(run_id: RunId) -> str:
     """Return the name of the stream that holds the history of a run."""
     return f"run:{run_id}"
-
-
-def digest_of(content: bytes) -> str:
-    """Return SHA-256 of ``content`` as this house writes digests."""
-    return "sha-256:" + hashlib.sha256(content).hexdigest()
 
 
 def is_digest(text: str) -> bool:
@@ -56,7 +50,7 @@ def moment_of(text: str) -> datetime:
 
 def payload_digest(payload: Mapping[str, object], salt: bytes) -> str:
     """Return the digest by which an event commits to its payload."""
-    return digest_of(salt + canonical_json(payload))
+    return digest(salt + canonical_json(payload))
 
 
 def event_fields(event: StoredEvent) -> dict[str, object]:
@@ -77,7 +71,7 @@ def event_fields(event: StoredEvent) -> dict[str, object]:
 
 def event_hash(fields: Mapping[str, object]) -> str:
     """Return the hash of an event with these ``fields`` (without ``hash``)."""
-    return digest_of(canonical_json(fields))
+    return digest(canonical_json(fields))
 
 
 def next_event(  # noqa: PLR0913 - what an event is made of

@@ -16,8 +16,8 @@ class Read:
 
     def run(self, run_id: RunId, tenant: str) -> Run:
         """Return the run as it is now."""
-        with self.store.reading() as store:
-            return store.run(run_id, tenant)
+        with self.store.reading() as reading:
+            return reading.run(run_id, tenant)
 
     def plan_bytes(self, run_id: RunId, tenant: str) -> bytes:
         """Return the plan document as it was stored; raise ``ArtefactMissing`` without one."""
@@ -33,23 +33,23 @@ class Read:
         """Return the body as ``received``, or the file of its ``normal`` form."""
         if form not in {"normal", "received"}:
             raise ValueError(f"no form of a network: {form!r}")
-        with self.store.reading() as store:
-            submission = store.submission(run_id, tenant)
+        with self.store.reading() as reading:
+            submission = reading.submission(run_id, tenant)
         received = form == "received"
         digest = submission.request_digest if received else submission.normal_digest
         return self.store.blob(tenant, digest)
 
     def options_bytes(self, run_id: RunId, tenant: str) -> bytes:
         """Return the options as they were digested."""
-        with self.store.reading() as store:
-            submission = store.submission(run_id, tenant)
+        with self.store.reading() as reading:
+            submission = reading.submission(run_id, tenant)
         return self.store.blob(tenant, submission.options_digest)
 
     def history(self, run_id: RunId, tenant: str) -> list[dict[str, object]]:
         """Return who did what to the run, and when, in order."""
-        with self.store.reading() as store:
-            store.run(run_id, tenant)
-            events = store.events(run_stream(run_id), tenant)
+        with self.store.reading() as reading:
+            reading.run(run_id, tenant)
+            events = reading.events(run_stream(run_id), tenant)
         return [event_document(event) for event in events]
 
     def _artefact(self, run: Run, digest: str | None, name: str) -> bytes:

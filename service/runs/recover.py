@@ -24,10 +24,10 @@ class Recover:
         """Let every running run wait again; return how many."""
         recovered = 0
         while True:
-            with self.store.transaction() as store:
-                claims = store.held(expired_only=False, limit=_AT_ONCE)
+            with self.store.transaction() as transaction:
+                claims = transaction.held(expired_only=False, limit=_AT_ONCE)
                 for claim in claims:
-                    put_back(store, claim, GivenBack.RESTART)
+                    put_back(transaction, claim, GivenBack.RESTART)
             recovered += len(claims)
             if len(claims) < _AT_ONCE:
                 return recovered

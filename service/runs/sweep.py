@@ -25,25 +25,25 @@ class Sweep:
         """Settle what is overdue, then return runs that wait to be planned, oldest first."""
         self._expire()
         self._take_back()
-        with self.store.reading() as store:
-            return store.waiting(limit=_AT_ONCE)
+        with self.store.reading() as reading:
+            return reading.waiting(limit=_AT_ONCE)
 
     def _expire(self) -> None:
         """Fail what waited too long, one transaction a run, so that none is long."""
-        with self.store.reading() as store:
-            overdue = store.overdue(limit=_AT_ONCE)
+        with self.store.reading() as reading:
+            overdue = reading.overdue(limit=_AT_ONCE)
         for run_id, tenant in overdue:
-            with self.store.transaction() as store:
-                run = store.run(run_id, tenant)
+            with self.store.transaction() as transaction:
+                run = transaction.run(run_id, tenant)
                 ending = failure(
                     FailureReason.DEADLINE,
                     "The deadline passed while the run waited for its turn.",
                     attempt=run.attempt,
                     started_at=run.started_at,
-                    finished_at=store.now,
+                    finished_at=transaction.now,
                 )
-                if store.fail_waiting(run_id, tenant, ending):
-                    store.append(
+                if transaction.fail_waiting(run_id, tenant, ending):
+                    transaction.append(
                         run_stream(run_id),
                         EventKind.FINISHED,
                         engine_of(tenant),
@@ -52,10 +52,10 @@ class Sweep:
 
     def _take_back(self) -> None:
         """Let runs wait again whose leases are over; with the last crash they fail."""
-        with self.store.transaction() as store:
-            for claim in store.held(expired_only=True, limit=_AT_ONCE):
+        with self.store.transaction() as transaction:
+            for claim in transaction.held(expired_only=True, limit=_AT_ONCE):
                 settle_crash(
-                    store,
+                    transaction,
                     claim,
                     GivenBack.LEASE,
                     detail="its holder went silent.",

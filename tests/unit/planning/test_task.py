@@ -58,13 +58,16 @@ def test_plan_whose_proof_fails_is_no_plan(tmp_path: Path) -> None:
         assert len(network.lanes) == 1
         assert options == Options()
         assert plan_document["status"] == "planned"
-        return (Violation(code="cost_differs", detail="made up", place=certificate["method"]),)
+        made_up = Violation(code="cost_differs", detail="made up", place=certificate["method"])
+        return (made_up,) * 6
 
-    outcome = run(simple(), tmp_path, prove=doubt)
+    told: dict[str, Mapping[str, int]] = {}
+    outcome = run(simple(), tmp_path, prove=doubt, progress=told.__setitem__)
 
     assert (outcome.state, outcome.reason) == ("failed", "proof_failed")
     assert outcome.detail is not None
-    assert "cost_differs at min_cost_flow: made up" in outcome.detail
+    assert "6 violations: cost_differs at min_cost_flow: made up; " in outcome.detail
+    assert told["proved"] == {"violations": 6}
     assert (tmp_path / "plan.json").exists()
     assert (tmp_path / "certificate.json").exists()
 
