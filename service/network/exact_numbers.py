@@ -66,7 +66,7 @@ class ExactNumbers(Sequence[object]):
             divisor = 10 ** (exponent - decimals_max)
             fine = values % divisor != 0
             values, exponent = np.where(fine, 0, values // divisor), decimals_max
-        large = np.abs(values) >= SCALED_LIMIT
+        large = (values >= SCALED_LIMIT) | (values <= -SCALED_LIMIT)
         if bool((fine | large).any()):
             values = np.where(fine | large, 0, values)
         fine[self.too_fine] = True

@@ -11,8 +11,11 @@ from pathlib import Path
 import orjson
 
 from service.network.canonical import write_network
-from service.network.faults import FAULTS_REPORTED_MAX, Fault, Status, in_order
+from service.network.faults import FAULTS_REPORTED_MAX, Fault, FaultList, Status, in_order
+from service.network.files.definition_files import read_files
 from service.network.files.json import read_json
+from service.network.files.media_types import JSON, accepted_type, refusal_of
+from service.network.files.places import Places
 from service.network.files.unpack import unpack
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
@@ -82,10 +85,13 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
     There are then ``received`` (the unpacked bytes), ``network.zip`` (the normal form) and
     ``intake.json`` (the summary). The folder must exist. ``media_type`` is the HTTP header's value.
     """
-    if not _is_json(media_type):
-        detail = "Send application/json; other forms of a network come later."
+    kind = accepted_type(media_type)
+    if kind is None:
         fault = Fault(
-            pointer="", code="unsupported_media_type", detail=detail, value=media_type[:200]
+            pointer="",
+            code="unsupported_media_type",
+            detail=refusal_of(media_type),
+            value=media_type[:200],
         )
         return _refused(Status.UNSUPPORTED, (fault,), 1)
     received = output / RECEIVED_FILE
@@ -97,23 +103,22 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
     )
     if unpacked.fault is not None:
         return _refused(Status(unpacked.status), (unpacked.fault,), 1)
-    parsed = read_json(received.read_bytes(), nesting_max=limits.nesting_max)
-    if parsed.unreadable:
-        return _refused(Status.UNREADABLE, parsed.unreadable, len(parsed.unreadable))
-    if parsed.invalid:
-        shown = parsed.invalid[:FAULTS_REPORTED_MAX]
-        return _refused(Status.INVALID, shown, len(parsed.invalid))
-    document = parsed.value
-    del parsed
-    reading = read_network(document, options)
+    read = (_read_json if kind == JSON else _read_files)(received, output, kind, limits)
+    if isinstance(read, IntakeReport):
+        return read
+    document, places = read.document, read.places
+    reading = read_network(document, options, read.faults)
     if reading.network is None or reading.cut_off is None:
         found = reading.faults
-        return _refused(Status.INVALID, in_order(found.kept, document), found.count)
+        shown = tuple(places.fault(fault) for fault in in_order(found.kept, document))
+        return _refused(Status.INVALID, shown, found.count)
     network_digest = write_network(reading.network, output / NETWORK_FILE)
     plan_for = options.plan_for or reading.cut_off.local_date
     summary: dict[str, object] = {
-        "cautions": [caution.to_document() for caution in reading.faults.cautions.values()],
-        "set_aside": reading.set_aside,
+        "cautions": [
+            places.caution(caution).to_document() for caution in reading.faults.cautions.values()
+        ],
+        "set_aside": [places.set_aside(line) for line in reading.set_aside],
         "counts": dict(reading.counts),
         "request_digest": unpacked.digest,
         "network_digest": network_digest,
@@ -131,9 +136,43 @@ def _refused(status: Status, faults: tuple[Fault, ...], count: int) -> IntakeRep
     return IntakeReport(faults=faults, fault_count=count, status=status, summary=None)
 
 
-def _is_json(media_type: str) -> bool:
-    """Return whether a media type is that of JSON in UTF-8, whatever its spelling."""
-    kind, *parameters = (part.strip().lower() for part in media_type.split(";"))
-    return kind == "application/json" and all(
-        parameter in ("", "charset=utf-8", 'charset="utf-8"') for parameter in parameters
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Definition:
+    """What was sent, as a definition; ``places`` leads back to where each value was sent."""
+
+    document: object
+    places: Places
+    faults: FaultList
+
+
+def _read_json(
+    received: Path, _folder: Path, _kind: str, limits: Limits
+) -> "_Definition | IntakeReport":
+    """Read a body of JSON."""
+    parsed = read_json(received.read_bytes(), nesting_max=limits.nesting_max)
+    if parsed.unreadable:
+        return _refused(Status.UNREADABLE, parsed.unreadable, len(parsed.unreadable))
+    if parsed.invalid:
+        shown = parsed.invalid[:FAULTS_REPORTED_MAX]
+        return _refused(Status.INVALID, shown, len(parsed.invalid))
+    return _Definition(document=parsed.value, places=Places(), faults=FaultList())
+
+
+def _read_files(
+    received: Path, folder: Path, kind: str, limits: Limits
+) -> "_Definition | IntakeReport":
+    """Read a zip of tables or a workbook."""
+    read = read_files(
+        received,
+        folder,
+        media_type=kind,
+        bytes_max=limits.unpacked_bytes_max,
+        nesting_max=limits.nesting_max,
     )
+    if read.unreadable is not None:
+        status = Status.TOO_LARGE if read.too_large else Status.UNREADABLE
+        return _refused(status, (read.unreadable,), 1)
+    if read.document is None:
+        shown = tuple(read.places.fault(fault) for fault in in_order(read.faults.kept, None))
+        return _refused(Status.INVALID, shown, read.faults.count)
+    return _Definition(document=read.document, places=read.places, faults=read.faults)

@@ -30,7 +30,7 @@ class Unpacked:
     fault: Fault | None
 
 
-class _BrokenPackingError(ValueError):
+class BrokenPackingError(ValueError):
     """The packed bytes are damaged or end too early."""
 
 
@@ -50,7 +50,7 @@ def unpack(
     size = 0
     with spool.open("rb") as source, received.open("wb") as target:
         try:
-            for piece in _UNPACKERS[encoding](source):
+            for piece in unpacked_pieces(source, encoding):
                 size += len(piece)
                 if size > bytes_max:
                     detail = f"The body has more than {bytes_max} bytes when unpacked."
@@ -58,13 +58,21 @@ def unpack(
                     return Unpacked(status="too_large", digest="", size_bytes=size, fault=fault)
                 digest.update(piece)
                 target.write(piece)
-        except _BrokenPackingError:
+        except BrokenPackingError:
             detail = f"The body is not whole {encoding}: it is damaged or ends too early."
             fault = Fault(pointer="", code="broken_encoding", detail=detail)
             return Unpacked(status="unreadable", digest="", size_bytes=size, fault=fault)
     return Unpacked(
         status="accepted", digest=f"sha-256:{digest.hexdigest()}", size_bytes=size, fault=None
     )
+
+
+def unpacked_pieces(source: BinaryIO, encoding: str) -> Iterator[bytes]:
+    """Yield what ``source`` holds, in pieces of bounded size; ``encoding`` as in ``unpack``.
+
+    Raises ``BrokenPackingError`` where the packing is damaged.
+    """
+    return _UNPACKERS[encoding](source)
 
 
 def _plain(source: BinaryIO) -> Iterator[bytes]:
@@ -81,7 +89,7 @@ def _gunzipped(source: BinaryIO) -> Iterator[bytes]:
         try:
             yield unpacker.decompress(packed, PIECE_BYTES)
         except zlib.error as error:
-            raise _BrokenPackingError from error
+            raise BrokenPackingError from error
         if unpacker.eof:
             packed = unpacker.unused_data or source.read(PIECE_BYTES)
             if packed:
@@ -89,7 +97,7 @@ def _gunzipped(source: BinaryIO) -> Iterator[bytes]:
         else:
             packed = unpacker.unconsumed_tail or source.read(PIECE_BYTES)
     if not unpacker.eof:
-        raise _BrokenPackingError
+        raise BrokenPackingError
 
 
 def _unzstd(source: BinaryIO) -> Iterator[bytes]:
@@ -101,7 +109,7 @@ def _unzstd(source: BinaryIO) -> Iterator[bytes]:
         try:
             yield unpacker.decompress(packed)
         except zstandard.ZstdError as error:
-            raise _BrokenPackingError from error
+            raise BrokenPackingError from error
         if unpacker.eof:
             packed = unpacker.unused_data or source.read(ZSTD_PIECE_BYTES)
             if packed:
@@ -109,7 +117,7 @@ def _unzstd(source: BinaryIO) -> Iterator[bytes]:
         else:
             packed = source.read(ZSTD_PIECE_BYTES)
     if not unpacker.eof:
-        raise _BrokenPackingError
+        raise BrokenPackingError
 
 
 _UNPACKERS: dict[str, Callable[[BinaryIO], Iterator[bytes]]] = {
