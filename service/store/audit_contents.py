@@ -14,6 +14,8 @@ import orjson
 from sqlalchemy import select
 from sqlalchemy.orm import Session
 
+from service.network.canonical import HEAD_ENTRY
+from service.network.canonical import digest as digest_of
 from service.runs.faults import BlobBroken
 from service.runs.index_rows import order_line_rows, plan_line_rows
 from service.runs.run import RunState
@@ -21,8 +23,6 @@ from service.store.audit_problem import Problem
 from service.store.blob_repository import SqlBlobRepository, unpack
 from service.store.index_repository import SqlIndexRepository
 from service.store.tables import BlobRow, RunEndingRow, RunRow
-
-_HEAD = "network/head.json"
 
 
 def blob_problems(session: Session) -> Iterator[Problem]:
@@ -102,7 +102,7 @@ def content_problems(session: Session, tenant: str, run_id: str) -> Iterator[Pro
 
 def _content(session: Session, tenant: str, digest: str) -> bytes:
     content = b"".join(SqlBlobRepository(session).parts(tenant, digest))
-    if "sha-256:" + hashlib.sha256(content).hexdigest() != digest:
+    if digest_of(content) != digest:
         raise BlobBroken(f"blob {digest} has other content")
     return content
 
@@ -117,10 +117,10 @@ def _network_problems(
     network_digest: str,
     place: str,
 ) -> Iterator[Problem]:
-    head = entries[_HEAD]
-    if "sha-256:" + hashlib.sha256(head).hexdigest() != network_digest:
+    head = entries[HEAD_ENTRY]
+    if digest_of(head) != network_digest:
         yield Problem(code="network", place=place, detail="the network has another digest")
-    named = {_HEAD}
+    named = {HEAD_ENTRY}
     for table, form in orjson.loads(head)["tables"].items():
         for column, described in form["columns"].items():
             name = f"network/{table}/{column}"
@@ -128,7 +128,7 @@ def _network_problems(
             content = entries.get(name)
             if content is None:
                 yield Problem(code="network", place=place, detail=f"column {name} is missing")
-            elif "sha-256:" + hashlib.sha256(content).hexdigest() != described["digest"]:
+            elif digest_of(content) != described["digest"]:
                 yield Problem(code="network", place=place, detail=f"column {name} has changed")
     for name in sorted(entries.keys() - named):
         yield Problem(code="network", place=place, detail=f"entry {name} is one too many")

@@ -39,6 +39,21 @@ def running(pid: int) -> bool:
     return fields[0] != "Z"
 
 
+def children_of(parent: int) -> dict[int, list[str]]:
+    """Return the processes that ``parent`` started, each with the words of its command."""
+    found = {}
+    for entry in Path("/proc").iterdir():
+        if entry.name.isdigit():
+            try:
+                stat = (entry / "stat").read_text(encoding="ascii")
+                words = (entry / "cmdline").read_bytes().decode().split("\0")
+            except OSError:
+                continue  # it ended while it was looked at
+            if int(stat.rpartition(")")[2].split()[1]) == parent:
+                found[int(entry.name)] = words
+    return found
+
+
 def await_end(pid: int, seconds: float = 5) -> bool:
     """Wait until ``pid`` no longer runs."""
     until = time.monotonic() + seconds

@@ -24,7 +24,7 @@ from service.runs.sweep import Sweep
 from service.runs.watch import Watch
 from service.store.database import Database
 from service.store.sql_store import SqlStore, SystemClock
-from tests.engine.processes import COMMAND, await_end
+from tests.engine.processes import COMMAND, await_end, children_of
 from tests.run_factories import WIRE_DIGEST, intake_folder
 
 FINAL = {RunState.PLANNED, RunState.NO_PLAN, RunState.FAILED, RunState.CANCELLED}
@@ -64,18 +64,10 @@ class House:
 
     def busy_pid(self) -> int:
         """Return the process that plans now: the one child that is not idle."""
-        (ppid, stat) = (os.getpid(), "")
-        for entry in Path("/proc").iterdir():
-            if entry.name.isdigit():
-                try:
-                    stat = (entry / "stat").read_text(encoding="ascii")
-                    words = (entry / "cmdline").read_bytes().split(b"\0")
-                except OSError:
-                    continue
-                parent = int(stat.rpartition(")")[2].split()[1])
-                if parent == ppid and b"plan" in words and int(entry.name) not in self.idle():
-                    return int(entry.name)
-        raise AssertionError("nobody plans")
+        found = children_of(os.getpid())
+        return next(
+            pid for pid, words in found.items() if "plan" in words and pid not in self.idle()
+        )
 
     def idle(self) -> tuple[int, ...]:
         """Return the processes that wait for work."""

@@ -14,7 +14,7 @@ from typing import Any
 
 import pytest
 
-from tests.engine.processes import await_end, running
+from tests.engine.processes import await_end, children_of, running
 
 ROOT = Path(__file__).parents[2]
 NETWORK = (ROOT / "openapi" / "examples" / "network.json").read_bytes()
@@ -64,18 +64,8 @@ class Service:
 
     def children(self, kind: str = "") -> list[int]:
         """Return the processes that the service started, of one kind or all."""
-        found = []
-        for entry in Path("/proc").iterdir():
-            if entry.name.isdigit():
-                try:
-                    stat = (entry / "stat").read_text(encoding="ascii")
-                    words = (entry / "cmdline").read_bytes().split(b"\0")
-                except OSError:
-                    continue
-                parent = int(stat.rpartition(")")[2].split()[1])
-                if parent == self.process.pid and (not kind or kind.encode() in words):
-                    found.append(int(entry.name))
-        return found
+        found = children_of(self.process.pid)
+        return [pid for pid, words in found.items() if not kind or kind in words]
 
     def end(self, number: int) -> int:
         """Send a signal, wait for the end, return the exit code."""
