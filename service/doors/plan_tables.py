@@ -1,4 +1,7 @@
-"""The tables of a plan document as CSV (RFC 4180), for every door that hands them out.
+"""The tables of a plan document, for every door that hands them out; here also as CSV (RFC 4180).
+
+What a receiver can count after, to see that nothing was lost on the way, is a table of its own:
+``totals``, with the number of rows of each other table and the sums of its columns.
 
 A cell that holds more than one thing (sources, order references, tags) holds it as compact JSON, so
 that nothing is lost and a row stays a row; an absent value is an empty cell. A text that a
@@ -8,10 +11,13 @@ spreadsheet would run as a formula gets an apostrophe in front, which spreadshee
 import csv
 import io
 import re
-from collections.abc import Mapping, Sequence
-from typing import Final
+from collections.abc import Iterator, Mapping, Sequence
+from fractions import Fraction
+from typing import Any, Final
 
 import orjson
+
+from service.network.quantities import exact_text, parse_exact
 
 COLUMNS: Mapping[str, tuple[str, ...]] = {
     "plan_lines": (
@@ -65,18 +71,64 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "kept",
     ),
     "site_use": ("site", "item", "available", "shipped", "kept", "left"),
+    "totals": ("table", "rows", "column", "total"),
 }
+# Columns of exact numbers as text. They add up over all rows but where a number belongs to a unit.
+AMOUNTS: Mapping[str, tuple[str, ...]] = {
+    "plan_lines": (
+        "quantity",
+        "unit_cost",
+        "transport_cost",
+        "supply_cost",
+        "handling_cost",
+        "charges",
+        "cost",
+    ),
+    "order_lines": ("quantity", "ordered", "served", "short", "shortage_cost"),
+    "consignments": ("pallets", "weight_kg", "volume_m3", "cost"),
+    "shortages": ("quantity",),
+    "site_use": ("available", "shipped", "kept", "left"),
+    "totals": ("total",),
+}
+WHOLE: Final = frozenset({"priority", "rows"})
+_NOT_ADDED: Final = frozenset(
+    {"unit_cost", "ordered", "shortage_cost", "pallets", "weight_kg", "volume_m3"}
+)
 
 
-def table_csv(plan: Mapping[str, object], table: str) -> bytes:
+def table_rows(plan: Mapping[str, Any], table: str) -> Sequence[Mapping[str, Any]]:
+    """Return the rows of one table of ``plan``, or of ``totals``; ``table`` is in ``COLUMNS``."""
+    if table == "totals":
+        return list(_totals(plan))
+    rows: Sequence[Mapping[str, Any]] = plan[table]
+    return rows
+
+
+def _totals(plan: Mapping[str, Any]) -> Iterator[Mapping[str, object]]:
+    """Yield the number of rows of each table and the exact sum of each column that adds up.
+
+    Quantities are added as they are written, over all items.
+    """
+    for table in COLUMNS:
+        if table == "totals":
+            continue
+        rows = plan[table]
+        for column in AMOUNTS[table]:
+            if column in _NOT_ADDED:
+                continue
+            amounts = [row[column] for row in rows if row.get(column) is not None]
+            total = sum(map(parse_exact, amounts), Fraction(0))
+            yield {"table": table, "rows": len(rows), "column": column, "total": exact_text(total)}
+
+
+def table_csv(plan: Mapping[str, Any], table: str) -> bytes:
     """Return one table of ``plan`` as CSV in UTF-8, with its header also where it has no rows.
 
     ``table`` is a key of ``COLUMNS``; anything else is a ``KeyError``, which a door must have
     answered before it comes here.
     """
     columns = COLUMNS[table]
-    rows = plan[table]
-    assert isinstance(rows, Sequence)  # noqa: S101 - the plan document is our own
+    rows = table_rows(plan, table)
     text = io.StringIO()
     writer = csv.writer(text)
     writer.writerow(columns)
@@ -95,6 +147,9 @@ def _cell(value: object) -> str:
         return ""
     if not isinstance(value, str):
         return orjson.dumps(value).decode()
-    if value.startswith(_RUN_BY_SPREADSHEETS) and not _NUMBER.fullmatch(value):
-        return f"'{value}"
-    return value
+    return f"'{value}" if is_run(value) else value
+
+
+def is_run(text: str) -> bool:
+    """Return whether a spreadsheet would take ``text`` for a formula."""
+    return text.startswith(_RUN_BY_SPREADSHEETS) and not _NUMBER.fullmatch(text)

@@ -78,30 +78,20 @@ def workbook_bytes(tables: Mapping[str, FlatTable]) -> bytes:
 
 def network_zip(document: Mapping[str, Any], ending: str, writer: Writer) -> bytes:
     """Return a network as a zip of one file for each table."""
+    return zipped({f"{name}{ending}": writer(table) for name, table in sent(document).items()})
+
+
+def sent(document: Mapping[str, Any]) -> dict[str, FlatTable]:
+    """Return the tables of a network that a sender would send."""
     tables = flat_tables(document)
-    return zipped(
-        {
-            f"{name}{ending}": writer(table)
-            for name, table in tables.items()
-            if table.rows or name not in ("control",)
-        }
-    )
+    return {name: table for name, table in tables.items() if table.rows or name != "control"}
 
 
 FORMS: Mapping[str, tuple[str, Callable[[Mapping[str, Any]], bytes]]] = {
     "csv": (ZIP, lambda document: network_zip(document, ".csv", csv_bytes)),
     "parquet": (ZIP, lambda document: network_zip(document, ".parquet", parquet_bytes)),
     "arrow": (ZIP, lambda document: network_zip(document, ".arrow", arrow_bytes)),
-    "xlsx": (
-        XLSX,
-        lambda document: workbook_bytes(
-            {
-                name: table
-                for name, table in flat_tables(document).items()
-                if table.rows or name != "control"
-            }
-        ),
-    ),
+    "xlsx": (XLSX, lambda document: workbook_bytes(sent(document))),
 }
 
 
@@ -112,7 +102,7 @@ def take_in(
     media_type: str = ZIP,
     limits: Limits | None = None,
     encoding: str | None = None,
-    **options: Any,
+    options: Options | None = None,
 ) -> IntakeReport:
     """Check a body and leave what came of it in ``folder``."""
     spool = folder / "spool"
@@ -122,7 +112,7 @@ def take_in(
     return intake(
         spool,
         output,
-        options=Options(**options),
+        options=options or Options(),
         media_type=media_type,
         content_encoding=encoding,
         limits=limits or Limits(),

@@ -12,8 +12,11 @@ _SELECTORS: Final = ("lanes", "sites", "items")
 
 
 def head_of(grid: Grid, faults: FaultList) -> dict[str, object]:
-    """Return the one row of a table as an object of fields; ``network`` and ``control``."""
-    if grid.rows != 1:
+    """Return the one row of ``network`` or ``control`` as an object of fields.
+
+    Control totals may be left unsaid, with nothing beneath their header.
+    """
+    if grid.rows != 1 and (grid.rows or grid.table != "control"):
         detail = f"{grid.table} has one row beneath its header; this has {grid.rows}."
         faults.add(grid.source, "wrong_row_count", detail)
     return _row(grid, 0, faults) if grid.rows else {}
