@@ -17,7 +17,7 @@ from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, Int
 
 Kind = Literal["code", "small", "text", "texts", "decimal"]
 
-# The range of section 2 of the model: scaled values stay below it, so that sums of two fit int64.
+# Scaled values stay below it, as ``quantities`` reads them, so that sums of two fit int64.
 SCALED_MAX = 2**62
 # The most decimals that any column of the network definition may have (rates, money, weights).
 EXPONENT_MAX = 6

@@ -230,7 +230,7 @@ def validated(
 ) -> _Part | None:
     """Return ``value`` as a ``part``, or None after reporting everything that is wrong with it.
 
-    ``path`` is where it stands in the body; ``table`` the name under which API.md lists its fields.
+    ``path`` is where it stands in the body; ``table`` the name of the list that its fields are in.
     """
     try:
         return part.model_validate(value)

@@ -34,7 +34,7 @@ class Fault:
     value: str | None = None
 
     def to_document(self) -> dict[str, object]:
-        """Return the fault as a JSON object, in the order of API.md."""
+        """Return the fault as a JSON object, in the order in which it is shown."""
         return {
             "pointer": self.pointer,
             "code": self.code,
@@ -67,7 +67,7 @@ class Caution:
     examples: tuple[tuple[str, str | None], ...]
 
     def to_document(self) -> dict[str, object]:
-        """Return the caution as a JSON object, in the order of API.md."""
+        """Return the caution as a JSON object, in the order in which it is shown."""
         return {
             "code": self.code,
             "count": self.count,

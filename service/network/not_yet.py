@@ -1,7 +1,7 @@
 """What the interface promises but this version does not build: refused by name, never ignored.
 
-Each entry names the subject that will bring it. A test walks the lists of MODEL.md and API.md
-against what is read here and what is refused here, so that nothing falls between the two.
+Each entry names the subject that will bring it. A test walks the fields, rules and
+options that were promised: each is read or refused, so that nothing falls between the two.
 """
 
 from collections.abc import Mapping

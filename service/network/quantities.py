@@ -1,8 +1,8 @@
 r"""Exact numbers: decimal text to fractions and scaled integers and back; nothing passes a float.
 
 What is accepted at the door is ``-?(0|[1-9][0-9]*)(\.[0-9]+)?``: no exponent, no plus sign, no
-spaces, and decimals counted as written. A scaled value stays below 2**62 (MODEL.md, section 8), so
-that the sum of two never leaves 64 bits.
+spaces, and decimals counted as written. A scaled value stays below 2**62, so that the sum of
+two never leaves 64 bits.
 """
 
 import re

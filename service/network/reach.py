@@ -1,4 +1,4 @@
-"""Which items can use which lane, and where goods can come from (MODEL.md, section 3).
+"""Which items can use which lane, and where goods can come from.
 
 Item k can use a lane of its own, and a lane without an item if stock of k reaches its origin and
 from its destination wanted or forced goods of k are reached, moving along lanes of k or of any

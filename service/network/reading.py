@@ -37,7 +37,7 @@ PARTS: Final = (*LISTS, "rules", "control")
 class Reading:
     """What a definition was: ``network`` is None if there are faults.
 
-    ``set_aside`` lists order lines that were left out, as API.md shows them.
+    ``set_aside`` lists order lines that were left out, each with its place and its faults.
     """
 
     network: Network | None

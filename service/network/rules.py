@@ -1,4 +1,4 @@
-"""Rules of MODEL.md 3.1 that are built, their selectors, and what they pick in a network.
+"""The rules that are built, their selectors, and what they pick in a network.
 
 In ``Network.head["rules"]`` a rule is a JSON object in normal form: decimals as text, lists of
 selectors sorted, absent keys left out. Here it becomes a small object.

@@ -4,6 +4,9 @@ Each factor is exact by definition: the metric prefixes, the international yard 
 agreement of 1959 (yard 0.9144 m, pound 0.45359237 kg), the United States gallon of 231 cubic
 inches and the imperial gallon of 4.54609 litres. A unit whose size depends on a country or a
 vintage ("ton") is left out on purpose: it would be a guess.
+
+The second verifier has the table once more, written on its own: ``UNITS`` in
+``proof/standalone.py``.
 """
 
 from collections.abc import Mapping

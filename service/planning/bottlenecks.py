@@ -19,9 +19,9 @@ class Bottlenecks:
     """The bottlenecks of one solved item.
 
     The bottleneck of a short demand is the set X of all nodes that still have a residual way to
-    it, shortage left out (MODEL.md, section 6): all its supply is used, and nothing that could
-    enter it is left over, so that what X lacks went to demand in X. Strongly connected places
-    share it; their residual network is searched as one of components.
+    it, shortage left out: all its supply is used, and nothing that could enter it is left over, so
+    that what X lacks went to demand in X. Strongly connected places share it; their residual
+    network is searched as one of components.
     """
 
     def __init__(self, solved: ItemFlow) -> None:

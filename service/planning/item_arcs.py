@@ -79,7 +79,7 @@ class ArcList:
             subject=subject,
             priorities=tuple(priorities),
             # Any loop trades at most one short step for another and gains at most n * max|c|
-            # twice over in money; more than that for each step of priority (MODEL.md, section 4).
+            # twice over in money; more than that for each step of priority.
             base=2 * len(self.layout.nodes) * largest(cost) + 1,
         )
 

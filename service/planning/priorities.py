@@ -19,7 +19,7 @@ def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
     """Return what the plan of one item achieves.
 
     The weights prove that each is as small as it can be once those before it are: the bound of
-    every step equals what is achieved (MODEL.md, section 4).
+    every step equals what is achieved (DEVELOPERS.md, "What is computed").
     """
     own = solved.own
     short = dict.fromkeys(range(len(own.priorities)), 0)

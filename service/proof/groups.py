@@ -11,7 +11,7 @@ from service.network.options import Options
 from service.network.units import item_units
 from service.proof.rulings import UnusableNetworkError
 
-# MODEL.md, section 4: who names no importance has this priority.
+# Who names no importance has this priority.
 PRIORITY_DEFAULT = 5
 
 

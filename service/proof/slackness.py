@@ -2,9 +2,9 @@
 
 With node prices, an arc from i to j has the reduced cost c + price(i) - price(j). A feasible flow
 is of least cost if every arc above 0 carries its minimum and every arc below 0 its capacity (Ahuja,
-Magnanti and Orlin, *Network Flows*, 1993, section 9.3). Shortage has the weights of MODEL.md,
-section 4: one step short of the r-th of T priorities costs (T + 1 - r) * C. They prove the order of
-priorities if C is more than any cycle can cost otherwise, which is checked here.
+Magnanti and Orlin, *Network Flows*, 1993, section 9.3). Shortage has weights: one step short of the
+r-th of T priorities costs (T + 1 - r) * C. They prove the order of priorities if C is more than any
+cycle can cost otherwise (DEVELOPERS.md, "What is computed"), which is checked here.
 """
 
 from collections.abc import Mapping

@@ -208,6 +208,7 @@ COLUMNS = {
 }
 
 # UN/ECE Recommendation 20: each unit in the base unit of its dimension (kg, m3, m, m2, one).
+# Written on its own, and as long as the list that the input is read by (network/units.py).
 UNITS = {
     "mass": (
         "MGM 0.000001 GRM 0.001 HGM 0.1 KGM 1 DTN 100 TNE 1000 2U 1000 KTN 1000000 "

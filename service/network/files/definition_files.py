@@ -119,7 +119,7 @@ def _definition(
 def _put_together(
     read: Mapping[str, Grid], definition: dict[str, object] | None, faults: FaultList
 ) -> FilesRead:
-    """Return the tables as one definition, in the order in which API.md lists them."""
+    """Return the tables as one definition, in the order in which a network has them."""
     grids = {name: with_values(grid) for name, grid in read.items()}
     given = definition or {}
     head = {name: value for name, value in given.items() if name not in _ORDER}

@@ -82,7 +82,7 @@ def test_supply_that_nothing_leaves_is_doubted(tmp_path: Path) -> None:
 
 
 def test_stock_off_the_step_is_doubted(tmp_path: Path) -> None:
-    """It is rounded down with the other stock of its cost (MODEL, section 2)."""
+    """It is rounded down with the other stock of its cost."""
     document = sound()
     document["supply"][1]["quantity"] = "1.3003"
     assert found(check(document, tmp_path / "a")) == [("/supply/1/quantity", "too_many_decimals")]
@@ -132,7 +132,7 @@ def test_a_rate_for_items_in_unlike_units_is_doubted(tmp_path: Path) -> None:
 
 
 def test_a_limit_for_any_item_must_say_whom_it_limits(tmp_path: Path) -> None:
-    """MODEL, section 3: missing is an error once more than one item can use the lane."""
+    """To leave it out is an error once more than one item can use the lane."""
     document = sound()
     document["lanes"][2]["capacity"] = "10"
     document["rules"] = []

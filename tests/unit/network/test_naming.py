@@ -29,7 +29,7 @@ def names(network: Network) -> list[str]:
 
 
 def test_unnamed_lanes_are_called_after_their_ends(tmp_path: Path) -> None:
-    """MODEL, section 5: ORIGIN>DESTINATION[>ITEM], then #2 in the order of carrier, cost, ..."""
+    """ORIGIN>DESTINATION[>ITEM], then #2 in the order of carrier, cost, ..."""
     lanes = [
         {"origin": "Y", "destination": "X", "unit_cost": "3", "carrier": "B"},
         {"origin": "Y", "destination": "X", "unit_cost": "2", "carrier": "B"},

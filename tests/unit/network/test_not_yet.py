@@ -1,7 +1,7 @@
 """Nothing that the interface names is ignored: it is read, or refused by name.
 
-The lists are those of the model's and the interface's descriptions, written here once more by hand,
-so that a field that is dropped from the code is missed here.
+The lists are the promised fields, rules and options, written here by hand once more, so that one
+that is dropped from the code is missed here.
 """
 
 from pathlib import Path
@@ -17,7 +17,7 @@ from service.network.not_yet import (
 from service.network.options import read_options
 from tests.network_samples import check, found, sound
 
-# The table of fields, required ones first.
+# The promised fields that are read, required ones first.
 FIELDS = {
     "network": "format currency cut_off items sites supply demand lanes "
     "name release_by rules control extra",
@@ -30,7 +30,7 @@ FIELDS = {
     "lanes": "origin destination unit_cost id item measure must_ship capacity per carrier tags "
     "extra",
 }
-# "Later" beneath that table, and what the sections on dates, charges and commitments add.
+# Promised for later: dates, charges, commitments and what several items share.
 LATER_FIELDS = {
     "network": "tariffs exchange_rates storage periods committed shortage_measure "
     "committed_deducted planned_at",

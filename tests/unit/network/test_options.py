@@ -20,7 +20,7 @@ ALL_TEXTS = {
 
 
 def test_no_options_means_the_defaults_of_the_interface() -> None:
-    """API.md, section 1: shortages allowed, rounding and bad rows refused, 60 seconds."""
+    """As the README promises: shortages allowed, rounding and bad rows refused, 60 seconds."""
     options, faults = read_options({})
 
     assert faults == ()

@@ -92,7 +92,7 @@ def test_the_exponent_of_a_column_is_minimal() -> None:
 
 
 def test_scaled_values_stay_below_two_to_the_62() -> None:
-    """The sum of two values must not leave 64 bits (MODEL, section 8)."""
+    """The sum of two values must not leave 64 bits."""
     fits, too_large = str(2**62 - 1), str(2**62)
 
     assert read_decimals([fits], decimals_max=0).too_large.size == 0

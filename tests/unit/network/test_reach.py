@@ -79,7 +79,7 @@ def walk(network: Network, item: int, starts: set[int], *, back: bool) -> set[in
 
 
 def usable_by_walking(network: Network, item: int) -> list[int]:
-    """Return the usable lanes by the words of MODEL, section 3, one lane at a time."""
+    """Return the usable lanes by the words of the definition, one lane at a time."""
     supply, demand, lanes = network.supply, network.demand, network.lanes
     stock = {
         int(supply.site[row])

@@ -194,7 +194,7 @@ FAULTS: list[tuple[Change, str, str]] = [
 def test_each_mistake_is_found_where_it_is(
     change: Change, place: str, code: str, tmp_path: Path
 ) -> None:
-    """MODEL, section 9: a pointer, a stable code, and no word about what is right.
+    """A pointer, a stable code, and no word about what is right.
 
     Cases without a place are sound: the limits themselves are allowed.
     """

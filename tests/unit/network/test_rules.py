@@ -51,7 +51,7 @@ def network(tmp_path: Path, *rules: dict[str, Any]) -> Network:
 def test_keys_of_a_selector_are_joined_by_and_values_by_or(
     selector: dict[str, Any], names: set[str], tmp_path: Path
 ) -> None:
-    """MODEL, section 3.1; an empty selector means all."""
+    """Every key narrows, every value widens; an empty selector means all."""
     found_network = network(tmp_path, {"rule": "closure", "id": "c", "lanes": selector})
     (rule,) = rules_of(found_network)
 
@@ -229,7 +229,7 @@ def test_rules_must_agree_with_the_network_and_each_other(
 
 
 def test_what_a_closure_drops_is_doubted(tmp_path: Path) -> None:
-    """MODEL, section 3.1: a must-ship on a closed lane is dropped with a warning."""
+    """A must-ship on a closed lane is dropped, and whoever wrote it is warned."""
     document = sound()
     document["lanes"][0]["must_ship"] = "5"
     closed = {"rule": "closure", "id": "c", "sites": {"ids": ["DEP-NORTH"]}}

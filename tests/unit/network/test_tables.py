@@ -57,7 +57,7 @@ COMMON = {"item": "ROAD-25", "carrier": "C-RAIL", "tags": ["b", "a"]}
 
 
 def test_all_forms_and_orders_have_one_digest(tmp_path: Path) -> None:
-    """The digest is that of the meaning (ARCHITECTURE, what is stored)."""
+    """The digest is that of the meaning, not of the bytes that were sent."""
     document = dense()
     rows = [{**row, **COMMON} for row in ROWS]
     shuffled = list(rows)

@@ -105,7 +105,7 @@ def test_rows_may_use_the_items_unit_its_packs_or_a_unit_of_its_kind(
 
 
 def test_a_measure_per_unit_is_what_the_item_says() -> None:
-    """MODEL, section 3.1: a unit is 1/contains of a pack; a missing weight stays missing."""
+    """A unit is 1/contains of a pack; a missing weight stays missing."""
     salt = item("bag", weight_kg=Fraction("25.2"))
 
     assert per_unit(salt, "unit") == 1
