@@ -267,7 +267,11 @@ class Child:
 
 
 def resident_bytes(pid: int) -> int:
-    """Return the memory that a process really holds, or 0 where that cannot be known."""
+    """Return the memory that a process really holds, or 0 where that cannot be known.
+
+    The second of two limits: the child itself bounds its address space (``limit_memory`` in
+    ``engine/child.py``), which is the first to notice, but does not exist on every system.
+    """
     if sys.platform != "linux":
         return 0
     try:
