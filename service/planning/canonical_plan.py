@@ -56,34 +56,36 @@ def tied_arcs(arcs: Arcs, flow: IntArray, price: MoneyArray, *, nodes: int) -> I
     return tied
 
 
-def canonical_flow(
+def canonical_flow(  # noqa: PLR0913 - an optimum is many columns
     contraction: Contraction,
     arcs: Arcs,
     flow: IntArray,
     price: MoneyArray,
     *,
     tie_break: TieBreak,
+    at: IntArray | None = None,
 ) -> IntArray:
     """Return the one flow of least cost that also has the least tie weights, shape (arcs,).
 
     ``arcs`` are those of ``contraction`` at their cost, ``flow`` and ``price`` any optimum on
-    them. ``tie_break`` takes positions of original arcs and returns their tie weights and their
-    rank in the order (kind, id). All other flow is kept; the tied arcs are solved once more, in
-    that order, so that neither the order of the arrays nor the way to the optimum leaves a trace.
+    them; with ``at`` only those at these original positions, among them all that have a reduced
+    cost of 0. ``tie_break`` takes positions of original arcs and returns their tie weights and
+    their rank in the order (kind, id). All other flow is kept; the tied arcs are solved once more,
+    in that order, so that neither the order of the arrays nor the way to the optimum leaves a
+    trace.
     """
     tied = tied_arcs(arcs, flow, price, nodes=contraction.nodes)
     if tied.shape[0] == 0:
         return flow
     merged_over = [step.arc for step in contraction.rounds]
-    original = np.concatenate((contraction.kept[tied], *merged_over))
+    tied_at = (contraction.kept if at is None else at)[tied]
+    original = np.concatenate((tied_at, *merged_over))
     weight, rank = tie_break(original)
     weights = np.zeros(len(contraction.original), np.int64)
     weights[original] = weight
     offset = contraction.offsets(weights)
     whole = contraction.original
-    secondary = weights[contraction.kept[tied]] + (
-        offset[whole.tail[contraction.kept[tied]]] - offset[whole.head[contraction.kept[tied]]]
-    )
+    secondary = weights[tied_at] + (offset[whole.tail[tied_at]] - offset[whole.head[tied_at]])
     order = np.argsort(rank[: tied.shape[0]], kind="stable")
     tied, secondary = tied[order], secondary[order]
     part = arcs.at(tied)

@@ -61,27 +61,36 @@ class Contraction:
             offset = offset + moved[step.before]
         return offset
 
-    def arcs(self, cost: MoneyArray) -> Arcs:
-        """Return the arcs that are left, between merged places, at the shifted ``cost``."""
+    def arcs(self, cost: MoneyArray, *, at: IntArray | None = None) -> Arcs:
+        """Return the arcs that are left, between merged places, at the shifted ``cost``.
+
+        ``at`` picks some of them by their original positions, all of which are in ``kept``.
+        """
+        positions = self.kept if at is None else at
         offset = self.offsets(cost)
+        cost = cost[positions]
         bound = largest(cost) + 2 * largest(offset)
-        cost = widened(cost[self.kept], bound=bound)
+        cost = widened(cost, bound=bound)
         offset = widened(offset, bound=bound)
-        tail, head = self.original.tail[self.kept], self.original.head[self.kept]
+        tail, head = self.original.tail[positions], self.original.head[positions]
         return Arcs(
             tail=self.place[tail],
             head=self.place[head],
-            minimum=self.original.minimum[self.kept],
-            capacity=self.original.capacity[self.kept],
+            minimum=self.original.minimum[positions],
+            capacity=self.original.capacity[positions],
             cost=cost + offset[tail] - offset[head],
         )
 
-    def flow(self, kept_flow: IntArray) -> IntArray:
-        """Return the flow on all original arcs, from that on the arcs that are left."""
+    def flow(self, kept_flow: IntArray, *, at: IntArray | None = None) -> IntArray:
+        """Return the flow on all original arcs, from that on the arcs that are left.
+
+        With ``at`` only those at these original positions carry anything.
+        """
+        positions = self.kept if at is None else at
         flow = np.zeros(len(self.original), np.int64)
-        flow[self.kept] = kept_flow
+        flow[positions] = kept_flow
         balance = np.zeros(self.place.shape[0], np.int64)
-        used = self.kept[kept_flow != 0]
+        used = positions[kept_flow != 0]
         np.add.at(balance, self.original.head[used], flow[used])
         np.subtract.at(balance, self.original.tail[used], flow[used])
         # Latest first: what a representative was merged over carries what else enters and leaves
@@ -102,44 +111,101 @@ class Contraction:
         return widened(kept_price, bound=bound)[self.place] + widened(offset, bound=bound)
 
 
-def contract(arcs: Arcs, *, nodes: int) -> Contraction:
+def contract(arcs: Arcs, *, nodes: int, lanes: int = 0) -> Contraction:
     """Merge every node with one way out, or one way in, that has no limit and no minimum.
 
     All flow is at least 0, so what such an arc carries follows from the rest and meets its bounds
     by itself. The root stays. Loops on a merged node stay as arcs; the solver leaves them out.
+    The first ``lanes`` arcs are looked at as columns: one of many lanes out of its tail and of many
+    into its head is never merged over, and counts even where it becomes a loop.
     """
-    place = np.arange(nodes, dtype=np.int64)
-    left = np.ones(len(arcs), np.bool_)
-    free = (arcs.capacity == UNLIMITED) & (arcs.minimum == 0)
+    tail, head, free, original = _mergeable(arcs, nodes=nodes, lanes=lanes)
+    place = np.arange(nodes + 1, dtype=np.int64)
+    left = np.ones(tail.shape[0], np.bool_)
     rounds: list[Round] = []
     idle = 0
     while idle < 2 and len(rounds) < ROUNDS_MAX:
         onward = (len(rounds) + idle) % 2 == 0
-        step = _round(arcs, place=place, left=left, free=free, onward=onward)
-        if step is None:
+        found = _round(tail, head, place=place, left=left, free=free, onward=onward)
+        if found is None:
             idle += 1
             continue
         idle = 0
-        rounds.append(step)
-        left[step.arc] = False
-        step_to = np.arange(nodes, dtype=np.int64)
-        step_to[step.merged] = step.target
+        merged, arc, target = found
+        rounds.append(
+            Round(
+                merged=merged,
+                arc=original[arc],
+                onward=onward,
+                before=place[:nodes],
+                target=target,
+            )
+        )
+        left[arc] = False
+        step_to = np.arange(nodes + 1, dtype=np.int64)
+        step_to[merged] = target
         place = step_to[place]
-    standing = np.unique(place)
+    place = place[:nodes]
+    standing = np.zeros(nodes, np.bool_)
+    standing[place] = True
+    kept = np.ones(len(arcs), np.bool_)
+    for step in rounds:
+        kept[step.arc] = False
     return Contraction(
         original=arcs,
         rounds=tuple(rounds),
-        nodes=int(standing.shape[0]),
-        place=np.searchsorted(standing, place),
-        kept=np.flatnonzero(left),
+        nodes=int(standing.sum()),
+        place=(np.cumsum(standing) - 1)[place],
+        kept=np.flatnonzero(kept),
     )
 
 
-def _round(
-    arcs: Arcs, *, place: IntArray, left: BoolArray, free: BoolArray, onward: bool
-) -> Round | None:
-    """Return the merges possible now over ways out (``onward``) or in, None where there is none."""
-    near, far = (arcs.tail, arcs.head) if onward else (arcs.head, arcs.tail)
+def _mergeable(
+    arcs: Arcs, *, nodes: int, lanes: int
+) -> tuple[IntArray, IntArray, BoolArray, IntArray]:
+    """Return tail, head, freedom and position of the arcs that decide what can be merged.
+
+    Node ``nodes`` stands for everywhere: two arcs from it, or to it, stand for the lanes of a node
+    that are left out, of which there are two or more.
+    """
+    ways_out = np.bincount(arcs.tail[:lanes], minlength=nodes)
+    ways_in = np.bincount(arcs.head[:lanes], minlength=nodes)
+    lone = np.zeros(0, np.int64)
+    if (ways_out == 1).any() or (ways_in == 1).any():
+        lone = np.flatnonzero(
+            (ways_out == 1)[arcs.tail[:lanes]] | (ways_in == 1)[arcs.head[:lanes]]
+        )
+    from_many, to_many = np.flatnonzero(ways_in > 1), np.flatnonzero(ways_out > 1)
+    positions = np.concatenate((lone, np.arange(lanes, len(arcs))))
+    many = 2 * (from_many.shape[0] + to_many.shape[0])
+    everywhere = np.full(many, nodes)
+    split = 2 * from_many.shape[0]
+    tail = np.concatenate((arcs.tail[positions], everywhere[:split], to_many, to_many))
+    head = np.concatenate((arcs.head[positions], from_many, from_many, everywhere[split:]))
+    free = (arcs.capacity[positions] == UNLIMITED) & (arcs.minimum[positions] == 0)
+    none = np.zeros(many, np.int64)
+    return (
+        tail.astype(np.int64),
+        head.astype(np.int64),
+        np.concatenate((free, none.astype(np.bool_))),
+        np.concatenate((positions, none - 1)),
+    )
+
+
+def _round(  # noqa: PLR0913 - arcs are columns
+    tail: IntArray,
+    head: IntArray,
+    *,
+    place: IntArray,
+    left: BoolArray,
+    free: BoolArray,
+    onward: bool,
+) -> tuple[IntArray, IntArray, IntArray] | None:
+    """Return the merges possible now over ways out (``onward``) or in, None where there is none.
+
+    What is merged, over which arcs, and into what.
+    """
+    near, far = (tail, head) if onward else (head, tail)
     near, far = place[near], place[far]
     outer = left & (near != far)
     ways = np.bincount(near[outer], minlength=place.shape[0])
@@ -150,4 +216,4 @@ def _round(
     lone = lone[~candidate[far[lone]]]
     if lone.shape[0] == 0:
         return None
-    return Round(merged=near[lone], arc=lone, onward=onward, before=place, target=far[lone])
+    return near[lone], lone, far[lone]

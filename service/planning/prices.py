@@ -41,9 +41,16 @@ def residual_prices(arcs: Arcs, flow: IntArray, *, nodes: int) -> MoneyArray:
 
 
 def shortest_distances(
-    tail: IntArray, head: IntArray, cost: MoneyArray, *, nodes: int
+    tail: IntArray,
+    head: IntArray,
+    cost: MoneyArray,
+    *,
+    nodes: int,
+    start: MoneyArray | None = None,
 ) -> MoneyArray:
     """Return the least of 0 and the cost of any walk ending at each node, shape (nodes,).
+
+    ``start`` are the distances over some of the arcs, if they are known; they save sweeps.
 
     Raises
     ------
@@ -54,6 +61,8 @@ def shortest_distances(
     cost = narrowed(cost)
     cost = widened(cost, bound=(nodes + 1) * largest(cost))
     distance: MoneyArray = np.zeros(nodes, cost.dtype)
+    if start is not None:
+        distance += start
     if tail.shape[0] == 0:
         return distance
     # int32 keys sort by radix, and the sorted columns stay small enough for the cache.

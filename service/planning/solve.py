@@ -1,6 +1,5 @@
 """One item solved: contracted, feasible, of least weighted cost, canonical, with prices."""
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -11,13 +10,8 @@ from service.planning.contraction import Contraction, contract
 from service.planning.forced_flow import contradiction
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError, NoFlowError, SolverFaultError
-from service.planning.prices import residual_prices
-from service.planning.ranges import exact_flow
+from service.planning.routes import Front, chosen_route
 from service.planning.tie_break import ItemTieBreak
-
-# A solver front: contracted arcs and their number of nodes in, a flow of least cost out. Whatever
-# replaces the default (a shortlist, say) is proved by the same prices over all arcs.
-Front = Callable[..., IntArray]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -40,8 +34,8 @@ class ItemFlow:
         return dict(zip(self.own.subject[arcs[used]].tolist(), carried[used].tolist(), strict=True))
 
 
-def solve_item(network: Network, own: ItemNetwork, *, front: Front = exact_flow) -> ItemFlow:
-    """Return the canonical plan of one item.
+def solve_item(network: Network, own: ItemNetwork, *, front: Front = chosen_route) -> ItemFlow:
+    """Return the canonical plan of one item; it does not depend on the route that ``front`` takes.
 
     Raises
     ------
@@ -50,24 +44,29 @@ def solve_item(network: Network, own: ItemNetwork, *, front: Front = exact_flow)
     NumbersTooLargeError, SolverFaultError
         As ``least_cost_flow``.
     """
-    whole = contract(own.arcs, nodes=own.node_count)
+    whole = contract(own.arcs, nodes=own.node_count, lanes=own.lanes.rows.shape[0])
     weighted = own.weighted()
-    arcs = whole.arcs(weighted)
+    route = front(own, whole, weighted)
     try:
-        flow = front(arcs, nodes=whole.nodes)
+        optimum = route.optimum()
     except NoFlowError as none:
         found = contradiction(own.arcs, nodes=own.node_count)
         if found is None:
             raise SolverFaultError("the solver found no flow where there is one") from none
         places, forced_out, can_enter = found
         raise NoCirculationError(places, forced_out=forced_out, can_enter=can_enter) from none
-    price = residual_prices(arcs, flow, nodes=whole.nodes)
     settled = canonical_flow(
-        whole, arcs, flow, price, tie_break=ItemTieBreak(network=network, own=own)
+        whole,
+        optimum.arcs,
+        optimum.flow,
+        optimum.price,
+        tie_break=ItemTieBreak(network=network, own=own),
+        at=optimum.at,
     )
-    if settled is not flow:
-        price = residual_prices(arcs, settled, nodes=whole.nodes)
-    prices: Any = whole.prices(price, weighted)
+    prices: Any = whole.prices(route.prices(optimum, settled), weighted)
     return ItemFlow(
-        own=own, contraction=whole, flow=whole.flow(settled), price=prices - prices[ROOT]
+        own=own,
+        contraction=whole,
+        flow=whole.flow(settled, at=optimum.at),
+        price=prices - prices[ROOT],
     )
