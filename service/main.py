@@ -173,7 +173,9 @@ def working_application(settings: Settings) -> Iterator["Application"]:
         stack.callback(lock.release)
         if database.is_sqlite:
             _migrated(database)
-        store = SqlStore(database, SystemClock())
+        store = SqlStore(
+            database, SystemClock(), warm_start_bytes_max=settings.warm_start_bytes_max
+        )
         missing = store.missing()
         if missing:
             raise NotReadyError("; ".join(missing))

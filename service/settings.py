@@ -48,6 +48,8 @@ class Settings(BaseSettings):
     intake_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 4 * GIBIBYTE
 
     plan_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 8 * GIBIBYTE
+    # What planned runs leave for the next ones to start from; a cache, for each tenant; 0 for none.
+    warm_start_bytes_max: Annotated[int, Field(ge=0)] = 256 * MEBIBYTE
     # A child that died by itself this often takes its run with it: three strikes tell a poisonous
     # network from a passing accident, and more would only keep the slot from others.
     crashes_max: Annotated[int, Field(ge=1, le=10)] = 3

@@ -14,7 +14,7 @@ from service.planning.outcome import FailureReason as Reason
 from service.planning.outcome import Outcome, State
 from service.runs.execute import Execute
 from service.runs.ports import Claim, Run, RunId, Store
-from service.runs.run import LOCAL, Actor
+from service.runs.run import LOCAL, Actor, Progress, Token
 from service.runs.submit import Submit
 
 WIRE_DIGEST = "sha-256:" + "a" * 64
@@ -26,7 +26,11 @@ def sha256(content: bytes) -> str:
 
 
 def intake_folder(
-    folder: Path, *, body: bytes = b'{"format":1}', plan_for: str = "2026-02-03"
+    folder: Path,
+    *,
+    body: bytes = b'{"format":1}',
+    plan_for: str = "2026-02-03",
+    likeness: str = "sha-256:" + "b" * 64,
 ) -> Path:
     """Write what intake leaves behind; the network has one column, for its digest."""
     folder.mkdir(parents=True, exist_ok=True)
@@ -56,6 +60,7 @@ def intake_folder(
         "cut_off": "2026-02-03T16:00:00+01:00",
         "plan_for": plan_for,
         "name": None,
+        "likeness": likeness,
     }
     (folder / "intake.json").write_bytes(orjson.dumps(summary))
     return folder
@@ -84,10 +89,20 @@ class FakePlanner:
     instead: Callable[[Claim], object] | None = None
     lines: int = 2
     seen: list[Claim] = field(default_factory=list)
+    told: Progress | None = None
+    warm_start: bytes | None = b"prices"
+    started_from: list[bytes | None] = field(default_factory=list)
+
+    def progress(self, token: Token) -> Progress | None:
+        """Return what a test wants told."""
+        assert self.seen[-1].token == token
+        return self.told
 
     def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> Outcome:
         """Plan as the real one would: files in, files out."""
         self.seen.append(claim)
+        warm = source / "warm_start"
+        self.started_from.append(warm.read_bytes() if warm.exists() else None)
         if self.instead is not None:
             self.instead(claim)
         intake = orjson.loads((source / "intake.json").read_bytes())
@@ -115,6 +130,8 @@ class FakePlanner:
         if self.outcome.state != "failed" or self.outcome.reason == "proof_failed":
             (target / "plan.json").write_bytes(orjson.dumps(plan))
             (target / "certificate.json").write_bytes(b'{"format":1}')
+        if self.warm_start is not None:
+            (target / "warm_start").write_bytes(self.warm_start)
         return self.outcome
 
 
@@ -137,10 +154,11 @@ def submitted(  # noqa: PLR0913 - each names one thing that a test may want to d
     body: bytes = b'{"format":1}',
     plan_for: str = "2026-02-03",
     deadline_seconds: int = 60,
+    likeness: str = "sha-256:" + "b" * 64,
 ) -> Run:
     """Submit a run as a door would."""
     submit = Submit(store=store, dispatcher=FakeDispatcher())
-    left = intake_folder(folder, body=body, plan_for=plan_for)
+    left = intake_folder(folder, body=body, plan_for=plan_for, likeness=likeness)
     return submit(left, Options(deadline_seconds=deadline_seconds), actor, WIRE_DIGEST)
 
 

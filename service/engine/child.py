@@ -12,6 +12,7 @@ import os
 import signal
 import socket
 import sys
+import time
 from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Any
@@ -26,6 +27,8 @@ PR_SET_PDEATHSIG = 1
 # Halfway to "end this one first" (1000): when the machine runs out of memory the kernel shall take
 # the child, whose run then fails with a reason, and not the service.
 OOM_SCORE_ADJUSTMENT = 500
+# Nobody looks more often, and a thousand small items would otherwise fill the log of the service.
+TELL_SECONDS = 0.2
 
 
 def intake_work() -> Work:
@@ -118,18 +121,47 @@ def keep_private() -> None:
         resource.setrlimit(resource.RLIMIT_CORE, (0, 0))
 
 
+class Teller:
+    """Tells the supervisor how far the work is: every phase, but not every step of a long one."""
+
+    def __init__(self, channel: Channel) -> None:
+        """Tell over ``channel``."""
+        self._channel = channel
+        self._phase = ""
+        self._told_at = 0.0
+        self._untold: Mapping[str, int] | None = None
+
+    def tell(self, phase: str, numbers: Mapping[str, int]) -> None:
+        """Tell a phase at once, its repetition only when the last is a while ago."""
+        now = time.monotonic()
+        if phase == self._phase and now - self._told_at < TELL_SECONDS:
+            self._untold = numbers
+            return
+        self.catch_up()
+        self._phase = phase
+        self._send(numbers)
+        self._told_at = now
+
+    def catch_up(self) -> None:
+        """Tell what was held back, so that the last numbers of a phase are always known."""
+        if self._untold is not None:
+            self._send(self._untold)
+
+    def _send(self, numbers: Mapping[str, int]) -> None:
+        self._untold = None
+        self._channel.send({"progress": self._phase, "numbers": dict(numbers)})
+
+
 def serve(channel: Channel, work: Work) -> None:
     """Do one task after the other until the supervisor closes, or memory runs out."""
-
-    def progress(phase: str, numbers: Mapping[str, int]) -> None:
-        channel.send({"progress": phase, "numbers": dict(numbers)})
-
     channel.send({"ready": True})
     while (message := channel.receive()) is not None:
         limit_memory(message["memory_bytes"])  # type: ignore[arg-type] # our own supervisor's frame
         answer: Mapping[str, object] | None = None
+        teller = Teller(channel)
         try:
-            answer = work(message["task"], progress)  # type: ignore[arg-type] # likewise
+            answer = work(message["task"], teller.tell)  # type: ignore[arg-type] # likewise
+            teller.catch_up()
         except MemoryError:
             # What is left over of the task may hold the memory for good: say so and leave.
             limit_memory(None)

@@ -138,7 +138,10 @@ class LocalEngine:
 
     def _look_after(self) -> None:
         """Renew leases, end children whose claim is gone, and now and then sweep."""
-        self._planner.release(self._watch(self._planner.tokens()))
+        tokens = self._planner.tokens()
+        told = ((token, self._planner.progress(token)) for token in tokens)
+        progress = {token: progress for token, progress in told if progress is not None}
+        self._planner.release(self._watch(tokens, progress))
         self._sweep_in -= self._poll_seconds
         if self._sweep_in <= 0:
             self._sweep_in = SWEEP_SECONDS

@@ -13,7 +13,7 @@ from service.engine.children import Nursery
 from service.network.faults import Status
 from service.network.options import Options
 from service.runs.faults import ChildCrashed, ChildTimeout
-from service.runs.run import Claim, Token
+from service.runs.run import Claim, Progress, Token
 
 if TYPE_CHECKING:
     from service.network.intake import IntakeReport
@@ -90,20 +90,17 @@ class PlanningChildren:
         self._memory_bytes = memory_bytes
         self._lock = threading.Lock()
         # By the calling thread, which works on one run at a time.
-        self._busy: dict[int, tuple[Token, threading.Event]] = {}
+        self._busy: dict[int, _Work] = {}
         self._closed = False
 
     def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> "Outcome":
         """Plan the network in ``source`` within the seconds that ``claim`` has left."""
         until = time.monotonic() + claim.seconds_left
-        released = threading.Event()
+        work = _Work(claim.token)
         with self._lock:
-            self._busy[threading.get_ident()] = (claim.token, released)
+            self._busy[threading.get_ident()] = work
             if self._closed:
-                released.set()
-
-        def progress(phase: str, numbers: Mapping[str, int]) -> None:
-            _log.info("planning", run_id=claim.run_id, phase=phase, **numbers)
+                work.released.set()
 
         child = self._nursery.take()
         seconds = until - time.monotonic()
@@ -114,8 +111,8 @@ class PlanningChildren:
             {"source": str(source), "options": options.to_document(), "target": str(target)},
             seconds=seconds,
             memory_bytes=self._memory_bytes,
-            released=released,
-            on_progress=progress,
+            released=work.released,
+            on_progress=work.told,
         )
         self._nursery.give_back(child, input_bytes=(source / "network.zip").stat().st_size)
         return read_outcome(answer)
@@ -128,22 +125,47 @@ class PlanningChildren:
     def tokens(self) -> frozenset[Token]:
         """Return the claims under which something is being planned or stored now."""
         with self._lock:
-            return frozenset(token for token, _ in self._busy.values())
+            return frozenset(work.token for work in self._busy.values())
+
+    def progress(self, token: Token) -> Progress | None:
+        """Return what planning under ``token`` told last, None if nothing yet."""
+        with self._lock:
+            told = [work.progress for work in self._busy.values() if work.token == token]
+        return told[0] if told else None
 
     def release(self, tokens: Collection[Token]) -> None:
         """End the children that work under ``tokens``; their callers get ``ChildReleased``."""
         with self._lock:
-            for token, released in self._busy.values():
-                if token in tokens:
-                    released.set()
+            for work in self._busy.values():
+                if work.token in tokens:
+                    work.released.set()
 
     def close(self) -> None:
         """End every child, now and for good."""
         with self._lock:
             self._closed = True
-            for _, released in self._busy.values():
-                released.set()
+            for work in self._busy.values():
+                work.released.set()
         self._nursery.close()
+
+
+class _Work:
+    """What is being planned under one claim, and how far it is."""
+
+    def __init__(self, token: Token) -> None:
+        """Begin now."""
+        self.token = token
+        self.released = threading.Event()
+        self.progress: Progress | None = None
+        self._began = time.monotonic()
+
+    def told(self, phase: str, numbers: Mapping[str, int]) -> None:
+        """Note a message of the child's; counts of former phases stay beside it."""
+        counts = {**(self.progress.counts if self.progress is not None else {}), **numbers}
+        seconds = round(time.monotonic() - self._began, 3)
+        # One assignment of a finished object: another thread reads it meanwhile.
+        self.progress = Progress(phase=phase, counts=counts, seconds=seconds)
+        _log.info("planning", phase=phase, seconds=seconds, **numbers)
 
 
 def read_report(answer: Mapping[str, object], folder: Path) -> "IntakeReport":

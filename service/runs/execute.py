@@ -31,11 +31,13 @@ from service.runs.lifecycle import CRASHES_MAX
 from service.runs.ports import Planner, Store
 from service.runs.records import EventKind, GivenBack, claimed_payload, seconds_texts
 from service.runs.run import (
+    STORED,
     Claim,
     Ending,
     FailureReason,
     Finish,
     IndexRows,
+    Progress,
     RunId,
     RunState,
     Staged,
@@ -49,6 +51,9 @@ if TYPE_CHECKING:
 
 PLAN: Final = "plan.json"
 CERTIFICATE: Final = "certificate.json"
+WARM_START_FILE: Final = "warm_start"
+# Prices and a shortlist of a hundred thousand places take 3 MB; more than this is a mistake.
+WARM_START_BYTES_MAX: Final = 32 * 2**20
 _PAUSE_SECONDS: Final = 0.5
 
 
@@ -92,6 +97,7 @@ class Execute:
         if claim is None:
             return None
         with self._folder(claim) as folder:
+            began = self.elapsed()
             try:
                 planned = self._plan(claim, folder)
             except ChildCrashed as error:
@@ -104,9 +110,13 @@ class Execute:
             except Exception:
                 # A mistake of ours: whoever supervises logs it; the run must not hang till then.
                 broken = _failed(FailureReason.INTERNAL, "The service made a mistake; see its log.")
-                self._persist(lambda: self._finish(claim, broken))
+                self._persist(lambda: self._finish(claim, broken, None))
                 raise
-            return self._persist(lambda: self._finish(claim, planned))
+            progress = self._progress(claim, planned, began)
+            state = self._persist(lambda: self._finish(claim, planned, progress))
+            if state is RunState.PLANNED:
+                self._keep_warm_start(claim, folder)
+            return state
 
     def _claim(self, run_id: RunId) -> Claim | None:
         with self.store.transaction() as store:
@@ -147,6 +157,15 @@ class Execute:
         tenant = claim.tenant
         self.store.blob_to_file(tenant, submission.normal_digest, source / NETWORK)
         self.store.blob_to_file(tenant, submission.intake_digest, source / INTAKE)
+        if claim.crashes == 0:
+            # After a crash everything that is not needed stays away from the next child.
+            warm = self.store.warm_start(
+                tenant,
+                network_digest=submission.network_digest,
+                likeness=claim.needs.likeness,
+            )
+            if warm is not None:
+                (source / WARM_START_FILE).write_bytes(warm)
         document = orjson.loads(self.store.blob(tenant, submission.options_digest))
         return Options.from_document(document)
 
@@ -169,7 +188,24 @@ class Execute:
             seconds=seconds_texts(outcome.seconds),
         )
 
-    def _finish(self, claim: Claim, planned: Planned) -> RunState | None:
+    def _progress(self, claim: Claim, planned: Planned, began: float) -> Progress | None:
+        """Return how far the run has come by being stored; None: no further than it told."""
+        if planned.state is RunState.FAILED:
+            return None
+        told = self.planner.progress(claim.token)
+        return Progress(
+            phase=STORED,
+            counts={} if told is None else told.counts,
+            seconds=round(self.elapsed() - began, 3),
+        )
+
+    def _keep_warm_start(self, claim: Claim, folder: Path) -> None:
+        """Keep what planning found out for the next run; this one is stored already."""
+        path = folder / "out" / WARM_START_FILE
+        if path.is_file() and path.stat().st_size <= WARM_START_BYTES_MAX:
+            self.store.keep_warm_start(claim.run_id, claim.tenant, path.read_bytes())
+
+    def _finish(self, claim: Claim, planned: Planned, progress: Progress | None) -> RunState | None:
         with self.store.transaction() as store:
             ending = Ending(
                 state=planned.state,
@@ -184,7 +220,7 @@ class Execute:
                 ),
                 seconds=planned.seconds,
             )
-            finish = end(store, claim, ending)
+            finish = end(store, claim, ending, progress=progress)
             if finish is Finish.STORED:
                 for staged in (planned.plan, planned.certificate):
                     if staged is not None:

@@ -30,6 +30,8 @@ from service.runs.run import (
     FailureReason,
     Finish,
     IndexRows,
+    Needs,
+    Progress,
     Run,
     RunId,
     RunState,
@@ -67,8 +69,10 @@ __all__ = [
     "HistoryCall",
     "IndexRows",
     "IntakeCall",
+    "Needs",
     "NetworkCall",
     "Planner",
+    "Progress",
     "ReadinessCall",
     "Run",
     "RunCall",
@@ -133,6 +137,10 @@ class Planner(Protocol):
         """
         ...
 
+    def progress(self, token: Token) -> Progress | None:
+        """Return what planning under ``token`` told last, None if nothing yet."""
+        ...
+
 
 class Transaction(Protocol):
     """One unit of work: all of it is on disk when the block ends, or none of it."""
@@ -150,7 +158,7 @@ class Transaction(Protocol):
         """Write what is not yet written of ``staged``."""
         ...
 
-    def add_run(self, submission: Submission) -> None:
+    def add_run(self, submission: Submission, needs: Needs) -> None:
         """Insert a waiting run."""
         ...
 
@@ -172,8 +180,18 @@ class Transaction(Protocol):
         """
         ...
 
-    def finish(self, claim: Claim, ending: Ending, *, crashed: bool = False) -> Finish:
-        """Make the run final, if ``claim`` still holds it; count a crash if it ends by one."""
+    def finish(
+        self,
+        claim: Claim,
+        ending: Ending,
+        *,
+        crashed: bool = False,
+        progress: Progress | None = None,
+    ) -> Finish:
+        """Make the run final, if ``claim`` still holds it; count a crash if it ends by one.
+
+        ``progress`` None leaves what was told last.
+        """
         ...
 
     def give_back(self, claim: Claim, *, crashed: bool) -> int | None:
@@ -184,8 +202,17 @@ class Transaction(Protocol):
         """Make a waiting run final without planning it; False when it no longer waits."""
         ...
 
-    def renew(self, tokens: Collection[Token], *, lease_seconds: float) -> frozenset[Token]:
-        """Renew the leases of ``tokens``; return those that still hold a run."""
+    def renew(
+        self,
+        tokens: Collection[Token],
+        *,
+        lease_seconds: float,
+        progress: Mapping[Token, Progress],
+    ) -> frozenset[Token]:
+        """Renew the leases of ``tokens`` and note how far they are, where that is known.
+
+        Returns those that still hold a run.
+        """
         ...
 
     def waiting(self, *, limit: int) -> Sequence[RunId]:
@@ -240,6 +267,18 @@ class Store(Protocol):
 
     def blob_to_file(self, tenant: str, digest: str, path: Path) -> None:
         """Write the blob to ``path`` part by part, checked against its digest."""
+        ...
+
+    def warm_start(self, tenant: str, *, network_digest: str, likeness: str | None) -> bytes | None:
+        """Return what the newest planned run of this network left for the next to start from.
+
+        Else that of the newest run of equal ``likeness``. None when there is none, and when it
+        cannot be had for whatever reason: it is a cache, and a run starts cold without.
+        """
+        ...
+
+    def keep_warm_start(self, run_id: RunId, tenant: str, content: bytes) -> None:
+        """Keep what a planned run found out, if it can be kept; never raises for a cache's sake."""
         ...
 
     def missing(self) -> list[str]:

@@ -4,7 +4,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime
 from enum import StrEnum
-from typing import NewType
+from typing import Final, NewType
 
 RunId = NewType("RunId", str)
 Token = NewType("Token", str)
@@ -52,6 +52,23 @@ def engine_of(tenant: str) -> Actor:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Progress:
+    """How far a run has come: ``phase`` is the last thing that was done.
+
+    First it is ``checked``, then what planning tells, in the end ``stored``. ``counts`` say how
+    many of what were met so far; ``seconds`` how long planning had taken by then.
+    """
+
+    phase: str
+    counts: Mapping[str, int]
+    seconds: float
+
+
+CHECKED: Final = "checked"
+STORED: Final = "stored"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Run:
     """One request to plan a network, as it stands now.
 
@@ -81,6 +98,19 @@ class Run:
     certificate_digest: str | None
     counts: Mapping[str, int]
     submitted_by: str
+    progress: Progress
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Needs:
+    """What planning a run takes, as far as its input tells; neither changes any result.
+
+    Runs of equal ``likeness`` have the same warehouses, items and currency: one may start from
+    what another found out. ``memory_bytes`` is an estimate of the peak that planning reaches.
+    """
+
+    likeness: str | None
+    memory_bytes: int | None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -138,8 +168,10 @@ class Claim:
     tenant: str
     token: Token
     attempt: int
+    crashes: int
     deadline_at: datetime
     seconds_left: float
+    needs: Needs
 
 
 class Finish(StrEnum):

@@ -11,12 +11,27 @@ from service.runs.records import (
     finished_payload,
     given_back_payload,
 )
-from service.runs.run import Claim, Ending, FailureReason, Finish, RunState, engine_of
+from service.runs.run import (
+    Claim,
+    Ending,
+    FailureReason,
+    Finish,
+    Progress,
+    RunState,
+    engine_of,
+)
 
 
-def end(store: Transaction, claim: Claim, ending: Ending, *, crashed: bool = False) -> Finish:
+def end(
+    store: Transaction,
+    claim: Claim,
+    ending: Ending,
+    *,
+    crashed: bool = False,
+    progress: Progress | None = None,
+) -> Finish:
     """Make the run final if ``claim`` holds it, and say so in its history."""
-    finish = store.finish(claim, ending, crashed=crashed)
+    finish = store.finish(claim, ending, crashed=crashed, progress=progress)
     if finish is Finish.STORED:
         crashes = store.run(claim.run_id, claim.tenant).crashes
         store.append(

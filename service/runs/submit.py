@@ -15,7 +15,7 @@ from service.runs.events import run_stream
 from service.runs.identity import new_run_id
 from service.runs.ports import Dispatcher, Store
 from service.runs.records import EventKind, submitted_payload
-from service.runs.run import Actor, Run, Submission
+from service.runs.run import Actor, Needs, Run, Submission
 
 RECEIVED: Final = "received"
 NETWORK: Final = "network.zip"
@@ -53,6 +53,7 @@ class Submit:
         if _network_digest(folder / NETWORK) != summary["network_digest"]:
             raise IntakeBroken("the normal form is not the one that was reported")
         plan_for = options.plan_for or date.fromisoformat(summary["plan_for"])
+        needs = Needs(likeness=summary.get("likeness"), memory_bytes=None)
 
         with self.store.transaction() as store:
             now = store.now
@@ -76,7 +77,7 @@ class Submit:
             )
             for staged in (received, normal, intake, option_bytes):
                 store.add_blob(staged)
-            store.add_run(submission)
+            store.add_run(submission, needs)
             stream = run_stream(submission.id)
             store.append(stream, EventKind.SUBMITTED, actor, submitted_payload(submission))
             run = store.run(submission.id, tenant)

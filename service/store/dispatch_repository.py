@@ -4,7 +4,7 @@ Every statement carries the states that ``runs/lifecycle.py`` allows the move to
 of several that try, the database lets one through.
 """
 
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from datetime import datetime, timedelta
 from typing import Any, Final
 
@@ -12,7 +12,8 @@ from sqlalchemy import ColumnElement, and_, case, or_, select, update
 from sqlalchemy.orm import Session
 
 from service.runs.lifecycle import FINAL, RULES, Move
-from service.runs.run import Claim, Finish, RunId, RunState, Token
+from service.runs.run import Claim, Finish, Needs, Progress, RunId, RunState, Token
+from service.store.run_repository import progress_text
 from service.store.tables import RunDispatchRow
 
 _Values = dict[str, Any]
@@ -62,25 +63,24 @@ class SqlDispatchRepository:
                 token=token,
                 lease_until=now + timedelta(seconds=lease_seconds),
                 started_at=now,
+                progress=None,
             )
-            .returning(RunDispatchRow.tenant, RunDispatchRow.attempt, RunDispatchRow.deadline_at)
+            .returning(*_CLAIMED)
             .execution_options(synchronize_session=False)
         )
         row = self._session.execute(statement).one_or_none()
-        if row is None:
-            return None
-        return Claim(
-            run_id=run_id,
-            tenant=row.tenant,
-            token=token,
-            attempt=row.attempt,
-            deadline_at=row.deadline_at,
-            seconds_left=(row.deadline_at - now).total_seconds(),
-        )
+        return None if row is None else _claim(row, now)
 
-    def finish(self, claim: Claim, state: RunState, *, crashed: bool) -> Finish:
-        """Make the run final if ``claim`` holds it; say whether this claim did so before."""
+    def finish(
+        self, claim: Claim, state: RunState, *, crashed: bool, progress: Progress | None
+    ) -> Finish:
+        """Make the run final if ``claim`` holds it; say whether this claim did so before.
+
+        ``progress`` None leaves what was told last.
+        """
         values: _Values = {"state": state, "finished_token": claim.token, **_NO_HOLDER}
+        if progress is not None:
+            values["progress"] = progress_text(progress)
         if crashed:
             values["crashes"] = RunDispatchRow.crashes + 1
         if self._change(claim, _from(Move.FINISH), values):
@@ -95,7 +95,7 @@ class SqlDispatchRepository:
 
     def give_back(self, claim: Claim, *, crashed: bool) -> bool:
         """Let the run wait again if ``claim`` holds it."""
-        values: _Values = {"state": RunState.WAITING, **_NO_HOLDER}
+        values: _Values = {"state": RunState.WAITING, "progress": None, **_NO_HOLDER}
         if crashed:
             values["crashes"] = RunDispatchRow.crashes + 1
         return self._change(claim, _from(Move.GIVE_BACK), values)
@@ -122,14 +122,25 @@ class SqlDispatchRepository:
         *,
         now: datetime,
         lease_seconds: float,
+        progress: Mapping[Token, Progress],
     ) -> frozenset[Token]:
-        """Renew the leases of ``tokens``; return those that still hold a run."""
+        """Renew the leases of ``tokens``; return those that still hold a run.
+
+        How far they are goes along: a statement of its own would be one more write to the disk.
+        """
         if not tokens:
             return frozenset()
+        values: _Values = {"lease_until": now + timedelta(seconds=lease_seconds)}
+        if progress:
+            values["progress"] = case(
+                {token: progress_text(told) for token, told in progress.items()},
+                value=RunDispatchRow.token,
+                else_=RunDispatchRow.progress,
+            )
         statement = (
             update(RunDispatchRow)
             .where(RunDispatchRow.token.in_(tokens), _from(Move.RENEW))
-            .values(lease_until=now + timedelta(seconds=lease_seconds))
+            .values(**values)
             .returning(RunDispatchRow.token)
             .execution_options(synchronize_session=False)
         )
@@ -171,17 +182,7 @@ class SqlDispatchRepository:
         )
         if expired_only:
             statement = statement.where(RunDispatchRow.lease_until < now)
-        return [
-            Claim(
-                run_id=RunId(row.run),
-                tenant=row.tenant,
-                token=Token(str(row.token)),
-                attempt=row.attempt,
-                deadline_at=row.deadline_at,
-                seconds_left=(row.deadline_at - now).total_seconds(),
-            )
-            for row in self._session.scalars(statement)
-        ]
+        return [_claim(row, now) for row in self._session.scalars(statement)]
 
     def _change(self, claim: Claim, allowed: ColumnElement[bool], values: _Values) -> bool:
         statement = (
@@ -197,6 +198,31 @@ class SqlDispatchRepository:
             .execution_options(synchronize_session=False)
         )
         return self._session.execute(statement).one_or_none() is not None
+
+
+_CLAIMED: Final = (
+    RunDispatchRow.run,
+    RunDispatchRow.tenant,
+    RunDispatchRow.token,
+    RunDispatchRow.attempt,
+    RunDispatchRow.crashes,
+    RunDispatchRow.deadline_at,
+    RunDispatchRow.likeness,
+    RunDispatchRow.memory_bytes,
+)
+
+
+def _claim(row: Any, now: datetime) -> Claim:  # noqa: ANN401 - a whole row, or the columns above
+    return Claim(
+        run_id=RunId(row.run),
+        tenant=row.tenant,
+        token=Token(str(row.token)),
+        attempt=row.attempt,
+        crashes=row.crashes,
+        deadline_at=row.deadline_at,
+        seconds_left=(row.deadline_at - now).total_seconds(),
+        needs=Needs(likeness=row.likeness, memory_bytes=row.memory_bytes),
+    )
 
 
 def _from(move: Move) -> ColumnElement[bool]:

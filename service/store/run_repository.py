@@ -7,7 +7,18 @@ from sqlalchemy import func, select
 from sqlalchemy.orm import Session
 
 from service.runs.faults import RunUnknown
-from service.runs.run import Ending, FailureReason, Run, RunId, RunState, Submission
+from service.runs.run import (
+    CHECKED,
+    STORED,
+    Ending,
+    FailureReason,
+    Needs,
+    Progress,
+    Run,
+    RunId,
+    RunState,
+    Submission,
+)
 from service.store.tables import RunDispatchRow, RunEndingRow, RunRow
 
 
@@ -18,7 +29,7 @@ class SqlRunRepository:
         """Work inside the caller's transaction; never commit here."""
         self._session = session
 
-    def add(self, submission: Submission) -> None:
+    def add(self, submission: Submission, needs: Needs) -> None:
         """Insert a run and its dispatch row; flush so that a duplicate fails here."""
         self._session.add(
             RunRow(
@@ -49,6 +60,8 @@ class SqlRunRepository:
                 attempt=0,
                 crashes=0,
                 deadline_at=submission.deadline_at,
+                likeness=needs.likeness,
+                memory_bytes=needs.memory_bytes,
             ),
         )
         self._session.flush()
@@ -170,4 +183,33 @@ def _run(submitted: RunRow, dispatch: RunDispatchRow, ended: RunEndingRow | None
         certificate_digest=None if ending is None else ending.certificate_digest,
         counts=orjson.loads(submitted.counts),
         submitted_by=submitted.submitted_by,
+        progress=_progress(submitted, dispatch),
     )
+
+
+def _progress(submitted: RunRow, dispatch: RunDispatchRow) -> Progress:
+    """Return how far the run is; nothing was told of one that waits, or that is an old one."""
+    if dispatch.progress is not None:
+        return progress_of(dispatch.progress)
+    planned = dispatch.state in {RunState.PLANNED, RunState.NO_PLAN}
+    return Progress(
+        phase=STORED if planned else CHECKED,
+        counts=orjson.loads(submitted.counts),
+        seconds=0.0,
+    )
+
+
+def progress_of(text: str) -> Progress:
+    """Read what ``progress_text`` wrote."""
+    document = orjson.loads(text)
+    return Progress(phase=document["phase"], counts=document["counts"], seconds=document["seconds"])
+
+
+def progress_text(progress: Progress) -> str:
+    """Return progress as it is kept in the dispatch row."""
+    document = {
+        "phase": progress.phase,
+        "counts": dict(progress.counts),
+        "seconds": progress.seconds,
+    }
+    return orjson.dumps(document).decode()

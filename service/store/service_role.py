@@ -11,7 +11,7 @@ from typing import Final
 
 from sqlalchemy import create_mock_engine
 
-from service.store.tables import DISPATCH_TABLE, FACT_TABLES, RunDispatchRow
+from service.store.tables import CACHE_TABLE, DISPATCH_TABLE, FACT_TABLES, RunDispatchRow
 
 # What a run is called by never changes, nor does its deadline.
 _FIXED: Final = frozenset({"tenant", "run", "deadline_at"})
@@ -21,8 +21,8 @@ def service_role_sql(role: str) -> list[str]:
     """Return the statements that give ``role`` its rights; run them as the owner of the tables.
 
     The role must exist (``CREATE ROLE ... LOGIN``). Facts are read and appended, the dispatch row
-    is also updated in the columns that move; nothing is deleted, truncated or created. After a
-    migration the statements are to be run again.
+    is also updated in the columns that move; nothing but a cache is deleted, nothing truncated or
+    created. After a migration the statements are to be run again.
     """
     name = _quoted(role)
     moving = ", ".join(
@@ -33,6 +33,7 @@ def service_role_sql(role: str) -> list[str]:
         f"REVOKE ALL ON ALL TABLES IN SCHEMA public FROM {name}",
         f"GRANT SELECT, INSERT ON {', '.join((*FACT_TABLES, DISPATCH_TABLE))} TO {name}",
         f"GRANT UPDATE ({moving}) ON {DISPATCH_TABLE} TO {name}",
+        f"GRANT SELECT, INSERT, DELETE ON {CACHE_TABLE} TO {name}",
         f"GRANT SELECT ON alembic_version TO {name}",
     ]
 

@@ -6,20 +6,27 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
-from typing import BinaryIO
+from typing import BinaryIO, Final
 
+import structlog
 from sqlalchemy import Engine
+from sqlalchemy.exc import SQLAlchemyError
 from sqlalchemy.orm import Session
 
 from service.runs.faults import BlobBroken, StoreUnavailable
 from service.runs.ports import Clock
-from service.runs.run import Staged
+from service.runs.run import RunId, Staged
 from service.store.blob_repository import PART_BYTES, SqlBlobRepository, pack
 from service.store.database import READ_ONLY, Database
 from service.store.migrate import pending_in
 from service.store.reaching import reaching
 from service.store.transaction import SqlTransaction
 from service.store.triggers import trigger_faults
+from service.store.warm_start_repository import SqlWarmStartRepository
+
+WARM_START_BYTES_MAX_DEFAULT: Final = 256 * 2**20
+
+_log = structlog.get_logger(__name__)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -34,10 +41,20 @@ class SystemClock:
 class SqlStore:
     """Everything that is kept, in one database."""
 
-    def __init__(self, database: Database, clock: Clock) -> None:
-        """Keep everything in ``database``; the caller closes it."""
+    def __init__(
+        self,
+        database: Database,
+        clock: Clock,
+        *,
+        warm_start_bytes_max: int = WARM_START_BYTES_MAX_DEFAULT,
+    ) -> None:
+        """Keep everything in ``database``; the caller closes it.
+
+        Of warm starts at most ``warm_start_bytes_max`` are kept for each tenant, 0 for none.
+        """
         self._database = database
         self._clock = clock
+        self._warm_start_bytes_max = warm_start_bytes_max
         options: dict[str, object] = {READ_ONLY: True}
         if not database.is_sqlite:
             # One snapshot for the whole reading, as SQLite gives by itself.
@@ -99,6 +116,27 @@ class SqlStore:
         if "sha-256:" + running.hexdigest() != digest:
             raise BlobBroken(f"blob {digest} has other content")
 
+    def warm_start(self, tenant: str, *, network_digest: str, likeness: str | None) -> bytes | None:
+        """Return what a run of this network, or like it, may start from; None if nothing."""
+        try:
+            with self._session(self._reader) as session:
+                return SqlWarmStartRepository(session).newest(
+                    tenant, network_digest=network_digest, likeness=likeness
+                )
+        except (StoreUnavailable, SQLAlchemyError) as error:
+            _log.warning("warm_start_not_read", error=_name_of(error))
+            return None
+
+    def keep_warm_start(self, run_id: RunId, tenant: str, content: bytes) -> None:
+        """Keep what a run found out, if it can be kept."""
+        try:
+            with self._writing() as session:
+                SqlWarmStartRepository(session).keep(
+                    run_id, tenant, content, bytes_max=self._warm_start_bytes_max
+                )
+        except (StoreUnavailable, SQLAlchemyError) as error:
+            _log.warning("warm_start_not_kept", run_id=run_id, error=_name_of(error))
+
     def missing(self) -> list[str]:
         """Return what keeps the store from working, in words; empty means ready."""
         try:
@@ -148,6 +186,11 @@ class SqlStore:
             session.begin(),
         ):
             yield session
+
+
+def _name_of(error: Exception) -> str:
+    """Return what happened without the statement and its values, which belong in no log."""
+    return type(getattr(error, "orig", None) or error).__name__
 
 
 def _pieces(file: BinaryIO) -> Iterator[bytes]:

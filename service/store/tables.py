@@ -1,6 +1,7 @@
-"""The tables. All but one hold facts, which are written once and never changed or removed.
+"""The tables. All but two hold facts, which are written once and never changed or removed.
 
-``run_dispatch`` is the exception: where a run stands right now. Every key begins with the tenant.
+``run_dispatch`` says where a run stands right now; ``warm_start`` is a cache, which may be emptied
+at any moment. Every key begins with the tenant.
 No CHECK lists values that a later release may add to: SQLite could only widen it by rebuilding the
 table, and a fact table is never rebuilt.
 """
@@ -157,7 +158,8 @@ class RunDispatchRow(Base):
 
     ``attempt`` counts claims and only fences; ``crashes`` counts children that died by themselves
     and leases that ran out. ``token`` names the holder, ``finished_token`` the one that finished,
-    so that a finish whose answer was lost can be repeated.
+    so that a finish whose answer was lost can be repeated. ``progress`` is JSON; ``likeness`` and
+    ``memory_bytes`` were found out when the run was submitted and serve only to plan it.
     """
 
     __tablename__ = "run_dispatch"
@@ -188,6 +190,29 @@ class RunDispatchRow(Base):
     lease_until: Mapped[datetime | None]
     deadline_at: Mapped[datetime]
     started_at: Mapped[datetime | None]
+    progress: Mapped[str | None]
+    likeness: Mapped[str | None]
+    memory_bytes: Mapped[int | None] = mapped_column(BigInteger)
+
+
+class WarmStartRow(Base):
+    """What a planned run leaves for the next one like it to start from: a cache, never a fact."""
+
+    __tablename__ = "warm_start"
+    __table_args__ = (
+        PrimaryKeyConstraint("tenant", "run"),
+        ForeignKeyConstraint(["tenant", "run"], ["run.tenant", "run.id"]),
+        Index(None, "tenant", "network_digest", "run"),
+        Index(None, "tenant", "likeness", "run"),
+    )
+
+    tenant: Mapped[str]
+    run: Mapped[str]
+    network_digest: Mapped[str]
+    likeness: Mapped[str | None]
+    digest: Mapped[str]
+    packed_bytes: Mapped[int]
+    packed: Mapped[bytes] = mapped_column("bytes", LargeBinary)
 
 
 class EventRow(Base):
@@ -287,4 +312,5 @@ class OrderLineRow(Base):
 
 
 DISPATCH_TABLE: Final = RunDispatchRow.__tablename__
-FACT_TABLES: Final = tuple(sorted(set(Base.metadata.tables) - {DISPATCH_TABLE}))
+CACHE_TABLE: Final = WarmStartRow.__tablename__
+FACT_TABLES: Final = tuple(sorted(set(Base.metadata.tables) - {DISPATCH_TABLE, CACHE_TABLE}))

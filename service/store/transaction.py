@@ -15,6 +15,8 @@ from service.runs.run import (
     Ending,
     Finish,
     IndexRows,
+    Needs,
+    Progress,
     Run,
     RunId,
     Staged,
@@ -77,9 +79,9 @@ class SqlTransaction:
                 packed=staged.part,
             )
 
-    def add_run(self, submission: Submission) -> None:
+    def add_run(self, submission: Submission, needs: Needs) -> None:
         """Insert a waiting run."""
-        self._runs.add(submission)
+        self._runs.add(submission, needs)
 
     def run(self, run_id: RunId, tenant: str) -> Run:
         """Return the run as it stands."""
@@ -106,10 +108,17 @@ class SqlTransaction:
             crashes_max=crashes_max,
         )
 
-    def finish(self, claim: Claim, ending: Ending, *, crashed: bool = False) -> Finish:
+    def finish(
+        self,
+        claim: Claim,
+        ending: Ending,
+        *,
+        crashed: bool = False,
+        progress: Progress | None = None,
+    ) -> Finish:
         """Make the run final, if ``claim`` still holds it."""
         assert ending.state in FINAL, ending.state  # noqa: S101 - our mistake, never a client's
-        finish = self._dispatch.finish(claim, ending.state, crashed=crashed)
+        finish = self._dispatch.finish(claim, ending.state, crashed=crashed, progress=progress)
         if finish is Finish.STORED:
             self._runs.add_ending(claim.run_id, claim.tenant, ending)
         return finish
@@ -127,9 +136,17 @@ class SqlTransaction:
         self._runs.add_ending(run_id, tenant, ending)
         return True
 
-    def renew(self, tokens: Collection[Token], *, lease_seconds: float) -> frozenset[Token]:
+    def renew(
+        self,
+        tokens: Collection[Token],
+        *,
+        lease_seconds: float,
+        progress: Mapping[Token, Progress],
+    ) -> frozenset[Token]:
         """Renew leases; return the tokens that still hold a run."""
-        return self._dispatch.renew(tokens, now=self.now, lease_seconds=lease_seconds)
+        return self._dispatch.renew(
+            tokens, now=self.now, lease_seconds=lease_seconds, progress=progress
+        )
 
     def waiting(self, *, limit: int) -> Sequence[RunId]:
         """Return runs that wait and may still be planned, oldest first."""

@@ -36,6 +36,14 @@ def misbehave(task: Task, progress: Progress) -> Mapping[str, object]:  # noqa: 
         case "echo":
             progress("echoing", {"length": len(task["text"])})
             return {"text": task["text"], "pid": os.getpid()}
+        case "rounds":
+            progress("read", {"lanes": 8})
+            for number in range(1, task["count"] + 1):
+                progress("round", {"round": number})
+            progress("solved", {})
+            for number in range(1, task["count"] + 1):
+                progress("round", {"round": number})
+            return {"done": True}
         case "environment":
             return {
                 "environment": dict(os.environ),
@@ -96,7 +104,7 @@ def _plan() -> Work:
     def work(task: Task, progress: Progress) -> Mapping[str, object]:
         target = Path(task["target"])
         label = task["options"]["label"] or ""
-        progress("read", {})
+        progress("read", {"lanes": 8})
         first_time = not (marks := Path(task["source"]).parents[1] / "marks").exists()
         marks.mkdir(exist_ok=True)
         if label.startswith("{") and (first_time or "once" not in label):

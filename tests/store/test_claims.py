@@ -173,8 +173,8 @@ def test_renewed_lease_holds_and_a_lost_one_is_told(
     stranger = new_token()
 
     with store.transaction() as transaction:
-        held = transaction.renew([claim.token, stranger], lease_seconds=30)
-        nothing = transaction.renew([], lease_seconds=30)
+        held = transaction.renew([claim.token, stranger], lease_seconds=30, progress={})
+        nothing = transaction.renew([], lease_seconds=30, progress={})
     pass_time(0.5)
 
     assert (held, nothing) == (frozenset({claim.token}), frozenset())

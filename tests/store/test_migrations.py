@@ -18,7 +18,7 @@ from service.store.migrate import (
     migrations_folder,
 )
 from service.store.sql_store import SqlStore
-from service.store.tables import DISPATCH_TABLE, FACT_TABLES, Base
+from service.store.tables import CACHE_TABLE, DISPATCH_TABLE, FACT_TABLES, Base
 from service.store.trigger_texts import postgresql_triggers, sqlite_triggers
 from tests.databases import FakeClock, Opened
 from tests.servers import free_port
@@ -83,8 +83,8 @@ def test_migrating_twice_applies_everything_once(empty_url: str, opened: Opened)
     first = migrate(empty_url)
     second = migrate(empty_url)
 
-    assert first == ["0001"]
-    assert missing_before == ["migrations 0001: run lanewright migrate"]
+    assert first == ["0001", "0002"]
+    assert missing_before == ["migrations 0001, 0002: run lanewright migrate"]
     assert (second, store.missing()) == ([], [])
 
 
@@ -106,7 +106,7 @@ def test_tables_are_those_of_the_models_and_go_again(empty_url: str, opened: Ope
     gone = tables(database)
     migrate_database(database)
 
-    assert there == {*FACT_TABLES, DISPATCH_TABLE}
+    assert there == {*FACT_TABLES, DISPATCH_TABLE, CACHE_TABLE}
     assert gone == set()
     assert tables(database) == there
     assert SqlStore(database, FakeClock()).missing() == []

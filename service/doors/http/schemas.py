@@ -35,6 +35,24 @@ class CountsOut(BaseModel):
     lanes: int = Field(ge=0)
 
 
+class ProgressOut(BaseModel):
+    """How far a run has come."""
+
+    model_config = _WIRE
+
+    phase: str = Field(
+        description="The last thing that was done: checked, then read, compiled, round (once for "
+        "each round of pricing all lanes), solved, written, proved, stored. Clients must expect "
+        "further phases.",
+        examples=["round"],
+    )
+    counts: dict[str, int] = Field(
+        description="How many of what were met so far, such as lanes, order_lines, items, round. "
+        "Clients must expect further names."
+    )
+    seconds: float = Field(ge=0, description="How long planning had taken by then.")
+
+
 class LinksOut(BaseModel):
     """Paths of what exists of the run in its present state."""
 
@@ -76,6 +94,7 @@ class RunOut(BaseModel):
     plan_digest: Digest | None
     certificate_digest: Digest | None
     counts: CountsOut
+    progress: ProgressOut
     submitted_by: str
     links: LinksOut
 
@@ -108,6 +127,11 @@ class RunOut(BaseModel):
             plan_digest=run.plan_digest,
             certificate_digest=run.certificate_digest,
             counts=CountsOut.model_validate(dict(run.counts)),
+            progress=ProgressOut(
+                phase=run.progress.phase,
+                counts=dict(run.progress.counts),
+                seconds=run.progress.seconds,
+            ),
             submitted_by=run.submitted_by,
             links=LinksOut(
                 self=here,

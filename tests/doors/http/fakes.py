@@ -16,11 +16,12 @@ from fastapi.testclient import TestClient
 from service.doors.http.app import create_app
 from service.doors.http.server import http_server, listen
 from service.network.faults import Fault, Status
+from service.network.files.media_types import NETWORK_TYPES
 from service.network.intake import IntakeReport
 from service.network.options import Options
 from service.runs.faults import ArtefactMissing, RunUnknown
 from service.runs.ports import Application
-from service.runs.run import LOCAL, Actor, Run, RunId, RunState
+from service.runs.run import LOCAL, Actor, Progress, Run, RunId, RunState
 from service.settings import Settings
 
 RUN_ID = RunId("run_01k8ovqf06vmkn95vj8ol7plvq")
@@ -69,6 +70,7 @@ def a_run(**differences: object) -> Run:
         certificate_digest=digest(b"certificate"),
         counts={"items": 1, "sites": 2, "supply_rows": 1, "demand_rows": 1, "lanes": 1},
         submitted_by="local",
+        progress=Progress(phase="stored", counts={"lanes": 1, "order_lines": 1}, seconds=0.25),
     )
     return replace(run, **differences)  # type: ignore[arg-type] # each test names its own fields
 
@@ -84,6 +86,7 @@ class FakeHouse:
     error: Exception | None = None
     missing: list[str] = field(default_factory=list)
     plan: bytes = orjson.dumps(PLAN)
+    received: bytes = b'{"format": 1}'
     intake_pause: threading.Event | None = None
     bodies: list[bytes] = field(default_factory=list)
     encodings: list[str | None] = field(default_factory=list)
@@ -100,7 +103,7 @@ class FakeHouse:
         content_encoding: str | None,
     ) -> IntakeReport:
         """Remember the body; report what the test wants."""
-        assert media_type == "application/json"
+        assert media_type in NETWORK_TYPES
         assert spool.parent == folder
         if self.intake_pause is not None:
             self.intake_pause.wait(20)
@@ -149,7 +152,7 @@ class FakeHouse:
     def network_bytes(self, run_id: RunId, tenant: str, *, form: str = "normal") -> bytes:
         """Return the network in a form."""
         self.read_run(run_id, tenant)
-        return b"PK zip" if form == "normal" else b'{"format": 1}'
+        return b"PK zip" if form == "normal" else self.received
 
     def history(self, run_id: RunId, tenant: str) -> list[dict[str, object]]:
         """Return one event."""
