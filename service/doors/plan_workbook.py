@@ -6,8 +6,10 @@ never formulas, whatever they begin with. The same plan gives the same bytes.
 """
 
 import datetime as dt
+import errno
 import re
 from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
@@ -26,7 +28,7 @@ DIGITS_EXACT: Final = 15
 _PLAIN: Final = re.compile(r"-?[0-9]+(?:\.[0-9]+)?")
 # No moment of writing in the file: it would make two of the same plan differ.
 _CREATED: Final = dt.datetime(1980, 1, 1)  # noqa: DTZ001 - the library wants it without a zone
-OPTIONS: Final = {
+_OPTIONS: Final = {
     "constant_memory": True,
     "strings_to_formulas": False,
     "strings_to_numbers": False,
@@ -49,9 +51,7 @@ _SUMMARY: Final = (
 
 def write_workbook(plan: Mapping[str, Any], path: Path) -> None:
     """Write ``plan`` as a workbook to ``path``; a long table goes on in further sheets."""
-    from xlsxwriter.workbook import Workbook  # noqa: PLC0415 - loads when a workbook is written
-
-    with Workbook(path, {**OPTIONS, "tmpdir": str(path.parent)}) as workbook:
+    with opened_workbook(path) as workbook:
         workbook.set_properties({"title": plan.get("name") or "Plan", "created": _CREATED})
         formats = formats_of(workbook)
         summary = workbook.add_worksheet("summary")
@@ -62,6 +62,20 @@ def write_workbook(plan: Mapping[str, Any], path: Path) -> None:
             put_row(summary, number, (name, value), (), formats)
         for table in ("totals", *(name for name in COLUMNS if name != "totals")):
             _write_table(workbook, table, table_rows(plan, table), formats)
+
+
+@contextmanager
+def opened_workbook(path: Path) -> Iterator["Workbook"]:
+    """Write a workbook to ``path`` in the block; raise ``OSError`` where that cannot be."""
+    from xlsxwriter.exceptions import XlsxFileError  # noqa: PLC0415 - see below
+    from xlsxwriter.workbook import Workbook  # noqa: PLC0415 - loads when a workbook is written
+
+    options = {**_OPTIONS, "tmpdir": str(path.parent)}
+    try:
+        with path.open("wb") as file, Workbook(file, options) as workbook:
+            yield workbook
+    except XlsxFileError as error:
+        raise OSError(errno.EIO, str(error)) from error
 
 
 def _summary(plan: Mapping[str, Any]) -> Iterator[tuple[str, Any]]:

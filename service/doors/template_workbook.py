@@ -9,7 +9,7 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
-from service.doors.plan_workbook import OPTIONS, formats_of, put_row
+from service.doors.plan_workbook import formats_of, opened_workbook, put_row
 from service.network.files.flat_tables import flat_tables
 from service.network.files.table_columns import (
     FAMILIES,
@@ -78,9 +78,7 @@ EXAMPLE: Final[Mapping[str, Any]] = {
 
 def write_template(path: Path) -> None:
     """Write the workbook to ``path``; it is a network that is accepted as it stands."""
-    from xlsxwriter.workbook import Workbook  # noqa: PLC0415 - loads when a workbook is written
-
-    with Workbook(path, {**OPTIONS, "tmpdir": str(path.parent)}) as workbook:
+    with opened_workbook(path) as workbook:
         workbook.set_properties({"title": "Network", "created": _CREATED})
         formats = formats_of(workbook)
         _write_notes(workbook, formats)

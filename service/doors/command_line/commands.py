@@ -12,6 +12,7 @@ from service.doors.command_line.check import check
 from service.doors.command_line.demo import demo
 from service.doors.command_line.ending import EndingError, Exit, put_json, put_lines, tell
 from service.doors.command_line.solve import solve
+from service.doors.command_line.template import template
 from service.doors.command_line.verify import verify
 
 lanewright = typer.Typer(
@@ -41,10 +42,12 @@ def options(
     """Decide which warehouse ships how much of what, over which lane, to which ship-to."""
 
 
-lanewright.command(epilog="Example: lanewright solve network.json --csv plan_lines > plan.csv")(
-    solve
-)
+lanewright.command(
+    epilog="Example: lanewright solve network.json --csv plan_lines > plan.csv; "
+    "lanewright solve network.xlsx --xlsx plan.xlsx"
+)(solve)
 lanewright.command(epilog="Example: lanewright check network.json --json")(check)
+lanewright.command(epilog="Example: lanewright template network.xlsx")(template)
 lanewright.command(epilog="Example: lanewright verify evidence.zip")(verify)
 lanewright.command(epilog="Example: lanewright demo")(demo)
 lanewright.command(epilog="Example: LANEWRIGHT_DATA=/srv/lanewright lanewright serve --port 8080")(

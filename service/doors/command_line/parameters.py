@@ -25,7 +25,11 @@ def _later(name: str) -> object:
 
 
 File = Annotated[
-    str, typer.Argument(metavar="FILE", help="The network; - reads it from standard input.")
+    str,
+    typer.Argument(
+        metavar="FILE",
+        help="The network: JSON, a zip or folder of tables, a workbook; - reads standard input.",
+    ),
 ]
 Shortages = Annotated[
     str | None,

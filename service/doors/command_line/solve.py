@@ -13,6 +13,7 @@ from service.doors.command_line.backing import Backing
 from service.doors.command_line.check import accepted
 from service.doors.command_line.ending import EndingError, Exit, put, put_lines, tell
 from service.doors.command_line.layout import count_of
+from service.doors.command_line.plan_files import Parquet, Xlsx, write_files
 from service.doors.command_line.progress import progress_bar
 from service.doors.command_line.summary import summary_lines
 from service.doors.plan_tables import COLUMNS, table_csv
@@ -38,6 +39,8 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
     *,
     as_json: parameters.AsJson = False,
     csv: Csv = None,
+    xlsx: Xlsx = None,
+    parquet: Parquet = None,
     evidence: Evidence = None,
     require_complete: RequireComplete = False,
     shortages: parameters.Shortages = None,
@@ -90,6 +93,7 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
         if evidence is not None:
             _write_evidence(evidence, folder, options)
     plan: dict[str, Any] = orjson.loads(plan_bytes)
+    write_files(plan, xlsx=xlsx, parquet=parquet)
     if as_json:
         put(plan_bytes + b"\n")
     elif csv is not None:

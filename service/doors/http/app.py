@@ -9,7 +9,7 @@ from service.doors.http import documentation, problems
 from service.doors.http.dependencies import Door
 from service.doors.http.openapi import describe, examples_folder, read_examples
 from service.doors.http.request_scope import HeadRequests, RequestScope
-from service.doors.http.routes import artefacts, health, runs
+from service.doors.http.routes import artefacts, health, runs, template
 from service.doors.http.security import LocalDoor
 from service.doors.http.spool import Spool
 from service.network.schema import network_schema
@@ -54,6 +54,7 @@ def described_app() -> FastAPI:
     app.include_router(health.router)
     app.include_router(runs.router)
     app.include_router(artefacts.router)
+    app.include_router(template.router)
     documentation.install(app)
     problems.install(app)
 

@@ -15,6 +15,7 @@ from fastapi.openapi.utils import get_openapi
 
 import service
 from service.doors.http.schemas import ProblemOut
+from service.network.files.media_types import JSON, XLSX, ZIP
 from service.network.schema import network_schema
 
 DESCRIPTION: Final = """\
@@ -29,6 +30,17 @@ which ship-to, at least landed cost and least shortage by priority, and proves e
 * Answers carry `X-Request-ID`. Unknown members of answers must be ignored by clients; unknown
   members, parameters and options of requests are refused.
 * There are no keys yet: the service listens on the loopback interface only.
+"""
+NETWORK_FORMS: Final = """\
+The network, plain, or packed as a whole with gzip (RFC 1952) or zstd (RFC 8878) and the header
+Content-Encoding saying so. As JSON in UTF-8; as a zip with one file for each table, `TABLE.csv`,
+`TABLE.parquet` or `TABLE.arrow` (each may end in `.gz` or `.zst`), beside which `network.json` may
+hold the parts that have no file; or as a workbook with one sheet for each table. `GET
+/v1/template.xlsx` is such a workbook, with notes on every column.
+
+Columns are called like fields: `keep.quantity` is a field inside a field, `extra.NAME` a pair,
+`handling_cost.ITEM` a cost by item, and a cell with several texts has `|` between them. A fault in
+a file has its place as `lanes.csv!row 17,unit_cost`, where the header is row 1.
 """
 TAGS: Final = [
     {"name": "runs", "description": "Networks that are planned, and what became of them."},
@@ -86,9 +98,13 @@ def describe(app: FastAPI, examples: Mapping[str, Any]) -> dict[str, Any]:
         "required": True,
         # In words and not as a header parameter, since the header must fit the bytes: a tool that
         # fills in parameters would announce a packing that it does not do.
-        "description": "The network definition in UTF-8, plain, or packed as a whole with gzip "
-        "(RFC 1952) or zstd (RFC 8878) and the header Content-Encoding saying so.",
-        "content": {"application/json": {"schema": {"$ref": "#/components/schemas/Network"}}},
+        "description": NETWORK_FORMS,
+        "content": {
+            JSON: {"schema": {"$ref": "#/components/schemas/Network"}},
+            # OpenAPI 3.1 describes bytes by their media type alone.
+            ZIP: {"schema": {}},
+            XLSX: {"schema": {}},
+        },
     }
     _place_examples(operations, examples)
     return document

@@ -113,7 +113,7 @@ UNSUPPORTED_MEDIA_TYPE: Final = ProblemKind(
     status=415,
     title="The body is in a form that is not read here",
     meaning="Content-Type is missing or is not one that the service reads.",
-    remedy="Send the network as application/json, in UTF-8.",
+    remedy="Send the network as JSON in UTF-8, as a zip of tables, or as an XLSX workbook.",
 )
 UNSUPPORTED_ENCODING: Final = ProblemKind(
     slug="unsupported-encoding",

@@ -1,13 +1,15 @@
-"""A table of a plan as CSV, made where it stops nobody.
+"""A plan in the forms that take long to write, made where it stops nobody.
 
-A million plan lines are seconds of Python. Beyond a small plan the work is done by a process of its
-own, which knows nothing but two paths and a name, and is ended when it takes too long.
+A million plan lines are seconds of Python. Beyond a small table as CSV the work is done by a
+process of its own, which knows nothing but paths and names, and is ended when it takes too long;
+the libraries for workbooks and Parquet are loaded nowhere else.
 """
 
 import subprocess
 import sys
+from collections.abc import Callable, Mapping
 from pathlib import Path
-from typing import Final
+from typing import Any, Final
 
 import orjson
 import structlog
@@ -24,16 +26,33 @@ SECONDS_MAX: Final = 120.0
 # Where Python finds this package, and no secret of the service.
 _ENVIRONMENT: Final = {"PYTHONPATH": str(Path(service.__path__[0]).parent), "PYTHONUTF8": "1"}
 
+Plan = Mapping[str, Any]
 
-async def write_table(plan: bytes, table: str, folder: Path) -> Path:
-    """Write ``table`` of the plan document ``plan`` as CSV into ``folder``; return the file."""
-    target = folder / f"{table}.csv"
-    if len(plan) <= THREAD_BYTES_MAX:
+
+async def write_table(plan: bytes, form: str, table: str, folder: Path) -> Path:
+    """Write ``table`` of the plan document ``plan`` as ``csv`` or ``parquet``; return the file."""
+    target = folder / f"{table}.{form}"
+    if form == "csv" and len(plan) <= THREAD_BYTES_MAX:
         await run_sync(lambda: target.write_bytes(table_csv(orjson.loads(plan), table)))
         return target
-    source = folder / "plan.json"
+    return await _written(plan, form, table, folder)
+
+
+async def write_whole(plan: bytes, folder: Path) -> Path:
+    """Write the plan document ``plan`` as a workbook into ``folder``; return the file."""
+    return await _written(plan, "xlsx", "plan", folder)
+
+
+async def write_template(folder: Path) -> Path:
+    """Write the workbook to start from into ``folder``; return the file."""
+    return await _written(b"{}", "template", "network", folder)
+
+
+async def _written(plan: bytes, form: str, table: str, folder: Path) -> Path:
+    """Have a process write a file."""
+    source, target = folder / "plan.json", folder / f"{table}.{form}"
     await run_sync(source.write_bytes, plan)
-    command = [sys.executable, "-m", __name__, str(source), table, str(target)]
+    command = [sys.executable, "-m", __name__, str(source), form, table, str(target)]
     try:
         with fail_after(SECONDS_MAX):
             ended = await run_process(
@@ -47,10 +66,46 @@ async def write_table(plan: bytes, table: str, folder: Path) -> Path:
     return target
 
 
+def _csv(plan: Plan, table: str, target: Path) -> None:
+    """Write one table as CSV."""
+    target.write_bytes(table_csv(plan, table))
+
+
+def _parquet(plan: Plan, table: str, target: Path) -> None:
+    """Write one table as Parquet."""
+    from service.doors.plan_parquet import write_parquet  # noqa: PLC0415 - one form a process
+
+    write_parquet(plan, table, target)
+
+
+def _xlsx(plan: Plan, _table: str, target: Path) -> None:
+    """Write all tables as a workbook."""
+    from service.doors.plan_workbook import write_workbook  # noqa: PLC0415 - one form a process
+
+    write_workbook(plan, target)
+
+
+def _template(_plan: Plan, _table: str, target: Path) -> None:
+    """Write the workbook to start from."""
+    from service.doors.template_workbook import (  # noqa: PLC0415 - one form a process
+        write_template as write,
+    )
+
+    write(target)
+
+
+_FORMS: Final[Mapping[str, Callable[[Plan, str, Path], None]]] = {
+    "csv": _csv,
+    "parquet": _parquet,
+    "xlsx": _xlsx,
+    "template": _template,
+}
+
+
 def main() -> None:
-    """Write one table: argument 1 is the plan document, 2 the table, 3 the file to write."""
-    source, table, target = sys.argv[1:]
-    Path(target).write_bytes(table_csv(orjson.loads(Path(source).read_bytes()), table))
+    """Write one file: the arguments are the plan document, the form, the table, the file."""
+    source, form, table, target = sys.argv[1:]
+    _FORMS[form](orjson.loads(Path(source).read_bytes()), table, Path(target))
 
 
 if __name__ == "__main__":

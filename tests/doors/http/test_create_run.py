@@ -10,6 +10,7 @@ from fastapi.testclient import TestClient
 
 from service.doors.http.app import BODIES_MAX
 from service.network.faults import Fault, Status
+from service.network.files.media_types import NETWORK_TYPES, TABLE_TYPES
 from service.runs.faults import (
     ChildCrashed,
     ChildMemory,
@@ -76,16 +77,22 @@ def test_nothing_is_left_of_a_body(client: TestClient, house: FakeHouse, tmp_pat
         ("Application/JSON; charset=UTF-8", 202),
         ('application/json; charset="utf-8"', 202),
         ("application/json; charset=latin-1", 415),
+        ("application/zip", 202),
+        ("application/vnd.openxmlformats-officedocument.spreadsheetml.sheet", 202),
+        ("application/zip; charset=utf-8", 415),
+        # One table alone is no network.
+        ("text/csv", 415),
+        ("application/vnd.apache.parquet", 415),
         ("text/plain", 415),
         ("application/x-www-form-urlencoded", 415),
         ("", 415),
         (None, 415),
     ],
 )
-def test_only_json_in_utf_8_is_read(
+def test_only_forms_of_a_whole_network_are_read(
     client: TestClient, media_type: str | None, status: int
 ) -> None:
-    """What a browser can send without asking first is refused, too: it is never JSON."""
+    """What a browser can send without asking first is refused, too: it is none of them."""
     headers = {} if media_type is None else {"Content-Type": media_type}
 
     answer = client.post("/v1/runs", content=b"{}", headers=headers)
@@ -93,7 +100,8 @@ def test_only_json_in_utf_8_is_read(
     assert answer.status_code == status
     if status == 415:
         assert answer.json()["type"] == "/problems/unsupported-media-type"
-        assert answer.headers["Accept"] == "application/json"
+        assert answer.headers["Accept"] == ", ".join(NETWORK_TYPES)
+        assert ("a file for each table" in answer.json()["detail"]) == (media_type in TABLE_TYPES)
 
 
 @pytest.mark.parametrize(

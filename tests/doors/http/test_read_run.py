@@ -2,13 +2,18 @@
 
 import csv
 import io
+from decimal import Decimal
 from pathlib import Path
 
+import openpyxl
 import orjson
+import pyarrow.parquet as pq
 import pytest
 from fastapi.testclient import TestClient
 
 from service.doors.http import tables
+from service.network.files.media_types import PARQUET, XLSX
+from service.network.files.table_columns import TABLES
 from service.runs.faults import StoreUnavailable
 from service.runs.run import FailureReason, RunState
 from tests.doors.http.fakes import (
@@ -21,6 +26,7 @@ from tests.doors.http.fakes import (
     digest,
     fake_app,
 )
+from tests.files.writing import zipped
 
 HERE = f"/v1/runs/{RUN_ID}"
 ARTEFACTS = ("plan", "certificate", "network", "history", "evidence")
@@ -165,6 +171,55 @@ def test_table_of_a_plan_is_csv(client: TestClient) -> None:
     assert (row["lane"], row["quantity"]) == ("'=L1", "880")
 
 
+def test_plan_is_a_workbook_too(client: TestClient, tmp_path: Path) -> None:
+    """It is made by another process, has a sheet for each table, and the same bytes each time."""
+    answers = [client.get(f"{HERE}/plan", headers={"Accept": XLSX}) for _ in range(2)]
+
+    assert answers[0].headers["Content-Type"] == XLSX
+    disposition = answers[0].headers["Content-Disposition"]
+    assert disposition == 'attachment; filename="2026-02-03-1-plan.xlsx"'
+    assert answers[0].headers["ETag"] == f'"{digest(orjson.dumps(PLAN))};plan.xlsx"'
+    assert answers[0].content == answers[1].content
+    workbook = openpyxl.load_workbook(io.BytesIO(answers[0].content))
+    assert workbook["plan_lines"]["A2"].value == "=L1"
+    assert workbook["plan_lines"]["A2"].data_type == "s"
+    assert list((tmp_path / "spool").iterdir()) == []
+
+
+def test_table_of_a_plan_is_parquet_too(client: TestClient) -> None:
+    """Amounts keep every digit: they are decimals there, not binary fractions."""
+    answer = client.get(f"{HERE}/plan?table=plan_lines", headers={"Accept": PARQUET})
+
+    assert answer.headers["Content-Type"] == PARQUET
+    table = pq.read_table(io.BytesIO(answer.content))
+    assert table.column("lane").to_pylist() == ["=L1"]
+    assert table.column("quantity").to_pylist() == [Decimal(880)]
+
+
+def test_what_was_received_is_answered_in_its_own_form(
+    client: TestClient, house: FakeHouse
+) -> None:
+    """A zip that was sent is no JSON when it is asked for."""
+    house.received = zipped({"lanes.csv": b"origin"})
+
+    whole = client.get(f"{HERE}/network?form=received")
+    other = client.get(f"{HERE}/network?form=received", headers={"Accept": "application/json"})
+
+    assert whole.headers["Content-Type"] == "application/zip"
+    assert whole.content == house.received
+    assert other.status_code == 406
+
+
+def test_template_is_answered(client: TestClient, tmp_path: Path) -> None:
+    """Nobody has to guess what columns are called."""
+    answer = client.get("/v1/template.xlsx")
+
+    assert answer.headers["Content-Type"] == XLSX
+    workbook = openpyxl.load_workbook(io.BytesIO(answer.content))
+    assert workbook.sheetnames == ["notes", *TABLES]
+    assert list((tmp_path / "spool").iterdir()) == []
+
+
 def test_table_of_a_large_plan_is_made_in_another_process(
     client: TestClient, house: FakeHouse, tmp_path: Path
 ) -> None:
@@ -211,6 +266,7 @@ def test_table_that_takes_too_long_is_given_up(
         ("plan", "text/html"),
         ("plan", "application/json;q=0"),
         ("plan?table=plan_lines", "application/json"),
+        ("plan?table=plan_lines", XLSX),
         ("certificate", "text/csv"),
         ("network", "application/json"),
         ("network?form=received", "application/zip"),
@@ -229,9 +285,10 @@ def test_representation_that_does_not_exist_is_not_acceptable(
     assert answer.headers["Vary"] == "Accept"
 
 
-def test_csv_needs_the_name_of_a_table(client: TestClient) -> None:
-    """A plan has five tables; the service does not choose one."""
-    answer = client.get(f"{HERE}/plan", headers={"Accept": "text/csv"})
+@pytest.mark.parametrize("accept", ["text/csv", PARQUET])
+def test_form_of_one_table_needs_its_name(client: TestClient, accept: str) -> None:
+    """A plan has several tables; the service does not choose one."""
+    answer = client.get(f"{HERE}/plan", headers={"Accept": accept})
 
     assert answer.status_code == 422
     assert codes(answer.json()) == [("?table", "missing_parameter")]

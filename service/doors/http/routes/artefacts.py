@@ -30,17 +30,24 @@ from service.doors.http.described import (
 from service.doors.http.problems import Problem
 from service.doors.http.representations import already_held, choose, entity_tag
 from service.doors.http.schemas import PLANNED_STATES, HistoryOut
-from service.doors.http.tables import write_table
+from service.doors.http.tables import write_table, write_whole
 from service.doors.plan_tables import COLUMNS
 from service.network.faults import Fault
+from service.network.files.media_types import (
+    CSV,
+    JSON,
+    PARQUET,
+    XLSX,
+    ZIP,
+    content_type_of,
+)
 from service.runs.faults import ArtefactMissing
 from service.runs.run import Actor, Run, RunId
 
 router = APIRouter(prefix="/v1/runs/{run_id}", tags=["runs"])
 
-JSON: Final = "application/json"
-CSV: Final = "text/csv"
-ZIP: Final = "application/zip"
+# Forms of one table, by what its file name ends in, and of the plan as a whole.
+TABLE_FORMS: Final = {CSV: "csv", PARQUET: "parquet"}
 # What the server hands to the socket at a time, so that a slow reader holds one piece in its
 # buffer and not the whole plan.
 PIECE_BYTES: Final = 256 * 1024
@@ -67,6 +74,8 @@ _SCHEMAS: Final[dict[str, dict[str, object]]] = {
     CSV: {"type": "string"},
     # OpenAPI 3.1 describes bytes by their media type alone.
     ZIP: {},
+    XLSX: {},
+    PARQUET: {},
 }
 
 
@@ -107,7 +116,7 @@ def _not_modified(tag: str) -> Response:
     operation_id="read_plan",
     response_class=Response,
     responses={
-        200: _found(JSON, CSV, description="The plan, or one of its tables."),
+        200: _found(JSON, XLSX, CSV, PARQUET, description="The plan, or one of its tables."),
         304: NOT_MODIFIED,
         **problem_responses(*COMMON_PROBLEMS, kinds.NOT_ACCEPTABLE, kinds.ARTEFACT_MISSING),
     },
@@ -119,7 +128,9 @@ def _not_modified(tag: str) -> Response:
                 "in": "query",
                 "required": False,
                 "description": "The table to answer as CSV (RFC 4180, UTF-8, with a header; a "
-                "text that a spreadsheet would take for a formula has an apostrophe in front).",
+                "text that a spreadsheet would take for a formula has an apostrophe in front) or "
+                "as Parquet (amounts are decimal128(38, 12); a column with one that does not fit "
+                "is text). totals has the rows of each other table and the sums of its columns.",
                 "schema": {"type": "string", "enum": list(COLUMNS)},
                 "example": "plan_lines",
             },
@@ -129,13 +140,16 @@ def _not_modified(tag: str) -> Response:
 async def read_plan(
     request: Request, run_id: RunIdDep, door: DoorDep, actor: ActorDep, values: PlanParametersDep
 ) -> Response:
-    """Answer the plan of a run: as JSON whole, or one table of it as CSV.
+    """Answer the plan of a run: whole as JSON or XLSX, or one table of it as CSV or Parquet.
 
     A run that has no plan answers that, with the reason, as JSON. Quantities are in item units,
-    money in the currency of the network; both are decimal strings and exact.
+    money in the currency of the network; both are exact: decimal strings, and in a workbook
+    numbers of at most 15 digits, else text.
     """
-    media_type = choose(request.headers, [CSV] if "table" in values else [JSON, CSV])
-    if media_type == CSV and "table" not in values:
+    of_tables = list(TABLE_FORMS)
+    offered = of_tables if "table" in values else [JSON, XLSX, *of_tables]
+    media_type = choose(request.headers, offered)
+    if media_type in TABLE_FORMS and "table" not in values:
         missing = Fault(
             pointer="?table",
             code="missing_parameter",
@@ -143,7 +157,8 @@ async def read_plan(
         )
         raise Problem(kinds.INVALID_PARAMETERS, missing.detail, errors=[missing])
     run = await _planned_run(door, run_id, actor, "plan")
-    form = f"{values['table']}.csv" if media_type == CSV else ""
+    ending = TABLE_FORMS.get(media_type, "xlsx")
+    form = f"{values.get('table', 'plan')}.{ending}" if media_type != JSON else ""
     tag = entity_tag(str(run.plan_digest), form=form)
     if already_held(request.headers, tag):
         return _not_modified(tag)
@@ -152,12 +167,16 @@ async def read_plan(
         return _whole(plan, JSON, _tag_headers(tag))
     async with AsyncExitStack() as stack:
         folder = await stack.enter_async_context(door.spool.workspace())
-        path = await write_table(plan, values["table"], folder)
+        if media_type == XLSX:
+            path = await write_whole(plan, folder)
+        else:
+            path = await write_table(plan, ending, values["table"], folder)
         headers = {
             **_tag_headers(tag),
             "Content-Disposition": f'attachment; filename="{_file_name(run.number, form)}"',
         }
-        return _file(path, f"{CSV}; charset=utf-8; header=present", headers, stack.pop_all())
+        parameters = "; charset=utf-8; header=present" if media_type == CSV else ""
+        return _file(path, f"{media_type}{parameters}", headers, stack.pop_all())
 
 
 @router.get(
@@ -190,7 +209,7 @@ async def read_certificate(
     operation_id="read_network",
     response_class=Response,
     responses={
-        200: _found(ZIP, JSON, description="The network, in the form that was asked for."),
+        200: _found(ZIP, JSON, XLSX, description="The network, in the form that was asked for."),
         304: NOT_MODIFIED,
         **problem_responses(*COMMON_PROBLEMS, kinds.NOT_ACCEPTABLE),
     },
@@ -218,8 +237,8 @@ async def read_network(
 ) -> Response:
     """Answer the network that was planned: in normal form, or the body as it was received."""
     form = values.get("form", "normal")
-    media_type = ZIP if form == "normal" else JSON
-    choose(request.headers, [media_type])
+    # What was received is in the form in which it was sent, which its bytes tell.
+    choose(request.headers, [ZIP] if form == "normal" else [JSON, ZIP, XLSX])
     run = await run_sync(partial(door.application.run, run_id, actor.tenant))
     digest = run.network_digest if form == "normal" else run.request_digest
     tag = entity_tag(digest, form=form)
@@ -229,6 +248,8 @@ async def read_network(
         partial(door.application.network_bytes, run_id, actor.tenant, form=form)
     )
     headers = _tag_headers(tag)
+    media_type = ZIP if form == "normal" else content_type_of(content)
+    choose(request.headers, [media_type])
     if form == "normal":
         name = _file_name(run.number, "network.zip")
         headers["Content-Disposition"] = f'attachment; filename="{name}"'

@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator
 from contextlib import contextmanager
+from dataclasses import dataclass
 from functools import partial
 from typing import Annotated, Final
 
@@ -28,11 +29,11 @@ from service.doors.http.run_options import HEADER_PARAMETERS, OPTION_PARAMETERS
 from service.doors.http.schemas import RunOut
 from service.doors.http.spool import Spooled
 from service.network.faults import Fault, Status, value_text
+from service.network.files.media_types import NETWORK_TYPES, accepted_type, refusal_of
 from service.network.options import Options, read_options
 
 router = APIRouter(prefix="/v1/runs", tags=["runs"])
 
-MEDIA_TYPE: Final = "application/json"
 ENCODINGS: Final = ("gzip", "zstd")
 
 REFUSED_AS: Final = {
@@ -41,6 +42,14 @@ REFUSED_AS: Final = {
     Status.INVALID: kinds.INVALID_NETWORK,
     Status.UNSUPPORTED: kinds.UNSUPPORTED_MEDIA_TYPE,
 }
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Form:
+    """In which form a network is sent, and how its bytes are packed as a whole."""
+
+    media_type: str
+    content_encoding: str | None
 
 
 def _options(request: Request) -> Options:
@@ -67,19 +76,15 @@ def _options(request: Request) -> Options:
     return options
 
 
-def _content_encoding(request: Request) -> str | None:
-    """Return how the body is packed, having refused every form that is not read here."""
-    media_type, *parameters = (
-        part.strip().lower() for part in request.headers.get("content-type", "").split(";")
-    )
-    if media_type != MEDIA_TYPE or any(
-        parameter not in {"", "charset=utf-8", 'charset="utf-8"'} for parameter in parameters
-    ):
+def _form(request: Request) -> Form:
+    """Return in which form the body is, having refused every one that is not read here."""
+    sent = request.headers.get("content-type", "")
+    media_type = accepted_type(sent)
+    if media_type is None:
         raise Problem(
             kinds.UNSUPPORTED_MEDIA_TYPE,
-            f"Content-Type must be {MEDIA_TYPE}; it is "
-            f"{value_text(request.headers.get('content-type')) or 'missing'}.",
-            headers={"Accept": MEDIA_TYPE},
+            f"{refusal_of(sent)} Content-Type is {value_text(sent) or 'missing'}.",
+            headers={"Accept": ", ".join(NETWORK_TYPES)},
         )
     fields = request.headers.getlist("content-encoding")
     codings = [part.strip().lower() for field in fields for part in field.split(",")]
@@ -90,11 +95,11 @@ def _content_encoding(request: Request) -> str | None:
             f"Content-Encoding must be one of {', '.join(ENCODINGS)}, or absent.",
             headers={"Accept-Encoding": ", ".join((*ENCODINGS, "identity"))},
         )
-    return packed[0] if packed else None
+    return Form(media_type=media_type, content_encoding=packed[0] if packed else None)
 
 
 OptionsDep = Annotated[Options, Depends(_options)]
-ContentEncodingDep = Annotated[str | None, Depends(_content_encoding)]
+FormDep = Annotated[Form, Depends(_form)]
 
 
 @contextmanager
@@ -113,9 +118,7 @@ def _place(door: Door) -> Iterator[None]:
         door.bodies.pop()
 
 
-async def _check(
-    door: Door, spooled: Spooled, options: Options, content_encoding: str | None
-) -> None:
+async def _check(door: Door, spooled: Spooled, options: Options, form: Form) -> None:
     """Have the body checked in a child; raise its faults as one problem."""
     report = await run_sync(
         partial(
@@ -123,8 +126,8 @@ async def _check(
             spooled.path,
             spooled.folder,
             options=options,
-            media_type=MEDIA_TYPE,
-            content_encoding=content_encoding,
+            media_type=form.media_type,
+            content_encoding=form.content_encoding,
         ),
         # Callers wait here without a thread until a child is free to take them.
         limiter=door.intake_slots,
@@ -179,19 +182,20 @@ async def create_run(  # noqa: PLR0913, PLR0917 - one argument for each thing th
     response: Response,
     door: DoorDep,
     actor: ActorDep,
-    content_encoding: ContentEncodingDep,
+    form: FormDep,
     options: OptionsDep,
 ) -> RunOut:
     """Accept a network and plan it.
 
-    The body is the network alone; how it is planned is said by the query parameters. A network
-    that has no plan is accepted all the same: that is an answer, not a fault. The answer 202 means
-    that the run is on disk and survives a restart; ask at its Location for what became of it.
+    The body is the network alone, as JSON, as a zip of tables or as a workbook; how it is planned
+    is said by the query parameters. A network that has no plan is accepted all the same: that is
+    an answer, not a fault. The answer 202 means that the run is on disk and survives a restart; ask
+    at its Location for what became of it.
     """
     with _place(door):
         async with door.spool.workspace() as folder:
             spooled = await door.spool.receive(request, folder)
-            await _check(door, spooled, options, content_encoding)
+            await _check(door, spooled, options, form)
             run = await run_sync(
                 partial(door.application.submit, folder, options, actor, spooled.wire_digest)
             )
