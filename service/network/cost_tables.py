@@ -8,6 +8,7 @@ import numpy as np
 
 from service.network.columns import BoolArray, IntArray
 from service.network.faults import FaultList, pointer
+from service.network.scanned import Scanned, ScannedGrid, ScannedNumbers, joined_numbers
 from service.network.sheets import ROWS_MAX, Column, Sheet, refuse_field
 
 
@@ -71,7 +72,12 @@ def _joined(field: str, sheets: Sequence[Sheet]) -> Column:
             return sheets[number].row_place(0)
         return part.place(position - int(starts[number]))
 
-    return Column(values=list(chain.from_iterable(values)), take=np.concatenate(takes), place=place)
+    scanned = joined_numbers([None if part is None else part.values for part in parts])
+    return Column(
+        values=list(chain.from_iterable(values)) if scanned is None else scanned,
+        take=np.concatenate(takes),
+        place=place,
+    )
 
 
 def cost_table_sheet(
@@ -127,12 +133,11 @@ def _lanes_only(
     """Return a cost table without the cells that have no cost: there is no lane."""
     cost = grids.get("unit_cost")
     kept: IntArray | None = None
-    if cost is not None and cost.take is None and None in cost.values:
-        has_lane: BoolArray = np.fromiter(
-            (value is not None for value in cost.values), dtype=np.bool_, count=cells
-        )
-        kept = np.flatnonzero(has_lane)
-        _caution_values_without_lane(grids, ~has_lane, faults)
+    if cost is not None and cost.take is None:
+        no_lane = _absent(cost.values)
+        if no_lane.any():
+            kept = np.flatnonzero(~no_lane)
+            _caution_values_without_lane(grids, no_lane, faults)
 
     def row_place(row: int) -> str:
         if cost is None:
@@ -160,17 +165,26 @@ def _caution_values_without_lane(
     grids: Mapping[str, Column], no_lane: BoolArray, faults: FaultList
 ) -> None:
     """Say where a table of a further field has a value although the cell has no lane."""
-    empty = np.flatnonzero(no_lane).tolist()
+    empty = np.flatnonzero(no_lane)
     for field, column in grids.items():
         if column.take is not None or field == "unit_cost":
             continue
-        idle = [cell for cell in empty if column.values[cell] is not None]
+        idle = empty[~_absent(column.values)[empty]]
         faults.caution(
             "value_without_lane",
             "The cell has no unit_cost, so there is no lane; its other values are not used.",
-            [(column.place(cell), column.values[cell]) for cell in idle[:3]],
+            [(column.place(cell), column.values[cell]) for cell in idle[:3].tolist()],
             len(idle),
         )
+
+
+def _absent(values: Sequence[object]) -> BoolArray:
+    """Return which values are null."""
+    if isinstance(values, ScannedNumbers):
+        return values.null
+    if None not in values:
+        return np.zeros(len(values), dtype=np.bool_)
+    return np.fromiter((value is None for value in values), dtype=np.bool_, count=len(values))
 
 
 def _refuse_repeats(
@@ -198,6 +212,16 @@ class _Shape:
     def column(self, field: str, value: object, *, listed: bool) -> Column | None:
         """Return a field sent as a table of the shape, or as one value for all cells."""
         cells = self.height * self.width
+
+        def place(cell: int) -> str:
+            return pointer(*self.path, field, cell // self.width, cell % self.width)
+
+        if isinstance(value, ScannedGrid):
+            if (value.height, value.width) == (self.height, self.width):
+                return Column(values=value.numbers, take=None, place=place)
+            value = value.lists()
+        elif isinstance(value, Scanned):
+            value = list(value)
         is_table = isinstance(value, list) and not (
             listed and not any(isinstance(element, list) for element in value)
         )
@@ -215,7 +239,7 @@ class _Shape:
         return Column(
             values=list(chain.from_iterable(rows)),  # type: ignore[arg-type] # all are lists: _fits
             take=None,
-            place=lambda cell: pointer(*self.path, field, cell // self.width, cell % self.width),
+            place=place,
         )
 
     def _fits(self, field: str, rows: list[object]) -> bool:

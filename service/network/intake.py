@@ -20,6 +20,7 @@ from service.network.files.unpack import unpack
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
 from service.network.reading import read_network
+from service.network.table_fields import FLAT_FIELDS
 
 BYTES_MAX_DEFAULT = 1 << 30
 NESTING_MAX_DEFAULT = 16
@@ -149,7 +150,7 @@ def _read_json(
     received: Path, _folder: Path, _kind: str, limits: Limits
 ) -> "_Definition | IntakeReport":
     """Read a body of JSON."""
-    parsed = read_json(received.read_bytes(), nesting_max=limits.nesting_max)
+    parsed = read_json(received.read_bytes(), nesting_max=limits.nesting_max, tables=FLAT_FIELDS)
     if parsed.unreadable:
         return _refused(Status.UNREADABLE, parsed.unreadable, len(parsed.unreadable))
     if parsed.invalid:

@@ -1,4 +1,4 @@
-"""The fields of the three big tables, as API.md lists them, each with its JSON Schema."""
+"""The fields of the three big tables, each with its JSON Schema, in the order that is shown."""
 
 from collections.abc import Mapping
 from typing import Final
@@ -75,3 +75,14 @@ REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
 }
 # Fields whose single value is itself an array, so that an array need not be a column of a table.
 LISTED_FIELDS: Final = frozenset({"tags", "origins"})
+
+# Fields whose values are texts or numbers, each with whether they are numbers; the others hold
+# arrays or objects.
+_NUMBERS: Final = (_QUANTITY, _MONEY, _RATE, _PRIORITY)
+_STRUCTURES: Final = LISTED_FIELDS | {"extra", "keep"}
+FLAT_FIELDS: Final[Mapping[str, Mapping[str, bool]]] = {
+    table: {
+        field: schema in _NUMBERS for field, schema in fields.items() if field not in _STRUCTURES
+    }
+    for table, fields in TABLE_FIELDS.items()
+}

@@ -1,9 +1,10 @@
 """The forms in which a table can be sent, brought to one: rows, columns and cost tables."""
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from service.network.cost_tables import cost_table_sheet, cost_tables_sheet
 from service.network.faults import FAULTS_REPORTED_MAX, FaultList, pointer
+from service.network.scanned import Scanned, ScannedGrid, ScannedRows, ScannedTexts
 from service.network.sheets import Column, Sheet, refuse_field
 
 
@@ -18,6 +19,8 @@ def sheet_of(
         if name == "lanes" and ("origins" in value or "destinations" in value):
             return cost_table_sheet((name,), value, fields=fields, listed=listed, faults=faults)
         return _from_columns(name, value, fields=fields, faults=faults)
+    if isinstance(value, ScannedRows):
+        return _from_scanned_rows(name, value, fields=fields)
     if isinstance(value, list):
         first = value[0] if value else None
         if name == "lanes" and isinstance(first, dict) and {"origins", "destinations"} & set(first):
@@ -77,32 +80,56 @@ def _from_rows(
     )
 
 
+def _from_scanned_rows(name: str, value: ScannedRows, *, fields: Sequence[str]) -> Sheet:
+    """Return a table that was sent as an array of objects, already in columns."""
+    return Sheet(
+        name=name,
+        rows=value.rows,
+        columns={
+            field: _column(value.columns[field], lambda row, field=field: pointer(name, row, field))  # type: ignore[misc] # bound now
+            for field in fields
+            if field in value.columns
+        },
+        row_place=lambda row: pointer(name, row),
+        in_rows=True,
+    )
+
+
+def _column(values: Sequence[object], place: Callable[[int], str]) -> Column:
+    """Return a column of values, one for each row; ``place`` points to that of a row."""
+    if isinstance(values, ScannedTexts):
+        return Column(values=values.distinct, take=values.codes, place=place, by_rows=True)
+    return Column(values=values, take=None, place=place)
+
+
 def _from_columns(
     name: str, value: dict[str, object], *, fields: Sequence[str], faults: FaultList
 ) -> Sheet | None:
     """Return a table that was sent as an object of arrays of one length."""
     columns: dict[str, Column] = {}
-    for field, values in value.items():
+    lengths: dict[str, int] = {}
+    for field, sent in value.items():
+        values = sent.lists() if isinstance(sent, ScannedGrid) else sent
         if field not in fields:
             refuse_field(name, field, pointer(name, field), faults)
-        elif not isinstance(values, list):
+        elif not isinstance(values, list | Scanned):
             detail = "A column is an array with one value for each row."
             faults.add(pointer(name, field), "wrong_type", detail, values)
         else:
-            columns[field] = Column(
-                values=values,
-                take=None,
-                place=lambda row, field=field: pointer(name, field, row),  # type: ignore[misc] # bound now
+            lengths[field] = len(values)
+            columns[field] = _column(
+                values,
+                lambda row, field=field: pointer(name, field, row),  # type: ignore[misc] # bound now
             )
     if not columns:
         if not value:
             return Sheet(name=name, rows=0, columns={}, row_place=lambda _: pointer(name))
         return None
     first, lead = next(iter(columns.items()))
-    rows = len(lead.values)
-    for field, column in list(columns.items()):
-        if len(column.values) != rows:
-            detail = f"Columns have one length; this has {len(column.values)}, {first} has {rows}."
+    rows = lengths[first]
+    for field, length in lengths.items():
+        if length != rows:
+            detail = f"Columns have one length; this has {length}, {first} has {rows}."
             faults.add(pointer(name, field), "unequal_columns", detail)
             del columns[field]
     return Sheet(

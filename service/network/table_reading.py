@@ -29,6 +29,7 @@ from service.network.quantities import (
     read_decimals,
     too_many_decimals,
 )
+from service.network.scanned import ScannedNumbers
 from service.network.sheets import Column
 from service.network.table_faults import TableFaults
 from service.network.wording import (
@@ -160,6 +161,11 @@ class TableReader:
         column = self._columns.get(name)
         if column is None:
             return np.zeros(self.rows, dtype=np.int32)
+        if isinstance(column.values, ScannedNumbers) and not column.values.quoted:
+            whole, odd = column.values.small(most)
+            detail = f"Say a whole number from 1 to {most}."
+            self._faults.at_values(name, odd, "bad_number", detail)
+            return by_row(column, whole)
         accepted: dict[object, int] = {Number(number): number for number in range(1, most + 1)}
         found = np.zeros(len(column.values), dtype=np.int32)
         wrong: list[int] = []
@@ -246,7 +252,7 @@ class TableReader:
 
     def _decimals_of(self, name: str, values: Sequence[object], decimals_max: int) -> Decimals:
         """Return the values of a column as decimals and report the faulty ones."""
-        if isinstance(values, ExactNumbers):
+        if isinstance(values, ExactNumbers | ScannedNumbers):
             return self._report_decimals(name, values.read(decimals_max), decimals_max)
         kinds = set(map(type, values))
         if kinds - {str, Number, NONE}:

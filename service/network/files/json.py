@@ -6,13 +6,17 @@ UTF-8, depth, NaN and Infinity, names that occur twice in one object, half surro
 
 import json
 import re
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from typing import NoReturn
+from typing import Any, NoReturn
 
 import numpy as np
 
 from service.network.faults import Fault, pointer
+from service.network.files.json_tables import LARGE_BYTES, Cut, Kinds, cut_tables
+from service.network.files.json_values import Number
+
+__all__ = ["BYTE_ORDER_MARK", "Number", "ReadJson", "nesting", "read_json"]
 
 BYTE_ORDER_MARK = b"\xef\xbb\xbf"
 # Everything but quotes and brackets, which alone decide how deep a text is nested.
@@ -21,12 +25,6 @@ _ESCAPE = re.compile(rb"\\.", re.DOTALL)
 _STRING_OR_CONSTANT = re.compile(r'"(?:[^"\\]|\\.)*"|-?Infinity|NaN', re.DOTALL)
 _HALF_PAIR_ESCAPE = re.compile(rb"\\u[dD][89a-fA-F]")
 _HALF_PAIR = re.compile("[\ud800-\udfff]")
-
-
-class Number(str):
-    """A JSON number, kept as the digits that were sent; text proper is a plain ``str``."""
-
-    __slots__ = ()
 
 
 class _Repeated(dict[str, object]):
@@ -44,13 +42,48 @@ class ReadJson:
     invalid: tuple[Fault, ...]
 
 
-def read_json(data: bytes, *, nesting_max: int) -> ReadJson:
+def read_json(
+    data: bytes,
+    *,
+    nesting_max: int,
+    tables: Mapping[str, Kinds] | None = None,
+    large_bytes: int = LARGE_BYTES,
+) -> ReadJson:
     """Read a JSON text (RFC 8259); a leading byte order mark is passed over.
 
     ``unreadable`` faults concern the text as such; ``invalid`` ones the names and texts in it
-    (RFC 8259 leaves them open, but they have no certain meaning).
+    (RFC 8259 leaves them open, but they have no certain meaning). With ``tables``, arrays in those
+    members with more than ``large_bytes`` are scanned (``network/scanned.py``) where that surely
+    comes to the same.
     """
     text_bytes = data.removeprefix(BYTE_ORDER_MARK)
+    if tables and len(text_bytes) > large_bytes:
+        rest, cuts = cut_tables(text_bytes, tables, _decoded, large_bytes=large_bytes)
+        if cuts:
+            read = _read_exactly(rest, nesting_max=nesting_max)
+            if not read.unreadable and not read.invalid:
+                for cut in cuts:
+                    _put(read.value, cut)
+                return read
+            # The whole text knows the lines and columns of its faults.
+    return _read_exactly(text_bytes, nesting_max=nesting_max)
+
+
+def _put(value: Any, cut: Cut) -> None:  # noqa: ANN401 - JSON, at a path that is known to be there
+    """Put a scanned value to its place in a document."""
+    *path, last = cut.path
+    for name in path:
+        value = value[name]
+    value[last] = cut.value
+
+
+def _decoded(text: bytes) -> object:
+    """Return the value of a part of a text that was read before."""
+    return _Reader().decoder.decode(text.decode("utf-8"))
+
+
+def _read_exactly(text_bytes: bytes, *, nesting_max: int) -> ReadJson:
+    """Read a JSON text value by value."""
     try:
         text = text_bytes.decode("utf-8")
     except UnicodeDecodeError as error:
