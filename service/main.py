@@ -20,7 +20,7 @@ from service.telemetry import configure_logs
 
 if TYPE_CHECKING:
     from service.engine.local import LocalEngine
-    from service.engine.tasks import IntakeChildren
+    from service.engine.tasks import EvidenceChildren, IntakeChildren
     from service.network.intake import IntakeReport
     from service.network.options import Options
     from service.planning.outcome import Outcome
@@ -72,16 +72,16 @@ class Work:
     ) -> "IntakeReport":
         """Check a network in a child that is started for it."""
         from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
-        from service.engine.tasks import read_report  # noqa: PLC0415 - see the module
+        from service.engine.tasks import intake_task, read_report  # noqa: PLC0415 - see the module
 
-        task = {
-            "spool": str(spool),
-            "folder": str(folder),
-            "options": options.to_document(),
-            "media_type": media_type,
-            "content_encoding": content_encoding,
-            "limits": intake_limits(self._settings),
-        }
+        task = intake_task(
+            spool,
+            folder,
+            options=options,
+            media_type=media_type,
+            content_encoding=content_encoding,
+            limits=intake_limits(self._settings),
+        )
         answer = do_one_task(
             "intake",
             task,
@@ -95,11 +95,11 @@ class Work:
     ) -> "Outcome":
         """Plan a checked network in a child that is started for it."""
         from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
-        from service.engine.tasks import read_outcome  # noqa: PLC0415 - see the module
+        from service.engine.tasks import plan_task, read_outcome  # noqa: PLC0415 - see the module
 
         answer = do_one_task(
             "plan",
-            {"source": str(source), "target": str(target), "options": options.to_document()},
+            plan_task(source, target, options=options),
             seconds=options.deadline_seconds,
             memory_bytes=self._settings.plan_memory_bytes_max,
             on_progress=on_progress,
@@ -181,12 +181,15 @@ def working_application(settings: Settings) -> Iterator["Application"]:
             raise NotReadyError("; ".join(missing))
         intake, engine = _engine(settings, store)
         stack.callback(intake.close)
+        pack = _packing(settings)
+        stack.callback(pack.close)
         stack.callback(engine.stop)
         engine.start(lock)
         yield application(
             store=store,
             dispatcher=engine,
             intake=intake,
+            pack=pack,
             engine_missing=lambda: [] if engine.working() else ["engine: it has stopped"],
         )
 
@@ -223,6 +226,18 @@ def _engine(settings: Settings, store: "Store") -> tuple["IntakeChildren", "Loca
         poll_seconds=settings.poll_seconds,
     )
     return intake, engine
+
+
+def _packing(settings: Settings) -> "EvidenceChildren":
+    """Return the children that pack evidence; asked for seldom, so that none is kept warm."""
+    from service.engine.children import Nursery  # noqa: PLC0415 - see the module
+    from service.engine.tasks import EvidenceChildren  # noqa: PLC0415 - likewise
+
+    return EvidenceChildren(
+        Nursery("evidence", spares=0),
+        seconds=settings.intake_seconds_max,
+        memory_bytes=settings.plan_memory_bytes_max,
+    )
 
 
 @contextmanager

@@ -74,7 +74,23 @@ def plan_work() -> Work:
     return work
 
 
-KINDS: Mapping[str, Callable[[], Work]] = {"intake": intake_work, "plan": plan_work}
+def evidence_work() -> Work:
+    """Return packing of evidence, its modules already loaded."""
+    from service.runs.evidence import pack_evidence  # noqa: PLC0415 - only this kind needs it
+
+    def work(task: Task, progress: Progress) -> Mapping[str, object]:
+        progress("packing", {})
+        pack_evidence(Path(task["source"]), Path(task["target"]))
+        return {}
+
+    return work
+
+
+KINDS: Mapping[str, Callable[[], Work]] = {
+    "intake": intake_work,
+    "plan": plan_work,
+    "evidence": evidence_work,
+}
 
 
 def die_with_parent(parent: int) -> None:
@@ -100,7 +116,8 @@ def offer_as_victim() -> None:
 def limit_memory(memory_bytes: int | None) -> None:
     """Bound the address space from here on; None takes the bound away.
 
-    Only the soft limit: a child is used for several tasks, and each brings its own.
+    Only the soft limit: a child is used for several tasks, and each brings its own. The supervisor
+    watches the resident memory besides (``resident_bytes`` in ``engine/process.py``).
     """
     if sys.platform != "win32":
         import resource  # noqa: PLC0415 - does not exist on every platform

@@ -1,23 +1,27 @@
-"""The two kinds of work that children do, in the form in which the use cases call them."""
+"""The kinds of work that children do, in the form in which the use cases call them."""
 
 import threading
 import time
 from collections.abc import Collection, Mapping
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 import orjson
 import structlog
 
 from service.engine.children import Nursery
 from service.network.faults import Status
+from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
+from service.planning.outcome import FailureReason, Outcome
 from service.runs.faults import ChildCrashed, ChildTimeout
 from service.runs.run import Claim, Progress, Token
 
 if TYPE_CHECKING:
     from service.network.intake import IntakeReport
-    from service.planning.outcome import Outcome
+
+# An auditor fetches one at a time; more at once would take the cores from those who plan.
+EVIDENCE_AT_ONCE: Final = 2
 
 _log = structlog.get_logger(__name__)
 
@@ -53,25 +57,54 @@ class IntakeChildren:
         content_encoding: str | None,
     ) -> "IntakeReport":
         """Check ``spool``; leave ``received``, ``network.zip``, ``intake.json`` in ``folder``."""
-        task = {
-            "spool": str(spool),
-            "folder": str(folder),
-            "options": options.to_document(),
-            "media_type": media_type,
-            "content_encoding": content_encoding,
-            "limits": self._limits,
-        }
+        task = intake_task(
+            spool,
+            folder,
+            options=options,
+            media_type=media_type,
+            content_encoding=content_encoding,
+            limits=self._limits,
+        )
         child = self._nursery.take()
         answer = child.ask(
             task, seconds=self._seconds, memory_bytes=self._memory_bytes, released=self._closed
         )
-        received = folder / "received"
+        received = folder / RECEIVED_FILE
         size = received.stat().st_size if received.exists() else spool.stat().st_size
         self._nursery.give_back(child, input_bytes=size)
         return read_report(answer, folder)
 
     def close(self) -> None:
         """End every check that is under way and every child."""
+        self._closed.set()
+        self._nursery.close()
+
+
+class EvidenceChildren:
+    """Packs evidence, each in a child; a ``Pack``."""
+
+    def __init__(self, nursery: Nursery, *, seconds: float, memory_bytes: int) -> None:
+        """Pack with children of ``nursery``."""
+        self._nursery = nursery
+        self._seconds = seconds
+        self._memory_bytes = memory_bytes
+        self._places = threading.BoundedSemaphore(EVIDENCE_AT_ONCE)
+        self._closed = threading.Event()
+
+    def __call__(self, source: Path, target: Path) -> None:
+        """Pack the parts in ``source`` into ``target``."""
+        with self._places:
+            child = self._nursery.take()
+            child.ask(
+                {"source": str(source), "target": str(target)},
+                seconds=self._seconds,
+                memory_bytes=self._memory_bytes,
+                released=self._closed,
+            )
+            self._nursery.give_back(child, input_bytes=target.stat().st_size)
+
+    def close(self) -> None:
+        """End every packing that is under way and every child."""
         self._closed.set()
         self._nursery.close()
 
@@ -93,7 +126,7 @@ class PlanningChildren:
         self._busy: dict[int, _Work] = {}
         self._closed = False
 
-    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> "Outcome":
+    def plan(self, claim: Claim, source: Path, options: Options, target: Path) -> Outcome:
         """Plan the network in ``source`` within the seconds that ``claim`` has left."""
         until = time.monotonic() + claim.seconds_left
         work = _Work(claim.token)
@@ -108,13 +141,13 @@ class PlanningChildren:
             self._nursery.give_back(child, input_bytes=0)
             raise ChildTimeout("there was no time left to plan in")
         answer = child.ask(
-            {"source": str(source), "options": options.to_document(), "target": str(target)},
+            plan_task(source, target, options=options),
             seconds=seconds,
             memory_bytes=self._memory_bytes,
             released=work.released,
             on_progress=work.told,
         )
-        self._nursery.give_back(child, input_bytes=(source / "network.zip").stat().st_size)
+        self._nursery.give_back(child, input_bytes=(source / NETWORK_FILE).stat().st_size)
         return read_outcome(answer)
 
     def settled(self) -> None:
@@ -168,20 +201,43 @@ class _Work:
         _log.info("planning", phase=phase, seconds=seconds, **numbers)
 
 
+def intake_task(  # noqa: PLR0913 - the six things that the check is told, by name
+    spool: Path,
+    folder: Path,
+    *,
+    options: Options,
+    media_type: str,
+    content_encoding: str | None,
+    limits: Mapping[str, int],
+) -> dict[str, object]:
+    """Return an input check as the task of a child."""
+    return {
+        "spool": str(spool),
+        "folder": str(folder),
+        "options": options.to_document(),
+        "media_type": media_type,
+        "content_encoding": content_encoding,
+        "limits": dict(limits),
+    }
+
+
+def plan_task(source: Path, target: Path, *, options: Options) -> dict[str, object]:
+    """Return the planning of the network in ``source`` as the task of a child."""
+    return {"source": str(source), "target": str(target), "options": options.to_document()}
+
+
 def read_report(answer: Mapping[str, object], folder: Path) -> "IntakeReport":
     """Return the report that an intake child answered, with the summary that it left on disk."""
     from service.network.intake import IntakeReport  # noqa: PLC0415 - loads when first needed
 
     summary = None
     if answer["status"] == Status.ACCEPTED:
-        summary = orjson.loads((folder / "intake.json").read_bytes())
+        summary = orjson.loads((folder / INTAKE_FILE).read_bytes())
     return IntakeReport.from_document({**answer, "summary": summary})
 
 
-def read_outcome(answer: Mapping[str, object]) -> "Outcome":
+def read_outcome(answer: Mapping[str, object]) -> Outcome:
     """Return the outcome that a planning child answered; raise ``ChildCrashed`` if it is none."""
-    from service.planning.outcome import Outcome  # noqa: PLC0415 - loads when first needed
-
     match answer:
         case {
             "state": "planned" | "no_plan" | "failed" as state,
@@ -189,5 +245,9 @@ def read_outcome(answer: Mapping[str, object]) -> "Outcome":
             "detail": str() | None as detail,
             "seconds": dict(seconds),
         }:
-            return Outcome(state=state, reason=reason, detail=detail, seconds=seconds)  # type: ignore[arg-type] # the use case reads them into its own enumerations
+            try:
+                known = None if reason is None else FailureReason(reason)
+            except ValueError as error:
+                raise ChildCrashed(f"answered with a reason that is none: {reason}") from error
+            return Outcome(state=state, reason=known, detail=detail, seconds=seconds)
     raise ChildCrashed("answered with something that is no outcome")

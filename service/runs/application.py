@@ -2,7 +2,7 @@
 
 from collections.abc import Callable
 
-from service.runs.evidence import Evidence
+from service.runs.evidence import Evidence, Pack
 from service.runs.ports import Application, Dispatcher, IntakeCall, Store
 from service.runs.read import Read
 from service.runs.submit import Submit
@@ -13,12 +13,13 @@ def application(
     store: Store,
     dispatcher: Dispatcher,
     intake: IntakeCall,
+    pack: Pack,
     engine_missing: Callable[[], list[str]],
 ) -> Application:
     """Return the use cases over ``store``.
 
-    ``intake`` checks networks in a child of the engine's, ``engine_missing`` says what keeps the
-    engine from working.
+    ``intake`` checks networks and ``pack`` packs evidence in a child of the engine's,
+    ``engine_missing`` says what keeps the engine from working.
     """
     read = Read(store=store)
     return Application(
@@ -29,6 +30,6 @@ def application(
         certificate_bytes=read.certificate_bytes,
         network_bytes=read.network_bytes,
         history=read.history,
-        evidence=Evidence(read=read),
+        evidence=Evidence(read=read, pack=pack),
         readiness=lambda: [*store.missing(), *engine_missing()],
     )

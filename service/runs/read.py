@@ -1,6 +1,7 @@
 """Reading: runs and their artefacts as they are stored; nothing is computed here."""
 
 from dataclasses import dataclass
+from pathlib import Path
 
 from service.runs.events import event_document, run_stream
 from service.runs.faults import ArtefactMissing
@@ -38,6 +39,18 @@ class Read:
         received = form == "received"
         digest = submission.request_digest if received else submission.normal_digest
         return self.store.blob(tenant, digest)
+
+    def network_to_file(self, run_id: RunId, tenant: str, path: Path) -> None:
+        """Write the file of the normal form to ``path``, part by part."""
+        with self.store.reading() as reading:
+            submission = reading.submission(run_id, tenant)
+        self.store.blob_to_file(tenant, submission.normal_digest, path)
+
+    def to_file(self, digest: str | None, run: Run, name: str, path: Path) -> None:
+        """Write the artefact ``name`` to ``path``; raise ``ArtefactMissing`` without one."""
+        if digest is None:
+            raise ArtefactMissing(run, name)
+        self.store.blob_to_file(run.tenant, digest, path)
 
     def options_bytes(self, run_id: RunId, tenant: str) -> bytes:
         """Return the options as they were digested."""

@@ -9,11 +9,14 @@ import subprocess
 import sys
 import time
 from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import pytest
 
+from service.proof.evidence import verify_evidence
+from tests.engine.houses import await_true
 from tests.engine.processes import await_end, children_of, running
 
 ROOT = Path(__file__).parents[2]
@@ -39,13 +42,13 @@ class Service:
 
     def get(self, path: str) -> Any:  # noqa: ANN401 - any JSON value
         """Read a document."""
-        return json.loads(self._ask(path).read())
+        return json.loads(self.ask(path).read())
 
     def post(self) -> str:
         """Post the example network; return the path of the run."""
-        return str(self._ask("/v1/runs", NETWORK).getheader("Location"))
+        return str(self.ask("/v1/runs", NETWORK).getheader("Location"))
 
-    def _ask(self, path: str, body: bytes | None = None) -> http.client.HTTPResponse:
+    def ask(self, path: str, body: bytes | None = None) -> http.client.HTTPResponse:
         """Send a request; return the answer, which must be a good one."""
         connection = http.client.HTTPConnection(self.address.removeprefix("http://"), timeout=20)
         headers = {"Content-Type": "application/json", "Connection": "close"}
@@ -155,6 +158,30 @@ def test_second_service_on_one_database_refuses_to_start(service: Service, tmp_p
     assert "locked" in second.stderr
     assert "Traceback" not in second.stderr
     assert service.get("/healthz") == {"alive": True}
+
+
+def test_service_answers_while_evidence_is_packed(service: Service, tmp_path: Path) -> None:
+    """The work is a child's: as long as that one stands still, everybody else is served."""
+    path = service.post()
+    service.await_state(path, "planned")
+    first = service.ask(f"{path}/evidence").read()
+    (pid,) = service.children("evidence")
+    os.kill(pid, signal.SIGSTOP)
+    with ThreadPoolExecutor() as pool:
+        second = pool.submit(lambda: service.ask(f"{path}/evidence").read())
+        await_true(lambda: list((tmp_path / "spool").rglob("certificate.json")) != [])
+        alive = service.get("/healthz")
+        run = service.get(path)
+        waiting = not second.done()
+        os.kill(pid, signal.SIGCONT)
+        same = second.result(timeout=30)
+
+    assert alive == {"alive": True}
+    assert run["state"] == "planned"
+    assert waiting
+    assert same == first
+    (tmp_path / "evidence.zip").write_bytes(same)
+    assert verify_evidence(tmp_path / "evidence.zip").verdict == "intact"
 
 
 def test_child_that_is_killed_from_outside_costs_one_crash(service: Service) -> None:

@@ -14,11 +14,11 @@ from service.planning.outcome import Outcome
 from service.planning.task import plan
 from service.proof import standalone
 from service.proof.evidence import verify_evidence
-from service.runs.evidence import Evidence
+from service.runs.evidence import Evidence, pack_evidence
 from service.runs.execute import Execute
 from service.runs.ports import Claim, Store
 from service.runs.read import Read
-from service.runs.run import LOCAL
+from service.runs.run import LOCAL, Progress, Token
 from service.runs.submit import Submit
 from service.store.database import open_database
 from service.store.migrate import migrate
@@ -38,6 +38,10 @@ class PlannerInThisProcess:
         """Run the real planning task for whatever claim."""
         assert claim.seconds_left > 0
         return plan(source, options, target)
+
+    def progress(self, token: Token) -> Progress | None:
+        """Tell nothing: nobody watches."""
+        assert token
 
 
 @pytest.fixture(scope="module")
@@ -74,7 +78,7 @@ def test_a_run_comes_back_as_it_was_planned(store: Store, network: RandomNetwork
         )
         state = execute(waiting.id)
         evidence = folder / "evidence.zip"
-        Evidence(read=read)(waiting.id, LOCAL.tenant, evidence)
+        Evidence(read=read, pack=pack_evidence)(waiting.id, LOCAL.tenant, evidence)
         verdict, problems = standalone.verify(evidence.read_bytes())
         assert verify_evidence(evidence).verdict == verdict == "intact", problems
 
