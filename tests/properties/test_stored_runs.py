@@ -18,7 +18,7 @@ from service.runs.evidence import Evidence, pack_evidence
 from service.runs.execute import Execute
 from service.runs.ports import Claim, Store
 from service.runs.read import Read
-from service.runs.run import LOCAL, Progress, Token
+from service.runs.run import LOCAL, Token
 from service.runs.submit import Submit
 from service.store.database import open_database
 from service.store.migrate import migrate
@@ -39,7 +39,7 @@ class PlannerInThisProcess:
         assert claim.seconds_left > 0
         return plan(source, options, target)
 
-    def progress(self, token: Token) -> Progress | None:
+    def progress(self, token: Token) -> None:
         """Tell nothing: nobody watches."""
         assert token
 

@@ -4,7 +4,7 @@ from pathlib import Path
 
 import pytest
 
-from service.planning.outcome import State
+from service.planning.outcome import FailureReason, State
 from service.runs.application import application
 from service.runs.faults import ArtefactMissing, RunUnknown
 from service.runs.read import Read
@@ -30,7 +30,7 @@ def test_run_without_a_plan_says_so(store: SqlStore, tmp_path: Path, state: Stat
     """A door turns this into words; an empty plan would be a wrong one."""
     run = submitted(store, tmp_path / "in")
     if state is not None:
-        planner = FakePlanner(outcome=outcome(state, reason="internal"))
+        planner = FakePlanner(outcome=outcome(state, reason=FailureReason.INTERNAL))
         execution(store, tmp_path, planner)(run.id)
     read = Read(store=store)
 
@@ -48,6 +48,7 @@ def test_every_read_of_another_tenants_run_is_unknown(store: SqlStore, tmp_path:
         store=store,
         dispatcher=FakeDispatcher(),
         intake=lambda *_, **__: pytest.fail("not asked for"),
+        pack=lambda *_: pytest.fail("not asked for"),
         engine_missing=lambda: ["a planning slot"],
     )
 
