@@ -47,7 +47,7 @@ def test_the_commands_of_the_run_script_exist() -> None:
     """The two commands are the promise on the first page."""
     typed = {words[2] for words in commands(README) if words[:2] == ["python3", "run"]}
 
-    assert typed == {"demo", "tests"}
+    assert typed == {"demo", "tests", "benchmarks"}
     assert all(f'"{name}"' in (ROOT / "run").read_text(encoding="utf-8") for name in typed)
 
 

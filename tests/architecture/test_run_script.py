@@ -111,6 +111,13 @@ def test_arguments_of_the_tests_reach_pytest(home: Path) -> None:
     assert calls(home)[-1] == "-m pytest --long tests/unit -k steps"
 
 
+def test_arguments_of_the_benchmarks_reach_them(home: Path) -> None:
+    """And nothing else is started."""
+    start(home, "benchmarks", "--quick", "--json", "figures.json")
+
+    assert calls(home)[-1] == "-m tests.benchmarks --quick --json figures.json"
+
+
 def test_the_exit_code_of_the_tests_is_the_exit_code(home: Path) -> None:
     """A red test must not look green from outside."""
     fake(home, "python", fails_on="-m pytest")

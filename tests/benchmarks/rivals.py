@@ -3,11 +3,8 @@
 from collections.abc import Callable, Mapping
 from typing import Any, Final
 
-import networkx as nx
 import numpy as np
 from ortools.graph.python import min_cost_flow
-from scipy.optimize import linprog
-from scipy.sparse import csc_array
 
 from tests.benchmarks.problems import Problem
 
@@ -31,6 +28,8 @@ def ortools_full(problem: Problem) -> int:
 
 def networkx_simplex(problem: Problem) -> int:
     """Solve with the network simplex of networkx, a Python object for each arc."""
+    import networkx as nx  # noqa: PLC0415 - loading it would slow down every other child
+
     graph = nx.MultiDiGraph()
     graph.add_nodes_from(
         (node, {"demand": -supply}) for node, supply in enumerate(problem.supply.tolist())
@@ -49,6 +48,9 @@ def scipy_highs(problem: Problem) -> int:
 
     Its vertex is whole but for rounding; what is added up is the whole flow, checked to be one.
     """
+    from scipy.optimize import linprog  # noqa: PLC0415 - likewise
+    from scipy.sparse import csc_array  # noqa: PLC0415 - likewise
+
     arcs = np.arange(problem.tail.shape[0])
     balance = csc_array(
         (

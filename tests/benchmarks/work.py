@@ -30,7 +30,6 @@ from tests.benchmarks.problems import (
 )
 from tests.benchmarks.rivals import SOLVERS
 from tests.benchmarks.stopwatch import Stopwatch
-from tests.published.test_netgen import INSTANCES, netgen_document, read_dimacs
 
 Request = Mapping[str, Any]
 Answer = dict[str, Any]
@@ -59,6 +58,12 @@ def prepare(request: Request) -> Answer:
 
 def prepare_netgen(request: Request) -> Answer:
     """Do the same with a published network of NETGEN."""
+    from tests.published.test_netgen import (  # noqa: PLC0415 - it loads all of pytest
+        INSTANCES,
+        netgen_document,
+        read_dimacs,
+    )
+
     folder = Path(request["folder"])
     case = next(each for each in INSTANCES if each.name == request["name"])
     _keep(sparse_problem(*read_dimacs(case.name)), folder)
