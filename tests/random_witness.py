@@ -39,6 +39,8 @@ class Witness:
     def __init__(self, rng: Random, *, sites: int, walks: int) -> None:
         """Draw places and lanes, close some, and let goods walk on the others."""
         self.rng = rng
+        # Few different amounts make many plans equally good.
+        self.few_amounts = self.often(0.5)
         self.rules: list[dict[str, Any]] = []
         self.walked = Walked()
         self.items = [self._item(number) for number in range(rng.randint(1, 3))]
@@ -67,7 +69,9 @@ class Witness:
         return self.rng.random() >= 1 - chance
 
     def money(self, most: int = 900) -> str:
-        """Draw an amount with up to two decimals."""
+        """Draw an amount with up to two decimals, or one of three."""
+        if self.few_amounts:
+            return str(self.rng.randint(0, 2))
         text = plain_text(Fraction(self.rng.randint(0, most), 100), decimals=2)
         assert text is not None
         return text
