@@ -21,6 +21,7 @@ from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FIL
 from service.network.options import Options
 from service.network.reading import read_network
 from service.network.table_fields import FLAT_FIELDS
+from service.network.workload import likeness_of, workload_of
 
 BYTES_MAX_DEFAULT = 1 << 30
 NESTING_MAX_DEFAULT = 16
@@ -127,6 +128,10 @@ def intake(  # noqa: PLR0913 - the six things that a child process is told, by n
         "cut_off": reading.network.head["cut_off"],
         "plan_for": plan_for.isoformat(),
         "name": reading.network.head.get("name"),
+        "likeness": likeness_of(reading.network),
+        "workload": workload_of(
+            reading.network, file_bytes=(output / NETWORK_FILE).stat().st_size
+        ).to_document(),
     }
     (output / INTAKE_FILE).write_bytes(orjson.dumps(summary))
     return IntakeReport(faults=(), fault_count=0, status=Status.ACCEPTED, summary=summary)

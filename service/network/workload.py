@@ -1,0 +1,106 @@
+"""How much work a network is, in counts that are cheap to take, and which networks are alike.
+
+Both are taken by the input check and travel with its summary; neither changes a plan.
+"""
+
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass
+
+import numpy as np
+
+from service.network.canonical import canonical_json, digest
+from service.network.columns import CodeArray, IntArray, Network
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Workload:
+    """Counts from which the memory of planning is estimated.
+
+    ``usable_lanes`` bounds from above the pairs of a lane and an item that can use it, and
+    ``usable_lanes_of_one`` those of the item that has most; ``places`` bounds the pairs of a site
+    and an item that meet there. ``file_bytes`` is the size of the normal form.
+    """
+
+    items: int
+    sites: int
+    supply_rows: int
+    order_lines: int
+    lanes: int
+    usable_lanes: int
+    usable_lanes_of_one: int
+    places: int
+    file_bytes: int
+
+    def to_document(self) -> dict[str, int]:
+        """Return the counts as a JSON object."""
+        return asdict(self)
+
+    @staticmethod
+    def from_document(document: Mapping[str, int]) -> "Workload":
+        """Read back what ``to_document`` wrote."""
+        return Workload(**document)
+
+
+def workload_of(network: Network, *, file_bytes: int) -> Workload:
+    """Return how much work ``network`` is."""
+    usable, touched = _usable_lanes(network)
+    return Workload(
+        items=len(network.items),
+        sites=len(network.sites),
+        supply_rows=len(network.supply),
+        order_lines=len(network.demand),
+        lanes=len(network.lanes),
+        usable_lanes=int(usable.sum()),
+        usable_lanes_of_one=int(usable.max(initial=0)),
+        places=int(np.minimum(touched + 2 * usable, len(network.sites)).sum()),
+        file_bytes=file_bytes,
+    )
+
+
+def likeness_of(network: Network) -> str:
+    """Return a digest that networks share whose warehouses, items and currency are the same."""
+    kin: dict[str, object] = {
+        "currency": network.head["currency"],
+        "items": [[item.id, item.unit, str(item.step)] for item in network.items],
+        "warehouses": [site.id for site in network.sites if "warehouse" in site.roles],
+    }
+    return digest(canonical_json(kin))
+
+
+def _usable_lanes(network: Network) -> tuple[IntArray, IntArray]:
+    """Return, by item, a bound on the lanes it can use and the sites that have it or want it.
+
+    A lane of any item is counted for an item that may leave from its origin or arrive at its
+    destination: at a cross-dock, where there is stock, or where something is wanted.
+    """
+    lanes, sites, items = network.lanes, len(network.sites), len(network.items)
+    of_any = lanes.item < 0
+    own = np.bincount(lanes.item[~of_any], minlength=items).astype(np.int64)
+    leaving = np.bincount(lanes.origin[of_any], minlength=sites)
+    arriving = np.bincount(lanes.destination[of_any], minlength=sites)
+    hub = np.array(["cross_dock" in site.roles for site in network.sites], np.bool_)
+    supply = _pairs(network.supply.site, network.supply.item, sites)
+    demand = _pairs(network.demand.site, network.demand.item, sites)
+    # A lane of one item that must ship also brings its ends into play; those are in ``own``.
+    bounds = []
+    for pairs, lanes_at in ((supply, leaving), (demand, arriving)):
+        site, item = pairs % sites, pairs // sites
+        beside = ~hub[site]
+        weights = lanes_at[site[beside]].astype(np.float64)
+        at_ends = np.bincount(item[beside], weights=weights, minlength=items)
+        bounds.append(at_ends.astype(np.int64) + int(lanes_at[hub].sum()))
+    any_of = np.minimum(np.minimum(*bounds), int(of_any.sum()))
+    forced = np.bincount(lanes.item[~of_any & lanes.must_ship.present], minlength=items) > 0
+    # A forced lane may want goods at a site that has neither stock nor orders: no bound but all.
+    usable = own + np.where(forced, int(of_any.sum()), any_of)
+    touched = np.bincount(supply // sites, minlength=items) + np.bincount(
+        demand // sites, minlength=items
+    )
+    return usable, touched
+
+
+def _pairs(site: CodeArray, item: CodeArray, sites: int) -> IntArray:
+    """Return the distinct pairs of site and item as ``item * sites + site``."""
+    pairs: IntArray = np.sort(item.astype(np.int64) * sites + site)
+    distinct: IntArray = pairs[np.diff(pairs, prepend=-1) != 0]
+    return distinct
