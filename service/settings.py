@@ -11,6 +11,8 @@ from typing import Annotated, Self
 from pydantic import Field, ValidationError, field_validator, model_validator
 from pydantic_settings import BaseSettings, SettingsConfigDict
 
+from service.runs.lifecycle import CRASHES_MAX
+
 MEBIBYTE = 2**20
 GIBIBYTE = 2**30
 PREFIX = "LANEWRIGHT_"
@@ -50,9 +52,7 @@ class Settings(BaseSettings):
     plan_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 8 * GIBIBYTE
     # What planned runs leave for the next ones to start from; a cache, for each tenant; 0 for none.
     warm_start_bytes_max: Annotated[int, Field(ge=0)] = 256 * MEBIBYTE
-    # A child that died by itself this often takes its run with it: three strikes tell a poisonous
-    # network from a passing accident, and more would only keep the slot from others.
-    crashes_max: Annotated[int, Field(ge=1, le=10)] = 3
+    crashes_max: Annotated[int, Field(ge=1, le=10)] = CRASHES_MAX
     lease_seconds: Annotated[int, Field(ge=3, le=600)] = 30
     poll_seconds: Annotated[float, Field(gt=0, le=60)] = 0.5
     log_level: Annotated[str, Field(pattern="^(debug|info|warning|error)$")] = "info"

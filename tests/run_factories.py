@@ -10,8 +10,7 @@ import orjson
 from service.network.canonical import canonical_json
 from service.network.options import Options
 from service.network.stored_zip import write_stored_zip
-from service.planning.outcome import FailureReason as Reason
-from service.planning.outcome import Outcome, State
+from service.planning.outcome import FailureReason, Outcome, State
 from service.runs.execute import Execute
 from service.runs.ports import Claim, Run, RunId, Store
 from service.runs.run import LOCAL, Actor, Progress, Token
@@ -69,7 +68,7 @@ def intake_folder(
 def outcome(
     state: State = "planned",
     *,
-    reason: Reason | None = None,
+    reason: FailureReason | None = None,
     detail: str | None = None,
 ) -> Outcome:
     """Return what a planning child answers."""

@@ -1,6 +1,5 @@
 """One plan for one network: ties between plans of least cost, broken by what things are called."""
 
-import hashlib
 from collections.abc import Callable
 
 import numpy as np
@@ -18,12 +17,6 @@ from service.planning.prices import reduced_cost
 SWEEPS_MAX = 200
 
 TieBreak = Callable[[IntArray], tuple[IntArray, IntArray]]
-
-
-def tie_weight(kind: str, name: str) -> int:
-    """Return 1 + the first 20 bits of SHA-256(kind, NUL, name): what one step costs in a tie."""
-    digest = hashlib.sha256(kind.encode() + b"\0" + name.encode()).digest()
-    return 1 + (int.from_bytes(digest[:3], "big") >> 4)
 
 
 def tied_arcs(arcs: Arcs, flow: IntArray, price: MoneyArray, *, nodes: int) -> IntArray:

@@ -71,7 +71,7 @@ def plan(
         clock.phase("compiled", items=len(compiled.items), arcs=arcs)
         solved, cuts = _solve(compiled)
     except NumbersTooLargeError as error:
-        return clock.outcome("failed", "numbers_too_large", str(error))
+        return clock.outcome("failed", FailureReason.NUMBERS_TOO_LARGE, str(error))
     clock.phase("solved", items=len(solved))
     if cuts:
         document = unplanned(compiled, contradiction_reason(network, cuts), setting)
@@ -90,7 +90,7 @@ def plan(
     found = prove(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
     clock.phase("proved", violations=len(found))
     if found:
-        return clock.outcome("failed", "proof_failed", _in_words(found))
+        return clock.outcome("failed", FailureReason.PROOF_FAILED, _in_words(found))
     return clock.outcome("no_plan" if cuts else "planned", None, None)
 
 

@@ -1,5 +1,6 @@
-"""What arcs are called when ties are broken: (kind, id), whatever way led to the tie."""
+"""What arcs are called when ties are broken, (kind, id), and what they weigh for it."""
 
+import hashlib
 from dataclasses import dataclass
 
 import numpy as np
@@ -7,10 +8,15 @@ import numpy as np
 from service.network.columns import IntArray, Network
 from service.network.naming import encoded, lane_names
 from service.planning.arcs import SIDES, Kind, Side
-from service.planning.canonical_plan import tie_weight
 from service.planning.item_network import ItemNetwork
 
 _RECEIVED = SIDES.index(Side.RECEIVED)
+
+
+def tie_weight(kind: str, name: str) -> int:
+    """Return 1 + the first 20 bits of SHA-256(kind, NUL, name): what one step costs in a tie."""
+    digest = hashlib.sha256(kind.encode() + b"\0" + name.encode()).digest()
+    return 1 + (int.from_bytes(digest[:3], "big") >> 4)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

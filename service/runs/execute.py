@@ -7,15 +7,23 @@ writes nothing. The finish may be repeated; of several with one token, the first
 import shutil
 import tempfile
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, Final
+from typing import Any, Final
 
 import orjson
 
+from service.network.intake_files import INTAKE_FILE, NETWORK_FILE
 from service.network.options import Options
+from service.planning.outcome import (
+    CERTIFICATE_FILE,
+    PLAN_FILE,
+    WARM_START_FILE,
+    FailureReason,
+    Outcome,
+)
 from service.runs.events import run_stream
 from service.runs.faults import (
     BlobBroken,
@@ -34,7 +42,6 @@ from service.runs.run import (
     STORED,
     Claim,
     Ending,
-    FailureReason,
     Finish,
     IndexRows,
     Progress,
@@ -44,30 +51,23 @@ from service.runs.run import (
     engine_of,
 )
 from service.runs.settle import count_crash, end, give_back
-from service.runs.submit import INTAKE, NETWORK
 
-if TYPE_CHECKING:
-    from service.planning.outcome import Outcome
-
-PLAN: Final = "plan.json"
-CERTIFICATE: Final = "certificate.json"
-WARM_START_FILE: Final = "warm_start"
 # Prices and a shortlist of a hundred thousand places take 3 MB; more than this is a mistake.
 WARM_START_BYTES_MAX: Final = 32 * 2**20
 _PAUSE_SECONDS: Final = 0.5
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class Planned:
-    """What a child left behind, ready to be stored."""
+class Result:
+    """How planning ended, ready to be stored; a failure may have left nothing behind."""
 
     state: RunState
     reason: FailureReason | None
     detail: str | None
-    plan: Staged | None
-    certificate: Staged | None
-    rows: IndexRows | None
-    seconds: dict[str, str]
+    plan: Staged | None = None
+    certificate: Staged | None = None
+    rows: IndexRows | None = None
+    seconds: Mapping[str, str] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -99,7 +99,7 @@ class Execute:
         with self._folder(claim) as folder:
             began = self.elapsed()
             try:
-                planned = self._plan(claim, folder)
+                result = self._plan(claim, folder)
             except ChildCrashed as error:
                 detail = str(error)
                 return self._persist(lambda: self._crashed(claim, detail))
@@ -112,23 +112,23 @@ class Execute:
                 broken = _failed(FailureReason.INTERNAL, "The service made a mistake; see its log.")
                 self._persist(lambda: self._finish(claim, broken, None))
                 raise
-            progress = self._progress(claim, planned, began)
-            state = self._persist(lambda: self._finish(claim, planned, progress))
+            progress = self._progress(claim, result, began)
+            state = self._persist(lambda: self._finish(claim, result, progress))
             if state is RunState.PLANNED:
                 self._keep_warm_start(claim, folder)
             return state
 
     def _claim(self, run_id: RunId) -> Claim | None:
-        with self.store.transaction() as store:
-            claim = store.claim(
+        with self.store.transaction() as transaction:
+            claim = transaction.claim(
                 run_id,
                 token=new_token(),
                 lease_seconds=self.lease_seconds,
                 crashes_max=self.crashes_max,
             )
             if claim is not None:
-                crashes = store.run(run_id, claim.tenant).crashes
-                store.append(
+                crashes = transaction.run(run_id, claim.tenant).crashes
+                transaction.append(
                     run_stream(run_id),
                     EventKind.CLAIMED,
                     engine_of(claim.tenant),
@@ -136,7 +136,7 @@ class Execute:
                 )
             return claim
 
-    def _plan(self, claim: Claim, folder: Path) -> Planned:
+    def _plan(self, claim: Claim, folder: Path) -> Result:
         source, target = folder / "in", folder / "out"
         source.mkdir()
         target.mkdir()
@@ -149,14 +149,14 @@ class Execute:
             return _failed(FailureReason.MEMORY_LIMIT, "Planning needed more memory than allowed.")
         except BlobBroken as error:
             return _failed(FailureReason.INTERNAL, f"What was submitted cannot be read: {error}.")
-        return self._planned(claim, outcome, target)
+        return self._result(claim, outcome, target)
 
     def _unpack(self, claim: Claim, source: Path) -> Options:
-        with self.store.reading() as store:
-            submission = store.submission(claim.run_id, claim.tenant)
+        with self.store.reading() as reading:
+            submission = reading.submission(claim.run_id, claim.tenant)
         tenant = claim.tenant
-        self.store.blob_to_file(tenant, submission.normal_digest, source / NETWORK)
-        self.store.blob_to_file(tenant, submission.intake_digest, source / INTAKE)
+        self.store.blob_to_file(tenant, submission.normal_digest, source / NETWORK_FILE)
+        self.store.blob_to_file(tenant, submission.intake_digest, source / INTAKE_FILE)
         if claim.crashes == 0:
             # After a crash everything that is not needed stays away from the next child.
             warm = self.store.warm_start(
@@ -169,18 +169,18 @@ class Execute:
         document = orjson.loads(self.store.blob(tenant, submission.options_digest))
         return Options.from_document(document)
 
-    def _planned(self, claim: Claim, outcome: "Outcome", target: Path) -> Planned:
+    def _result(self, claim: Claim, outcome: Outcome, target: Path) -> Result:
         state = RunState(outcome.state)
-        plan_file, certificate_file = target / PLAN, target / CERTIFICATE
+        plan_file, certificate_file = target / PLAN_FILE, target / CERTIFICATE_FILE
         both = plan_file.is_file() and certificate_file.is_file()
         if state is not RunState.FAILED and not both:
             return _failed(FailureReason.INTERNAL, "Planning ended without its artefacts.")
         # A plan whose certificate fails is kept, both of it, but it is nobody's plan to search.
         searchable = state in {RunState.PLANNED, RunState.NO_PLAN}
         document: dict[str, Any] = orjson.loads(plan_file.read_bytes()) if searchable else {}
-        return Planned(
+        return Result(
             state=state,
-            reason=None if outcome.reason is None else FailureReason(outcome.reason),
+            reason=outcome.reason,
             detail=outcome.detail,
             plan=self.store.stage_file(claim.tenant, plan_file) if both else None,
             certificate=self.store.stage_file(claim.tenant, certificate_file) if both else None,
@@ -188,9 +188,9 @@ class Execute:
             seconds=seconds_texts(outcome.seconds),
         )
 
-    def _progress(self, claim: Claim, planned: Planned, began: float) -> Progress | None:
+    def _progress(self, claim: Claim, result: Result, began: float) -> Progress | None:
         """Return how far the run has come by being stored; None: no further than it told."""
-        if planned.state is RunState.FAILED:
+        if result.state is RunState.FAILED:
             return None
         told = self.planner.progress(claim.token)
         return Progress(
@@ -205,29 +205,29 @@ class Execute:
         if path.is_file() and path.stat().st_size <= WARM_START_BYTES_MAX:
             self.store.keep_warm_start(claim.run_id, claim.tenant, path.read_bytes())
 
-    def _finish(self, claim: Claim, planned: Planned, progress: Progress | None) -> RunState | None:
-        with self.store.transaction() as store:
+    def _finish(self, claim: Claim, result: Result, progress: Progress | None) -> RunState | None:
+        with self.store.transaction() as transaction:
             ending = Ending(
-                state=planned.state,
-                reason=planned.reason,
-                detail=planned.detail,
+                state=result.state,
+                reason=result.reason,
+                detail=result.detail,
                 attempt=claim.attempt,
-                started_at=store.run(claim.run_id, claim.tenant).started_at,
-                finished_at=store.now,
-                plan_digest=None if planned.plan is None else planned.plan.digest,
+                started_at=transaction.run(claim.run_id, claim.tenant).started_at,
+                finished_at=transaction.now,
+                plan_digest=None if result.plan is None else result.plan.digest,
                 certificate_digest=(
-                    None if planned.certificate is None else planned.certificate.digest
+                    None if result.certificate is None else result.certificate.digest
                 ),
-                seconds=planned.seconds,
+                seconds=result.seconds,
             )
-            finish = end(store, claim, ending, progress=progress)
+            finish = end(transaction, claim, ending, progress=progress)
             if finish is Finish.STORED:
-                for staged in (planned.plan, planned.certificate):
+                for staged in (result.plan, result.certificate):
                     if staged is not None:
-                        store.add_blob(staged)
-                if planned.rows is not None:
-                    store.add_index_rows(claim.run_id, claim.tenant, planned.rows)
-            return None if finish is Finish.FENCED else planned.state
+                        transaction.add_blob(staged)
+                if result.rows is not None:
+                    transaction.add_index_rows(claim.run_id, claim.tenant, result.rows)
+            return None if finish is Finish.FENCED else result.state
 
     def _crashed(self, claim: Claim, detail: str) -> RunState | None:
         return count_crash(
@@ -259,13 +259,5 @@ class Execute:
             shutil.rmtree(folder, ignore_errors=True)
 
 
-def _failed(reason: FailureReason, detail: str) -> Planned:
-    return Planned(
-        state=RunState.FAILED,
-        reason=reason,
-        detail=detail,
-        plan=None,
-        certificate=None,
-        rows=None,
-        seconds={},
-    )
+def _failed(reason: FailureReason, detail: str) -> Result:
+    return Result(state=RunState.FAILED, reason=reason, detail=detail)

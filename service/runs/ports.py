@@ -12,6 +12,7 @@ from datetime import date, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING, Protocol
 
+from service.planning.outcome import FailureReason
 from service.runs.faults import (
     ArtefactMissing,
     BlobBroken,
@@ -27,7 +28,6 @@ from service.runs.run import (
     Actor,
     Claim,
     Ending,
-    FailureReason,
     Finish,
     IndexRows,
     Needs,

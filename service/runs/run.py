@@ -6,6 +6,8 @@ from datetime import date, datetime
 from enum import StrEnum
 from typing import Final, NewType
 
+from service.planning.outcome import FailureReason
+
 RunId = NewType("RunId", str)
 Token = NewType("Token", str)
 
@@ -19,18 +21,6 @@ class RunState(StrEnum):
     NO_PLAN = "no_plan"
     FAILED = "failed"
     CANCELLED = "cancelled"
-
-
-class FailureReason(StrEnum):
-    """Why a run ended as ``failed``."""
-
-    DEADLINE = "deadline"
-    TIME_LIMIT = "time_limit"
-    MEMORY_LIMIT = "memory_limit"
-    SOLVER_CRASHED = "solver_crashed"
-    NUMBERS_TOO_LARGE = "numbers_too_large"
-    PROOF_FAILED = "proof_failed"
-    INTERNAL = "internal"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -2,6 +2,7 @@
 
 from datetime import datetime
 
+from service.planning.outcome import FailureReason
 from service.runs.events import run_stream
 from service.runs.ports import Store, Transaction
 from service.runs.records import (
@@ -14,7 +15,6 @@ from service.runs.records import (
 from service.runs.run import (
     Claim,
     Ending,
-    FailureReason,
     Finish,
     Progress,
     RunState,
@@ -23,7 +23,7 @@ from service.runs.run import (
 
 
 def end(
-    store: Transaction,
+    transaction: Transaction,
     claim: Claim,
     ending: Ending,
     *,
@@ -31,10 +31,10 @@ def end(
     progress: Progress | None = None,
 ) -> Finish:
     """Make the run final if ``claim`` holds it, and say so in its history."""
-    finish = store.finish(claim, ending, crashed=crashed, progress=progress)
+    finish = transaction.finish(claim, ending, crashed=crashed, progress=progress)
     if finish is Finish.STORED:
-        crashes = store.run(claim.run_id, claim.tenant).crashes
-        store.append(
+        crashes = transaction.run(claim.run_id, claim.tenant).crashes
+        transaction.append(
             run_stream(claim.run_id),
             EventKind.FINISHED,
             engine_of(claim.tenant),
@@ -49,12 +49,12 @@ def give_back(store: Store, claim: Claim, why: GivenBack) -> RunState | None:
         return put_back(transaction, claim, why)
 
 
-def put_back(store: Transaction, claim: Claim, why: GivenBack) -> RunState | None:
+def put_back(transaction: Transaction, claim: Claim, why: GivenBack) -> RunState | None:
     """Let the run wait again, and say why in its history; None when the claim is gone."""
-    crashes = store.give_back(claim, crashed=why in COUNTED_AS_CRASH)
+    crashes = transaction.give_back(claim, crashed=why in COUNTED_AS_CRASH)
     if crashes is None:
         return None
-    store.append(
+    transaction.append(
         run_stream(claim.run_id),
         EventKind.GIVEN_BACK,
         engine_of(claim.tenant),
@@ -77,7 +77,7 @@ def count_crash(
 
 
 def settle_crash(
-    store: Transaction,
+    transaction: Transaction,
     claim: Claim,
     why: GivenBack,
     *,
@@ -88,17 +88,17 @@ def settle_crash(
 
     None when the claim is gone, and then nothing is counted.
     """
-    run = store.run(claim.run_id, claim.tenant)
+    run = transaction.run(claim.run_id, claim.tenant)
     if run.crashes + 1 < crashes_max:
-        return put_back(store, claim, why)
+        return put_back(transaction, claim, why)
     ending = failure(
         FailureReason.SOLVER_CRASHED,
         f"{crashes_max} planning processes died over this run. The last: {detail}",
         attempt=claim.attempt,
         started_at=run.started_at,
-        finished_at=store.now,
+        finished_at=transaction.now,
     )
-    finish = end(store, claim, ending, crashed=True)
+    finish = end(transaction, claim, ending, crashed=True)
     return None if finish is Finish.FENCED else RunState.FAILED
 
 

@@ -1,26 +1,21 @@
 """Submitting: what intake found good becomes a waiting run; what is returned is on disk."""
 
-import hashlib
 import zipfile
 from dataclasses import dataclass
 from datetime import date, timedelta
 from pathlib import Path
-from typing import Any, Final
+from typing import Any
 
 import orjson
 
-from service.network.canonical import canonical_json
+from service.network.canonical import HEAD_ENTRY, canonical_json, digest
+from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
 from service.runs.events import run_stream
 from service.runs.identity import new_run_id
 from service.runs.ports import Dispatcher, Store
 from service.runs.records import EventKind, submitted_payload
 from service.runs.run import Actor, Needs, Run, Submission
-
-RECEIVED: Final = "received"
-NETWORK: Final = "network.zip"
-INTAKE: Final = "intake.json"
-_HEAD: Final = "network/head.json"
 
 
 class IntakeBroken(Exception):  # noqa: N818 - named for the fact, like every error of this house
@@ -41,27 +36,27 @@ class Submit:
         while a solver works. Large blobs are written before the transaction that names them.
         """
         tenant = actor.tenant
-        intake_bytes = (folder / INTAKE).read_bytes()
+        intake_bytes = (folder / INTAKE_FILE).read_bytes()
         summary: dict[str, Any] = orjson.loads(intake_bytes)
-        received = self.store.stage_file(tenant, folder / RECEIVED)
-        normal = self.store.stage_file(tenant, folder / NETWORK)
+        received = self.store.stage_file(tenant, folder / RECEIVED_FILE)
+        normal = self.store.stage_file(tenant, folder / NETWORK_FILE)
         intake = self.store.stage_bytes(tenant, intake_bytes)
         option_bytes = self.store.stage_bytes(tenant, canonical_json(options.to_document()))
         # Digests that a child reported are proved here once more: they are written for good.
         if received.digest != summary["request_digest"]:
             raise IntakeBroken("the bytes received are not those that were checked")
-        if _network_digest(folder / NETWORK) != summary["network_digest"]:
+        if _network_digest(folder / NETWORK_FILE) != summary["network_digest"]:
             raise IntakeBroken("the normal form is not the one that was reported")
         plan_for = options.plan_for or date.fromisoformat(summary["plan_for"])
         needs = Needs(likeness=summary.get("likeness"), memory_bytes=None)
 
-        with self.store.transaction() as store:
-            now = store.now
+        with self.store.transaction() as transaction:
+            now = transaction.now
             submission = Submission(
                 id=new_run_id(now),
                 tenant=tenant,
                 plan_for=plan_for,
-                number=store.next_number(tenant, plan_for),
+                number=transaction.next_number(tenant, plan_for),
                 label=options.label,
                 created_at=now,
                 deadline_at=now + timedelta(seconds=options.deadline_seconds),
@@ -76,15 +71,15 @@ class Submit:
                 authentication=actor.authentication,
             )
             for staged in (received, normal, intake, option_bytes):
-                store.add_blob(staged)
-            store.add_run(submission, needs)
+                transaction.add_blob(staged)
+            transaction.add_run(submission, needs)
             stream = run_stream(submission.id)
-            store.append(stream, EventKind.SUBMITTED, actor, submitted_payload(submission))
-            run = store.run(submission.id, tenant)
+            transaction.append(stream, EventKind.SUBMITTED, actor, submitted_payload(submission))
+            run = transaction.run(submission.id, tenant)
         self.dispatcher.notify(run.id)  # only a wake-up: losing it must not lose the run
         return run
 
 
 def _network_digest(path: Path) -> str:
     with zipfile.ZipFile(path) as archive:
-        return "sha-256:" + hashlib.sha256(archive.read(_HEAD)).hexdigest()
+        return digest(archive.read(HEAD_ENTRY))

@@ -4,11 +4,12 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Final
 
+from service.planning.outcome import FailureReason
 from service.runs.events import run_stream
 from service.runs.lifecycle import CRASHES_MAX
 from service.runs.ports import Store
 from service.runs.records import EventKind, GivenBack, finished_payload
-from service.runs.run import FailureReason, RunId, engine_of
+from service.runs.run import RunId, engine_of
 from service.runs.settle import failure, settle_crash
 
 _AT_ONCE: Final = 100

@@ -28,6 +28,6 @@ class Watch:
         """
         if not tokens:
             return frozenset()
-        with self.store.transaction() as store:
-            held = store.renew(tokens, lease_seconds=self.lease_seconds, progress=progress)
+        with self.store.transaction() as transaction:
+            held = transaction.renew(tokens, lease_seconds=self.lease_seconds, progress=progress)
         return frozenset(tokens) - held

@@ -6,12 +6,12 @@ import orjson
 from sqlalchemy import func, select
 from sqlalchemy.orm import Session
 
+from service.planning.outcome import FailureReason
 from service.runs.faults import RunUnknown
 from service.runs.run import (
     CHECKED,
     STORED,
     Ending,
-    FailureReason,
     Needs,
     Progress,
     Run,

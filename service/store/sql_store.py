@@ -13,6 +13,7 @@ from sqlalchemy import Engine
 from sqlalchemy.exc import SQLAlchemyError
 from sqlalchemy.orm import Session
 
+from service.network.canonical import digest as digest_of
 from service.runs.faults import BlobBroken, StoreUnavailable
 from service.runs.ports import Clock
 from service.runs.run import RunId, Staged
@@ -75,7 +76,7 @@ class SqlStore:
 
     def stage_bytes(self, tenant: str, content: bytes) -> Staged:
         """Take bytes in; only content above one part is written before its transaction."""
-        digest = "sha-256:" + hashlib.sha256(content).hexdigest()
+        digest = digest_of(content)
         if len(content) <= PART_BYTES:
             return Staged(
                 tenant=tenant,
@@ -102,7 +103,7 @@ class SqlStore:
         """Return the whole blob; raise ``BlobBroken`` when it is not what its digest says."""
         with self._session(self._reader) as session:
             content = b"".join(SqlBlobRepository(session).parts(tenant, digest))
-        if "sha-256:" + hashlib.sha256(content).hexdigest() != digest:
+        if digest_of(content) != digest:
             raise BlobBroken(f"blob {digest} has other content")
         return content
 

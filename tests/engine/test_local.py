@@ -9,8 +9,9 @@ import pytest
 
 from service.engine.lock import EngineLock
 from service.network.options import Options
+from service.planning.outcome import FailureReason
 from service.runs.faults import EngineLocked
-from service.runs.run import LOCAL, FailureReason, RunState
+from service.runs.run import LOCAL, RunState
 from service.runs.submit import Submit
 from service.store.database import Database
 from service.store.sql_store import SqlStore, SystemClock

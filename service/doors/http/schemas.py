@@ -9,7 +9,8 @@ from typing import Annotated, Final
 
 from pydantic import BaseModel, ConfigDict, Field
 
-from service.runs.run import FailureReason, Run, RunState
+from service.planning.outcome import FailureReason
+from service.runs.run import Run, RunState
 
 RUN_ID_PATTERN: Final = "^run_[0-9a-v]{26}$"
 DIGEST_PATTERN: Final = "^sha-256:[0-9a-f]{64}$"

@@ -14,8 +14,9 @@ from fastapi.testclient import TestClient
 from service.doors.http import tables
 from service.network.files.media_types import PARQUET, XLSX
 from service.network.files.table_columns import TABLES
+from service.planning.outcome import FailureReason
 from service.runs.faults import StoreUnavailable
-from service.runs.run import FailureReason, RunState
+from service.runs.run import RunState
 from tests.doors.http.fakes import (
     PLAN,
     RUN_ID,

@@ -7,6 +7,7 @@ from typing import Any
 
 from sqlalchemy import ColumnElement, Engine, Table, and_
 
+from service.planning.outcome import FailureReason
 from service.runs.run import LOCAL, Run
 from service.store.audit import Problem, check_store
 from service.store.database import Database
@@ -38,7 +39,7 @@ def fill(database: Database, folder: Path) -> list[Run]:
     planned = submitted(store, folder / "1", body=b"1", deadline_seconds=900)
     execution(store, scratch)(planned.id)
     failed = submitted(store, folder / "2", body=b"2", deadline_seconds=900)
-    planner = FakePlanner(outcome=outcome("failed", reason="internal", detail="x"))
+    planner = FakePlanner(outcome=outcome("failed", reason=FailureReason.INTERNAL, detail="x"))
     execution(store, scratch, planner)(failed.id)
     no_plan = submitted(store, folder / "3", body=b"3", deadline_seconds=900)
     planner = FakePlanner(outcome=outcome("no_plan"), lines=0)

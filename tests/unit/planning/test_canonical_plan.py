@@ -7,11 +7,12 @@ from scipy.optimize import linprog
 
 from service.network.columns import IntArray
 from service.planning.arcs import Arcs
-from service.planning.canonical_plan import canonical_flow, tie_weight, tied_arcs
+from service.planning.canonical_plan import canonical_flow, tied_arcs
 from service.planning.contraction import contract
 from service.planning.limits import NoFlowError
 from service.planning.min_cost_flow import least_cost_flow
 from service.planning.prices import residual_prices
+from service.planning.tie_break import tie_weight
 from tests.unit.planning.formal import arcs_of, cost_of, random_arcs
 
 

@@ -8,11 +8,11 @@ import pytest
 
 from service.network.canonical import canonical_json
 from service.network.options import Options
-from service.planning.outcome import Outcome
+from service.planning.outcome import FailureReason, Outcome
 from service.runs.faults import ChildCrashed, ChildMemory, ChildReleased, ChildTimeout
 from service.runs.read import Read
 from service.runs.recover import Recover
-from service.runs.run import Claim, FailureReason, Run, RunState
+from service.runs.run import Claim, Run, RunState
 from service.store.audit import check_store
 from service.store.database import Database
 from service.store.sql_store import SqlStore
@@ -163,9 +163,9 @@ def test_attempts_without_a_crash_are_never_counted_out(
 @pytest.mark.parametrize(
     "ended",
     [
-        outcome("failed", reason="numbers_too_large", detail="the cost of L1"),
-        outcome("failed", reason="proof_failed", detail="a lane is too cheap"),
-        outcome("failed", reason="internal", detail="see the log"),
+        outcome("failed", reason=FailureReason.NUMBERS_TOO_LARGE, detail="the cost of L1"),
+        outcome("failed", reason=FailureReason.PROOF_FAILED, detail="a lane is too cheap"),
+        outcome("failed", reason=FailureReason.INTERNAL, detail="see the log"),
         outcome("no_plan"),
     ],
     ids=lambda ended: ended.reason or ended.state,

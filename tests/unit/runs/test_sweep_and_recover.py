@@ -6,11 +6,12 @@ from pathlib import Path
 
 import pytest
 
+from service.planning.outcome import FailureReason
 from service.runs.identity import new_token
 from service.runs.read import Read
 from service.runs.records import claimed_payload
 from service.runs.recover import Recover
-from service.runs.run import Claim, FailureReason, Run, RunState, engine_of
+from service.runs.run import Claim, Run, RunState, engine_of
 from service.runs.sweep import Sweep
 from service.runs.watch import Watch
 from service.store.audit import check_store
