@@ -61,7 +61,7 @@ def assemble(
         lanes=ways,
     )
     ids = own_names_dropped(network)
-    if not np.array_equal(ids, ways.ids):
+    if ids is not ways.ids:
         ways, order = _sorted(replace(ways, ids=ids))
         lane_rows = lane_rows[order]
         network = replace(network, lanes=ways)

@@ -128,7 +128,7 @@ def decimal_column(data: bytes, rows: int, *, exponent: int, nulls: bool) -> Dec
             raise NormalFormError("the bitmap of absent decimals is not needed")
     if ((values >= SCALED_MAX) | (values <= -SCALED_MAX)).any():
         raise NormalFormError("a decimal is out of range")
-    if not 0 <= exponent <= EXPONENT_MAX or (exponent and not (values % 10).any()):
+    if not 0 <= exponent <= EXPONENT_MAX or (exponent_and_values(values, exponent)[0] != exponent):
         raise NormalFormError("the exponent is not the least one")
     return Decimals(values=values, present=present, exponent=exponent)
 
@@ -234,7 +234,8 @@ def _decoded(data: bytes) -> str:
 
 def exponent_and_values(values: IntArray, exponent: int) -> tuple[int, IntArray]:
     """Return the least exponent of ``values / 10**exponent`` and the values that belong to it."""
-    while exponent > 0 and not (values % 10).any():
+    # A few values mostly show that there is nothing to do.
+    while exponent > 0 and not (values[:1024] % 10).any() and not (values % 10).any():
         values = values // 10
         exponent -= 1
     return exponent, values

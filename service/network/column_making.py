@@ -62,6 +62,8 @@ def texts_column(
 
 def used_only(column: Texts) -> Texts:
     """Return a column of texts without the values that no row has."""
+    if not column.values:
+        return column
     used = np.zeros(len(column.values) + 1, dtype=np.bool_)
     used[column.codes] = True
     used[-1] = True

@@ -25,6 +25,8 @@ _Costs = NDArray[Any]
 def loop_below_zero(network: Network, use: LaneUse, item: int) -> IntArray | None:
     """Return the lanes (rows) of a loop below zero that ``item`` can go, in order; None if none."""
     lanes, on = network.lanes, use.passes_on
+    if not on.any():
+        return None
     rows = use.rows(item)
     rows = rows[on[lanes.origin[rows]] & on[lanes.destination[rows]]]
     rows, costs = _costs(network, rows, item)

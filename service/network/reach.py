@@ -35,6 +35,7 @@ class LaneUse:
         self._wanted = _ByItem(demand.item, items, wanted)
         self._found: dict[int, IntArray] = {}
         self._kept = 0
+        self._ends_of: tuple[int, BoolArray, BoolArray] | None = None
 
     @cached_property
     def any_item(self) -> IntArray:
@@ -71,11 +72,25 @@ class LaneUse:
 
     def received(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where a lane that ``item`` can use ends."""
-        return self._sites(self._network.lanes.destination[self.rows(item)])
+        return self._ends(item)[1]
 
     def sent(self, item: int) -> BoolArray:
         """Return, in shape (sites,), where a lane that ``item`` can use begins."""
-        return self._sites(self._network.lanes.origin[self.rows(item)])
+        return self._ends(item)[0]
+
+    def _ends(self, item: int) -> tuple[BoolArray, BoolArray]:
+        """Return, in shape (sites,), where a lane that ``item`` can use begins, and where it ends.
+
+        The answer for the item asked last is kept: it is asked for several times in turn.
+        """
+        if self._ends_of is None or self._ends_of[0] != item:
+            lanes, rows = self._network.lanes, self.rows(item)
+            # All of a column need not be picked from it.
+            every = len(rows) == len(lanes)
+            origins = lanes.origin if every else lanes.origin[rows]
+            destinations = lanes.destination if every else lanes.destination[rows]
+            self._ends_of = item, self._sites(origins), self._sites(destinations)
+        return self._ends_of[1:]
 
     def apart(self, item: int) -> BoolArray:
         """Return, in shape (sites,), which sites keep received goods of ``item`` from their stock.
@@ -100,8 +115,8 @@ class LaneUse:
         if not self._passes_on[place]:
             return start & stock
         lanes, rows = self._network.lanes, self.rows(item)
-        back = Steps(lanes.destination[rows], lanes.origin[rows], len(stock))
-        return (start | reached((back,), start, through=self._passes_on)) & stock
+        back = Steps(lanes.destination[rows], lanes.origin[rows], through=self._passes_on)
+        return (start | reached((back,), start)) & stock
 
     def _usable(self, item: int) -> IntArray:
         """Find the lanes of one item."""
@@ -114,21 +129,28 @@ class LaneUse:
         goal = self.wanted(item) | (forced & self._passes_on)
         stock = self.stock(item)
         on = self._passes_on
-        of_any_forward, of_any_back = self._any_steps
-        own_forward = Steps(lanes.origin[own], lanes.destination[own], len(on))
-        own_back = Steps(lanes.destination[own], lanes.origin[own], len(on))
-        sends = stock | (reached((of_any_forward, own_forward), stock, through=on) & on)
-        gets = goal | (reached((of_any_back, own_back), goal, through=on) & on)
-        usable = free[sends[lanes.origin[free]] & gets[lanes.destination[free]]]
-        return np.sort(np.concatenate((own, usable)))
+        origins, destinations, of_any_forward, of_any_back = self._any_steps
+        own_forward = Steps(lanes.origin[own], lanes.destination[own], through=on)
+        own_back = Steps(lanes.destination[own], lanes.origin[own], through=on)
+        sends = stock | (reached((of_any_forward, own_forward), stock) & on)
+        gets = goal | (reached((of_any_back, own_back), goal) & on)
+        usable = free[sends[origins] & gets[destinations]]
+        return np.sort(np.concatenate((own, usable))) if len(own) else usable
 
     @cached_property
-    def _any_steps(self) -> tuple["Steps", "Steps"]:
-        """Steps along lanes without an item, forward and back; the same for every item."""
-        lanes, free = self._network.lanes, self.any_item
+    def _any_steps(self) -> tuple[CodeArray, CodeArray, "Steps", "Steps"]:
+        """Ends of the lanes without an item, and steps along them, forward and back.
+
+        They are the same for every item.
+        """
+        lanes, free, on = self._network.lanes, self.any_item, self._passes_on
         origins, destinations = lanes.origin[free], lanes.destination[free]
-        sites = len(self._passes_on)
-        return Steps(origins, destinations, sites), Steps(destinations, origins, sites)
+        return (
+            origins,
+            destinations,
+            Steps(origins, destinations, through=on),
+            Steps(destinations, origins, through=on),
+        )
 
     def _sites(self, places: CodeArray) -> BoolArray:
         """Return flags in shape (sites,), True at ``places``."""
@@ -143,22 +165,70 @@ class _ByItem:
     def __init__(self, item: CodeArray, items: int, rows: IntArray | None = None) -> None:
         """Sort ``rows`` (None: all) of a table with this column of items."""
         picked = np.arange(len(item), dtype=np.int64) if rows is None else rows
-        self._order: IntArray = picked[np.argsort(item[picked], kind="stable")]
-        self._bounds = np.searchsorted(item[self._order], np.arange(-1, items + 1))
+        keys = item if rows is None else item[rows]
+        if bool((keys[1:] < keys[:-1]).any()):
+            # Short keys are sorted by their digits, in one pass over the rows for each.
+            short = items < np.iinfo(np.int16).max
+            order = np.argsort(keys.astype(np.int16) if short else keys, kind="stable")
+            picked, keys = picked[order], keys[order]
+        self._order: IntArray = picked
+        self._bounds = np.searchsorted(keys, np.arange(-1, items + 1, dtype=np.int32))
 
     def rows(self, item: int) -> IntArray:
         """Return the rows of one item."""
         return self._order[self._bounds[item + 1] : self._bounds[item + 2]]
 
 
+# After so many walks from different places an index pays: it takes as long as ten of them.
+_WALKS_BEFORE_INDEX = 4
+
+
 class Steps:
-    """Where one step leads from each site, along given lanes."""
+    """Where one step leads from each site, along given lanes; from ``through`` it goes on."""
+
+    def __init__(self, tails: CodeArray, heads: CodeArray, *, through: BoolArray) -> None:
+        """Take the lanes from ``tails`` to ``heads``, both of shape (lanes,)."""
+        self._tails = tails
+        self._heads = heads
+        self.through = through
+        self._walks = 0
+
+    def first(self, start: BoolArray) -> BoolArray:
+        """Return, in shape (sites,), where one step from the sites of ``start`` leads to."""
+        found = np.zeros(len(start), dtype=np.bool_)
+        self._walks += 1
+        if self._walks > _WALKS_BEFORE_INDEX:
+            found[self._from_everywhere.after(np.flatnonzero(start))] = True
+        elif len(self._heads):
+            found[self._heads[start[self._tails]]] = True
+        return found
+
+    def onward(self, places: IntArray) -> IntArray:
+        """Return the sites that one step from ``places``, of ``through``, leads to."""
+        return self._from_through.after(places)
+
+    @cached_property
+    def _from_everywhere(self) -> "_Index":
+        """All steps."""
+        return _Index(self._tails, self._heads, len(self.through))
+
+    @cached_property
+    def _from_through(self) -> "_Index":
+        """The steps from sites that lead on."""
+        own = self.through[self._tails]
+        return _Index(self._tails[own], self._heads[own], len(self.through))
+
+
+class _Index:
+    """Steps by the site where they begin."""
 
     def __init__(self, tails: CodeArray, heads: CodeArray, sites: int) -> None:
-        """Index the steps from ``tails`` to ``heads``, both of shape (lanes,)."""
-        # Sorting, where np.unique would hash: 1.9 s against 0.1 s for a million pairs.
-        pairs = np.sort(tails.astype(np.int64) * max(sites, 1) + heads)
-        pairs = pairs[np.append(True, pairs[1:] != pairs[:-1])[: len(pairs)]]
+        """Sort the steps from ``tails`` to ``heads``."""
+        pairs = tails.astype(np.int64) * max(sites, 1) + heads
+        if not bool((pairs[1:] > pairs[:-1]).all()):
+            # Sorting, where np.unique would hash: 1.9 s against 0.1 s for a million pairs.
+            pairs = np.sort(pairs)
+            pairs = pairs[np.append(True, pairs[1:] != pairs[:-1])[: len(pairs)]]
         self._heads = pairs % max(sites, 1)
         self._bounds = np.searchsorted(pairs, np.arange(sites + 1) * max(sites, 1))
 
@@ -172,17 +242,24 @@ class Steps:
         return heads
 
 
-def reached(ways: Sequence[Steps], start: BoolArray, *, through: BoolArray) -> BoolArray:
+def reached(ways: Sequence[Steps], start: BoolArray) -> BoolArray:
     """Return the sites that one step or more leads to from ``start``, in shape (sites,).
 
-    From sites that were reached, only those of ``through`` lead on.
+    From sites that were reached, only those that lead on do so. All ``ways`` agree which.
     """
     found = np.zeros(len(start), dtype=np.bool_)
+    if not start.any():
+        return found
+    for way in ways:
+        found |= way.first(start)
+    through = ways[0].through
     done = start.copy()
-    places = np.flatnonzero(start)
+    places = np.flatnonzero(found & through & ~done)
     while len(places):
-        news = np.concatenate([way.after(places) for way in ways])
-        found[news] = True
-        places = np.unique(news[through[news] & ~done[news]])
         done[places] = True
+        news = np.zeros(len(start), dtype=np.bool_)
+        for way in ways:
+            news[way.onward(places)] = True
+        found |= news
+        places = np.flatnonzero(news & through & ~done)
     return found

@@ -8,7 +8,7 @@ from typing import TypeVar
 
 import numpy as np
 
-from service.network.column_making import used_only
+from service.network.column_making import no_decimals, no_texts, used_only
 from service.network.columns import (
     BoolArray,
     CodeArray,
@@ -27,17 +27,41 @@ _Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
 
 def rows_of(table: _Table, rows: IntArray) -> _Table:
     """Return ``rows`` of a table, in their order, its columns in their one spelling."""
+    if len(rows) == len(table) and bool((rows == np.arange(len(rows))).all()):
+        return _spelled(table)
     changed: dict[str, object] = {}
     for field in fields(table):
         column = getattr(table, field.name)
         if isinstance(column, Texts):
-            changed[field.name] = used_only(replace(column, codes=column.codes[rows]))
+            changed[field.name] = used_only(_texts_of(column, rows))
         elif isinstance(column, Decimals):
-            changed[field.name] = least_exponent(
-                column.values[rows], column.present[rows], column.exponent
-            )
+            changed[field.name] = _decimals_of(column, rows)
         else:
             changed[field.name] = column[rows]
+    return replace(table, **changed)  # type: ignore[arg-type] # each of its field's own type
+
+
+def _texts_of(column: Texts, rows: IntArray) -> Texts:
+    """Return ``rows`` of a column of texts."""
+    return replace(column, codes=column.codes[rows]) if column.values else no_texts(len(rows))
+
+
+def _decimals_of(column: Decimals, rows: IntArray) -> Decimals:
+    """Return ``rows`` of a column of numbers."""
+    if not column.present.any():
+        return no_decimals(len(rows))
+    return least_exponent(column.values[rows], column.present[rows], column.exponent)
+
+
+def _spelled(table: _Table) -> _Table:
+    """Return all rows of a table, its columns in their one spelling."""
+    changed: dict[str, object] = {}
+    for field in fields(table):
+        column = getattr(table, field.name)
+        if isinstance(column, Texts):
+            changed[field.name] = used_only(column)
+        elif isinstance(column, Decimals):
+            changed[field.name] = least_exponent(column.values, column.present, column.exponent)
     return replace(table, **changed)  # type: ignore[arg-type] # each of its field's own type
 
 
@@ -50,8 +74,13 @@ def by_item_and_text(
     """
     width = max(1, len(texts.values))
     keys = items[rows].astype(np.int64) * width + texts.codes[rows]
-    order = np.argsort(keys, kind="stable")
-    keys = keys[order]
+    if bool((keys[1:] >= keys[:-1]).all()):
+        order = np.arange(len(keys))
+    else:
+        # Short keys are sorted by their digits, in one pass over the rows for each.
+        short = int(keys.max(initial=0)) <= np.iinfo(np.uint16).max
+        order = np.argsort(keys.astype(np.uint16) if short else keys, kind="stable")
+        keys = keys[order]
     starts = np.flatnonzero(np.concatenate(([True], keys[1:] != keys[:-1]))) if len(keys) else keys
     for key, members in zip(
         keys[starts].tolist(), np.split(rows[order], starts[1:]), strict=len(keys) > 0
