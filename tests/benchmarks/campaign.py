@@ -103,7 +103,7 @@ class Campaign:
             for form in case.forms:
                 for _ in range(case.repetitions):
                     self._measured(record, f"pipeline, {form}", "pipeline", today, form=form)
-            self._compare(record)
+            self.compare(record)
             for change in case.changes:
                 self.attempt(
                     f"{case.recipe.name}, then {change}",
@@ -129,7 +129,7 @@ class Campaign:
                 if number == 0:
                     self._measured(record, COLD, "plan", folder, warm_from=None)
                 self._measured(record, WARM, "plan", folder, warm_from=str(today))
-            self._compare(record)
+            self.compare(record)
         finally:
             shutil.rmtree(folder)
 
@@ -141,7 +141,7 @@ class Campaign:
         try:
             case = Case(recipe=None, repetitions=repetitions, rivals=("networkx", "SciPy HiGHS"))  # type: ignore[arg-type] # read from a file
             self._solvers(record, folder, case)
-            self._compare(record)
+            self.compare(record)
         finally:
             shutil.rmtree(folder)
 
@@ -189,7 +189,7 @@ class Campaign:
         record["objectives"].setdefault(LEMON, []).append(answer.pop("objective"))
         record["measured"].setdefault(LEMON, []).append(answer)
 
-    def _compare(self, record: Record) -> None:
+    def compare(self, record: Record) -> None:
         """Note where not everybody found the same cost, or not every route the same plan."""
         found = {name: sorted(set(values)) for name, values in record["objectives"].items()}
         if "published_optimum" in record:

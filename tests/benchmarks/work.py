@@ -16,6 +16,7 @@ import orjson
 
 from service.network.intake import IntakeReport, Limits, intake
 from service.network.options import Options
+from service.planning.outcome import PLAN_FILE, WARM_START_FILE
 from service.planning.task import plan
 from tests.benchmarks.clock import PhaseClock
 from tests.benchmarks.forms import FORMS
@@ -34,7 +35,6 @@ from tests.benchmarks.stopwatch import Stopwatch
 Request = Mapping[str, Any]
 Answer = dict[str, Any]
 
-WARM_START = "warm_start"
 RESULTS = "results"
 
 
@@ -109,12 +109,12 @@ def plan_it(request: Request) -> Answer:
     """Plan the network of a folder as the planning child does; ``warm_from`` is a former run."""
     _warm_up("cost table")
     folder = Path(request["folder"])
-    (folder / WARM_START).unlink(missing_ok=True)
+    (folder / WARM_START_FILE).unlink(missing_ok=True)
     if request["warm_from"] is not None:
-        former = Path(request["warm_from"]) / RESULTS / WARM_START
+        former = Path(request["warm_from"]) / RESULTS / WARM_START_FILE
         if not former.exists():
             return {"absent": "no former run left anything to start from"}
-        (folder / WARM_START).write_bytes(former.read_bytes())
+        (folder / WARM_START_FILE).write_bytes(former.read_bytes())
     results = folder / RESULTS
     results.mkdir(exist_ok=True)
     with Stopwatch() as watch:
@@ -160,7 +160,7 @@ def _planned(folder: Path, results: Path) -> dict[str, dict[str, float]]:
 
 def _outcome(problem_folder: Path, results: Path) -> Answer:
     """Return the plan's objective on the scale of the bare problem, and the plan's digest."""
-    written = (results / "plan.json").read_bytes()
+    written = (results / PLAN_FILE).read_bytes()
     objective = plan_objective(orjson.loads(written), problem_folder / PROBLEM)
     return {"objective": objective, "plan_digest": sha256(written).hexdigest()}
 
