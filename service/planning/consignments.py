@@ -1,48 +1,103 @@
 """All goods on one lane together: what a carrier is told."""
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from fractions import Fraction
 
 from service.network.columns import Network
-from service.planning.amounts import Measured, pallets_per_unit, text
-from service.planning.plan_lines import PlanLine
+from service.planning.amounts import UNKNOWN, Measured, pallets_per_unit, text, texts
+from service.planning.plan_lines import ItemPlan, PlanLine
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _OnLane:
+    """The goods of one item on one lane: its plan line, and its measures as text."""
+
+    item: int
+    line: PlanLine
+    pallets: str
+    weight: str
+    volume: str
+    cost: str
 
 
 def consignments(
-    network: Network, lines: Iterable[PlanLine], *, references: Mapping[int, set[bytes]]
+    network: Network,
+    plans: Sequence[ItemPlan],
+    scale: Fraction,
+    *,
+    references: Mapping[int, set[bytes]],
 ) -> list[dict[str, object]]:
     """Return the table ``consignments``: one row for each lane in use, in the lanes' order.
 
     ``references`` are the order lines with goods on each lane, by its row in the network.
     Pallets, weight and volume are ``unknown`` where an item on the lane lacks the figure.
     """
-    by_lane: dict[int, list[PlanLine]] = {}
-    for line in lines:
-        if line.row >= 0:
-            by_lane.setdefault(line.row, []).append(line)
+    by_lane: dict[int, list[_OnLane]] = {}
+    for plan in plans:
+        for goods in _goods(network, plan, scale):
+            by_lane.setdefault(goods.line.row, []).append(goods)
+    sites = [site.id for site in network.sites]
     rows: list[dict[str, object]] = []
     for row, own in sorted(by_lane.items()):
-        pallets, weight, volume = Measured(), Measured(), Measured()
-        cost = Fraction(0)
-        for line in own:
-            item = network.items[line.item]
-            pallets = pallets.plus(line.quantity, pallets_per_unit(item))
-            weight = weight.plus(line.quantity, item.weight_kg)
-            volume = volume.plus(line.quantity, item.volume_m3)
-            cost += line.transport
+        first = own[0] if len(own) == 1 else _together(network, own, scale)
         rows.append(
             {
-                "lane": own[0].lane,
+                "lane": first.line.lane,
                 "carrier": network.lanes.carrier.text(row),
-                "origin": network.sites[own[0].origin].id,
-                "destination": network.sites[own[0].destination].id,
-                "pallets": pallets.text,
-                "weight_kg": weight.text,
-                "volume_m3": volume.text,
-                "cost": text(cost),
+                "origin": sites[first.line.origin],
+                "destination": sites[first.line.destination],
+                "pallets": first.pallets,
+                "weight_kg": first.weight,
+                "volume_m3": first.volume,
+                "cost": first.cost,
                 "order_references": [
                     reference.decode() for reference in sorted(references.get(row, ()))
                 ],
             }
         )
     return rows
+
+
+def _goods(network: Network, plan: ItemPlan, scale: Fraction) -> list[_OnLane]:
+    """Return the goods of one item by lane."""
+    number = plan.solved.own.item
+    item = network.items[number]
+    lines = [line for line in plan.lines if line.row >= 0]
+    steps = [line.steps for line in lines]
+
+    def measured(per_unit: Fraction | None) -> list[str]:
+        if per_unit is None:
+            return [UNKNOWN] * len(steps)
+        return texts(steps, item.step * per_unit)
+
+    return [
+        _OnLane(item=number, line=line, pallets=pallets, weight=weight, volume=volume, cost=cost)
+        for line, pallets, weight, volume, cost in zip(
+            lines,
+            measured(pallets_per_unit(item)),
+            measured(item.weight_kg),
+            measured(item.volume_m3),
+            texts([line.transport for line in lines], 1 / scale),
+            strict=True,
+        )
+    ]
+
+
+def _together(network: Network, own: Sequence[_OnLane], scale: Fraction) -> _OnLane:
+    """Return the goods of several items on one lane as one."""
+    pallets, weight, volume = Measured(), Measured(), Measured()
+    for goods in own:
+        item = network.items[goods.item]
+        quantity = goods.line.steps * item.step
+        pallets = pallets.plus(quantity, pallets_per_unit(item))
+        weight = weight.plus(quantity, item.weight_kg)
+        volume = volume.plus(quantity, item.volume_m3)
+    return _OnLane(
+        item=own[0].item,
+        line=own[0].line,
+        pallets=pallets.text,
+        weight=weight.text,
+        volume=volume.text,
+        cost=text(sum(goods.line.transport for goods in own) / scale),
+    )

@@ -4,9 +4,8 @@ import numpy as np
 
 from service.network.columns import IntArray, Network
 from service.network.naming import lane_names
-from service.planning.amounts import text
+from service.planning.amounts import Document, text
 from service.planning.arcs import ROOT, SIDES, UNLIMITED, Kind, Side
-from service.planning.certificate import Document
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError
 

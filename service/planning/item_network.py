@@ -1,6 +1,5 @@
 """The formal network of one item, with everything that its arcs stand for."""
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -43,24 +42,32 @@ class ItemNetwork:
 
     def of_kind(self, *kinds: Kind) -> IntArray:
         """Return the positions of the arcs of some kinds, ascending."""
-        return np.flatnonzero(np.isin(self.kind, [int(kind) for kind in kinds]))
+        # Lanes come first and are by far the most: the others are looked at without them.
+        lanes = self.lanes.rows.shape[0]
+        others = lanes + np.flatnonzero(np.isin(self.kind[lanes:], [int(kind) for kind in kinds]))
+        return np.concatenate((np.arange(lanes), others)) if Kind.LANE in kinds else others
 
     def weighted(self) -> MoneyArray:
         """Return what the solver minimises: money, and the weight of its priority a step short."""
         bound = largest(self.arcs.cost) + len(self.priorities) * self.base
         cost = widened(self.arcs.cost, bound=bound).copy()
-        for arc, rank in self.ranked_shortages():
-            cost[arc] += (len(self.priorities) - rank) * self.base
+        arcs, ranks = self.ranked_shortages()
+        weight = (len(self.priorities) - ranks).astype(cost.dtype) * self.base
+        cost[arcs] += weight
         return cost
 
-    def ranked_shortages(self) -> Iterator[tuple[int, int]]:
-        """Yield each shortage arc of a priority, with the priority's position in ``priorities``."""
-        rank = {priority: at for at, priority in enumerate(self.priorities)}
+    def ranked_shortages(self) -> tuple[IntArray, IntArray]:
+        """Return the shortage arcs of priorities, and each one's position in ``priorities``."""
+        parts = []
         for kind, priority in (
             (Kind.SHORT, self.groups.priority),
             (Kind.KEEP_SHORT, self.stock.kept_priority),
         ):
-            for arc in self.of_kind(kind).tolist():
-                own = int(priority[self.subject[arc]])
-                if own != IN_MONEY:
-                    yield arc, rank[own]
+            arcs = self.of_kind(kind)
+            own = priority[self.subject[arcs]]
+            ranked = own != IN_MONEY
+            ranks = np.searchsorted(np.array(self.priorities, np.int64), own[ranked])
+            parts.append((arcs[ranked], ranks))
+        return np.concatenate([part[0] for part in parts]), np.concatenate(
+            [part[1] for part in parts]
+        )

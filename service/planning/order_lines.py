@@ -1,16 +1,17 @@
 """Who gets what from where: the paths of an item shared out to its order lines."""
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 from datetime import datetime
+from typing import NamedTuple
+
+import numpy as np
 
 from service.network.columns import Network
 from service.planning.groups import Groups
 from service.planning.paths import Path
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Share:
+class Share(NamedTuple):
     """``steps`` of one path that go to one order line."""
 
     path: Path
@@ -32,17 +33,16 @@ def shares_of(
         waiting.setdefault(path.group, []).append(path)
     shares: dict[int, list[Share]] = {}
     for group, lines in _lines(network, groups).items():
-        sources = sorted(
-            waiting.get(group, ()),
-            key=lambda path: (path.site, [names[leg] for leg in path.legs], path.row),
-        )
+        sources = waiting.get(group, [])
+        if len(sources) > 1:
+            sources.sort(key=lambda path: (path.site, [names[leg] for leg in path.legs], path.row))
         at, left = 0, sources[0].steps if sources else 0
         for row, wanted in lines:
             missing = wanted
             own = shares.setdefault(row, [])
             while missing and at < len(sources):
                 steps = min(missing, left)
-                own.append(Share(path=sources[at], steps=steps))
+                own.append(Share(sources[at], steps))
                 missing -= steps
                 left -= steps
                 if not left:
@@ -53,18 +53,24 @@ def shares_of(
 
 def _lines(network: Network, groups: Groups) -> dict[int, list[tuple[int, int]]]:
     """Return (row, wanted steps) of each group's order lines, first come first."""
-    instants = [_instant(text) for text in network.demand.ordered_at.values]
-    codes = network.demand.ordered_at.codes
+    ordered_at = network.demand.ordered_at
+    # Code -1, no time of order, finds the last rank and comes last; rows are in the order of their
+    # references, which the stable sort keeps among equals.
+    rank = np.append(np.zeros(len(ordered_at.values), np.int64), len(ordered_at.values))
+    by_instant = sorted(
+        range(len(ordered_at.values)), key=lambda code: _instant(ordered_at.values[code])
+    )
+    rank[by_instant] = np.arange(len(by_instant))
+    order = np.argsort(rank[ordered_at.codes[groups.rows]], kind="stable")
     lines: dict[int, list[tuple[int, int]]] = {}
     for row, group, steps in zip(
-        groups.rows.tolist(), groups.row_group.tolist(), groups.row_steps.tolist(), strict=True
+        groups.rows[order].tolist(),
+        groups.row_group[order].tolist(),
+        groups.row_steps[order].tolist(),
+        strict=True,
     ):
         if group >= 0:
             lines.setdefault(group, []).append((row, steps))
-    for own in lines.values():
-        # Rows are in the order of references, which the stable sort keeps among equals; a line
-        # without a time of order comes last.
-        own.sort(key=lambda line: instants[codes[line[0]]] if codes[line[0]] >= 0 else (1, 0.0, ""))
     return lines
 
 

@@ -2,15 +2,26 @@
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
 from service.planning.arcs import SIDES, UNLIMITED, Kind, Side
 from service.planning.solve import ItemFlow
 
+# What goods move on; the other arcs say where they come from and what is wanted.
+MOVING = (
+    Kind.LANE,
+    Kind.THROUGH,
+    Kind.ARRIVE,
+    Kind.LEAVE,
+    Kind.PASS,
+    Kind.SERVE,
+    Kind.SERVE_ARRIVED,
+)
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Path:
+
+class Path(NamedTuple):
     """``steps`` of stock ``row`` (a position in ``Stock.rows``), over ``legs``, to ``group``.
 
     ``legs`` are positions in ``LaneBounds.rows``; none where goods are served where they lie.
@@ -80,49 +91,33 @@ class _Walker:
     def __init__(self, solved: ItemFlow, lane_key: Callable[[list[int]], list[bytes]]) -> None:
         """Index the arcs with flow by the node they leave, in the order they are to be taken."""
         own = solved.own
-        moving = np.flatnonzero(
-            (solved.flow > 0)
-            & np.isin(
-                own.kind,
-                [
-                    Kind.LANE,
-                    Kind.THROUGH,
-                    Kind.ARRIVE,
-                    Kind.LEAVE,
-                    Kind.PASS,
-                    Kind.SERVE,
-                    Kind.SERVE_ARRIVED,
-                ],
-            )
-        )
+        moving = np.flatnonzero(solved.flow)
+        moving = moving[np.isin(own.kind[moving], [int(kind) for kind in MOVING])]
         kind, subject = own.kind[moving], own.subject[moving]
         lanes = np.flatnonzero(kind == Kind.LANE)
-        name = [b""] * moving.shape[0]
-        for at, own_name in zip(lanes.tolist(), lane_key(subject[lanes].tolist()), strict=True):
-            name[at] = own_name
+        names = lane_key(subject[lanes].tolist())
+        rank = np.zeros(moving.shape[0], np.int64)
+        # Names are distinct, so that their ranks sort as they do; nothing else has one.
+        rank[lanes[sorted(range(len(names)), key=names.__getitem__)]] = np.arange(1, len(names) + 1)
         serves = np.isin(kind, [Kind.SERVE, Kind.SERVE_ARRIVED])
         tail = own.arcs.tail[moving]
-        order = sorted(
-            range(moving.shape[0]),
-            key=lambda at: (int(tail[at]), not serves[at], name[at], int(subject[at])),
-        )
+        order = np.lexsort((subject, rank, ~serves, tail))
         self._head = own.arcs.head[moving][order].tolist()
-        self._kind = kind[order].tolist()
+        self._is_lane = (kind[order] == Kind.LANE).tolist()
         self._subject = subject[order].tolist()
         self._left = solved.flow[moving][order].tolist()
         # The next arc with flow at each node: arcs are used up in their order.
         bounds = np.searchsorted(tail[order], np.arange(own.node_count + 1))
         self._next = bounds[:-1].tolist()
         self._circling: dict[int, int] = {}
-        self._demand = SIDES.index(Side.DEMAND)
-        self._side = own.layout.nodes.side.tolist()
+        self._wants = (own.layout.nodes.side == SIDES.index(Side.DEMAND)).tolist()
 
     def walk(self, node: int, most: int) -> tuple[tuple[int, ...], int, int]:
         """Take at most ``most`` steps from ``node`` to a group; return legs, group, steps."""
         while True:
             way, seen, loop_from = [], {node: 0}, UNLIMITED
             at = node
-            while self._side[at] != self._demand and loop_from == UNLIMITED:
+            while not self._wants[at] and loop_from == UNLIMITED:
                 arc = self._next_arc(at)
                 way.append(arc)
                 at = self._head[arc]
@@ -134,14 +129,14 @@ class _Walker:
                 continue
             amount = min(most, *(self._left[arc] for arc in way))
             self._take(way, amount, circling=False)
-            legs = tuple(self._subject[arc] for arc in way if self._kind[arc] == Kind.LANE)
+            legs = tuple(self._subject[arc] for arc in way if self._is_lane[arc])
             return legs, self._subject[way[-1]], amount
 
     def lanes_left(self) -> dict[int, int]:
         """Return the flow of lanes that circles: taken as loops, or never reached from stock."""
         circling = dict(self._circling)
         for arc, left in enumerate(self._left):
-            if left and self._kind[arc] == Kind.LANE:
+            if left and self._is_lane[arc]:
                 lane = self._subject[arc]
                 circling[lane] = circling.get(lane, 0) + left
         return circling
@@ -158,6 +153,6 @@ class _Walker:
         """Take ``amount`` steps off every arc of a way."""
         for arc in way:
             self._left[arc] -= amount
-            if circling and self._kind[arc] == Kind.LANE:
+            if circling and self._is_lane[arc]:
                 lane = self._subject[arc]
                 self._circling[lane] = self._circling.get(lane, 0) + amount

@@ -1,6 +1,5 @@
 """The plan as a document: every table, added up exactly from the flow of each item."""
 
-import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
@@ -8,14 +7,13 @@ from typing import Any
 
 from service.network.columns import Network
 from service.network.currencies import minor_units
-from service.planning.amounts import Measured, text
+from service.planning.amounts import Document, Measured, text
 from service.planning.arcs import Kind
-from service.planning.certificate import Document
 from service.planning.compile import Compiled
 from service.planning.consignments import consignments
-from service.planning.groups import IN_MONEY
-from service.planning.order_lines import Share, shares_of
-from service.planning.plan_lines import ItemPlan, PlanLine, item_plan, plan_line_documents
+from service.planning.order_line_documents import order_line_documents
+from service.planning.order_lines import shares_of
+from service.planning.plan_lines import ItemPlan, item_plan, plan_line_documents
 from service.planning.rules_in_force import rules_in_force
 from service.planning.shortages import shortage_rows
 from service.planning.solve import ItemFlow
@@ -45,7 +43,7 @@ class PlanDocument:
 class _Tables:
     """Collects the rows of all items."""
 
-    lines: list[PlanLine]
+    plans: list[ItemPlan]
     order_lines: dict[int, Document]
     shortages: dict[int, Document]
     kept_short: list[tuple[tuple[int, int], Document]]
@@ -62,10 +60,12 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
     tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), [])
     for flow in solved:
         _add_item(network, flow, tables)
+    scale = compiled.cost_scale
+    lines = [line for plan in tables.plans for line in plan.lines]
     parts = {
-        "supply": sum((line.supply for line in tables.lines), Fraction(0)),
-        "handling": sum((line.handling for line in tables.lines), Fraction(0)),
-        "transport": sum((line.transport for line in tables.lines), Fraction(0)),
+        "supply": sum(line.supply for line in lines) / scale,
+        "handling": sum(line.handling for line in lines) / scale,
+        "transport": sum(line.transport for line in lines) / scale,
         "charges": Fraction(0),
         "shortage": tables.shortage_money,
         "lateness": Fraction(0),
@@ -80,9 +80,9 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
         "rounding_difference": text(Fraction(rounded) - cost),
         "cost_parts": {name: text(part) for name, part in parts.items()},
         "totals": _totals(order_lines, tables.quantities, setting),
-        "plan_lines": plan_line_documents(network, tables.lines),
+        "plan_lines": plan_line_documents(network, tables.plans, scale),
         "order_lines": order_lines,
-        "consignments": consignments(network, tables.lines, references=tables.references),
+        "consignments": consignments(network, tables.plans, scale, references=tables.references),
         "shortages": [
             *(tables.shortages[row] for row in sorted(tables.shortages)),
             *(row for _, row in sorted(tables.kept_short, key=lambda pair: pair[0])),
@@ -181,20 +181,17 @@ def _totals(order_lines: list[Document], quantities: list[Document], setting: Se
 def _add_item(network: Network, flow: ItemFlow, tables: _Tables) -> None:
     """Add the rows of one item to all tables."""
     plan = item_plan(network, flow)
-    own, groups = flow.own, flow.own.groups
-    item = network.items[own.item]
+    groups, item = flow.own.groups, network.items[flow.own.item]
     shares = shares_of(network, groups, plan.paths.paths, names=plan.name_bytes())
-    served = {
-        row: sum(share.steps for share in shares.get(row, ())) for row in groups.rows.tolist()
-    }
-    tables.lines.extend(plan.lines)
-    tables.order_lines.update(_order_lines(network, plan, shares, served))
+    served = dict.fromkeys(groups.rows.tolist(), 0)
+    references = network.demand.reference.tolist()
     for row, own_shares in shares.items():
+        served[row] = sum(share.steps for share in own_shares)
         for share in own_shares:
             for leg in share.path.legs:
-                tables.references.setdefault(int(own.lanes.rows[leg]), set()).add(
-                    network.demand.reference[row]
-                )
+                tables.references.setdefault(plan.rows[leg], set()).add(references[row])
+    tables.plans.append(plan)
+    tables.order_lines.update(order_line_documents(network, plan, shares, served))
     lines, kept = shortage_rows(network, flow, served=served)
     tables.shortages.update(lines)
     tables.kept_short.extend(kept)
@@ -217,63 +214,6 @@ def _add_item(network: Network, flow: ItemFlow, tables: _Tables) -> None:
                 "weight_kg": Measured().plus(goes, item.weight_kg).text,
             }
         )
-
-
-def _order_lines(
-    network: Network,
-    plan: ItemPlan,
-    shares: Mapping[int, list[Share]],
-    served: Mapping[int, int],
-) -> dict[int, Document]:
-    """Return the order lines of one item by their row in the network's demand."""
-    own, demand = plan.solved.own, network.demand
-    groups, item = own.groups, network.items[own.item]
-    rows = {}
-    for at, row in enumerate(groups.rows.tolist()):
-        wanted, priority = int(groups.row_steps[at]), int(groups.row_priority[at])
-        line: Document = {
-            "reference": demand.reference[row].decode(),
-            "order": demand.order.text(row),
-            "site": network.sites[demand.site[row]].id,
-            "item": item.id,
-            "quantity": text(wanted * item.step),
-            "served": text(served[row] * item.step),
-            "short": text((wanted - served[row]) * item.step),
-            "priority": None if priority == IN_MONEY else priority,
-        }
-        if priority == IN_MONEY:
-            line["shortage_cost"] = text(groups.row_money.fraction(at) / item.step)
-        ordered = groups.row_exact.fraction(at)
-        if ordered != wanted:
-            line["ordered"] = text(ordered * item.step)
-        line["sources"] = _sources(network, plan, shares.get(row, ()))
-        for name, column in (("tags", demand.tags), ("extra", demand.extra)):
-            value = column.text(row)
-            if value is not None:
-                line[name] = json.loads(value)
-        rows[row] = line
-    return rows
-
-
-def _sources(network: Network, plan: ItemPlan, shares: Sequence[Share]) -> list[Document]:
-    """Return the sources of one order line, those alike in origin, lot and legs as one."""
-    own, supply = plan.solved.own, network.supply
-    item = network.items[own.item]
-    together: dict[tuple[int, str | None, tuple[int, ...]], int] = {}
-    for share in shares:
-        path = share.path
-        key = (path.site, supply.lot.text(int(own.stock.rows[path.row])), path.legs)
-        together[key] = together.get(key, 0) + share.steps
-    return [
-        {
-            "origin": network.sites[site].id,
-            "item": item.id,
-            "lot": lot,
-            "quantity": text(steps * item.step),
-            "legs": [{"lane": plan.names[leg]} for leg in legs],
-        }
-        for (site, lot, legs), steps in together.items()
-    ]
 
 
 def _site_use(network: Network, flow: ItemFlow) -> list[tuple[tuple[int, int], Document]]:

@@ -1,51 +1,50 @@
 """What moves on each lane, and what it costs; the parts add up to the plan's cost exactly."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import NamedTuple
+
+import numpy as np
 
 from service.network.columns import IntArray, Network
 from service.network.naming import lane_names
-from service.planning.amounts import text
-from service.planning.arcs import Kind
+from service.planning.amounts import texts
+from service.planning.arcs import Kind, MoneyArray
 from service.planning.paths import Paths, paths_of
 from service.planning.solve import ItemFlow
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class PlanLine:
-    """One item on one lane, or (``lane`` None) served where it lies; money in plan currency.
+class PlanLine(NamedTuple):
+    """One item on one lane, or (``lane`` None) served where it lies.
 
-    ``row`` is the lane's row in the network, -1 without a lane; ``quantity`` is in item units.
+    ``row`` is the lane's row in the network, -1 without a lane. ``steps`` are those of the item;
+    money is scaled (``Compiled.cost_scale``), ``rate`` that of one step.
     """
 
     row: int
     lane: str | None
     origin: int
     destination: int
-    item: int
-    quantity: Fraction
-    unit_cost: Fraction
-    transport: Fraction
-    supply: Fraction
-    handling: Fraction
-
-    @property
-    def cost(self) -> Fraction:
-        """All of the line's money."""
-        return self.transport + self.supply + self.handling
+    steps: int
+    rate: int
+    transport: int
+    supply: int
+    handling: int
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ItemPlan:
     """The plan of one item before it is shared out: its flow, paths, lane names and plan lines.
 
-    ``names`` are those of the lanes in use, by position in ``LaneBounds.rows``.
+    ``names`` are those of the lanes in use, by position in ``LaneBounds.rows``, ``rows`` their
+    rows in the network.
     """
 
     solved: ItemFlow
     paths: Paths
     names: Mapping[int, str]
+    rows: Mapping[int, int]
     lines: tuple[PlanLine, ...]
 
     def name_bytes(self) -> dict[int, bytes]:
@@ -65,6 +64,7 @@ def item_plan(network: Network, solved: ItemFlow) -> ItemPlan:
         solved=solved,
         paths=paths,
         names=names,
+        rows=dict(zip(positions, rows.tolist(), strict=True)),
         lines=_lines(network, solved, paths, names=names, on_lanes=on_lanes),
     )
 
@@ -83,79 +83,104 @@ def _lines(
     at a destination on the lane whose goods are used up there.
     """
     own = solved.own
-    thing = network.items[own.item]
-    drawn: dict[int, Fraction] = {}
+    of_tier, handling = _stock_costs(solved), _handling(solved)
+    tier_of = own.stock.row_tier.tolist()
+    drawn: dict[int, int] = {}
     used_up: dict[int, int] = {}
-    local: dict[int, list[Fraction]] = {}
+    local: dict[int, tuple[int, int]] = {}
     for path in paths.paths:
-        money = path.steps * own.stock.money.fraction(int(own.stock.row_tier[path.row]))
+        money = path.steps * of_tier[tier_of[path.row]]
         if path.legs:
-            drawn[path.legs[0]] = drawn.get(path.legs[0], Fraction(0)) + money
+            drawn[path.legs[0]] = drawn.get(path.legs[0], 0) + money
             used_up[path.legs[-1]] = used_up.get(path.legs[-1], 0) + path.steps
         else:
-            sums = local.setdefault(path.site, [Fraction(0), Fraction(0)])
-            sums[0] += path.steps * thing.step
-            sums[1] += money
-    lines = []
-    for lane, steps in on_lanes.items():
-        row = int(own.lanes.rows[lane])
-        origin, destination = int(network.lanes.origin[row]), int(network.lanes.destination[row])
-        money = own.lanes.money.fraction(lane)
-        lines.append(
-            PlanLine(
-                row=row,
-                lane=names[lane],
-                origin=origin,
-                destination=destination,
-                item=own.item,
-                quantity=steps * thing.step,
-                unit_cost=money / thing.step,
-                transport=steps * money,
-                supply=drawn.get(lane, Fraction(0)),
-                handling=thing.step
-                * (
-                    steps * network.sites[origin].handling(thing.id)
-                    + used_up.get(lane, 0) * network.sites[destination].handling(thing.id)
-                ),
-            )
-        )
-    lines.extend(
-        PlanLine(
-            row=-1,
-            lane=None,
-            origin=site,
-            destination=site,
-            item=own.item,
-            quantity=quantity,
-            unit_cost=Fraction(0),
-            transport=Fraction(0),
-            supply=money,
-            handling=quantity * network.sites[site].handling(thing.id),
-        )
-        for site, (quantity, money) in local.items()
+            steps, paid = local.get(path.site, (0, 0))
+            local[path.site] = (steps + path.steps, paid + money)
+    lanes = np.array(list(on_lanes), np.int64)
+    rows = own.lanes.rows[lanes]
+    columns = zip(
+        rows.tolist(),
+        network.lanes.origin[rows].tolist(),
+        network.lanes.destination[rows].tolist(),
+        own.arcs.cost[lanes].tolist(),
+        on_lanes.items(),
+        strict=True,
     )
+    lines = [
+        PlanLine(
+            row,
+            names[lane],
+            origin,
+            destination,
+            steps,
+            rate,
+            steps * rate,
+            drawn.get(lane, 0),
+            steps * handling[origin] + used_up.get(lane, 0) * handling[destination],
+        )
+        for row, origin, destination, rate, (lane, steps) in columns
+    ]
+    lines += [
+        PlanLine(-1, None, site, site, steps, 0, 0, money, steps * handling[site])
+        for site, (steps, money) in local.items()
+    ]
     return tuple(lines)
 
 
-def plan_line_documents(network: Network, lines: list[PlanLine]) -> list[dict[str, object]]:
+def _stock_costs(solved: ItemFlow) -> dict[int, int]:
+    """Return the scaled cost of a step by tier: paid where it leaves its shelf, if it has one."""
+    return _costs(solved, Kind.SUPPLY) | _costs(solved, Kind.DRAW)
+
+
+def _handling(solved: ItemFlow) -> dict[int, int]:
+    """Return the scaled cost of a step that passes a site, by site."""
+    return _costs(solved, Kind.THROUGH)
+
+
+def _costs(solved: ItemFlow, kind: Kind) -> dict[int, int]:
+    """Return the scaled cost of the arcs of one kind by subject."""
+    own = solved.own
+    arcs = own.of_kind(kind)
+    cost: MoneyArray = own.arcs.cost[arcs]
+    return dict(zip(own.subject[arcs].tolist(), cost.tolist(), strict=True))
+
+
+def plan_line_documents(
+    network: Network, plans: Sequence[ItemPlan], scale: Fraction
+) -> list[dict[str, object]]:
     """Return the table ``plan_lines``, sorted by origin, destination, item and lane."""
-    lines = sorted(
-        lines,
-        key=lambda line: (line.origin, line.destination, line.item, (line.lane or "").encode()),
-    )
-    return [
-        {
-            "lane": line.lane,
-            "origin": network.sites[line.origin].id,
-            "destination": network.sites[line.destination].id,
-            "item": network.items[line.item].id,
-            "quantity": text(line.quantity),
-            "unit_cost": text(line.unit_cost),
-            "transport_cost": text(line.transport),
-            "supply_cost": text(line.supply),
-            "handling_cost": text(line.handling),
-            "charges": "0",
-            "cost": text(line.cost),
-        }
-        for line in lines
-    ]
+    sites = [site.id for site in network.sites]
+    keyed: list[tuple[tuple[int, int, int, bytes], dict[str, object]]] = []
+    for plan in plans:
+        item, lines = network.items[plan.solved.own.item], plan.lines
+        money = 1 / scale
+        columns = zip(
+            lines,
+            texts([line.steps for line in lines], item.step),
+            texts([line.rate for line in lines], money / item.step),
+            texts([line.transport for line in lines], money),
+            texts([line.supply for line in lines], money),
+            texts([line.handling for line in lines], money),
+            texts([line.transport + line.supply + line.handling for line in lines], money),
+            strict=True,
+        )
+        keyed += [
+            (
+                (line.origin, line.destination, plan.solved.own.item, (line.lane or "").encode()),
+                {
+                    "lane": line.lane,
+                    "origin": sites[line.origin],
+                    "destination": sites[line.destination],
+                    "item": item.id,
+                    "quantity": quantity,
+                    "unit_cost": unit_cost,
+                    "transport_cost": transport,
+                    "supply_cost": supply,
+                    "handling_cost": handling,
+                    "charges": "0",
+                    "cost": cost,
+                },
+            )
+            for line, quantity, unit_cost, transport, supply, handling, cost in columns
+        ]
+    return [document for _, document in sorted(keyed, key=lambda pair: pair[0])]

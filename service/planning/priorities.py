@@ -3,6 +3,8 @@
 from dataclasses import dataclass
 from fractions import Fraction
 
+import numpy as np
+
 from service.planning.arcs import product_total
 from service.planning.solve import ItemFlow
 
@@ -23,8 +25,12 @@ def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
     """
     own = solved.own
     short = dict.fromkeys(range(len(own.priorities)), 0)
-    for arc, rank in own.ranked_shortages():
-        short[rank] += int(solved.flow[arc])
+    arcs, ranks = own.ranked_shortages()
+    missing = np.flatnonzero(solved.flow[arcs])
+    for rank, steps in zip(
+        ranks[missing].tolist(), solved.flow[arcs[missing]].tolist(), strict=True
+    ):
+        short[rank] += steps
     return Achieved(
         short=tuple((priority, short[rank]) for rank, priority in enumerate(own.priorities))
         if shortages

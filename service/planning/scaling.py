@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from service.network.columns import CodeArray, IntArray
+from service.network.columns import BoolArray, CodeArray, IntArray
 from service.planning.arcs import SAFE, MoneyArray, largest
 from service.planning.limits import NumbersTooLargeError
 
@@ -74,6 +74,17 @@ class Rationals:
     def fraction(self, row: int) -> Fraction:
         """Return the value of one row."""
         return int(self.values[row]) * self.multipliers[int(self.codes[row])]
+
+    def equals(self, whole: IntArray) -> BoolArray:
+        """Return where the value is the whole number given."""
+        result = np.zeros(self.values.shape[0], np.bool_)
+        for multiplier, rows in self._by_multiplier():
+            values, numbers = self.values[rows], whole[rows]
+            above, below = multiplier.numerator, multiplier.denominator
+            if max(largest(values) * abs(above), largest(numbers) * below) >= SAFE:
+                values, numbers = values.astype(object), numbers.astype(object)
+            result[rows] = values * above == numbers * below
+        return result
 
     def grid(self) -> Fraction:
         """Return the largest number of which every value is a whole multiple; 0 if all are 0."""

@@ -3,6 +3,8 @@
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
 from service.network.columns import IntArray, Network
 from service.planning.arcs import ROOT, Kind, MoneyArray
 from service.planning.canonical_plan import canonical_flow
@@ -28,6 +30,9 @@ class ItemFlow:
 
     def amounts(self, kind: Kind) -> dict[int, int]:
         """Return the flow above 0 on the arcs of one kind, by subject."""
+        if kind == Kind.LANE:
+            lanes = np.flatnonzero(self.flow[: self.own.lanes.rows.shape[0]])
+            return dict(zip(lanes.tolist(), self.flow[lanes].tolist(), strict=True))
         arcs = self.own.of_kind(kind)
         carried = self.flow[arcs]
         used = carried != 0

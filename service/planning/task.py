@@ -11,8 +11,8 @@ from service.network.canonical import canonical_json, digest, network_digest, re
 from service.network.columns import Network
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE
 from service.network.options import Options
+from service.planning.amounts import Document
 from service.planning.certificate import (
-    Document,
     contradiction_certificate,
     proved_certificate,
 )

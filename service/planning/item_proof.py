@@ -1,0 +1,172 @@
+"""Flow and prices of one item as the certificate states them."""
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from service.network.columns import IntArray, Network
+from service.planning.amounts import Document, texts
+from service.planning.arcs import ROOT, SIDES, Kind, Side
+from service.planning.item_network import ItemNetwork
+from service.planning.solve import ItemFlow
+
+
+def item_proof(network: Network, solved: ItemFlow) -> Document:
+    """Return flow and prices of one item, zeros left out.
+
+    Rows are sorted by what names them, by UTF-8 bytes, which is the order of characters too; an
+    absent name comes first.
+    """
+    own = solved.own
+    stock, step = own.stock, network.items[own.item].step
+    sites = [site.id for site in network.sites]
+    shelved = own.layout.stock >= 0
+    plain = {
+        tier: steps for tier, steps in solved.amounts(Kind.SUPPLY).items() if not shelved[tier]
+    }
+
+    def tiers(amounts: Mapping[int, int]) -> list[Document]:
+        order = sorted(amounts, key=lambda tier: (int(stock.site[tier]), int(stock.number[tier])))
+        quantities = texts([amounts[tier] for tier in order], step)
+        return [
+            {
+                "site": sites[stock.site[tier]],
+                "tier": int(stock.number[tier]),
+                "quantity": quantity,
+            }
+            for tier, quantity in zip(order, quantities, strict=True)
+        ]
+
+    prices = named_nodes(network, own)
+    amounts = solved.price.tolist()
+    for node, name in prices:
+        name["price"] = str(int(amounts[node]))
+    return {
+        "item": network.items[own.item].id,
+        "base": str(own.base),
+        # Stock that may be kept is drawn where it leaves the shelf, other stock where it enters.
+        "draws": tiers(plain | solved.amounts(Kind.DRAW)),
+        "kept": tiers(solved.amounts(Kind.KEPT)),
+        "serves": _serves(network, solved),
+        "passes": _passes(network, solved),
+        "shortages": _shortages(network, solved),
+        "prices": [name for _, name in prices],
+    }
+
+
+def named_nodes(network: Network, own: ItemNetwork) -> list[tuple[int, Document]]:
+    """Return all nodes but the root with what the certificate calls them, sorted by that."""
+    nodes = own.layout.nodes
+    sites, sides = [site.id for site in network.sites], [side.value for side in SIDES]
+    labels = network.demand.reference[own.groups.label].tolist()
+    demand, stock, received = (
+        SIDES.index(side) for side in (Side.DEMAND, Side.STOCK, Side.RECEIVED)
+    )
+    order = _in_order(own)
+    order = order[order != ROOT]
+    named: list[tuple[int, Document]] = []
+    for node, site, side, qualifier in zip(
+        order.tolist(),
+        nodes.site[order].tolist(),
+        nodes.side[order].tolist(),
+        nodes.qualifier[order].tolist(),
+        strict=True,
+    ):
+        text: str | None = None
+        if side == demand:
+            text = labels[qualifier].decode()
+        elif side == stock:
+            text = str(qualifier)
+        elif side == received and qualifier >= 0:
+            text = sites[qualifier]
+        named.append((node, {"site": sites[site], "side": sides[side], "qualifier": text}))
+    return named
+
+
+def _in_order(own: ItemNetwork) -> IntArray:
+    """Return all nodes, sorted by site, side and qualifier.
+
+    Sites and order lines are in the order of their names, which their positions keep.
+    """
+    nodes = own.layout.nodes
+    side_rank = np.argsort(np.argsort([side.value for side in SIDES]))
+    qualifier = nodes.qualifier.astype(np.int64)
+    demand = nodes.side == SIDES.index(Side.DEMAND)
+    qualifier[demand] = own.groups.label[qualifier[demand]]
+    stock = nodes.side == SIDES.index(Side.STOCK)
+    # Tier numbers are sorted as the texts they are.
+    numbers = sorted({int(number) for number in qualifier[stock]}, key=str)
+    rank = {number: at for at, number in enumerate(numbers)}
+    qualifier[stock] = [rank[number] for number in qualifier[stock].tolist()]
+    return np.lexsort((qualifier, side_rank[nodes.side], nodes.site))
+
+
+def _serves(network: Network, solved: ItemFlow) -> list[Document]:
+    """Return what reaches each group, from where."""
+    own = solved.own
+    groups, nodes = own.groups, own.layout.nodes
+    arcs = own.of_kind(Kind.SERVE, Kind.SERVE_ARRIVED)
+    arcs = arcs[solved.flow[arcs] != 0]
+    group, arrived = own.subject[arcs], own.kind[arcs] == Kind.SERVE_ARRIVED
+    origin = nodes.qualifier[own.arcs.tail[arcs]]
+    label = groups.label[group]
+    order = np.lexsort((origin, arrived, label, groups.site[group]))
+    sites = [site.id for site in network.sites]
+    return [
+        {
+            "site": sites[site],
+            "group": reference.decode(),
+            "from": "received" if came else "out",
+            "origin": sites[whose] if whose >= 0 else None,
+            "quantity": quantity,
+        }
+        for site, reference, came, whose, quantity in zip(
+            groups.site[group[order]].tolist(),
+            network.demand.reference[label[order]].tolist(),
+            arrived[order].tolist(),
+            origin[order].tolist(),
+            texts(solved.flow[arcs[order]].tolist(), network.items[own.item].step),
+            strict=True,
+        )
+    ]
+
+
+def _passes(network: Network, solved: ItemFlow) -> list[Document]:
+    """Return what passes cross-docks that keep goods apart."""
+    own = solved.own
+    arcs = own.of_kind(Kind.PASS)
+    arcs = arcs[solved.flow[arcs] != 0]
+    origin = own.layout.nodes.qualifier[own.arcs.tail[arcs]]
+    order = np.lexsort((origin, own.subject[arcs]))
+    sites = [site.id for site in network.sites]
+    return [
+        {
+            "site": sites[site],
+            "origin": sites[whose] if whose >= 0 else None,
+            "quantity": quantity,
+        }
+        for site, whose, quantity in zip(
+            own.subject[arcs[order]].tolist(),
+            origin[order].tolist(),
+            texts(solved.flow[arcs[order]].tolist(), network.items[own.item].step),
+            strict=True,
+        )
+    ]
+
+
+def _shortages(network: Network, solved: ItemFlow) -> list[Document]:
+    """Return what is short of each group and of kept stock."""
+    own = solved.own
+    groups, kept_site = own.groups, own.stock.kept_site.tolist()
+    short = [
+        (int(groups.site[group]), network.demand.reference[groups.label[group]].decode(), steps)
+        for group, steps in solved.amounts(Kind.SHORT).items()
+    ]
+    # No name at all comes before any other; a group's is never empty.
+    short += [(kept_site[row], "", steps) for row, steps in solved.amounts(Kind.KEEP_SHORT).items()]
+    short.sort()
+    quantities = texts([steps for _, _, steps in short], network.items[own.item].step)
+    return [
+        {"site": network.sites[site].id, "group": name or None, "quantity": quantity}
+        for (site, name, _), quantity in zip(short, quantities, strict=True)
+    ]

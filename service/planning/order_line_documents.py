@@ -1,0 +1,95 @@
+"""The table of order lines: what each wanted, what it gets, and from where."""
+
+import json
+from collections.abc import Mapping, Sequence
+
+from service.network.columns import Network
+from service.planning.amounts import Document, text, texts
+from service.planning.groups import IN_MONEY
+from service.planning.order_lines import Share
+from service.planning.plan_lines import ItemPlan
+
+
+def order_line_documents(
+    network: Network,
+    plan: ItemPlan,
+    shares: Mapping[int, list[Share]],
+    served: Mapping[int, int],
+) -> dict[int, Document]:
+    """Return the order lines of one item by their row in the network's demand."""
+    own, demand = plan.solved.own, network.demand
+    groups, item = own.groups, network.items[own.item]
+    rows, wanted = groups.rows.tolist(), groups.row_steps.tolist()
+    sources = _Sources(network, plan)
+    sites = [site.id for site in network.sites]
+    columns = zip(
+        rows,
+        demand.reference[groups.rows].tolist(),
+        demand.order.codes[groups.rows].tolist(),
+        demand.site[groups.rows].tolist(),
+        texts(wanted, item.step),
+        texts([served[row] for row in rows], item.step),
+        texts([steps - served[row] for row, steps in zip(rows, wanted, strict=True)], item.step),
+        groups.row_priority.tolist(),
+        groups.row_exact.equals(groups.row_steps).tolist(),
+        strict=True,
+    )
+    documents: dict[int, Document] = {}
+    for at, (row, reference, order, site, quantity, goes, short, priority, exact) in enumerate(
+        columns
+    ):
+        line: Document = {
+            "reference": reference.decode(),
+            "order": None if order < 0 else demand.order.values[order],
+            "site": sites[site],
+            "item": item.id,
+            "quantity": quantity,
+            "served": goes,
+            "short": short,
+            "priority": None if priority == IN_MONEY else priority,
+        }
+        if priority == IN_MONEY:
+            line["shortage_cost"] = text(groups.row_money.fraction(at) / item.step)
+        if not exact:
+            line["ordered"] = text(groups.row_exact.fraction(at) * item.step)
+        line["sources"] = sources.of(shares.get(row, ()))
+        documents[row] = line
+    for name, column in (("tags", demand.tags), ("extra", demand.extra)):
+        if column.values:
+            for row in rows:
+                value = column.text(row)
+                if value is not None:
+                    documents[row][name] = json.loads(value)
+    return documents
+
+
+class _Sources:
+    """Writes where order lines of one item get their goods from."""
+
+    def __init__(self, network: Network, plan: ItemPlan) -> None:
+        """Look up what every source needs."""
+        own = plan.solved.own
+        item = network.items[own.item]
+        self._item, self._step, self._names = item.id, item.step, plan.names
+        self._sites = [site.id for site in network.sites]
+        lots = network.supply.lot
+        codes = lots.codes[own.stock.rows].tolist()
+        self._lots = [None if code < 0 else lots.values[code] for code in codes]
+
+    def of(self, shares: Sequence[Share]) -> list[Document]:
+        """Return the sources of one order line, those alike in origin, lot and legs as one."""
+        together: dict[tuple[int, str | None, tuple[int, ...]], int] = {}
+        for path, steps in shares:
+            key = (path.site, self._lots[path.row], path.legs)
+            together[key] = together.get(key, 0) + steps
+        quantities = texts(list(together.values()), self._step)
+        return [
+            {
+                "origin": self._sites[site],
+                "item": self._item,
+                "lot": lot,
+                "quantity": quantity,
+                "legs": [{"lane": self._names[leg]} for leg in legs],
+            }
+            for (site, lot, legs), quantity in zip(together, quantities, strict=True)
+        ]
