@@ -19,7 +19,7 @@ from service.network.files.media_types import ARROW, CSV, JSON, PARQUET, XLSX, c
 _MARKS: Final[Mapping[bytes, str]] = {b"PAR1": PARQUET, b"ARROW1": ARROW}
 _ENDINGS: Final[Mapping[str, str]] = {".csv": CSV, ".xlsx": XLSX}
 _PACKINGS: Final[Mapping[bytes, str]] = {b"\x1f\x8b": "gzip", b"\x28\xb5\x2f\xfd": "zstd"}
-_PACKED_ENDINGS: Final = frozenset({".gz", ".zst"})
+_PACKED_ENDINGS: Final[Mapping[str, str]] = {".gz": "gzip", ".zst": "zstd"}
 _HEAD_BYTES: Final = 1 << 12
 _ZIP_MARK: Final = b"PK\x03\x04"
 # So that the same folder is the same zip, and has the same digest, whenever it is given.
@@ -64,9 +64,9 @@ def _told(path: Path) -> Spooled:
     """Return a file with what its bytes, and where they say nothing its name, tell of it."""
     with path.open("rb") as source:
         head = source.read(_HEAD_BYTES)
-    encoding = next((name for mark, name in _PACKINGS.items() if head.startswith(mark)), None)
-    is_packed = encoding is not None and path.suffix.lower() in _PACKED_ENDINGS
-    named = _ENDINGS.get((path.with_suffix("") if is_packed else path).suffix.lower(), JSON)
+    said = _PACKED_ENDINGS.get(path.suffix.lower())
+    encoding = next((name for mark, name in _PACKINGS.items() if head.startswith(mark)), said)
+    named = _ENDINGS.get((path.with_suffix("") if said else path).suffix.lower(), JSON)
     inner = head if encoding is None else _unpacked_head(head, encoding)
     if inner.startswith(_ZIP_MARK):
         # The directory that tells a workbook from a zip is at the end, out of reach when packed.
