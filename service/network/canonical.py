@@ -18,6 +18,7 @@ from service.network.column_bytes import (
     TABLE_FORMS,
     ColumnForm,
     NormalFormError,
+    Octets,
     code_bytes,
     code_column,
     decimal_bytes,
@@ -30,7 +31,6 @@ from service.network.column_bytes import (
 from service.network.columns import (
     Decimals,
     DemandTable,
-    IdArray,
     LaneTable,
     Network,
     SupplyTable,
@@ -38,7 +38,7 @@ from service.network.columns import (
 )
 from service.network.normal_form import normal_form
 from service.network.normal_rows import check_head, check_rows
-from service.network.stored_zip import ZipFormError, read_stored_zip, write_stored_zip
+from service.network.stored_zip import ZipFormError, stored_entries, write_stored_zip
 from service.network.strict_json import StrictJsonError, strict_json
 
 __all__ = [
@@ -58,23 +58,57 @@ HEAD_ENTRY = "network/head.json"
 _Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
 
 
-def digest(data: bytes) -> str:
+def digest(data: Octets) -> str:
     """Return the SHA-256 of ``data`` as it is written everywhere: ``sha-256:`` and hex."""
     return f"sha-256:{hashlib.sha256(data).hexdigest()}"
 
 
 def network_entries(network: Network) -> dict[str, bytes]:
     """Return the entries of ``network``, which is in normal form, by name and sorted by it."""
-    entries: dict[str, bytes] = {}
+    return {name: bytes(content) for name, content in _entries(network).items()}
+
+
+def network_digest(network: Network) -> str:
+    """Return the digest of ``network``, which is in normal form."""
+    if network.known_digest is not None:
+        return network.known_digest
+    return digest(_entries(network)[HEAD_ENTRY])
+
+
+def write_network(network: Network, path: Path) -> str:
+    """Write the entries of ``network`` as a zip and return the network's digest."""
+    entries = _entries(network)
+    write_stored_zip(path, entries)
+    return digest(entries[HEAD_ENTRY])
+
+
+def read_network(path: Path) -> Network:
+    """Return the network in the zip at ``path``; raise ``NormalFormError`` if it is not normal.
+
+    Its digest, which follows from what was read, stays known.
+    """
+    try:
+        entries, damaged = stored_entries(path.read_bytes())
+    except ZipFormError as error:
+        raise NormalFormError(f"the zip cannot be read: {error}") from error
+    if damaged:
+        raise NormalFormError(f"the zip is damaged at {damaged[0]}")
+    return network_from_entries(entries)
+
+
+def _entries(network: Network) -> dict[str, Octets]:
+    """Return the entries of ``network`` sorted by name, large ones as views of its columns."""
+    entries: dict[str, Octets] = {}
     tables: dict[str, object] = {}
     for table, forms in TABLE_FORMS.items():
         rows = getattr(network, table)
         columns: dict[str, object] = {}
         for form in forms:
-            written = _column_entry(getattr(rows, form.field), form)
-            if written is None:
+            column = getattr(rows, form.field)
+            described = _described(column, form)
+            if described is None:
                 continue
-            entry, described = written
+            entry = _column_entry(column, form)
             entries[f"network/{table}/{form.name}"] = entry
             columns[form.name] = described | {"digest": digest(entry)}
         tables[table] = {"rows": len(rows), "columns": columns}
@@ -88,30 +122,7 @@ def network_entries(network: Network) -> dict[str, bytes]:
     return dict(sorted(entries.items()))
 
 
-def network_digest(network: Network) -> str:
-    """Return the digest of ``network``, which is in normal form."""
-    return digest(network_entries(network)[HEAD_ENTRY])
-
-
-def write_network(network: Network, path: Path) -> str:
-    """Write the entries of ``network`` as a zip and return the network's digest."""
-    entries = network_entries(network)
-    write_stored_zip(path, entries)
-    return digest(entries[HEAD_ENTRY])
-
-
-def read_network(path: Path) -> Network:
-    """Return the network in the zip at ``path``; raise ``NormalFormError`` if it is not normal."""
-    try:
-        entries, damaged = read_stored_zip(path.read_bytes())
-    except ZipFormError as error:
-        raise NormalFormError(f"the zip cannot be read: {error}") from error
-    if damaged:
-        raise NormalFormError(f"the zip is damaged at {damaged[0]}")
-    return network_from_entries(entries)
-
-
-def network_from_entries(entries: Mapping[str, bytes]) -> Network:
+def network_from_entries(entries: Mapping[str, Octets]) -> Network:
     """Return the network that ``entries`` hold; raise ``NormalFormError`` if it is not normal."""
     head = _head(entries)
     documents, tables = head.pop("items"), head.pop("tables")
@@ -139,19 +150,31 @@ def network_from_entries(entries: Mapping[str, bytes]) -> Network:
         lanes=_table(LaneTable, columns["lanes"]),
     )
     check_rows(network)
+    # Whoever makes another network of this one makes one without a known digest.
+    object.__setattr__(network, "known_digest", digest(entries[HEAD_ENTRY]))
     return network
 
 
 def _table(kind: type[_Table], columns: Mapping[str, object]) -> _Table:
-    """Return the table of ``columns``, each of which was made for its field."""
+    """Return the table of ``columns``, each of which was made for its field.
+
+    Nobody can change what is in them: the digest that is known of them would be wrong.
+    """
+    for column in columns.values():
+        for part in ("values", "present", "codes"):
+            array = getattr(column, part, None)
+            if isinstance(array, np.ndarray):
+                array.flags.writeable = False
+        if isinstance(column, np.ndarray):
+            column.flags.writeable = False
     return kind(**cast("Any", columns))
 
 
-def _head(entries: Mapping[str, bytes]) -> dict[str, Any]:
+def _head(entries: Mapping[str, Octets]) -> dict[str, Any]:
     """Return the parsed head, its shape checked down to the columns of the tables."""
-    data = entries.get(HEAD_ENTRY)
-    if data is None:
+    if HEAD_ENTRY not in entries:
         raise NormalFormError("the head is missing")
+    data = bytes(entries[HEAD_ENTRY])
     try:
         head = strict_json(data)
         # One comparison finds spaces, floats and every other spelling.
@@ -164,8 +187,8 @@ def _head(entries: Mapping[str, bytes]) -> dict[str, Any]:
     return head
 
 
-def _column_entry(column: object, form: ColumnForm) -> tuple[bytes, dict[str, object]] | None:
-    """Return the bytes of a column and how the head describes it; None where all is absent."""
+def _described(column: object, form: ColumnForm) -> dict[str, object] | None:
+    """Return how the head describes a column, but for its digest; None where all is absent."""
     described: dict[str, object] = {"type": form.kind}
     if isinstance(column, Decimals):
         if not column.present.any():
@@ -173,27 +196,34 @@ def _column_entry(column: object, form: ColumnForm) -> tuple[bytes, dict[str, ob
         described["exponent"] = column.exponent
         if not column.present.all():
             described["nulls"] = True
-        return decimal_bytes(column), described
+        return described
     if isinstance(column, Texts):
-        return (texts_bytes(column), described) if column.values else None
+        return described if column.values else None
     if not isinstance(column, np.ndarray):
         raise NormalFormError(f"{form.field} is no column")
-    if form.kind == "text":
-        ids: IdArray = column
-        return (text_bytes(ids), described) if (ids != b"").any() else None
-    absent = 0 if form.kind == "small" else -1
+    absent: object = b"" if form.kind == "text" else 0 if form.kind == "small" else -1
     if not (column != absent).any():
         return None
     if form.of is not None:
         described["of"] = form.of
-    return code_bytes(column), described
+    return described
+
+
+def _column_entry(column: object, form: ColumnForm) -> Octets:
+    """Return the bytes of a column."""
+    if isinstance(column, Decimals):
+        return decimal_bytes(column)
+    if isinstance(column, Texts):
+        return texts_bytes(column)
+    array = cast("Any", column)
+    return text_bytes(array) if form.kind == "text" else code_bytes(array)
 
 
 def _columns(
     table: str,
     forms: tuple[ColumnForm, ...],
     described: Mapping[str, Any],
-    entries: Mapping[str, bytes],
+    entries: Mapping[str, Octets],
     counts: Mapping[str, int],
 ) -> dict[str, object]:
     """Return the columns of a table by field, absent ones made up."""
@@ -221,10 +251,9 @@ def _columns(
             continue
         entry = entries[f"network/{table}/{form.name}"]
         columns[form.field] = _read_column(entry, form, rows, column, counts)
-        if _column_entry(columns[form.field], form) != (
-            entry,
-            {key: value for key, value in column.items() if key != "digest"},
-        ):
+        # That the bytes are those of the column follows from how they were read.
+        stated = {key: value for key, value in column.items() if key != "digest"}
+        if _described(columns[form.field], form) != stated:
             raise NormalFormError(f"{table}/{form.name} is not described as it is")
     return columns
 
@@ -245,7 +274,7 @@ def _absent_column(form: ColumnForm, rows: int) -> object:
 
 
 def _read_column(
-    entry: bytes, form: ColumnForm, rows: int, column: Mapping[str, Any], counts: Mapping[str, int]
+    entry: Octets, form: ColumnForm, rows: int, column: Mapping[str, Any], counts: Mapping[str, int]
 ) -> object:
     """Return the column in ``entry``, its values in range."""
     if form.kind == "decimal":

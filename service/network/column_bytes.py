@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, IntArray, Texts
 
 Kind = Literal["code", "small", "text", "texts", "decimal"]
+# Bytes that may still be those of the array they are of.
+Octets = bytes | memoryview
 
 # Scaled values stay below it, as ``quantities`` reads them, so that sums of two fit int64.
 SCALED_MAX = 2**62
@@ -90,27 +92,34 @@ LANE_FORMS = (
 TABLE_FORMS = {"demand": DEMAND_FORMS, "lanes": LANE_FORMS, "supply": SUPPLY_FORMS}
 
 
-def code_bytes(codes: CodeArray) -> bytes:
+def code_bytes(codes: CodeArray) -> Octets:
     """Return int32 little endian."""
-    return codes.astype("<i4").tobytes()
+    return _octets(codes, "<i4")
 
 
-def code_column(data: bytes, rows: int) -> CodeArray:
+def code_column(data: Octets, rows: int) -> CodeArray:
     """Return the int32 of each row; their range is the caller's to check."""
     if len(data) != 4 * rows:
         raise NormalFormError(f"{len(data)} bytes do not hold {rows} codes")
     return np.frombuffer(data, dtype="<i4").astype(np.int32)
 
 
-def decimal_bytes(column: Decimals) -> bytes:
+def decimal_bytes(column: Decimals) -> Octets:
     """Return int64 little endian, and a bitmap of the absent rows when there are any."""
-    data = column.values.astype("<i8").tobytes()
+    data = _octets(column.values, "<i8")
     if bool(column.present.all()):
         return data
-    return data + np.packbits(~column.present, bitorder="little").tobytes()
+    return b"".join((data, np.packbits(~column.present, bitorder="little").tobytes()))
 
 
-def decimal_column(data: bytes, rows: int, *, exponent: int, nulls: bool) -> Decimals:
+def _octets(values: IntArray | CodeArray, kind: str) -> Octets:
+    """Return the bytes of numbers, which are not copied where they are in that form already."""
+    array = np.ascontiguousarray(values, dtype=kind)
+    # A view of no bytes cannot be made.
+    return array.data.cast("B") if len(array) else b""
+
+
+def decimal_column(data: Octets, rows: int, *, exponent: int, nulls: bool) -> Decimals:
     """Return the decimals of each row, with the least exponent that makes them whole."""
     bitmap = (rows + 7) // 8 if nulls else 0
     if len(data) != 8 * rows + bitmap:
@@ -135,7 +144,7 @@ def decimal_column(data: bytes, rows: int, *, exponent: int, nulls: bool) -> Dec
 
 def texts_bytes(column: Texts) -> bytes:
     """Return the count, each value with its length, and int32 codes."""
-    pieces = [struct.pack("<I", len(column.values))]
+    pieces: list[Octets] = [struct.pack("<I", len(column.values))]
     for value in column.values:
         encoded = value.encode()
         pieces += (struct.pack("<I", len(encoded)), encoded)
@@ -143,7 +152,7 @@ def texts_bytes(column: Texts) -> bytes:
     return b"".join(pieces)
 
 
-def texts_column(data: bytes, rows: int) -> Texts:
+def texts_column(data: Octets, rows: int) -> Texts:
     """Return the codes and values; the values are distinct, sorted and all used."""
     if len(data) < 4:
         raise NormalFormError("a column of texts has no count")
@@ -180,18 +189,10 @@ def text_bytes(column: IdArray) -> bytes:
     return b"".join(pieces)
 
 
-def text_column(data: bytes, rows: int) -> IdArray:
+def text_column(data: Octets, rows: int) -> IdArray:
     """Return the bytes of each row; each is whole UTF-8 of at most ``ID_BYTES_MAX`` bytes."""
-    starts = np.empty(rows, dtype=np.int64)
-    ends = np.empty(rows, dtype=np.int64)
-    place = 0
-    for row in range(rows):
-        starts[row], place = start, end = _record(data, place)
-        ends[row] = end
-        if end - start > ID_BYTES_MAX:
-            raise NormalFormError("an id is too long")
-    if place != len(data):
-        raise NormalFormError("bytes are left over after the last text")
+    places = _places(data, rows)
+    starts, ends = places if places is not None else _places_one_by_one(data, rows)
     width = max(1, int((ends - starts).max(initial=0)))
     octets = np.frombuffer(data, dtype=np.uint8)
     column = np.zeros(rows, dtype=f"S{width}")
@@ -204,6 +205,43 @@ def text_column(data: bytes, rows: int) -> IdArray:
     return column
 
 
+def _places(data: Octets, rows: int) -> tuple[IntArray, IntArray] | None:
+    """Return where each text starts and ends, None unless all have 1 to 255 bytes.
+
+    Such a text has no byte of 0, and the length before it ends with three of them.
+    """
+    octets = np.frombuffer(data, dtype=np.uint8)
+    zeros = np.flatnonzero(octets == 0)
+    if len(zeros) != 3 * rows:
+        return None
+    lengths_at = zeros[::3] - 1
+    if rows == 0 or int(lengths_at[0]) != 0:
+        return None
+    starts = lengths_at + 4
+    ends = starts + octets[lengths_at]
+    chained = (
+        bool((zeros[1::3] == zeros[::3] + 1).all())
+        and bool((zeros[2::3] == zeros[::3] + 2).all())
+        and bool((ends[:-1] == lengths_at[1:]).all())
+    )
+    return (starts, ends) if chained and int(ends[-1]) == len(octets) else None
+
+
+def _places_one_by_one(data: Octets, rows: int) -> tuple[IntArray, IntArray]:
+    """Return where each text starts and ends."""
+    starts = np.empty(rows, dtype=np.int64)
+    ends = np.empty(rows, dtype=np.int64)
+    place = 0
+    for row in range(rows):
+        starts[row], place = start, end = _record(data, place)
+        ends[row] = end
+        if end - start > ID_BYTES_MAX:
+            raise NormalFormError("an id is too long")
+    if place != len(data):
+        raise NormalFormError("bytes are left over after the last text")
+    return starts, ends
+
+
 def _check_text(block: NDArray[np.uint8], inside: BoolArray) -> None:
     """Raise unless each row of ``block`` is UTF-8 without control characters."""
     content = block[inside]
@@ -213,7 +251,7 @@ def _check_text(block: NDArray[np.uint8], inside: BoolArray) -> None:
     _decoded(content.tobytes())
 
 
-def _record(data: bytes, place: int) -> tuple[int, int]:
+def _record(data: Octets, place: int) -> tuple[int, int]:
     """Return where the text of the record at ``place`` starts and ends."""
     start = place + 4
     if start > len(data):
@@ -224,10 +262,10 @@ def _record(data: bytes, place: int) -> tuple[int, int]:
     return start, end
 
 
-def _decoded(data: bytes) -> str:
+def _decoded(data: Octets) -> str:
     """Return the text of UTF-8 bytes."""
     try:
-        return data.decode()
+        return str(data, "utf-8")
     except UnicodeDecodeError as error:
         raise NormalFormError("a text is not UTF-8") from error
 

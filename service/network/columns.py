@@ -6,7 +6,7 @@ in which it was sent. Everything numeric is exact: integers with one decimal exp
 """
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 
 import numpy as np
@@ -202,6 +202,9 @@ class Network:
     ``head`` holds what is neither a table, an item nor a site, as plain JSON values with every
     decimal a shortest decimal string: ``format``, ``name``, ``currency``, ``cut_off``,
     ``release_by``, ``rules`` (sorted by id, see ``network/rules.py``) and ``extra``.
+
+    ``known_digest`` is the digest of the bytes that this very object was read from, else None; it
+    does not pass on to a network that ``dataclasses.replace`` makes of it.
     """
 
     head: Mapping[str, object]
@@ -210,3 +213,4 @@ class Network:
     supply: SupplyTable
     demand: DemandTable
     lanes: LaneTable
+    known_digest: str | None = field(init=False, default=None, repr=False, compare=False)

@@ -155,7 +155,7 @@ def _rates_out_of_line(network: Network) -> IntArray:
 
 
 def _far_above(rates: IntArray) -> IntArray:
-    """Return where rates of one carrier and measure are far above their median; nothing is sorted."""
+    """Return where rates of one carrier and measure are far above their median."""
     if len(rates) < LANES_FOR_A_MEDIAN:
         return np.zeros(0, dtype=np.int64)
     middle = (len(rates) - 1) // 2

@@ -114,7 +114,8 @@ def _keys_of_ends(lanes: LaneTable) -> IntArray:
         # Codes of 31 bits three times would leave 64: the rank of each pair of ends does not.
         pairs = lanes.origin.astype(np.int64) * widths[1] + lanes.destination - least[1]
         _, ranks = np.unique(pairs, return_inverse=True)
-        return ranks.astype(np.int64) * widths[2] + lanes.item - least[2]
+        keys: IntArray = ranks.astype(np.int64) * widths[2] + lanes.item - least[2]
+        return keys
     keys = lanes.origin.astype(np.int64) - least[0]
     for column, low, width in zip(columns[1:], least[1:], widths[1:], strict=True):
         keys *= width

@@ -29,6 +29,9 @@ from service.network.units import item_units
 # int32 codes count the rows of a table.
 _ROWS_MAX = 2**31 - 1
 
+# So many possible pairs are marked off one by one; more of them would cost more than sorting.
+_PAIRS_MARKED_MAX = 2**22
+
 _HEAD_TEXTS = ("name", "currency", "cut_off", "release_by")
 _HEAD_FIELDS = frozenset({"format", "rules", "extra", "items", "sites", "tables", *_HEAD_TEXTS})
 _COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
@@ -154,7 +157,11 @@ def _check_units(item: CodeArray, unit: Texts, items: Sequence[Item]) -> None:
 def _pairs(item: CodeArray, codes: CodeArray, texts: Texts) -> list[tuple[int, str]]:
     """Return the distinct pairs of an item's position and a text."""
     width = max(1, len(texts.values))
-    distinct = np.unique(item.astype(np.int64) * width + codes).tolist()
+    pairs = item.astype(np.int64) * width + codes
+    if len(pairs) and int(pairs.max()) < _PAIRS_MARKED_MAX:
+        distinct = np.flatnonzero(np.bincount(pairs)).tolist()
+    else:
+        distinct = np.unique(pairs).tolist()
     return [(pair // width, texts.values[pair % width]) for pair in distinct]
 
 

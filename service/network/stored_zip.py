@@ -10,6 +10,8 @@ import zlib
 from collections.abc import Mapping
 from pathlib import Path
 
+Octets = bytes | memoryview
+
 # The format without its 64-bit extensions ends here.
 FILE_BYTES_MAX = 2**32 - 1
 ENTRIES_MAX = 2**16 - 1
@@ -30,19 +32,14 @@ class ZipFormError(ValueError):
 
 def stored_zip(entries: Mapping[str, bytes]) -> bytes:
     """Return the zip of ``entries``, whose names are ASCII."""
-    locals_: list[bytes] = []
-    centrals: list[bytes] = []
-    place = 0
-    for name in sorted(entries):
-        content = entries[name]
-        local = _local(name.encode("ascii"), zlib.crc32(content), len(content))
-        locals_ += (local, content)
-        centrals.append(_central(name.encode("ascii"), zlib.crc32(content), len(content), place))
-        place += len(local) + len(content)
-    directory = b"".join(centrals)
-    if len(entries) > ENTRIES_MAX or place + len(directory) + _END.size > FILE_BYTES_MAX:
-        raise ZipFormError("too much for one zip")
-    return b"".join((*locals_, directory, _end(len(entries), len(directory), place)))
+    return b"".join(_pieces(entries))
+
+
+def write_stored_zip(path: Path, entries: Mapping[str, Octets]) -> None:
+    """Write the zip of ``entries`` to ``path``, without a copy of them."""
+    pieces = _pieces(entries)
+    with path.open("wb") as file:
+        file.writelines(pieces)
 
 
 def read_stored_zip(data: bytes) -> tuple[dict[str, bytes], tuple[str, ...]]:
@@ -50,7 +47,14 @@ def read_stored_zip(data: bytes) -> tuple[dict[str, bytes], tuple[str, ...]]:
 
     Raises ``ZipFormError`` for whatever ``stored_zip`` would have written differently.
     """
-    entries: dict[str, bytes] = {}
+    entries, damaged = stored_entries(data)
+    return {name: bytes(content) for name, content in entries.items()}, damaged
+
+
+def stored_entries(data: bytes) -> tuple[dict[str, memoryview], tuple[str, ...]]:
+    """Return what ``read_stored_zip`` does, the entries as views of ``data``."""
+    whole = memoryview(data)
+    entries: dict[str, memoryview] = {}
     damaged = []
     centrals = []
     former = b""
@@ -60,7 +64,7 @@ def read_stored_zip(data: bytes) -> tuple[dict[str, bytes], tuple[str, ...]]:
         if start > len(data):
             raise ZipFormError("an entry is cut off")
         *_, check_sum, size, _, length, _ = _LOCAL.unpack_from(data, place)
-        name, content = data[start : start + length], data[start + length : start + length + size]
+        name, content = data[start : start + length], whole[start + length : start + length + size]
         if data[place:start] + name != _local(name, check_sum, size) or len(content) != size:
             raise ZipFormError("an entry has a header of another form")
         if not name.isascii() or name <= former:
@@ -79,9 +83,22 @@ def read_stored_zip(data: bytes) -> tuple[dict[str, bytes], tuple[str, ...]]:
     return entries, tuple(damaged)
 
 
-def write_stored_zip(path: Path, entries: Mapping[str, bytes]) -> None:
-    """Write the zip of ``entries`` to ``path``."""
-    path.write_bytes(stored_zip(entries))
+def _pieces(entries: Mapping[str, Octets]) -> list[Octets]:
+    """Return all parts of the zip of ``entries``, in order."""
+    pieces: list[Octets] = []
+    centrals: list[bytes] = []
+    place = 0
+    for name in sorted(entries):
+        content = entries[name]
+        check_sum, encoded = zlib.crc32(content), name.encode("ascii")
+        local = _local(encoded, check_sum, len(content))
+        pieces += (local, content)
+        centrals.append(_central(encoded, check_sum, len(content), place))
+        place += len(local) + len(content)
+    directory = b"".join(centrals)
+    if len(entries) > ENTRIES_MAX or place + len(directory) + _END.size > FILE_BYTES_MAX:
+        raise ZipFormError("too much for one zip")
+    return [*pieces, directory, _end(len(entries), len(directory), place)]
 
 
 def _local(name: bytes, check_sum: int, size: int) -> bytes:
