@@ -52,8 +52,9 @@ class ItemNetwork:
         bound = largest(self.arcs.cost) + len(self.priorities) * self.base
         cost = widened(self.arcs.cost, bound=bound).copy()
         arcs, ranks = self.ranked_shortages()
-        weight = (len(self.priorities) - ranks).astype(cost.dtype) * self.base
-        cost[arcs] += weight
+        if arcs.shape[0]:
+            # Only here is the base within the bound: without priorities it may be beyond int64.
+            cost[arcs] += (len(self.priorities) - ranks).astype(cost.dtype) * self.base
         return cost
 
     def ranked_shortages(self) -> tuple[IntArray, IntArray]:
