@@ -35,18 +35,24 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
     if len(use.any_item) == 0:
         return
     any_item = lanes.item < 0
+    limited = lanes.must_ship.present | lanes.capacity.present
+    units = {unit: code for code, unit in enumerate({item.unit for item in network.items})}
     users = np.zeros(len(lanes), dtype=np.int32)
     first_unit = np.full(len(lanes), -1, dtype=np.int32)
     unlike = np.zeros(len(lanes), dtype=np.bool_)
-    units = {unit: code for code, unit in enumerate({item.unit for item in network.items})}
+    plain = lanes.measure.values == ("unit",) and not lanes.must_ship.present.any()
+    # Without limits and unlike units there is nothing to ask of a lane's users.
     for item, thing in enumerate(network.items):
+        if plain and len(units) == 1 and not limited.any():
+            break
         rows = use.rows(item)
         rows = rows[any_item[rows]]
         users[rows] += 1
         unit = units[thing.unit]
         unlike[rows] |= (first_unit[rows] >= 0) & (first_unit[rows] != unit)
         first_unit[rows] = unit
-        _check_measures(assembly, item, rows)
+        if not plain:
+            _check_measures(assembly, item, rows)
     open_limit = (users > 1) & (lanes.per.codes < 0)
     detail = (
         "More than one item can use this lane, so its limit must say per: item "
@@ -80,7 +86,7 @@ def _check_measures(assembly: Assembly, item: int, rows: IntArray) -> None:
     """Check the measures and forced quantities of lanes without an item for one of their users."""
     network, lanes = assembly.network, assembly.network.lanes
     thing, faults = network.items[item], assembly.sent.lanes.faults
-    for code in np.unique(lanes.measure.codes[rows]).tolist():
+    for code in np.flatnonzero(np.bincount(lanes.measure.codes[rows])).tolist():
         measure = lanes.measure.values[code]
         members = rows[lanes.measure.codes[rows] == code]
         if not per_unit(thing, measure):

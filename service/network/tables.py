@@ -138,7 +138,7 @@ def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
     """Read the lanes. A must-ship of 0 and the ``per`` of a lane with an item say nothing."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
-    ids = reader.ids("id")
+    ids = reader.ids("id") if "id" in sheet.columns else []
     _refuse_repeats(
         faults,
         "id",
@@ -156,7 +156,7 @@ def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
     measure = reader.texts("measure", _id)
     per = reader.texts("per", _per)
     table = LaneTable(
-        ids=as_ids(ids),
+        ids=as_ids(ids) if ids else np.zeros(sheet.rows, dtype="S1"),
         origin=origin,
         destination=destination,
         item=item,
