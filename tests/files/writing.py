@@ -1,22 +1,27 @@
 """Networks written as files of every form, by the libraries that other programs use."""
 
 import csv
+import datetime as dt
 import io
+import json
 import zipfile
 from collections.abc import Callable, Mapping
+from decimal import Decimal
 from pathlib import Path
 from typing import Any
 
-import openpyxl
 import pyarrow as pa
 import pyarrow.parquet as pq
+import xlsxwriter
 
+from service.doors.plan_workbook import is_exact_double
 from service.network.files.flat_tables import FlatTable, flat_tables
 from service.network.files.media_types import XLSX, ZIP
+from service.network.files.table_columns import Kind, field_of
 from service.network.intake import IntakeReport, Limits, intake
 from service.network.options import Options
 
-Writer = Callable[[FlatTable], bytes]
+Writer = Callable[[str, FlatTable], bytes]
 
 
 def zipped(files: Mapping[str, bytes]) -> bytes:
@@ -59,26 +64,74 @@ def arrow_bytes(table: FlatTable | pa.Table) -> bytes:
     return target.getvalue()
 
 
-def workbook_bytes(tables: Mapping[str, FlatTable]) -> bytes:
-    """Return tables as a workbook whose cells are all texts."""
-    workbook = openpyxl.Workbook()
-    workbook.remove(workbook.active)
-    for name, table in tables.items():
-        sheet = workbook.create_sheet(name)
-        for number, row in enumerate((table.columns, *table.rows), start=1):
-            for place, text in enumerate(row, start=1):
-                if text is not None:
-                    cell = sheet.cell(number, place)
-                    # Set by hand: the library would take "=" for a formula.
-                    cell.value, cell.data_type = text, "s"
+def workbook_bytes(tables: Mapping[str, FlatTable], *, typed: bool = False) -> bytes:
+    """Return tables as a workbook of texts, or ``typed``: with numbers where a double is exact."""
     target = io.BytesIO()
-    workbook.save(target)
+    with xlsxwriter.Workbook(target, {"in_memory": True}) as workbook:
+        for name, table in tables.items():
+            sheet = workbook.add_worksheet(name)
+            numeric = [is_numeric(name, column) for column in table.columns]
+            for number, row in enumerate((table.columns, *table.rows)):
+                for place, text in enumerate(row):
+                    if text is None:
+                        continue
+                    if typed and number and numeric[place] and is_exact_double(text):
+                        sheet.write_number(number, place, float(text))
+                    else:
+                        sheet.write_string(number, place, text)
     return target.getvalue()
+
+
+def is_numeric(table: str, column: str) -> bool:
+    """Return whether a column of a table holds numbers."""
+    field = field_of(table, column)
+    return field is not None and field.kind in {Kind.NUMBER, Kind.WHOLE}
+
+
+def typed_arrow(name: str, table: FlatTable) -> pa.Table:
+    """Return a table as Arrow columns of the types that a database would send.
+
+    Numbers are decimals, small ones whole numbers, few texts a dictionary, lists lists.
+    """
+    columns = []
+    for place, column in enumerate(table.columns):
+        cells = [row[place] for row in table.rows]
+        field = field_of(name, column)
+        kind = None if field is None else field.kind
+        texts = pa.array(cells, pa.string())
+        if kind is Kind.NUMBER:
+            columns.append(pa.array(map(_decimal, cells), pa.decimal128(38, 7)))
+        elif kind is Kind.WHOLE:
+            columns.append(texts.cast(pa.int32()))
+        elif kind is Kind.LIST:
+            lists = [None if cell is None else _elements(cell) for cell in cells]
+            columns.append(pa.array(lists, pa.list_(pa.string())))
+        elif kind is Kind.MOMENT and name != "network":
+            columns.append(pa.array(map(_moment, cells), pa.timestamp("ns", "UTC")))
+        elif kind is Kind.DATE:
+            columns.append(texts.cast(pa.date32()))
+        else:
+            columns.append(texts.dictionary_encode())
+    return pa.table(columns, names=list(table.columns))
+
+
+def _decimal(text: str | None) -> Decimal | None:
+    return None if text is None else Decimal(text)
+
+
+def _moment(text: str | None) -> dt.datetime | None:
+    return None if text is None else dt.datetime.fromisoformat(text)
+
+
+def _elements(cell: str) -> list[str]:
+    elements: list[str] = json.loads(cell) if cell.startswith("[") else cell.split("|")
+    return elements
 
 
 def network_zip(document: Mapping[str, Any], ending: str, writer: Writer) -> bytes:
     """Return a network as a zip of one file for each table."""
-    return zipped({f"{name}{ending}": writer(table) for name, table in sent(document).items()})
+    tables = sent(document)
+    return zipped({f"{name}{ending}": writer(name, table) for name, table in tables.items()})
 
 
 def sent(document: Mapping[str, Any]) -> dict[str, FlatTable]:
@@ -88,10 +141,26 @@ def sent(document: Mapping[str, Any]) -> dict[str, FlatTable]:
 
 
 FORMS: Mapping[str, tuple[str, Callable[[Mapping[str, Any]], bytes]]] = {
-    "csv": (ZIP, lambda document: network_zip(document, ".csv", csv_bytes)),
-    "parquet": (ZIP, lambda document: network_zip(document, ".parquet", parquet_bytes)),
-    "arrow": (ZIP, lambda document: network_zip(document, ".arrow", arrow_bytes)),
-    "xlsx": (XLSX, lambda document: workbook_bytes(sent(document))),
+    "csv": (ZIP, lambda document: network_zip(document, ".csv", lambda _, t: csv_bytes(t))),
+    "parquet": (
+        ZIP,
+        lambda document: network_zip(document, ".parquet", lambda _, t: parquet_bytes(t)),
+    ),
+    "typed parquet": (
+        ZIP,
+        lambda document: network_zip(
+            document, ".parquet", lambda name, t: parquet_bytes(typed_arrow(name, t))
+        ),
+    ),
+    "arrow": (ZIP, lambda document: network_zip(document, ".arrow", lambda _, t: arrow_bytes(t))),
+    "typed arrow": (
+        ZIP,
+        lambda document: network_zip(
+            document, ".arrow", lambda name, t: arrow_bytes(typed_arrow(name, t))
+        ),
+    ),
+    "workbook": (XLSX, lambda document: workbook_bytes(sent(document))),
+    "typed workbook": (XLSX, lambda document: workbook_bytes(sent(document), typed=True)),
 }
 
 
@@ -101,19 +170,17 @@ def take_in(
     *,
     media_type: str = ZIP,
     limits: Limits | None = None,
-    encoding: str | None = None,
     options: Options | None = None,
 ) -> IntakeReport:
     """Check a body and leave what came of it in ``folder``."""
-    spool = folder / "spool"
+    spool, output = folder / "spool", folder / "output"
     spool.write_bytes(body)
-    output = folder / "output"
     output.mkdir(exist_ok=True)
     return intake(
         spool,
         output,
         options=options or Options(),
         media_type=media_type,
-        content_encoding=encoding,
+        content_encoding=None,
         limits=limits or Limits(),
     )
