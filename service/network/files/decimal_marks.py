@@ -19,35 +19,43 @@ def with_decimal_points(
     """Return grids whose numbers have a point, whatever mark they were sent with.
 
     Where commas separate cells, a point separates decimals. Elsewhere the sender says it, or the
-    numbers of all such files show it beyond doubt; else None, with a fault.
+    numbers of the file itself show it beyond doubt (another file may come from another program);
+    else None, with a fault.
     """
-    mark = dialect.decimal_mark
-    undecided = {
-        name: grid for name, grid in grids.items() if mark is not None or separators[name] != ","
-    }
-    if mark is None:
-        comma = point = certain_comma = certain_point = False
-        for grid in undecided.values():
-            for cells in _numbers(grid):
-                found = decimal_evidence(cells.values)
-                comma, point = comma or found[0], point or found[1]
-                certain_comma, certain_point = certain_comma or found[2], certain_point or found[3]
-        if (comma or point) and certain_comma == certain_point:
-            _refuse(undecided.values(), faults)
-            return None
-        if certain_comma:
-            mark = "comma"
-            detail = (
-                "The numbers show a decimal comma and were read so. A file dialect.csv with the "
-                "column decimal_mark settles it."
-            )
-            examples = [_first(grid, ",") for grid in undecided.values()]
-            faults.caution(
-                "decimal_comma_detected", detail, [found for found in examples if found is not None]
-            )
-    if mark != "comma":
-        return dict(grids)
-    return {name: _with_points(grid) if name in undecided else grid for name, grid in grids.items()}
+    read: dict[str, Grid] = {}
+    for name, grid in grids.items():
+        mark = dialect.decimal_mark
+        if mark is None:
+            mark = "point" if separators[name] == "," else _shown_mark(grid, faults)
+        if mark is not None:
+            read[name] = _with_points(grid) if mark == "comma" else grid
+    return read if len(read) == len(grids) else None
+
+
+def _shown_mark(grid: Grid, faults: FaultList) -> str | None:
+    """Return the mark that the numbers of a file show; None, with a fault, if they show none."""
+    found = [decimal_evidence(cells.values) for cells in _numbers(grid)]
+    comma, point, certain_comma, certain_point = (
+        any(column[place] for column in found) for place in range(4)
+    )
+    if not comma and not point:
+        return "point"
+    if certain_comma == certain_point:
+        place, value = _first(grid, ",.")
+        detail = (
+            "It cannot be told whether this mark parts decimals or thousands. Add a file "
+            "dialect.csv with the column decimal_mark: point or comma. Thousands are never parted."
+        )
+        faults.add(place, "ambiguous_decimal_mark", detail, value)
+        return None
+    if certain_point:
+        return "point"
+    detail = (
+        "The numbers show a decimal comma and were read so. A file dialect.csv with the column "
+        "decimal_mark settles it."
+    )
+    faults.caution("decimal_comma_detected", detail, [_first(grid, ",")])
+    return "comma"
 
 
 def _numbers(grid: Grid) -> Iterable[Cells]:
@@ -55,27 +63,15 @@ def _numbers(grid: Grid) -> Iterable[Cells]:
     return (cells for name, cells in grid.columns.items() if grid.kind(name) is Kind.NUMBER)
 
 
-def _first(grid: Grid, marks: str) -> tuple[str, str] | None:
-    """Return place and text of the first number with one of ``marks``."""
-    for name, cells in grid.columns.items():
-        if grid.kind(name) is not Kind.NUMBER:
-            continue
-        for row, cell in enumerate(cells.values):
-            if isinstance(cell, str) and any(mark in cell for mark in marks):
-                return grid.place(row=row, column=name), cell
-    return None
-
-
-def _refuse(grids: Iterable[Grid], faults: FaultList) -> None:
-    """Report that the decimal mark cannot be told, once a file, at its first number with one."""
-    detail = (
-        "It cannot be told whether this mark parts decimals or thousands. Add a file dialect.csv "
-        "with the column decimal_mark: point or comma. Thousands are never parted."
+def _first(grid: Grid, marks: str) -> tuple[str, str]:
+    """Return place and text of the first number with one of ``marks``; there is one."""
+    return next(
+        (grid.place(row=row, column=name), cell)
+        for name, cells in grid.columns.items()
+        if grid.kind(name) is Kind.NUMBER
+        for row, cell in enumerate(cells.values)
+        if isinstance(cell, str) and any(mark in cell for mark in marks)
     )
-    for grid in grids:
-        found = _first(grid, ",.")
-        if found is not None:
-            faults.add(found[0], "ambiguous_decimal_mark", detail, found[1])
 
 
 def _with_points(grid: Grid) -> Grid:
