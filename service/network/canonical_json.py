@@ -4,6 +4,7 @@ RFC 8785 writes numbers as binary doubles, which would lose what we prove. What 
 therefore holds text, whole numbers below 2**53, true, false and null, and decimals as text.
 """
 
+from functools import lru_cache
 from json.encoder import encode_basestring
 
 # The largest whole number that every reader of RFC 8785 gives back unchanged (its section 3.2.2.3).
@@ -34,13 +35,13 @@ def canonical_json(value: object) -> bytes:
 def _append(value: object, pieces: list[str]) -> None:
     """Append the canonical spelling of ``value`` to ``pieces``."""
     # The order matters: bool is a kind of int.
-    if value is None:
+    if isinstance(value, str):
+        # The standard library escapes exactly what RFC 8785 (3.2.2.2) escapes, in its spelling.
+        pieces.append(encode_basestring(value))
+    elif value is None:
         pieces.append("null")
     elif isinstance(value, bool):
         pieces.append("true" if value else "false")
-    elif isinstance(value, str):
-        # The standard library escapes exactly what RFC 8785 (3.2.2.2) escapes, in its spelling.
-        pieces.append(encode_basestring(value))
     elif isinstance(value, int):
         if not -WHOLE_NUMBER_MAX <= value <= WHOLE_NUMBER_MAX:
             raise NotCanonicalError("a whole number is too large for canonical JSON")
@@ -60,18 +61,20 @@ def _append(value: object, pieces: list[str]) -> None:
 
 def _append_object(value: dict[object, object], pieces: list[str]) -> None:
     """Append an object, its keys in the order of their UTF-16 code units."""
-    keys = []
-    for key in value:
-        if not isinstance(key, str):
-            raise NotCanonicalError("the keys of an object are text")
-        keys.append(key)
-    # Big-endian UTF-16 bytes compare as the code units do (RFC 8785, 3.2.3).
-    keys.sort(key=lambda key: key.encode("utf-16-be"))
-    pieces.append("{")
-    for position, key in enumerate(keys):
-        if position:
-            pieces.append(",")
-        pieces.append(encode_basestring(key))
-        pieces.append(":")
+    separator = "{"
+    for key, spelled in _in_order(tuple(value)):
+        pieces.append(separator + spelled)
         _append(value[key], pieces)
-    pieces.append("}")
+        separator = ","
+    pieces.append("}" if value else "{}")
+
+
+@lru_cache(maxsize=1024)
+def _in_order(keys: tuple[object, ...]) -> tuple[tuple[str, str], ...]:
+    """Return keys in their order, each with its spelling; objects mostly have the same few."""
+    texts = [key for key in keys if isinstance(key, str)]
+    if len(texts) < len(keys):
+        raise NotCanonicalError("the keys of an object are text")
+    # Big-endian UTF-16 bytes compare as the code units do (RFC 8785, 3.2.3).
+    texts.sort(key=lambda key: key.encode("utf-16-be"))
+    return tuple((key, f"{encode_basestring(key)}:") for key in texts)

@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 
 from service.network.columns import IdArray, IntArray, LaneTable, Network
-from service.network.naming import base_names, lane_names, ranks
+from service.network.naming import base_names, follows_its_like, lane_names, ranks
 from service.network.normal_form import lane_order
 from service.network.table_rows import rows_of
 
@@ -44,7 +44,7 @@ def own_names_dropped(network: Network) -> IdArray:
 def identical_lanes(network: Network) -> IntArray:
     """Return rows of lanes without an id that no name could tell from the one before them."""
     lanes = network.lanes
-    latter = np.flatnonzero((ranks(lanes) > 0) & (lanes.ids == b""))
+    latter = np.flatnonzero(follows_its_like(lanes) & (lanes.ids == b""))
     former = latter - 1
     same = (
         (lanes.carrier.codes[former] == lanes.carrier.codes[latter])

@@ -34,17 +34,16 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
     network, lanes = assembly.network, assembly.network.lanes
     if len(use.any_item) == 0:
         return
-    any_item = lanes.item < 0
-    limited = lanes.must_ship.present | lanes.capacity.present
     units = {unit: code for code, unit in enumerate({item.unit for item in network.items})}
+    plain = lanes.measure.values == ("unit",) and not lanes.must_ship.present.any()
+    if plain and len(units) == 1 and not lanes.capacity.present.any():
+        # Without limits and unlike units there is nothing to ask of a lane's users.
+        return
+    any_item = lanes.item < 0
     users = np.zeros(len(lanes), dtype=np.int32)
     first_unit = np.full(len(lanes), -1, dtype=np.int32)
     unlike = np.zeros(len(lanes), dtype=np.bool_)
-    plain = lanes.measure.values == ("unit",) and not lanes.must_ship.present.any()
-    # Without limits and unlike units there is nothing to ask of a lane's users.
     for item, thing in enumerate(network.items):
-        if plain and len(units) == 1 and not limited.any():
-            break
         rows = use.rows(item)
         rows = rows[any_item[rows]]
         users[rows] += 1

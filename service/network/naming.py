@@ -5,11 +5,12 @@ form (carrier, unit cost, must-ship, capacity, tags), so that a name never depen
 which lanes were sent. ``>``, ``#`` and ``%`` inside ids are percent-encoded.
 """
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
 
-from service.network.columns import IntArray, LaneTable, Network
+from service.network.columns import BoolArray, IntArray, LaneTable, Network
+from service.network.lane_keys import LaneKeys
 
 _ENCODED = str.maketrans({"%": "%25", ">": "%3E", "#": "%23"})
 
@@ -36,22 +37,28 @@ def base_names(network: Network, rows: IntArray) -> list[str]:
     ]
 
 
+def follows_its_like(lanes: LaneTable) -> BoolArray:
+    """Return which lanes have the origin, destination and item of the one before them."""
+    follows = np.zeros(len(lanes), dtype=np.bool_)
+    follows[1:] = (
+        (lanes.destination[1:] == lanes.destination[:-1])
+        & (lanes.origin[1:] == lanes.origin[:-1])
+        & (lanes.item[1:] == lanes.item[:-1])
+    )
+    return follows
+
+
 def ranks(lanes: LaneTable) -> IntArray:
     """Return, for each lane, its position among the lanes of its origin, destination and item.
 
     The table is in normal form, where those without an id come first: for them, it is the number
     of lanes that precede them in their numbering.
     """
+    follows = follows_its_like(lanes)
+    if not follows.any():
+        return np.zeros(len(lanes), dtype=np.int64)
     rows = np.arange(len(lanes), dtype=np.int64)
-    if len(lanes) == 0:
-        return rows
-    first = np.ones(len(lanes), dtype=np.bool_)
-    first[1:] = (
-        (lanes.origin[1:] != lanes.origin[:-1])
-        | (lanes.destination[1:] != lanes.destination[:-1])
-        | (lanes.item[1:] != lanes.item[:-1])
-    )
-    return rows - np.maximum.accumulate(np.where(first, rows, 0))
+    return rows - np.maximum.accumulate(np.where(follows, 0, rows))
 
 
 def lane_names(network: Network, rows: IntArray) -> list[str]:
@@ -70,63 +77,59 @@ def lane_names(network: Network, rows: IntArray) -> list[str]:
 def lane_rows(network: Network, names: Iterable[str]) -> list[int]:
     """Return the row of each named lane, -1 where no lane bears that name."""
     wanted = list(names)
-    # A NUL cannot stand in an id, and NumPy would take it for padding.
-    encodable = [name.encode("utf-8", "replace") for name in wanted if "\0" not in name]
-    found: dict[str, int] = {}
+    if not wanted:
+        return []
+    rows = _unnamed_rows(network, wanted)
     lanes = network.lanes
-    if encodable and len(lanes):
-        rows = np.flatnonzero(np.isin(lanes.ids, np.array(encodable)) & (lanes.ids != b""))
-        found = {lanes.ids[row].decode(): row for row in rows.tolist()}
-    places = _UnnamedLanes(network)
-    return [found[name] if name in found else places.row(name) for name in wanted]
+    given = np.flatnonzero(lanes.ids != b"")
+    if len(given):
+        # A NUL cannot stand in an id, and NumPy would take it for padding.
+        encodable = [name.encode("utf-8", "replace") for name in wanted if "\0" not in name]
+        given = given[np.isin(lanes.ids[given], np.array(encodable, dtype=np.bytes_))]
+        found = {lanes.ids[row].decode(): row for row in given.tolist()}
+        rows = [found.get(name, row) for name, row in zip(wanted, rows, strict=True)]
+    return rows
 
 
-class _UnnamedLanes:
-    """Finds lanes without an id by their names."""
-
-    def __init__(self, network: Network) -> None:
-        """Index the names of sites and items; lanes are in normal form and searched as such."""
-        self._lanes = network.lanes
-        self._sites = {encoded(site.id): place for place, site in enumerate(network.sites)}
-        self._items = {encoded(item.id): place for place, item in enumerate(network.items)}
-
-    def row(self, name: str) -> int:
-        """Return the row of the lane without an id that is called ``name``, or -1."""
-        base, mark, number = name.partition("#")
-        if mark and not (number.isascii() and number.isdigit() and number[0] != "0"):
-            return -1
-        if mark and (len(number) > 18 or number == "1"):
-            return -1
-        ends = base.split(">")
-        if len(ends) not in (2, 3):
-            return -1
-        origin, destination = (self._sites.get(end, -1) for end in ends[:2])
-        item = self._items.get(ends[2], -2) if len(ends) == 3 else -1
-        if origin < 0 or destination < 0 or item < -1:
-            return -1
-        return self._find(origin, destination, item, rank=int(number) - 1 if mark else 0)
-
-    def _find(self, origin: int, destination: int, item: int, *, rank: int) -> int:
-        """Return the row with these ends and this rank, if it has no id of its own."""
-        lanes = self._lanes
-        low, high = _narrow(lanes.origin, 0, len(lanes), origin)
-        low, high = _narrow(lanes.destination, low, high, destination)
-        low, high = _narrow(lanes.item, low, high, item)
-        row = low + rank
-        return row if row < high and lanes.ids[row] == b"" else -1
-
-
-def _narrow(
-    column: Sequence[int] | np.ndarray[tuple[int], np.dtype[np.int32]],
-    low: int,
-    high: int,
-    value: int,
-) -> tuple[int, int]:
-    """Return the part of the sorted rows ``low`` to ``high`` whose value is ``value``."""
-    part = np.asarray(column)[low:high]
-    # A plain int would make NumPy copy the whole part to int64 at every search.
-    code = np.int32(value)
-    return (
-        low + int(np.searchsorted(part, code, side="left")),
-        low + int(np.searchsorted(part, code, side="right")),
+def _unnamed_rows(network: Network, names: Sequence[str]) -> list[int]:
+    """Return the row of the lane without an id that each name means, -1 for none."""
+    sites = {encoded(site.id): place for place, site in enumerate(network.sites)}
+    items = {encoded(item.id): place for place, item in enumerate(network.items)}
+    places = np.array([_place(name, sites, items) for name in names], dtype=np.int64)
+    origin, destination, item, rank = places.T
+    first = LaneKeys(network.lanes).rows(origin, destination, item)
+    lanes, rows = network.lanes, first + rank
+    found = (origin >= 0) & (first >= 0) & (rows < len(lanes))
+    # The rank may lead beyond the lanes of its kind, or to one that has an id of its own.
+    at = rows[found]
+    found[found] = (
+        (lanes.origin[at] == origin[found])
+        & (lanes.destination[at] == destination[found])
+        & (lanes.item[at] == item[found])
+        & (lanes.ids[at] == b"")
     )
+    result: list[int] = np.where(found, rows, -1).tolist()
+    return result
+
+
+_NOWHERE = (-1, -1, -1, 0)
+
+
+def _place(
+    name: str, sites: Mapping[str, int], items: Mapping[str, int]
+) -> tuple[int, int, int, int]:
+    """Return the origin, destination, item (-1: any) and rank that a name says."""
+    base, mark, number = name.partition("#")
+    if mark and not (number.isascii() and number.isdigit() and number[0] != "0"):
+        return _NOWHERE
+    # Beyond 18 digits there is no such row, and no such 64-bit number.
+    if mark and (len(number) > 18 or number == "1"):
+        return _NOWHERE
+    origin, *ends = base.split(">")
+    if len(ends) not in (1, 2):
+        return _NOWHERE
+    item = items.get(ends[1], -2) if len(ends) == 2 else -1
+    start, end = sites.get(origin, -1), sites.get(ends[0], -1)
+    if start < 0 or end < 0 or item < -1:
+        return _NOWHERE
+    return start, end, item, int(number) - 1 if mark else 0

@@ -27,6 +27,7 @@ from service.network.columns import (
     SupplyTable,
     Texts,
 )
+from service.network.lane_keys import LaneKeys
 from service.network.units import item_units
 
 if TYPE_CHECKING:
@@ -75,7 +76,7 @@ def lane_order(lanes: LaneTable) -> IntArray:
     Texts must be spelled normally, so that their codes sort as they do.
     """
     order = np.arange(len(lanes), dtype=np.int64)
-    keys = _keys_of_ends(lanes)
+    keys = LaneKeys(lanes).keys
     if not bool((keys[1:] >= keys[:-1]).all()):
         order = np.argsort(keys, kind="stable")
         keys = keys[order]
@@ -101,26 +102,6 @@ def lane_order(lanes: LaneTable) -> IntArray:
     )
     order[tied] = rows[np.lexsort(by_last_first)]
     return order
-
-
-def _keys_of_ends(lanes: LaneTable) -> IntArray:
-    """Return a number for each lane that sorts as (origin, destination, item) does."""
-    columns = (lanes.origin, lanes.destination, lanes.item)
-    least = [int(column.min(initial=0)) for column in columns]
-    widths = [
-        int(column.max(initial=0)) - low + 1 for column, low in zip(columns, least, strict=True)
-    ]
-    if widths[0] * widths[1] * widths[2] >= 2**63:
-        # Codes of 31 bits three times would leave 64: the rank of each pair of ends does not.
-        pairs = lanes.origin.astype(np.int64) * widths[1] + lanes.destination - least[1]
-        _, ranks = np.unique(pairs, return_inverse=True)
-        keys: IntArray = ranks.astype(np.int64) * widths[2] + lanes.item - least[2]
-        return keys
-    keys = lanes.origin.astype(np.int64) - least[0]
-    for column, low, width in zip(columns[1:], least[1:], widths[1:], strict=True):
-        keys *= width
-        keys += column - np.int64(low)
-    return keys
 
 
 def supply_order(supply: SupplyTable, items: Sequence[Item]) -> IntArray:

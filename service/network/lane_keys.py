@@ -1,0 +1,59 @@
+"""One number for the ends and the item of a lane, by which lanes are sorted and found."""
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.network.columns import IntArray, LaneTable
+
+Codes = NDArray[np.integer[Any]]
+
+_ROOM = 2**63
+
+
+class LaneKeys:
+    """Numbers that sort as (origin, destination, item) do; ``keys`` are those of all lanes."""
+
+    def __init__(self, lanes: LaneTable) -> None:
+        """Give every lane of a table its number."""
+        self._columns = (lanes.origin, lanes.destination, lanes.item)
+        self._least = [int(column.min(initial=0)) for column in self._columns]
+        self._most = [int(column.max(initial=0)) for column in self._columns]
+        self._widths = [
+            most - least + 1 for least, most in zip(self._least, self._most, strict=True)
+        ]
+        self._pairs: IntArray | None = None
+        if self._widths[0] * self._widths[1] * self._widths[2] >= _ROOM:
+            # Three codes of 31 bits would leave 64: the rank of each pair of ends does not.
+            self._pairs = np.unique(self._ends(lanes.origin, lanes.destination))
+        self.keys = self._keys(*self._columns)
+
+    def rows(self, origin: Codes, destination: Codes, item: Codes) -> IntArray:
+        """Return the first row of each kind of lane, -1 where there is none.
+
+        The table must be sorted by its keys.
+        """
+        wanted = (origin, destination, item)
+        near = [
+            np.clip(codes, least, most)
+            for codes, least, most in zip(wanted, self._least, self._most, strict=True)
+        ]
+        rows = np.searchsorted(self.keys, self._keys(*near))
+        found = rows < len(self.keys)
+        for column, codes in zip(self._columns, wanted, strict=True):
+            found[found] = column[rows[found]] == codes[found]
+        return np.where(found, rows, -1)
+
+    def _keys(self, origin: Codes, destination: Codes, item: Codes) -> IntArray:
+        """Return the key of each kind of lane; ends that no lane has share that of others."""
+        ends = self._ends(origin, destination)
+        if self._pairs is not None:
+            ends = np.searchsorted(self._pairs, ends)
+        keys: IntArray = ends * self._widths[2] + (item - np.int64(self._least[2]))
+        return keys
+
+    def _ends(self, origin: Codes, destination: Codes) -> IntArray:
+        """Return a number for each pair of ends."""
+        ends = (origin.astype(np.int64) - self._least[0]) * self._widths[1]
+        return ends + (destination - np.int64(self._least[1]))
