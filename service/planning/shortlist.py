@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.network.columns import BoolArray, IntArray
-from service.planning.arcs import ROOT, UNLIMITED, Arcs, largest
+from service.planning.arcs import ROOT, UNLIMITED, Arcs, largest, narrowed
 from service.planning.limits import NumbersTooLargeError
 from service.planning.min_cost_flow import cost_limit, least_cost_flow
 from service.planning.places import Places
@@ -80,7 +80,10 @@ def solve_shortlist(
         # A lane that has joined, say: the price where it ends comes down. After that only limited
         # arcs have negative reduced costs, which last where they are full.
         tail, head = arcs.tail[never_full], arcs.head[never_full]
-        fall = shortest_distances(tail, head, reduced[never_full], nodes=places.nodes)
+        # Where a place cannot be reached its price is near the limit, and sums were widened.
+        fall = narrowed(shortest_distances(tail, head, reduced[never_full], nodes=places.nodes))
+        if fall.dtype == object:
+            raise NumbersTooLargeError("Prices of a shortlist leave 64 bits.")
         price = price + fall
         reduced[:listed] += fall[arcs.tail[:listed]] - fall[arcs.head[:listed]]
     np.maximum(reduced, -reach, out=reduced, where=~open_)

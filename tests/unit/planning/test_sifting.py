@@ -13,6 +13,7 @@ from service.planning.compile import compile_network
 from service.planning.limits import NoCirculationError
 from service.planning.routes import FullRoute, SiftedRoute, chosen_route
 from service.planning.solve import solve_item
+from tests.factories import network_document
 from tests.random_networks import draw_network
 from tests.unit.planning.routing import Seen, agree, compiled, wide_network
 
@@ -77,6 +78,19 @@ def test_random_networks_with_every_feature_end_as_the_full_solve_does() -> None
     assert planned > 60
     assert sum(seen.sifted) > 0.7 * len(seen.sifted)
     assert max(number for number, _, _ in seen.rounds) > 2
+
+
+def test_place_whose_only_lane_has_no_room_is_short_as_in_the_full_solve() -> None:
+    """Its price is near the limit, where sums of prices were once widened beyond 64 bits."""
+    document = network_document(
+        sites=[{"id": "W", "roles": ["warehouse"]}, {"id": "S", "roles": ["ship_to"]}],
+        supply=[],
+        demand=[{"reference": "D", "site": "S", "item": "GOODS", "quantity": "24"}],
+        lanes=[{"origin": "W", "destination": "S", "unit_cost": "1", "capacity": "0"}],
+    )
+    document["lanes"][0]["item"] = "GOODS"
+
+    agree(document, Seen().front())
 
 
 def test_lists_too_short_for_a_plan_grow_until_none_is_better(
