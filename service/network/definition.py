@@ -22,10 +22,10 @@ from pydantic import (
 from pydantic_core import PydanticCustomError
 
 from service.network import kinds
-from service.network.faults import FaultList, pointer, value_text
+from service.network.faults import FaultList, Odd, pointer, value_text
 from service.network.kinds import Kind, RefusedError
 from service.network.moments import Instant
-from service.network.sheets import Odd, refuse_field
+from service.network.sheets import refuse_field
 
 
 def _read(kind: Kind, *, optional: bool) -> Callable[[object], Any]:

@@ -54,6 +54,18 @@ class Fault:
         )
 
 
+@dataclass(frozen=True, slots=True)
+class Odd:
+    """A cell of a file that is no value of any field: what it is, and the value to show for it.
+
+    A workbook has such cells (an error, TRUE, a number that is not exact); JSON has none.
+    """
+
+    code: str
+    detail: str
+    value: str | None = None
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Caution:
     """One kind of doubt about an input that is planned all the same; travels with the plan.
@@ -129,6 +141,8 @@ def value_text(value: object) -> str | None:
     """Return a value as it may be shown in a fault: text as it is, the rest as JSON would say."""
     if value is None:
         return None
+    if isinstance(value, Odd):
+        return value_text(value.value)
     if isinstance(value, str):
         text = value
     elif isinstance(value, bool):

@@ -11,27 +11,11 @@ from typing import Final
 import numpy as np
 
 from service.network.columns import IntArray
-from service.network.faults import FaultList
+from service.network.faults import FaultList, Odd
 from service.network.not_yet import NOT_YET_FIELDS, refusal
 
 # Positions travel as int32 in the columns.
 ROWS_MAX: Final = 2**31 - 1
-
-
-@dataclass(frozen=True, slots=True)
-class Odd:
-    """A cell of a file that is no value of any field: what it is, and the value to show for it.
-
-    A workbook has such cells (an error, TRUE, a number that is not exact); JSON has none.
-    """
-
-    code: str
-    detail: str
-    value: str | None = None
-
-    def __str__(self) -> str:
-        """Return the value to show."""
-        return self.value or ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -69,6 +53,13 @@ class Column:
         marked = np.zeros(max(len(self.values), 1), dtype=np.bool_)
         marked[positions] = True
         return np.flatnonzero(marked[self.take]) if rows else np.zeros(0, dtype=np.int64)
+
+
+def column_of_cells(cells: Sequence[object], *, place: Callable[[int], str]) -> Column:
+    """Return cells, some of which may be odd, as a column of one value a row."""
+    odd = {row: cell for row, cell in enumerate(cells) if isinstance(cell, Odd)}
+    values = [None if row in odd else cell for row, cell in enumerate(cells)] if odd else cells
+    return Column(values=values, take=None, place=place, odd=odd)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -23,7 +23,7 @@ from service.network.columns import (
 from service.network.moments import read_date, read_instant
 from service.network.not_yet import SHARED, refusal
 from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
-from service.network.sheets import Column, Sheet
+from service.network.sheets import Sheet, column_of_cells
 from service.network.table_faults import TableFaults
 from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
 from service.network.table_reading import Spelled, TableReader
@@ -253,9 +253,8 @@ def _keep(sheet: Sheet, faults: TableFaults) -> tuple[Decimals, CodeArray]:
             name="keep",
             rows=len(parts),
             columns={
-                name: Column(
-                    values=[part.get(name) for part in parts],
-                    take=None,
+                name: column_of_cells(
+                    [part.get(name) for part in parts],
                     place=lambda place, name=name: f"{column.place(place)}/{name}",  # type: ignore[misc] # bound now
                 )
                 for name in _KEEP_FIELDS

@@ -5,10 +5,10 @@ from typing import TYPE_CHECKING, Final
 
 import numpy as np
 
+from service.network.faults import Odd
 from service.network.files.grids import Cells
 from service.network.files.json import Number
 from service.network.moments import DATE_ADVICE
-from service.network.sheets import Odd
 
 if TYPE_CHECKING:
     import pyarrow as pa

@@ -5,9 +5,9 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 
 from service.network.columns import IntArray
-from service.network.faults import FaultList, pointer
+from service.network.faults import FaultList, Odd, pointer
 from service.network.files.grids import Cells, Grid, add_at_rows
-from service.network.sheets import Column, Odd, Sheet
+from service.network.sheets import Column, Sheet
 
 _KEEP = ("keep.quantity", "keep.priority")
 _CODES_MAX = 2**62
@@ -45,16 +45,12 @@ def _column(table: str, name: str, cells: Cells) -> Column:
 def _kept(grid: Grid) -> Cells:
     """Return what stays in stock as one object a row."""
     values: list[object] = []
-    odd: dict[int, Odd] = {}
     parts = {name.partition(".")[2]: grid.columns[name] for name in _KEEP if name in grid.columns}
     for row in range(grid.rows):
         found = {name: cells.at(row) for name, cells in parts.items()}
         given = {name: value for name, value in found.items() if value is not None}
-        strange = [value for value in given.values() if isinstance(value, Odd)]
-        if strange:
-            odd[row] = strange[0]
-        values.append(given if given and not strange else None)
-    return Cells(values=values, odd=odd)
+        values.append(given or None)
+    return Cells(values=values)
 
 
 def _with_extra(grid: Grid, faults: FaultList) -> Cells | None:

@@ -4,10 +4,10 @@ from collections.abc import Callable, Mapping
 from dataclasses import replace
 from typing import Final
 
+from service.network.faults import Odd
 from service.network.files.grids import Cells, Grid
 from service.network.files.json import Number, read_json
 from service.network.files.table_columns import LIST_SEPARATOR, Kind
-from service.network.sheets import Odd
 
 LIST_ADVICE: Final = (
     "Not a list. Write texts with | between, or a JSON array of texts where one has | in it."

@@ -5,9 +5,8 @@ from dataclasses import dataclass, field
 from typing import Final
 
 from service.network.columns import IntArray
-from service.network.faults import FaultList
+from service.network.faults import FaultList, Odd
 from service.network.files.table_columns import PAIR_COLUMNS, Kind, field_of
-from service.network.sheets import Odd
 
 # A report shows so many places of one kind of fault and counts the others.
 SHOWN_MAX: Final = 100

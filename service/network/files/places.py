@@ -12,6 +12,7 @@ from dataclasses import dataclass, field, replace
 from service.network.faults import Caution, Fault
 from service.network.files.grids import Grid
 from service.network.files.table_columns import Kind
+from service.network.wording import is_note
 
 DEFINITION_FILE = "network.json"
 
@@ -36,7 +37,7 @@ class Places:
             return pointer
         grid, row, names = self._found(pointer)
         if grid is not None:
-            return grid.place(row=row, column=_column(grid, names) if names else None)
+            return grid.place(row=row, column=_column(grid, row, names) if names else None)
         if self.has_definition:
             return f"{DEFINITION_FILE}!{pointer}"
         return f"network!column {names[0]}" if names else pointer[1:]
@@ -68,10 +69,10 @@ class Places:
         """Return a value with the decimal mark of its file."""
         if not self.of_files or not pointer.startswith("/"):
             return value
-        grid, _, names = self._found(pointer)
+        grid, row, names = self._found(pointer)
         if grid is None or value is None or not grid.decimal_comma or not names:
             return value
-        return swapped(value) if grid.kind(_column(grid, names)) is Kind.NUMBER else value
+        return swapped(value) if grid.kind(_column(grid, row, names)) is Kind.NUMBER else value
 
     def _found(self, pointer: str) -> tuple[Grid | None, int | None, Sequence[str]]:
         """Return the table, the row and the names inside it that a pointer leads to."""
@@ -101,11 +102,12 @@ _SWAP = str.maketrans(",.", ".,")
 _LISTS = frozenset({"items", "sites", "supply", "demand", "lanes", "rules"})
 
 
-def _column(grid: Grid, names: Sequence[str]) -> str:
+def _column(grid: Grid, row: int | None, names: Sequence[str]) -> str:
     """Return the column that holds the value of ``names``, positions in a list left out.
 
-    The longest name that is a column is it; a value that is missing has none, and is called as its
-    column would be.
+    The longest name that is a column is it. A value that several columns make up (``extra``) is in
+    the one of them whose cell is wrong by itself; one that is missing is called as its column
+    would be.
     """
     steps = [name for name in names if not name.isdigit()] or list(names)
     for parts in (list(names), steps):
@@ -114,4 +116,14 @@ def _column(grid: Grid, names: Sequence[str]) -> str:
             if name in grid.columns:
                 return name
     family = [column for column in grid.columns if column.startswith(f"{steps[0]}.")]
-    return family[0] if len(family) == 1 and len(steps) == 1 else ".".join(steps)
+    if len(steps) > 1 or not family:
+        return ".".join(steps)
+    if len(family) > 1 and row is not None:
+        wrong = [name for name in family if _is_wrong(grid.columns[name].at(row))]
+        family = wrong or [steps[0]]
+    return family[0] if row is not None or len(family) == 1 else steps[0]
+
+
+def _is_wrong(cell: object) -> bool:
+    """Return whether a cell cannot be one of a pair of texts."""
+    return cell is not None and not (type(cell) is str and is_note(cell))

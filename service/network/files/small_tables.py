@@ -3,10 +3,9 @@
 from collections.abc import Mapping, Sequence
 from typing import Final
 
-from service.network.faults import FaultList
+from service.network.faults import FaultList, Odd
 from service.network.files.grids import Grid, add_at_rows
 from service.network.files.table_columns import PICKS_ALL
-from service.network.sheets import Odd
 
 _SELECTORS: Final = ("lanes", "sites", "items")
 

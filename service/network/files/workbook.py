@@ -14,14 +14,13 @@ from xml.etree import ElementTree as ET
 
 import numpy as np
 
-from service.network.faults import FaultList
+from service.network.faults import FaultList, Odd
 from service.network.files.grids import Cells, Grid
 from service.network.files.headers import headed, untransposed
 from service.network.files.json import Number
 from service.network.files.table_columns import PAIR_COLUMNS, SINGLE, TABLES, Kind, field_of
 from service.network.files.workbook_guard import OddCells, look_through
 from service.network.files.zips import Allowance, HostileZipError, opened, pieces
-from service.network.sheets import Odd
 
 DIGITS_EXACT: Final = 15
 # A sheet for people, in the template and wherever they want one.

@@ -15,8 +15,8 @@ from typing import Final
 import numpy as np
 
 from service.network.columns import IntArray
+from service.network.faults import Odd
 from service.network.files.zips import Allowance, HostileZipError, opened, pieces
-from service.network.sheets import Odd
 
 # A sheet with every row that a workbook can have, and 16 columns.
 AREA_MAX: Final = 16 * (1 << 20)
