@@ -24,3 +24,4 @@ NUMBERS_TOO_LARGE  # a planning child answers with its value
 _.size_bytes  # tests/unit/network look at it
 _.extract_id  # pydantic checks it; it stays with the body as received
 _.extracted_at  # likewise
+usable_lanes_of_one  # planning/memory.py takes it out of a document by its name

@@ -24,7 +24,8 @@ if TYPE_CHECKING:
     from service.network.intake import IntakeReport
     from service.network.options import Options
     from service.planning.outcome import Outcome
-    from service.runs.ports import Application, ExecutorLock, Store
+    from service.runs.ports import ExecutorLock, Store
+    from service.runs.use_cases import Application
     from service.store.database import Database
 
 
@@ -93,15 +94,31 @@ class Work:
     def plan(
         self, source: Path, target: Path, *, options: "Options", on_progress: OnProgress
     ) -> "Outcome":
-        """Plan a checked network in a child that is started for it."""
+        """Plan a checked network in a child that is started for it.
+
+        Raises ``PlanTooLarge`` when that cannot fit into the memory that it may use.
+        """
+        import orjson  # noqa: PLC0415 - see the module
+
         from service.engine.one_task import do_one_task  # noqa: PLC0415 - see the module
         from service.engine.tasks import plan_task, read_outcome  # noqa: PLC0415 - see the module
+        from service.network.intake_files import INTAKE_FILE  # noqa: PLC0415 - see the module
+        from service.planning.memory import (  # noqa: PLC0415 - see the module
+            estimated_peak_bytes,
+            limit_bytes,
+        )
+        from service.runs.faults import PlanTooLarge  # noqa: PLC0415 - see the module
 
+        allowed = self._settings.plan_memory_bytes_max
+        workload = orjson.loads((source / INTAKE_FILE).read_bytes())["workload"]
+        estimated = estimated_peak_bytes(workload)
+        if estimated > allowed:
+            raise PlanTooLarge(estimated_bytes=estimated, allowed_bytes=allowed)
         answer = do_one_task(
             "plan",
             plan_task(source, target, options=options),
             seconds=options.deadline_seconds,
-            memory_bytes=self._settings.plan_memory_bytes_max,
+            memory_bytes=limit_bytes(estimated, allowed=allowed, held=0),
             on_progress=on_progress,
         )
         return read_outcome(answer)
@@ -190,6 +207,7 @@ def working_application(settings: Settings) -> Iterator["Application"]:
             dispatcher=engine,
             intake=intake,
             pack=pack,
+            plan_memory_bytes_max=settings.plan_memory_bytes_max,
             engine_missing=lambda: [] if engine.working() else ["engine: it has stopped"],
         )
 

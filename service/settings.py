@@ -49,7 +49,8 @@ class Settings(BaseSettings):
     intake_seconds_max: Annotated[int, Field(ge=1, le=900)] = 60
     intake_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 4 * GIBIBYTE
 
-    plan_memory_bytes_max: Annotated[int, Field(ge=256 * MEBIBYTE)] = 8 * GIBIBYTE
+    # A child that has only loaded the solver has mapped 270 MB.
+    plan_memory_bytes_max: Annotated[int, Field(ge=512 * MEBIBYTE)] = 8 * GIBIBYTE
     # What planned runs leave for the next ones to start from; a cache, for each tenant; 0 for none.
     warm_start_bytes_max: Annotated[int, Field(ge=0)] = 256 * MEBIBYTE
     crashes_max: Annotated[int, Field(ge=1, le=10)] = CRASHES_MAX

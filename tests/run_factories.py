@@ -12,10 +12,21 @@ from service.network.options import Options
 from service.network.stored_zip import write_stored_zip
 from service.planning.outcome import FailureReason, Outcome, State
 from service.runs.execute import Execute
-from service.runs.ports import Claim, Run, RunId, Store
-from service.runs.run import LOCAL, Actor, Progress, Token
+from service.runs.ports import Store
+from service.runs.run import LOCAL, Actor, Claim, Progress, Run, RunId, Token
 from service.runs.submit import Submit
 
+WORKLOAD = {
+    "items": 1,
+    "sites": 2,
+    "supply_rows": 1,
+    "order_lines": 1,
+    "lanes": 8,
+    "usable_lanes": 8,
+    "usable_lanes_of_one": 8,
+    "places": 2,
+    "file_bytes": 1000,
+}
 WIRE_DIGEST = "sha-256:" + "a" * 64
 
 
@@ -60,6 +71,7 @@ def intake_folder(
         "plan_for": plan_for,
         "name": None,
         "likeness": likeness,
+        "workload": WORKLOAD,
     }
     (folder / "intake.json").write_bytes(orjson.dumps(summary))
     return folder

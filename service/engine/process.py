@@ -272,13 +272,23 @@ def resident_bytes(pid: int) -> int:
     The second of two limits: the child itself bounds its address space (``limit_memory`` in
     ``engine/child.py``), which is the first to notice, but does not exist on every system.
     """
+    return _memory_of(pid, field=1)
+
+
+def address_space_bytes(pid: int) -> int:
+    """Return what a process has mapped, which its limit counts, or 0 where that is not known."""
+    return _memory_of(pid, field=0)
+
+
+def _memory_of(pid: int, *, field: int) -> int:
+    """Return one field of what Linux says about the memory of a process."""
     if sys.platform != "linux":
         return 0
     try:
         fields = Path(f"/proc/{pid}/statm").read_text(encoding="ascii").split()
     except OSError:
         return 0  # It ended meanwhile; the socket will tell.
-    return int(fields[1]) * os.sysconf("SC_PAGE_SIZE")
+    return int(fields[field]) * os.sysconf("SC_PAGE_SIZE")
 
 
 def _kill_group(pid: int) -> None:

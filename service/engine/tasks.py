@@ -10,11 +10,13 @@ import orjson
 import structlog
 
 from service.engine.children import Nursery
+from service.engine.process import address_space_bytes
 from service.network.faults import Status
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
+from service.planning.memory import limit_bytes
 from service.planning.outcome import FailureReason, Outcome
-from service.runs.faults import ChildCrashed, ChildTimeout
+from service.runs.faults import ChildCrashed, ChildMemory, ChildTimeout
 from service.runs.run import Claim, Progress, Token
 
 if TYPE_CHECKING:
@@ -135,20 +137,40 @@ class PlanningChildren:
             if self._closed:
                 work.released.set()
 
+        task = plan_task(source, target, options=options)
+        estimated = claim.needs.memory_bytes
+        try:
+            answer = self._ask(task, work, until=until, estimated=estimated)
+        except ChildMemory:
+            if estimated is None or limit_bytes(estimated, allowed=self._memory_bytes, held=0) >= (
+                self._memory_bytes
+            ):
+                raise
+            # A wrong estimate of ours must cost time, and no run.
+            _log.warning("memory_estimate_too_low", run_id=claim.run_id, bytes=estimated)
+            answer = self._ask(task, work, until=until, estimated=None)
+        return read_outcome(answer)
+
+    def _ask(
+        self, task: Mapping[str, object], work: "_Work", *, until: float, estimated: int | None
+    ) -> Mapping[str, object]:
+        """Have ``task`` done by a child whose limit follows from the estimate."""
         child = self._nursery.take()
         seconds = until - time.monotonic()
         if seconds <= 0:
             self._nursery.give_back(child, input_bytes=0)
             raise ChildTimeout("there was no time left to plan in")
+        held = address_space_bytes(child.pid)
         answer = child.ask(
-            plan_task(source, target, options=options),
+            task,
             seconds=seconds,
-            memory_bytes=self._memory_bytes,
+            memory_bytes=limit_bytes(estimated, allowed=self._memory_bytes, held=held),
             released=work.released,
             on_progress=work.told,
         )
-        self._nursery.give_back(child, input_bytes=(source / NETWORK_FILE).stat().st_size)
-        return read_outcome(answer)
+        network = Path(str(task["source"])) / NETWORK_FILE
+        self._nursery.give_back(child, input_bytes=network.stat().st_size)
+        return answer
 
     def settled(self) -> None:
         """Forget the claim of the calling thread: its run is stored, or given back."""

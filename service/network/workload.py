@@ -3,7 +3,6 @@
 Both are taken by the input check and travel with its summary; neither changes a plan.
 """
 
-from collections.abc import Mapping
 from dataclasses import asdict, dataclass
 
 import numpy as np
@@ -34,11 +33,6 @@ class Workload:
     def to_document(self) -> dict[str, int]:
         """Return the counts as a JSON object."""
         return asdict(self)
-
-    @staticmethod
-    def from_document(document: Mapping[str, int]) -> "Workload":
-        """Read back what ``to_document`` wrote."""
-        return Workload(**document)
 
 
 def workload_of(network: Network, *, file_bytes: int) -> Workload:

@@ -3,17 +3,19 @@
 from collections.abc import Callable
 
 from service.runs.evidence import Evidence, Pack
-from service.runs.ports import Application, Dispatcher, IntakeCall, Store
+from service.runs.ports import Dispatcher, Store
 from service.runs.read import Read
 from service.runs.submit import Submit
+from service.runs.use_cases import Application, IntakeCall
 
 
-def application(
+def application(  # noqa: PLR0913 - what the use cases are given from outside, by name
     *,
     store: Store,
     dispatcher: Dispatcher,
     intake: IntakeCall,
     pack: Pack,
+    plan_memory_bytes_max: int,
     engine_missing: Callable[[], list[str]],
 ) -> Application:
     """Return the use cases over ``store``.
@@ -24,7 +26,9 @@ def application(
     read = Read(store=store)
     return Application(
         intake=intake,
-        submit=Submit(store=store, dispatcher=dispatcher),
+        submit=Submit(
+            store=store, dispatcher=dispatcher, plan_memory_bytes_max=plan_memory_bytes_max
+        ),
         run=read.run,
         plan_bytes=read.plan_bytes,
         certificate_bytes=read.certificate_bytes,

@@ -21,6 +21,17 @@ class BlobBroken(Exception):  # noqa: N818 - as above
     """A blob is missing, incomplete, or not what its digest says."""
 
 
+class PlanTooLarge(Exception):  # noqa: N818 - as above
+    """To plan the network would take more memory than planning is given."""
+
+    def __init__(self, *, estimated_bytes: int, allowed_bytes: int) -> None:
+        """Remember both numbers."""
+        super().__init__(f"about {estimated_bytes} bytes where {allowed_bytes} are allowed")
+        self.estimated_bytes = estimated_bytes
+        self.allowed_bytes = allowed_bytes
+        self.setting = "LANEWRIGHT_PLAN_MEMORY_BYTES_MAX"
+
+
 class StoreUnavailable(Exception):  # noqa: N818 - as above
     """The database cannot be reached, or not in time; the same call may work later."""
 

@@ -1,30 +1,18 @@
-"""The seams of the house: what the use cases need from outside, and what every door receives.
+"""The seams of the house: what the use cases need from outside.
 
 The other side of each seam lives elsewhere: ``Store`` in ``service/store``, ``Planner``,
-``Dispatcher`` and the intake child in ``service/engine``. Tests put fakes in their place. What
-travels over the seams is in ``runs/run.py`` and ``runs/faults.py``, and may be imported from here.
+``Dispatcher`` and ``ExecutorLock`` there and in ``service/engine``. Tests put fakes in their place.
+What travels over the seams is in ``runs/run.py`` and ``runs/faults.py``; what doors receive in
+``runs/use_cases.py``.
 """
 
 from collections.abc import Collection, Mapping, Sequence
 from contextlib import AbstractContextManager
-from dataclasses import dataclass
 from datetime import date, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING, Protocol
 
-from service.planning.outcome import FailureReason
-from service.runs.faults import (
-    ArtefactMissing,
-    BlobBroken,
-    ChildCrashed,
-    ChildMemory,
-    ChildReleased,
-    ChildTimeout,
-    RunUnknown,
-    StoreUnavailable,
-)
 from service.runs.run import (
-    LOCAL,
     Actor,
     Claim,
     Ending,
@@ -34,61 +22,15 @@ from service.runs.run import (
     Progress,
     Run,
     RunId,
-    RunState,
     Staged,
     StoredEvent,
     Submission,
     Token,
-    engine_of,
 )
 
 if TYPE_CHECKING:
-    from service.network.intake import IntakeReport
     from service.network.options import Options
     from service.planning.outcome import Outcome
-
-__all__ = [
-    "LOCAL",
-    "Actor",
-    "Application",
-    "ArtefactMissing",
-    "BlobBroken",
-    "BytesCall",
-    "ChildCrashed",
-    "ChildMemory",
-    "ChildReleased",
-    "ChildTimeout",
-    "Claim",
-    "Clock",
-    "Dispatcher",
-    "Ending",
-    "EvidenceCall",
-    "ExecutorLock",
-    "FailureReason",
-    "Finish",
-    "HistoryCall",
-    "IndexRows",
-    "IntakeCall",
-    "Needs",
-    "NetworkCall",
-    "Planner",
-    "Progress",
-    "ReadinessCall",
-    "Run",
-    "RunCall",
-    "RunId",
-    "RunState",
-    "RunUnknown",
-    "Staged",
-    "Store",
-    "StoreUnavailable",
-    "StoredEvent",
-    "Submission",
-    "SubmitCall",
-    "Token",
-    "Transaction",
-    "engine_of",
-]
 
 
 class Clock(Protocol):
@@ -284,90 +226,3 @@ class Store(Protocol):
     def missing(self) -> list[str]:
         """Return what keeps the store from working, in words; empty means ready."""
         ...
-
-
-class IntakeCall(Protocol):
-    """Checks a spooled network in a child of its own."""
-
-    def __call__(
-        self,
-        spool: Path,
-        folder: Path,
-        *,
-        options: "Options",
-        media_type: str,
-        content_encoding: str | None,
-    ) -> "IntakeReport":
-        """Check ``spool``; leave ``received``, ``network.zip``, ``intake.json`` in ``folder``."""
-        ...
-
-
-class SubmitCall(Protocol):
-    """Stores a checked network as a waiting run."""
-
-    def __call__(self, folder: Path, options: "Options", actor: Actor, wire_digest: str) -> Run:
-        """Store what intake left in ``folder``; what is returned is on disk."""
-        ...
-
-
-class RunCall(Protocol):
-    """Reads one run."""
-
-    def __call__(self, run_id: RunId, tenant: str) -> Run:
-        """Return the run as it is now, or raise ``RunUnknown``."""
-        ...
-
-
-class BytesCall(Protocol):
-    """Reads one artefact of a run."""
-
-    def __call__(self, run_id: RunId, tenant: str) -> bytes:
-        """Return the bytes as stored, or raise ``RunUnknown`` or ``ArtefactMissing``."""
-        ...
-
-
-class NetworkCall(Protocol):
-    """Reads the network of a run."""
-
-    def __call__(self, run_id: RunId, tenant: str, *, form: str = "normal") -> bytes:
-        """Return the body as ``received`` or the ``normal`` form (a zip)."""
-        ...
-
-
-class HistoryCall(Protocol):
-    """Reads who did what to a run, and when."""
-
-    def __call__(self, run_id: RunId, tenant: str) -> list[dict[str, object]]:
-        """Return event documents ``{"event", "payload", "salt"}`` in order."""
-        ...
-
-
-class EvidenceCall(Protocol):
-    """Packs plan, certificate and history so that a stranger can check them."""
-
-    def __call__(self, run_id: RunId, tenant: str, path: Path) -> None:
-        """Write the evidence zip of a run to ``path``."""
-        ...
-
-
-class ReadinessCall(Protocol):
-    """Says whether the service can do its work."""
-
-    def __call__(self) -> list[str]:
-        """Return what is missing, in words; empty means ready."""
-        ...
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Application:
-    """The use cases, as every door receives them (built by ``runs/application.py``)."""
-
-    intake: IntakeCall
-    submit: SubmitCall
-    run: RunCall
-    plan_bytes: BytesCall
-    certificate_bytes: BytesCall
-    network_bytes: NetworkCall
-    history: HistoryCall
-    evidence: EvidenceCall
-    readiness: ReadinessCall

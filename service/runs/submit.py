@@ -11,7 +11,9 @@ import orjson
 from service.network.canonical import HEAD_ENTRY, canonical_json, digest
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE, RECEIVED_FILE
 from service.network.options import Options
+from service.planning.memory import estimated_peak_bytes
 from service.runs.events import run_stream
+from service.runs.faults import PlanTooLarge
 from service.runs.identity import new_run_id
 from service.runs.ports import Dispatcher, Store
 from service.runs.records import EventKind, submitted_payload
@@ -28,9 +30,12 @@ class Submit:
 
     store: Store
     dispatcher: Dispatcher
+    plan_memory_bytes_max: int | None = None
 
     def __call__(self, folder: Path, options: Options, actor: Actor, wire_digest: str) -> Run:
         """Store what intake left in ``folder``; what is returned is on disk.
+
+        Raises ``PlanTooLarge`` when planning it cannot fit into the memory that it may use.
 
         The planning itself happens elsewhere (``runs/execute.py``): no transaction is ever open
         while a solver works. Large blobs are written before the transaction that names them.
@@ -38,6 +43,10 @@ class Submit:
         tenant = actor.tenant
         intake_bytes = (folder / INTAKE_FILE).read_bytes()
         summary: dict[str, Any] = orjson.loads(intake_bytes)
+        needs = Needs(
+            likeness=summary["likeness"], memory_bytes=estimated_peak_bytes(summary["workload"])
+        )
+        refuse_too_large(needs, self.plan_memory_bytes_max)
         received = self.store.stage_file(tenant, folder / RECEIVED_FILE)
         normal = self.store.stage_file(tenant, folder / NETWORK_FILE)
         intake = self.store.stage_bytes(tenant, intake_bytes)
@@ -48,7 +57,6 @@ class Submit:
         if _network_digest(folder / NETWORK_FILE) != summary["network_digest"]:
             raise IntakeBroken("the normal form is not the one that was reported")
         plan_for = options.plan_for or date.fromisoformat(summary["plan_for"])
-        needs = Needs(likeness=summary.get("likeness"), memory_bytes=None)
 
         with self.store.transaction() as transaction:
             now = transaction.now
@@ -78,6 +86,15 @@ class Submit:
             run = transaction.run(submission.id, tenant)
         self.dispatcher.notify(run.id)  # only a wake-up: losing it must not lose the run
         return run
+
+
+def refuse_too_large(needs: Needs, allowed_bytes: int | None) -> None:
+    """Raise ``PlanTooLarge`` when ``needs`` are above what planning may use; None is no bound."""
+    if allowed_bytes is not None and (needs.memory_bytes or 0) > allowed_bytes:
+        raise PlanTooLarge(
+            estimated_bytes=needs.memory_bytes or 0,
+            allowed_bytes=allowed_bytes,
+        )
 
 
 def _network_digest(path: Path) -> str:

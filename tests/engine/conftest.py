@@ -19,3 +19,12 @@ def house(database: Database, tmp_path: Path) -> Iterator[House]:
     engine.start(EngineLock(tmp_path / "lanewright.db.engine"))
     yield House(store=store, engine=engine, planner=planner, folder=tmp_path)
     engine.stop()
+
+
+@pytest.fixture
+def idle_house(database: Database, tmp_path: Path) -> Iterator[House]:
+    """Return a house whose engine does nothing by itself."""
+    store = SqlStore(database, SystemClock())
+    engine, planner = engine_over(store, tmp_path / "scratch")
+    yield House(store=store, engine=engine, planner=planner, folder=tmp_path)
+    planner.close()

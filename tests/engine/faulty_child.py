@@ -18,6 +18,9 @@ from service.engine.child import Progress, Task, Work, main
 MEBIBYTE = 2**20
 
 
+_held: list[bytearray] = []
+
+
 def _hang_in_c() -> None:
     """Wait for ever in C with the interpreter's lock held: no Python signal handler can run."""
     ctypes.PyDLL(None).pause()
@@ -36,6 +39,9 @@ def misbehave(task: Task, progress: Progress) -> Mapping[str, object]:  # noqa: 
         case "echo":
             progress("echoing", {"length": len(task["text"])})
             return {"text": task["text"], "pid": os.getpid()}
+        case "map":
+            # Kept until the child ends, as a solver's memory may be.
+            _held.append(bytearray(MEBIBYTE * task["mebibytes"]))
         case "rounds":
             progress("read", {"lanes": 8})
             for number in range(1, task["count"] + 1):

@@ -16,9 +16,9 @@ from service.proof import standalone
 from service.proof.evidence import verify_evidence
 from service.runs.evidence import Evidence, pack_evidence
 from service.runs.execute import Execute
-from service.runs.ports import Claim, Store
+from service.runs.ports import Store
 from service.runs.read import Read
-from service.runs.run import LOCAL, Token
+from service.runs.run import LOCAL, Claim, Token
 from service.runs.submit import Submit
 from service.store.database import open_database
 from service.store.migrate import migrate

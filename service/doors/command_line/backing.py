@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from service.network.intake import IntakeReport
     from service.network.options import Options
     from service.planning.outcome import Outcome
-    from service.runs.ports import Application
+    from service.runs.use_cases import Application
 
 OnProgress = Callable[[str, Mapping[str, int]], None]
 

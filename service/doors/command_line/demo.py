@@ -16,10 +16,11 @@ from service.doors.command_line.ending import EndingError, Exit, put, put_lines
 from service.doors.command_line.progress import progress_bar
 from service.doors.command_line.summary import summary_lines
 from service.network.options import Options
-from service.runs.ports import LOCAL
+from service.runs.run import LOCAL
 
 if TYPE_CHECKING:
-    from service.runs.ports import Application, Run
+    from service.runs.run import Run
+    from service.runs.use_cases import Application
 
 FINAL = frozenset({"planned", "no_plan", "failed", "cancelled"})
 POLL_SECONDS = 0.05

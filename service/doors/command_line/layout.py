@@ -50,6 +50,11 @@ def count_of(number: int, noun: str) -> str:
     return f"{grouped(number)} {noun}{'' if number == 1 else 's'}"
 
 
+def mebibytes(size: int) -> str:
+    """Return a number of bytes in MiB, rounded up."""
+    return f"{grouped(-(-size // 2**20))} MiB"
+
+
 def clipped(text: str, width: int = WIDTH) -> str:
     """Return ``text``, cut at ``width`` with an ellipsis that says so."""
     return text if len(text) <= width else text[: width - 1] + "…"

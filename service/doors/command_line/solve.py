@@ -12,13 +12,21 @@ from service.doors.command_line import parameters
 from service.doors.command_line.backing import Backing
 from service.doors.command_line.check import accepted
 from service.doors.command_line.ending import EndingError, Exit, put, put_lines, tell
-from service.doors.command_line.layout import count_of
+from service.doors.command_line.layout import count_of, mebibytes
 from service.doors.command_line.plan_files import Parquet, Xlsx, write_files
 from service.doors.command_line.progress import progress_bar
 from service.doors.command_line.summary import summary_lines
 from service.doors.plan_tables import COLUMNS, table_csv
+from service.network.intake_files import NETWORK_FILE
 from service.network.options import Options
-from service.runs.faults import ChildCrashed, ChildMemory, ChildReleased, ChildTimeout
+from service.planning.outcome import CERTIFICATE_FILE, PLAN_FILE
+from service.runs.faults import (
+    ChildCrashed,
+    ChildMemory,
+    ChildReleased,
+    ChildTimeout,
+    PlanTooLarge,
+)
 
 Csv = Annotated[
     str | None,
@@ -89,7 +97,7 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
     with tempfile.TemporaryDirectory(prefix="lanewright-") as name:
         folder = Path(name)
         _planned(backing, file, folder, options)
-        plan_bytes = (folder / "plan.json").read_bytes()
+        plan_bytes = (folder / PLAN_FILE).read_bytes()
         if evidence is not None:
             _write_evidence(evidence, folder, options)
     plan: dict[str, Any] = orjson.loads(plan_bytes)
@@ -110,9 +118,16 @@ def solve(  # noqa: PLR0913 - one parameter for each option that a person can ty
 def _planned(backing: Backing, file: str, folder: Path, options: Options) -> None:
     """Check and plan ``file`` in ``folder``; raise ``EndingError`` when there is no answer."""
     with progress_bar("checking") as moved:
-        accepted(backing, file, folder, options)
+        summary = accepted(backing, file, folder, options)
+        moved("checked", summary["counts"])  # type: ignore[arg-type] # the intake counts rows
         try:
             outcome = backing.plan(folder, folder, options=options, on_progress=moved)
+        except PlanTooLarge as error:
+            detail = (
+                f"planning would take about {mebibytes(error.estimated_bytes)}, and may take "
+                f"{mebibytes(error.allowed_bytes)}: raise {error.setting} (bytes)"
+            )
+            raise EndingError(Exit.FAILED, "memory_limit", detail) from error
         except ChildTimeout as error:
             detail = f"no plan within {options.deadline_seconds} s: raise --deadline-seconds"
             raise EndingError(Exit.FAILED, "time_limit", detail) from error
@@ -131,15 +146,15 @@ def _write_evidence(path: Path, folder: Path, options: Options) -> None:
     """Pack everything that a stranger needs to check the plan."""
     from service.proof.evidence import write_evidence  # noqa: PLC0415 - NumPy, only for --evidence
 
-    with zipfile.ZipFile(folder / "network.zip") as network:
+    with zipfile.ZipFile(folder / NETWORK_FILE) as network:
         entries = {name: network.read(name) for name in network.namelist()}
-    certificate_bytes = (folder / "certificate.json").read_bytes()
+    certificate_bytes = (folder / CERTIFICATE_FILE).read_bytes()
     try:
         write_evidence(
             path,
             network_entries=entries,
             options=options,
-            plan_bytes=(folder / "plan.json").read_bytes(),
+            plan_bytes=(folder / PLAN_FILE).read_bytes(),
             certificate_bytes=certificate_bytes,
             history=[],
             versions=orjson.loads(certificate_bytes)["versions"],

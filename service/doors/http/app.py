@@ -13,7 +13,7 @@ from service.doors.http.routes import artefacts, health, runs, template
 from service.doors.http.security import LocalDoor
 from service.doors.http.spool import Spool
 from service.network.schema import network_schema
-from service.runs.ports import Application
+from service.runs.use_cases import Application
 from service.settings import Settings
 
 # Each holds a file and, while it waits for its check, nothing else; more at once would be an

@@ -14,8 +14,8 @@ from service.doors.http.schemas import RUN_ID_PATTERN
 from service.doors.http.security import current_actor
 from service.doors.http.spool import Spool
 from service.network.faults import Fault, value_text
-from service.runs.ports import Application
 from service.runs.run import Actor, RunId
+from service.runs.use_cases import Application
 
 PARAMETERS_MAX: Final = 100
 

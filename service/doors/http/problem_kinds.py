@@ -101,6 +101,16 @@ BODY_TOO_LARGE: Final = ProblemKind(
     remedy="Send lanes as columns or as cost tables, which are several times smaller, or have the "
     "limit raised by whoever runs the service.",
 )
+PLAN_TOO_LARGE: Final = ProblemKind(
+    slug="plan-too-large",
+    status=413,
+    title="The network is too large to be planned here",
+    meaning="To plan the network would take more memory than the service gives to planning, as "
+    "estimated from its counts. The members estimated_bytes and allowed_bytes say how much, "
+    "setting what limits it. Nothing was accepted.",
+    remedy="Plan it in parts, for instance item by item, leave out lanes that nobody would use, or "
+    "have the setting raised by whoever runs the service.",
+)
 ADDRESS_TOO_LONG: Final = ProblemKind(
     slug="address-too-long",
     status=414,
@@ -201,6 +211,7 @@ KINDS: Final[Mapping[str, ProblemKind]] = {
         BODY_TOO_SLOW,
         ARTEFACT_MISSING,
         BODY_TOO_LARGE,
+        PLAN_TOO_LARGE,
         ADDRESS_TOO_LONG,
         UNSUPPORTED_MEDIA_TYPE,
         UNSUPPORTED_ENCODING,

@@ -23,6 +23,7 @@ from service.runs.faults import (
     ChildMemory,
     ChildReleased,
     ChildTimeout,
+    PlanTooLarge,
     RunUnknown,
     StoreUnavailable,
 )
@@ -112,6 +113,20 @@ def _artefact_missing(error: Exception) -> Problem:
     )
 
 
+def _plan_too_large(error: Exception) -> Problem:
+    assert isinstance(error, PlanTooLarge)  # noqa: S101 - the table below pairs them
+    return Problem(
+        kinds.PLAN_TOO_LARGE,
+        f"Planning it would take about {error.estimated_bytes} bytes of memory; "
+        f"{error.allowed_bytes} are allowed.",
+        members={
+            "estimated_bytes": error.estimated_bytes,
+            "allowed_bytes": error.allowed_bytes,
+            "setting": error.setting,
+        },
+    )
+
+
 def _memory(_error: Exception) -> Problem:
     return Problem(
         kinds.BODY_TOO_LARGE,
@@ -139,6 +154,7 @@ PROBLEM_OF: Final[Mapping[type[Exception], Callable[[Exception], Problem]]] = {
     RunUnknown: _run_unknown,
     ArtefactMissing: _artefact_missing,
     ChildMemory: _memory,
+    PlanTooLarge: _plan_too_large,
     ChildTimeout: _timeout,
     ChildReleased: _released,
     StoreUnavailable: _store_unavailable,

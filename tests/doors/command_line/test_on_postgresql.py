@@ -56,7 +56,7 @@ def test_second_service_on_one_database_refuses_to_start(
         "LANEWRIGHT_DATABASE": plain(url),
         "LANEWRIGHT_LOG_LEVEL": "error",
     }
-    command = [PROGRAM, "serve", "--port", "0"]
+    command: list[str | Path] = [PROGRAM, "serve", "--port", "0"]
     with subprocess.Popen(
         command, cwd=tmp_path, env=environment, stderr=subprocess.PIPE, text=True
     ) as first:

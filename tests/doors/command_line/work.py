@@ -13,7 +13,7 @@ from service.network.faults import Fault, Status
 from service.network.intake import IntakeReport
 from service.network.options import Options
 from service.planning.outcome import FailureReason, Outcome
-from service.runs.ports import Application
+from service.runs.use_cases import Application
 
 DIGEST = "sha-256:" + "0" * 64
 SUMMARY: Mapping[str, object] = {

@@ -20,8 +20,8 @@ from service.network.files.media_types import NETWORK_TYPES
 from service.network.intake import IntakeReport
 from service.network.options import Options
 from service.runs.faults import ArtefactMissing, RunUnknown
-from service.runs.ports import Application
 from service.runs.run import LOCAL, Actor, Progress, Run, RunId, RunState
+from service.runs.use_cases import Application
 from service.settings import Settings
 
 RUN_ID = RunId("run_01k8ovqf06vmkn95vj8ol7plvq")

@@ -16,6 +16,7 @@ from service.runs.faults import (
     ChildMemory,
     ChildReleased,
     ChildTimeout,
+    PlanTooLarge,
     StoreUnavailable,
 )
 from tests.doors.http.fakes import RUN_ID, FakeHouse, await_true, client_of, codes, fake_app
@@ -309,3 +310,18 @@ def test_too_many_bodies_at_once_are_told_to_come_back(house: FakeHouse, tmp_pat
     assert (refused.status_code, refused.json()["type"]) == (503, "/problems/busy")
     assert read == (200, 200)
     assert set(accepted) == {202}
+
+
+def test_network_too_large_to_plan_is_refused_with_the_numbers(
+    house: FakeHouse, client: TestClient
+) -> None:
+    """What was estimated, what is allowed, and the setting to change."""
+    house.error = PlanTooLarge(estimated_bytes=9_000_000_000, allowed_bytes=8_000_000_000)
+
+    answer = client.post("/v1/runs", content=b"{}", headers=JSON)
+
+    document = answer.json()
+    assert (answer.status_code, document["type"]) == (413, "/problems/plan-too-large")
+    assert document["estimated_bytes"] == 9_000_000_000
+    assert document["allowed_bytes"] == 8_000_000_000
+    assert document["setting"] == "LANEWRIGHT_PLAN_MEMORY_BYTES_MAX"

@@ -69,13 +69,6 @@ def test_counts_are_those_of_the_rows() -> None:
     )
 
 
-def test_counts_travel_as_a_document() -> None:
-    """What a child wrote is what the service reads."""
-    workload = workload_of(network_of(NETWORK), file_bytes=7)
-
-    assert Workload.from_document(workload.to_document()) == workload
-
-
 @given(network=networks())
 def test_bounds_hold_for_what_compiling_finds(network: RandomNetwork) -> None:
     """An estimate from counts that were too low would let in what cannot be planned."""

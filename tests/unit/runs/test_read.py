@@ -49,6 +49,7 @@ def test_every_read_of_another_tenants_run_is_unknown(store: SqlStore, tmp_path:
         dispatcher=FakeDispatcher(),
         intake=lambda *_, **__: pytest.fail("not asked for"),
         pack=lambda *_: pytest.fail("not asked for"),
+        plan_memory_bytes_max=2**30,
         engine_missing=lambda: ["a planning slot"],
     )
 

@@ -7,12 +7,20 @@ import pytest
 
 from service.network.canonical import canonical_json
 from service.network.options import Options
-from service.runs.faults import RunUnknown
-from service.runs.run import LOCAL, Actor, RunId, RunState
+from service.planning.memory import estimated_peak_bytes
+from service.runs.faults import PlanTooLarge, RunUnknown
+from service.runs.run import LOCAL, Actor, Run, RunId, RunState
 from service.runs.submit import IntakeBroken, Submit
 from service.store.database import Database
 from service.store.sql_store import SqlStore
-from tests.run_factories import WIRE_DIGEST, FakeDispatcher, intake_folder, sha256, submitted
+from tests.run_factories import (
+    WIRE_DIGEST,
+    WORKLOAD,
+    FakeDispatcher,
+    intake_folder,
+    sha256,
+    submitted,
+)
 
 
 def test_submitted_run_waits_with_everything_it_was_given(store: SqlStore, tmp_path: Path) -> None:
@@ -97,3 +105,28 @@ def test_run_of_another_tenant_is_not_known(store: SqlStore, tmp_path: Path) -> 
     for run_id, tenant in ((run.id, "other"), (RunId("run_" + "0" * 26), "local")):
         with pytest.raises(RunUnknown), store.reading() as reading:
             reading.run(run_id, tenant)
+
+
+def test_network_that_planning_cannot_hold_is_refused_before_anything_is_stored(
+    store: SqlStore, tmp_path: Path
+) -> None:
+    """With both numbers, so that whoever runs the service knows what to set; nobody is woken."""
+    folder = intake_folder(tmp_path / "in")
+    dispatcher = FakeDispatcher()
+    estimated = estimated_peak_bytes(WORKLOAD)
+
+    def submit(allowed: int) -> Run:
+        submitting = Submit(store=store, dispatcher=dispatcher, plan_memory_bytes_max=allowed)
+        return submitting(folder, Options(), LOCAL, WIRE_DIGEST)
+
+    with pytest.raises(PlanTooLarge) as refused:
+        submit(estimated - 1)
+
+    assert (refused.value.estimated_bytes, refused.value.allowed_bytes) == (
+        estimated,
+        estimated - 1,
+    )
+    assert dispatcher.notified == []
+    with store.reading() as reading:
+        assert reading.waiting(limit=10) == []
+    assert submit(estimated).number == "2026-02-03/1"

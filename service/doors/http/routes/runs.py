@@ -167,6 +167,7 @@ async def _check(door: Door, spooled: Spooled, options: Options, form: Form) -> 
             kinds.UNREADABLE_BODY,
             kinds.BODY_TOO_SLOW,
             kinds.BODY_TOO_LARGE,
+            kinds.PLAN_TOO_LARGE,
             kinds.UNSUPPORTED_MEDIA_TYPE,
             kinds.UNSUPPORTED_ENCODING,
             kinds.INVALID_NETWORK,
