@@ -1,5 +1,6 @@
 """Items and sites as the JSON of a network's head, and back without trust."""
 
+import functools
 import itertools
 import re
 from collections.abc import Mapping
@@ -40,12 +41,26 @@ def site_document(site: Site) -> dict[str, object]:
     if site.handling_cost_any is not None and site.handling_cost:
         raise NormalFormError(f"site {site.id!r} has two kinds of handling cost")
     by_item = {item: exact_text(cost) for item, cost in site.handling_cost.items()}
-    document: dict[str, object] = {"id": site.id, "roles": sorted(site.roles)}
-    _add(document, name=site.name, gln=site.gln, latitude=site.latitude, longitude=site.longitude)
-    _add(document, time_zone=site.time_zone, country=site.country)
-    _add(document, handling_cost=by_item or site.handling_cost_any)
-    _add(document, tags=list(site.tags), extra=dict(site.extra))
+    document: dict[str, object] = {"id": site.id, "roles": _sorted_roles(site.roles)}
+    _add(
+        document,
+        name=site.name,
+        gln=site.gln,
+        latitude=site.latitude,
+        longitude=site.longitude,
+        time_zone=site.time_zone,
+        country=site.country,
+        handling_cost=by_item or site.handling_cost_any,
+        tags=list(site.tags),
+        extra=dict(site.extra),
+    )
     return document
+
+
+@functools.cache
+def _sorted_roles(roles: frozenset[str]) -> list[str]:
+    """Return roles in order; nobody changes the list, which many sites share."""
+    return sorted(roles)
 
 
 def _add(document: dict[str, object], **values: object) -> None:
@@ -54,7 +69,7 @@ def _add(document: dict[str, object], **values: object) -> None:
         # By identity: the general test for a Fraction would cost more than the rest.
         if type(value) is Fraction:
             document[key] = exact_text(value)
-        elif value is not None and value not in ([], {}):
+        elif value or isinstance(value, str):
             document[key] = value
 
 

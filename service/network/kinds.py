@@ -175,7 +175,13 @@ def _roles(value: object) -> tuple[str, ...]:
         raise RefusedError("bad_roles", advice)
     if len(set(value)) < len(value):
         raise RefusedError("duplicate_value", advice)
-    return tuple(sorted(value))
+    return _sorted_roles(tuple(value))
+
+
+@lru_cache(maxsize=64)
+def _sorted_roles(roles: tuple[str, ...]) -> tuple[str, ...]:
+    """Return roles in order, the same object for all sites that have them."""
+    return tuple(sorted(roles))
 
 
 def _tags(value: object) -> tuple[str, ...]:

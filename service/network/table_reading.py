@@ -100,8 +100,10 @@ class TableReader:
         column, values = self._texts(name)
         if column is None:
             return np.full(self.rows, ABSENT, dtype=np.int32)
-        distinct: dict[str | None, int] = dict.fromkeys(values, FAULTY)
-        distinct |= {text: known[text] for text in distinct if text is not None and text in known}
+        distinct: dict[str | None, int] = {
+            text: FAULTY if text is None else known.get(text, FAULTY)
+            for text in dict.fromkeys(values)
+        }
         distinct[None] = ABSENT
         found = np.fromiter(map(distinct.__getitem__, values), dtype=np.int32, count=len(values))
         wrong = np.flatnonzero(found == FAULTY)

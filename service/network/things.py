@@ -30,7 +30,10 @@ class Things:
 
     def with_role(self, *roles: str) -> BoolArray:
         """Return, in shape (sites,), which sites have one of ``roles``."""
-        return np.array([not site.roles.isdisjoint(roles) for site in self.sites], dtype=np.bool_)
+        # There are few kinds of sites, and maybe many sites.
+        kinds = {site.roles for site in self.sites}
+        wanted = {kind for kind in kinds if not kind.isdisjoint(roles)}
+        return np.array([site.roles in wanted for site in self.sites], dtype=np.bool_)
 
 
 def read_things(items: object, sites: object, faults: FaultList) -> Things | None:
@@ -76,7 +79,8 @@ def _read_list(
         model = validated(part, value, path=(name, place), table=name, faults=faults)
         thing = None if model is None else build(model, (name, place), faults)
         identifier = value.get("id") if isinstance(value, dict) else None
-        if type(identifier) is not str or not is_id(identifier):
+        # A thing that was read has an id.
+        if thing is None and (type(identifier) is not str or not is_id(identifier)):
             continue
         if identifier in positions:
             detail = f"Two {name} have this id. Keep one, or give the other an id of its own."
@@ -125,7 +129,7 @@ def _item(part: ItemPart, path: tuple[str | int, ...], faults: FaultList) -> Ite
 
 def _site(part: SitePart, _path: Sequence[str | int], _faults: FaultList) -> Site:
     """Return a site."""
-    handling = dict(part.handling_cost or {})
+    handling = dict(part.handling_cost) if part.handling_cost else {}
     return Site(
         id=part.id,
         roles=frozenset(part.roles),
@@ -136,12 +140,15 @@ def _site(part: SitePart, _path: Sequence[str | int], _faults: FaultList) -> Sit
         time_zone=part.time_zone,
         country=part.country,
         handling_cost_any=handling.pop("", None),
-        handling_cost=dict(sorted(handling.items())),
+        handling_cost=_sorted(handling),
         tags=part.tags or (),
         extra=_sorted(part.extra),
     )
 
 
-def _sorted(extra: Mapping[str, str] | None) -> Mapping[str, str]:
-    """Return further pairs in the order of their names."""
-    return dict(sorted((extra or {}).items()))
+_Value = TypeVar("_Value", str, Fraction)
+
+
+def _sorted(pairs: Mapping[str, _Value] | None) -> Mapping[str, _Value]:
+    """Return pairs in the order of their names."""
+    return dict(sorted(pairs.items())) if pairs else {}
