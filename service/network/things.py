@@ -79,8 +79,8 @@ def _read_list(
         model = validated(part, value, path=(name, place), table=name, faults=faults)
         thing = None if model is None else build(model, (name, place), faults)
         identifier = value.get("id") if isinstance(value, dict) else None
-        # A thing that was read has an id.
-        if thing is None and (type(identifier) is not str or not is_id(identifier)):
+        # A thing that was read has an id for sure.
+        if type(identifier) is not str or (thing is None and not is_id(identifier)):
             continue
         if identifier in positions:
             detail = f"Two {name} have this id. Keep one, or give the other an id of its own."
