@@ -185,8 +185,9 @@ def _table_blocks(  # noqa: PLR0913 - the columns of a table
     rows = max(1, BLOCK_CELLS // tails.shape[0])
     for start in range(0, ends, rows):
         part = slice(start, start + rows)
-        block: NDArray[Any] = np.ascontiguousarray(
-            table[:, part].T, dtype=np.int32 if narrow else np.int64
+        # A copy even where the table is one row or one column: offsets are added in place.
+        block: NDArray[Any] = np.array(
+            table[:, part].T, dtype=np.int32 if narrow else np.int64, order="C"
         )
         if at_tail.any():
             block += at_tail.astype(block.dtype)

@@ -93,6 +93,21 @@ def test_place_whose_only_lane_has_no_room_is_short_as_in_the_full_solve() -> No
     agree(document, Seen().front())
 
 
+def test_layout_of_one_long_row_leaves_the_costs_as_they_are() -> None:
+    """Costs beyond 32 bits into one place lie in the columns as the layout wants them."""
+    document = network_document(
+        sites=[
+            {"id": "W", "roles": ["warehouse"]},
+            {"id": "S", "roles": ["ship_to"], "handling_cost": "1.28"},
+        ],
+        supply=[{"site": "W", "item": "GOODS", "quantity": "9"}],
+        demand=[{"reference": "D", "site": "S", "item": "GOODS", "quantity": "5"}],
+        lanes=[{"origin": "W", "destination": "S", "unit_cost": "4360000.526235", "capacity": "7"}],
+    )
+
+    agree(document, Seen().front())
+
+
 def test_lists_too_short_for_a_plan_grow_until_none_is_better(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
