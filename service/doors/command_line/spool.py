@@ -39,7 +39,8 @@ class Spooled:
 def spooled(file: str, folder: Path) -> Spooled:
     """Return the input ``file`` as a path.
 
-    Standard input is written into ``folder`` first, and so is a folder of tables, as a zip.
+    Standard input or a pipe is written into ``folder`` first, and so is a folder of tables, as a
+    zip.
     """
     path = Path(file)
     try:
@@ -53,6 +54,11 @@ def spooled(file: str, folder: Path) -> Spooled:
                 media_type="application/zip",
                 content_encoding=None,
             )
+        elif not path.is_file():
+            # A pipe gives its bytes once, and they are looked at twice.
+            piped, path = path, folder / "input"
+            with piped.open("rb") as source, path.open("wb") as target:
+                shutil.copyfileobj(source, target)
         return _told(path)
     except OSError as error:
         raise EndingError(

@@ -195,7 +195,10 @@ def _ctrl_c_reaches_programs() -> Iterator[None]:
 @pytest.mark.usefixtures("_ctrl_c_reaches_programs")
 def test_ctrl_c_ends_the_child_too(tmp_path: Path) -> None:
     """A planner who gives up must not leave a process behind that eats the machine."""
-    os.mkfifo(tmp_path / "network.json")
+    with (tmp_path / "network.json").open("wb") as body:
+        # Blanks say nothing for long enough: the child has the file open while it reads them.
+        for _ in range(256):
+            body.write(b" " * (1 << 20))
     with subprocess.Popen(
         [PROGRAM, "check", "network.json"],
         cwd=tmp_path,
@@ -203,12 +206,12 @@ def test_ctrl_c_ends_the_child_too(tmp_path: Path) -> None:
         stderr=subprocess.PIPE,
         start_new_session=True,
     ) as process:
-        # The child blocks on the pipe that nobody writes to, like a solver that does not return.
-        writer = os.open(tmp_path / "network.json", os.O_WRONLY)
-        child = wait_for_reader(process.pid, tmp_path / "network.json")
-        os.kill(process.pid, signal.SIGINT)
-        code = process.wait(timeout=SECONDS_MAX)
-        os.close(writer)
+        try:
+            child = wait_for_reader(process.pid, tmp_path / "network.json")
+            os.kill(process.pid, signal.SIGINT)
+            code = process.wait(timeout=SECONDS_MAX)
+        finally:
+            process.kill()
 
     assert code == 130
     assert ended(child)
