@@ -13,6 +13,7 @@ from service.network.files.arrow_numbers import exact_numbers, is_number
 from service.network.files.arrow_texts import (
     date_cells,
     is_text,
+    is_text_list,
     list_cells,
     moment_cells,
     text_cells,
@@ -116,7 +117,7 @@ def _cells(grid: Grid, name: str, column: "pa.ChunkedArray", faults: FaultList) 
         return Cells(values=exact_numbers(column))
     for fitting, fits, read in (
         (Kind.WHOLE, kinds.is_integer(form), whole_cells),
-        (Kind.LIST, kinds.is_list(form) or kinds.is_large_list(form), list_cells),
+        (Kind.LIST, is_text_list(form), list_cells),
         (Kind.MOMENT, kinds.is_timestamp(form) and form.tz is not None, moment_cells),
         (Kind.DATE, kinds.is_date(form), date_cells),
         (Kind.DATE, kinds.is_timestamp(form) and form.tz is None, date_cells),

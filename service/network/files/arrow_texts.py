@@ -28,6 +28,14 @@ def is_text(form: "pa.DataType") -> bool:
     return bool(kinds.is_string(form) or kinds.is_large_string(form) or kinds.is_string_view(form))
 
 
+def is_text_list(form: "pa.DataType") -> bool:
+    """Return whether a type holds lists of texts."""
+    import pyarrow as pa  # noqa: PLC0415 - see above
+
+    is_list = pa.types.is_list(form) or pa.types.is_large_list(form)
+    return bool(is_list and is_text(form.value_type))
+
+
 def text_cells(column: "pa.ChunkedArray") -> Cells:
     """Return texts as they stand."""
     import pyarrow as pa  # noqa: PLC0415 - see above
@@ -85,8 +93,7 @@ def list_cells(column: "pa.ChunkedArray") -> Cells:
 
     elements = pc.list_flatten(column)
     plain = (
-        is_text(elements.type)
-        and not elements.null_count
+        not elements.null_count
         and not pc.any(pc.match_substring(elements.cast(pa.large_string()), _JOINT)).as_py()
         and not pc.any(pc.equal(elements.cast(pa.large_string()), "")).as_py()
     )
@@ -108,6 +115,11 @@ def _distinct(column: "pa.ChunkedArray", made: Callable[["pa.Array"], list[objec
     import pyarrow as pa  # noqa: PLC0415 - see above
     import pyarrow.compute as pc  # noqa: PLC0415 - likewise
 
+    if pa.types.is_dictionary(column.type) and any(
+        chunk.dictionary.null_count for chunk in column.chunks
+    ):
+        # An absent value has no code here; what stood in the dictionary for it is gone after this.
+        column = column.cast(column.type.value_type)
     if not pa.types.is_dictionary(column.type):
         column = column.dictionary_encode()
     column = column.unify_dictionaries()

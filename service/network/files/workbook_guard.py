@@ -39,7 +39,10 @@ _REFERENCE: Final = re.compile(rb"""\br\s*=\s*["']([A-Za-z]{1,3})([0-9]{1,7})["'
 _ERROR: Final = re.compile(rb"""\bt\s*=\s*["']e["']""")
 _FORMULA: Final = re.compile(rb"<" + _PREFIX + rb"f\b")
 _VALUE: Final = re.compile(rb"<" + _PREFIX + rb"v(?:\s[^>]*)?>([^<]+)<")
-_SHARED_VALUE: Final = re.compile(rb'\bt="s"[^>]*>\s*<' + _PREFIX + rb"v>([0-9]{1,9})<")
+_SHARED_CELL: Final = re.compile(rb"""\bt\s*=\s*["']s["']""")
+_SHARED_VALUE: Final = re.compile(
+    _SHARED_CELL.pattern + rb"[^>]*>\s*<" + _PREFIX + rb"v>([0-9]{1,9})<"
+)
 _ITEM: Final = re.compile(rb"<%(p)ssi\b(?:[^>]*/>|.*?</%(p)ssi>)" % {b"p": _PREFIX}, re.DOTALL)
 _ERROR_ADVICE: Final = "This cell holds an error. Mend the formula, or write a value."
 _UNCOMPUTED_ADVICE: Final = (
@@ -100,7 +103,7 @@ class _Look:
             self._rows, self._columns = max(self._rows, rows), max(self._columns, columns + 1)
             if self._rows * self._columns > AREA_MAX:
                 raise HostileZipError("workbook_too_large", _TOO_LARGE_ADVICE)
-        self.shared += piece.count(b't="s"')
+        self.shared += piece.count(b't="s"') if usual else len(_SHARED_CELL.findall(piece))
         if _ERROR.search(piece) or _FORMULA.search(piece):
             self._look_closely(piece)
 
