@@ -17,7 +17,9 @@ from service.runs.faults import BlobBroken
 from service.store.tables import BlobRow
 
 PART_BYTES: Final = 4 * 2**20
-_LEVEL: Final = 3
+# Measured on the normal form and the bodies of a million lanes (1 December 2026, zstd 1.5): level 3
+# takes 1.6 times as long and makes them 3 % smaller at best, the normal form even larger.
+_LEVEL: Final = 1
 _TABLE: Final = cast("Table", BlobRow.__table__)
 
 
