@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 
+from service.planning.outcome import FailureReason, State
 from service.runs.faults import ChildCrashed
 from service.runs.run import LOCAL, Run, RunState
 from service.store.audit import check_store
@@ -89,13 +90,17 @@ def test_other_tenants_prices_are_out_of_reach(house: House) -> None:
 
 @pytest.mark.parametrize(
     ("state", "reason"),
-    [("no_plan", None), ("failed", "numbers_too_large"), ("failed", "proof_failed")],
+    [
+        ("no_plan", None),
+        ("failed", FailureReason.NUMBERS_TOO_LARGE),
+        ("failed", FailureReason.PROOF_FAILED),
+    ],
 )
 def test_only_a_planned_run_leaves_something(
-    house: House, database: Database, state: str, reason: str | None
+    house: House, database: Database, state: State, reason: FailureReason | None
 ) -> None:
     """What led to no plan, or to a wrong one, is nothing to start from."""
-    house.plan(house.submit(), b"doubtful", outcome=outcome(state, reason=reason))  # type: ignore[arg-type] # as parametrized
+    house.plan(house.submit(), b"doubtful", outcome=outcome(state, reason=reason))
 
     assert kept(database) == 0
 
