@@ -3,7 +3,6 @@
 Nothing of it is a fact and nothing depends on it. Whatever is damaged is as good as absent.
 """
 
-import hashlib
 from typing import Final, cast
 
 import zstandard
@@ -11,6 +10,7 @@ from sqlalchemy import ColumnElement, Table, delete, select
 from sqlalchemy.dialects import postgresql, sqlite
 from sqlalchemy.orm import Session
 
+from service.network.canonical import digest as digest_of
 from service.runs.run import RunId
 from service.store.blob_repository import pack
 from service.store.tables import RunDispatchRow, RunRow, WarmStartRow
@@ -58,7 +58,7 @@ class SqlWarmStartRepository:
             "run": run_id,
             "network_digest": network_digest,
             "likeness": likeness,
-            "digest": _digest(content),
+            "digest": digest_of(content),
             "packed_bytes": len(packed),
             "bytes": packed,
         }
@@ -97,10 +97,6 @@ class SqlWarmStartRepository:
                 return
 
 
-def _digest(content: bytes) -> str:
-    return "sha-256:" + hashlib.sha256(content).hexdigest()
-
-
 def _unpacked(packed: bytes, digest: str) -> bytes | None:
     """Return the content, or None where it is not what was kept."""
     try:
@@ -110,4 +106,4 @@ def _unpacked(packed: bytes, digest: str) -> bytes | None:
     except (zstandard.ZstdError, TypeError):
         # SQLite would also hand out a text or a number where somebody wrote one.
         return None
-    return content if _digest(content) == digest else None
+    return content if digest_of(content) == digest else None

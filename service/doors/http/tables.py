@@ -18,6 +18,7 @@ from anyio.to_thread import run_sync
 
 import service
 from service.doors.plan_tables import table_csv
+from service.planning.outcome import PLAN_FILE
 from service.runs.faults import ChildCrashed, ChildTimeout
 
 # Up to here it takes a thread a few milliseconds, less than a process takes to start.
@@ -50,7 +51,7 @@ async def write_template(folder: Path) -> Path:
 
 async def _written(plan: bytes, form: str, table: str, folder: Path) -> Path:
     """Have a process write a file."""
-    source, target = folder / "plan.json", folder / f"{table}.{form}"
+    source, target = folder / PLAN_FILE, folder / f"{table}.{form}"
     await run_sync(source.write_bytes, plan)
     command = [sys.executable, "-m", __name__, str(source), form, table, str(target)]
     try:
