@@ -25,3 +25,7 @@ _.size_bytes  # tests/unit/network look at it
 _.extract_id  # pydantic checks it; it stays with the body as received
 _.extracted_at  # likewise
 usable_lanes_of_one  # planning/memory.py takes it out of a document by its name
+Format  # imported for a quoted annotation
+Worksheet  # likewise
+_.writeable  # NumPy reads it: nobody may change what a digest is known of
+stored_zip  # tests look at the bytes of a zip without a file

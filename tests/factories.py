@@ -12,14 +12,14 @@ from pathlib import Path
 from typing import Any
 
 import orjson
-from service.network.intake import IntakeReport, Limits, intake
-from service.planning.outcome import Outcome
-from service.planning.task import plan
-from service.proof.check import Violation, check
 
 from service.network.canonical import read_network
 from service.network.columns import Network
+from service.network.intake import IntakeReport, Limits, intake
 from service.network.options import Options, read_options
+from service.planning.outcome import Outcome
+from service.planning.task import plan
+from service.proof.check import Violation, check
 
 Amount = int | str
 Arc = tuple[str, str, Amount, Amount | None]

@@ -57,7 +57,7 @@ class Program:
             # linprog refuses a program without variables; zero is then the only point.
             fits = all(value == 0 for _, value in self.equal)
             return 0.0 if fits and all(most >= 0 for _, most in self.at_most) else None
-        result: OptimizeResult = linprog(
+        result: OptimizeResult = linprog(  # type: ignore[call-overload]  # stubs lack sparse
             cost,
             A_eq=self._matrix(self.equal),
             b_eq=[value for _, value in self.equal] or None,

@@ -17,7 +17,6 @@ BLOCK_CELLS = 2**16
 
 # Where all costs and prices are below this, sums of three stay within 32 bits.
 NARROW = 2**28
-WIDE = 2**59
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
