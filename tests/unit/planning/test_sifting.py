@@ -1,6 +1,7 @@
 """Sifting ends with the plan and the certificate of the full solve, byte for byte."""
 
 from collections.abc import Callable
+from fractions import Fraction
 from random import Random
 from typing import Any, NoReturn
 
@@ -9,12 +10,17 @@ import pytest
 
 from service.network.options import read_options
 from service.planning import sifting
+from service.planning.arcs import MoneyArray
 from service.planning.compile import compile_network
+from service.planning.contraction import Contraction
+from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError
-from service.planning.routes import FullRoute, SiftedRoute, chosen_route
+from service.planning.routes import FullRoute, Route, SiftedRoute, chosen_route
+from service.planning.sieve import fits
 from service.planning.solve import solve_item
 from tests.factories import network_document
 from tests.random_networks import draw_network
+from tests.random_witness import plain_text
 from tests.unit.planning.routing import Seen, agree, compiled, wide_network
 
 
@@ -78,6 +84,30 @@ def test_random_networks_with_every_feature_end_as_the_full_solve_does() -> None
     assert planned > 60
     assert sum(seen.sifted) > 0.7 * len(seen.sifted)
     assert max(number for number, _, _ in seen.rounds) > 2
+
+
+def test_money_beyond_32_bits_is_sifted_as_exactly() -> None:
+    """Rates of thousands with six decimals: costs and prices need 64 bits, weights nearly all."""
+    seen = Seen()
+    sifting = seen.front()
+
+    def front(own: ItemNetwork, contraction: Contraction, weighted: MoneyArray) -> Route:
+        # What does not fit is never sifted; routes.py decides it so.
+        route = sifting if fits(weighted, contraction) else FullRoute
+        return route(own, contraction, weighted)
+
+    for seed in range(990, 1020):
+        network = draw_network(random(seed), sites=6, walks=12)
+        for lane in network.document["lanes"]:
+            dearer = Fraction(lane["unit_cost"]) * 1000 + Fraction(1, 10**6)
+            lane["unit_cost"] = plain_text(dearer, decimals=6)
+
+        try:
+            agree(network.document, front, **network.options)
+        except NoCirculationError:
+            continue
+
+    assert sum(seen.sifted) > 20
 
 
 def test_place_whose_only_lane_has_no_room_is_short_as_in_the_full_solve() -> None:
