@@ -52,7 +52,10 @@ class Program:
         self.at_most.append((dict(enumerate(self.cost)), most))
 
     def optimum(self, cost: Sequence[float]) -> float | None:
-        """Return the least value of ``cost``, or None where nothing fits all rows."""
+        """Return the least value of ``cost``, or None where nothing fits all rows.
+
+        It is minus infinity where goods may circle for nothing, the more the better.
+        """
         if not self.cost:
             # linprog refuses a program without variables; zero is then the only point.
             fits = all(value == 0 for _, value in self.equal)
@@ -68,6 +71,8 @@ class Program:
         )
         if result.status == 2:
             return None
+        if result.status == 3:
+            return -UNLIMITED
         assert result.status == 0, result.message
         return float(result.fun)
 
@@ -252,4 +257,5 @@ def _is_flat(written: WrittenProblem, random: Random) -> bool:
     negative_greatest = written.program.optimum([-weight for weight in weights])
     assert least is not None, "the best plan itself fits"
     assert negative_greatest is not None, "the best plan itself fits"
+    # Of an endless face the greatest is infinite, and so is the difference.
     return abs(-negative_greatest - least) < 0.5
