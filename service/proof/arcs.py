@@ -5,7 +5,7 @@ the root. What is short comes to where it is wanted straight from the root. Quan
 of the item. Every lane that the item can use has its arc, also one that no solver was shown.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Literal, NamedTuple
@@ -36,6 +36,9 @@ class Node(NamedTuple):
 
 ROOT = Node(-1, "root", None)
 
+# Six columns of so many arcs fit 4 MiB of cache (measured: twice as fast as whole columns).
+PART_ARCS = 2**16
+
 
 class Arc(NamedTuple):
     """An arc that is no lane. ``money`` is per step; ``rank`` is 1 for the first priority, or 0.
@@ -51,6 +54,15 @@ class Arc(NamedTuple):
     money: Fraction
     rank: int
     key: tuple[object, ...]
+
+
+class Part(NamedTuple):
+    """Some arcs as columns: the nodes they leave and enter, their least and most flow."""
+
+    tail: CodeArray
+    head: CodeArray
+    minimum: Whole
+    capacity: Whole
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -71,7 +83,7 @@ class ItemArcs:
     limits: LaneLimits
     arcs: tuple[Arc, ...]
     nodes: tuple[Node, ...]
-    place: Mapping[Node, int]
+    place: Mapping[tuple[int, str, str | None], int]
     priorities: tuple[int, ...]
     sides: Mapping[int, SiteSides]
     stock: Mapping[int, Stock]
@@ -93,11 +105,38 @@ class ItemArcs:
         """Return the most flow on each arc, lanes first; -1 is unlimited."""
         return joined([self.limits.capacity, whole([arc.capacity for arc in self.arcs])])
 
-    def ranks(self) -> Whole:
-        """Return on each arc 1 for shortage of the first priority, 2 of the second, else 0."""
-        return joined(
-            [np.zeros(len(self.rows), dtype=np.int64), whole([arc.rank for arc in self.arcs])]
+    def ends(self, positions: IntArray) -> tuple[CodeArray, CodeArray]:
+        """Return the nodes that the arcs at ``positions``, ascending, leave and enter."""
+        lanes = len(self.rows)
+        split = int(np.searchsorted(positions, lanes))
+        on_lanes, others = positions[:split], positions[split:] - lanes
+        tail, head = self._other_ends()
+        return (
+            np.append(self.lane_tail[on_lanes], tail[others]),
+            np.append(self.lane_head[on_lanes], head[others]),
         )
+
+    def parts(self) -> Iterator[tuple[int, "Part"]]:
+        """Yield all arcs in parts that fit a processor's cache, and where each part begins."""
+        lanes = len(self.rows)
+        for first in range(0, lanes, PART_ARCS):
+            here = slice(first, min(first + PART_ARCS, lanes))
+            yield (
+                first,
+                Part(
+                    self.lane_tail[here],
+                    self.lane_head[here],
+                    self.limits.minimum[here],
+                    self.limits.capacity[here],
+                ),
+            )
+        tail, head = self._other_ends()
+        minimum = whole([arc.minimum for arc in self.arcs])
+        yield lanes, Part(tail, head, minimum, whole([arc.capacity for arc in self.arcs]))
+
+    def _other_ends(self) -> tuple[CodeArray, CodeArray]:
+        """Return the nodes that the arcs which are no lanes leave and enter."""
+        return _codes([arc.tail for arc in self.arcs]), _codes([arc.head for arc in self.arcs])
 
 
 def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -> ItemArcs:
@@ -139,7 +178,7 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
         lane_head=head,
         limits=limits,
         arcs=tuple(build.arcs),
-        nodes=tuple(build.place),
+        nodes=tuple(map(Node._make, build.place)),
         place=build.place,
         priorities=priorities,
         sides=sides,
@@ -154,14 +193,19 @@ def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | N
     Weights of shortage are not in it.
     """
     lanes = network.lanes
-    codes = lanes.measure.codes[arcs.rows]
-    lane_costs: Whole = np.zeros(len(arcs.rows), dtype=np.int64)
-    for code, amount in measures_on(network, arcs.item, arcs.rows).items():
-        here = np.flatnonzero(codes == code)
+    measures = measures_on(network, arcs.item, arcs.rows)
+    values = lanes.unit_cost.values[arcs.rows]
+    codes = lanes.measure.codes[arcs.rows] if len(measures) > 1 else None
+    lane_costs: Whole = np.zeros(0 if codes is None else len(values), dtype=np.int64)
+    for code, amount in measures.items():
         ratio = amount * scale / 10**lanes.unit_cost.exponent
-        part, broken = whole_of(lanes.unit_cost.values[arcs.rows[here]], ratio)
+        here = slice(None) if codes is None else np.flatnonzero(codes == code)
+        part, broken = whole_of(values[here], ratio)
         if broken.any():
             return None
+        if codes is None:
+            lane_costs = part
+            continue
         if part.dtype == object:
             lane_costs = lane_costs.astype(object)
         lane_costs[here] = part
@@ -177,14 +221,15 @@ class _Build:
     def __init__(self, *, network: Network, item: int, step: Fraction) -> None:
         """Start with the root alone."""
         self.step = step
-        self.place: dict[Node, int] = {ROOT: 0}
+        # Plain tuples are made three times as fast as nodes, and equal them.
+        self.place: dict[tuple[int, str, str | None], int] = {ROOT: 0}
         self.arcs: list[Arc] = []
         self._network = network
         self._handling = [site.handling(network.items[item].id) * step for site in network.sites]
 
     def node(self, site: int, side: str, qualifier: str | None = None) -> int:
         """Return the position of a node, which is made if it is not there."""
-        return self.place.setdefault(Node(site, side, qualifier), len(self.place))
+        return self.place.setdefault((site, side, qualifier), len(self.place))
 
     def add(  # noqa: PLR0913 - an arc has that many numbers
         self,
@@ -280,16 +325,16 @@ class _Build:
         leaving = np.full(sites, -1, dtype=np.int32)
         entering = np.full(sites, -1, dtype=np.int32)
         for site, made in sides.items():
-            leaving[site] = self.place[Node(site, "sent" if made.has_sent else "out", None)]
+            leaving[site] = self.place[(site, "sent" if made.has_sent else "out", None)]
             if made.by_origin:
                 continue
-            received = Node(site, "received", None)
-            entering[site] = self.place.get(received, self.place[Node(site, "in", None)])
+            received = (site, "received", None)
+            entering[site] = self.place.get(received, self.place[(site, "in", None)])
         tail, head = leaving[lanes.origin[rows]], entering[lanes.destination[rows]]
         for position in np.flatnonzero(head < 0).tolist():
             row = int(rows[position])
             origin = self._id(int(lanes.origin[row]))
-            head[position] = self.place[Node(int(lanes.destination[row]), "received", origin)]
+            head[position] = self.place[(int(lanes.destination[row]), "received", origin)]
         return tail, head
 
     def _id(self, site: int | None) -> str | None:

@@ -190,7 +190,7 @@ def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
     check_site_limits(network, rulings, results, findings)
     check_site_use(network, results, plan["site_use"], findings)
     check_totals(network, results, plan, findings)
-    paths = check_order_lines(network, results, plan["order_lines"], findings)
+    paths = check_order_lines(network, results, lines, plan["order_lines"], findings)
     if paths is None:
         return
     check_shortages(network, results, plan, findings)

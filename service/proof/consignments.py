@@ -10,10 +10,14 @@ import numpy as np
 from service.network.columns import Item, Network
 from service.network.naming import lane_names
 from service.proof.flows import PlanLine
+from service.proof.numbers import numbers, together
 from service.proof.order_lines import Paths
-from service.proof.results import ItemResult
-from service.proof.shapes import amount
+from service.proof.results import ItemResult, lane_ends
 from service.proof.violations import Findings
+
+UNKNOWN = "unknown"
+_MONEY = ("transport_cost", "charges")
+_FIELDS = ("pallets", "weight_kg", "volume_m3")
 
 
 def check_consignments(  # noqa: PLR0913 - a consignment repeats something of everything
@@ -27,68 +31,92 @@ def check_consignments(  # noqa: PLR0913 - a consignment repeats something of ev
 ) -> None:
     """Note when consignments are not what plan lines put on each lane, in the lanes' order."""
     lanes = network.lanes
-    loads: defaultdict[int, list[tuple[Item, Fraction]]] = defaultdict(list)
+    loads: dict[int, list[tuple[int, int]]] = {}
     for result in results:
         for row, steps in result.on_lane.items():
-            loads[row].append((network.items[result.item], steps * result.step))
-    costs: defaultdict[int, Fraction] = defaultdict(Fraction)
-    for line in lines:
-        document = line.document
-        costs[line.row] += amount(document["transport_cost"]) + amount(document["charges"])
+            loads.setdefault(row, []).append((result.item, steps))
+    money, below = together(
+        *(numbers([line.document[field] for line in lines]) for field in _MONEY)
+    )
+    costs: defaultdict[int, int] = defaultdict(int)
+    for line, *parts in zip(lines, *money, strict=True):
+        costs[line.row] += sum(parts)
     rows = sorted(loads)
-    names = lane_names(network, np.array(rows, dtype=np.int64))
-    expected = [
-        (
-            name,
-            lanes.carrier.text(row),
-            network.sites[int(lanes.origin[row])].id,
-            network.sites[int(lanes.destination[row])].id,
-            *_measures(loads[row]),
-            costs[row],
-            sorted(paths.references.get(row, ()), key=str.encode),
-        )
-        for row, name in zip(rows, names, strict=True)
-    ]
-    stated = [
-        (
-            *(entry[field] for field in ("lane", "carrier", "origin", "destination")),
-            *(_known(entry[field]) for field in ("pallets", "weight_kg", "volume_m3")),
-            amount(entry["cost"]),
-            entry["order_references"],
-        )
-        for entry in documents
-    ]
-    if len(stated) != len(expected):
+    if len(documents) != len(rows):
         findings.add("consignment_wrong", "not the lanes in use", place="/consignments")
-    for position, (said, right) in enumerate(zip(stated, expected, strict=False)):
-        if said != right:
+    at = np.array(rows, dtype=np.int64)
+    ends = lane_ends(network, at)
+    measures = _Measures(network, documents)
+    stated = numbers([entry["cost"] for entry in documents])
+    columns = zip(
+        documents,
+        stated.whole,
+        rows,
+        lane_names(network, at),
+        lanes.carrier.codes[at].tolist(),
+        strict=False,
+    )
+    for position, (entry, cost, row, name, carrier) in enumerate(columns):
+        origin, destination = ends[row]
+        references = paths.references.get(row, set())
+        if (
+            entry["lane"] != name
+            or entry["carrier"] != (None if carrier < 0 else lanes.carrier.values[carrier])
+            or entry["origin"] != network.sites[origin].id
+            or entry["destination"] != network.sites[destination].id
+            or not measures.are_right(position, loads[row])
+            or cost * below != costs[row] * stated.below
+            # Characters sort as their UTF-8 bytes do.
+            or entry["order_references"] != sorted(references)
+        ):
             place = f"/consignments/{position}"
             findings.add("consignment_wrong", "not what is on its lane", place=place)
 
 
-def _known(text: str) -> Fraction | None:
-    """Return a measure, None where it is not known."""
-    return None if text == "unknown" else amount(text)
+class _Measures:
+    """Compares pallets, weight and volume as stated with what a load has."""
+
+    def __init__(self, network: Network, documents: Sequence[Mapping[str, Any]]) -> None:
+        """Read what is stated, and what a step of each item has."""
+        self._stated = [_known([entry[field] for entry in documents]) for field in _FIELDS]
+        self._of_step = [
+            [
+                None if per is None else per * item.step
+                for per in (_pallets(item), item.weight_kg, item.volume_m3)
+            ]
+            for item in network.items
+        ]
+
+    def are_right(self, position: int, load: Sequence[tuple[int, int]]) -> bool:
+        """Return whether one row states what ``load``, steps by item, comes to."""
+        for measure, (stated, below) in enumerate(self._stated):
+            said = stated[position]
+            total = self._total(measure, load)
+            if said is None or total is None:
+                if said is not None or total is not None:
+                    return False
+            elif said * total.denominator != total.numerator * below:
+                return False
+        return True
+
+    def _total(self, measure: int, load: Sequence[tuple[int, int]]) -> Fraction | None:
+        """Return what a load comes to, None where an item of it does not say."""
+        total = Fraction(0)
+        for item, steps in load:
+            per = self._of_step[item][measure]
+            if per is None:
+                return None
+            total += steps * per
+        return total
 
 
-def _measures(load: Sequence[tuple[Item, Fraction]]) -> tuple[Fraction | None, ...]:
-    """Return pallets, weight and volume of a load, None where an item of it does not say."""
-    pallets = [
-        next((1 / pack.contains for pack in item.packs if pack.unit == "pallet"), None)
-        for item, _ in load
-    ]
-    weights = [item.weight_kg for item, _ in load]
-    volumes = [item.volume_m3 for item, _ in load]
-    return tuple(_sum(load, per_unit) for per_unit in (pallets, weights, volumes))
+def _known(texts: Sequence[str]) -> tuple[list[int | None], int]:
+    """Return measures over a denominator, None where one is not known."""
+    known = numbers([text for text in texts if text != UNKNOWN])
+    each = iter(known.whole)
+    return [None if text == UNKNOWN else next(each) for text in texts], known.below
 
 
-def _sum(
-    load: Sequence[tuple[Item, Fraction]], per_unit: Sequence[Fraction | None]
-) -> Fraction | None:
-    """Return the sum of quantity times ``per_unit``, None where one of them is."""
-    total = Fraction(0)
-    for (_, quantity), per in zip(load, per_unit, strict=True):
-        if per is None:
-            return None
-        total += quantity * per
-    return total
+def _pallets(item: Item) -> Fraction | None:
+    """Return how much of a pallet one unit is, None where the item has no pallet."""
+    return next((1 / pack.contains for pack in item.packs if pack.unit == "pallet"), None)

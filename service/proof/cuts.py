@@ -11,7 +11,7 @@ import numpy as np
 
 from service.network.columns import Network
 from service.network.options import Options
-from service.proof.arcs import ItemArcs, Node, item_arcs
+from service.proof.arcs import ItemArcs, item_arcs
 from service.proof.exact import total
 from service.proof.flows import Names
 from service.proof.rulings import Rulings, UnusableNetworkError
@@ -53,7 +53,7 @@ def _check_cut(
     inside[0] = cut["root"]
     for entry in cut["nodes"]:
         site = names.sites.get(entry["site"], -1)
-        node = arcs.place.get(Node(site, entry["side"], entry["qualifier"]))
+        node = arcs.place.get((site, entry["side"], entry["qualifier"]))
         if node is None:
             findings.add("name_unknown", "a cut names a node that is not there", place=place)
             return

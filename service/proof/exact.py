@@ -16,7 +16,7 @@ Whole = NDArray[Any]
 Positions = NDArray[np.integer[Any]]
 
 # Sums of two numbers below it stay within int64.
-_ROOM = 2**62
+ROOM = 2**62
 
 
 def magnitude(values: Whole) -> int:
@@ -28,7 +28,7 @@ def magnitude(values: Whole) -> int:
 
 def whole(values: list[int]) -> Whole:
     """Return ``values`` as int64 where all fit, else as objects."""
-    if all(-_ROOM < value < _ROOM for value in values):
+    if all(-ROOM < value < ROOM for value in values):
         return np.array(values, dtype=np.int64)
     array = np.empty(len(values), dtype=object)
     array[:] = values
@@ -38,8 +38,8 @@ def whole(values: list[int]) -> Whole:
 def times(values: Whole, factor: int) -> Whole:
     """Return ``values * factor``."""
     # Zeros times a factor beyond int64 are small, but the factor is not.
-    small = abs(factor) < _ROOM and values.dtype != object
-    if small and magnitude(values) * abs(factor) < _ROOM:
+    small = abs(factor) < ROOM and values.dtype != object
+    if small and magnitude(values) * abs(factor) < ROOM:
         return values * np.int64(factor)
     return values.astype(object) * factor
 
@@ -47,7 +47,9 @@ def times(values: Whole, factor: int) -> Whole:
 def floor_of(values: Whole, ratio: Fraction) -> Whole:
     """Return floor(values * ratio)."""
     numerator = times(values, ratio.numerator)
-    if ratio.denominator >= _ROOM:
+    if ratio.denominator == 1:
+        return numerator
+    if ratio.denominator >= ROOM:
         return numerator.astype(object) // ratio.denominator
     return numerator // ratio.denominator
 
@@ -55,7 +57,9 @@ def floor_of(values: Whole, ratio: Fraction) -> Whole:
 def whole_of(values: Whole, ratio: Fraction) -> tuple[Whole, BoolArray]:
     """Return values * ratio, rounded down, and where it was no whole number."""
     numerator = times(values, ratio.numerator)
-    if ratio.denominator >= _ROOM:
+    if ratio.denominator == 1:
+        return numerator, np.zeros(values.shape, dtype=np.bool_)
+    if ratio.denominator >= ROOM:
         numerator = numerator.astype(object)
     broken = (numerator % ratio.denominator != 0).astype(np.bool_)
     return numerator // ratio.denominator, broken
@@ -63,7 +67,7 @@ def whole_of(values: Whole, ratio: Fraction) -> tuple[Whole, BoolArray]:
 
 def plus(first: Whole, second: Whole) -> Whole:
     """Return ``first + second``."""
-    if magnitude(first) + magnitude(second) >= 2 * _ROOM:
+    if magnitude(first) + magnitude(second) >= 2 * ROOM:
         first, second = first.astype(object), second.astype(object)
     result: Whole = first + second
     return result
@@ -71,7 +75,7 @@ def plus(first: Whole, second: Whole) -> Whole:
 
 def sums_at(places: int, position: Positions, values: Whole) -> Whole:
     """Return for each of ``places`` the sum of the values at that position."""
-    if values.dtype != object and magnitude(values) * max(1, len(values)) < _ROOM:
+    if values.dtype != object and magnitude(values) * max(1, len(values)) < ROOM:
         sums = np.zeros(places, dtype=np.int64)
     else:
         sums = np.zeros(places, dtype=object)
@@ -82,7 +86,7 @@ def sums_at(places: int, position: Positions, values: Whole) -> Whole:
 
 def total(values: Whole) -> int:
     """Return the sum of ``values``."""
-    if values.dtype != object and magnitude(values) * max(1, len(values)) < _ROOM:
+    if values.dtype != object and magnitude(values) * max(1, len(values)) < ROOM:
         return int(values.sum())
     return sum(values.tolist())
 

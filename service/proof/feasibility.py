@@ -15,8 +15,9 @@ def check_feasibility(network: Network, arcs: ItemArcs, flow: Whole, findings: F
         detail = f"{int(flow[position])} steps do not fit its limits"
         findings.add("limit_broken", detail, place=describe(arcs, position, network))
     moved = np.flatnonzero(flow != 0)
-    entered = sums_at(len(arcs.nodes), arcs.heads()[moved], flow[moved])
-    left = sums_at(len(arcs.nodes), arcs.tails()[moved], flow[moved])
+    tail, head = arcs.ends(moved)
+    entered = sums_at(len(arcs.nodes), head, flow[moved])
+    left = sums_at(len(arcs.nodes), tail, flow[moved])
     for place in np.flatnonzero(entered != left)[: EXAMPLES_MAX + 1].tolist():
         node = arcs.nodes[place]
         site = "" if node.site < 0 else network.sites[node.site].id
@@ -29,6 +30,10 @@ def check_feasibility(network: Network, arcs: ItemArcs, flow: Whole, findings: F
 
 def broken_limits(arcs: ItemArcs, flow: Whole) -> IntArray:
     """Return the positions of arcs whose flow is below the minimum or above the capacity."""
-    capacity = arcs.capacities()
-    broken = (flow < arcs.minimums()) | ((capacity >= 0) & (flow > capacity))
-    return np.flatnonzero(broken)
+    found = []
+    for first, part in arcs.parts():
+        carried = flow[first : first + len(part.tail)]
+        broken = carried < part.minimum
+        broken |= (part.capacity >= 0) & (carried > part.capacity)
+        found.append(first + np.flatnonzero(broken))
+    return np.concatenate(found)

@@ -1,8 +1,7 @@
 """The flow on every arc, as plan and certificate say it."""
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from fractions import Fraction
 from typing import Any
 
 import numpy as np
@@ -11,10 +10,8 @@ from service.network.columns import Network
 from service.network.naming import lane_rows
 from service.proof.arcs import Arc, ItemArcs
 from service.proof.exact import Whole, joined, sums_at, whole
-from service.proof.shapes import amount
+from service.proof.numbers import numbers
 from service.proof.violations import Findings
-
-Key = tuple[object, ...]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -75,12 +72,6 @@ class Names:
         return lines if sound else None
 
 
-def steps_of(text: str, step: Fraction) -> int | None:
-    """Return a quantity in steps, None unless it is a whole number of them above 0."""
-    steps = amount(text) / step
-    return steps.numerator if steps.denominator == 1 and steps > 0 else None
-
-
 def item_flows(
     arcs: ItemArcs,
     lines: Sequence[PlanLine],
@@ -102,11 +93,10 @@ def item_flows(
     moved = np.flatnonzero(lane_flow != 0)
     inflow: list[int] = sums_at(nodes, arcs.lane_head[moved], lane_flow[moved]).tolist()
     outflow: list[int] = sums_at(nodes, arcs.lane_tail[moved], lane_flow[moved]).tolist()
-    flow = [
-        arc.minimum if arc.kind == "want" else stated.get((arc.kind, *arc.key), 0)
-        for arc in arcs.arcs
-    ]
-    _follow(arcs, flow, inflow=inflow, outflow=outflow, stated=stated)
+    flow = [arc.minimum if arc.kind == "want" else 0 for arc in arcs.arcs]
+    for position, steps in stated.items():
+        flow[position] = steps
+    _follow(arcs, flow, inflow=inflow, outflow=outflow)
     return joined([lane_flow, whole(flow)])
 
 
@@ -116,20 +106,18 @@ def _follow(
     *,
     inflow: list[int],
     outflow: list[int],
-    stated: Mapping[Key, int],
 ) -> None:
     """Put into ``flow`` what follows from lanes and stated flows at supply, entry and exit.
 
     ``inflow`` and ``outflow`` are what lanes bring to each node and take from it.
     """
     handled = []
+    shelves = _shelves(arcs, flow)
     for position, arc in enumerate(arcs.arcs):
         if arc.kind == "draw":
             inflow[arc.head] += flow[position]
         elif arc.kind == "pass":
             outflow[arc.head] -= flow[position]
-        elif arc.kind == "supply":
-            flow[position] = sum(stated.get((kind, *arc.key), 0) for kind in ("draw", "keep"))
         elif arc.kind == "enter":
             flow[position] = inflow[arc.tail]
             inflow[arc.head] += inflow[arc.tail]
@@ -138,65 +126,81 @@ def _follow(
     for position, arc in enumerate(arcs.arcs):
         if arc.kind == "leave":
             flow[position] = outflow[arc.head]
+        elif arc.kind == "supply":
+            flow[position] = shelves.get(arc.head, 0)
     for position in handled:
         flow[position] = inflow[arcs.arcs[position].tail]
+
+
+def _shelves(arcs: ItemArcs, flow: Sequence[int]) -> dict[int, int]:
+    """Return what leaves each shelf: what is drawn from it and what is kept."""
+    leaves: dict[int, int] = {}
+    for steps, arc in zip(flow, arcs.arcs, strict=True):
+        if steps and arc.kind in {"draw", "keep"}:
+            leaves[arc.tail] = leaves.get(arc.tail, 0) + steps
+    return leaves
 
 
 def _lane_flow(arcs: ItemArcs, lines: Sequence[PlanLine], findings: Findings) -> Whole | None:
     """Return the flow on each usable lane; None where a plan line does not say it."""
     rows = np.array([line.row for line in lines], dtype=np.int64)
     places = np.searchsorted(arcs.rows, rows)
-    steps = []
-    sound = True
-    for line, place in zip(lines, places.tolist(), strict=True):
-        if place == len(arcs.rows) or arcs.rows[place] != line.row:
+    usable = np.zeros(len(rows), dtype=np.bool_)
+    inside = places < len(arcs.rows)
+    usable[inside] = arcs.rows[places[inside]] == rows[inside]
+    steps = numbers([line.document["quantity"] for line in lines]).in_steps(arcs.step)
+    for line, known, quantity in zip(lines, usable.tolist(), steps, strict=True):
+        if not known:
             findings.add("name_unknown", "the item cannot use this lane", place=line.place)
-            sound = False
-        quantity = steps_of(line.document["quantity"], arcs.step)
         if quantity is None:
             findings.add("quantity_wrong", "no whole number of steps above 0", place=line.place)
-            sound = False
-        steps.append(quantity or 0)
-    if not sound:
+    if None in steps or not usable.all():
         return None
-    flow = whole(steps)
+    flow = whole([quantity or 0 for quantity in steps])
     result: Whole = np.zeros(len(arcs.rows), dtype=flow.dtype)
     result[places] = flow
     return result
 
 
+# Where a certificate lists the flow of each kind of arc, and what tells one from another there.
+_TABLES: tuple[tuple[str, str, tuple[str, ...]], ...] = (
+    ("draws", "draw", ("tier",)),
+    ("kept", "keep", ("tier",)),
+    ("serves", "serve", ("group", "from", "origin")),
+    ("passes", "pass", ("origin",)),
+    ("shortages", "short", ("group",)),
+)
+
+
 def _stated(
     arcs: ItemArcs, proof: Mapping[str, Any], names: Names, findings: Findings
-) -> dict[Key, int] | None:
-    """Return the flows that the certificate lists, by kind and key of their arc; None if wrong."""
-    known = {(arc.kind, *arc.key) for arc in arcs.arcs if arc.key}
-    lists: tuple[tuple[str, Callable[[Mapping[str, Any], int], Key]], ...] = (
-        ("draws", lambda entry, site: ("draw", site, entry["tier"])),
-        ("kept", lambda entry, site: ("keep", site, entry["tier"])),
-        (
-            "serves",
-            lambda entry, site: ("serve", site, entry["group"], entry["from"], entry["origin"]),
-        ),
-        ("passes", lambda entry, site: ("pass", site, entry["origin"])),
-        ("shortages", lambda entry, site: ("short", site, entry["group"])),
-    )
-    flows: dict[Key, int] = {}
+) -> dict[int, int] | None:
+    """Return the flows that the certificate lists, by position of their arc; None if wrong."""
+    kinds = {kind for _, kind, _ in _TABLES}
+    known = {
+        (arc.kind, *arc.key): position
+        for position, arc in enumerate(arcs.arcs)
+        if arc.kind in kinds
+    }
+    flows: dict[int, int] = {}
     sound = True
-    for table, key_of in lists:
-        for position, entry in enumerate(proof[table]):
+    for table, kind, fields in _TABLES:
+        entries = proof[table]
+        steps = numbers([entry["quantity"] for entry in entries]).in_steps(arcs.step)
+        for position, (entry, quantity) in enumerate(zip(entries, steps, strict=True)):
+            site = names.sites.get(entry["site"], -1)
+            arc = known.get((kind, site, *(entry[field] for field in fields)))
+            if arc is not None and quantity is not None and arc not in flows:
+                flows[arc] = quantity
+                continue
+            sound = False
             place = f"/items/{proof['item']}/{table}/{position}"
-            key = key_of(entry, names.sites.get(entry["site"], -1))
-            quantity = steps_of(entry["quantity"], arcs.step)
-            if key not in known:
+            if arc is None:
                 findings.add("name_unknown", "there is no such arc", place=place)
-                sound = False
-            elif key in flows:
+            elif arc in flows:
                 findings.add("listed_twice", "a flow is stated twice", place=place)
-                sound = False
             if quantity is None:
                 findings.add("quantity_wrong", "no whole number of steps above 0", place=place)
-                sound = False
-            flows[key] = quantity or 0
     return flows if sound else None
 
 

@@ -3,6 +3,7 @@
 import json
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import NamedTuple
 
 import numpy as np
 
@@ -15,25 +16,25 @@ from service.proof.rulings import UnusableNetworkError
 PRIORITY_DEFAULT = 5
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class OrderLine:
+class OrderLine(NamedTuple):
     """One demand row in steps: ``wanted`` after rounding, its importance and its origins.
 
     ``priority`` is 0 where the line competes in money, ``shortage_cost`` per item unit; ``origins``
     are positions of sites, None where all may serve it. ``group`` is -1 where nothing is wanted.
+    ``exact`` says that rounding changed nothing.
     """
 
     row: int
     site: int
     wanted: int
+    exact: bool
     priority: int
     shortage_cost: Fraction | None
     origins: frozenset[int] | None
     group: int
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Group:
+class Group(NamedTuple):
     """Order lines of one site with one importance and the same origins, wanted together."""
 
     label: str
@@ -59,24 +60,45 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
     """
     demand = network.demand
     origins = _origins(network)
-    units: dict[int, Fraction] = {}
+    rows = np.flatnonzero(demand.item == item)
+    units = {
+        code: _units(network, item, demand.unit.values[code])
+        for code in set(demand.unit.codes[rows].tolist())
+    }
+    steps_in = {
+        code: unit / (10**demand.quantity.exponent * network.items[item].step)
+        for code, unit in units.items()
+    }
+    # Whether a row says for itself what a step short of it costs.
+    in_money = (demand.shortage_cost.present | demand.worth_at_most.present)[rows].tolist()
     places: dict[tuple[object, ...], int] = {}
     lines: list[OrderLine] = []
     firsts: list[OrderLine] = []
     sums: list[int] = []
-    for row in np.flatnonzero(demand.item == item).tolist():
-        code = int(demand.unit.codes[row])
-        if code not in units:
-            units[code] = _units(network, item, demand.unit.values[code])
-        wanted = _steps(network, options, item, row, units[code])
-        priority, cost = _importance(network, options, row, units[code])
-        allowed = int(demand.origins.codes[row])
-        key = (int(demand.site[row]), priority, cost, allowed)
+    for row, site, code, quantity, named, allowed, paid in zip(
+        rows.tolist(),
+        demand.site[rows].tolist(),
+        demand.unit.codes[rows].tolist(),
+        demand.quantity.values[rows].tolist(),
+        demand.priority[rows].tolist(),
+        demand.origins.codes[rows].tolist(),
+        in_money,
+        strict=True,
+    ):
+        ratio = steps_in[code]
+        wanted, over = divmod(quantity * ratio.numerator, ratio.denominator)
+        if over:
+            wanted = _rounded(network, options, row, down=wanted)
+        priority, cost = (
+            _importance(network, options, row, units[code]) if paid or not named else (named, None)
+        )
+        key = (site, priority, cost, allowed)
         group = places.setdefault(key, len(places)) if wanted else -1
         line = OrderLine(
             row=row,
-            site=int(demand.site[row]),
+            site=site,
             wanted=wanted,
+            exact=not over,
             priority=priority,
             shortage_cost=cost,
             origins=origins[allowed] if allowed >= 0 else None,
@@ -122,16 +144,12 @@ def _units(network: Network, item: int, unit: str) -> Fraction:
     return units
 
 
-def _steps(network: Network, options: Options, item: int, row: int, units: Fraction) -> int:
-    """Return what a row wants in whole steps, rounded as the options say."""
-    quantity = network.demand.quantity.fraction(row) or Fraction(0)
-    exact = quantity * units / network.items[item].step
-    if exact.denominator == 1:
-        return exact.numerator
+def _rounded(network: Network, options: Options, row: int, *, down: int) -> int:
+    """Return what a row off the step wants in whole steps, rounded as the options say."""
     if options.demand_rounding == "up":
-        return -(-exact.numerator // exact.denominator)
+        return down + 1
     if options.demand_rounding == "down":
-        return exact.numerator // exact.denominator
+        return down
     reference = network.demand.reference[row].decode()
     raise UnusableNetworkError(f"order line {reference!r} is off the step")
 

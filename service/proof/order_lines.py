@@ -1,5 +1,6 @@
 """Order lines: what was ordered, what each gets, from which stock, and on which way."""
 
+import itertools
 import json
 from collections import defaultdict
 from collections.abc import Mapping, Sequence
@@ -7,16 +8,21 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
+import numpy as np
+
 from service.network.columns import Network
-from service.network.naming import lane_rows
 from service.network.units import item_units
-from service.proof.exact import Positions
-from service.proof.flows import steps_of
+from service.proof.flows import PlanLine
 from service.proof.groups import OrderLine
-from service.proof.results import ItemResult
+from service.proof.numbers import numbers, together
+from service.proof.results import ItemResult, lane_ends
 from service.proof.shapes import amount
 from service.proof.usable import cross_docks
 from service.proof.violations import Findings
+
+_QUANTITIES = ("quantity", "served", "short")
+# The fields of an order line that says nothing but where, what, how much and how urgently.
+_PLAIN_FIELDS = 9
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -37,44 +43,120 @@ class Paths:
 def check_order_lines(
     network: Network,
     results: Sequence[ItemResult],
+    lines: Sequence[PlanLine],
     documents: Sequence[Mapping[str, Any]],
     findings: Findings,
 ) -> Paths | None:
-    """Note what is wrong with order lines; return their paths, None if they cannot be followed."""
+    """Note what is wrong with order lines; return their paths, None if they cannot be followed.
+
+    ``lines`` are the plan lines: a leg goes over one of them, or over a lane that carries nothing.
+    """
     references = [reference.decode() for reference in network.demand.reference.tolist()]
     if [line["reference"] for line in documents] != references:
         findings.add("order_line_wrong", "not the order lines of the network", place="/order_lines")
         return None
-    sites = {site.id: place for place, site in enumerate(network.sites)}
-    legs = _Legs(network, documents)
+    amounts = _Amounts(documents)
+    legs = _Legs(network, lines)
     sums = _Sums(network, results)
     sound = True
     for result in results:
+        ordered = _Ordered(network, result, amounts)
+        steps_of = amounts.in_steps(result.step)
         for line in result.wanted.lines:
             document = documents[line.row]
             place = f"/order_lines/{line.row}"
-            if not _is_ordered(network, result, line, document):
+            if not ordered.is_repeated(line, document):
                 findings.add("order_line_wrong", "not what was ordered", place=place)
-            if not _adds_up(document):
+            if not amounts.add_up(line.row):
                 findings.add("order_line_wrong", "it does not add up", place=place)
             for position, source in enumerate(document["sources"]):
-                where = f"{place}/sources/{position}"
-                steps = steps_of(source["quantity"], result.step)
-                rows = legs.route(result, line, source, sites=sites)
+                steps = steps_of[amounts.first[line.row] + position]
+                origin, rows = legs.route(result, line, source)
                 if steps is None:
+                    where = f"{place}/sources/{position}"
                     findings.add("order_line_wrong", "no whole steps above 0", place=where)
                     sound = False
                 elif rows is None:
+                    where = f"{place}/sources/{position}"
                     findings.add("route_wrong", "no way from its origin to its site", place=where)
                     sound = False
                 else:
-                    sums.add(line, source, rows, steps=steps, item=result.item, sites=sites)
-            served = amount(document["served"]) / result.step
-            sums.served[(result.item, line.group)] += served
+                    sums.add(line, source, rows, steps=steps, item=result.item, origin=origin)
+            sums.served[(result.item, line.group)] += amounts.served[line.row]
     if not sound:
         return None
-    sums.check(findings)
+    sums.check(findings, below=amounts.below)
     return sums.paths()
+
+
+class _Amounts:
+    """The quantities of all order lines and their sources, over one denominator."""
+
+    def __init__(self, documents: Sequence[Mapping[str, Any]]) -> None:
+        """Read them."""
+        self._sources = numbers(
+            [source["quantity"] for line in documents for source in line["sources"]]
+        )
+        (self.quantity, self.served, self._short, self._from), self.below = together(
+            *(numbers([line[field] for line in documents]) for field in _QUANTITIES),
+            self._sources,
+        )
+        counts = [len(line["sources"]) for line in documents]
+        self.first = [0, *itertools.accumulate(counts)]
+        self._documents = documents
+
+    def in_steps(self, step: Fraction) -> list[int | None]:
+        """Return what each source brings in steps, None where it is no whole number above 0."""
+        return self._sources.in_steps(step)
+
+    def add_up(self, row: int) -> bool:
+        """Return whether sources make up what is served, and that and what is short all."""
+        served, short = self.served[row], self._short[row]
+        first, last = self.first[row], self.first[row + 1]
+        if last - first > 1:
+            sources = self._documents[row]["sources"]
+            ways = {
+                (source["origin"], source["lot"], tuple(leg["lane"] for leg in source["legs"]))
+                for source in sources
+            }
+            if len(ways) != len(sources):
+                return False
+        return (
+            served >= 0
+            and short >= 0
+            and served + short == self.quantity[row]
+            and sum(self._from[first:last]) == served
+        )
+
+
+class _Ordered:
+    """Compares order lines of one item with what the network says about them."""
+
+    def __init__(self, network: Network, result: ItemResult, amounts: _Amounts) -> None:
+        """Look up what is the same for all of them."""
+        self._amounts = amounts
+        self._step, self._below_step = result.step.numerator, result.step.denominator
+        self._network, self._result = network, result
+        self._item = network.items[result.item].id
+        self._sites = [site.id for site in network.sites]
+        demand = network.demand
+        # Most lines say nothing but where, what, how much and how urgently.
+        self._plain = not (demand.tags.values or demand.extra.values)
+        codes = demand.order.codes.tolist()
+        self._order = [None if code < 0 else demand.order.values[code] for code in codes]
+
+    def is_repeated(self, line: OrderLine, document: Mapping[str, Any]) -> bool:
+        """Return whether an order line repeats what the network says about it."""
+        if self._plain and line.exact and line.priority and len(document) == _PLAIN_FIELDS:
+            return (
+                document["order"] == self._order[line.row]
+                and document["site"] == self._sites[line.site]
+                and document["item"] == self._item
+                and document["priority"] == line.priority
+                and self._amounts.quantity[line.row] * self._below_step
+                == line.wanted * self._step * self._amounts.below
+            )
+        return _is_ordered(self._network, self._result, line, document)
 
 
 def _is_ordered(
@@ -101,74 +183,49 @@ def _is_ordered(
         text = column.text(row)
         if text is not None:
             expected[field] = json.loads(text)
-    numbers = ("quantity", "shortage_cost", "ordered")
+    exact = ("quantity", "shortage_cost", "ordered")
     stated = {
-        key: amount(value) if key in numbers else value
+        key: amount(value) if key in exact else value
         for key, value in document.items()
         if key not in ("served", "short", "sources")
     }
     return stated == expected
 
 
-def _adds_up(document: Mapping[str, Any]) -> bool:
-    """Return whether sources make up what is served, and that with what is short all is said."""
-    served, short = amount(document["served"]), amount(document["short"])
-    sources = document["sources"]
-    ways = {
-        (source["origin"], source["lot"], tuple(leg["lane"] for leg in source["legs"]))
-        for source in sources
-    }
-    return (
-        served >= 0
-        and short >= 0
-        and served + short == amount(document["quantity"])
-        and sum((amount(source["quantity"]) for source in sources), Fraction(0)) == served
-        and len(ways) == len(sources)
-    )
-
-
 class _Legs:
     """Follows sources over lanes."""
 
-    def __init__(self, network: Network, documents: Sequence[Mapping[str, Any]]) -> None:
-        """Find every lane that a leg names, once."""
-        names = {
-            leg["lane"]
-            for line in documents
-            for source in line["sources"]
-            for leg in source["legs"]
-        }
-        self._network = network
-        self._rows = dict(zip(names, lane_rows(network, names), strict=True))
-        self._passing = cross_docks(network)
+    def __init__(self, network: Network, lines: Sequence[PlanLine]) -> None:
+        """Look up the lanes of all plan lines."""
+        self._rows = {line.document["lane"]: line.row for line in lines if line.row >= 0}
+        self._ends = lane_ends(network, np.array(sorted(set(self._rows.values())), dtype=np.int64))
+        self._passing = cross_docks(network).tolist()
+        self._items = [item.id for item in network.items]
+        self._sites = {site.id: place for place, site in enumerate(network.sites)}
 
     def route(
-        self,
-        result: ItemResult,
-        line: OrderLine,
-        source: Mapping[str, Any],
-        *,
-        sites: Mapping[str, int],
-    ) -> list[int] | None:
-        """Return the lanes from a source's origin to the site of its line, None if there is no way.
+        self, result: ItemResult, line: OrderLine, source: Mapping[str, Any]
+    ) -> tuple[int, list[int] | None]:
+        """Return a source's origin and the lanes from there to the site of its line.
 
-        Only lanes that carry something of the item count, and only cross-docks pass goods on.
+        None if there is no way. Only lanes that carry something of the item count, and only
+        cross-docks pass goods on.
         """
-        origin = sites.get(source["origin"], -1)
-        if origin < 0 or source["item"] != self._network.items[result.item].id:
-            return None
+        origin = self._sites.get(source["origin"], -1)
+        if origin < 0 or source["item"] != self._items[result.item]:
+            return origin, None
         if line.origins is not None and origin not in line.origins:
-            return None
-        lanes = self._network.lanes
-        rows = [self._rows[leg["lane"]] for leg in source["legs"]]
+            return origin, None
+        rows = [self._rows.get(leg["lane"], -1) for leg in source["legs"]]
         here = origin
         for position, row in enumerate(rows):
-            if row not in result.on_lane or int(lanes.origin[row]) != here:
-                return None
-            if position and not self._passing[here]:
-                return None
-            here = int(lanes.destination[row])
-        return rows if here == line.site else None
+            if row not in result.on_lane:
+                return origin, None
+            start, end = self._ends[row]
+            if start != here or (position and not self._passing[here]):
+                return origin, None
+            here = end
+        return origin, rows if here == line.site else None
 
 
 class _Sums:
@@ -178,7 +235,9 @@ class _Sums:
         """Start with nothing used."""
         self._network = network
         self._results = results
-        self.served: defaultdict[tuple[int, int], Fraction] = defaultdict(Fraction)
+        self._names = [reference.decode() for reference in network.demand.reference.tolist()]
+        # Over the denominator of ``_Amounts``.
+        self.served: defaultdict[tuple[int, int], int] = defaultdict(int)
         self._lots: defaultdict[tuple[int, int, str | None], int] = defaultdict(int)
         self._on: defaultdict[tuple[int, int], int] = defaultdict(int)
         self._first: defaultdict[tuple[int, int], int] = defaultdict(int)
@@ -194,14 +253,13 @@ class _Sums:
         *,
         steps: int,
         item: int,
-        sites: Mapping[str, int],
+        origin: int,
     ) -> None:
         """Count one source of an order line, which goes over the lanes ``rows``."""
-        self._lots[(sites[source["origin"]], item, source["lot"])] += steps
-        reference = self._network.demand.reference[line.row].decode()
+        self._lots[(origin, item, source["lot"])] += steps
         for row in rows:
             self._on[(row, item)] += steps
-            self._references[row].add(reference)
+            self._references[row].add(self._names[line.row])
         if rows:
             self._first[(rows[0], item)] += steps
             self._last[(rows[-1], item)] += steps
@@ -218,13 +276,17 @@ class _Sums:
             references=self._references,
         )
 
-    def check(self, findings: Findings) -> None:
-        """Note where groups, lots and lanes do not agree with the flow."""
+    def check(self, findings: Findings, *, below: int) -> None:
+        """Note where groups, lots and lanes do not agree with the flow.
+
+        ``below`` is what ``served`` is over.
+        """
         for result in self._results:
             item = self._network.items[result.item].id
+            above, under = result.step.numerator * below, result.step.denominator
             for number, group in enumerate(result.wanted.groups):
                 flow = result.served.get((group.site, group.label), 0)
-                if self.served[(result.item, number)] != flow:
+                if self.served[(result.item, number)] * under != flow * above:
                     detail = "the lines of a group get other than its flow"
                     findings.add("order_line_wrong", detail, place=f"{item}: {group.label}")
             if not self._is_balanced(result):
@@ -238,20 +300,18 @@ class _Sums:
 
     def _is_balanced(self, result: ItemResult) -> bool:
         """Return whether what no source uses of the flow on lanes only circles."""
-        lanes = self._network.lanes
+        rests = {
+            row: steps - self._on.get((row, result.item), 0)
+            for row, steps in result.on_lane.items()
+        }
+        if any(rest < 0 for rest in rests.values()):
+            return False
+        circling = np.array([row for row, rest in rests.items() if rest], dtype=np.int64)
         balance: defaultdict[int, int] = defaultdict(int)
-        for row, steps in result.on_lane.items():
-            rest = steps - self._on.get((row, result.item), 0)
-            if rest < 0:
-                return False
-            balance[_at(lanes.origin, row)] -= rest
-            balance[_at(lanes.destination, row)] += rest
+        for row, (start, end) in lane_ends(self._network, circling).items():
+            balance[start] -= rests[row]
+            balance[end] += rests[row]
         return not any(balance.values())
-
-
-def _at(column: Positions, row: int) -> int:
-    """Return a position as a Python number."""
-    return int(column[row])
 
 
 def _lots_drawn(result: ItemResult) -> dict[tuple[int, str | None], int]:

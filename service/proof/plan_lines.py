@@ -2,15 +2,18 @@
 
 import itertools
 from collections import defaultdict
-from collections.abc import Sequence
-from fractions import Fraction
+from collections.abc import Mapping, Sequence
+
+import numpy as np
 
 from service.network.columns import Network
 from service.proof.flows import PlanLine
+from service.proof.numbers import numbers, numbers_of, together
 from service.proof.order_lines import Paths
-from service.proof.results import ItemResult, lane_cost
-from service.proof.shapes import amount
+from service.proof.results import ItemResult, lane_costs, lane_ends
 from service.proof.violations import Findings
+
+_MONEY = ("transport_cost", "supply_cost", "handling_cost", "charges", "cost")
 
 
 def check_plan_lines(
@@ -25,94 +28,136 @@ def check_plan_lines(
     What a line's goods cost where they are drawn must lie between the cheapest and the dearest of
     what is drawn there, and the lines of a site together must cost exactly what is drawn.
     """
+    # Characters sort as their UTF-8 bytes do.
     keys = [_key(line) for line in lines]
     if any(former >= latter for former, latter in itertools.pairwise(keys)):
         findings.add("plan_line_wrong", "plan lines are not sorted", place="/plan_lines")
-    by_item = {result.item: result for result in results}
-    supply: defaultdict[tuple[int, int], Fraction] = defaultdict(Fraction)
-    local = set()
-    for line in lines:
-        steps = amount(line.document["quantity"]) / by_item[line.item].step
+    supply: defaultdict[tuple[int, int], int] = defaultdict(int)
+    local: set[tuple[int, int]] = set()
+    costs = {result.item: _Costs(network, result, paths) for result in results}
+    money, below = together(
+        *(numbers([line.document[field] for line in lines]) for field in _MONEY)
+    )
+    quantity = numbers([line.document["quantity"] for line in lines])
+    unit_cost = numbers([line.document["unit_cost"] for line in lines])
+    for line, goods, rate, parts in zip(
+        lines, quantity.whole, unit_cost.whole, zip(*money, strict=True), strict=True
+    ):
+        own = costs[line.item]
         if line.row < 0:
             local.add((line.origin, line.item))
-            if steps != paths.local.get((line.origin, line.item), 0):
+            if not own.is_local(line.origin, goods, quantity.below):
                 detail = "not what is used where it is drawn"
                 findings.add("plan_line_wrong", detail, place=line.place)
-        if not _costs_right(network, by_item[line.item], line, paths):
+        if not own.are_right(
+            line, parts, below, quantity=(goods, quantity.below), rate=(rate, unit_cost.below)
+        ):
             findings.add("plan_line_wrong", "its costs do not follow", place=line.place)
-        supply[(line.origin, line.item)] += amount(line.document["supply_cost"])
+        supply[(line.origin, line.item)] += parts[1]
     if local != set(paths.local):
         detail = "goods used where they are drawn have no line"
         findings.add("plan_line_wrong", detail, place="/plan_lines")
     for result in results:
-        for site, held in result.stock.items():
-            drawn = sum(
-                result.drawn.get((site, tier), 0) * result.step * cost
-                for tier, cost in enumerate(held.tier_cost, start=1)
-            )
-            if supply[(site, result.item)] != drawn:
+        own = costs[result.item]
+        for site in result.stock:
+            if supply[(site, result.item)] * own.stock_below != own.drawn_cost(site) * below:
                 detail = "the lines of a site do not cost what is drawn there"
                 findings.add("plan_line_wrong", detail, place=network.sites[site].id)
 
 
-def _key(line: PlanLine) -> tuple[bytes, ...]:
+def _key(line: PlanLine) -> tuple[str, ...]:
     """Return what plan lines are sorted by."""
     document = line.document
-    names = (document["origin"], document["destination"], document["item"], document["lane"] or "")
-    return tuple(name.encode() for name in names)
+    return document["origin"], document["destination"], document["item"], document["lane"] or ""
 
 
-def _costs_right(network: Network, result: ItemResult, line: PlanLine, paths: Paths) -> bool:
-    """Return whether ends, unit cost and every part of the cost of a plan line are right."""
-    document, item = line.document, network.items[line.item].id
-    quantity = amount(document["quantity"])
-    handling = quantity * network.sites[line.origin].handling(item)
-    if line.row < 0:
-        ends_right = line.origin == line.destination
-        unit_cost = Fraction(0)
-        first = quantity / result.step
-    else:
-        key = (line.row, line.item)
-        lanes = network.lanes
-        ends_right = (
-            line.origin == lanes.origin[line.row]
-            and line.destination == lanes.destination[line.row]
+class _Costs:
+    """What goods of one item cost, as whole numbers over common denominators."""
+
+    def __init__(self, network: Network, result: ItemResult, paths: Paths) -> None:
+        """Look up every cost that a plan line of the item can have."""
+        self._paths, self._item = paths, result.item
+        self._step, self._below_step = result.step.numerator, result.step.denominator
+        rows = np.array(sorted(result.on_lane), dtype=np.int64)
+        rates = lane_costs(network, rows, result.item)
+        self._rate = dict(zip(rows.tolist(), rates.whole, strict=True))
+        self._rate_below = rates.below
+        self._ends = lane_ends(network, rows)
+        name = network.items[result.item].id
+        handling = numbers_of(site.handling(name) for site in network.sites)
+        self._handling, self._handling_below = handling.whole, handling.below
+        costs = numbers_of(
+            cost * result.step for held in result.stock.values() for cost in held.tier_cost
         )
-        unit_cost = lane_cost(network, line.row, line.item)
-        consumed = paths.last.get(key, 0) * result.step
-        handling += consumed * network.sites[line.destination].handling(item)
-        first = Fraction(paths.first.get(key, 0))
-    transport = quantity * unit_cost
-    supply = amount(document["supply_cost"])
-    least, most = _supply_range(result, line.origin, first)
-    return (
-        ends_right
-        and amount(document["unit_cost"]) == unit_cost
-        and amount(document["transport_cost"]) == transport
-        and amount(document["handling_cost"]) == handling
-        and amount(document["charges"]) == 0
-        and least <= supply <= most
-        and amount(document["cost"]) == transport + supply + handling
-    )
+        self.stock_below = costs.below
+        each = iter(costs.whole)
+        self._tiers: Mapping[int, list[tuple[int, int]]] = {
+            site: [
+                (next(each), result.drawn.get((site, tier), 0))
+                for tier in range(1, len(held.tier_cost) + 1)
+            ]
+            for site, held in result.stock.items()
+        }
+
+    def is_local(self, site: int, goods: int, below: int) -> bool:
+        """Return whether ``goods``/``below`` units are what is used where they are drawn."""
+        steps = self._paths.local.get((site, self._item), 0)
+        return goods * self._below_step == steps * below * self._step
+
+    def drawn_cost(self, site: int) -> int:
+        """Return what all that is drawn at a site costs, over ``stock_below``."""
+        return sum(cost * drawn for cost, drawn in self._tiers[site])
+
+    def are_right(
+        self,
+        line: PlanLine,
+        parts: Sequence[int],
+        below: int,
+        *,
+        quantity: tuple[int, int],
+        rate: tuple[int, int],
+    ) -> bool:
+        """Return whether ends, unit cost and every part of the cost of a plan line are right.
+
+        ``parts`` are those of ``_MONEY`` over ``below``.
+        """
+        transport, supply, handling, charges, cost = parts
+        goods, goods_below = quantity
+        handled = goods * self._handling[line.origin] * self._below_step
+        if line.row < 0:
+            ends, per_unit, used_up = (line.origin, line.origin), 0, 0
+            first = goods * self._below_step // (goods_below * self._step)
+        else:
+            ends, per_unit = self._ends[line.row], self._rate[line.row]
+            key = (line.row, self._item)
+            first, used_up = self._paths.first.get(key, 0), self._paths.last.get(key, 0)
+            handled += used_up * self._step * self._handling[line.destination] * goods_below
+        least, most = self._supply_range(line.origin, first)
+        stocked = supply * self.stock_below
+        return (
+            ends == (line.origin, line.destination)
+            and rate[0] * self._rate_below == per_unit * rate[1]
+            and transport * goods_below * self._rate_below == goods * per_unit * below
+            and handling * goods_below * self._below_step * self._handling_below == handled * below
+            and charges == 0
+            and least * below <= stocked <= most * below
+            and cost == transport + supply + handling
+        )
+
+    def _supply_range(self, site: int, steps: int) -> tuple[int, int]:
+        """Return the least and the most that ``steps`` of what is drawn at ``site`` can cost."""
+        tiers = self._tiers.get(site, [])
+        if len(tiers) == 1:
+            only = min(steps, tiers[0][1]) * tiers[0][0]
+            return only, only
+        return _first_of(tiers, steps), _first_of(tiers[::-1], steps)
 
 
-def _supply_range(result: ItemResult, site: int, steps: Fraction) -> tuple[Fraction, Fraction]:
-    """Return the least and the most that ``steps`` of what is drawn at ``site`` can cost."""
-    held = result.stock.get(site)
-    if held is None:
-        return Fraction(0), Fraction(0)
-    tiers = [
-        (cost * result.step, result.drawn.get((site, tier), 0))
-        for tier, cost in enumerate(held.tier_cost, start=1)
-    ]
-    return _first_of(tiers, steps), _first_of(tiers[::-1], steps)
-
-
-def _first_of(tiers: Sequence[tuple[Fraction, int]], steps: Fraction) -> Fraction:
+def _first_of(tiers: Sequence[tuple[int, int]], steps: int) -> int:
     """Return the cost of the first ``steps`` of ``tiers``, each a cost of a step and a number."""
-    cost = Fraction(0)
+    cost = 0
     for of_step, there in tiers:
-        taken = min(steps, Fraction(there))
+        taken = min(steps, there)
         cost += taken * of_step
         steps -= taken
     return cost

@@ -6,11 +6,12 @@ from fractions import Fraction
 
 import numpy as np
 
-from service.network.columns import Network
+from service.network.columns import IntArray, Network
 from service.network.units import per_unit
 from service.proof.arcs import Arc, ItemArcs
 from service.proof.exact import Whole
 from service.proof.groups import Wanted
+from service.proof.numbers import Numbers, numbers_of
 from service.proof.stock import Stock
 
 
@@ -45,10 +46,9 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
     served: dict[tuple[int, str], int] = {}
     keep_short: dict[int, int] = {}
     money = dict.fromkeys(("supply", "handling", "transport", "shortage"), Fraction(0))
-    money["transport"] = sum(
-        (steps * arcs.step * lane_cost(network, row, arcs.item) for row, steps in on_lane.items()),
-        Fraction(0),
-    )
+    costs = lane_costs(network, arcs.rows[moved], arcs.item)
+    carried = sum(steps * cost for steps, cost in zip(on_lane.values(), costs.whole, strict=True))
+    money["transport"] = carried * arcs.step / costs.below
     short = dict.fromkeys(arcs.priorities, 0)
     for arc, steps in zip(arcs.arcs, flow[lanes:].tolist(), strict=True):
         if not steps:
@@ -92,14 +92,32 @@ _PARTS: Mapping[str, str] = {
 }
 
 
-def lane_cost(network: Network, row: int, item: int) -> Fraction:
-    """Return the money that one unit of ``item`` costs on the lane ``row``."""
+def lane_costs(network: Network, rows: IntArray, item: int) -> Numbers:
+    """Return the money that one unit of ``item`` costs on each of the lanes ``rows``."""
     lanes = network.lanes
-    cost, measure = lanes.unit_cost.fraction(row), lanes.measure.text(row)
-    per = None if measure is None else per_unit(network.items[item], measure)
-    if cost is None or per is None:
-        raise ValueError(f"lane {row} has no cost for {network.items[item].id!r}")
-    return cost * per
+    codes = lanes.measure.codes[rows].tolist()
+    per = {
+        code: per_unit(network.items[item], lanes.measure.values[code])
+        for code in set(codes)
+        if code >= 0
+    }
+    known = {code: amount for code, amount in per.items() if amount is not None}
+    if not lanes.unit_cost.present[rows].all() or len(known) != len(set(codes)):
+        raise ValueError(f"a lane has no cost for {network.items[item].id!r}")
+    factors = numbers_of(known.values())
+    factor = dict(zip(known, factors.whole, strict=True))
+    costs = lanes.unit_cost.values[rows].tolist()
+    return Numbers(
+        whole=[cost * factor[code] for cost, code in zip(costs, codes, strict=True)],
+        below=factors.below * 10**lanes.unit_cost.exponent,
+    )
+
+
+def lane_ends(network: Network, rows: IntArray) -> dict[int, tuple[int, int]]:
+    """Return origin and destination of each of the lanes ``rows``, by row."""
+    lanes = network.lanes
+    ends = zip(lanes.origin[rows].tolist(), lanes.destination[rows].tolist(), strict=True)
+    return dict(zip(rows.tolist(), ends, strict=True))
 
 
 def _site(arc: Arc) -> int:

@@ -71,12 +71,15 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
         | {group.site for group in wanted.groups}
         | set(np.flatnonzero(ends.any(axis=0)).tolist())
     )
-    passing = cross_docks(network)
-    closed = rulings.closed_sites(item, len(network.sites))
+    passing = cross_docks(network).tolist()
+    closed = rulings.closed_sites(item, len(network.sites)).tolist()
+    start_at, end_at = ends.tolist()
     limits = _throughput_limits(network, rulings, item, relevant)
-    sides = {}
+    sides: dict[int, SiteSides] = {}
+    # Most sites are like all others that pass goods on, or do not, and share what is said of them.
+    alike: dict[bool, SiteSides] = {}
     for site in sorted(relevant):
-        starts, arrives = bool(ends[0, site]), bool(ends[1, site])
+        starts, arrives = start_at[site], end_at[site]
         mixed = not passing[site] and arrives and (site in stock or starts)
         apart = site in choosy or mixed
         limit = limits.get(site, {})
@@ -92,9 +95,13 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
             behind = {origin: stock_behind(network, item, rows, origin) for origin in before}
         elif (apart and arrives) or "received" in limit:
             origins = [None]
+        plain = not (apart or limit or closed[site])
+        if plain and passing[site] in alike:
+            sides[site] = alike[passing[site]]
+            continue
         sides[site] = SiteSides(
             apart=apart,
-            passes=bool(passing[site]),
+            passes=passing[site],
             by_origin=site in choosy,
             received_from=tuple(origins),
             has_sent=apart or "sent" in limit,
@@ -104,6 +111,8 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
             past=0 if closed[site] else UNLIMITED,
             stock_behind=behind,
         )
+        if plain:
+            alike[passing[site]] = sides[site]
     return sides
 
 

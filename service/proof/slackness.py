@@ -14,8 +14,8 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import IntArray, Network
-from service.proof.arcs import ItemArcs, Node, scaled_costs
-from service.proof.exact import Whole, magnitude, plus, times, whole
+from service.proof.arcs import ItemArcs, scaled_costs
+from service.proof.exact import ROOM, Whole, joined, magnitude, plus, times, whole
 from service.proof.flows import Names, describe
 from service.proof.violations import EXAMPLES_MAX, Findings
 
@@ -43,7 +43,7 @@ def check_slackness(  # noqa: PLR0913 - network, flow and prices come from three
         findings.add("weights_too_small", "the base of the weights is too small", place=place)
     if price is None:
         return
-    cost = plus(money, weights(arcs, base))
+    cost = weighted(arcs, money, base)
     for position in contradictions(arcs, flow, cost=cost, price=price)[: EXAMPLES_MAX + 1].tolist():
         detail = f"{int(flow[position])} steps contradict the prices at its ends"
         findings.add("not_optimal", detail, place=describe(arcs, position, network))
@@ -54,11 +54,16 @@ def least_base(arcs: ItemArcs, money: Whole) -> int:
     return 2 * len(arcs.nodes) * magnitude(money) + 1
 
 
-def weights(arcs: ItemArcs, base: int) -> Whole:
-    """Return what one step short costs on each arc by its priority, 0 on all other arcs."""
-    ranks = arcs.ranks()
+def weighted(arcs: ItemArcs, money: Whole, base: int) -> Whole:
+    """Return ``money``, and on shortage of the r-th of T priorities (T + 1 - r) * ``base`` more.
+
+    No lane is one, so that only the few other arcs are added to.
+    """
+    lanes = len(arcs.rows)
     above_last = len(arcs.priorities) + 1
-    return times(np.where(ranks > 0, above_last - ranks, 0), base)
+    ranks = np.array([arc.rank for arc in arcs.arcs], dtype=np.int64)
+    others = plus(money[lanes:], times(np.where(ranks > 0, above_last - ranks, 0), base))
+    return joined([money[:lanes], others])
 
 
 def contradictions(arcs: ItemArcs, flow: Whole, *, cost: Whole, price: Whole) -> IntArray:
@@ -67,10 +72,18 @@ def contradictions(arcs: ItemArcs, flow: Whole, *, cost: Whole, price: Whole) ->
     ``cost`` has shape (arcs,), ``price`` shape (nodes,), both scaled money per step. An unlimited
     arc has capacity -1, which no flow equals. Empty means proven, given a feasible flow.
     """
-    reduced = plus(plus(cost, price[arcs.tails()]), -price[arcs.heads()])
-    not_full = (reduced < 0) & (flow != arcs.capacities())
-    not_least = (reduced > 0) & (flow != arcs.minimums())
-    return np.flatnonzero(not_full | not_least)
+    if magnitude(cost) + 2 * magnitude(price) >= ROOM:
+        cost, price = cost.astype(object), price.astype(object)
+    found = []
+    for first, part in arcs.parts():
+        stop = first + len(part.tail)
+        reduced = cost[first:stop] + price[part.tail]
+        reduced -= price[part.head]
+        carried = flow[first:stop]
+        not_full = (reduced < 0) & (carried != part.capacity)
+        not_least = (reduced > 0) & (carried != part.minimum)
+        found.append(first + np.flatnonzero(not_full | not_least))
+    return np.concatenate(found)
 
 
 def _prices(
@@ -81,24 +94,31 @@ def _prices(
     findings: Findings,
 ) -> Whole | None:
     """Return the price of each node, 0 at the root; None if the certificate does not say them."""
-    prices: dict[int, int] = {0: 0}
-    sound = True
-    for position, entry in enumerate(proof["prices"]):
+    entries = proof["prices"]
+    nodes = [
+        arcs.place.get((names.sites.get(entry["site"], -1), entry["side"], entry["qualifier"]))
+        for entry in entries
+    ]
+    seen = {0}
+    for position, node in enumerate(nodes):
+        if node is not None and node not in seen:
+            seen.add(node)
+            continue
         place = f"/items/{proof['item']}/prices/{position}"
-        site = names.sites.get(entry["site"], -1)
-        node = arcs.place.get(Node(site, entry["side"], entry["qualifier"]))
         if node is None:
             findings.add("name_unknown", "there is no such node", place=place)
-            sound = False
-        elif node in prices:
-            findings.add("listed_twice", "a node has two prices", place=place)
-            sound = False
         else:
-            prices[node] = int(entry["price"])
-    if not sound:
+            findings.add("listed_twice", "a node has two prices", place=place)
+    if len(seen) <= len(nodes):
         return None
-    missing = [known for known, at in arcs.place.items() if at not in prices]
-    for known in missing:
-        name = f"{network.sites[known.site].id} {known.side} {known.qualifier or ''}"
-        findings.add("price_missing", "a node has no price", place=name)
-    return None if missing else whole([prices[at] for at in range(len(arcs.nodes))])
+    if len(seen) < len(arcs.nodes):
+        for known, at in arcs.place.items():
+            if at not in seen:
+                site, side, qualifier = known
+                name = f"{network.sites[site].id} {side} {qualifier or ''}"
+                findings.add("price_missing", "a node has no price", place=name)
+        return None
+    values = [0] * len(arcs.nodes)
+    for node, entry in zip(nodes, entries, strict=True):
+        values[node or 0] = int(entry["price"])
+    return whole(values)

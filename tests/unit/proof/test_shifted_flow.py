@@ -12,7 +12,7 @@ from service.proof.arcs import ItemArcs, item_arcs, scaled_costs
 from service.proof.feasibility import broken_limits
 from service.proof.flows import Names, item_flows
 from service.proof.rulings import Rulings
-from service.proof.slackness import contradictions, weights
+from service.proof.slackness import contradictions, weighted
 from service.proof.violations import Findings
 from tests.evidence.zips import entries_of, good_zip, network_of
 
@@ -65,7 +65,7 @@ def _shift(seed: int) -> int:
         money = scaled_costs(network, arcs, Fraction(certificate["cost_scale"]))
         assert flow is not None
         assert money is not None
-        cost = money + weights(arcs, int(proof["base"]))
+        cost = weighted(arcs, money, int(proof["base"]))
         places = {
             (names.sites[entry["site"]], entry["side"], entry["qualifier"]): int(entry["price"])
             for entry in proof["prices"]
