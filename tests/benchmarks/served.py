@@ -19,6 +19,7 @@ from tests.benchmarks.stopwatch import family, resident_bytes, worked_seconds
 ROOT = Path(__file__).parents[2]
 START_SECONDS_MAX = 60
 RUN_SECONDS_MAX = 300
+LOG_SHOWN = 3000
 # Short against what is measured, long enough not to keep the service busy with answering.
 POLL_SECONDS = 0.004
 _COMMAND = (sys.executable, "-c", "from service.main import main; main()", "serve", "--port", "0")
@@ -157,6 +158,10 @@ def serving(folder: Path) -> Iterator[Service]:
     service = Service(folder)
     try:
         yield service
+    except RuntimeError as error:
+        # The folder goes with the run; what the service said of it must not.
+        said = (folder / "log").read_text(encoding="utf-8", errors="replace")[-LOG_SHOWN:]
+        raise RuntimeError(f"{error}; the service said: {said}") from error
     finally:
         service.end()
 
