@@ -12,6 +12,7 @@ from service.network.sheets import Column
 _Values = TypeVar("_Values", BoolArray, CodeArray, IntArray)
 
 ABSENT: Final = -1
+_MULTIPLIER: Final = np.uint64(0x9E3779B97F4A7C15)
 
 
 def no_texts(rows: int) -> Texts:
@@ -36,6 +37,25 @@ def as_ids(texts: Sequence[str | None]) -> IdArray:
     """Return ids as a column of UTF-8, ``b""`` where there is none."""
     encoded = [b"" if text is None else text.encode() for text in texts]
     return np.array(encoded, dtype=np.bytes_) if encoded else np.zeros(0, dtype="S1")
+
+
+def all_different(ids: IdArray) -> bool:
+    """Return whether no two ids are equal, without comparing them as long as numbers can tell."""
+    if len(ids) < 2:
+        return True
+    width = ids.dtype.itemsize
+    words = np.zeros((len(ids), -(-width // 8)), dtype=np.uint64)
+    words.view(np.uint8).reshape(len(ids), -1)[:, :width] = (
+        np.ascontiguousarray(ids).view(np.uint8).reshape(len(ids), width)
+    )
+    hashes = np.zeros(len(ids), dtype=np.uint64)
+    for word in words.T:
+        hashes = (hashes ^ word) * _MULTIPLIER
+        hashes ^= hashes >> np.uint64(29)
+    hashes.sort()
+    if not bool((hashes[1:] == hashes[:-1]).any()):
+        return True
+    return len(np.unique(ids)) == len(ids)
 
 
 def by_row(column: Column, found: _Values) -> _Values:

@@ -6,13 +6,22 @@ value as it was sent.
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
+from enum import Enum, auto
 from typing import overload
 
 import numpy as np
 
-from service.network.columns import BoolArray, CodeArray, IntArray
+from service.network.columns import BoolArray, CodeArray, IdArray, IntArray
 from service.network.files.json_digits import Digits
 from service.network.quantities import ReadDecimals
+
+
+class FieldKind(Enum):
+    """What the values of a field are: numbers, texts of which many are equal, or different ids."""
+
+    NUMBER = auto()
+    TEXT = auto()
+    ID = auto()
 
 
 class Scanned(Sequence[object]):
@@ -83,6 +92,16 @@ class ScannedTexts(Scanned):
         self.codes: IntArray = codes.astype(np.int64)
 
 
+class ScannedIds(Scanned):
+    """A column of ids and nulls, in UTF-8, ``b""`` where null."""
+
+    def __init__(self, ids: IdArray, *, ascii_only: bool) -> None:
+        """Hold ``ids``, none of which is empty or has a character below the space."""
+        super().__init__(len(ids), lambda row: ids[row].decode() or None)
+        self.ids = ids
+        self.ascii_only = ascii_only
+
+
 class ScannedGrid:
     """A table of numbers of ``height`` rows of ``width`` each, held row after row."""
 
@@ -109,7 +128,7 @@ class ScannedRows:
     """
 
     rows: int
-    columns: Mapping[str, ScannedNumbers | ScannedTexts]
+    columns: Mapping[str, Scanned]
 
 
 def joined_numbers(parts: Sequence[Sequence[object] | None]) -> ScannedNumbers | None:

@@ -4,6 +4,7 @@ from collections.abc import Mapping
 from typing import Final
 
 from service.network import value_schemas as schemas
+from service.network.scanned import FieldKind
 from service.network.value_schemas import Schema, decimal_schema
 
 PRIORITY_MAX: Final = 9
@@ -76,13 +77,19 @@ REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
 # Fields whose single value is itself an array, so that an array need not be a column of a table.
 LISTED_FIELDS: Final = frozenset({"tags", "origins"})
 
-# Fields whose values are texts or numbers, each with whether they are numbers; the others hold
-# arrays or objects.
+# Fields whose values are texts or numbers; the others hold arrays or objects.
 _NUMBERS: Final = (_QUANTITY, _MONEY, _RATE, _PRIORITY)
 _STRUCTURES: Final = LISTED_FIELDS | {"extra", "keep"}
-FLAT_FIELDS: Final[Mapping[str, Mapping[str, bool]]] = {
+_IDS: Final = frozenset({"id", "reference"})
+FLAT_FIELDS: Final[Mapping[str, Mapping[str, FieldKind]]] = {
     table: {
-        field: schema in _NUMBERS for field, schema in fields.items() if field not in _STRUCTURES
+        field: FieldKind.NUMBER
+        if schema in _NUMBERS
+        else FieldKind.ID
+        if field in _IDS
+        else FieldKind.TEXT
+        for field, schema in fields.items()
+        if field not in _STRUCTURES
     }
     for table, fields in TABLE_FIELDS.items()
 }

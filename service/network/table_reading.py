@@ -13,13 +13,14 @@ import numpy as np
 from service.network.canonical import canonical_json
 from service.network.column_making import (
     ABSENT,
+    as_ids,
     by_row,
     no_decimals,
     no_texts,
     texts_column,
     without,
 )
-from service.network.columns import BoolArray, CodeArray, Decimals, Texts
+from service.network.columns import BoolArray, CodeArray, Decimals, IdArray, Texts
 from service.network.exact_numbers import ExactNumbers
 from service.network.files.json import Number
 from service.network.quantities import (
@@ -29,7 +30,7 @@ from service.network.quantities import (
     read_decimals,
     too_many_decimals,
 )
-from service.network.scanned import ScannedNumbers
+from service.network.scanned import ScannedIds, ScannedNumbers
 from service.network.sheets import Column
 from service.network.table_faults import TableFaults
 from service.network.wording import (
@@ -125,11 +126,15 @@ class TableReader:
         kept = {text: word.text for text, word in spelled.items()}
         return texts_column(column, values, kept)
 
-    def ids(self, name: str) -> list[str | None]:
-        """Return one id or None a row, as sent; faulty ones are None."""
-        column, values = self._texts(name)
+    def ids(self, name: str) -> IdArray:
+        """Return the id of each row as sent, ``b""`` where there is none or a faulty one."""
+        column = self._columns.get(name)
         if column is None:
-            return [None] * self.rows
+            return np.zeros(self.rows, dtype="S1")
+        if isinstance(column.values, ScannedIds) and column.values.ascii_only:
+            # At most 64 characters that are no controls: they were found to be ids on the way.
+            return column.values.ids if column.take is None else column.values.ids[column.take]
+        _, values = self._texts(name)
         if not are_ids([text for text in values if text is not None]):
             wrong = [
                 place for place, text in enumerate(values) if text is not None and not is_id(text)
@@ -137,7 +142,8 @@ class TableReader:
             self._faults.at_values(name, wrong, "bad_id", ID_ADVICE)
             for place in wrong:
                 values[place] = None
-        return values if column.take is None else [values[place] for place in column.take.tolist()]
+        ids = as_ids(values)
+        return ids if column.take is None else ids[column.take]
 
     def decimals(self, name: str, *, decimals_max: int, least: int | None) -> Decimals:
         """Return a column of exact decimals, none below ``least`` (None: any)."""

@@ -5,18 +5,17 @@ absent), with a ``TableFaults`` that says which rows those are. Checks that need
 follow in ``supply_checks.py``, ``demand_checks.py`` and ``lane_checks.py``.
 """
 
-from collections import Counter
-from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
-from service.network.column_making import as_ids, no_decimals, without
+from service.network.column_making import all_different, no_decimals, without
 from service.network.columns import (
     BoolArray,
     CodeArray,
     Decimals,
     DemandTable,
+    IdArray,
     LaneTable,
     SupplyTable,
 )
@@ -101,10 +100,7 @@ def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
     """Read the order lines; a line without a reference is called ``#`` and its number as sent."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
-    references = [
-        f"#{number}" if text is None else text
-        for number, text in enumerate(reader.ids("reference"), start=1)
-    ]
+    references = _numbered(reader.ids("reference"))
     _refuse_repeats(
         faults,
         "reference",
@@ -116,7 +112,7 @@ def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
     item = reader.codes("item", things.item_positions, unknown="unknown_item", thing="item")
     quantity = _quantity(reader, "quantity")
     table = DemandTable(
-        reference=as_ids(references),
+        reference=references,
         order=reader.texts("order", _id),
         ordered_at=reader.texts("ordered_at", _instant),
         site=site,
@@ -138,7 +134,7 @@ def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
     """Read the lanes. A must-ship of 0 and the ``per`` of a lane with an item say nothing."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
-    ids = reader.ids("id") if "id" in sheet.columns else []
+    ids = reader.ids("id")
     _refuse_repeats(
         faults,
         "id",
@@ -156,7 +152,7 @@ def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
     measure = reader.texts("measure", _id)
     per = reader.texts("per", _per)
     table = LaneTable(
-        ids=as_ids(ids) if ids else np.zeros(sheet.rows, dtype="S1"),
+        ids=ids,
         origin=origin,
         destination=destination,
         item=item,
@@ -187,16 +183,24 @@ def _require(reader: TableReader, *, site: CodeArray, item: CodeArray, quantity:
     reader.require("quantity", quantity.present)
 
 
-def _refuse_repeats(
-    faults: TableFaults, name: str, texts: Sequence[str | None], code: str, detail: str
-) -> None:
+def _numbered(references: IdArray) -> IdArray:
+    """Return references; a line without one is called by its number."""
+    missing = np.flatnonzero(references == b"")
+    if len(missing) == 0:
+        return references
+    names = np.array([b"#%d" % (row + 1) for row in missing.tolist()])
+    numbered = references.astype(max(references.dtype, names.dtype, key=lambda kind: kind.itemsize))
+    numbered[missing] = names
+    return numbered
+
+
+def _refuse_repeats(faults: TableFaults, name: str, ids: IdArray, code: str, detail: str) -> None:
     """Report every row whose id another row has too: which of them is meant would be a guess."""
-    given = [text for text in texts if text is not None]
-    if len(set(given)) == len(given):
+    given = np.flatnonzero(ids != b"")
+    if all_different(ids[given]):
         return
-    counts = Counter(given)
-    rows = [row for row, text in enumerate(texts) if text is not None and counts[text] > 1]
-    faults.at_rows(name, rows, code, detail)
+    _, group, sizes = np.unique(ids[given], return_inverse=True, return_counts=True)
+    faults.at_rows(name, given[sizes[group] > 1], code, detail)
 
 
 def _id(text: str) -> Spelled:

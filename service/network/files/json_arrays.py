@@ -13,9 +13,10 @@ import numpy as np
 from service.network.columns import CodeArray, IntArray
 from service.network.files.json_blocks import LEAD, Block
 from service.network.files.json_digits import Digits, read_digits
+from service.network.files.json_ids import Ids
 from service.network.files.json_texts import DistinctTexts, TooManyDistinctError
 from service.network.files.json_values import SPACE, Number, is_plain_text, skipped, skipped_back
-from service.network.scanned import ScannedGrid, ScannedNumbers, ScannedTexts
+from service.network.scanned import ScannedGrid, ScannedIds, ScannedNumbers, ScannedTexts
 
 # As many bytes as the second cache of a core holds together with the words made of them.
 BLOCK_BYTES: Final = 1 << 17
@@ -184,6 +185,25 @@ def scan_texts(
     spread = np.full(len(found) + int(before.sum()), len(values), dtype=np.int32)
     spread[_places(before)[:-1]] = found
     return ScannedTexts((*values, None), spread)
+
+
+def scan_ids(
+    text: bytes, start: int, end: int, *, block_bytes: int = BLOCK_BYTES
+) -> ScannedIds | None:
+    """Return the ids and nulls between the brackets of an array at ``start`` and ``end``."""
+    ids = Ids()
+    nulls: list[IntArray] = []
+    try:
+        for strings in _strings(text, start, end, block_bytes):
+            nulls.append(strings.nulls_before)
+            if not ids.add(strings.block, starts=strings.starts, ends=strings.ends):
+                return None
+    except _OddArrayError:
+        return None
+    before = np.concatenate(nulls)
+    if not before.any():
+        return ids.column()
+    return ids.column(_places(before)[:-1], len(before) - 1 + int(before.sum()))
 
 
 def scan_quoted_numbers(

@@ -17,9 +17,16 @@ from service.network.files.json_arrays import NULL, SEPARATOR_BYTES_MAX, texts_o
 from service.network.files.json_blocks import LEAD, Block
 from service.network.files.json_digits import Digits, read_digits
 from service.network.files.json_ends import value_end
+from service.network.files.json_ids import Ids
 from service.network.files.json_texts import DistinctTexts, TooManyDistinctError
 from service.network.files.json_values import closing_bracket, skipped, skipped_back
-from service.network.scanned import ScannedNumbers, ScannedRows, ScannedTexts
+from service.network.scanned import (
+    FieldKind,
+    Scanned,
+    ScannedNumbers,
+    ScannedRows,
+    ScannedTexts,
+)
 
 BLOCK_BYTES: Final = 1 << 20
 
@@ -53,11 +60,12 @@ class _Style(NamedTuple):
 class _Found:
     """What was found of one field: pieces of its column, and the row of each value."""
 
-    numeric: bool
+    kind: FieldKind
     rows: list[IntArray] = field(default_factory=list)
     digits: list[Digits] = field(default_factory=list)
     codes: list[CodeArray] = field(default_factory=list)
     distinct: DistinctTexts = field(default_factory=DistinctTexts)
+    ids: Ids = field(default_factory=Ids)
     quoted: bool = False
 
 
@@ -81,14 +89,14 @@ def scan_rows(
     text: bytes,
     start: int,
     *,
-    kinds: Mapping[str, bool],
+    kinds: Mapping[str, FieldKind],
     decode: Decode,
     block_bytes: int = BLOCK_BYTES,
 ) -> tuple[ScannedRows, int] | None:
     """Return an array of objects as columns, and the place behind it.
 
-    ``start`` is the place of its opening bracket. ``kinds`` are the names that values may have,
-    each with whether the values are numbers; ``decode`` reads one object exactly.
+    ``start`` is the place of its opening bracket. ``kinds`` are the names that values may have;
+    ``decode`` reads one object exactly.
     """
     first = skipped(text, start + 1)
     close = closing_bracket(text, first, behind=b"}")
@@ -125,7 +133,7 @@ def _style(text: bytes, first: int) -> _Style:
 class _Scan:
     """One reading of an array of objects."""
 
-    def __init__(self, text: bytes, *, style: _Style, kinds: Mapping[str, bool]) -> None:
+    def __init__(self, text: bytes, *, style: _Style, kinds: Mapping[str, FieldKind]) -> None:
         """Read objects written in ``style``, whose values have the names of ``kinds``."""
         self._text = text
         self._style = style
@@ -174,7 +182,7 @@ class _Scan:
         for name, which in self._by_name(gaps, places, rows[places]):
             if name not in self._kinds:
                 raise _OddRowsError
-            own = self._found.setdefault(name, _Found(numeric=self._kinds[name]))
+            own = self._found.setdefault(name, _Found(self._kinds[name]))
             here = places[which]
             at: IntArray = rows[here]
             if bool((at[1:] <= at[:-1]).any()):
@@ -272,7 +280,7 @@ def _read_values(
 ) -> None:
     """Read the values from ``starts`` to ``ends``, of which those of ``text`` are quoted."""
     quoted = bool(text.any())
-    if own.numeric:
+    if own.kind is FieldKind.NUMBER:
         digits = Digits.room(len(starts))
         sound = read_digits(block, starts=starts, ends=ends, into=digits)
         # The text "null" is no number.
@@ -287,6 +295,12 @@ def _read_values(
         if bool((ends[~text] - others != len(NULL)).any()) or not block.holds(others, NULL):
             raise _OddRowsError
         starts, ends = starts[text], ends[text]
+    if own.kind is FieldKind.ID:
+        # Rows without an id are left out here, as those without the name are.
+        own.rows[-1] = own.rows[-1][text]
+        if not own.ids.add(block, starts=starts, ends=ends):
+            raise _OddRowsError
+        return
     found = own.distinct.codes(block, starts=starts, ends=ends)
     if found is None:
         raise _OddRowsError
@@ -294,10 +308,12 @@ def _read_values(
     own.codes.append(codes)
 
 
-def _column(own: _Found, rows: int, sent: Callable[[int], object]) -> ScannedNumbers | ScannedTexts:
+def _column(own: _Found, rows: int, sent: Callable[[int], object]) -> Scanned:
     """Return one field as a column of so many rows."""
     places = np.concatenate(own.rows)
-    if own.numeric:
+    if own.kind is FieldKind.ID:
+        return own.ids.column(places, rows) if len(places) < rows else own.ids.column()
+    if own.kind is FieldKind.NUMBER:
         digits = Digits.joined(own.digits)
         if not digits.fits:
             raise _OddRowsError

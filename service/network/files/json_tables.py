@@ -10,6 +10,7 @@ from typing import Final
 
 from service.network.files.json_arrays import (
     scan_grid,
+    scan_ids,
     scan_numbers,
     scan_quoted_numbers,
     scan_texts,
@@ -17,16 +18,15 @@ from service.network.files.json_arrays import (
 from service.network.files.json_ends import string_end, value_end
 from service.network.files.json_rows import Decode, scan_rows
 from service.network.files.json_values import closing_bracket, skipped
-from service.network.scanned import ScannedGrid, ScannedNumbers, ScannedRows, ScannedTexts
+from service.network.scanned import FieldKind, Scanned, ScannedGrid, ScannedRows
 
 # Below, the exact reader is done before the arrays are set up.
 LARGE_BYTES: Final = 1 << 13
 # A longer element of an array is no row, but a cost table.
 _ROW_BYTES_MAX: Final = 1 << 13
 
-Scanned = ScannedGrid | ScannedNumbers | ScannedRows | ScannedTexts
-Kinds = Mapping[str, bool]
-"""The fields of a table whose values are texts or numbers: whether they are numbers."""
+Kinds = Mapping[str, FieldKind]
+"""The fields of a table whose values are texts or numbers."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -34,7 +34,7 @@ class Cut:
     """A value that was cut out of a text, and the path of names and positions to it."""
 
     path: tuple[str | int, ...]
-    value: Scanned
+    value: Scanned | ScannedGrid | ScannedRows
 
 
 class _OddTextError(Exception):
@@ -144,30 +144,32 @@ class _Cutter:
         """Walk over an object of columns, or a cost table."""
 
         def visit(field: str, start: int) -> int:
-            return self._column((*path, field), start, is_number=kinds.get(field))
+            return self._column((*path, field), start, kinds.get(field))
 
         return self._members(place, visit)
 
-    def _column(self, path: tuple[str | int, ...], place: int, *, is_number: bool | None) -> int:
+    def _column(self, path: tuple[str | int, ...], place: int, kind: FieldKind | None) -> int:
         """Cut out one array, if it is large, of a known kind, and free of doubt."""
         text = self._text
         end = value_end(text, place, within=self._large_bytes)
         if end is not None:
             return end
-        if is_number is None or text[place : place + 1] != b"[":
+        if kind is None or text[place : place + 1] != b"[":
             return self._end(place)
         start = skipped(text, place + 1)
-        if is_number and text[start : start + 1] == b"[":
+        if kind is FieldKind.NUMBER and text[start : start + 1] == b"[":
             grid = scan_grid(text, start + 1)
             if grid is not None:
                 return self._cut(path, place, grid[1], grid[0], filler=b"[[]]")
             return self._end(place)
         # Behind a string, a digit, or null.
+        scanned: Scanned | None = None
         close = closing_bracket(text, start, behind=b'"0123456789l')
-        scanned: ScannedNumbers | ScannedTexts | None = None
         if close >= 0 and text.find(b"\\", start, close) < 0:
-            if not is_number:
+            if kind is FieldKind.TEXT:
                 scanned = scan_texts(text, start, close)
+            elif kind is FieldKind.ID:
+                scanned = scan_ids(text, start, close)
             elif text.find(b'"', start, close) < 0:
                 scanned = scan_numbers(text, start, close)
             else:
@@ -177,7 +179,13 @@ class _Cutter:
         return self._cut(path, place, close + 1, scanned, filler=b"[]")
 
     def _cut(
-        self, path: tuple[str | int, ...], start: int, end: int, value: Scanned, *, filler: bytes
+        self,
+        path: tuple[str | int, ...],
+        start: int,
+        end: int,
+        value: Scanned | ScannedGrid | ScannedRows,
+        *,
+        filler: bytes,
     ) -> int:
         """Put ``filler`` in the place of a value."""
         self._pieces += (self._text[self._kept : start], filler)

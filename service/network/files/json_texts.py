@@ -48,7 +48,7 @@ class DistinctTexts:
         longest = int(lengths.max())
         if longest > TEXT_BYTES_MAX:
             return None
-        parts = _words(block.words, starts, lengths, longest)
+        parts = words_of_texts(block.words, starts, lengths, longest)
         hashes = _hashes(parts, lengths)
         found = self._found(parts, lengths, hashes)
         missed = np.flatnonzero(found < 0)
@@ -106,7 +106,7 @@ class DistinctTexts:
             return
         lengths = np.array([len(text) for text in new], dtype=np.int64)
         starts = np.cumsum(lengths) - lengths + LEAD
-        parts = _words(Block.of(b"".join(new)).words, starts, lengths, int(lengths.max()))
+        parts = words_of_texts(Block.of(b"".join(new)).words, starts, lengths, int(lengths.max()))
         hashes = _hashes(parts, lengths)
         grown = np.zeros((max(len(self._words), len(parts)), done + len(new)), dtype=np.uint64)
         grown[: len(self._words), :done] = self._words
@@ -120,7 +120,9 @@ class DistinctTexts:
             slots[places[free]] = codes[free]
 
 
-def _words(words: WordArray, starts: IntArray, lengths: IntArray, longest: int) -> list[WordArray]:
+def words_of_texts(
+    words: WordArray, starts: IntArray, lengths: IntArray, longest: int
+) -> list[WordArray]:
     """Return the words of each text, zero where it has ended."""
     parts = []
     even = int(lengths.min()) == longest

@@ -25,11 +25,18 @@ from service.network.files.json_tables import cut_tables
 from service.network.options import Options
 from service.network.quantities import RATE_DECIMALS_MAX, read_decimals
 from service.network.reading import read_network
-from service.network.scanned import ScannedNumbers
+from service.network.scanned import FieldKind, ScannedNumbers
 from service.network.table_fields import FLAT_FIELDS
 from tests.network_samples import sound
 
-KINDS = {"origin": False, "destination": False, "carrier": False, "unit_cost": True, "cap": True}
+KINDS = {
+    "origin": FieldKind.TEXT,
+    "destination": FieldKind.TEXT,
+    "carrier": FieldKind.TEXT,
+    "id": FieldKind.ID,
+    "unit_cost": FieldKind.NUMBER,
+    "cap": FieldKind.NUMBER,
+}
 STYLES: Sequence[dict[str, Any]] = (
     {"separators": (",", ":")},
     {},
@@ -193,8 +200,8 @@ def test_a_table_that_is_no_rectangle_is_left_to_the_exact_reader(text: str) -> 
 row = st.fixed_dictionaries(
     {},
     optional={
-        name: st.none() | st.sampled_from(NUMBERS if is_number else TEXTS)
-        for name, is_number in KINDS.items()
+        name: st.none() | st.sampled_from(NUMBERS if kind is FieldKind.NUMBER else TEXTS)
+        for name, kind in KINDS.items()
     },
 ).filter(bool)
 
