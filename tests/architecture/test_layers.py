@@ -1,8 +1,10 @@
 """Who may import whom: what pyproject.toml says is what is so, and what loading really loads."""
 
+import ast
 import subprocess
 import sys
 import tomllib
+from collections.abc import Iterable
 from pathlib import Path
 
 import pytest
@@ -56,6 +58,48 @@ def test_the_intake_child_loads_no_solver() -> None:
     loaded = loaded_by("from service.engine.child import KINDS\nKINDS['intake']()")
 
     assert loaded & {"ortools", "scipy"} == set()
+
+
+FILE_PACKAGES = {"pyarrow", "python_calamine", "xlsxwriter"}
+# Where files are read and written; everywhere else these packages are not even named.
+FILE_MODULES = ("service/network/files/", "service/doors/plan_", "service/doors/template_")
+
+
+def test_packages_for_files_are_loaded_where_a_file_is_read_or_written() -> None:
+    """They take half a second and 100 MB, which no child and no server without such a file pays.
+
+    A name for a type is no loading: it stands under TYPE_CHECKING.
+    """
+    elsewhere, at_once = [], []
+    for path in sorted((ROOT / "service").rglob("*.py")):
+        name = path.relative_to(ROOT).as_posix()
+        tree = ast.parse(path.read_text(encoding="utf-8"))
+        if FILE_PACKAGES & imported_by(ast.walk(tree)) and not name.startswith(FILE_MODULES):
+            elsewhere.append(name)
+        if FILE_PACKAGES & imported_by(tree.body):
+            at_once.append(name)
+
+    assert (elsewhere, at_once) == ([], [])
+
+
+def imported_by(nodes: Iterable[ast.AST]) -> set[str]:
+    """Return the top-level packages that some statements import."""
+    names: set[str] = set()
+    for node in nodes:
+        if isinstance(node, ast.Import):
+            names |= {alias.name.partition(".")[0] for alias in node.names}
+        elif isinstance(node, ast.ImportFrom) and node.module:
+            names.add(node.module.partition(".")[0])
+    return names
+
+
+def test_the_web_server_and_the_intake_load_no_package_for_files() -> None:
+    """The server never does, its children only for a body of that form."""
+    for code in (
+        "import service.doors.http.app, service.main",
+        "from service.engine.child import KINDS\nKINDS['intake']()",
+    ):
+        assert loaded_by(code) & FILE_PACKAGES == set()
 
 
 def test_the_proof_loads_with_numpy_alone() -> None:

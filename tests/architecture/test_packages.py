@@ -15,6 +15,7 @@ IMPORTED_AS = {
     "pydantic": {"pydantic", "pydantic_core"},
     "pydantic-settings": {"pydantic_settings"},
     "jsonschema-rs": {"jsonschema_rs"},
+    "python-calamine": {"python_calamine"},
     "python-stdnum": {"stdnum"},
 }
 # What is used without an import, and where.

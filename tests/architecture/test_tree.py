@@ -24,6 +24,7 @@ HOSTS = {
     "www.rfc-editor.org",
     "keepachangelog.com",
     "www.w3.org",
+    "schemas.openxmlformats.org",  # a name space of ECMA-376, nothing that is asked for
 }
 RESERVED = (".example", ".test", ".invalid", ".localhost", "example.com", "example.org")
 # Files of others that are stored as they came, with their own links.
