@@ -54,6 +54,8 @@ class Service:
                     for name in ("PATH", "HOME", "LANG")
                     if name in os.environ
                 },
+                # The service of this tree, whatever tree the environment was installed from.
+                "PYTHONPATH": str(ROOT),
                 "LANEWRIGHT_DATA": str(folder / "data"),
                 "LANEWRIGHT_LOG_LEVEL": "warning",
             },
