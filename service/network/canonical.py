@@ -28,6 +28,7 @@ from service.network.column_bytes import (
     texts_bytes,
     texts_column,
 )
+from service.network.column_making import no_decimals, no_texts
 from service.network.columns import (
     Decimals,
     DemandTable,
@@ -261,16 +262,12 @@ def _columns(
 def _absent_column(form: ColumnForm, rows: int) -> object:
     """Return a column in which every value is absent."""
     if form.kind == "decimal":
-        return Decimals(
-            values=np.zeros(rows, dtype=np.int64),
-            present=np.zeros(rows, dtype=np.bool_),
-            exponent=0,
-        )
+        return no_decimals(rows)
     if form.kind == "texts":
-        return Texts(codes=np.full(rows, -1, dtype=np.int32), values=())
+        return no_texts(rows)
     if form.kind == "text":
         return np.zeros(rows, dtype="S1")
-    return np.full(rows, 0 if form.kind == "small" else -1, dtype=np.int32)
+    return np.broadcast_to(np.int32(0 if form.kind == "small" else -1), rows)
 
 
 def _read_column(

@@ -16,19 +16,23 @@ _MULTIPLIER: Final = np.uint64(0x9E3779B97F4A7C15)
 
 
 def no_texts(rows: int) -> Texts:
-    """Return a column without any text."""
-    return Texts(codes=np.full(rows, ABSENT, dtype=np.int32), values=())
+    """Return a column without any text; it takes no memory, and cannot be written to."""
+    return Texts(codes=np.broadcast_to(np.int32(ABSENT), rows), values=())
 
 
 def no_decimals(rows: int) -> Decimals:
-    """Return a column without any number."""
+    """Return a column without any number; it takes no memory, and cannot be written to."""
     return Decimals(
-        values=np.zeros(rows, dtype=np.int64), present=np.zeros(rows, dtype=np.bool_), exponent=0
+        values=np.broadcast_to(np.int64(0), rows),
+        present=np.broadcast_to(np.bool_(False), rows),  # noqa: FBT003 - a value, not a switch
+        exponent=0,
     )
 
 
 def without(column: Decimals, rows: BoolArray) -> Decimals:
     """Return a column in which ``rows`` have no number."""
+    if not rows.any():
+        return column
     values = np.where(rows, 0, column.values)
     return least_exponent(values, column.present & ~rows, column.exponent)
 
@@ -82,7 +86,8 @@ def texts_column(
 
 def used_only(column: Texts) -> Texts:
     """Return a column of texts without the values that no row has."""
-    if not column.values:
+    one_for_all = len(column.values) == 1 and column.codes.strides == (0,)
+    if not column.values or (one_for_all and len(column.codes) > 0 and column.codes[0] == 0):
         return column
     used = np.zeros(len(column.values) + 1, dtype=np.bool_)
     used[column.codes] = True

@@ -43,7 +43,12 @@ def rows_of(table: _Table, rows: IntArray) -> _Table:
 
 def _texts_of(column: Texts, rows: IntArray) -> Texts:
     """Return ``rows`` of a column of texts."""
-    return replace(column, codes=column.codes[rows]) if column.values else no_texts(len(rows))
+    if not column.values:
+        return no_texts(len(rows))
+    if column.codes.strides == (0,):
+        # One text in all rows.
+        return replace(column, codes=np.broadcast_to(column.codes[0], len(rows)))
+    return replace(column, codes=column.codes[rows])
 
 
 def _decimals_of(column: Decimals, rows: IntArray) -> Decimals:
@@ -115,6 +120,8 @@ def with_units(unit: Texts, item: CodeArray, items: Sequence[Item]) -> Texts:
 
 def with_measure(measure: Texts) -> Texts:
     """Return the measures of lanes; a lane that names none is measured in units."""
+    if not measure.values:
+        return Texts(codes=np.broadcast_to(np.int32(0), len(measure.codes)), values=("unit",))
     values = tuple(sorted({*measure.values, "unit"}))
     code = {text: number for number, text in enumerate(values)}
     of_text = np.array([*(code[text] for text in measure.values), code["unit"]], dtype=np.int32)
