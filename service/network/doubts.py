@@ -158,6 +158,10 @@ def _far_above(rates: IntArray) -> IntArray:
     """Return where rates of one carrier and measure are far above their median."""
     if len(rates) < LANES_FOR_A_MEDIAN:
         return np.zeros(0, dtype=np.int64)
+    least, most = int(rates.min()), int(rates.max())
+    if least > 0 and most < least * RATE_OUT_OF_LINE:
+        # The median lies between the two.
+        return np.zeros(0, dtype=np.int64)
     middle = (len(rates) - 1) // 2
-    median = np.partition(rates, middle)[middle]
-    return np.flatnonzero((rates // RATE_OUT_OF_LINE >= median) & (median > 0))
+    limit = int(np.partition(rates, middle)[middle]) * RATE_OUT_OF_LINE
+    return np.flatnonzero(rates >= limit) if 0 < limit <= most else np.zeros(0, dtype=np.int64)

@@ -4,7 +4,8 @@ A thing that is faulty but has an id of its own stays known, as UNSURE: what ref
 blamed for it.
 """
 
-from collections.abc import Callable, Mapping, Sequence
+import itertools
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, TypeVar
@@ -12,10 +13,11 @@ from typing import Any, TypeVar
 import numpy as np
 
 from service.network.columns import BoolArray, Item, Pack, Site
-from service.network.definition import ItemPart, Part, SitePart, validated
+from service.network.definition import ItemPart, SitePart, validated
 from service.network.faults import FaultList, pointer
 from service.network.table_reading import UNSURE
 from service.network.units import MEASURES
+from service.network.value_schemas import ROLES
 from service.network.wording import is_id
 
 
@@ -38,8 +40,8 @@ class Things:
 
 def read_things(items: object, sites: object, faults: FaultList) -> Things | None:
     """Read both lists; None where one of them is no list, so that nothing can refer to it."""
-    read_items = _read_list("items", items, ItemPart, _item, faults)
-    read_sites = _read_list("sites", sites, SitePart, _site, faults)
+    read_items = _read_list("items", items, _read_item, faults)
+    read_sites = _read_list("sites", sites, _read_site, faults)
     if read_items is None or read_sites is None:
         return None
     item_positions, sound_items, _ = read_items
@@ -65,8 +67,7 @@ _Thing = TypeVar("_Thing", Item, Site)
 def _read_list(
     name: str,
     values: object,
-    part: type[Part],
-    build: Callable[[Any, tuple[str | int, ...], FaultList], _Thing | None],
+    read: Callable[[object, tuple[str | int, ...], FaultList], _Thing | None],
     faults: FaultList,
 ) -> tuple[dict[str, int], list[_Thing], list[int]] | None:
     """Return positions by id, sound things sorted by id, and where each of them was sent."""
@@ -76,8 +77,7 @@ def _read_list(
     positions: dict[str, int] = {}
     sound: dict[str, tuple[int, _Thing]] = {}
     for place, value in enumerate(values):
-        model = validated(part, value, path=(name, place), table=name, faults=faults)
-        thing = None if model is None else build(model, (name, place), faults)
+        thing = read(value, (name, place), faults)
         identifier = value.get("id") if isinstance(value, dict) else None
         # A thing that was read has an id for sure.
         if type(identifier) is not str or (thing is None and not is_id(identifier)):
@@ -91,6 +91,21 @@ def _read_list(
     order = sorted(sound, key=str.encode)
     positions |= {identifier: number for number, identifier in enumerate(order)}
     return positions, [sound[name][1] for name in order], [sound[name][0] for name in order]
+
+
+def _read_item(value: object, path: tuple[str | int, ...], faults: FaultList) -> Item | None:
+    """Read one item."""
+    part = validated(ItemPart, value, path=path, table="items", faults=faults)
+    return None if part is None else _item(part, path, faults)
+
+
+def _read_site(value: object, path: tuple[str | int, ...], faults: FaultList) -> Site | None:
+    """Read one site."""
+    plain = _plain_site(value)
+    if plain is not None:
+        return plain
+    part = validated(SitePart, value, path=path, table="sites", faults=faults)
+    return None if part is None else _site(part)
 
 
 def _item(part: ItemPart, path: tuple[str | int, ...], faults: FaultList) -> Item | None:
@@ -127,7 +142,7 @@ def _item(part: ItemPart, path: tuple[str | int, ...], faults: FaultList) -> Ite
     )
 
 
-def _site(part: SitePart, _path: Sequence[str | int], _faults: FaultList) -> Site:
+def _site(part: SitePart) -> Site:
     """Return a site."""
     handling = dict(part.handling_cost) if part.handling_cost else {}
     return Site(
@@ -144,6 +159,35 @@ def _site(part: SitePart, _path: Sequence[str | int], _faults: FaultList) -> Sit
         tags=part.tags or (),
         extra=_sorted(part.extra),
     )
+
+
+_ROLES_IN_ANY_ORDER = {
+    roles: frozenset(roles)
+    for count in range(1, len(ROLES) + 1)
+    for roles in itertools.permutations(ROLES, count)
+}
+
+
+def _plain_site(value: object) -> Site | None:
+    """Return a site that says no more than its id and roles, as most of many sites do."""
+    if type(value) is not dict or value.keys() != {"id", "roles"}:
+        return None
+    identifier, roles = value["id"], value["roles"]
+    if type(identifier) is not str or type(roles) is not list or not is_id(identifier):
+        return None
+    if not all(type(role) is str for role in roles):
+        return None
+    known = _ROLES_IN_ANY_ORDER.get(tuple(roles))
+    return None if known is None else Site(id=identifier, roles=known, **_NOTHING_MORE)
+
+
+_NOTHING_MORE: Mapping[str, Any] = {
+    **dict.fromkeys(("name", "gln", "latitude", "longitude", "time_zone", "country")),
+    "handling_cost_any": None,
+    "handling_cost": {},
+    "tags": (),
+    "extra": {},
+}
 
 
 _Value = TypeVar("_Value", str, Fraction)

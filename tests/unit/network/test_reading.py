@@ -329,3 +329,33 @@ def test_a_missing_column_is_one_fault_even_if_bad_rows_are_set_aside(tmp_path: 
     report = check(document, tmp_path, Options(bad_rows="set_aside"))
 
     assert found(report) == [("/demand/item", "missing_field")]
+
+
+@pytest.mark.parametrize(
+    "roles",
+    [
+        ["warehouse"],
+        ["ship_to", "cross_dock"],
+        ["warehouse", "cross_dock", "ship_to"],
+        ["ship_to", "ship_to"],
+        ["depot"],
+        [],
+        [1],
+        [["warehouse"]],
+        "warehouse",
+        None,
+    ],
+)
+@pytest.mark.parametrize("identifier", ["S", "", "x" * 65, "a\tb", "DEP-NORTH", 5, None])
+def test_a_site_that_says_little_is_read_as_any_other(
+    roles: object, identifier: object, tmp_path: Path
+) -> None:
+    """Sites with nothing but id and roles are many, and read on a way of their own."""
+    reports = []
+    for number, more in enumerate(({}, {"name": None})):
+        document = sound()
+        document["sites"].append({"id": identifier, "roles": roles, **more})
+        report = check(document, tmp_path / str(number))
+        reports.append((report.faults, report.summary and report.summary["network_digest"]))
+
+    assert reports[0] == reports[1]
