@@ -16,8 +16,8 @@ from service.planning.scarcity_prices import FloatArray
 from service.planning.sieve import Sieve, fits
 from service.planning.sifting import RoundSeen, Sifted, sift
 
-# Below these the full solve is as fast: it takes 15 ms for so many lanes, and where only few lanes
-# end in a place the shortlist is most of the network (measured; DEVELOPERS.md, "Sifting").
+# Below these the full solve is about as fast: it takes some 15 ms for so many lanes, and where only
+# few lanes end in a place the shortlist is most of the network. A judgement (decision 27).
 LANES_MIN = 20_000
 LANES_PER_END_MIN = 15
 
