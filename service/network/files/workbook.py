@@ -111,8 +111,10 @@ def _parts(path: Path) -> Mapping[str, str]:
     return found
 
 
-def _reaching(rows: Sequence[Row], odd: OddCells) -> list[list[object]]:
+def _reaching(rows: Sequence[Row], odd: OddCells) -> Sequence[Row]:
     """Return rows that reach as far as the odd cells, which the reader takes for empty."""
+    if not odd:
+        return rows
     height = max([len(rows), *(row + 1 for row, _ in odd)])
     width = max([len(rows[0]) if rows else 0, *(column + 1 for _, column in odd)])
     reaching = [[*row] + [""] * (width - len(row)) for row in rows]
@@ -126,7 +128,7 @@ def _grid(table: str, name: str, rows: Sequence[Row], odd: OddCells, faults: Fau
     kept = [
         number
         for number, row in enumerate(rows)
-        if number and (number in filled or any(cell != "" for cell in row))
+        if number and (number in filled or row.count("") < len(row))
     ]
     grid = Grid(
         table=table,
@@ -175,13 +177,19 @@ def _cells(  # noqa: PLR0913, PLR0917 - a column of a sheet and what is known of
     faults: FaultList,
 ) -> Cells:
     """Return a column of a sheet as texts and exact numbers."""
+    if not strange and set(map(type, cells)) == {str}:
+        return Cells(values=[cell or None for cell in cells])
     values: list[object] = []
     odd = dict(strange)
     from_numbers: list[int] = []
     zero_in_front = False
     for row, (cell, kind) in enumerate(zip(cells, kinds, strict=True)):
         value: object
-        if isinstance(cell, str):
+        if type(cell) is float and kind is Kind.NUMBER and len(repr(cell)) <= DIGITS_EXACT + 1:
+            # Plain digits, a point, and so at most 15 of them: the usual number.
+            digits = repr(cell).removesuffix(".0")
+            value = Number(digits) if "e" not in digits else _value(cell, kind)
+        elif isinstance(cell, str):
             value = cell or None
             zero_in_front = zero_in_front or _ZERO_IN_FRONT.fullmatch(cell) is not None
         else:
