@@ -66,7 +66,7 @@ FILE_MODULES = ("service/network/files/", "service/doors/plan_", "service/doors/
 
 
 def test_packages_for_files_are_loaded_where_a_file_is_read_or_written() -> None:
-    """They take half a second and 100 MB, which no child and no server without such a file pays.
+    """They take 50 MB (measured), which no server and no child without such a file shall hold.
 
     A name for a type is no loading: it stands under TYPE_CHECKING.
     """
