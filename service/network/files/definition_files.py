@@ -23,6 +23,7 @@ from service.network.files.small_tables import head_of, pack_rows, rules_of_grid
 from service.network.files.table_columns import WANTED
 from service.network.files.workbook import read_workbook
 from service.network.files.zips import Allowance, HostileZipError, TooLargeError
+from service.network.table_fields import FLAT_FIELDS
 
 _BIG: Final = ("supply", "demand", "lanes")
 _ORDER: Final = ("items", "sites", "supply", "demand", "lanes", "rules", "control")
@@ -118,7 +119,7 @@ def _definition(
 
     A table that has a file of its own must not stand there too.
     """
-    found = read_json(file.path.read_bytes(), nesting_max=nesting_max)
+    found = read_json(file.path.read_bytes(), nesting_max=nesting_max, tables=FLAT_FIELDS)
     for fault in (*found.unreadable, *found.invalid):
         place = f"{file.source}!{fault.pointer}" if fault.pointer else file.source
         faults.add(place, fault.code, fault.detail, fault.value)
@@ -155,6 +156,7 @@ def _put_together(
         grid = grids[name]
         if name in _BIG:
             parts[name] = sheet_of_grid(grid, faults)
+            grids[name] = grid.without_cells()
         elif name == "rules":
             parts[name] = rules_of_grid(grid, faults)
         elif name == "control":

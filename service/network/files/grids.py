@@ -1,13 +1,14 @@
 """A table as a file or a sheet holds it: named columns, and the row in which each value stands."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Final
 
 from service.network.columns import IntArray
 from service.network.faults import FaultList, Odd
 from service.network.files.table_columns import PAIR_COLUMNS, Kind, field_of
 
+FAMILY_OF_PAIRS: Final = "extra."
 # A report shows so many places of one kind of fault and counts the others.
 SHOWN_MAX: Final = 100
 
@@ -60,6 +61,20 @@ class Grid:
             return self.source if column is None else f"{self.source}!column {column}"
         place = f"{self.source}!row {self.number(row)}"
         return place if column is None else f"{place},{column}"
+
+    def without_cells(self) -> "Grid":
+        """Return what places need of a grid whose cells went elsewhere: its header and rows.
+
+        The few columns of a family that make up one field keep theirs, to tell which is wrong.
+        """
+        nothing = Cells(values=())
+        return replace(
+            self,
+            columns={
+                name: cells if name.startswith(FAMILY_OF_PAIRS) else nothing
+                for name, cells in self.columns.items()
+            },
+        )
 
     def kind(self, column: str) -> Kind | None:
         """Return what the cells of a column are, None where the table has no such column."""
