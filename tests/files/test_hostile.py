@@ -14,7 +14,7 @@ import pytest
 import zstandard
 
 from service.network.faults import Status
-from service.network.files import workbook_guard, zips
+from service.network.files import arrow_tables, workbook_guard, zips
 from service.network.files.media_types import XLSX, ZIP
 from service.network.intake import IntakeReport, Limits
 from tests.files.reading import files, places, read
@@ -46,6 +46,20 @@ def test_what_unpacks_to_too_much_is_cut_off(bomb: Callable[[], dict[str, bytes]
     assert len(body) < MEBIBYTE // 100
 
     assert refused(read(body, limits=SMALL)) == (Status.TOO_LARGE, "body_too_large")
+
+
+def test_equal_rows_without_end_are_refused_by_their_number(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """Some 200 bytes of Parquet stand for a million rows; the file says how many before any."""
+    monkeypatch.setattr(arrow_tables, "ROWS_MAX", 999_999)
+    table = pa.table({"origin": pa.array(["NORTH"] * 1_000_000).dictionary_encode()})
+
+    for form, write in (("parquet", parquet_bytes), ("arrow", arrow_bytes)):
+        report = read(files(lanes=None) | {f"lanes.{form}": write(table)})
+
+        assert refused(report) == (Status.TOO_LARGE, "body_too_large")
+        assert "1000000 rows" in report.faults[0].detail
 
 
 def test_a_workbook_that_unpacks_to_too_much_is_cut_off() -> None:

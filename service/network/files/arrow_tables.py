@@ -23,12 +23,13 @@ from service.network.files.grids import Cells, Grid
 from service.network.files.headers import headed, untransposed
 from service.network.files.package import TableFile
 from service.network.files.table_columns import Kind
-from service.network.files.zips import HostileZipError
-from service.network.sheets import ROWS_MAX
+from service.network.files.zips import HostileZipError, TooLargeError
 
 if TYPE_CHECKING:
     import pyarrow as pa
 
+# A few bytes can stand for any number of equal rows; more than this fit in no memory of a check.
+ROWS_MAX: Final = 1 << 27
 # What a column of another type is refused with, by what it holds.
 _REFUSALS: Final = {
     Kind.NUMBER: "numbers; its type is {0}. Write decimal128, whole numbers, or text.",
@@ -56,15 +57,14 @@ def read_arrow(file: TableFile, faults: FaultList) -> Grid:
         table = _parquet(file.path) if file.form == "parquet" else _arrow(file.path)
         # What the file says of its own buffers may be a lie; nothing is looked at before this.
         table.validate(full=True)
-    except MemoryError:
+    except (MemoryError, TooLargeError):
         raise
     except (pa.ArrowException, OSError, ValueError) as error:
         form = "Parquet" if file.form == "parquet" else "Arrow (IPC) file"
         detail = f"{file.source} is no whole {form}: {str(error).splitlines()[0][:120]}"
         raise HostileZipError("broken_table", detail) from error
     grid = Grid(table=file.table, source=file.source, rows=table.num_rows, columns={}, first=1)
-    if grid.rows > ROWS_MAX:
-        raise HostileZipError("too_many_rows", f"{file.source} has {grid.rows} rows.")
+    _judge_rows(grid.rows)
     names = [str(name) for name in table.column_names]
     raw = headed(grid, names, [Cells(values=()) for _ in names], faults)
     columns: dict[str, Cells] = {}
@@ -81,6 +81,12 @@ def read_arrow(file: TableFile, faults: FaultList) -> Grid:
     return untransposed(replace(raw, columns=columns, refused=frozenset(refused)), faults)
 
 
+def _judge_rows(rows: int) -> None:
+    """Refuse a table of more rows than are read."""
+    if rows > ROWS_MAX:
+        raise TooLargeError(f"A table has {rows} rows; at most {ROWS_MAX} are read.")
+
+
 def _parquet(path: Path) -> "pa.Table":
     """Read the columns of a Parquet file, texts by their distinct values."""
     import pyarrow as pa  # noqa: PLC0415 - see the caller
@@ -88,8 +94,7 @@ def _parquet(path: Path) -> "pa.Table":
 
     with pq.ParquetFile(path, memory_map=True) as file:
         schema = file.schema_arrow
-        if file.metadata.num_rows > ROWS_MAX:
-            raise ValueError("more rows than can be counted")
+        _judge_rows(file.metadata.num_rows)
     texts = [field.name for field in schema if is_text(field.type)]
     with pq.ParquetFile(path, memory_map=True, read_dictionary=texts) as file:
         table = file.read(use_threads=False)

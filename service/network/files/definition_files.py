@@ -61,8 +61,8 @@ def read_files(
     except HostileZipError as error:
         fault = Fault(pointer="", code=error.code, detail=error.detail)
         return FilesRead(document=None, places=Places(), faults=faults, unreadable=fault)
-    except TooLargeError:
-        detail = f"The files have more than {bytes_max} bytes when unpacked."
+    except TooLargeError as error:
+        detail = str(error) or f"The files have more than {bytes_max} bytes when unpacked."
         fault = Fault(pointer="", code="body_too_large", detail=detail)
         return FilesRead(
             document=None, places=Places(), faults=faults, unreadable=fault, too_large=True

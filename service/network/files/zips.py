@@ -36,7 +36,7 @@ class HostileZipError(ValueError):
 
 
 class TooLargeError(ValueError):
-    """More bytes came out than may be unpacked in all."""
+    """More came out than may be unpacked in all; the text says how much, if not the bytes."""
 
 
 @dataclass(slots=True)
