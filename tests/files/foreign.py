@@ -184,32 +184,39 @@ def openpyxl_workbook() -> bytes:
 
 def libreoffice_workbook() -> bytes:
     """Return the workbook of openpyxl as LibreOffice saves it."""
-    return _converted(openpyxl_workbook(), "network.xlsx", "xlsx:Calc MS Excel 2007 XML")
+    return resaved(openpyxl_workbook())
 
 
 def libreoffice_csv() -> bytes:
     """Return every sheet as LibreOffice saves it as CSV: semicolons, texts in quotes."""
+    sheets = sheets_as_csv(openpyxl_workbook())
+    return zipped({f"{name}.csv": data for name, data in sheets.items()})
+
+
+def resaved(workbook: bytes) -> bytes:
+    """Return a workbook as LibreOffice saves it."""
+    program = office()
+    with tempfile.TemporaryDirectory() as folder:
+        source, target = Path(folder) / "network.xlsx", Path(folder) / "out"
+        source.write_bytes(workbook)
+        _convert(program, source, "xlsx:Calc MS Excel 2007 XML", target)
+        return (target / source.name).read_bytes()
+
+
+def sheets_as_csv(workbook: bytes) -> dict[str, bytes]:
+    """Return every sheet of a workbook as LibreOffice saves it as CSV."""
     program = office()
     with tempfile.TemporaryDirectory() as folder:
         source = Path(folder) / "network.xlsx"
-        source.write_bytes(openpyxl_workbook())
+        source.write_bytes(workbook)
         # 59: semicolon; 34: quotes; 76: UTF-8; then quoted texts, cells as they are shown: no; -1:
         # every sheet into a file of its own.
         form = "csv:Text - txt - csv (StarCalc):59,34,76,1,,0,true,true,false,false,false,-1"
         _convert(program, source, form, Path(folder))
-        return zipped(
-            {f"{name}.csv": (Path(folder) / f"network-{name}.csv").read_bytes() for name in TABLES}
-        )
-
-
-def _converted(content: bytes, name: str, form: str) -> bytes:
-    """Return a file as LibreOffice saves it in another form."""
-    program = office()
-    with tempfile.TemporaryDirectory() as folder:
-        source, target = Path(folder) / name, Path(folder) / "out"
-        source.write_bytes(content)
-        _convert(program, source, form, target)
-        return (target / name).read_bytes()
+        return {
+            path.stem.removeprefix("network-"): path.read_bytes()
+            for path in Path(folder).glob("network-*.csv")
+        }
 
 
 def _convert(program: str, source: Path, form: str, target: Path) -> None:

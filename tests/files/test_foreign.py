@@ -4,16 +4,22 @@ With ``--long`` the programs that are installed here write them again; a program
 fails its test with what to install.
 """
 
+import csv
 import io
 import json
 import zipfile
+from pathlib import Path
 from typing import Any
 
+import orjson
 import pandas as pd
 import pytest
 
+from service.doors.plan_tables import COLUMNS
+from service.doors.plan_workbook import write_workbook
+from service.doors.template_workbook import write_template
 from service.network.files.media_types import JSON, XLSX, ZIP
-from tests.files.foreign import DATA, FOREIGN, frames
+from tests.files.foreign import DATA, FOREIGN, frames, resaved, sheets_as_csv
 from tests.files.reading import cautions, digest, places, read
 from tests.files.writing import zipped
 
@@ -99,6 +105,7 @@ DEFINITION: dict[str, Any] = {
         },
     ],
 }
+EXAMPLE = Path(__file__).parents[2] / "openapi" / "examples" / "plan.json"
 EXPECTED = read(json.dumps(DEFINITION).encode(), JSON)
 
 
@@ -123,6 +130,35 @@ def test_programs_that_are_installed_are_read(name: str) -> None:
     form, write = FOREIGN[name]
 
     assert_same(write(), form)
+
+
+@pytest.mark.long
+def test_the_template_survives_a_spreadsheet_program(tmp_path: Path) -> None:
+    """Opened and saved by LibreOffice, it is the same network: zeros in front are still there."""
+    path = tmp_path / "network.xlsx"
+    write_template(path)
+
+    saved = read(resaved(path.read_bytes()), XLSX)
+
+    assert digest(saved) == digest(read(path.read_bytes(), XLSX))
+    assert cautions(saved) == {}
+
+
+@pytest.mark.long
+def test_a_spreadsheet_program_reads_our_plan(tmp_path: Path) -> None:
+    """Every amount and text of a plan as LibreOffice sees it, what looks like a formula too."""
+    plan = orjson.loads(EXAMPLE.read_bytes())
+    plan["plan_lines"][0] |= {"lane": "=1+1", "quantity": "1234567890123456789.25", "cost": "1/3"}
+    path = tmp_path / "plan.xlsx"
+    write_workbook(plan, path)
+
+    sheets = sheets_as_csv(path.read_bytes())
+
+    assert set(sheets) == {"summary", *COLUMNS}
+    lines = csv.DictReader(io.StringIO(sheets["plan_lines"].decode(), newline=""), delimiter=";")
+    assert [{name: row[name] for name in COLUMNS["plan_lines"]} for row in lines] == plan[
+        "plan_lines"
+    ]
 
 
 def test_every_committed_file_is_read() -> None:
