@@ -241,16 +241,17 @@ def test_the_service_answers_what_the_readme_asks(stored: tuple[Path, str, str])
     (folder / "network.json").write_text(lanewright(folder, "demo", "--json").stdout)
     readme = (ROOT / "README.md").read_text(encoding="utf-8")
     lines = re.findall(r"^\$ (curl .+)$", readme, flags=re.MULTILINE)
-    assert len(lines) == 7
+    assert len(lines) == 8
 
     with served(folder) as address:
         answers = [curl(line, folder, address, run_id) for line in lines]
         docs = curl(f"curl {address}/docs", folder, address, run_id)
 
-    assert [status for status, _ in answers] == [202, 200, 200, 200, 200, 200, 200]
+    assert [status for status, _ in answers] == [202, 200, 200, 200, 200, 200, 200, 200]
     assert json.loads(answers[1][1])["state"] == "planned"
     assert json.loads(answers[2][1])["status"] == "planned"
     assert answers[3][1].startswith(b"reference,site,item,priority")
+    assert (folder / "template.xlsx").read_bytes()[:2] == b"PK"
     assert (folder / "evidence.zip").read_bytes()[:2] == b"PK"
     assert docs[0] == 200
 
