@@ -105,8 +105,11 @@ def _differs(column: "pa.ChunkedArray", other: "pa.ChunkedArray") -> IntArray:
 
 
 def _texts(column: "pa.ChunkedArray", rows: IntArray) -> dict[int, str]:
-    """Return the digits of a few values, for a report."""
-    return {row: format(column[row].as_py(), "f") for row in rows.tolist()}
+    """Return the digits of a few values, for a report; zeros that the type adds were not sent."""
+    texts = {row: format(column[row].as_py(), "f") for row in rows.tolist()}
+    return {
+        row: text.rstrip("0").rstrip(".") if "." in text else text for row, text in texts.items()
+    }
 
 
 def _numbers(
