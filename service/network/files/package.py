@@ -4,17 +4,22 @@ A folder that is given to the command line comes as a zip too, so that there is 
 """
 
 import zipfile
-import zlib
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Final
+from typing import BinaryIO, Final
 
 from service.network.faults import FaultList
 from service.network.files.places import DEFINITION_FILE
 from service.network.files.table_columns import TABLES
 from service.network.files.unpack import BrokenPackingError, unpacked_pieces
-from service.network.files.zips import Allowance, HostileZipError, contents, opened
+from service.network.files.zips import (
+    BROKEN,
+    Allowance,
+    HostileZipError,
+    contents,
+    opened,
+)
 
 FORMS: Final[Mapping[str, str]] = {".csv": "csv", ".parquet": "parquet", ".arrow": "arrow"}
 PACKINGS: Final[Mapping[str, str]] = {".gz": "gzip", ".zst": "zstd"}
@@ -116,14 +121,23 @@ def _unpack(
 ) -> None:
     """Write an entry's bytes, unpacked once more where its name says so."""
     with contents(archive, entry) as source, target.open("wb") as file:
+        for piece in _pieces(source, entry, packing):
+            allowance.take(len(piece))
+            file.write(piece)
+
+
+def _pieces(source: BinaryIO, entry: str, packing: str) -> Iterator[bytes]:
+    """Yield an entry's bytes; what goes wrong here is in the zip, and not on our disk."""
+    unpacked = unpacked_pieces(source, packing)
+    while True:
         try:
-            for piece in unpacked_pieces(source, packing):
-                allowance.take(len(piece))
-                file.write(piece)
+            piece = next(unpacked, None)
         except BrokenPackingError as error:
             detail = f"{entry[:80]} is not whole {packing}: it is damaged or ends too early."
             raise HostileZipError("broken_encoding", detail) from error
-        except (zipfile.BadZipFile, zlib.error, EOFError) as error:
-            raise HostileZipError(
-                "broken_zip", f"The entry {entry[:80]!r} of the zip is damaged."
-            ) from error
+        except BROKEN as error:
+            detail = f"The entry {entry[:80]!r} of the zip is damaged."
+            raise HostileZipError("broken_zip", detail) from error
+        if piece is None:
+            return
+        yield piece

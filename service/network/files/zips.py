@@ -22,6 +22,18 @@ _ZIP64_MARK: Final = b"PK\x06\x07"
 _ZIP64_LOCATOR_BYTES: Final = 20
 _COMMENT_BYTES_MAX: Final = (1 << 16) - 1
 _ENCRYPTED: Final = 0x1
+# All that Python's reader was seen to raise for a zip that is damaged: a place before the beginning
+# of the file is an OSError, a name that is no text a ValueError.
+BROKEN: Final = (
+    zipfile.BadZipFile,
+    zlib.error,
+    struct.error,
+    EOFError,
+    NotImplementedError,
+    OSError,
+    RuntimeError,
+    ValueError,
+)
 _METHODS: Final = frozenset({zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED})
 
 
@@ -60,7 +72,7 @@ def opened(path: Path) -> zipfile.ZipFile:
     _judge_directory(path)
     try:
         archive = zipfile.ZipFile(path)
-    except (zipfile.BadZipFile, ValueError, NotImplementedError, EOFError) as error:
+    except BROKEN as error:
         raise HostileZipError("not_zip", "This is not a whole zip file.") from error
     entries = archive.infolist()
     _judge_entries(entries)
@@ -71,7 +83,7 @@ def contents(archive: zipfile.ZipFile, name: str) -> "BinaryIO":
     """Open an entry for reading; raise ``HostileZipError`` where its own header is broken."""
     try:
         return archive.open(name)  # type: ignore[return-value] # IO of bytes
-    except (zipfile.BadZipFile, NotImplementedError, RuntimeError, EOFError) as error:
+    except BROKEN as error:
         raise _broken(name) from error
 
 
@@ -81,7 +93,7 @@ def pieces(archive: zipfile.ZipFile, name: str, allowance: Allowance) -> Iterato
         while True:
             try:
                 piece = source.read(PIECE_BYTES)
-            except (zipfile.BadZipFile, zlib.error, EOFError) as error:
+            except BROKEN as error:
                 raise _broken(name) from error
             if not piece:
                 return
