@@ -52,6 +52,12 @@ class Estimator:
                 break
         return price
 
+    def warm(self, start: FloatArray) -> FloatArray:
+        """Return prices of the stock from those by place; unknown stock is as if it were plenty."""
+        known = start[self.stock]
+        price: FloatArray = np.where(np.isfinite(known), known, self.offers.cost[:, 0])
+        return price
+
     def fine(self, price: FloatArray, *, warm: bool) -> tuple[FloatArray, Nearest] | None:
         """Return better prices, by all places, and the nearest lanes (by the given prices).
 

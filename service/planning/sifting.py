@@ -55,11 +55,11 @@ def sift(
 ) -> Sifted | None:
     """Return an optimum over all lanes of ``sieve``, None where the full solve must decide.
 
-    ``start`` are prices of the stock (in the order of ``Places.offers``) from a former run; they
-    decide where the search starts, and are dropped if they are no use.
+    ``start`` are prices of a former run by place, NaN where unknown; they decide where the search
+    starts, and are dropped if they are no use.
     """
     estimator = Estimator(sieve.blocks, sieve.places, sieve.capacity)
-    found = None if start is None else estimator.fine(start, warm=True)
+    found = None if start is None else estimator.fine(estimator.warm(start), warm=True)
     if found is None:
         found = estimator.fine(estimator.cold(), warm=False)
     assert found is not None  # noqa: S101 - only warm prices can be refused

@@ -12,24 +12,29 @@ from service.network.columns import Network
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE
 from service.network.options import Options
 from service.planning.amounts import Document
+from service.planning.arcs import MoneyArray
 from service.planning.certificate import (
     contradiction_certificate,
     proved_certificate,
 )
 from service.planning.compile import Compiled, compile_network
+from service.planning.contraction import Contraction
 from service.planning.contradictions import contradiction_reason
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError, NumbersTooLargeError
 from service.planning.outcome import (
     CERTIFICATE_FILE,
     PLAN_FILE,
+    WARM_START_FILE,
     FailureReason,
     Outcome,
     State,
 )
 from service.planning.plan import Setting, planned, unplanned
 from service.planning.priorities import achieved
+from service.planning.routes import Route, SiftedRoute, chosen_route
 from service.planning.solve import ItemFlow, solve_item
+from service.planning.warm_start import WarmStart, left_by
 from service.proof.check import Violation, check
 
 Progress = Callable[[str, Mapping[str, int]], None]
@@ -53,7 +58,9 @@ def plan(
 
     ``input_folder`` holds ``network.zip`` and ``intake.json`` as the intake wrote them. What is
     neither an answer nor a number out of range is our mistake and passes on as its exception.
-    ``prove`` looks at both documents as they were written; what it objects to is never a plan.
+    A warm start in ``input_folder`` is taken up, and one is left for the next run where it may
+    help; neither shows in a plan. ``prove`` looks at both documents as they were written; what it
+    objects to is never a plan.
     """
     clock = _Clock(progress)
     network = read_network(input_folder / NETWORK_FILE)
@@ -69,7 +76,8 @@ def plan(
         compiled = compile_network(network, options)
         arcs = sum(len(own.arcs) for own in compiled.items)
         clock.phase("compiled", items=len(compiled.items), arcs=arcs)
-        solved, cuts = _solve(compiled)
+        search = _Search(compiled, WarmStart.read(input_folder / WARM_START_FILE), progress)
+        solved, cuts = _solve(compiled, search)
     except NumbersTooLargeError as error:
         return clock.outcome("failed", FailureReason.NUMBERS_TOO_LARGE, str(error))
     clock.phase("solved", items=len(solved))
@@ -91,18 +99,60 @@ def plan(
     clock.phase("proved", violations=len(found))
     if found:
         return clock.outcome("failed", FailureReason.PROOF_FAILED, _in_words(found))
+    if search.sifted:
+        left_by(network, search.sifted, cost_scale=compiled.cost_scale).write(
+            output_folder / WARM_START_FILE
+        )
     return clock.outcome("no_plan" if cuts else "planned", None, None)
 
 
+class _Search:
+    """Chooses the routes of all items, from where the former run ended, and tells the rounds."""
+
+    def __init__(self, compiled: Compiled, former: WarmStart, progress: Progress | None) -> None:
+        """Start from ``former``."""
+        self._compiled, self._former, self._progress = compiled, former, progress
+        self._rounds, self._took_shortlists = 0, False
+        self.sifted: list[ItemFlow] = []
+
+    def flow(self, own: ItemNetwork) -> ItemFlow:
+        """Return the plan of one item; raises what ``solve_item`` raises."""
+        self._took_shortlists = False
+        found = solve_item(self._compiled.network, own, front=self._front)
+        if self._took_shortlists:
+            self.sifted.append(found)
+        return found
+
+    def _front(self, own: ItemNetwork, contraction: Contraction, weighted: MoneyArray) -> Route:
+        compiled = self._compiled
+        start = self._former.by_place(
+            compiled.network, own, contraction, weighted, cost_scale=compiled.cost_scale
+        )
+
+        def seen(number: int, listed: int, better: int) -> None:
+            del number, better  # Rounds are counted over all items, and all lanes are priced.
+            self._tell(listed=listed, priced=own.lanes.rows.shape[0])
+
+        route = chosen_route(own, contraction, weighted, start=start, seen=seen)
+        self._took_shortlists = isinstance(route, SiftedRoute)
+        return route
+
+    def _tell(self, *, listed: int, priced: int) -> None:
+        self._rounds += 1
+        if self._progress is not None:
+            counts = {"round": self._rounds, "listed": listed, "priced": priced}
+            self._progress("round", counts)
+
+
 def _solve(
-    compiled: Compiled,
+    compiled: Compiled, search: _Search
 ) -> tuple[list[ItemFlow], list[tuple[ItemNetwork, NoCirculationError]]]:
     """Solve every item; return the flows, and the contradictions of items without any."""
     solved: list[ItemFlow] = []
     cuts: list[tuple[ItemNetwork, NoCirculationError]] = []
     for own in compiled.items:
         try:
-            solved.append(solve_item(compiled.network, own))
+            solved.append(search.flow(own))
         except NoCirculationError as cut:
             cuts.append((own, cut))
     return solved, cuts

@@ -170,9 +170,6 @@ class Campaign:
     ) -> None:
         """Have something measured, and keep it."""
         answer = self.child(task, folder=str(folder), **request)
-        if "absent" in answer:
-            self.leave_out(f"{as_} on {record['name']}", answer["absent"])
-            return
         record["objectives"].setdefault(as_, []).append(answer.pop("objective"))
         digest = answer.pop("plan_digest", None)
         # The warnings of a plan tell where in the body they arose, and so differ by form.

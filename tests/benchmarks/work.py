@@ -112,8 +112,6 @@ def plan_it(request: Request) -> Answer:
     (folder / WARM_START_FILE).unlink(missing_ok=True)
     if request["warm_from"] is not None:
         former = Path(request["warm_from"]) / RESULTS / WARM_START_FILE
-        if not former.exists():
-            return {"absent": "no former run left anything to start from"}
         (folder / WARM_START_FILE).write_bytes(former.read_bytes())
     results = folder / RESULTS
     results.mkdir(exist_ok=True)

@@ -12,11 +12,15 @@ import orjson
 
 from service.network.canonical import read_network
 from service.network.options import Options, read_options
+from service.planning.arcs import MoneyArray
 from service.planning.certificate import proved_certificate
 from service.planning.compile import Compiled, compile_network
+from service.planning.contraction import Contraction
+from service.planning.item_network import ItemNetwork
 from service.planning.plan import Setting, planned
 from service.planning.priorities import achieved
 from service.planning.routes import Front, FullRoute, SiftedRoute
+from service.planning.scarcity_prices import FloatArray
 from service.planning.solve import ItemFlow, solve_item
 from tests.factories import Document, network_document, take_in
 
@@ -28,11 +32,14 @@ class Seen:
     rounds: list[tuple[int, int, int]] = field(default_factory=list)
     sifted: list[bool] = field(default_factory=list)
 
-    def front(self, **options: Any) -> Front:  # noqa: ANN401 - whatever the route takes
-        """Return a front that sifts everything, however small."""
+    def front(self, *, start: FloatArray | None = None) -> Front:
+        """Return a front that sifts everything, however small; ``start`` is repeated by place."""
 
-        def sifting(*item: Any) -> SiftedRoute:  # noqa: ANN401 - the arguments of a front
-            return _Watched(*item, seen=self._note, outcome=self.sifted.append, **options)
+        def sifting(own: ItemNetwork, whole: Contraction, weighted: MoneyArray) -> SiftedRoute:
+            given = None if start is None else np.resize(start, whole.nodes)
+            return _Watched(
+                own, whole, weighted, start=given, seen=self._note, outcome=self.sifted.append
+            )
 
         return sifting
 

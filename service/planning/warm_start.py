@@ -1,0 +1,111 @@
+"""What one run leaves for the next to start from: what stock was worth where it lay.
+
+It is a hint and never a fact: prices decide where the search for an optimum starts, and no plan
+shows from where that was. Which lanes are worth a look follows from the prices, so that none are
+kept, and what has changed since is met by the lanes as they are now.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import orjson
+
+from service.network.columns import IntArray, Network
+from service.planning.arcs import SIDES, Kind, MoneyArray
+from service.planning.contraction import Contraction
+from service.planning.item_network import ItemNetwork
+from service.planning.scarcity_prices import FloatArray
+from service.planning.solve import ItemFlow
+
+FORMAT = 1
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class WarmStart:
+    """Prices of stock in money per item unit: by item id, then by the name of the place."""
+
+    prices: Mapping[str, Mapping[str, float]]
+
+    @staticmethod
+    def read(path: Path) -> "WarmStart":
+        """Return what a former run left at ``path``; nothing where it is absent or damaged."""
+        try:
+            document: Any = orjson.loads(path.read_bytes())
+            if document["format"] != FORMAT:
+                return WarmStart(prices={})
+            prices = {
+                str(item): {str(place): float(price) for place, price in known.items()}
+                for item, known in document["prices"].items()
+            }
+        except (OSError, ValueError, TypeError, KeyError, AttributeError):
+            return WarmStart(prices={})
+        return WarmStart(prices=prices)
+
+    def write(self, path: Path) -> None:
+        """Write it for ``read``."""
+        path.write_bytes(orjson.dumps({"format": FORMAT, "prices": self.prices}))
+
+    def by_place(
+        self,
+        network: Network,
+        own: ItemNetwork,
+        contraction: Contraction,
+        weighted: MoneyArray,
+        *,
+        cost_scale: Fraction,
+    ) -> FloatArray | None:
+        """Return prices by place of ``contraction``, NaN where unknown; None: nothing is known."""
+        known = self.prices.get(network.items[own.item].id)
+        if not known:
+            return None
+        nodes = _stocked(own)
+        price = np.array([known.get(name, np.nan) for name in _names(network, own, nodes)])
+        if not np.isfinite(price).any():
+            return None
+        offset = contraction.offsets(weighted)
+        found: FloatArray = np.full(contraction.nodes, np.nan)
+        found[contraction.place[nodes]] = price * _scaled(network, own, cost_scale) - (
+            offset[nodes].astype(np.float64)
+        )
+        return found
+
+
+def left_by(network: Network, flows: Sequence[ItemFlow], *, cost_scale: Fraction) -> WarmStart:
+    """Return what the plan made of ``flows`` leaves for the next."""
+    prices = {}
+    for flow in flows:
+        nodes = _stocked(flow.own)
+        price = flow.price[nodes].astype(np.float64) / _scaled(network, flow.own, cost_scale)
+        prices[network.items[flow.own.item].id] = dict(
+            zip(_names(network, flow.own, nodes), price.tolist(), strict=True)
+        )
+    return WarmStart(prices=prices)
+
+
+def _stocked(own: ItemNetwork) -> IntArray:
+    """Return the nodes at which stock comes in."""
+    nodes: IntArray = np.unique(own.arcs.head[own.of_kind(Kind.SUPPLY)])
+    return nodes
+
+
+def _names(network: Network, own: ItemNetwork, nodes: IntArray) -> list[str]:
+    """Return what the nodes are called in any network with the same sites."""
+    of = own.layout.nodes
+    return [
+        f"{SIDES[side]} {number} {network.sites[site].id}"
+        for side, number, site in zip(
+            of.side[nodes].tolist(),
+            of.qualifier[nodes].tolist(),
+            of.site[nodes].tolist(),
+            strict=True,
+        )
+    ]
+
+
+def _scaled(network: Network, own: ItemNetwork, cost_scale: Fraction) -> float:
+    """Return the scaled money per step in one unit of money per item unit."""
+    return float(cost_scale * network.items[own.item].step)
