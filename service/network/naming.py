@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping, Sequence
 import numpy as np
 
 from service.network.columns import BoolArray, IntArray, LaneTable, Network
-from service.network.lane_keys import LaneKeys
+from service.network.lane_keys import first_rows
 
 _ENCODED = str.maketrans({"%": "%25", ">": "%3E", "#": "%23"})
 
@@ -61,6 +61,19 @@ def ranks(lanes: LaneTable) -> IntArray:
     return rows - np.maximum.accumulate(np.where(follows, 0, rows))
 
 
+def _ranks_at(lanes: LaneTable, rows: IntArray) -> list[int]:
+    """Return what ``ranks`` says of ``rows``; where none follows its like, only they are read."""
+    latter = rows[rows > 0]
+    former = latter - 1
+    follows = (
+        (lanes.destination[former] == lanes.destination[latter])
+        & (lanes.origin[former] == lanes.origin[latter])
+        & (lanes.item[former] == lanes.item[latter])
+    )
+    found: list[int] = ranks(lanes)[rows].tolist() if follows.any() else [0] * len(rows)
+    return found
+
+
 def lane_names(network: Network, rows: IntArray) -> list[str]:
     """Return the name of each lane of ``rows`` (positions in ``network.lanes``)."""
     return [
@@ -68,7 +81,7 @@ def lane_names(network: Network, rows: IntArray) -> list[str]:
         for given, base, before in zip(
             network.lanes.ids[rows].tolist(),
             base_names(network, rows),
-            ranks(network.lanes)[rows].tolist(),
+            _ranks_at(network.lanes, rows),
             strict=True,
         )
     ]
@@ -97,7 +110,7 @@ def _unnamed_rows(network: Network, names: Sequence[str]) -> list[int]:
     items = {encoded(item.id): place for place, item in enumerate(network.items)}
     places = np.array([_place(name, sites, items) for name in names], dtype=np.int64)
     origin, destination, item, rank = places.T
-    first = LaneKeys(network.lanes).rows(origin, destination, item)
+    first = first_rows(network.lanes, origin, destination, item)
     lanes, rows = network.lanes, first + rank
     found = (origin >= 0) & (first >= 0) & (rows < len(lanes))
     # The rank may lead beyond the lanes of its kind, or to one that has an id of its own.

@@ -9,6 +9,9 @@ from service.planning.groups import IN_MONEY
 from service.planning.order_lines import Share
 from service.planning.plan_lines import ItemPlan
 
+# Where a part of an order line comes from: site, lot and legs.
+_Source = tuple[int, str | None, tuple[int, ...]]
+
 
 def order_line_documents(
     network: Network,
@@ -20,7 +23,7 @@ def order_line_documents(
     own, demand = plan.solved.own, network.demand
     groups, item = own.groups, network.items[own.item]
     rows, wanted = groups.rows.tolist(), groups.row_steps.tolist()
-    sources = _Sources(network, plan)
+    sources = _Sources(network, plan).of([shares.get(row, ()) for row in rows])
     sites = [site.id for site in network.sites]
     columns = zip(
         rows,
@@ -32,12 +35,22 @@ def order_line_documents(
         texts([steps - served[row] for row, steps in zip(rows, wanted, strict=True)], item.step),
         groups.row_priority.tolist(),
         groups.row_exact.equals(groups.row_steps).tolist(),
+        sources,
         strict=True,
     )
     documents: dict[int, Document] = {}
-    for at, (row, reference, order, site, quantity, goes, short, priority, exact) in enumerate(
-        columns
-    ):
+    for at, (
+        row,
+        reference,
+        order,
+        site,
+        quantity,
+        goes,
+        short,
+        priority,
+        exact,
+        own_sources,
+    ) in enumerate(columns):
         line: Document = {
             "reference": reference.decode(),
             "order": None if order < 0 else demand.order.values[order],
@@ -52,7 +65,7 @@ def order_line_documents(
             line["shortage_cost"] = text(groups.row_money.fraction(at) / item.step)
         if not exact:
             line["ordered"] = text(groups.row_exact.fraction(at) * item.step)
-        line["sources"] = sources.of(shares.get(row, ()))
+        line["sources"] = own_sources
         documents[row] = line
     for name, column in (("tags", demand.tags), ("extra", demand.extra)):
         if column.values:
@@ -76,20 +89,30 @@ class _Sources:
         codes = lots.codes[own.stock.rows].tolist()
         self._lots = [None if code < 0 else lots.values[code] for code in codes]
 
-    def of(self, shares: Sequence[Share]) -> list[Document]:
-        """Return the sources of one order line, those alike in origin, lot and legs as one."""
-        together: dict[tuple[int, str | None, tuple[int, ...]], int] = {}
+    def of(self, shares: Sequence[Sequence[Share]]) -> list[list[Document]]:
+        """Return the sources of each order line, those alike in origin, lot and legs as one."""
+        together = [self._together(own) for own in shares]
+        # One call for all quantities: there are few in a line, and many lines.
+        steps = [amount for own in together for amount in own.values()]
+        quantities = iter(texts(steps, self._step))
+        return [
+            [
+                {
+                    "origin": self._sites[site],
+                    "item": self._item,
+                    "lot": lot,
+                    "quantity": next(quantities),
+                    "legs": [{"lane": self._names[leg]} for leg in legs],
+                }
+                for site, lot, legs in own
+            ]
+            for own in together
+        ]
+
+    def _together(self, shares: Sequence[Share]) -> dict[_Source, int]:
+        """Return the steps of one order line by origin, lot and legs."""
+        together: dict[_Source, int] = {}
         for path, steps in shares:
             key = (path.site, self._lots[path.row], path.legs)
             together[key] = together.get(key, 0) + steps
-        quantities = texts(list(together.values()), self._step)
-        return [
-            {
-                "origin": self._sites[site],
-                "item": self._item,
-                "lot": lot,
-                "quantity": quantity,
-                "legs": [{"lane": self._names[leg]} for leg in legs],
-            }
-            for (site, lot, legs), quantity in zip(together, quantities, strict=True)
-        ]
+        return together

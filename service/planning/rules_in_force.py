@@ -20,12 +20,11 @@ def rules_in_force(compiled: Compiled, solved: list[ItemFlow]) -> list[dict[str,
     """
     felt: set[str] = set()
     for flow in solved:
+        entries = [entry for entry in compiled.book.entries if entry.items[flow.own.item]]
+        if not entries:  # To price every arc takes a tenth of the time of writing a plan.
+            continue
         gain = _gain(flow)
-        felt.update(
-            entry.rule.id
-            for entry in compiled.book.entries
-            if entry.items[flow.own.item] and _binds(entry, flow, gain)
-        )
+        felt.update(entry.rule.id for entry in entries if _binds(entry, flow, gain))
     applied = {entry.rule.id for entry in compiled.book.entries}
     return [
         {

@@ -24,6 +24,10 @@ def shortage_rows(
     that they are sorted by. A group is short as a whole: its lines share one reason.
     """
     own = solved.own
+    shorts = own.of_kind(Kind.SHORT, Kind.KEEP_SHORT)
+    shorts = shorts[solved.flow[shorts] > 0]
+    if shorts.shape[0] == 0:  # Reasons look at every arc before they are asked for the first one.
+        return {}, []
     item = network.items[own.item]
     reasons = Reasons(solved)
     outranking = Outranking(network, solved, reasons.bottlenecks, served=served)
@@ -38,8 +42,7 @@ def shortage_rows(
 
     of_group: dict[int, tuple[int, Reason]] = {}
     kept: list[tuple[tuple[int, int], Row]] = []
-    shorts = own.of_kind(Kind.SHORT, Kind.KEEP_SHORT)
-    for arc in shorts[solved.flow[shorts] > 0].tolist():
+    for arc in shorts.tolist():
         subject, reason = int(own.subject[arc]), reasons.reason(arc)
         if own.kind[arc] == Kind.SHORT:
             of_group[subject] = arc, reason

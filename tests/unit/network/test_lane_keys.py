@@ -8,7 +8,7 @@ import pytest
 
 from service.network.columns import LaneTable
 from service.network.files.json import read_json
-from service.network.lane_keys import LaneKeys
+from service.network.lane_keys import LaneKeys, first_rows
 from service.network.options import Options
 from service.network.reading import read_network
 from tests.network_samples import sound
@@ -35,11 +35,12 @@ def lanes_of(ends: list[tuple[int, int, int]]) -> LaneTable:
 )
 def test_keys_sort_as_ends_and_items_do_and_find_them(ends: list[tuple[int, int, int]]) -> None:
     """The order of the normal form and the search for a name rest on it."""
-    lanes = LaneKeys(lanes_of([*ends, ends[0]]))
+    table = lanes_of([*ends, ends[0]])
+    lanes = LaneKeys(table)
     others = [(0, 0, 0), (1, 1, 1), (MOST, 1, 0), (MOST, MOST, -1), (0, MOST, 1), (-1, -1, -1)]
     asked = np.array([*ends, *others], dtype=np.int64)
 
-    found = lanes.rows(*asked.T)
+    found = first_rows(table, *asked.T)
 
     assert (np.diff(lanes.keys) >= 0).all()
     assert len(set(lanes.keys.tolist())) == len(ends)
@@ -51,4 +52,4 @@ def test_a_table_without_lanes_has_none_to_find() -> None:
     """A network need not have lanes."""
     none = np.zeros(1, dtype=np.int64)
 
-    assert LaneKeys(lanes_of([])).rows(none, none, none).tolist() == [-1]
+    assert first_rows(lanes_of([]), none, none, none).tolist() == [-1]
