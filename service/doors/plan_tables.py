@@ -90,6 +90,7 @@ AMOUNTS: Mapping[str, tuple[str, ...]] = {
     "site_use": ("available", "shipped", "kept", "left"),
     "totals": ("total",),
 }
+# What is a whole number in JSON too; amounts are text there, and decimals in typed files.
 WHOLE: Final = frozenset({"priority", "rows"})
 _NOT_ADDED: Final = frozenset(
     {"unit_cost", "ordered", "shortage_cost", "pallets", "weight_kg", "volume_m3"}

@@ -107,6 +107,9 @@ def lane_order(lanes: LaneTable) -> IntArray:
 def supply_order(supply: SupplyTable, items: Sequence[Item]) -> IntArray:
     """Return the row numbers of ``supply`` in the order of the normal form.
 
+    This is the stored form: another order changes every digest and makes stored networks
+    unreadable. Which stock is used up first is decided elsewhere (``planning/paths.py``).
+
     Texts must be spelled normally, so that their codes sort as they do.
     """
     best_before = supply.best_before.codes.astype(np.int64)

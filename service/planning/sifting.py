@@ -13,9 +13,9 @@ import numpy as np
 
 from service.network.columns import IntArray
 from service.planning.arcs import UNLIMITED, largest
-from service.planning.estimate import Estimator, spread
 from service.planning.limits import NoFlowError, NumbersTooLargeError
 from service.planning.nearest_lanes import Nearest
+from service.planning.price_estimate import Estimator, spread
 from service.planning.scarcity_prices import FloatArray
 from service.planning.shortlist import Shortlist, solve_shortlist
 from service.planning.sieve import Better, Sieve

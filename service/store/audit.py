@@ -14,7 +14,8 @@ from sqlalchemy.orm import Session
 from service.store.audit_contents import blob_problems, content_problems
 from service.store.audit_problem import Problem, guarded
 from service.store.audit_runs import number_problems, run_keys, run_problems
-from service.store.audit_streams import stray_problems, stream_problems
+from service.store.audit_strays import stray_problems
+from service.store.audit_streams import stream_problems
 from service.store.database import READ_ONLY, Database, DatabaseRefused, open_database
 from service.store.migrate import pending_in
 from service.store.triggers import trigger_faults

@@ -3,7 +3,6 @@
 from collections.abc import Iterator, Mapping
 
 import orjson
-from sqlalchemy import and_, select
 from sqlalchemy.orm import Session
 
 from service.network.canonical import canonical_json
@@ -11,17 +10,6 @@ from service.runs.events import EVENT_FORMAT, chain_faults
 from service.runs.run import StoredEvent
 from service.store.audit_problem import Problem
 from service.store.event_repository import SqlEventRepository, event_of
-from service.store.tables import (
-    EventPayloadRow,
-    EventRow,
-    OrderLineRow,
-    PlanLineRow,
-    RunDispatchRow,
-    RunEndingRow,
-    RunRow,
-)
-
-_OF_A_RUN = (RunDispatchRow, RunEndingRow, PlanLineRow, OrderLineRow)
 
 
 def read_stream(
@@ -63,44 +51,6 @@ def stream_problems(session: Session) -> Iterator[Problem]:
                     detail=f"format {event.format} is none that this release knows",
                 )
         session.expunge_all()
-
-
-def stray_problems(session: Session) -> Iterator[Problem]:
-    """Yield rows that belong to nothing: foreign keys forbid them, unless they were off."""
-    payloads = (
-        select(EventPayloadRow.tenant, EventPayloadRow.stream, EventPayloadRow.seq)
-        .outerjoin(
-            EventRow,
-            and_(
-                EventRow.tenant == EventPayloadRow.tenant,
-                EventRow.stream == EventPayloadRow.stream,
-                EventRow.seq == EventPayloadRow.seq,
-            ),
-        )
-        .where(EventRow.tenant.is_(None))
-        .order_by(EventPayloadRow.tenant, EventPayloadRow.stream, EventPayloadRow.seq)
-    )
-    for row in session.execute(payloads):
-        yield Problem(
-            code="payload_without_event",
-            place=f"{row.tenant}/{row.stream}#{row.seq}",
-            detail="a payload whose event is not there",
-        )
-    for table in _OF_A_RUN:
-        name = table.__tablename__
-        strays = (
-            select(table.tenant, table.run)
-            .distinct()
-            .outerjoin(RunRow, and_(RunRow.tenant == table.tenant, RunRow.id == table.run))
-            .where(RunRow.tenant.is_(None))
-            .order_by(table.tenant, table.run)
-        )
-        for stray in session.execute(strays):
-            yield Problem(
-                code="row_without_run",
-                place=f"{stray.tenant}/{name} {stray.run}",
-                detail="a row of a run that is not there",
-            )
 
 
 def _payload(text: str) -> Mapping[str, object] | None:

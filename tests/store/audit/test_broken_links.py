@@ -10,10 +10,11 @@ from sqlalchemy.exc import DBAPIError
 from service.runs.events import event_hash, run_stream
 from service.runs.run import Run
 from service.store.audit import Problem, audit, check_store
+from service.store.audit_strays import OF_A_RUN
 from service.store.blob_repository import PART_BYTES
 from service.store.database import Database
 from service.store.sql_store import SqlStore, SystemClock
-from service.store.tables import Base
+from service.store.tables import Base, WarmStartRow
 from tests.run_factories import submitted
 from tests.store.audit.tampering import (
     TABLES,
@@ -228,3 +229,11 @@ def test_missing_trigger_is_a_problem_of_its_own(database: Database) -> None:
     assert verdict.verdict == "broken"
     assert {problem.code for problem in verdict.problems} == {"trigger"}
     assert len(verdict.problems) >= len(TABLES)
+
+
+def test_every_table_with_rows_of_a_run_is_looked_through_for_rows_without_one() -> None:
+    """A table that is added later cannot be forgotten; the cache is nobody's record."""
+    listed = {table.__tablename__ for table in OF_A_RUN}
+    with_run = {name for name, table in Base.metadata.tables.items() if "run" in table.columns}
+
+    assert listed == with_run - {WarmStartRow.__tablename__}
