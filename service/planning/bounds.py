@@ -19,10 +19,13 @@ class LaneBounds:
 
     ``rows`` are positions in the network's lanes, ascending. ``minimum`` and ``capacity``
     (``UNLIMITED``: no limit) are in steps with all rules applied; ``money`` is money per step.
-    ``stated_minimum`` and ``stated_capacity`` are those without any rule.
+    ``stated_minimum`` and ``stated_capacity`` are those without any rule. ``at`` picks the lanes
+    from a column of the network: ``rows``, or a slice where they are all. Columns that say the same
+    of every lane are views of one value, which nobody can write to.
     """
 
     rows: IntArray
+    at: IntArray | slice
     minimum: IntArray
     capacity: IntArray
     money: Rationals
@@ -34,65 +37,81 @@ class LaneBounds:
 
 def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> LaneBounds:
     """Return bounds and costs of the lanes at ``rows`` for ``item``."""
-    lanes, thing = network.lanes, network.items[item]
-    codes = lanes.measure.codes[rows]
-    used = set(np.flatnonzero(np.bincount(codes)).tolist())
+    lanes, thing, count = network.lanes, network.items[item], rows.shape[0]
+    every = np.array_equal(rows, np.arange(len(lanes)))
+    at: IntArray | slice = slice(None) if every else rows
+    codes = lanes.measure.codes[at]
+    # Every measure of the table is on one of its lanes.
+    used = range(len(lanes.measure.values)) if every else np.flatnonzero(np.bincount(codes))
     # How much of each measure one step is; a measure that only other items know is not used here.
-    step_is = tuple(
-        _measured(thing, measure) * thing.step if code in used else Fraction(1)
-        for code, measure in enumerate(lanes.measure.values)
-    )
-    # What weighs nothing fits any number of times.
-    weightless = np.array([amount == 0 for amount in step_is], np.bool_)[codes]
+    step_is = [Fraction(1)] * len(lanes.measure.values)
+    for code in used:
+        step_is[code] = _measured(thing, lanes.measure.values[code]) * thing.step
     steps_in = tuple(1 / amount if amount else Fraction(0) for amount in step_is)
 
     def steps(column: Decimals, what: str) -> IntArray:
         scale = Fraction(1, 10**column.exponent)
         return Rationals(
-            values=column.values[rows],
+            values=column.values[at],
             codes=codes,
             multipliers=tuple(factor * scale for factor in steps_in),
         ).rounded(up=False, what=what)
 
-    stated_minimum = steps(lanes.must_ship, "must_ship of a lane")
-    stated_capacity = np.where(
-        lanes.capacity.present[rows] & ~weightless,
-        steps(lanes.capacity, "capacity of a lane"),
-        UNLIMITED,
-    )
-    minimum, capacity = stated_minimum.copy(), stated_capacity.copy()
-    fixed = np.zeros(rows.shape[0], np.bool_)
-    for entry in book.fixed_quantities(item):
-        picked = entry.lanes[rows]
+    minimum = stated_minimum = _of_all(0, count)
+    if lanes.must_ship.present.any():
+        minimum = stated_minimum = steps(lanes.must_ship, "must_ship of a lane")
+    capacity = stated_capacity = _of_all(UNLIMITED, count)
+    if lanes.capacity.present.any():
+        # What weighs nothing fits any number of times.
+        weightless = np.array([amount == 0 for amount in step_is], np.bool_)[codes]
+        capacity = stated_capacity = np.where(
+            lanes.capacity.present[at] & ~weightless,
+            steps(lanes.capacity, "capacity of a lane"),
+            UNLIMITED,
+        )
+    quantities, closures = book.fixed_quantities(item), book.closures(item)
+    fixed = closed = np.broadcast_to(np.False_, (count,))
+    if quantities or closures:
+        minimum, capacity = minimum.copy(), capacity.copy()
+        fixed, closed = fixed.copy(), closed.copy()
+    for entry in quantities:
+        picked = entry.lanes[at]
         fixed |= picked
         if isinstance(entry.rule, FixedQuantity) and picked.any():
             quantity = Rationals(
-                values=np.full(rows.shape[0], entry.rule.quantity.numerator, object)[picked],
+                values=np.full(count, entry.rule.quantity.numerator, object)[picked],
                 codes=codes[picked],
                 multipliers=tuple(factor / entry.rule.quantity.denominator for factor in steps_in),
             ).rounded(up=False, what="quantity of a fixed_quantity rule")
             minimum[picked] = quantity
             capacity[picked] = quantity
-    closed = np.zeros(rows.shape[0], np.bool_)
-    for entry in book.closures(item):
-        closed |= entry.lanes[rows]
-    minimum[closed] = 0
-    capacity[closed] = 0
+    for entry in closures:
+        closed |= entry.lanes[at]
+    if closures:
+        minimum[closed] = 0
+        capacity[closed] = 0
     unit_cost = Fraction(1, 10**lanes.unit_cost.exponent)
     return LaneBounds(
         rows=rows,
+        at=at,
         minimum=minimum,
         capacity=capacity,
         money=Rationals(
-            values=lanes.unit_cost.values[rows],
+            values=lanes.unit_cost.values[at],
             codes=codes,
             multipliers=tuple(amount * unit_cost for amount in step_is),
         ),
         closed=closed,
-        fixed=fixed & ~closed,
+        fixed=fixed & ~closed if quantities else fixed,
         stated_minimum=stated_minimum,
         stated_capacity=stated_capacity,
     )
+
+
+def _of_all(value: int, count: int) -> IntArray:
+    """Return a column that has ``value`` in all its ``count`` rows."""
+    column: IntArray = np.broadcast_to(np.int64(value), (count,))
+    return column
 
 
 def _measured(item: Item, measure: str) -> Fraction:

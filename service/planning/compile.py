@@ -40,7 +40,7 @@ def compile_network(network: Network, options: Options) -> Compiled:
     raw = [
         item_arcs(network, options, item, use=use, book=book) for item in range(len(network.items))
     ]
-    scale = cost_scale(own.money.grid() for own in raw)
+    scale = cost_scale(own.grid() for own in raw)
     return Compiled(
         network=network,
         options=options,

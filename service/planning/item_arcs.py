@@ -2,8 +2,10 @@
 
 from dataclasses import dataclass
 from fractions import Fraction
+from typing import Any, NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
@@ -14,8 +16,23 @@ from service.planning.groups import IN_MONEY, Groups, groups_of
 from service.planning.item_network import ItemNetwork
 from service.planning.layout import Layout, layout_of
 from service.planning.rule_book import RuleBook
-from service.planning.scaling import Rationals
+from service.planning.scaling import Rationals, common_grid
 from service.planning.stock import Stock, stock_of
+
+# Positions of nodes or of what arcs stand for: as wide as they come.
+Codes = NDArray[np.integer[Any]]
+
+
+class Block(NamedTuple):
+    """Arcs of one kind as columns; codes of whatever width."""
+
+    kind: Kind
+    tail: Codes
+    head: Codes
+    minimum: IntArray
+    capacity: IntArray
+    subject: CodeArray
+    money: Rationals
 
 
 @dataclass(slots=True, kw_only=True)
@@ -27,40 +44,41 @@ class ArcList:
     stock: Stock
     groups: Groups
     layout: Layout
-    blocks: list[tuple[Kind, IntArray, IntArray, IntArray, IntArray, IntArray, Rationals]]
-    money: Rationals
+    blocks: list[Block]
 
     def add(  # noqa: PLR0913 - the columns of an arc
         self,
         kind: Kind,
-        tail: IntArray,
-        head: IntArray,
-        subject: IntArray | CodeArray,
+        tail: Codes,
+        head: Codes,
+        subject: Codes,
         *,
         minimum: IntArray | int = 0,
         capacity: IntArray | int = UNLIMITED,
         money: Rationals | None = None,
     ) -> None:
         """Add arcs of one kind; a missing cost is 0."""
-        rows = subject.shape[0]
+        shape = subject.shape
         self.blocks.append(
-            (
-                kind,
-                np.broadcast_to(np.asarray(tail, np.int64), (rows,)),
-                np.broadcast_to(np.asarray(head, np.int64), (rows,)),
-                np.broadcast_to(np.asarray(minimum, np.int64), (rows,)),
-                np.broadcast_to(np.asarray(capacity, np.int64), (rows,)),
-                subject.astype(np.int64),
-                Rationals.zeros(rows) if money is None else money,
+            Block(
+                kind=kind,
+                tail=np.broadcast_to(np.asarray(tail), shape),
+                head=np.broadcast_to(np.asarray(head), shape),
+                minimum=np.broadcast_to(np.asarray(minimum, np.int64), shape),
+                capacity=np.broadcast_to(np.asarray(capacity, np.int64), shape),
+                subject=subject.astype(np.int32, copy=False),
+                money=Rationals.zeros(shape[0]) if money is None else money,
             )
         )
 
+    def grid(self) -> Fraction:
+        """Return the largest number of which the money of every arc is a whole multiple."""
+        return common_grid(block.money.grid() for block in self.blocks)
+
     def finish(self, scale: Fraction) -> ItemNetwork:
         """Return the item's network at ``scale``."""
-        tail, head, minimum, capacity, subject = (
-            np.concatenate([block[column] for block in self.blocks]) for column in range(1, 6)
-        )
-        cost = self.money.times(scale).on(Fraction(1))
+        blocks = self.blocks
+        cost = np.concatenate([block.money.times(scale).on(Fraction(1)) for block in blocks])
         priorities = sorted(
             (set(self.groups.priority.tolist()) | set(self.stock.kept_priority.tolist()))
             - {IN_MONEY}
@@ -71,12 +89,17 @@ class ArcList:
             stock=self.stock,
             groups=self.groups,
             layout=self.layout,
-            arcs=Arcs(tail=tail, head=head, minimum=minimum, capacity=capacity, cost=cost),
-            money=self.money,
-            kind=np.concatenate(
-                [np.full(block[1].shape[0], int(block[0]), np.int64) for block in self.blocks]
+            arcs=Arcs(
+                tail=np.concatenate([block.tail for block in blocks], dtype=np.int64),
+                head=np.concatenate([block.head for block in blocks], dtype=np.int64),
+                minimum=np.concatenate([block.minimum for block in blocks]),
+                capacity=np.concatenate([block.capacity for block in blocks]),
+                cost=cost,
             ),
-            subject=subject,
+            kind=np.concatenate(
+                [np.full(len(block.subject), int(block.kind), np.int8) for block in blocks]
+            ),
+            subject=np.concatenate([block.subject for block in blocks]),
             priorities=tuple(priorities),
             # Any loop trades at most one short step for another and gains at most n * max|c|
             # twice over in money; more than that for each step of priority.
@@ -106,13 +129,15 @@ def item_arcs(
         groups=groups,
         layout=layout,
         blocks=[],
-        money=Rationals.zeros(0),
+    )
+    tail, head = layout.lane_ends(
+        network.lanes.origin[lanes.at], network.lanes.destination[lanes.at]
     )
     arcs.add(
         Kind.LANE,
-        layout.lane_tail,
-        layout.lane_head,
-        np.arange(lanes.rows.shape[0]),
+        tail,
+        head,
+        np.arange(lanes.rows.shape[0], dtype=np.int32),
         minimum=lanes.minimum,
         capacity=lanes.capacity,
         money=lanes.money,
@@ -121,7 +146,6 @@ def item_arcs(
     _add_sites(arcs, network, item)
     _add_serving(arcs, network, item, use)
     _add_wanting(arcs, shortages=options.shortages == "allow")
-    arcs.money = Rationals.joined([block[6] for block in arcs.blocks])
     return arcs
 
 

@@ -3,13 +3,13 @@
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
-from service.network.columns import IntArray
+from service.network.columns import CodeArray, IntArray
 from service.planning.arcs import Arcs, Kind, MoneyArray, largest, widened
 from service.planning.bounds import LaneBounds
 from service.planning.groups import IN_MONEY, Groups
 from service.planning.layout import Layout
-from service.planning.scaling import Rationals
 from service.planning.stock import Stock
 
 
@@ -17,10 +17,10 @@ from service.planning.stock import Stock
 class ItemNetwork:
     """The formal network of one item.
 
-    ``arcs.cost`` is scaled money per step, ``money`` the same before scaling. ``kind`` (a
-    ``Kind``) and ``subject`` say what each arc stands for; lanes come first, in the order of
-    ``lanes.rows``, so that the position of a lane's arc is its position there. ``priorities`` are
-    those that occur, ascending; ``base`` is C: the r-th of T priorities weighs (T + 1 - r) * C.
+    ``arcs.cost`` is scaled money per step. ``kind`` (a ``Kind``) and ``subject`` say what each arc
+    stands for; lanes come first, in the order of ``lanes.rows``, so that the position of a lane's
+    arc is its position there. ``priorities`` are those that occur, ascending; ``base`` is C: the
+    r-th of T priorities weighs (T + 1 - r) * C.
     """
 
     item: int
@@ -29,9 +29,8 @@ class ItemNetwork:
     groups: Groups
     layout: Layout
     arcs: Arcs
-    money: Rationals
-    kind: IntArray
-    subject: IntArray
+    kind: NDArray[np.int8]
+    subject: CodeArray
     priorities: tuple[int, ...]
     base: int
 

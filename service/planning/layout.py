@@ -44,8 +44,24 @@ class Layout:
     stock: IntArray
     keep: IntArray
     arrivals: tuple[IntArray, CodeArray, CodeArray]
-    lane_tail: IntArray
-    lane_head: IntArray
+
+    def lane_ends(self, origin: CodeArray, destination: CodeArray) -> tuple[CodeArray, CodeArray]:
+        """Return the nodes that lanes between some sites leave and enter."""
+        sites = self.by_origin.shape[0]
+        leaves = np.where(self.sent >= 0, self.sent, self.outside).astype(np.int32)
+        arrival, site, came_from = self.arrivals
+        enters = self.inside.astype(np.int32)
+        enters[site[came_from < 0]] = arrival[came_from < 0]
+        head = enters[destination]
+        if self.by_origin.any():
+            tagged = np.flatnonzero(self.by_origin[destination])
+            pairs = site.astype(np.int64) * sites + came_from
+            named = np.flatnonzero(came_from >= 0)
+            found = np.searchsorted(
+                pairs[named], destination[tagged].astype(np.int64) * sites + origin[tagged]
+            )
+            head[tagged] = arrival[named[found]]
+        return leaves[origin], head
 
 
 def layout_of(  # noqa: PLR0913 - the tables of one item
@@ -60,13 +76,14 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
 ) -> Layout:
     """Return nodes and attachments of ``item``; ``passes_on`` tells the cross-docks."""
     sites = len(network.sites)
-    origin, destination = network.lanes.origin[lanes.rows], network.lanes.destination[lanes.rows]
+    origin, destination = network.lanes.origin[lanes.at], network.lanes.destination[lanes.at]
     has_stock, arrives, leaves, relevant, by_origin = (np.zeros(sites, np.bool_) for _ in range(5))
     has_stock[stock.site] = True
     arrives[destination] = True
     leaves[origin] = True
-    for place in (stock.site, groups.site, origin, destination):
-        relevant[place] = True
+    relevant[stock.site] = True
+    relevant[groups.site] = True
+    relevant |= arrives | leaves
     named = np.array([allowed is not None for allowed in groups.origins], np.bool_)
     by_origin[groups.site[named]] = True
     apart = by_origin | (~passes_on & arrives & (has_stock | leaves))
@@ -78,10 +95,8 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
     kept[stock.kept_site] = True
     tiers = np.flatnonzero(kept[stock.site])
     single = np.flatnonzero(received | (apart & arrives & ~by_origin))
-    pairs = np.unique(
-        destination[by_origin[destination]].astype(np.int64) * sites
-        + origin[by_origin[destination]]
-    )
+    tagged = np.flatnonzero(by_origin[destination]) if by_origin.any() else np.zeros(0, np.int64)
+    pairs = np.unique(destination[tagged].astype(np.int64) * sites + origin[tagged])
     blocks = [
         (Side.ROOT, np.array([-1]), np.array([-1])),
         (Side.IN, places, np.full(places.shape[0], -1)),
@@ -108,13 +123,7 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
         found[blocks[at][1]] = numbers[at]
         return found
 
-    inside, outside, sent_at, single_at = (attached(at) for at in (1, 2, 3, 4))
-    entry = np.where(single_at >= 0, single_at, inside)
-    lane_head = entry[destination]
-    tagged = np.flatnonzero(by_origin[destination])
-    lane_head[tagged] = starts[5] + np.searchsorted(
-        pairs, destination[tagged].astype(np.int64) * sites + origin[tagged]
-    )
+    inside, outside, sent_at = (attached(at) for at in (1, 2, 3))
     stock_at = np.full(stock.site.shape[0], -1, np.int64)
     stock_at[tiers] = numbers[7]
     arrivals = np.concatenate((numbers[4], numbers[5]))
@@ -133,8 +142,6 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
         stock=stock_at,
         keep=numbers[8],
         arrivals=(arrivals, nodes.site[arrivals], nodes.qualifier[arrivals]),
-        lane_tail=np.where(sent_at >= 0, sent_at, outside)[origin],
-        lane_head=lane_head,
     )
 
 

@@ -28,7 +28,7 @@ class Rationals:
     @staticmethod
     def of(values: MoneyArray, multiplier: Fraction) -> "Rationals":
         """Return ``values`` times one multiplier."""
-        codes = np.zeros(values.shape[0], np.int32)
+        codes = np.broadcast_to(np.int32(0), values.shape)
         return Rationals(values=values, codes=codes, multipliers=(multiplier,))
 
     @staticmethod
@@ -44,18 +44,6 @@ class Rationals:
         fits = all(abs(value) < SAFE for value in whole)
         kind: Any = np.int64 if fits else object
         return Rationals.of(np.array(whole, kind), Fraction(1, below))
-
-    @staticmethod
-    def joined(parts: Sequence["Rationals"]) -> "Rationals":
-        """Return columns one after the other."""
-        before = np.cumsum([0] + [len(part.multipliers) for part in parts])
-        return Rationals(
-            values=np.concatenate([part.values for part in parts]),
-            codes=np.concatenate(
-                [part.codes + np.int32(start) for part, start in zip(parts, before, strict=False)]
-            ),
-            multipliers=tuple(factor for part in parts for factor in part.multipliers),
-        )
 
     def at(self, rows: IntArray) -> "Rationals":
         """Return some rows."""
@@ -107,7 +95,9 @@ class Rationals:
         source = self.values.astype(object) if wide else self.values
         result = np.zeros(source.shape[0], object if wide else np.int64)
         for ratio, rows in parts:
-            result[rows] = source[rows] // ratio.denominator * ratio.numerator
+            # Division takes long, and is by 1 more often than not.
+            whole = source[rows] if ratio.denominator == 1 else source[rows] // ratio.denominator
+            result[rows] = whole if ratio.numerator == 1 else whole * ratio.numerator
         return result.astype(np.int64) if wide and max(sizes, default=0) < SAFE else result
 
     def rounded(self, *, up: bool, what: str) -> IntArray:
@@ -150,13 +140,13 @@ def common_divisor(values: MoneyArray) -> int:
     if values.dtype == object:
         return math.gcd(0, *(int(value) for value in values.tolist()))
     # A few values bring the divisor down almost always; the rest is only checked against it.
-    found, sample = 0, 1024
-    rest: IntArray = values[values != 0] if values.shape[0] > sample else values
+    found, sample, rest = 0, 1024, values
     while rest.shape[0]:
         found = math.gcd(found, int(np.gcd.reduce(rest[:sample])))
         if found == 1:
             return 1
-        rest = rest[sample:] if found == 0 else rest[rest % found != 0]
+        rest = rest[sample:]
+        rest = rest[rest != 0] if found == 0 else rest[rest % found != 0]
     return found
 
 
