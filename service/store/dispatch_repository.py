@@ -38,6 +38,7 @@ class SqlDispatchRepository:
     ) -> Claim | None:
         """Give the run to ``token``; None when somebody else holds it or its time is over.
 
+        Which run is asked for is the caller's choice, in the order of ``waiting``.
         A lease that ran out counts as a crash of its holder; the last crash is not this method's to
         count, since it ends the run.
         """

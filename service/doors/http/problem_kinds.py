@@ -1,7 +1,8 @@
 """Every kind of problem that this door answers with, and what a reader of its page needs to know.
 
 A kind is a promise: its address ``/problems/SLUG`` is the ``type`` of RFC 9457 and never changes
-its meaning. ``tests/doors/http`` provokes each of them.
+its meaning. Its further members are given where the problem is raised (search for the name of the
+kind). ``tests/doors/http`` provokes each of them.
 """
 
 from collections.abc import Mapping
