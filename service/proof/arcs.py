@@ -8,18 +8,19 @@ of the item. Every lane that the item can use has its arc, also one that no solv
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import partial
 from typing import Literal, NamedTuple
 
 import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
-from service.proof.exact import Whole, joined, whole, whole_of
-from service.proof.groups import Wanted, wanted_of
+from service.proof.exact import Whole, joined, magnitude, whole, whole_of
+from service.proof.groups import Group, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
 from service.proof.sides import UNLIMITED, SiteSides, site_sides
 from service.proof.stock import Stock, stock_of
-from service.proof.usable import usable_lanes
+from service.proof.usable import of_rows, usable_lanes
 
 Kind = Literal[
     "supply", "draw", "keep", "enter", "handle", "leave", "serve", "pass", "want", "short"
@@ -35,6 +36,9 @@ class Node(NamedTuple):
 
 
 ROOT = Node(-1, "root", None)
+
+# What most arcs that are no lanes cost: known by itself, without looking at a fraction.
+NO_MONEY = Fraction(0)
 
 # Six columns of so many arcs fit 4 MiB of cache (measured: twice as fast as whole columns).
 PART_ARCS = 2**16
@@ -65,14 +69,24 @@ class Part(NamedTuple):
     capacity: Whole
 
 
+class Costs(NamedTuple):
+    """What a step costs on each lane, and on each arc that is none."""
+
+    lanes: Whole
+    others: Whole
+
+    def magnitude(self) -> int:
+        """Return the largest absolute cost, 0 if there are none."""
+        return max(magnitude(self.lanes), magnitude(self.others))
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ItemArcs:
     """The formal network of one item.
 
     ``rows`` are the usable lanes (shape (lanes,), ascending), which are the first arcs; ``arcs``
     are the others. ``lane_tail`` and ``lane_head`` are positions in ``nodes``, of which the root is
-    the first. ``priorities`` are those that occur, ascending. ``sides`` has what a site is made of,
-    by its position.
+    the first. ``others`` are ``arcs`` as columns. ``priorities`` are those that occur, ascending.
     """
 
     item: int
@@ -82,38 +96,37 @@ class ItemArcs:
     lane_head: CodeArray
     limits: LaneLimits
     arcs: tuple[Arc, ...]
+    others: Part
     nodes: tuple[Node, ...]
     place: Mapping[tuple[int, str, str | None], int]
     priorities: tuple[int, ...]
-    sides: Mapping[int, SiteSides]
     stock: Mapping[int, Stock]
     wanted: Wanted
 
     def tails(self) -> CodeArray:
         """Return the node that each arc leaves, lanes first."""
-        return np.append(self.lane_tail, _codes([arc.tail for arc in self.arcs]))
+        return np.append(self.lane_tail, self.others.tail)
 
     def heads(self) -> CodeArray:
         """Return the node that each arc enters, lanes first."""
-        return np.append(self.lane_head, _codes([arc.head for arc in self.arcs]))
+        return np.append(self.lane_head, self.others.head)
 
     def minimums(self) -> Whole:
         """Return the least flow on each arc, lanes first."""
-        return joined([self.limits.minimum, whole([arc.minimum for arc in self.arcs])])
+        return joined([self.limits.minimum, self.others.minimum])
 
     def capacities(self) -> Whole:
         """Return the most flow on each arc, lanes first; -1 is unlimited."""
-        return joined([self.limits.capacity, whole([arc.capacity for arc in self.arcs])])
+        return joined([self.limits.capacity, self.others.capacity])
 
     def ends(self, positions: IntArray) -> tuple[CodeArray, CodeArray]:
         """Return the nodes that the arcs at ``positions``, ascending, leave and enter."""
         lanes = len(self.rows)
         split = int(np.searchsorted(positions, lanes))
         on_lanes, others = positions[:split], positions[split:] - lanes
-        tail, head = self._other_ends()
         return (
-            np.append(self.lane_tail[on_lanes], tail[others]),
-            np.append(self.lane_head[on_lanes], head[others]),
+            np.append(self.lane_tail[on_lanes], self.others.tail[others]),
+            np.append(self.lane_head[on_lanes], self.others.head[others]),
         )
 
     def parts(self) -> Iterator[tuple[int, "Part"]]:
@@ -130,13 +143,7 @@ class ItemArcs:
                     self.limits.capacity[here],
                 ),
             )
-        tail, head = self._other_ends()
-        minimum = whole([arc.minimum for arc in self.arcs])
-        yield lanes, Part(tail, head, minimum, whole([arc.capacity for arc in self.arcs]))
-
-    def _other_ends(self) -> tuple[CodeArray, CodeArray]:
-        """Return the nodes that the arcs which are no lanes leave and enter."""
-        return _codes([arc.tail for arc in self.arcs]), _codes([arc.head for arc in self.arcs])
+        yield lanes, self.others
 
 
 def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -> ItemArcs:
@@ -160,15 +167,7 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
             build.stock(site, stock[site])
             build.keep(site, stock[site], priorities=priorities, shortage=allowed)
     for group in wanted.groups:
-        node = build.node(group.site, "demand", group.label)
-        made = sides[group.site]
-        build.serve(group.site, made, label=group.label, origins=group.origins)
-        build.add("want", node, 0, minimum=group.wanted, capacity=group.wanted, key=())
-        if allowed:
-            rank = priorities.index(group.priority) + 1 if group.priority else 0
-            money = (group.shortage_cost or Fraction(0)) * build.step
-            key = (group.site, group.label)
-            build.add("short", 0, node, money=money, rank=rank, key=key)
+        build.group(group, sides[group.site], priorities=priorities, shortage=allowed)
     tail, head = build.lane_ends(rows, sides)
     return ItemArcs(
         item=item,
@@ -178,24 +177,35 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
         lane_head=head,
         limits=limits,
         arcs=tuple(build.arcs),
-        nodes=tuple(map(Node._make, build.place)),
+        others=_as_columns(build.arcs),
+        # Node itself would be called through Python; this makes the same thing of each tuple.
+        nodes=tuple(map(partial(tuple.__new__, Node), build.place)),
         place=build.place,
         priorities=priorities,
-        sides=sides,
         stock=stock,
         wanted=wanted,
     )
 
 
-def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | None:
+def _as_columns(arcs: Sequence[Arc]) -> Part:
+    """Return ends and limits of arcs that are no lanes as columns."""
+    return Part(
+        np.array([arc.tail for arc in arcs], dtype=np.int32),
+        np.array([arc.head for arc in arcs], dtype=np.int32),
+        whole([arc.minimum for arc in arcs]),
+        whole([arc.capacity for arc in arcs]),
+    )
+
+
+def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Costs | None:
     """Return the money of one step on each arc, times ``scale``; None if any is not whole.
 
     Weights of shortage are not in it.
     """
     lanes = network.lanes
     measures = measures_on(network, arcs.item, arcs.rows)
-    values = lanes.unit_cost.values[arcs.rows]
-    codes = lanes.measure.codes[arcs.rows] if len(measures) > 1 else None
+    values = of_rows(lanes.unit_cost.values, arcs.rows)
+    codes = of_rows(lanes.measure.codes, arcs.rows) if len(measures) > 1 else None
     lane_costs: Whole = np.zeros(0 if codes is None else len(values), dtype=np.int64)
     for code, amount in measures.items():
         ratio = amount * scale / 10**lanes.unit_cost.exponent
@@ -209,10 +219,15 @@ def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | N
         if part.dtype == object:
             lane_costs = lane_costs.astype(object)
         lane_costs[here] = part
-    others = [arc.money * scale if arc.money else Fraction(0) for arc in arcs.arcs]
-    if any(cost.denominator != 1 for cost in others):
-        return None
-    return joined([lane_costs, whole([cost.numerator for cost in others])])
+    others = [0] * len(arcs.arcs)
+    for position, arc in enumerate(arcs.arcs):
+        if arc.money is NO_MONEY:
+            continue
+        cost = arc.money * scale
+        if cost.denominator != 1:
+            return None
+        others[position] = cost.numerator
+    return Costs(lane_costs, whole(others))
 
 
 class _Build:
@@ -225,7 +240,10 @@ class _Build:
         self.place: dict[tuple[int, str, str | None], int] = {ROOT: 0}
         self.arcs: list[Arc] = []
         self._network = network
-        self._handling = [site.handling(network.items[item].id) * step for site in network.sites]
+        name = network.items[item].id
+        self._handling = [
+            cost * step if (cost := site.handling(name)) else NO_MONEY for site in network.sites
+        ]
 
     def node(self, site: int, side: str, qualifier: str | None = None) -> int:
         """Return the position of a node, which is made if it is not there."""
@@ -239,7 +257,7 @@ class _Build:
         *,
         minimum: int = 0,
         capacity: int = UNLIMITED,
-        money: Fraction = Fraction(0),
+        money: Fraction = NO_MONEY,
         rank: int = 0,
         key: tuple[object, ...],
     ) -> None:
@@ -251,7 +269,8 @@ class _Build:
         entry, exit_ = self.node(site, "in"), self.node(site, "out")
         handling = self._handling[site]
         key: tuple[object, ...] = (site,)
-        self.add("handle", entry, exit_, capacity=made.through, money=handling, key=key)
+        # Every site has it, so that it is added without names.
+        self.arcs.append(Arc("handle", entry, exit_, 0, made.through, handling, 0, key))
         if made.has_sent:
             self.add("leave", exit_, self.node(site, "sent"), capacity=made.sent, key=key)
         for origin in made.received_from:
@@ -295,17 +314,30 @@ class _Build:
             rank = priorities.index(held.keep_priority) + 1
             self.add("short", 0, keep, rank=rank, key=(site, None))
 
-    def serve(
-        self, site: int, made: SiteSides, *, label: str, origins: frozenset[int] | None
+    def group(
+        self, group: Group, made: SiteSides, *, priorities: Sequence[int], shortage: bool
     ) -> None:
-        """Add the ways in which goods at a site reach a group there."""
+        """Add what a group wants, and the ways in which goods at its site reach it."""
+        site, label, add = group.site, group.label, self.arcs.append
         node = self.node(site, "demand", label)
-        if origins is None or site in origins:
-            self.add("serve", self.node(site, "out"), node, key=(site, label, "out", None))
-        if not made.apart:
-            return
+        if group.origins is None or site in group.origins:
+            key: tuple[object, ...] = (site, label, "out", None)
+            exit_ = self.place[(site, "out", None)]
+            add(Arc("serve", exit_, node, 0, UNLIMITED, NO_MONEY, 0, key))
+        if made.apart:
+            self._serve_arrived(group, made, node)
+        add(Arc("want", node, 0, group.wanted, group.wanted, NO_MONEY, 0, ()))
+        if shortage:
+            rank = priorities.index(group.priority) + 1 if group.priority else 0
+            cost = group.shortage_cost
+            money = cost * self.step if cost else NO_MONEY
+            add(Arc("short", 0, node, 0, UNLIMITED, money, rank, (site, label)))
+
+    def _serve_arrived(self, group: Group, made: SiteSides, node: int) -> None:
+        """Add the ways from where goods are received at the site of a group."""
+        site, label = group.site, group.label
         for origin in made.received_from:
-            if origins is not None and not made.allowed(origin, origins):
+            if group.origins is not None and not made.allowed(origin, group.origins):
                 continue
             name = self._id(origin)
             self.add(
@@ -330,8 +362,10 @@ class _Build:
                 continue
             received = (site, "received", None)
             entering[site] = self.place.get(received, self.place[(site, "in", None)])
-        tail, head = leaving[lanes.origin[rows]], entering[lanes.destination[rows]]
-        for position in np.flatnonzero(head < 0).tolist():
+        tail = leaving[of_rows(lanes.origin, rows)]
+        head = entering[of_rows(lanes.destination, rows)]
+        by_origin = any(made.by_origin for made in sides.values())
+        for position in np.flatnonzero(head < 0).tolist() if by_origin else ():
             row = int(rows[position])
             origin = self._id(int(lanes.origin[row]))
             head[position] = self.place[(int(lanes.destination[row]), "received", origin)]
@@ -340,8 +374,3 @@ class _Build:
     def _id(self, site: int | None) -> str | None:
         """Return the id of a site, None for none."""
         return None if site is None else self._network.sites[site].id
-
-
-def _codes(values: list[int]) -> CodeArray:
-    """Return positions as int32."""
-    return np.array(values, dtype=np.int32)

@@ -10,7 +10,7 @@ import numpy as np
 from service.network.columns import Item, Network
 from service.network.naming import lane_names
 from service.proof.flows import PlanLine
-from service.proof.numbers import numbers, together
+from service.proof.numbers import numbers, numbers_of, together
 from service.proof.order_lines import Paths
 from service.proof.results import ItemResult, lane_ends
 from service.proof.violations import Findings
@@ -80,34 +80,43 @@ class _Measures:
         """Read what is stated, and what a step of each item has."""
         self._stated = [_known([entry[field] for entry in documents]) for field in _FIELDS]
         self._of_step = [
-            [
-                None if per is None else per * item.step
-                for per in (_pallets(item), item.weight_kg, item.volume_m3)
-            ]
-            for item in network.items
+            _of_step([_pallets(item) for item in network.items], network),
+            _of_step([item.weight_kg for item in network.items], network),
+            _of_step([item.volume_m3 for item in network.items], network),
         ]
 
     def are_right(self, position: int, load: Sequence[tuple[int, int]]) -> bool:
         """Return whether one row states what ``load``, steps by item, comes to."""
-        for measure, (stated, below) in enumerate(self._stated):
-            said = stated[position]
-            total = self._total(measure, load)
-            if said is None or total is None:
-                if said is not None or total is not None:
+        for (stated, below), (of_step, below_step) in zip(self._stated, self._of_step, strict=True):
+            said, has = stated[position], _total(of_step, load)
+            if said is None or has is None:
+                if said is not None or has is not None:
                     return False
-            elif said * total.denominator != total.numerator * below:
+            elif said * below_step != has * below:
                 return False
         return True
 
-    def _total(self, measure: int, load: Sequence[tuple[int, int]]) -> Fraction | None:
-        """Return what a load comes to, None where an item of it does not say."""
-        total = Fraction(0)
-        for item, steps in load:
-            per = self._of_step[item][measure]
-            if per is None:
-                return None
-            total += steps * per
-        return total
+
+def _total(of_step: Sequence[int | None], load: Sequence[tuple[int, int]]) -> int | None:
+    """Return what a load comes to, None where an item of it does not say."""
+    total = 0
+    for item, steps in load:
+        per = of_step[item]
+        if per is None:
+            return None
+        total += steps * per
+    return total
+
+
+def _of_step(per_unit: Sequence[Fraction | None], network: Network) -> tuple[list[int | None], int]:
+    """Return a measure of one step of each item over a denominator, None where it is not known."""
+    known = numbers_of(
+        per * item.step
+        for per, item in zip(per_unit, network.items, strict=True)
+        if per is not None
+    )
+    each = iter(known.whole)
+    return [None if per is None else next(each) for per in per_unit], known.below
 
 
 def _known(texts: Sequence[str]) -> tuple[list[int | None], int]:

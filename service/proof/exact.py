@@ -36,7 +36,9 @@ def whole(values: list[int]) -> Whole:
 
 
 def times(values: Whole, factor: int) -> Whole:
-    """Return ``values * factor``."""
+    """Return ``values * factor``; times 1 these are ``values`` themselves."""
+    if factor == 1:
+        return values
     # Zeros times a factor beyond int64 are small, but the factor is not.
     small = abs(factor) < ROOM and values.dtype != object
     if small and magnitude(values) * abs(factor) < ROOM:
@@ -58,7 +60,7 @@ def whole_of(values: Whole, ratio: Fraction) -> tuple[Whole, BoolArray]:
     """Return values * ratio, rounded down, and where it was no whole number."""
     numerator = times(values, ratio.numerator)
     if ratio.denominator == 1:
-        return numerator, np.zeros(values.shape, dtype=np.bool_)
+        return numerator, np.broadcast_to(np.False_, values.shape)
     if ratio.denominator >= ROOM:
         numerator = numerator.astype(object)
     broken = (numerator % ratio.denominator != 0).astype(np.bool_)
@@ -89,6 +91,11 @@ def total(values: Whole) -> int:
     if values.dtype != object and magnitude(values) * max(1, len(values)) < ROOM:
         return int(values.sum())
     return sum(values.tolist())
+
+
+def repeated(value: int, count: int) -> Whole:
+    """Return ``count`` times ``value``, as a column that takes no memory and cannot be written."""
+    return np.broadcast_to(np.int64(value), (count,))
 
 
 def joined(parts: list[Whole]) -> Whole:

@@ -1,21 +1,19 @@
 """The flow on every arc, as plan and certificate say it."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
 from service.network.columns import Network
 from service.network.naming import lane_rows
 from service.proof.arcs import Arc, ItemArcs
-from service.proof.exact import Whole, joined, sums_at, whole
+from service.proof.exact import Positions, Whole, sums_at, whole
 from service.proof.numbers import numbers
 from service.proof.violations import Findings
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class PlanLine:
+class PlanLine(NamedTuple):
     """A plan line with its names found: ``row`` of the lane, -1 for goods used where they are."""
 
     place: str
@@ -59,16 +57,7 @@ class Names:
                 findings.add("listed_twice", "a plan line for the same lane and item", place=place)
                 sound = False
             seen.add(key)
-            lines.append(
-                PlanLine(
-                    place=place,
-                    row=row,
-                    item=item,
-                    origin=origin,
-                    destination=destination,
-                    document=line,
-                )
-            )
+            lines.append(PlanLine(place, row, item, origin, destination, line))
         return lines if sound else None
 
 
@@ -85,19 +74,25 @@ def item_flows(
     ``lines`` are the plan lines of the item that have a lane. What no document states follows from
     the rest: what is wanted returns to the root, and what enters a site is handled there.
     """
-    lane_flow = _lane_flow(arcs, lines, findings)
+    on_lanes = _lane_flow(arcs, lines, findings)
     stated = _stated(arcs, proof, names, findings)
-    if lane_flow is None or stated is None:
+    if on_lanes is None or stated is None:
         return None
+    places, steps = on_lanes
     nodes = len(arcs.nodes)
-    moved = np.flatnonzero(lane_flow != 0)
-    inflow: list[int] = sums_at(nodes, arcs.lane_head[moved], lane_flow[moved]).tolist()
-    outflow: list[int] = sums_at(nodes, arcs.lane_tail[moved], lane_flow[moved]).tolist()
+    inflow: list[int] = sums_at(nodes, arcs.lane_head[places], steps).tolist()
+    outflow: list[int] = sums_at(nodes, arcs.lane_tail[places], steps).tolist()
     flow = [arc.minimum if arc.kind == "want" else 0 for arc in arcs.arcs]
-    for position, steps in stated.items():
-        flow[position] = steps
+    for position, amount in stated.items():
+        flow[position] = amount
     _follow(arcs, flow, inflow=inflow, outflow=outflow)
-    return joined([lane_flow, whole(flow)])
+    others = whole(flow)
+    # Zeros that nobody writes to take no memory: few lanes carry anything.
+    wide = object in (steps.dtype, others.dtype)
+    result: Whole = np.zeros(len(arcs.rows) + len(others), dtype=object if wide else np.int64)
+    result[places] = steps
+    result[len(arcs.rows) :] = others
+    return result
 
 
 def _follow(
@@ -141,8 +136,10 @@ def _shelves(arcs: ItemArcs, flow: Sequence[int]) -> dict[int, int]:
     return leaves
 
 
-def _lane_flow(arcs: ItemArcs, lines: Sequence[PlanLine], findings: Findings) -> Whole | None:
-    """Return the flow on each usable lane; None where a plan line does not say it."""
+def _lane_flow(
+    arcs: ItemArcs, lines: Sequence[PlanLine], findings: Findings
+) -> tuple[Positions, Whole] | None:
+    """Return lanes that carry something and their flow; None where a plan line does not say it."""
     rows = np.array([line.row for line in lines], dtype=np.int64)
     places = np.searchsorted(arcs.rows, rows)
     usable = np.zeros(len(rows), dtype=np.bool_)
@@ -156,10 +153,7 @@ def _lane_flow(arcs: ItemArcs, lines: Sequence[PlanLine], findings: Findings) ->
             findings.add("quantity_wrong", "no whole number of steps above 0", place=line.place)
     if None in steps or not usable.all():
         return None
-    flow = whole([quantity or 0 for quantity in steps])
-    result: Whole = np.zeros(len(arcs.rows), dtype=flow.dtype)
-    result[places] = flow
-    return result
+    return places, whole([quantity or 0 for quantity in steps])
 
 
 # Where a certificate lists the flow of each kind of arc, and what tells one from another there.
@@ -176,28 +170,27 @@ def _stated(
     arcs: ItemArcs, proof: Mapping[str, Any], names: Names, findings: Findings
 ) -> dict[int, int] | None:
     """Return the flows that the certificate lists, by position of their arc; None if wrong."""
-    kinds = {kind for _, kind, _ in _TABLES}
-    known = {
-        (arc.kind, *arc.key): position
-        for position, arc in enumerate(arcs.arcs)
-        if arc.kind in kinds
-    }
+    known: dict[str, dict[tuple[object, ...], int]] = {kind: {} for _, kind, _ in _TABLES}
+    for position, arc in enumerate(arcs.arcs):
+        if arc.kind in known:
+            known[arc.kind][arc.key] = position
     flows: dict[int, int] = {}
     sound = True
     for table, kind, fields in _TABLES:
         entries = proof[table]
         steps = numbers([entry["quantity"] for entry in entries]).in_steps(arcs.step)
-        for position, (entry, quantity) in enumerate(zip(entries, steps, strict=True)):
-            site = names.sites.get(entry["site"], -1)
-            arc = known.get((kind, site, *(entry[field] for field in fields)))
-            if arc is not None and quantity is not None and arc not in flows:
-                flows[arc] = quantity
+        sites = [names.sites.get(entry["site"], -1) for entry in entries]
+        keys = zip(sites, *([entry[field] for entry in entries] for field in fields), strict=True)
+        for position, (key, quantity) in enumerate(zip(keys, steps, strict=True)):
+            at = known[kind].get(key)
+            if at is not None and quantity is not None and at not in flows:
+                flows[at] = quantity
                 continue
             sound = False
             place = f"/items/{proof['item']}/{table}/{position}"
-            if arc is None:
+            if at is None:
                 findings.add("name_unknown", "there is no such arc", place=place)
-            elif arc in flows:
+            elif at in flows:
                 findings.add("listed_twice", "a flow is stated twice", place=place)
             if quantity is None:
                 findings.add("quantity_wrong", "no whole number of steps above 0", place=place)

@@ -71,6 +71,9 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
     }
     # Whether a row says for itself what a step short of it costs.
     in_money = (demand.shortage_cost.present | demand.worth_at_most.present)[rows].tolist()
+    # Who says neither what it costs nor how important it is.
+    worth = options.worth_at_most
+    unnamed = (PRIORITY_DEFAULT, None) if worth is None else (0, worth)
     places: dict[tuple[object, ...], int] = {}
     lines: list[OrderLine] = []
     firsts: list[OrderLine] = []
@@ -89,40 +92,28 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
         wanted, over = divmod(quantity * ratio.numerator, ratio.denominator)
         if over:
             wanted = _rounded(network, options, row, down=wanted)
-        priority, cost = (
-            _importance(network, options, row, units[code]) if paid or not named else (named, None)
-        )
+        priority, cost = (named, None) if named else unnamed
+        if paid:
+            priority, cost = 0, _own_worth(network, row, units[code])
         key = (site, priority, cost, allowed)
         group = places.setdefault(key, len(places)) if wanted else -1
-        line = OrderLine(
-            row=row,
-            site=site,
-            wanted=wanted,
-            exact=not over,
-            priority=priority,
-            shortage_cost=cost,
-            origins=origins[allowed] if allowed >= 0 else None,
-            group=group,
-        )
+        accepted = origins[allowed] if allowed >= 0 else None
+        line = OrderLine(row, site, wanted, not over, priority, cost, accepted, group)
         lines.append(line)
         if group == len(firsts):
             firsts.append(line)
             sums.append(0)
         if group >= 0:
             sums[group] += wanted
+    labels: list[bytes] = demand.reference[[line.row for line in firsts]].tolist() if firsts else []
     return Wanted(
         lines=tuple(lines),
         groups=tuple(
+            # Order lines are sorted by reference: the first of a group has the smallest.
             Group(
-                # Order lines are sorted by reference: the first of a group has the smallest.
-                label=demand.reference[line.row].decode(),
-                site=line.site,
-                wanted=together,
-                priority=line.priority,
-                shortage_cost=line.shortage_cost,
-                origins=line.origins,
+                label.decode(), line.site, together, line.priority, line.shortage_cost, line.origins
             )
-            for line, together in zip(firsts, sums, strict=True)
+            for label, line, together in zip(labels, firsts, sums, strict=True)
         ),
     )
 
@@ -154,18 +145,11 @@ def _rounded(network: Network, options: Options, row: int, *, down: int) -> int:
     raise UnusableNetworkError(f"order line {reference!r} is off the step")
 
 
-def _importance(
-    network: Network, options: Options, row: int, units: Fraction
-) -> tuple[int, Fraction | None]:
-    """Return the priority of a row and None, or 0 and its shortage money per item unit."""
+def _own_worth(network: Network, row: int, units: Fraction) -> Fraction | None:
+    """Return the money per item unit that a row says for itself that it is worth."""
     demand = network.demand
     for column in (demand.shortage_cost, demand.worth_at_most):
         money = column.fraction(row)
         if money is not None:
-            return 0, money / units
-    priority = int(demand.priority[row])
-    if priority:
-        return priority, None
-    if options.worth_at_most is not None:
-        return 0, options.worth_at_most
-    return PRIORITY_DEFAULT, None
+            return money / units
+    return None

@@ -32,18 +32,12 @@ class Numbers:
 
 def numbers(texts: Sequence[str]) -> Numbers:
     """Return the values of texts of the shape ``is_amount``."""
-    places = 0
-    ratios = False
-    for text in texts:
-        point = text.find(".")
-        if point >= 0:
-            places = max(places, len(text) - point - 1)
-        elif "/" in text:
-            ratios = True
-    if ratios:
+    together = "".join(texts)
+    if "/" in together:
         return numbers_of(Fraction(text) for text in texts)
-    if places == 0:
-        return Numbers(whole=[int(text) for text in texts], below=1)
+    if "." not in together:
+        return Numbers(whole=list(map(int, texts)), below=1)
+    places = max(len(text.partition(".")[2]) for text in texts)
     below = 10**places
     whole = []
     for text in texts:

@@ -8,7 +8,7 @@ import numpy as np
 
 from service.network.columns import IntArray, Network
 from service.network.units import per_unit
-from service.proof.arcs import Arc, ItemArcs
+from service.proof.arcs import NO_MONEY, Arc, ItemArcs
 from service.proof.exact import Whole
 from service.proof.groups import Wanted
 from service.proof.numbers import Numbers, numbers_of
@@ -49,25 +49,29 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
     costs = lane_costs(network, arcs.rows[moved], arcs.item)
     carried = sum(steps * cost for steps, cost in zip(on_lane.values(), costs.whole, strict=True))
     money["transport"] = carried * arcs.step / costs.below
+    paid: dict[str, list[tuple[int, Fraction]]] = {part: [] for part in money}
     short = dict.fromkeys(arcs.priorities, 0)
     for arc, steps in zip(arcs.arcs, flow[lanes:].tolist(), strict=True):
         if not steps:
             continue
-        part = _PARTS.get(arc.kind)
-        if part is not None:
-            money[part] += steps * arc.money
+        kind = arc.kind
+        if arc.money is not NO_MONEY:
+            paid[_PARTS[kind]].append((steps, arc.money))
         if arc.rank:
             short[arcs.priorities[arc.rank - 1]] += steps
-        site = _site(arc)
-        if arc.kind == "draw":
-            drawn[(site, int(str(arc.key[1])))] = steps
-        elif arc.kind == "keep":
-            kept[site] = kept.get(site, 0) + steps
-        elif arc.kind == "serve":
-            group = (site, str(arc.key[1]))
+        if kind == "serve":
+            group = (_site(arc), str(arc.key[1]))
             served[group] = served.get(group, 0) + steps
-        elif arc.kind == "short" and arc.key[1] is None:
-            keep_short[site] = steps
+        elif kind == "draw":
+            drawn[(_site(arc), int(str(arc.key[1])))] = steps
+        elif kind == "keep":
+            kept[_site(arc)] = kept.get(_site(arc), 0) + steps
+        elif kind == "short" and arc.key[1] is None:
+            keep_short[_site(arc)] = steps
+    for part, amounts in paid.items():
+        rates = numbers_of(rate for _, rate in amounts)
+        whole = sum(steps * rate for (steps, _), rate in zip(amounts, rates.whole, strict=True))
+        money[part] += Fraction(whole, rates.below)
     return ItemResult(
         item=arcs.item,
         step=arcs.step,
@@ -121,5 +125,5 @@ def lane_ends(network: Network, rows: IntArray) -> dict[int, tuple[int, int]]:
 
 
 def _site(arc: Arc) -> int:
-    """Return the site that an arc's key begins with, -1 where it has no key."""
-    return int(str(arc.key[0])) if arc.key else -1
+    """Return the site that an arc's key begins with."""
+    return int(str(arc.key[0]))

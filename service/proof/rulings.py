@@ -19,7 +19,8 @@ from service.network.rules import (
     sites_selected,
 )
 from service.network.units import per_unit
-from service.proof.exact import Whole, floor_of, whole, whole_of
+from service.proof.exact import Whole, floor_of, repeated, whole, whole_of
+from service.proof.usable import of_rows
 
 
 class UnusableNetworkError(ValueError):
@@ -91,10 +92,13 @@ class Rulings:
         """
         minimum, broken = must_ship_steps(network, item, rows)
         capacity = capacity_steps(network, item, rows)
-        fixed = np.zeros(len(rows), dtype=np.bool_)
-        for ruling in self.rulings:
+        about = [ruling for ruling in self.rulings if ruling.items[item]]
+        if about:
+            minimum, capacity, broken = minimum.copy(), capacity.copy(), broken.copy()
+        fixed = np.zeros(len(rows) if about else 0, dtype=np.bool_)
+        for ruling in about:
             rule = ruling.rule
-            if not isinstance(rule, FixedQuantity) or not ruling.items[item]:
+            if not isinstance(rule, FixedQuantity):
                 continue
             here = ruling.lanes[rows]
             quantity, off = fixed_steps(network, item, rows, rule.quantity)
@@ -104,15 +108,15 @@ class Rulings:
             capacity = np.where(here, quantity, capacity)
             broken = np.where(here, off, broken)
             fixed |= here
-        for ruling in self.rulings:
-            if isinstance(ruling.rule, Closure) and ruling.items[item]:
+        for ruling in about:
+            if isinstance(ruling.rule, Closure):
                 closed = ruling.lanes[rows]
                 minimum[closed] = 0
                 capacity[closed] = 0
                 broken[closed] = False
         if broken.any():
             raise UnusableNetworkError("a must-ship or fixed quantity is off the step of its item")
-        if ((capacity >= 0) & (minimum > capacity)).any():
+        if minimum.any() and ((capacity >= 0) & (minimum > capacity)).any():
             raise UnusableNetworkError("a must-ship is above its capacity")
         return LaneLimits(minimum=minimum, capacity=capacity)
 
@@ -128,11 +132,13 @@ def measure_of(item: Item, measure: str) -> Fraction:
 def measures_on(network: Network, item: int, rows: IntArray) -> Mapping[int, Fraction]:
     """Return, by code of a measure on the lanes ``rows``, its amount in one step of ``item``."""
     lanes, thing = network.lanes, network.items[item]
-    used = np.bincount(lanes.measure.codes[rows], minlength=1)
-    return {
-        code: measure_of(thing, lanes.measure.values[code]) * thing.step
-        for code in np.flatnonzero(used).tolist()
-    }
+    # Every measure of the table is on one of its lanes.
+    used = (
+        list(range(len(lanes.measure.values)))
+        if len(rows) == len(lanes)
+        else np.flatnonzero(np.bincount(lanes.measure.codes[rows])).tolist()
+    )
+    return {code: measure_of(thing, lanes.measure.values[code]) * thing.step for code in used}
 
 
 def check_limits_are_clear(lanes: LaneTable, several: BoolArray) -> None:
@@ -145,9 +151,9 @@ def check_limits_are_clear(lanes: LaneTable, several: BoolArray) -> None:
 def must_ship_steps(network: Network, item: int, rows: IntArray) -> tuple[Whole, BoolArray]:
     """Return what must go on each lane in steps, and which of it is off the step."""
     column = network.lanes.must_ship
+    if not of_rows(column.present, rows).any():
+        return repeated(0, len(rows)), np.broadcast_to(np.False_, (len(rows),))
     broken = np.zeros(len(rows), dtype=np.bool_)
-    if not column.present[rows].any():
-        return np.zeros(len(rows), dtype=np.int64), broken
 
     def steps(here: IntArray, amount: Fraction) -> Whole:
         part, broken[here] = whole_of(column.values[rows[here]], 1 / (10**column.exponent * amount))
@@ -159,9 +165,9 @@ def must_ship_steps(network: Network, item: int, rows: IntArray) -> tuple[Whole,
 def capacity_steps(network: Network, item: int, rows: IntArray) -> Whole:
     """Return the capacity of each lane in steps, rounded down; -1 where there is none."""
     column = network.lanes.capacity
-    limited = column.present[rows]
+    limited = of_rows(column.present, rows)
     if not limited.any():
-        return np.full(len(rows), -1, dtype=np.int64)
+        return repeated(-1, len(rows))
     capacity = _by_measure(
         network,
         item,
@@ -192,7 +198,7 @@ def _by_measure(
     network: Network, item: int, rows: IntArray, steps: Callable[[IntArray, Fraction], Whole]
 ) -> Whole:
     """Return ``steps(places, amount of the measure in one step)`` for the lanes of each measure."""
-    codes = network.lanes.measure.codes[rows]
+    codes = of_rows(network.lanes.measure.codes, rows)
     result: Whole = np.zeros(len(rows), dtype=np.int64)
     for code, amount in measures_on(network, item, rows).items():
         here = np.flatnonzero(codes == code)

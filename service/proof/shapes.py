@@ -163,8 +163,10 @@ def _texts_hold(shape: Shape, values: Sequence[object]) -> bool:
     if shape is is_text or len(texts) != len(values):
         return len(texts) == len(values)
     pattern = _AMOUNT if shape is is_amount else _WHOLE
-    short = max(map(len, texts), default=0) <= AMOUNT_CHARACTERS_MAX
-    return short and all(map(pattern.fullmatch, texts))
+    # A column says the same again and again, such as 0.
+    distinct = set(texts)
+    short = max(map(len, distinct), default=0) <= AMOUNT_CHARACTERS_MAX
+    return short and all(map(pattern.fullmatch, distinct))
 
 
 def _records_hold(shape: record, values: Sequence[object]) -> bool:
@@ -178,6 +180,6 @@ def _records_hold(shape: record, values: Sequence[object]) -> bool:
     if not set(shape.required) <= keys <= shape.shapes.keys():
         return False
     # Rows that differ in what is optional are looked at one by one.
-    if any(row.keys() != keys for row in rows):
+    if not all(map(keys.__eq__, map(dict.keys, rows))):
         return all(shape(row) is None for row in rows)
     return all(all_hold(shape.shapes[key], [row[key] for row in rows]) for key in keys)

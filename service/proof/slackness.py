@@ -14,8 +14,8 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import IntArray, Network
-from service.proof.arcs import ItemArcs, scaled_costs
-from service.proof.exact import ROOM, Whole, joined, magnitude, plus, times, whole
+from service.proof.arcs import Costs, ItemArcs, scaled_costs
+from service.proof.exact import ROOM, Whole, magnitude, plus, times, whole
 from service.proof.flows import Names, describe
 from service.proof.violations import EXAMPLES_MAX, Findings
 
@@ -49,35 +49,36 @@ def check_slackness(  # noqa: PLR0913 - network, flow and prices come from three
         findings.add("not_optimal", detail, place=describe(arcs, position, network))
 
 
-def least_base(arcs: ItemArcs, money: Whole) -> int:
+def least_base(arcs: ItemArcs, money: Costs) -> int:
     """Return the least C that proves the order of priorities: 2 * nodes * max |cost| + 1."""
-    return 2 * len(arcs.nodes) * magnitude(money) + 1
+    return 2 * len(arcs.nodes) * money.magnitude() + 1
 
 
-def weighted(arcs: ItemArcs, money: Whole, base: int) -> Whole:
+def weighted(arcs: ItemArcs, money: Costs, base: int) -> Costs:
     """Return ``money``, and on shortage of the r-th of T priorities (T + 1 - r) * ``base`` more.
 
     No lane is one, so that only the few other arcs are added to.
     """
-    lanes = len(arcs.rows)
     above_last = len(arcs.priorities) + 1
     ranks = np.array([arc.rank for arc in arcs.arcs], dtype=np.int64)
-    others = plus(money[lanes:], times(np.where(ranks > 0, above_last - ranks, 0), base))
-    return joined([money[:lanes], others])
+    others = plus(money.others, times(np.where(ranks > 0, above_last - ranks, 0), base))
+    return Costs(money.lanes, others)
 
 
-def contradictions(arcs: ItemArcs, flow: Whole, *, cost: Whole, price: Whole) -> IntArray:
+def contradictions(arcs: ItemArcs, flow: Whole, *, cost: Costs, price: Whole) -> IntArray:
     """Return the positions of arcs on which flow and prices contradict least cost.
 
-    ``cost`` has shape (arcs,), ``price`` shape (nodes,), both scaled money per step. An unlimited
-    arc has capacity -1, which no flow equals. Empty means proven, given a feasible flow.
+    ``flow`` has shape (arcs,), lanes first, ``price`` shape (nodes,) in scaled money per step, as
+    ``cost`` is. An unlimited arc has capacity -1, which no flow equals. Empty means proven, given a
+    feasible flow.
     """
-    if magnitude(cost) + 2 * magnitude(price) >= ROOM:
-        cost, price = cost.astype(object), price.astype(object)
-    found = []
+    if cost.magnitude() + 2 * magnitude(price) >= ROOM:
+        cost, price = Costs(*(part.astype(object) for part in cost)), price.astype(object)
+    lanes, found = len(arcs.rows), []
     for first, part in arcs.parts():
         stop = first + len(part.tail)
-        reduced = cost[first:stop] + price[part.tail]
+        own = cost.lanes[first:stop] if first < lanes else cost.others
+        reduced = own + price[part.tail]
         reduced -= price[part.head]
         carried = flow[first:stop]
         not_full = (reduced < 0) & (carried != part.capacity)

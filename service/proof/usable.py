@@ -1,9 +1,14 @@
 """Which lanes an item can use, and which stock can reach a site; closures change neither."""
 
+from typing import Any, TypeVar
+
 import numpy as np
+from numpy.typing import NDArray
 
 from service.network.columns import BoolArray, IntArray, Network
 from service.proof.exact import Positions
+
+Value = TypeVar("Value", bound="np.generic[Any]")
 
 
 def cross_docks(network: Network) -> BoolArray:
@@ -42,6 +47,15 @@ def usable_lanes(network: Network, item: int) -> IntArray:
     takes = _spread(takes, destination, origin, passing)
     useful: BoolArray = own[candidates] | (sends[origin] & takes[destination])
     return np.compress(useful, candidates)
+
+
+def of_rows(column: NDArray[Value], rows: IntArray) -> NDArray[Value]:
+    """Return what a column of all lanes says of ``rows``, ascending and distinct; do not write it.
+
+    Where these are all rows it is the column itself: a copy of a million values takes longer than
+    to check them.
+    """
+    return column if len(rows) == len(column) else column[rows]
 
 
 def _spread(start: BoolArray, tail: Positions, head: Positions, passing: BoolArray) -> BoolArray:

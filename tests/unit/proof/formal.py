@@ -61,7 +61,7 @@ def written(network: Network, options: Options | None = None) -> set[Written]:
             name(arcs.lane_head[at]),
             int(arcs.limits.minimum[at]),
             int(arcs.limits.capacity[at]),
-            Fraction(int(costs[at]), 1_000_000),
+            Fraction(int(costs.lanes[at]), 1_000_000),
         )
         for at in range(len(arcs.rows))
     }

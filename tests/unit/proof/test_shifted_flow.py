@@ -77,7 +77,7 @@ def _shift(seed: int) -> int:
             for tail, head in zip(cycle, cycle[1:] + cycle[:1], strict=True):
                 at, sign = graph.edges[tail, head]["step"]
                 shifted[at] += sign
-            added = int(((shifted - flow) * cost).sum())
+            added = int(((shifted - flow) * np.concatenate(cost)).sum())
 
             refused = contradictions(arcs, shifted, cost=cost, price=price)
 
