@@ -266,7 +266,7 @@ def _absent_column(form: ColumnForm, rows: int) -> object:
     if form.kind == "texts":
         return no_texts(rows)
     if form.kind == "text":
-        return np.zeros(rows, dtype="S1")
+        return np.broadcast_to(np.bytes_(b""), (rows,))
     return np.broadcast_to(np.int32(0 if form.kind == "small" else -1), rows)
 
 

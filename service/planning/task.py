@@ -95,15 +95,18 @@ def plan(
     (output_folder / PLAN_FILE).write_bytes(plan_bytes)
     (output_folder / CERTIFICATE_FILE).write_bytes(certificate_bytes)
     clock.phase("written", bytes=len(plan_bytes) + len(certificate_bytes))
+    state: State = "no_plan" if cuts else "planned"
+    sifted = search.sifted
+    left = left_by(network, sifted, cost_scale=compiled.cost_scale) if sifted else None
+    # The proof reads network and documents alone; what planning made would double its memory.
+    del compiled, search, sifted, solved, cuts, document, certificate
     found = prove(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
     clock.phase("proved", violations=len(found))
     if found:
         return clock.outcome("failed", FailureReason.PROOF_FAILED, _in_words(found))
-    if search.sifted:
-        left_by(network, search.sifted, cost_scale=compiled.cost_scale).write(
-            output_folder / WARM_START_FILE
-        )
-    return clock.outcome("no_plan" if cuts else "planned", None, None)
+    if left is not None:
+        left.write(output_folder / WARM_START_FILE)
+    return clock.outcome(state, None, None)
 
 
 class _Search:
