@@ -28,8 +28,8 @@ PR_SET_PDEATHSIG = 1
 # Halfway to "end this one first" (1000): when the machine runs out of memory the kernel shall take
 # the child, whose run then fails with a reason, and not the service.
 OOM_SCORE_ADJUSTMENT = 500
-# So many objects more than before, of at least 64 bytes: some 13 MB.
-GARBAGE_LOOKED_FOR_AFTER = 200_000
+# So many objects more than before, of at least 64 bytes: some 32 MB.
+GARBAGE_LOOKED_FOR_AFTER = 500_000
 # Nobody looks more often, and a thousand small items would otherwise fill the log of the service.
 TELL_SECONDS = 0.2
 

@@ -28,34 +28,46 @@ class ItemTieBreak:
 
     def __call__(self, positions: IntArray) -> tuple[IntArray, IntArray]:
         """Return tie weights and ranks in the order (kind, id) of the arcs at ``positions``."""
-        named = self._names(positions)
-        weight = np.array([tie_weight(*name) if name else 0 for name in named], np.int64)
-        order = sorted(
-            range(len(named)),
-            key=lambda at: (
-                named[at] is None,
-                [part.encode() for part in named[at] or ()],
-                int(positions[at]),
-            ),
-        )
-        rank = np.empty(len(named), np.int64)
-        rank[order] = np.arange(len(named))
+        at, names = self._names(positions)
+        weight = np.zeros(positions.shape[0], np.int64)
+        weight[at] = [tie_weight(*name) for name in names]
+        keys = [tuple(part.encode() for part in name) for name in names]
+        place = positions[at].tolist()
+        first = at[sorted(range(len(names)), key=lambda one: (keys[one], place[one]))]
+        # What has no name comes last, as it stands.
+        nameless = np.ones(positions.shape[0], np.bool_)
+        nameless[at] = False
+        last = np.flatnonzero(nameless)
+        last = last[np.argsort(positions[last], kind="stable")]
+        rank = np.empty(positions.shape[0], np.int64)
+        rank[np.concatenate((first, last))] = np.arange(positions.shape[0])
         return weight, rank
 
-    def _names(self, positions: IntArray) -> list[tuple[str, str] | None]:
-        """Return (kind, id) of each arc, None for one that follows from others."""
+    def _names(self, positions: IntArray) -> tuple[IntArray, list[tuple[str, str]]]:
+        """Return which of ``positions`` have a name, and (kind, id) of each; others follow."""
         own = self.own
         kinds, subjects = own.kind[positions], own.subject[positions]
-        names: list[tuple[str, str] | None] = [None] * positions.shape[0]
         lanes = np.flatnonzero(kinds == Kind.LANE)
-        rows = own.lanes.rows[subjects[lanes]]
-        for at, name in zip(lanes.tolist(), lane_names(self.network, rows), strict=True):
-            names[at] = ("lane", name)
-        for at in np.flatnonzero(kinds != Kind.LANE).tolist():
-            names[at] = self._name(Kind(int(kinds[at])), int(subjects[at]), int(positions[at]))
-        return names
+        names = lane_names(self.network, own.lanes.rows[subjects[lanes]])
+        said = np.isin(kinds, [Kind.SUPPLY, Kind.SHORT, Kind.KEEP_SHORT])
+        serving = np.flatnonzero(np.isin(kinds, [Kind.SERVE, Kind.SERVE_ARRIVED]))
+        # Elsewhere who serves a group follows from what is short.
+        said[serving] = own.layout.apart[own.groups.site[subjects[serving]]]
+        others = np.flatnonzero(said)
+        return np.concatenate((lanes, others)), [
+            *(("lane", name) for name in names),
+            *(
+                self._name(Kind(kind), subject, position)
+                for kind, subject, position in zip(
+                    kinds[others].tolist(),
+                    subjects[others].tolist(),
+                    positions[others].tolist(),
+                    strict=True,
+                )
+            ),
+        ]
 
-    def _name(self, kind: Kind, subject: int, position: int) -> tuple[str, str] | None:
+    def _name(self, kind: Kind, subject: int, position: int) -> tuple[str, str]:
         """Return (kind, id) of an arc that is no lane."""
         own = self.own
         if kind == Kind.SUPPLY:
@@ -64,12 +76,8 @@ class ItemTieBreak:
             return "short", self._group(subject)
         if kind == Kind.KEEP_SHORT:
             return "short", f"{self._site(own.stock.kept_site[subject])}#keep"
-        if kind in (Kind.SERVE, Kind.SERVE_ARRIVED):
-            site = own.groups.site[subject]
-            if not own.layout.apart[site]:
-                return None  # Follows from what is short.
-            return "serve", f"{self._group(subject)}#{self._origin(position, int(site))}"
-        return None
+        site = int(own.groups.site[subject])
+        return "serve", f"{self._group(subject)}#{self._origin(position, site)}"
 
     def _origin(self, position: int, site: int) -> str:
         """Return whose goods a serving arc brings: the site's own, or those of an origin."""
