@@ -285,6 +285,6 @@ def _read_column(
     codes = code_column(entry, rows)
     least = 0 if form.required or form.kind == "small" else -1
     most = 9 if form.of is None else counts[form.of] - 1
-    if bool(((codes < least) | (codes > most)).any()):
+    if rows and (int(codes.min()) < least or int(codes.max()) > most):
         raise NormalFormError(f"{form.name} is out of range")
     return codes

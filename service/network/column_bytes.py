@@ -135,7 +135,7 @@ def decimal_column(data: Octets, rows: int, *, exponent: int, nulls: bool) -> De
             raise NormalFormError("an absent decimal holds a value")
         if present.all() or not present.any():
             raise NormalFormError("the bitmap of absent decimals is not needed")
-    if ((values >= SCALED_MAX) | (values <= -SCALED_MAX)).any():
+    if values.max(initial=0) >= SCALED_MAX or values.min(initial=0) <= -SCALED_MAX:
         raise NormalFormError("a decimal is out of range")
     if not 0 <= exponent <= EXPONENT_MAX or (exponent_and_values(values, exponent)[0] != exponent):
         raise NormalFormError("the exponent is not the least one")
@@ -168,9 +168,11 @@ def texts_column(data: Octets, rows: int) -> Texts:
     if any(former >= latter for former, latter in itertools.pairwise(values)):
         raise NormalFormError("the values of a column of texts are not sorted and distinct")
     codes = code_column(data[place:], rows)
-    if bool(((codes < -1) | (codes >= count)).any()):
+    if int(codes.min()) < -1 or int(codes.max()) >= count:
         raise NormalFormError("a code of a text is out of range")
-    if not np.bincount(codes[codes >= 0], minlength=count).all():
+    # One value is used by whoever is not -1; to count a million codes takes far longer.
+    used = [codes.max() == 0] if count == 1 else np.bincount(codes + 1, minlength=count + 1)[1:]
+    if not all(used):
         raise NormalFormError("a value of a column of texts is not used")
     return Texts(codes=codes, values=tuple(values))
 

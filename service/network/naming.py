@@ -50,6 +50,13 @@ def follows_its_like(lanes: LaneTable) -> BoolArray:
     return follows
 
 
+def rows_with_ids(lanes: LaneTable) -> IntArray:
+    """Return the rows of the lanes that have an id."""
+    # Where none has one, a single empty value stands for the whole column.
+    one_for_all = lanes.ids.strides == (0,) and not lanes.ids[:1].any()
+    return np.zeros(0, np.int64) if one_for_all else np.flatnonzero(lanes.ids != b"")
+
+
 def ranks(lanes: LaneTable) -> IntArray:
     """Return, for each lane, its position among the lanes of its origin, destination and item.
 
@@ -96,8 +103,7 @@ def lane_rows(network: Network, names: Iterable[str]) -> list[int]:
         return []
     rows = _unnamed_rows(network, wanted)
     lanes = network.lanes
-    # Where no lane has an id, one value stands for all of them.
-    given = np.flatnonzero((lanes.ids[:1] if lanes.ids.strides == (0,) else lanes.ids) != b"")
+    given = rows_with_ids(lanes)
     if len(given):
         # A NUL cannot stand in an id, and NumPy would take it for padding.
         encodable = [name.encode("utf-8", "replace") for name in wanted if "\0" not in name]

@@ -21,6 +21,7 @@ from service.network.columns import (
     SupplyTable,
     Texts,
 )
+from service.network.naming import rows_with_ids
 from service.network.normal_form import lane_order, rule_key, supply_order
 from service.network.normal_rules import check_rule
 from service.network.strict_json import StrictJsonError, strict_json
@@ -124,15 +125,16 @@ def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
     """Raise unless lanes are in order, distinct, and their limits are none below zero."""
     _check(np.array_equal(lane_order(lanes), np.arange(len(lanes))), "lane order")
     _check(not bool((lanes.origin == lanes.destination).any()), "a lane from a site to itself")
-    named = lanes.ids[lanes.ids != b""].tolist()
+    named = lanes.ids[rows_with_ids(lanes)].tolist()
     _check(len(set(named)) == len(named), "a lane id occurs twice")
     _check(bool(lanes.unit_cost.present.all()), "a lane without a cost")
-    _check(bool((lanes.measure.codes >= 0).all()), "a lane without a measure")
+    _check(int(lanes.measure.codes.min(initial=0)) >= 0, "a lane without a measure")
     _check(set(lanes.per.values) <= {"item"}, "an unknown per")
     _check_not_negative(lanes.capacity)
     _check(bool((lanes.must_ship.values[lanes.must_ship.present] > 0).all()), "a must-ship of 0")
     own = lanes.item >= 0
-    for item, measure in _pairs(lanes.item[own], lanes.measure.codes[own], lanes.measure):
+    at = slice(None) if own.all() else own
+    for item, measure in _pairs(lanes.item[at], lanes.measure.codes[at], lanes.measure):
         _check(has_measure(items[item], measure), "an unknown measure")
     _check_lists(lanes.tags)
     _check_objects(lanes.extra)
@@ -173,7 +175,7 @@ def _check_required(column: Decimals) -> None:
 
 def _check_not_negative(column: Decimals) -> None:
     """Raise if any value is below 0."""
-    _check(not bool((column.values < 0).any()), "a negative quantity")
+    _check(int(column.values.min(initial=0)) >= 0, "a negative quantity")
 
 
 def _check_lists(column: Texts) -> list[list[str]]:

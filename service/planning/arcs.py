@@ -142,7 +142,7 @@ def total(values: MoneyArray | IntArray) -> int:
 
 def product_total(left: MoneyArray | IntArray, right: MoneyArray | IntArray) -> int:
     """Return the exact sum of ``left * right``, such as flow times cost."""
-    used = np.flatnonzero((left != 0) & (right != 0))
+    used = np.flatnonzero(left)
     return sum(
         int(a) * int(b) for a, b in zip(left[used].tolist(), right[used].tolist(), strict=True)
     )

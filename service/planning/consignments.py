@@ -1,16 +1,15 @@
 """All goods on one lane together: what a carrier is told."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from fractions import Fraction
+from typing import NamedTuple
 
 from service.network.columns import Network
 from service.planning.amounts import UNKNOWN, Measured, pallets_per_unit, text, texts
 from service.planning.plan_lines import ItemPlan, PlanLine
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class _OnLane:
+class _OnLane(NamedTuple):
     """The goods of one item on one lane: its plan line, and its measures as text."""
 
     item: int
@@ -72,7 +71,7 @@ def _goods(network: Network, plan: ItemPlan, scale: Fraction) -> list[_OnLane]:
         return texts(steps, item.step * per_unit)
 
     return [
-        _OnLane(item=number, line=line, pallets=pallets, weight=weight, volume=volume, cost=cost)
+        _OnLane(number, line, pallets, weight, volume, cost)
         for line, pallets, weight, volume, cost in zip(
             lines,
             measured(pallets_per_unit(item)),
