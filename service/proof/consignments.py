@@ -1,7 +1,7 @@
 """Consignments: what is on each lane, over all items."""
 
 from collections import defaultdict
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from fractions import Fraction
 from typing import Any
 
@@ -12,7 +12,7 @@ from service.network.naming import lane_names
 from service.proof.flows import PlanLine
 from service.proof.numbers import numbers, numbers_of, together
 from service.proof.order_lines import Paths
-from service.proof.results import ItemResult, lane_ends
+from service.proof.results import ItemResult
 from service.proof.violations import Findings
 
 UNKNOWN = "unknown"
@@ -45,56 +45,60 @@ def check_consignments(  # noqa: PLR0913 - a consignment repeats something of ev
     if len(documents) != len(rows):
         findings.add("consignment_wrong", "not the lanes in use", place="/consignments")
     at = np.array(rows, dtype=np.int64)
-    ends = lane_ends(network, at)
-    measures = _Measures(network, documents)
+    names = np.array([site.id for site in network.sites], dtype=object)
+    carriers = np.array([*lanes.carrier.values, None], dtype=object)
     stated = numbers([entry["cost"] for entry in documents])
-    columns = zip(
-        documents,
-        stated.whole,
-        rows,
-        lane_names(network, at),
-        lanes.carrier.codes[at].tolist(),
-        strict=False,
-    )
-    for position, (entry, cost, row, name, carrier) in enumerate(columns):
-        origin, destination = ends[row]
-        references = paths.references.get(row, set())
-        if (
-            entry["lane"] != name
-            or entry["carrier"] != (None if carrier < 0 else lanes.carrier.values[carrier])
-            or entry["origin"] != network.sites[origin].id
-            or entry["destination"] != network.sites[destination].id
-            or not measures.are_right(position, loads[row])
-            or cost * below != costs[row] * stated.below
+    # What is stated beside what should be, a column at a time: most are right as a whole.
+    columns: list[tuple[list[Any], list[Any]]] = [
+        ([entry["lane"] for entry in documents], lane_names(network, at)),
+        ([entry["carrier"] for entry in documents], carriers[lanes.carrier.codes[at]].tolist()),
+        ([entry["origin"] for entry in documents], names[lanes.origin[at]].tolist()),
+        ([entry["destination"] for entry in documents], names[lanes.destination[at]].tolist()),
+        (
+            [entry["order_references"] for entry in documents],
             # Characters sort as their UTF-8 bytes do.
-            or entry["order_references"] != sorted(references)
-        ):
-            place = f"/consignments/{position}"
-            findings.add("consignment_wrong", "not what is on its lane", place=place)
+            [sorted(paths.references.get(row, ())) for row in rows],
+        ),
+        (
+            [cost * below for cost in stated.whole],
+            [costs[row] * stated.below for row in rows],
+        ),
+        *_measures(network, documents, [loads[row] for row in rows]),
+    ]
+    wrong = {position for column in columns for position in _differing(*column)}
+    for position in sorted(wrong):
+        place = f"/consignments/{position}"
+        findings.add("consignment_wrong", "not what is on its lane", place=place)
 
 
-class _Measures:
-    """Compares pallets, weight and volume as stated with what a load has."""
+def _differing(stated: Sequence[object], expected: Sequence[object]) -> list[int]:
+    """Return the positions of what is in both columns and differs."""
+    if stated == expected:
+        return []
+    pairs = enumerate(zip(stated, expected, strict=False))
+    return [position for position, (said, should) in pairs if said != should]
 
-    def __init__(self, network: Network, documents: Sequence[Mapping[str, Any]]) -> None:
-        """Read what is stated, and what a step of each item has."""
-        self._stated = [_known([entry[field] for entry in documents]) for field in _FIELDS]
-        self._of_step = [
-            _of_step([_pallets(item) for item in network.items], network),
-            _of_step([item.weight_kg for item in network.items], network),
-            _of_step([item.volume_m3 for item in network.items], network),
-        ]
 
-    def are_right(self, position: int, load: Sequence[tuple[int, int]]) -> bool:
-        """Return whether one row states what ``load``, steps by item, comes to."""
-        for (stated, below), (of_step, below_step) in zip(self._stated, self._of_step, strict=True):
-            said, has = stated[position], _total(of_step, load)
-            if said is None or has is None:
-                if said is not None or has is not None:
-                    return False
-            elif said * below_step != has * below:
-                return False
-        return True
+def _measures(
+    network: Network,
+    documents: Sequence[Mapping[str, Any]],
+    loads: Sequence[Sequence[tuple[int, int]]],
+) -> Iterator[tuple[list[int | None], list[int | None]]]:
+    """Yield pallets, weight and volume as stated, and as each load (steps by item) has them."""
+    items = network.items
+    of_units = (
+        [_pallets(item) for item in items],
+        [item.weight_kg for item in items],
+        [item.volume_m3 for item in items],
+    )
+    for field, of_unit in zip(_FIELDS, of_units, strict=True):
+        stated, below = _known([entry[field] for entry in documents])
+        of_step, below_step = _of_step(of_unit, network)
+        has = [_total(of_step, load) for load in loads]
+        yield (
+            [None if said is None else said * below_step for said in stated],
+            [None if total is None else total * below for total in has],
+        )
 
 
 def _total(of_step: Sequence[int | None], load: Sequence[tuple[int, int]]) -> int | None:
