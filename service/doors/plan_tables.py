@@ -32,6 +32,8 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "handling_cost",
         "charges",
         "cost",
+        "stated",
+        "charge_parts",
     ),
     "order_lines": (
         "reference",
@@ -71,6 +73,18 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "kept",
     ),
     "site_use": ("site", "item", "available", "shipped", "kept", "left"),
+    "currencies": (
+        "currency",
+        "rate",
+        "per",
+        "as_of",
+        "source",
+        "supply",
+        "transport",
+        "charges",
+        "amount",
+        "converted",
+    ),
     "totals": ("table", "rows", "column", "total"),
 }
 # Columns of exact numbers as text. They add up over all rows but where a number belongs to a unit.
@@ -88,8 +102,10 @@ AMOUNTS: Mapping[str, tuple[str, ...]] = {
     "consignments": ("pallets", "weight_kg", "volume_m3", "cost"),
     "shortages": ("quantity",),
     "site_use": ("available", "shipped", "kept", "left"),
+    "currencies": ("rate", "per", "supply", "transport", "charges", "amount", "converted"),
     "totals": ("total",),
 }
+OPTIONAL: Final = frozenset({"currencies"})
 # What is a whole number in JSON too; amounts are text there, and decimals in typed files.
 WHOLE: Final = frozenset({"priority", "rows"})
 _NOT_ADDED: Final = frozenset(
@@ -101,7 +117,8 @@ def table_rows(plan: Mapping[str, Any], table: str) -> Sequence[Mapping[str, Any
     """Return the rows of one table of ``plan``, or of ``totals``; ``table`` is in ``COLUMNS``."""
     if table == "totals":
         return list(_totals(plan))
-    rows: Sequence[Mapping[str, Any]] = plan[table]
+    # Only a plan with exchange rates has the table of currencies.
+    rows: Sequence[Mapping[str, Any]] = plan.get(table, ()) if table in OPTIONAL else plan[table]
     return rows
 
 
@@ -111,11 +128,12 @@ def _totals(plan: Mapping[str, Any]) -> Iterator[Mapping[str, object]]:
     Quantities are added as they are written, over all items.
     """
     for table in COLUMNS:
-        if table == "totals":
+        if table == "totals" or (table in OPTIONAL and table not in plan):
             continue
-        rows = plan[table]
+        rows = table_rows(plan, table)
         for column in AMOUNTS[table]:
-            if column in _NOT_ADDED:
+            # Other currencies do not add up; what they come to in the plan's does.
+            if column in _NOT_ADDED or (table == "currencies" and column != "converted"):
                 continue
             total = exact_text(_sum(row.get(column) for row in rows))
             yield {"table": table, "rows": len(rows), "column": column, "total": total}

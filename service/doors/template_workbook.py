@@ -15,7 +15,6 @@ from service.network.files.table_columns import (
     FAMILIES,
     PAIR_COLUMNS,
     TABLES,
-    WANTED,
     Kind,
     field_of,
 )
@@ -28,7 +27,8 @@ if TYPE_CHECKING:
 _CREATED: Final = dt.datetime(1980, 1, 1)  # noqa: DTZ001 - the library wants it without a zone
 _INTRODUCTION: Final = """\
 Replace the example by your own rows. Each sheet is a table, its first row names the columns.
-A column may be left out where it is not needed, and so may the sheets packs, rules and control.
+A column may be left out where it is not needed, and so may the sheets packs, rules,
+exchange_rates and control.
 An empty cell says nothing. Keep columns of text formatted as text, or ids lose zeros in front.
 Numbers have at most 3 decimals (quantities) or 6 (money, rates, weights); thousands are not parted.
 This sheet is not read.
@@ -135,7 +135,7 @@ def _write_notes(workbook: "Workbook", formats: Mapping[str, "Format"]) -> None:
     number += 2
     for table, fields in TABLES.items():
         for column, field in fields.items():
-            need = "yes" if field.needed and table in {*WANTED, "packs", "rules"} else ""
+            need = "yes" if field.needed and table != "control" else ""
             put_row(sheet, number, (table, column, need or None, field.meaning), (), formats)
             number += 1
         for family, field in FAMILIES.items():

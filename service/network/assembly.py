@@ -10,6 +10,7 @@ import numpy as np
 
 from service.network.columns import BoolArray, IntArray, LaneTable, Network
 from service.network.lane_names import own_names_dropped
+from service.network.money import factors
 from service.network.normal_form import lane_order, rule_key, supply_order
 from service.network.rule_reading import SentRule
 from service.network.table_rows import rows_of
@@ -39,7 +40,7 @@ def assemble(
     supply, demand, lanes = sent.supply, sent.demand, sent.lanes
     stock_rows = _sound(supply.faults.bad)
     stock = rows_of(supply.table, stock_rows)
-    order = supply_order(stock, things.items)
+    order = supply_order(stock, things.items, factors(head))
     stock, stock_rows = rows_of(stock, order), stock_rows[order]
 
     lines_rows = _sound(demand.faults.bad)

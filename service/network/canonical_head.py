@@ -18,7 +18,8 @@ DECIMAL = re.compile(r"-?(0|[1-9][0-9]{0,18})(\.[0-9]{0,5}[1-9])?")
 _ID = re.compile(r"[^\x00-\x1f\x7f]{1,64}")
 
 _ITEM_FIELDS = frozenset(
-    {"id", "unit", "step", "name", "gtin", "weight_kg", "volume_m3", "packs", "tags", "extra"}
+    {"id", "unit", "step", "name", "gtin", "weight_kg", "volume_m3", "value", "packs", "tags"}
+    | {"extra"}
 )
 _SITE_FIELDS = frozenset(
     {"id", "roles", "name", "gln", "latitude", "longitude", "time_zone", "country"}
@@ -30,7 +31,8 @@ def item_document(item: Item) -> dict[str, object]:
     """Return ``item`` as JSON, absent fields left out."""
     document: dict[str, object] = {"id": item.id, "unit": item.unit, "step": exact_text(item.step)}
     _add(document, name=item.name, gtin=item.gtin, weight_kg=item.weight_kg)
-    _add(document, volume_m3=item.volume_m3, tags=list(item.tags), extra=dict(item.extra))
+    _add(document, volume_m3=item.volume_m3, value=item.value)
+    _add(document, tags=list(item.tags), extra=dict(item.extra))
     packs = [{"unit": pack.unit, "contains": exact_text(pack.contains)} for pack in item.packs]
     _add(document, packs=packs)
     return document
@@ -93,6 +95,7 @@ def item_of(document: object) -> Item:
         packs=tuple(packs),
         tags=_tags(known),
         extra=_texts_by_key(known, "extra"),
+        value=_decimal_or_none(known, "value"),
     )
 
 

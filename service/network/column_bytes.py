@@ -60,7 +60,7 @@ SUPPLY_FORMS = (
     _form("quantity", "decimal", required=True),
     _form("unit", "texts", required=True),
     *(_form(name, "decimal") for name in ("unit_cost", "on_hand", "reserved", "on_hold")),
-    *(_form(name, "texts") for name in ("as_of", "lot", "best_before")),
+    *(_form(name, "texts") for name in ("currency", "as_of", "lot", "best_before")),
     _form("keep_quantity", "decimal"),
     _form("keep_priority", "small"),
     _form("extra", "texts"),
@@ -87,7 +87,7 @@ LANE_FORMS = (
     _form("measure", "texts", required=True),
     _form("must_ship", "decimal"),
     _form("capacity", "decimal"),
-    *(_form(name, "texts") for name in ("per", "carrier", "tags", "extra")),
+    *(_form(name, "texts") for name in ("per", "carrier", "currency", "charges", "tags", "extra")),
 )
 TABLE_FORMS = {"demand": DEMAND_FORMS, "lanes": LANE_FORMS, "supply": SUPPLY_FORMS}
 

@@ -64,7 +64,10 @@ class Pack:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Item:
-    """What is moved. ``step`` is the least quantity that ships, in item units, above 0."""
+    """What is moved. ``step`` is the least quantity that ships, in item units, above 0.
+
+    ``value`` is what one unit is worth, in the currency of the plan.
+    """
 
     id: str
     unit: str
@@ -76,6 +79,7 @@ class Item:
     packs: tuple[Pack, ...]
     tags: tuple[str, ...]
     extra: Mapping[str, str]
+    value: Fraction | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -115,8 +119,9 @@ class LaneTable:
     ``Network.items``, or -1 for a lane that carries any item. ``unit_cost`` is money per unit of
     ``measure``; ``must_ship`` and ``capacity`` are in ``measure`` too (absent: 0, unlimited).
     ``measure`` is ``unit``, ``weight_kg``, ``volume_m3`` or the unit of a pack, never absent.
-    ``per`` is ``item`` or absent. ``tags`` holds JSON arrays of sorted tags, ``extra`` JSON
-    objects.
+    ``per`` is ``item`` or absent. ``currency`` is that of ``unit_cost`` (absent: the plan's);
+    ``charges`` holds JSON arrays of charges in normal form (``network/money.py``), ``tags`` JSON
+    arrays of sorted tags, ``extra`` JSON objects.
     """
 
     ids: IdArray
@@ -129,6 +134,8 @@ class LaneTable:
     capacity: Decimals
     per: Texts
     carrier: Texts
+    currency: Texts
+    charges: Texts
     tags: Texts
     extra: Texts
 
@@ -142,9 +149,9 @@ class SupplyTable:
     """Stock, one row each, sorted by (site, item, unit cost per item unit, best_before, lot, rest).
 
     ``quantity``, ``on_hand``, ``reserved``, ``on_hold`` and ``keep_quantity`` are in the row's
-    ``unit``, ``unit_cost`` is money per ``unit`` (absent: 0); ``unit`` is never absent. ``as_of``
-    is RFC 3339 in UTC with ``Z``, ``best_before`` a date. ``keep_priority`` is 0 where no stock is
-    kept.
+    ``unit``, ``unit_cost`` is money per ``unit`` (absent: 0) in ``currency`` (absent: the plan's);
+    ``unit`` is never absent. ``as_of`` is RFC 3339 in UTC with ``Z``, ``best_before`` a date.
+    ``keep_priority`` is 0 where no stock is kept.
     """
 
     site: CodeArray
@@ -152,6 +159,7 @@ class SupplyTable:
     quantity: Decimals
     unit: Texts
     unit_cost: Decimals
+    currency: Texts
     on_hand: Decimals
     reserved: Decimals
     on_hold: Decimals
@@ -201,7 +209,8 @@ class Network:
 
     ``head`` holds what is neither a table, an item nor a site, as plain JSON values with every
     decimal a shortest decimal string: ``format``, ``name``, ``currency``, ``cut_off``,
-    ``release_by``, ``rules`` (sorted by id, see ``network/rules.py``) and ``extra``.
+    ``release_by``, ``rules`` (sorted by id, see ``network/rules.py``), ``exchange_rates`` (sorted
+    by currency, see ``network/money.py``) and ``extra``.
 
     ``known_digest`` is the digest of the bytes that this very object was read from, else None; it
     does not pass on to a network that ``dataclasses.replace`` makes of it.

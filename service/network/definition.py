@@ -89,6 +89,24 @@ class Head(Part):
     extra: Extra = None
 
 
+class ExchangeRatePart(Part):
+    """What ``per`` units (1 if absent) of a currency are in the currency of the plan."""
+
+    currency: Annotated[str, *_needed(kinds.CURRENCY)] = Field(
+        description="ISO 4217.", examples=["NOK"]
+    )
+    rate: Annotated[Fraction, *_needed(kinds.POSITIVE_RATE)] = Field(
+        description="Money of the plan's currency for `per` units.", examples=["8.73"]
+    )
+    per: Annotated[Fraction | None, *_optional(kinds.POSITIVE_RATE)] = Field(
+        default=None, description="Units of this currency; 1 if absent.", examples=["100"]
+    )
+    as_of: OptionalDate = Field(
+        default=None, description="The day of the rate.", examples=["2026-02-02"]
+    )
+    source: Name = Field(default=None, description="Who says so.", examples=["central bank"])
+
+
 class PackPart(Part):
     """A trade pack of an item."""
 
@@ -106,6 +124,11 @@ class ItemPart(Part):
     gtin: Annotated[str | None, *_optional(kinds.GTIN)] = None
     weight_kg: OptionalRate = None
     volume_m3: OptionalRate = None
+    value: OptionalRate = Field(
+        default=None,
+        description="What one unit is worth, in the currency of the plan.",
+        examples=["8.50"],
+    )
     packs: list[PackPart] | None = None
     tags: Tags = None
     extra: Extra = None

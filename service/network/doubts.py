@@ -126,7 +126,7 @@ def _off_step(network: Network, name: str) -> IntArray:
 
 
 def _rates_out_of_line(network: Network) -> IntArray:
-    """Return lanes whose rate is far above the median of their carrier and measure.
+    """Return lanes whose rate is far above the median of their carrier, measure and currency.
 
     Lanes without a carrier are compared with one another. Of an even number of rates the lower
     middle one counts, so that the comparison stays exact.
@@ -135,6 +135,8 @@ def _rates_out_of_line(network: Network) -> IntArray:
     rates = lanes.unit_cost.values
     keys = (lanes.carrier.codes.astype(np.int64) + 1) * (len(lanes.measure.values) + 1)
     keys = keys + lanes.measure.codes
+    if lanes.currency.values:
+        keys = keys * (len(lanes.currency.values) + 1) + lanes.currency.codes + 1
     if len(keys) == 0 or bool((keys == keys[0]).all()):
         return _far_above(rates)
     if int(keys.max()) < KEYS_APART_MAX:

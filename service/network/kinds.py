@@ -258,6 +258,11 @@ def _positive(value: object) -> Fraction:
     return as_decimal(value, decimals_max=QUANTITY_DECIMALS_MAX, least=None, above=0)
 
 
+def _positive_rate(value: object) -> Fraction:
+    """Read a rate above 0."""
+    return as_decimal(value, decimals_max=RATE_DECIMALS_MAX, least=None, above=0)
+
+
 def _degrees(most: int) -> Callable[[object], Fraction]:
     """Return a reader of a coordinate."""
 
@@ -297,6 +302,7 @@ COUNTRY = Kind(read=_read_country, schema={"type": "string", "pattern": "^[A-Z]{
 RATE = Kind(read=_rate, schema=RATE_SCHEMA)
 QUANTITY = Kind(read=_quantity, schema=QUANTITY_SCHEMA)
 POSITIVE = Kind(read=_positive, schema=QUANTITY_SCHEMA)
+POSITIVE_RATE = Kind(read=_positive_rate, schema=RATE_SCHEMA)
 LATITUDE = Kind(read=_degrees(90), schema=SIGNED_SCHEMA)
 LONGITUDE = Kind(read=_degrees(180), schema=SIGNED_SCHEMA)
 ROLE_LIST = Kind(read=_roles, schema=ROLES_SCHEMA)

@@ -15,8 +15,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.network.columns import IntArray, Network
+from service.network.lane_rates import lane_rates
 from service.network.reach import LaneUse
-from service.network.units import per_unit
 
 # int64, or Python integers where a sum of as many costs as a loop has sites could leave 64 bits.
 _Costs = NDArray[Any]
@@ -49,21 +49,26 @@ def _costs(network: Network, rows: IntArray, item: int) -> tuple[IntArray, _Cost
     A lane in a measure that the item does not have is left out: that is a fault of its own.
     """
     lanes, thing = network.lanes, network.items[item]
-    factors = [per_unit(thing, measure) for measure in lanes.measure.values]
-    known = np.array([factor is not None for factor in factors], dtype=np.bool_)
-    rows = rows[known[lanes.measure.codes[rows]]]
+    found = lane_rates(network, item, rows)
+    pairs = list(zip(found.rates, found.charges, strict=True))
+    known = np.array([None not in pair for pair in pairs], dtype=np.bool_)
+    sound = known[found.codes]
+    rows, codes = rows[sound], found.codes[sound]
     if len(rows) == 0:
         return rows, np.zeros(0, dtype=np.int64)
-    power = 10**lanes.unit_cost.exponent
-    rates = [(factor or Fraction(0)) / power for factor in factors]
+    rates = [rate or Fraction(0) for rate, _ in pairs]
+    charges = [charge or Fraction(0) for _, charge in pairs]
     handling = [site.handling(thing.id) for site in network.sites]
-    scale = lcm(*(number.denominator for number in (*rates, *handling)))
+    scale = lcm(*(number.denominator for number in (*rates, *charges, *handling)))
     rate = [int(number * scale) for number in rates]
+    charge = [int(number * scale) for number in charges]
     extra = [int(number * scale) for number in handling]
     values = lanes.unit_cost.values[rows]
-    largest = int(np.abs(values).max()) * max(map(abs, rate)) + max(map(abs, extra))
+    largest = int(np.abs(values).max()) * max(map(abs, rate)) + max(map(abs, extra)) + max(charge)
     kind: Any = np.int64 if largest * 2 * (len(network.sites) + 1) < 2**62 else object
-    costs: _Costs = values.astype(kind) * np.array(rate, dtype=kind)[lanes.measure.codes[rows]]
+    costs: _Costs = values.astype(kind) * np.array(rate, dtype=kind)[codes]
+    if any(charge):
+        costs += np.array(charge, dtype=kind)[codes]
     return rows, costs + np.array(extra, dtype=kind)[lanes.destination[rows]]
 
 

@@ -1,8 +1,8 @@
 """One order and one spelling for a network, however it was sent.
 
 Items and sites go by the UTF-8 bytes of their id, demand by reference, supply by (site, item, unit
-cost per item unit, best before, lot), lanes by (origin, destination, item, id, carrier, unit cost,
-must-ship, capacity, tags); what is left decides the rest, so that the order is total.
+cost per item unit, currency, best before, lot), lanes by (origin, destination, item, id, carrier,
+unit cost, must-ship, capacity, tags); what is left decides the rest, so that the order is total.
 """
 
 from collections.abc import Mapping, Sequence
@@ -28,6 +28,7 @@ from service.network.columns import (
     Texts,
 )
 from service.network.lane_keys import LaneKeys
+from service.network.money import factors
 from service.network.units import item_units
 
 if TYPE_CHECKING:
@@ -64,7 +65,7 @@ def normal_form(network: Network) -> Network:
         head=_normal_head(network.head),
         items=tuple(_normal_item(item) for item in items),
         sites=tuple(_normal_site(site) for site in sites),
-        supply=_in_order(supply, supply_order(supply, items)),
+        supply=_in_order(supply, supply_order(supply, items, factors(network.head))),
         demand=_in_order(demand, np.argsort(demand.reference, kind="stable")),
         lanes=_in_order(lanes, lane_order(lanes)),
     )
@@ -87,6 +88,8 @@ def lane_order(lanes: LaneTable) -> IntArray:
     tied = np.flatnonzero(np.append(same, False) | np.insert(same, 0, False))
     rows = order[tied]
     by_last_first: tuple[NDArray[np.generic], ...] = (
+        lanes.charges.codes[rows],
+        lanes.currency.codes[rows],
         lanes.extra.codes[rows],
         lanes.per.codes[rows],
         lanes.measure.codes[rows],
@@ -104,19 +107,22 @@ def lane_order(lanes: LaneTable) -> IntArray:
     return order
 
 
-def supply_order(supply: SupplyTable, items: Sequence[Item]) -> IntArray:
+def supply_order(
+    supply: SupplyTable, items: Sequence[Item], worth: Mapping[str | None, Fraction]
+) -> IntArray:
     """Return the row numbers of ``supply`` in the order of the normal form.
 
     This is the stored form: another order changes every digest and makes stored networks
     unreadable. Which stock is used up first is decided elsewhere (``planning/paths.py``).
 
-    Texts must be spelled normally, so that their codes sort as they do.
+    ``worth`` is what one unit of each currency is in that of the plan. Texts must be spelled
+    normally, so that their codes sort as they do.
     """
     best_before = supply.best_before.codes.astype(np.int64)
     rest: list[NDArray[np.generic]] = []
     for field in fields(SupplyTable):
         column = getattr(supply, field.name)
-        if field.name in ("site", "item", "best_before", "lot"):
+        if field.name in ("site", "item", "currency", "best_before", "lot"):
             continue
         if isinstance(column, Decimals):
             rest += (column.present, column.values)
@@ -127,27 +133,38 @@ def supply_order(supply: SupplyTable, items: Sequence[Item]) -> IntArray:
             *reversed(rest),
             supply.lot.codes,
             np.where(best_before < 0, _LAST, best_before),
-            _rank_of_cost(supply, items),
+            *((supply.currency.codes,) if supply.currency.values else ()),
+            _rank_of_cost(supply, items, worth),
             supply.item,
             supply.site,
         )
     )
 
 
-def _rank_of_cost(supply: SupplyTable, items: Sequence[Item]) -> IntArray:
+def _rank_of_cost(
+    supply: SupplyTable, items: Sequence[Item], worth: Mapping[str | None, Fraction]
+) -> IntArray:
     """Return a number for each row that sorts as its unit cost per item unit does (absent: 0)."""
     keys = np.stack(
-        (supply.item.astype(np.int64), supply.unit.codes.astype(np.int64), supply.unit_cost.values)
+        (
+            supply.item.astype(np.int64),
+            supply.unit.codes.astype(np.int64),
+            supply.unit_cost.values,
+            supply.currency.codes.astype(np.int64),
+        )
     )
     distinct, position = np.unique(keys, axis=1, return_inverse=True)
     costs = []
-    for item, unit, value in distinct.T.tolist():
+    for item, unit, value, currency in distinct.T.tolist():
         units = item_units(items[item], supply.unit.values[unit])
         if units is None:
             raise NormalFormError(
                 f"{supply.unit.values[unit]!r} is no unit of item {items[item].id!r}"
             )
-        costs.append(Fraction(value, 10**supply.unit_cost.exponent) / units)
+        own = None if currency < 0 else supply.currency.values[currency]
+        # A currency without a rate is a fault of its own, and its row is in no plan.
+        cost = Fraction(value, 10**supply.unit_cost.exponent) / units
+        costs.append(cost * worth.get(own, Fraction(1)))
     rank_of = {cost: rank for rank, cost in enumerate(sorted(set(costs)))}
     ranks = np.array([rank_of[cost] for cost in costs], dtype=np.int64)
     return ranks[position.ravel()]

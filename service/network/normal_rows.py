@@ -5,6 +5,7 @@ Not a second intake: this keeps a damaged or forged file from being taken for a 
 
 import re
 from collections.abc import Mapping, Sequence
+from fractions import Fraction
 from typing import Any
 
 import numpy as np
@@ -21,8 +22,10 @@ from service.network.columns import (
     SupplyTable,
     Texts,
 )
+from service.network.money import factors
 from service.network.naming import rows_with_ids
 from service.network.normal_form import lane_order, rule_key, supply_order
+from service.network.normal_money import check_exchange_rates, check_money
 from service.network.normal_rules import check_rule
 from service.network.strict_json import StrictJsonError, strict_json
 from service.network.units import item_units
@@ -34,7 +37,9 @@ _ROWS_MAX = 2**31 - 1
 _PAIRS_MARKED_MAX = 2**22
 
 _HEAD_TEXTS = ("name", "currency", "cut_off", "release_by")
-_HEAD_FIELDS = frozenset({"format", "rules", "extra", "items", "sites", "tables", *_HEAD_TEXTS})
+_HEAD_FIELDS = frozenset(
+    {"format", "rules", "extra", "exchange_rates", "items", "sites", "tables", *_HEAD_TEXTS}
+)
 _COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
 _CURRENCY = re.compile(r"[A-Z]{3}")
 
@@ -57,6 +62,7 @@ def check_head(head: Mapping[str, Any]) -> None:
     _check(len({rule["id"] for rule in rules}) == len(rules), "two rules have one id")
     if "extra" in head:
         _check(_is_texts(head["extra"]) and bool(head["extra"]), "extra is not an object of text")
+    check_exchange_rates(head)
     tables = head.get("tables")
     _check(isinstance(tables, dict) and set(tables) == {"supply", "demand", "lanes"}, "no tables")
     for described in head["tables"].values():
@@ -80,15 +86,20 @@ def _check_table(described: object) -> None:
 
 def check_rows(network: Network) -> None:
     """Raise ``NormalFormError`` unless rows are sorted, distinct and make sense one by one."""
-    _check_supply(network.supply, network.items)
+    check_money(network)
+    _check_supply(network.supply, network.items, factors(network.head))
     _check_demand(network)
     _check_lanes(network.lanes, network.items)
 
 
-def _check_supply(supply: SupplyTable, items: Sequence[Item]) -> None:
+def _check_supply(
+    supply: SupplyTable, items: Sequence[Item], worth: Mapping[str | None, Fraction]
+) -> None:
     """Raise unless supply rows are in order and their quantities are none below zero."""
     _check_units(supply.item, supply.unit, items)
-    _check(np.array_equal(supply_order(supply, items), np.arange(len(supply))), "supply order")
+    _check(
+        np.array_equal(supply_order(supply, items, worth), np.arange(len(supply))), "supply order"
+    )
     _check_required(supply.quantity)
     for column in (supply.on_hand, supply.reserved, supply.on_hold, supply.keep_quantity):
         _check_not_negative(column)

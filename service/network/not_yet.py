@@ -10,7 +10,7 @@ from typing import Final
 DATES = "dates and departures"
 SHARED = "limits that several items share"
 WHOLE = "choices in whole numbers"
-MONEY = "tariffs, charges and currencies"
+MONEY = "freight tariffs"
 COMMITTED = "committed order lines"
 STABILITY = "planning close to a former run"
 FAIRNESS = "fair shares"
@@ -19,7 +19,6 @@ EMISSIONS = "emissions"
 NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
     "network": {
         "tariffs": MONEY,
-        "exchange_rates": MONEY,
         "storage": DATES,
         "periods": DATES,
         "committed": COMMITTED,
@@ -27,9 +26,9 @@ NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
         "planned_at": DATES,
         "shortage_measure": SHARED,
     },
-    "items": {"value": MONEY, "divisible": SHARED},
+    "items": {"divisible": SHARED},
     "sites": {},
-    "supply": {"available_from": DATES, "currency": MONEY},
+    "supply": {"available_from": DATES},
     "demand": {
         "earliest": DATES,
         "due": DATES,
@@ -44,8 +43,6 @@ NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
         "departs": DATES,
         "arrives": DATES,
         "tariff": MONEY,
-        "charges": MONEY,
-        "currency": MONEY,
         "distance_km": EMISSIONS,
     },
     "rules": {"over": DATES},

@@ -5,8 +5,10 @@ from dataclasses import dataclass, field
 from typing import Final
 
 from service.network.assembly import Assembly, assemble
+from service.network.charge_checks import check_charges
 from service.network.columns import Network
 from service.network.control import check_control
+from service.network.currency_reading import Currencies, read_exchange_rates
 from service.network.definition import Control, Head, validated
 from service.network.doubts import doubt
 from service.network.faults import FaultList, pointer
@@ -30,7 +32,7 @@ from service.network.tables import ReadTables, read_demand, read_lanes, read_sup
 from service.network.things import read_things
 
 LISTS: Final = ("items", "sites", "supply", "demand", "lanes")
-PARTS: Final = (*LISTS, "rules", "control")
+PARTS: Final = (*LISTS, "rules", "control", "exchange_rates")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -59,15 +61,17 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
         return Reading(network=None, cut_off=None, faults=faults)
     head = _read_head(document, faults)
     rules = read_rules(document.get("rules"), faults)
+    own = None if head is None else head.currency
+    currencies = read_exchange_rates(document.get("exchange_rates"), own, faults)
     control = _read_control(document.get("control"), faults)
     things = read_things(document.get("items"), document.get("sites"), faults)
     sheets = _take_sheets(document, faults)
     if things is None or sheets is None:
         return Reading(network=None, cut_off=None, faults=faults)
     tables = ReadTables(
-        supply=read_supply(sheets["supply"], things),
+        supply=read_supply(sheets["supply"], things, currencies),
         demand=read_demand(sheets["demand"], things),
-        lanes=read_lanes(sheets["lanes"], things),
+        lanes=read_lanes(sheets["lanes"], things, currencies),
     )
     if control is not None:
         check_control(control, tables, faults)
@@ -77,7 +81,7 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     set_aside = _refuse_or_set_aside(tables, options, faults)
     if head is not None:
         _doubt_head(head, faults)
-        assembly = assemble(_head_document(head), things, tables, rules)
+        assembly = assemble(_head_document(head, currencies), things, tables, rules)
         _check_together(assembly, head.cut_off, options, faults)
     else:
         assembly = None
@@ -115,7 +119,7 @@ def _read_head(document: Mapping[str, object], faults: FaultList) -> Head | None
     return validated(Head, head, path=(), table="network", faults=faults)
 
 
-def _head_document(head: Head) -> dict[str, object]:
+def _head_document(head: Head, currencies: Currencies) -> dict[str, object]:
     """Return the head in its normal form."""
     document: dict[str, object | None] = {
         "format": head.format,
@@ -124,6 +128,7 @@ def _head_document(head: Head) -> dict[str, object]:
         "cut_off": head.cut_off.local,
         "release_by": None if head.release_by is None else head.release_by.local,
         "extra": dict(sorted(head.extra.items())) if head.extra else None,
+        "exchange_rates": [dict(rate) for rate in currencies.documents] or None,
     }
     return {name: value for name, value in document.items() if value is not None}
 
@@ -195,6 +200,7 @@ def _check_together(
     use = LaneUse(assembly.network)
     check_names(assembly)
     check_lanes_for_any_item(assembly, use, faults)
+    check_charges(assembly, use)
     check_loops(assembly, use, faults)
     check_origins(assembly, use, faults)
     check_rules(assembly, use, faults)

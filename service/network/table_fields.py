@@ -4,6 +4,7 @@ from collections.abc import Mapping
 from typing import Final
 
 from service.network import value_schemas as schemas
+from service.network.charge_reading import CHARGE_SCHEMA, CHARGES_MAX
 from service.network.scanned import FieldKind
 from service.network.value_schemas import Schema, decimal_schema
 
@@ -14,6 +15,12 @@ _PRIORITY: Schema = {"type": "integer", "minimum": 1, "maximum": PRIORITY_MAX}
 _QUANTITY = decimal_schema(3, signed=False)
 _MONEY = decimal_schema(6, signed=False)
 _RATE = decimal_schema(6, signed=True)
+_CURRENCY: Schema = {
+    "type": "string",
+    "pattern": "^[A-Z]{3}$",
+    "description": "Of unit_cost, ISO 4217; absent: the plan's. Others need an exchange rate.",
+    "examples": ["NOK"],
+}
 
 SUPPLY_FIELDS: Final[Mapping[str, Schema]] = {
     "site": schemas.ID_SCHEMA,
@@ -21,6 +28,7 @@ SUPPLY_FIELDS: Final[Mapping[str, Schema]] = {
     "quantity": _QUANTITY,
     "unit": schemas.ID_SCHEMA,
     "unit_cost": _RATE,
+    "currency": _CURRENCY,
     "on_hand": _QUANTITY,
     "reserved": _QUANTITY,
     "on_hold": _QUANTITY,
@@ -61,6 +69,8 @@ LANE_FIELDS: Final[Mapping[str, Schema]] = {
     "capacity": _QUANTITY,
     "per": {"enum": ["item"]},
     "carrier": schemas.ID_SCHEMA,
+    "currency": _CURRENCY,
+    "charges": {"type": "array", "items": CHARGE_SCHEMA, "maxItems": CHARGES_MAX},
     "tags": schemas.IDS_SCHEMA,
     "extra": schemas.EXTRA_SCHEMA,
 }
@@ -75,7 +85,7 @@ REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
     "lanes": ("origin", "destination", "unit_cost"),
 }
 # Fields whose single value is itself an array, so that an array need not be a column of a table.
-LISTED_FIELDS: Final = frozenset({"tags", "origins"})
+LISTED_FIELDS: Final = frozenset({"tags", "origins", "charges"})
 
 # Fields whose values are texts or numbers; the others hold arrays or objects.
 _NUMBERS: Final = (_QUANTITY, _MONEY, _RATE, _PRIORITY)

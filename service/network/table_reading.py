@@ -62,7 +62,7 @@ class Spelled:
 
 
 # Names a thing that is itself refused: no fault of this value, but nothing to plan with either.
-_UNSURE_WORD: Final = Spelled(None)
+UNSURE_WORD: Final = Spelled(None)
 
 
 class TableReader:
@@ -204,10 +204,10 @@ class TableReader:
                 strange = next(element for element in elements if element not in known)
                 return Spelled(None, "unknown_site", f"There is no site of the id '{strange}'.")
             if known is not None and any(known[element] == UNSURE for element in elements):
-                return _UNSURE_WORD
+                return UNSURE_WORD
             return Spelled(canonical_json(sorted(elements)).decode())
 
-        return self._structures(name, spell)
+        return self.structures(name, spell)
 
     def extras(self, name: str = "extra") -> Texts:
         """Return a column of objects of text as canonical JSON; empty ones count as absent."""
@@ -217,9 +217,9 @@ class TableReader:
                 return Spelled(None, "bad_extra", EXTRA_ADVICE)
             return Spelled(canonical_json(value).decode() if value else "")
 
-        return self._structures(name, spell)
+        return self.structures(name, spell)
 
-    def _structures(self, name: str, spell: Callable[[object], Spelled]) -> Texts:
+    def structures(self, name: str, spell: Callable[[object], Spelled]) -> Texts:
         """Return a column of arrays or objects, each as the text that ``spell`` makes of it."""
         column = self._columns.get(name)
         if column is None:
@@ -231,7 +231,7 @@ class TableReader:
             if word.text is None:
                 wrong.setdefault((word.code, word.detail), []).append(place)
             texts.append(word.text or None)
-        unsure = wrong.pop((_UNSURE_WORD.code, _UNSURE_WORD.detail), [])
+        unsure = wrong.pop((UNSURE_WORD.code, UNSURE_WORD.detail), [])
         self._faults.bad[column.rows_with(np.array(unsure, dtype=np.int64), self.rows)] = True
         for (code, detail), places in wrong.items():
             self._faults.at_values(name, places, code, detail)

@@ -10,6 +10,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from service.network.charge_reading import charge_speller
 from service.network.column_making import all_different, no_decimals, without
 from service.network.columns import (
     BoolArray,
@@ -20,6 +21,7 @@ from service.network.columns import (
     LaneTable,
     SupplyTable,
 )
+from service.network.currency_reading import Currencies
 from service.network.moments import read_date, read_instant
 from service.network.not_yet import SHARED, refusal
 from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
@@ -69,7 +71,7 @@ class ReadTables:
     lanes: ReadLanes
 
 
-def read_supply(sheet: Sheet, things: Things) -> ReadSupply:
+def read_supply(sheet: Sheet, things: Things, currencies: Currencies) -> ReadSupply:
     """Read the supply table."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
@@ -83,6 +85,7 @@ def read_supply(sheet: Sheet, things: Things) -> ReadSupply:
         quantity=quantity,
         unit=with_units(reader.texts("unit", _id), item, things.items),
         unit_cost=reader.decimals("unit_cost", decimals_max=RATE_DECIMALS_MAX, least=None),
+        currency=reader.texts("currency", currencies.spelled),
         on_hand=_quantity(reader, "on_hand"),
         reserved=_quantity(reader, "reserved"),
         on_hold=_quantity(reader, "on_hold"),
@@ -131,7 +134,7 @@ def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
     return ReadDemand(table=table, faults=faults)
 
 
-def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
+def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLanes:
     """Read the lanes. A must-ship of 0 and the ``per`` of a lane with an item say nothing."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
@@ -163,6 +166,8 @@ def read_lanes(sheet: Sheet, things: Things) -> ReadLanes:
         capacity=_quantity(reader, "capacity"),
         per=replace(per, codes=np.where(item >= 0, np.int32(-1), per.codes)) if per.values else per,
         carrier=reader.texts("carrier", _id),
+        currency=reader.texts("currency", currencies.spelled),
+        charges=reader.structures("charges", charge_speller(things.item_positions, currencies)),
         tags=reader.lists("tags", empty=True),
         extra=reader.extras(),
     )

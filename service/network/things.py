@@ -139,6 +139,7 @@ def _item(part: ItemPart, path: tuple[str | int, ...], faults: FaultList) -> Ite
         ),
         tags=part.tags or (),
         extra=_sorted(part.extra),
+        value=part.value,
     )
 
 

@@ -6,6 +6,7 @@ from fractions import Fraction
 import numpy as np
 
 from service.network.columns import BoolArray, Decimals, IntArray, Item, Network
+from service.network.lane_rates import lane_rates
 from service.network.rules import FixedQuantity
 from service.network.units import per_unit
 from service.planning.arcs import UNLIMITED
@@ -18,10 +19,11 @@ class LaneBounds:
     """Lanes that one item can use, as columns of shape (lanes of the item,).
 
     ``rows`` are positions in the network's lanes, ascending. ``minimum`` and ``capacity``
-    (``UNLIMITED``: no limit) are in steps with all rules applied; ``money`` is money per step.
-    ``stated_minimum`` and ``stated_capacity`` are those without any rule. ``at`` picks the lanes
-    from a column of the network: ``rows``, or a slice where they are all. Columns that say the same
-    of every lane are views of one value, which nobody can write to.
+    (``UNLIMITED``: no limit) are in steps with all rules applied; ``money`` is money per step, of
+    which ``charges`` are a part (None: there are none). ``stated_minimum`` and ``stated_capacity``
+    are those without any rule. ``at`` picks the lanes from a column of the network: ``rows``, or a
+    slice where they are all. Columns that say the same of every lane are views of one value, which
+    nobody can write to.
     """
 
     rows: IntArray
@@ -29,6 +31,7 @@ class LaneBounds:
     minimum: IntArray
     capacity: IntArray
     money: Rationals
+    charges: Rationals | None
     closed: BoolArray
     fixed: BoolArray
     stated_minimum: IntArray
@@ -90,17 +93,14 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
     if closures:
         minimum[closed] = 0
         capacity[closed] = 0
-    unit_cost = Fraction(1, 10**lanes.unit_cost.exponent)
+    money, charges = _money(network, item, at, rows.shape[0])
     return LaneBounds(
         rows=rows,
         at=at,
         minimum=minimum,
         capacity=capacity,
-        money=Rationals(
-            values=lanes.unit_cost.values[at],
-            codes=codes,
-            multipliers=tuple(amount * unit_cost for amount in step_is),
-        ),
+        money=money,
+        charges=charges,
         closed=closed,
         fixed=fixed & ~closed if quantities else fixed,
         stated_minimum=stated_minimum,
@@ -112,6 +112,23 @@ def _of_all(value: int, count: int) -> IntArray:
     """Return a column that has ``value`` in all its ``count`` rows."""
     column: IntArray = np.broadcast_to(np.int64(value), (count,))
     return column
+
+
+def _money(
+    network: Network, item: int, at: IntArray | slice, count: int
+) -> tuple[Rationals, Rationals | None]:
+    """Return the money of a step on each lane, and the charges in it, None if there are none."""
+    step = network.items[item].step
+    found = lane_rates(network, item, at)
+    rates = tuple(Fraction(0) if rate is None else rate * step for rate in found.rates)
+    money = Rationals(
+        values=network.lanes.unit_cost.values[at], codes=found.codes, multipliers=rates
+    )
+    if not found.with_charges:
+        return money, None
+    due = [Fraction(0) if charge is None else charge * step for charge in found.charges]
+    charges = Rationals(values=_of_all(1, count), codes=found.codes, multipliers=tuple(due))
+    return money.plus(charges), charges
 
 
 def _measured(item: Item, measure: str) -> Fraction:

@@ -40,7 +40,10 @@ def compile_network(network: Network, options: Options) -> Compiled:
     raw = [
         item_arcs(network, options, item, use=use, book=book) for item in range(len(network.items))
     ]
-    scale = cost_scale(own.grid() for own in raw)
+    grids = [own.grid() for own in raw]
+    # What is charged on a lane is shown by itself, so that it must be whole by itself.
+    grids += [own.lanes.charges.grid() for own in raw if own.lanes.charges is not None]
+    scale = cost_scale(grids)
     return Compiled(
         network=network,
         options=options,

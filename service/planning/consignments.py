@@ -77,7 +77,7 @@ def _goods(network: Network, plan: ItemPlan, scale: Fraction) -> list[_OnLane]:
             measured(pallets_per_unit(item)),
             measured(item.weight_kg),
             measured(item.volume_m3),
-            texts([line.transport for line in lines], 1 / scale),
+            texts([line.transport + line.charges for line in lines], 1 / scale),
             strict=True,
         )
     ]
@@ -98,5 +98,5 @@ def _together(network: Network, own: Sequence[_OnLane], scale: Fraction) -> _OnL
         pallets=pallets.text,
         weight=weight.text,
         volume=volume.text,
-        cost=text(sum(goods.line.transport for goods in own) / scale),
+        cost=text(sum(goods.line.transport + goods.line.charges for goods in own) / scale),
     )

@@ -11,6 +11,7 @@ from service.planning.amounts import Document, Measured, text
 from service.planning.arcs import Kind
 from service.planning.compile import Compiled
 from service.planning.consignments import consignments
+from service.planning.money_shown import MoneyShown, currencies_of, shows_money
 from service.planning.order_line_documents import order_line_documents
 from service.planning.order_lines import shares_of
 from service.planning.plan_lines import ItemPlan, item_plan, plan_line_documents
@@ -59,20 +60,22 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
     network = compiled.network
     tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), [])
     for flow in solved:
-        _add_item(network, flow, tables)
+        _add_item(network, flow, tables, scale=compiled.cost_scale)
     scale = compiled.cost_scale
     lines = [line for plan in tables.plans for line in plan.lines]
     parts = {
         "supply": sum(line.supply for line in lines) / scale,
         "handling": sum(line.handling for line in lines) / scale,
         "transport": sum(line.transport for line in lines) / scale,
-        "charges": Fraction(0),
+        "charges": sum(line.charges for line in lines) / scale,
         "shortage": tables.shortage_money,
         "lateness": Fraction(0),
     }
     cost = sum(parts.values(), Fraction(0))
     rounded = rounded_money(cost, str(network.head["currency"]))
     order_lines = [tables.order_lines[row] for row in sorted(tables.order_lines)]
+    shown = MoneyShown(network)
+    complete = shown.add if shows_money(network) else None
     document = {
         **_head(compiled, "planned", setting),
         "total_cost": text(cost),
@@ -80,7 +83,8 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
         "rounding_difference": text(Fraction(rounded) - cost),
         "cost_parts": {name: text(part) for name, part in parts.items()},
         "totals": _totals(order_lines, tables.quantities, setting),
-        "plan_lines": plan_line_documents(network, tables.plans, scale),
+        "plan_lines": plan_line_documents(network, tables.plans, scale, complete=complete),
+        **currencies_of(network, shown),
         "order_lines": order_lines,
         "consignments": consignments(network, tables.plans, scale, references=tables.references),
         "shortages": [
@@ -178,9 +182,9 @@ def _totals(order_lines: list[Document], quantities: list[Document], setting: Se
     }
 
 
-def _add_item(network: Network, flow: ItemFlow, tables: _Tables) -> None:
+def _add_item(network: Network, flow: ItemFlow, tables: _Tables, *, scale: Fraction) -> None:
     """Add the rows of one item to all tables."""
-    plan = item_plan(network, flow)
+    plan = item_plan(network, flow, scale)
     groups, item = flow.own.groups, network.items[flow.own.item]
     shares = shares_of(network, groups, plan.paths.paths, names=plan.name_bytes())
     served = dict.fromkeys(groups.rows.tolist(), 0)

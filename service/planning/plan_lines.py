@@ -1,6 +1,6 @@
 """What moves on each lane, and what it costs; the parts add up to the plan's cost exactly."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import NamedTuple
@@ -14,12 +14,14 @@ from service.planning.arcs import Kind, MoneyArray
 from service.planning.paths import Paths, paths_of
 from service.planning.solve import ItemFlow
 
+Completing = Callable[["ItemPlan", Mapping["PlanLine", dict[str, object]]], None]
+
 
 class PlanLine(NamedTuple):
     """One item on one lane, or (``lane`` None) served where it lies.
 
     ``row`` is the lane's row in the network, -1 without a lane. ``steps`` are those of the item;
-    money is scaled (``Compiled.cost_scale``), ``rate`` that of one step.
+    money is scaled (``Compiled.cost_scale``), ``rate`` the transport of one step.
     """
 
     row: int
@@ -31,6 +33,7 @@ class PlanLine(NamedTuple):
     transport: int
     supply: int
     handling: int
+    charges: int
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -52,7 +55,7 @@ class ItemPlan:
         return {lane: name.encode() for lane, name in self.names.items()}
 
 
-def item_plan(network: Network, solved: ItemFlow) -> ItemPlan:
+def item_plan(network: Network, solved: ItemFlow, scale: Fraction) -> ItemPlan:
     """Cut the flow of one item into paths and price it lane by lane."""
     own = solved.own
     on_lanes = solved.amounts(Kind.LANE)
@@ -65,14 +68,15 @@ def item_plan(network: Network, solved: ItemFlow) -> ItemPlan:
         paths=paths,
         names=names,
         rows=dict(zip(positions, rows.tolist(), strict=True)),
-        lines=_lines(network, solved, paths, names=names, on_lanes=on_lanes),
+        lines=_lines(network, solved, paths, scale, names=names, on_lanes=on_lanes),
     )
 
 
-def _lines(
+def _lines(  # noqa: PLR0913 - what a line says comes from all of these
     network: Network,
     solved: ItemFlow,
     paths: Paths,
+    scale: Fraction,
     *,
     names: Mapping[int, str],
     on_lanes: Mapping[int, int],
@@ -103,6 +107,7 @@ def _lines(
         network.lanes.origin[rows].tolist(),
         network.lanes.destination[rows].tolist(),
         own.arcs.cost[lanes].tolist(),
+        _charges(solved, lanes, scale),
         on_lanes.items(),
         strict=True,
     )
@@ -113,18 +118,28 @@ def _lines(
             origin,
             destination,
             steps,
-            rate,
-            steps * rate,
+            rate - charge,
+            steps * (rate - charge),
             drawn.get(lane, 0),
             steps * handling[origin] + used_up.get(lane, 0) * handling[destination],
+            steps * charge,
         )
-        for row, origin, destination, rate, (lane, steps) in columns
+        for row, origin, destination, rate, charge, (lane, steps) in columns
     ]
     lines += [
-        PlanLine(-1, None, site, site, steps, 0, 0, money, steps * handling[site])
+        PlanLine(-1, None, site, site, steps, 0, 0, money, steps * handling[site], 0)
         for site, (steps, money) in local.items()
     ]
     return tuple(lines)
+
+
+def _charges(solved: ItemFlow, lanes: IntArray, scale: Fraction) -> list[int]:
+    """Return the scaled charges of a step on each of ``lanes``, by position."""
+    charges = solved.own.lanes.charges
+    if charges is None:
+        return [0] * lanes.shape[0]
+    scaled: list[int] = charges.at(lanes).times(scale).on(Fraction(1)).tolist()
+    return scaled
 
 
 def _stock_costs(solved: ItemFlow) -> dict[int, int]:
@@ -146,9 +161,12 @@ def _costs(solved: ItemFlow, kind: Kind) -> dict[int, int]:
 
 
 def plan_line_documents(
-    network: Network, plans: Sequence[ItemPlan], scale: Fraction
+    network: Network, plans: Sequence[ItemPlan], scale: Fraction, *, complete: Completing | None
 ) -> list[dict[str, object]]:
-    """Return the table ``plan_lines``, sorted by origin, destination, item and lane."""
+    """Return the table ``plan_lines``, sorted by origin, destination, item and lane.
+
+    ``complete`` adds to the lines of one item what only some networks have.
+    """
     sites = [site.id for site in network.sites]
     keyed: list[tuple[tuple[int, int, int, bytes], dict[str, object]]] = []
     for plan in plans:
@@ -161,11 +179,13 @@ def plan_line_documents(
             texts([line.transport for line in lines], money),
             texts([line.supply for line in lines], money),
             texts([line.handling for line in lines], money),
-            texts([line.transport + line.supply + line.handling for line in lines], money),
+            texts([line.charges for line in lines], money),
+            texts([sum(line[-4:]) for line in lines], money),
             strict=True,
         )
-        keyed += [
+        own = [
             (
+                line,
                 (line.origin, line.destination, plan.solved.own.item, (line.lane or "").encode()),
                 {
                     "lane": line.lane,
@@ -177,10 +197,13 @@ def plan_line_documents(
                     "transport_cost": transport,
                     "supply_cost": supply,
                     "handling_cost": handling,
-                    "charges": "0",
+                    "charges": charges,
                     "cost": cost,
                 },
             )
-            for line, quantity, unit_cost, transport, supply, handling, cost in columns
+            for line, quantity, unit_cost, transport, supply, handling, charges, cost in columns
         ]
+        if complete is not None:
+            complete(plan, {line: document for line, _, document in own})
+        keyed += [(key, document) for _, key, document in own]
     return [document for _, document in sorted(keyed, key=lambda pair: pair[0])]

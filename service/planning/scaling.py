@@ -51,6 +51,14 @@ class Rationals:
             values=self.values[rows], codes=self.codes[rows], multipliers=self.multipliers
         )
 
+    def plus(self, other: "Rationals") -> "Rationals":
+        """Return the sum, row by row."""
+        grid = common_grid((self.grid(), other.grid())) or Fraction(1)
+        first, second = self.on(grid), other.on(grid)
+        if largest(first) + largest(second) >= SAFE:
+            first, second = first.astype(object), second.astype(object)
+        return Rationals.of(first + second, grid)
+
     def times(self, factor: Fraction) -> "Rationals":
         """Return every value times ``factor``."""
         return Rationals(

@@ -1,11 +1,13 @@
-"""Stock of one item: rows, tiers of equal cost, and what of it is kept."""
+"""Stock of one item: rows, tiers of equal cost and currency, and what of it is kept."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
 import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Item, Network, Texts
+from service.network.money import factors
 from service.network.units import item_units
 from service.planning.arcs import SAFE, largest
 from service.planning.limits import NumbersTooLargeError
@@ -48,13 +50,7 @@ def stock_of(network: Network, item: int) -> Stock:
     rows = np.flatnonzero(supply.item == item)
     site, codes = supply.site[rows], supply.unit.codes[rows]
     factors = factors_of(thing, supply.unit, codes)
-    money = Rationals(
-        values=supply.unit_cost.values[rows],
-        codes=codes,
-        multipliers=tuple(
-            thing.step / (factor * 10**supply.unit_cost.exponent) for factor in factors
-        ),
-    )
+    money = _money(network, rows, codes, [thing.step / factor for factor in factors])
     quantity = Rationals(
         values=supply.quantity.values[rows],
         codes=codes,
@@ -64,6 +60,7 @@ def stock_of(network: Network, item: int) -> Stock:
     )
     new_site = _changes(site)
     new_tier = new_site | _changes(money.on(money.grid() or Fraction(1)))
+    new_tier |= _changes(supply.currency.codes[rows])
     row_tier = np.cumsum(new_tier) - 1
     first = np.flatnonzero(new_tier)
     row_steps = _whole_steps(quantity, new_site)
@@ -94,6 +91,26 @@ def stock_of(network: Network, item: int) -> Stock:
         kept_site=site[kept],
         kept_steps=kept_steps[whole],
         kept_priority=supply.keep_priority[rows][kept],
+    )
+
+
+def _money(
+    network: Network, rows: IntArray, unit: CodeArray, units_in_step: Sequence[Fraction]
+) -> Rationals:
+    """Return the money of a step of each supply row, in the currency of the plan."""
+    supply = network.supply
+    below = 10**supply.unit_cost.exponent
+    per_unit = [units / below for units in units_in_step]
+    if not supply.currency.values:
+        return Rationals(
+            values=supply.unit_cost.values[rows], codes=unit, multipliers=tuple(per_unit)
+        )
+    worth = factors(network.head)
+    currencies = (None, *supply.currency.values)
+    return Rationals(
+        values=supply.unit_cost.values[rows],
+        codes=unit + np.int32(len(per_unit)) * (supply.currency.codes[rows] + np.int32(1)),
+        multipliers=tuple(money * worth[currency] for currency in currencies for money in per_unit),
     )
 
 

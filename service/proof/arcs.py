@@ -15,7 +15,7 @@ import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
-from service.proof.exact import Whole, joined, magnitude, whole, whole_of
+from service.proof.exact import Whole, joined, magnitude, whole
 from service.proof.groups import Group, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
 from service.proof.sides import UNLIMITED, SiteSides, site_sides
@@ -195,39 +195,6 @@ def _as_columns(arcs: Sequence[Arc]) -> Part:
         whole([arc.minimum for arc in arcs]),
         whole([arc.capacity for arc in arcs]),
     )
-
-
-def scaled_costs(network: Network, arcs: ItemArcs, scale: Fraction) -> Costs | None:
-    """Return the money of one step on each arc, times ``scale``; None if any is not whole.
-
-    Weights of shortage are not in it.
-    """
-    lanes = network.lanes
-    measures = measures_on(network, arcs.item, arcs.rows)
-    values = of_rows(lanes.unit_cost.values, arcs.rows)
-    codes = of_rows(lanes.measure.codes, arcs.rows) if len(measures) > 1 else None
-    lane_costs: Whole = np.zeros(0 if codes is None else len(values), dtype=np.int64)
-    for code, amount in measures.items():
-        ratio = amount * scale / 10**lanes.unit_cost.exponent
-        here = slice(None) if codes is None else np.flatnonzero(codes == code)
-        part, broken = whole_of(values[here], ratio)
-        if broken.any():
-            return None
-        if codes is None:
-            lane_costs = part
-            continue
-        if part.dtype == object:
-            lane_costs = lane_costs.astype(object)
-        lane_costs[here] = part
-    others = [0] * len(arcs.arcs)
-    for position, arc in enumerate(arcs.arcs):
-        if arc.money is NO_MONEY:
-            continue
-        cost = arc.money * scale
-        if cost.denominator != 1:
-            return None
-        others[position] = cost.numerator
-    return Costs(lane_costs, whole(others))
 
 
 class _Build:

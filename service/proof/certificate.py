@@ -39,6 +39,24 @@ _PLAN_LINE = record(
         "handling_cost": is_amount,
         "charges": is_amount,
         "cost": is_amount,
+    },
+    {
+        "stated": record({"currency": is_text, "transport_cost": is_amount}),
+        "charge_parts": list_of(
+            record(
+                {"name": is_text, "cost": is_amount},
+                {"currency": is_text, "stated_cost": is_amount},
+            )
+        ),
+    },
+)
+_CURRENCY = record(
+    {
+        "currency": is_text,
+        "as_of": _TEXT_OR_NULL,
+        "source": _TEXT_OR_NULL,
+        **dict.fromkeys(("rate", "per", "supply", "transport", "charges"), is_amount),
+        **dict.fromkeys(("amount", "converted"), is_amount),
     }
 )
 _SOURCE = record(
@@ -179,7 +197,8 @@ _PLANNED = record(
         "certificate": _summary(
             feasible=True, bound=is_amount, gap=one_of("0"), lexicographic="proved"
         ),
-    }
+    },
+    {"currencies": list_of(_CURRENCY)},
 )
 _NO_PLAN = record(
     {

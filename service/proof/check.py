@@ -22,12 +22,14 @@ from service.proof.cuts import check_cuts
 from service.proof.feasibility import check_feasibility
 from service.proof.flows import Names, PlanLine, item_flows
 from service.proof.heads import check_heads, check_rules_listed
+from service.proof.money import check_costs_known
 from service.proof.order_lines import check_order_lines
 from service.proof.plan_lines import check_plan_lines
 from service.proof.results import ItemResult, item_result
 from service.proof.rulings import Rulings, UnusableNetworkError, check_limits_are_clear
 from service.proof.shapes import amount
 from service.proof.slackness import check_slackness
+from service.proof.stated import check_stated
 from service.proof.totals import check_shortages, check_site_limits, check_site_use, check_totals
 from service.proof.usable import usable_lanes
 from service.proof.violations import Findings, Violation
@@ -163,6 +165,7 @@ def _check_item(  # noqa: PLR0913 - see check_documents
     """Note what is wrong with one item; return what its flow comes to, if it can be read."""
     try:
         arcs = item_arcs(network, options, rulings, names.items[proof["item"]])
+        check_costs_known(network, arcs.item, arcs.rows)
     except UnusableNetworkError as error:
         findings.add("network_unusable", str(error), place=proof["item"])
         return None
@@ -195,4 +198,5 @@ def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
         return
     check_shortages(network, results, plan, findings)
     check_plan_lines(network, results, lines, paths, findings)
+    check_stated(network, results, lines, plan, findings)
     check_consignments(network, results, lines, paths, plan["consignments"], findings=findings)

@@ -79,9 +79,12 @@ class _Costs:
         self._paths, self._item = paths, result.item
         self._step, self._below_step = result.step.numerator, result.step.denominator
         rows = np.array(sorted(result.on_lane), dtype=np.int64)
-        rates = lane_costs(network, rows, result.item)
+        found = lane_costs(network, rows, result.item)
+        rates, charges = found["transport"], found["charges"]
         self._rate = dict(zip(rows.tolist(), rates.whole, strict=True))
         self._rate_below = rates.below
+        self._charge = dict(zip(rows.tolist(), charges.whole, strict=True))
+        self._charge_below = charges.below
         self._ends = lane_ends(network, rows)
         name = network.items[result.item].id
         handling = numbers_of(site.handling(name) for site in network.sites)
@@ -125,10 +128,11 @@ class _Costs:
         goods, goods_below = quantity
         handled = goods * self._handling[line.origin] * self._below_step
         if line.row < 0:
-            ends, per_unit, used_up = (line.origin, line.origin), 0, 0
+            ends, per_unit, used_up, charged = (line.origin, line.origin), 0, 0, 0
             first = goods * self._below_step // (goods_below * self._step)
         else:
             ends, per_unit = self._ends[line.row], self._rate[line.row]
+            charged = goods * self._charge[line.row]
             key = (line.row, self._item)
             first, used_up = self._paths.first.get(key, 0), self._paths.last.get(key, 0)
             handled += used_up * self._step * self._handling[line.destination] * goods_below
@@ -139,9 +143,9 @@ class _Costs:
             and rate[0] * self._rate_below == per_unit * rate[1]
             and transport * goods_below * self._rate_below == goods * per_unit * below
             and handling * goods_below * self._below_step * self._handling_below == handled * below
-            and charges == 0
+            and charges * goods_below * self._charge_below == charged * below
             and least * below <= stocked <= most * below
-            and cost == transport + supply + handling
+            and cost == transport + supply + handling + charges
         )
 
     def _supply_range(self, site: int, steps: int) -> tuple[int, int]:

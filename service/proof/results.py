@@ -11,6 +11,7 @@ from service.network.units import per_unit
 from service.proof.arcs import NO_MONEY, Arc, ItemArcs
 from service.proof.exact import Whole
 from service.proof.groups import Wanted
+from service.proof.money import is_plain, unit_costs
 from service.proof.numbers import Numbers, numbers_of
 from service.proof.stock import Stock
 
@@ -45,10 +46,7 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
     kept: dict[int, int] = {}
     served: dict[tuple[int, str], int] = {}
     keep_short: dict[int, int] = {}
-    money = dict.fromkeys(("supply", "handling", "transport", "shortage"), Fraction(0))
-    costs = lane_costs(network, arcs.rows[moved], arcs.item)
-    carried = sum(steps * cost for steps, cost in zip(on_lane.values(), costs.whole, strict=True))
-    money["transport"] = carried * arcs.step / costs.below
+    money = dict.fromkeys(_MONEY, Fraction(0)) | _lane_money(network, arcs, on_lane)
     paid: dict[str, list[tuple[int, Fraction]]] = {part: [] for part in money}
     short = dict.fromkeys(arcs.priorities, 0)
     for arc, steps in zip(arcs.arcs, flow[lanes:].tolist(), strict=True):
@@ -87,6 +85,19 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
     )
 
 
+def _lane_money(
+    network: Network, arcs: ItemArcs, on_lane: Mapping[int, int]
+) -> dict[str, Fraction]:
+    """Return transport and charges of all that moves."""
+    rows = np.array(list(on_lane), dtype=np.int64)
+    money = {}
+    for part, costs in lane_costs(network, rows, arcs.item).items():
+        carried = sum(map(int.__mul__, on_lane.values(), costs.whole))
+        money[part] = carried * arcs.step / costs.below
+    return money
+
+
+_MONEY = ("supply", "handling", "transport", "charges", "shortage")
 _PARTS: Mapping[str, str] = {
     "draw": "supply",
     "handle": "handling",
@@ -96,8 +107,17 @@ _PARTS: Mapping[str, str] = {
 }
 
 
-def lane_costs(network: Network, rows: IntArray, item: int) -> Numbers:
-    """Return the money that one unit of ``item`` costs on each of the lanes ``rows``."""
+def lane_costs(network: Network, rows: IntArray, item: int) -> dict[str, Numbers]:
+    """Return ``transport`` and ``charges`` of one unit of ``item`` on the lanes ``rows``."""
+    if is_plain(network):
+        nothing = Numbers(whole=[0] * len(rows), below=1)
+        return {"transport": _rates(network, rows, item), "charges": nothing}
+    transport, charges = unit_costs(network, rows, item)
+    return {"transport": transport, "charges": charges}
+
+
+def _rates(network: Network, rows: IntArray, item: int) -> Numbers:
+    """Return the money that one unit of ``item`` costs on lanes that have a rate alone."""
     lanes = network.lanes
     codes = lanes.measure.codes[rows].tolist()
     per = {

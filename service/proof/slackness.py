@@ -14,7 +14,8 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import IntArray, Network
-from service.proof.arcs import Costs, ItemArcs, scaled_costs
+from service.proof.arcs import Costs, ItemArcs
+from service.proof.costs import scaled_costs
 from service.proof.exact import ROOM, Whole, magnitude, plus, times, whole
 from service.proof.flows import Names, describe
 from service.proof.violations import EXAMPLES_MAX, Findings

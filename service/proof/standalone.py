@@ -192,8 +192,8 @@ DECIMAL = re.compile(r"-?(0|[1-9][0-9]{0,18})(\.[0-9]{0,5}[1-9])?")
 # Name, kind, and for positions what they count; "!" marks what every row must have.
 COLUMNS = {
     "supply": (
-        "site!sites item!items quantity!decimal unit!texts unit_cost:decimal on_hand:decimal "
-        "reserved:decimal on_hold:decimal as_of:texts lot:texts best_before:texts "
+        "site!sites item!items quantity!decimal unit!texts unit_cost:decimal currency:texts "
+        "on_hand:decimal reserved:decimal on_hold:decimal as_of:texts lot:texts best_before:texts "
         "keep_quantity:decimal keep_priority:small extra:texts"
     ),
     "demand": (
@@ -203,7 +203,8 @@ COLUMNS = {
     ),
     "lanes": (
         "id:text origin!sites destination!sites item:items unit_cost!decimal measure!texts "
-        "must_ship:decimal capacity:decimal per:texts carrier:texts tags:texts extra:texts"
+        "must_ship:decimal capacity:decimal per:texts carrier:texts currency:texts charges:texts "
+        "tags:texts extra:texts"
     ),
 }
 
@@ -299,7 +300,7 @@ def common_fields(thing: Value, allowed: str) -> None:
     need(isinstance(name, str) and re.fullmatch("[^\x00-\x1f\x7f]{1,64}", name), "not an id")
     for field in ("name", "gtin", "gln", "time_zone", "country"):
         need(isinstance(thing.get(field, ""), str), field + " is not text")
-    for field in ("weight_kg", "volume_m3", "latitude", "longitude"):
+    for field in ("weight_kg", "volume_m3", "value", "latitude", "longitude"):
         if field in thing:
             thing[field] = decimal(thing[field])
     if "tags" in thing:
@@ -310,7 +311,7 @@ def common_fields(thing: Value, allowed: str) -> None:
 
 def read_item(item: Value) -> None:
     """Check an item and turn its numbers into fractions."""
-    common_fields(item, "id unit step name gtin weight_kg volume_m3 packs tags extra")
+    common_fields(item, "id unit step name gtin weight_kg volume_m3 value packs tags extra")
     need(isinstance(item.get("unit"), str) and item["unit"], "an item without a unit")
     item["step"] = decimal(item.get("step"))
     need(item["step"] > 0, "a step of 0 or less")
@@ -395,12 +396,55 @@ def is_date(text: str) -> bool:
     return re.fullmatch("[0-9]{4}-[0-9]{2}-[0-9]{2}", text) is not None
 
 
+def read_exchange_rates(head: dict[str, Any]) -> dict[str | None, Fraction]:
+    """Return what one unit of each currency is in the plan's, which is called None here."""
+    rates = head.get("exchange_rates", ())
+    need(rates == () or (isinstance(rates, list) and rates), "no exchange rates")
+    worth: dict[str | None, Fraction] = {None: Fraction(1)}
+    for rate in rates:
+        need(isinstance(rate, dict), "not an exchange rate")
+        need({"currency", "rate"} <= set(rate), "an exchange rate lacks something")
+        need(set(rate) <= set("currency rate per as_of source".split()), "other fields of a rate")
+        need(all(isinstance(text, str) for text in rate.values()), "a rate is not text")
+        need(re.fullmatch("[A-Z]{3}", rate["currency"]), "no currency of a rate")
+        need(rate["currency"] != head["currency"], "a rate of the plan's own currency")
+        need("as_of" not in rate or is_date(rate["as_of"]), "not a date")
+        of, per = decimal(rate["rate"]), decimal(rate.get("per", "1"))
+        need(of > 0 and per > 0 and rate.get("per") != "1", "not a rate")
+        worth[rate["currency"]] = of / per
+    need(rises([rate["currency"] for rate in rates]), "exchange rates are not sorted")
+    return worth
+
+
+def read_charges(text: str, item_ids: set[str], known: set[str | None]) -> list[dict[str, Any]]:
+    """Return the charges of a lane, their numbers read."""
+    charges: list[dict[str, Any]] = parse_canonical(text.encode())
+    need(isinstance(charges, list), "charges are not an array")
+    need(charges, "charges are an empty array")
+    for charge in charges:
+        need(isinstance(charge, dict), "not a charge")
+        field = "percent" if charge.get("basis") == "value" else "rate"
+        need({"name", "basis", field} <= set(charge), "a charge lacks something")
+        allowed = {"name", "basis", field, "items"}
+        allowed |= {"currency"} if field == "rate" else set()
+        need(set(charge) <= allowed, "other fields of a charge")
+        need(all(isinstance(charge[f], str) and charge[f] for f in ("name", "basis")), "a charge")
+        charge["amount"] = decimal(charge[field])
+        need(charge["amount"] >= 0, "a charge below 0")
+        need(charge.get("currency") in known, "a charge in another currency")
+        need(charge.get("currency", "") is not None, "a charge in no currency")
+        if "items" in charge:
+            need(set(filled_texts(charge["items"])) <= item_ids, "a charge of unknown items")
+    need(rises([charge["name"].encode() for charge in charges]), "charges are not sorted")
+    return charges
+
+
 def read_head(data: bytes) -> dict[str, Any]:
     """Return the head of the network, its items and sites read."""
     head: dict[str, Any] = parse_canonical(data)
     need(isinstance(head, dict), "the head is not an object")
     texts = {"name", "currency", "cut_off", "release_by"}
-    fields = {"format", "rules", "extra", "items", "sites", "tables"}
+    fields = {"format", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
     need(set(head) <= fields | texts, "other fields in the head")
     need(is_whole(head.get("format")) and head["format"] == 1, "another format")
     need(all(isinstance(head.get(field, ""), str) for field in texts), "a field is not text")
@@ -409,6 +453,7 @@ def read_head(data: bytes) -> dict[str, Any]:
     need(all(isinstance(head.get(f), list) for f in ("items", "sites", "rules")), "no arrays")
     if "extra" in head:
         text_members(head["extra"])
+    head["worth"] = read_exchange_rates(head)
     for rule in head["rules"]:
         read_rule(rule)
     need(rises([rule["id"].encode() for rule in head["rules"]]), "rules are not sorted")
@@ -611,6 +656,13 @@ class Network:
         self.site_at = {site["id"]: at for at, site in enumerate(self.sites)}
         self.item_at = {item["id"]: at for at, item in enumerate(self.items)}
         self.passing = ["cross_dock" in site["roles"] for site in self.sites]
+        self.worth: dict[str | None, Fraction] = head["worth"]
+        for table in (self.supply, self.lanes):
+            need(set(table["currency"].values) <= set(self.worth), "a currency without a rate")
+        self.charges = {
+            text: read_charges(text, set(self.item_at), set(self.worth))
+            for text in self.lanes["charges"].values
+        }
         self._check_supply()
         self._check_demand()
         self._check_lanes()
@@ -659,6 +711,22 @@ class Network:
             return item.get(measure)
         return 1 / item["packs"][measure] if measure in item["packs"] else None
 
+    def charges_on(self, row: int, at: int) -> list[tuple[str, str | None, Fraction]]:
+        """Return name, currency and amount of what a lane charges for one unit of an item."""
+        item, due = self.items[at], []
+        for charge in self.charges.get(self.lanes["charges"][row], ()):
+            if item["id"] not in charge.get("items", [item["id"]]):
+                continue
+            if charge["basis"] == "value":
+                per = item["value"] / 100 if "value" in item else None
+            else:
+                names = {"weight": "weight_kg", "volume": "volume_m3"}
+                per = self.measure(at, names.get(charge["basis"], charge["basis"]))
+            if per is None:
+                raise Unusable(f"item {item['id']!r} cannot be charged {charge['name']}")
+            due.append((charge["name"], charge.get("currency"), charge["amount"] * per))
+        return due
+
     def _check_units(self, table: dict[str, Any]) -> None:
         """Check that every row is in a unit of its item, and has a quantity that is not below 0."""
         for item, unit in set(zip(table["item"], table["unit"].codes)):  # noqa: B905 - Python 3.9
@@ -686,6 +754,7 @@ class Network:
         supply = self.supply
         site, item = supply["site"][row], supply["item"][row]
         cost = (supply["unit_cost"][row] or 0) / self.units(item, supply["unit"][row])
+        cost *= self.worth[supply["currency"][row]]
         date = supply["best_before"].codes[row]
         rest = []
         for (
@@ -697,7 +766,8 @@ class Network:
             else:
                 rest += (values.has(row), values.numbers[row])
         rest += (supply["keep_priority"][row], supply["extra"].codes[row])
-        return (site, item, cost, date < 0, date, supply["lot"].codes[row], *rest)
+        currency, lot = supply["currency"].codes[row], supply["lot"].codes[row]
+        return (site, item, cost, currency, date < 0, date, lot, *rest)
 
     def _check_demand(self) -> None:
         """Check the order lines."""
@@ -751,7 +821,8 @@ class Network:
     def _lane_key(self, row: int) -> Key:
         """Return what lanes between the same sites are sorted by."""
         lanes, capacity = self.lanes, self.lanes["capacity"]
-        codes = (lanes[column].codes[row] for column in ("tags", "measure", "per", "extra"))
+        columns = ("tags", "measure", "per", "extra", "currency", "charges")
+        codes = (lanes[column].codes[row] for column in columns)
         return (
             lanes["id"][row],
             lanes["carrier"].codes[row],
@@ -947,6 +1018,17 @@ PLAN: dict[str, Any] = {
             **keys("origin destination item", "text"),
             **keys("quantity unit_cost transport_cost supply_cost", "amount"),
             **keys("handling_cost charges cost", "amount"),
+            "?stated": {"currency": "text", "transport_cost": "amount"},
+            "?charge_parts": [
+                {**keys("name ?currency", "text"), **keys("cost ?stated_cost", "amount")}
+            ],
+        }
+    ],
+    "?currencies": [
+        {
+            "currency": "text",
+            **keys("as_of source", "?text"),
+            **keys("rate per supply transport charges amount converted", "amount"),
         }
     ],
     "order_lines": [
@@ -1001,7 +1083,7 @@ PLAN: dict[str, Any] = {
     "certificate": SUMMARY,
 }
 NO_PLAN: dict[str, Any] = {
-    **PLAN,
+    **{key: shape for key, shape in PLAN.items() if key != "?currencies"},
     "status": ("no_plan",),
     **keys("total_cost total_cost_rounded rounding_difference cost_parts", (None,)),
     "totals": {**PLAN["totals"], "quantities": []},
@@ -1271,11 +1353,12 @@ class Arc:
 
 
 class Tiers:
-    """The stock of an item at a site: tiers of one cost, in whole steps, and the rows in them."""
+    """Stock of an item at a site: tiers of one cost and currency, in steps, and rows in them."""
 
     def __init__(self) -> None:
         """Start with nothing."""
         self.costs: list[Fraction] = []
+        self.stated: list[tuple[str | None, Fraction]] = []  # currency, money in it
         self.steps: list[int] = []
         self.rows: list[tuple[int, int, str | None]] = []  # tier from 1, steps, lot
         self.keep = self.keep_priority = 0
@@ -1308,6 +1391,8 @@ class Formal:
         self.rules = [rule for rule in rules if item in rule.items]
         self.rows = usable_lanes(network, item)
         self.amounts = self._measures()
+        for row in self.rows if network.charges else ():
+            self.charge(row)  # raises where it is not known
         self.low: dict[int, int] = {}
         self.high: dict[int, int] = {}
         self._limit_lanes()
@@ -1327,6 +1412,11 @@ class Formal:
         measures = self.network.lanes["measure"]
         codes = {measures.codes[row] for row in self.rows}
         return {code: self._per_step(measures.values[code]) for code in codes}
+
+    def charge(self, row: int) -> Fraction:
+        """Return what a lane charges for one unit, in the currency of the plan."""
+        due = self.network.charges_on(row, self.item)
+        return sum((money * self.network.worth[code] for _, code, money in due), Fraction(0))
 
     def _per_step(self, measure: str) -> Fraction:
         """Return how much of a measure one step of the item is."""
@@ -1382,9 +1472,11 @@ class Formal:
             site = supply["site"][row]
             tiers = stock.setdefault(site, Tiers())
             units = network.units(self.item, supply["unit"][row])
-            cost = (supply["unit_cost"][row] or 0) / units
-            if not tiers.costs or tiers.costs[-1] != cost:
+            currency, money = supply["currency"][row], (supply["unit_cost"][row] or 0) / units
+            cost = money * network.worth[currency]
+            if not tiers.costs or (tiers.costs[-1], tiers.stated[-1][0]) != (cost, currency):
                 tiers.costs.append(cost)
+                tiers.stated.append((currency, money))
                 tiers.steps.append(0)
             before = held.get(site, Fraction(0))
             held[site] = before + supply["quantity"][row] * units
@@ -1739,9 +1831,29 @@ def read_prices(formal: Formal, proof: dict[str, Any], report: Report) -> list[i
     return [prices[node] for node in range(len(formal.places))]
 
 
-def check_prices(  # noqa: C901 - the argument of the proof, from top to bottom
-    flow: Flow, proof: dict[str, Any], scale: Fraction, report: Report
-) -> None:
+def scaled_lane_costs(formal: Formal, scale: Fraction) -> tuple[list[Any], bool]:
+    """Return what a step costs on each lane, times the scale, and whether all of it is whole."""
+    network, lanes = formal.network, formal.network.lanes
+    costs = lanes["unit_cost"]
+    columns = [lanes[name].codes for name in ("measure", "currency", "charges")]
+    factors: dict[Key, tuple[int, int, Fraction]] = {}
+    lane_costs: list[int] = []
+    whole = True
+    for row in formal.rows:
+        key = tuple(codes[row] for codes in columns)
+        if key not in factors:
+            worth = network.worth[lanes["currency"][row]]
+            ratio = formal.amounts[key[0]] * worth * scale / costs.power
+            charges = formal.charge(row) * formal.step * scale
+            factors[key] = (ratio.numerator, ratio.denominator, charges)
+        times, over, charged = factors[key]
+        cost, rest = divmod(costs.numbers[row] * times, over)
+        whole = whole and not rest and charged.denominator == 1
+        lane_costs.append(cost + charged.numerator)
+    return lane_costs, whole
+
+
+def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Report) -> None:
     """Check that no flow costs less, over every lane (complementary slackness).
 
     With prices at the places, an arc from i to j has the reduced cost: cost + price(i) - price(j).
@@ -1752,18 +1864,7 @@ def check_prices(  # noqa: C901 - the argument of the proof, from top to bottom
     """
     formal = flow.formal
     prices = read_prices(formal, proof, report)
-    lanes = formal.network.lanes
-    costs, codes = lanes["unit_cost"], lanes["measure"].codes
-    factors = {}
-    for code, per in formal.amounts.items():
-        ratio = per * scale / costs.power
-        factors[code] = (ratio.numerator, ratio.denominator)
-    lane_costs, whole = [], True
-    for row in formal.rows:
-        times, over = factors[codes[row]]
-        cost, rest = divmod(costs.numbers[row] * times, over)
-        whole = whole and not rest
-        lane_costs.append(cost)
+    lane_costs, whole = scaled_lane_costs(formal, scale)
     arc_costs = [arc.money * scale for arc in formal.arcs]
     if not whole or any(cost.denominator != 1 for cost in arc_costs):
         report.add("cost_scale_wrong", "a scaled cost is not whole", formal.name)
@@ -2028,10 +2129,16 @@ class Tables:
         self._check_use()
         self._check_shortages()
         self._check_plan_lines()
+        self._check_currencies()
         self._check_consignments()
 
     def lane_money(self, row: int, item: int) -> Fraction:
-        """Return what one unit of an item costs on a lane."""
+        """Return what transport of one unit of an item costs on a lane."""
+        worth: Fraction = self.network.worth[self.network.lanes["currency"][row]]
+        return self.stated_money(row, item) * worth
+
+    def stated_money(self, row: int, item: int) -> Fraction:
+        """Return the same in the currency of the lane."""
         lanes = self.network.lanes
         cost: Fraction = lanes["unit_cost"][row]
         per: Fraction = self.network.measure(item, lanes["measure"][row])
@@ -2048,13 +2155,15 @@ class Tables:
         }
         parts = []
         for flow in self.flows:
-            money = dict.fromkeys(("supply", "handling", "transport", "shortage"), Fraction(0))
+            named = ("supply", "handling", "transport", "charges", "shortage")
+            money = dict.fromkeys(named, Fraction(0))
             for arc, steps in zip(flow.formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
                 if arc.kind in kinds:
                     money[kinds[arc.kind]] += steps * arc.money
             for row, steps in flow.on_lane.items():
                 per_step = self.lane_money(row, flow.formal.item) * flow.formal.step
                 money["transport"] += steps * per_step
+                money["charges"] += steps * flow.formal.charge(row) * flow.formal.step
             parts.append(money)
         return parts
 
@@ -2341,7 +2450,7 @@ class Tables:
         """Return whether the ends and every cost of a plan line are right."""
         document, lanes, flow = line.document, self.network.lanes, self.flows[line.item]
         sites, name, step = self.network.sites, flow.formal.name, flow.formal.step
-        quantity, unit_cost = amount(document["quantity"]), Fraction(0)
+        quantity, unit_cost, charged = amount(document["quantity"]), Fraction(0), Fraction(0)
         handling = quantity * sites[line.origin]["handling"](name)
         if line.row < 0:
             first = quantity / step
@@ -2349,6 +2458,7 @@ class Tables:
             right = right and first == self.local.get((line.origin, line.item), 0)
         else:
             unit_cost = self.lane_money(line.row, line.item)
+            charged = quantity * flow.formal.charge(line.row)
             first = Fraction(self.first.get((line.row, line.item), 0))
             consumed = self.last.get((line.row, line.item), 0) * step
             handling += consumed * sites[line.destination]["handling"](name)
@@ -2366,9 +2476,63 @@ class Tables:
             and amount(document["unit_cost"]) == unit_cost
             and amount(document["transport_cost"]) == transport
             and amount(document["handling_cost"]) == handling
-            and amount(document["charges"]) == 0
-            and amount(document["cost"]) == transport + supply + handling
+            and amount(document["charges"]) == charged
+            and amount(document["cost"]) == transport + supply + handling + charged
         )
+
+    def _check_currencies(self) -> None:
+        """Check what is paid in other currencies, line by line and in all, and each charge."""
+        worth, spent = self.network.worth, self._spent_on_lanes()
+        for flow, drawn in zip(self.flows, self.drawn):  # noqa: B905 - Python 3.9
+            for (site, tier), steps in drawn.items():
+                code, money = flow.formal.stock[site].stated[tier - 1]
+                if code is not None:
+                    spent[(code, "supply")] += steps * flow.formal.step * money
+        expected = []
+        for rate in self.network.head.get("exchange_rates", ()):
+            code, names = rate["currency"], ("supply", "transport", "charges")
+            sums = {name: spent[(code, name)] for name in names}
+            total = sum(sums.values())
+            if any(sums.values()):
+                row = {"currency": code, **sums, "amount": total, "converted": total * worth[code]}
+                row.update({"rate": Fraction(rate["rate"]), "per": Fraction(rate.get("per", "1"))})
+                row.update({name: rate.get(name) for name in ("as_of", "source")})
+                expected.append(row)
+        listed = self.plan.get("currencies")
+        right = (listed is not None) == ("exchange_rates" in self.network.head)
+        if not right or [with_numbers(row) for row in listed or ()] != expected:
+            self.wrong("total_wrong", "not what is paid in other currencies", "currencies")
+
+    def _spent_on_lanes(self) -> dict[Key, Fraction]:
+        """Check what plan lines say of other currencies and charges; return it by currency."""
+        worth, lanes = self.network.worth, self.network.lanes
+        spent: dict[Key, Fraction] = defaultdict(Fraction)
+        for line in self.lines:
+            quantity = amount(line.document["quantity"])
+            expected: dict[str, Any] = {}
+            currency = None if line.row < 0 else lanes["currency"][line.row]
+            if currency is not None:
+                money = quantity * self.stated_money(line.row, line.item)
+                expected["stated"] = {"currency": currency, "transport_cost": money}
+                spent[(currency, "transport")] += money
+            due = [] if line.row < 0 else self.network.charges_on(line.row, line.item)
+            parts: list[dict[str, Any]] = []
+            for name, code, per in due:
+                part = {"name": name, "cost": quantity * per * worth[code]}
+                if code is not None:
+                    part.update({"currency": code, "stated_cost": quantity * per})
+                    spent[(code, "charges")] += quantity * per
+                parts += [part] if per else []
+            if parts:
+                expected["charge_parts"] = parts
+            said: dict[str, Any] = {}
+            if "stated" in line.document:
+                said["stated"] = with_numbers(line.document["stated"])
+            if "charge_parts" in line.document:
+                said["charge_parts"] = [with_numbers(one) for one in line.document["charge_parts"]]
+            if said != expected:
+                self.wrong("plan_line_wrong", "not what its lane charges", line.place)
+        return spent
 
     def _check_consignments(self) -> None:
         """Check what is on each lane."""
@@ -2407,6 +2571,12 @@ class Tables:
             stated.append({**entry, **numbers})
         if stated != expected:
             self.wrong("consignment_wrong", "not what is on the lanes", "consignments")
+
+
+def with_numbers(document: dict[str, Any]) -> dict[str, Any]:
+    """Return an object of texts with the amounts in it as numbers."""
+    words = ("name", "currency", "as_of", "source")
+    return {key: text if key in words else amount(text) for key, text in document.items()}
 
 
 def adds_up(document: dict[str, Any]) -> bool:

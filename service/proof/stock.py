@@ -1,4 +1,4 @@
-"""The stock of one item: tiers of equal cost, whole steps, and what each row gives to them."""
+"""The stock of one item: tiers of one cost and currency, whole steps, what each row gives."""
 
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -8,6 +8,7 @@ import numpy as np
 
 from service.network.columns import Network
 from service.network.units import item_units
+from service.proof.money import in_plan_money
 from service.proof.rulings import UnusableNetworkError
 
 
@@ -25,11 +26,13 @@ class StockRow:
 class Stock:
     """The stock of an item at a site.
 
-    ``tier_cost`` is money per item unit and ``tier_steps`` what there is, dearer tiers later.
+    ``tier_cost`` is money per item unit in the currency of the plan, ``tier_stated`` the currency
+    (None: that one) and the money in it, ``tier_steps`` what there is; dearer tiers come later.
     ``keep_steps`` is what should stay (0: no node for it), of ``keep_priority``.
     """
 
     tier_cost: tuple[Fraction, ...]
+    tier_stated: tuple[tuple[str | None, Fraction], ...]
     tier_steps: tuple[int, ...]
     rows: tuple[StockRow, ...]
     keep_steps: int
@@ -53,15 +56,19 @@ def _stock(network: Network, item: int, rows: list[int]) -> Stock:
     """
     supply, step = network.supply, network.items[item].step
     costs: list[Fraction] = []
+    stated: list[tuple[str | None, Fraction]] = []
     steps: list[int] = []
     parts: list[StockRow] = []
     held = Fraction(0)
     keep_steps = keep_priority = 0
     for row in rows:
         units = _row_units(network, item, row)
-        cost = (supply.unit_cost.fraction(row) or Fraction(0)) / units
-        if not costs or cost != costs[-1]:
+        money = (supply.unit_cost.fraction(row) or Fraction(0)) / units
+        currency = supply.currency.text(row)
+        cost = money * in_plan_money(network.head, currency)
+        if not costs or cost != costs[-1] or currency != stated[-1][0]:
             costs.append(cost)
+            stated.append((currency, money))
             steps.append(0)
         before = held // step
         held += (supply.quantity.fraction(row) or Fraction(0)) * units
@@ -74,6 +81,7 @@ def _stock(network: Network, item: int, rows: list[int]) -> Stock:
             keep_priority = int(supply.keep_priority[row])
     return Stock(
         tier_cost=tuple(costs),
+        tier_stated=tuple(stated),
         tier_steps=tuple(steps),
         rows=tuple(parts),
         keep_steps=keep_steps,

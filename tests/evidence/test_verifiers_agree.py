@@ -14,7 +14,7 @@ from tests.evidence.mutations import MUTATIONS
 from tests.evidence.zips import entries_of, good_zip
 
 # Random networks with and without a plan; drawn afresh, they would hide what broke.
-SEEDS = 24
+SEEDS = 36
 MUTANTS = 1_000
 MUTANTS_LONG = 10_000
 

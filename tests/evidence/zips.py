@@ -24,11 +24,13 @@ from service.network.stored_zip import read_stored_zip, stored_zip
 from service.planning.task import plan
 from service.proof.evidence import write_evidence
 from tests.factories import NetworkRefused, take_in
+from tests.random_money import in_other_money
 from tests.random_networks import draw_network
 
 Entries = dict[str, bytes]
 Document = dict[str, Any]
 
+WITH_MONEY_FROM = 24
 NOTHING_BEFORE = "sha-256:" + "0" * 64
 
 
@@ -110,9 +112,13 @@ def packed(network: Network, options: Options, plan_: bytes, certificate: bytes)
 
 @cache
 def good_zip(seed: int) -> bytes:
-    """Return the evidence of the random network of ``seed``."""
-    drawn = draw_network(random.Random(seed))  # noqa: S311 - a test that repeats, no secret
-    return evidence_of(drawn.document, drawn.options)
+    """Return the evidence of the random network of ``seed``; later ones have other money too."""
+    rng = random.Random(seed)  # noqa: S311 - a test that repeats, no secret
+    drawn = draw_network(rng)
+    if seed < WITH_MONEY_FROM:
+        return evidence_of(drawn.document, drawn.options)
+    stated, _ = in_other_money(drawn.document, rng)
+    return evidence_of(stated, drawn.options)
 
 
 def entries_of(data: bytes) -> Entries:

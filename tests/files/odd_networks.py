@@ -104,6 +104,7 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
                 "unit": "bag",
                 "step": "0.001",
                 **some({"weight_kg": decimals(6), "tags": tags, "extra": extras}),
+                "value": draw(decimals(6)),
                 "packs": [
                     {"unit": f"pack {number}", "contains": draw(decimals(3, least=1))}
                     for number in range(draw(st.integers(0, 2)))
@@ -122,6 +123,7 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
                 **some(
                     {
                         "unit_cost": rates,
+                        "currency": st.sampled_from(("EUR", "NOK")),
                         "lot": ids,
                         "best_before": st.just("2026-12-31"),
                         "as_of": st.just("2026-02-03T15:52:00.123456+01:00"),
@@ -163,6 +165,13 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
                         "item": st.sampled_from(items),
                         "capacity": quantities,
                         "carrier": ids,
+                        "currency": st.sampled_from(("EUR", "NOK")),
+                        "charges": st.just(
+                            [
+                                {"name": draw(ids), "basis": "unit", "rate": draw(decimals(6))},
+                                {"name": "%", "basis": "value", "percent": "1", "items": items},
+                            ]
+                        ),
                         "tags": tags,
                         "extra": extras,
                     }
@@ -171,4 +180,12 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
             for name in draw(st.lists(ids, max_size=4, unique=True))
         ],
         "rules": rules(),
+        "exchange_rates": [
+            {
+                "currency": "NOK",
+                "rate": draw(decimals(6, least=1)),
+                **some({"per": decimals(6, least=1), "as_of": st.just("2026-02-02")}),
+                **some({"source": ids}),
+            }
+        ],
     }

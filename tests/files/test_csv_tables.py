@@ -71,7 +71,7 @@ def test_every_fault_of_every_file_is_found_at_once() -> None:
     """Columns, cells and tables; in the order of the tables and rows."""
     report = read(
         files(
-            items="id,unit,colour,value\n0025,,red,1\n",
+            items="id,unit,colour,divisible\n0025,,red,1\n",
             lanes="origin,destination,unit_cost,unit_cost,\nNORTH,YARD,1,2,\nNORTH,YARD,1,2,3\n",
             demand="reference,site,item,quantity,priority\nSO-1,YARD,0025,1.2345,11\n",
         )
@@ -81,7 +81,7 @@ def test_every_fault_of_every_file_is_found_at_once() -> None:
         ("demand.csv!row 2,priority", "bad_number", "11"),
         ("demand.csv!row 2,quantity", "too_many_decimals", "1.2345"),
         ("items.csv!column colour", "unknown_field", None),
-        ("items.csv!column value", "not_yet", None),
+        ("items.csv!column divisible", "not_yet", None),
         ("items.csv!row 2,unit", "missing_field", None),
         ("lanes.csv", "unnamed_column", None),
         ("lanes.csv!column unit_cost", "duplicate_column", "unit_cost"),

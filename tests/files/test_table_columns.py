@@ -5,6 +5,7 @@ import pytest
 from service.network.definition import (
     RULE_PARTS,
     Control,
+    ExchangeRatePart,
     Head,
     ItemPart,
     LanePick,
@@ -44,6 +45,7 @@ def test_the_small_tables_have_a_column_for_each_field() -> None:
     assert set(TABLES["packs"]) == names(PackPart) | {"item"}
     assert set(TABLES["sites"]) == names(SitePart)
     assert set(TABLES["control"]) == names(Control)
+    assert set(TABLES["exchange_rates"]) == names(ExchangeRatePart)
     assert set(TABLES["rules"]) == rules | {
         f"{name}.{key}" for name, part in picks.items() for key in names(part)
     }
@@ -52,14 +54,20 @@ def test_the_small_tables_have_a_column_for_each_field() -> None:
 @pytest.mark.parametrize("table", TABLES)
 def test_what_is_needed_is_what_the_check_asks_for(table: str) -> None:
     """Notes in the template must not promise that a field may be left out."""
-    parts = {"network": Head, "items": ItemPart, "packs": PackPart, "sites": SitePart}
+    parts = {
+        "network": Head,
+        "items": ItemPart,
+        "packs": PackPart,
+        "sites": SitePart,
+        "exchange_rates": ExchangeRatePart,
+    }
     if table in parts:
         fields = parts[table].model_fields  # type: ignore[attr-defined] # a model
         needed = {name for name, field in fields.items() if field.is_required()}
         assert {name for name, field in TABLES[table].items() if field.needed} == needed | (
             {"item"} if table == "packs" else set()
         )
-    assert (table in WANTED) == (table not in {"packs", "rules", "control"})
+    assert (table in WANTED) == (table not in {"packs", "rules", "exchange_rates", "control"})
 
 
 @pytest.mark.parametrize(

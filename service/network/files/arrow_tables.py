@@ -40,6 +40,7 @@ _REFUSALS: Final = {
     Kind.LIST: "lists of texts; its type is {0}. Write lists of strings, or text with | between.",
     Kind.TEXT: "texts, zeros in front included; its type is {0}. Write it as strings.",
     Kind.PAIRS: "JSON objects as text; its type is {0}. Write it as strings.",
+    Kind.OBJECTS: "JSON arrays as text; its type is {0}. Write it as strings.",
 }
 _FLOAT: Final = (
     "A column of binary floats was rounded already. Write decimal128, whole numbers, or text."

@@ -13,6 +13,7 @@ LIST_ADVICE: Final = (
     "Not a list. Write texts with | between, or a JSON array of texts where one has | in it."
 )
 PAIRS_ADVICE: Final = 'Not a JSON object of texts, such as {"route": "R7"}.'
+OBJECTS_ADVICE: Final = "Not a JSON array of objects, such as [{...}, {...}]."
 _NESTING_MAX: Final = 2
 
 
@@ -56,6 +57,14 @@ def _list(text: str) -> object:
     return found.value
 
 
+def _objects(text: str) -> object:
+    """Read an array of objects."""
+    found = read_json(text.encode("utf-8", "surrogatepass"), nesting_max=_NESTING_MAX + 1)
+    if found.unreadable or found.invalid or not isinstance(found.value, list):
+        return Odd("bad_list", OBJECTS_ADVICE, text)
+    return found.value
+
+
 def _pairs(text: str) -> object:
     """Read pairs of texts."""
     found = read_json(text.encode("utf-8", "surrogatepass"), nesting_max=_NESTING_MAX)
@@ -68,4 +77,5 @@ _READERS: Final[Mapping[Kind, Callable[[str], object]]] = {
     Kind.WHOLE: Number,
     Kind.LIST: _list,
     Kind.PAIRS: _pairs,
+    Kind.OBJECTS: _objects,
 }

@@ -26,7 +26,9 @@ from service.network.files.zips import Allowance, HostileZipError, TooLargeError
 from service.network.table_fields import FLAT_FIELDS
 
 _BIG: Final = ("supply", "demand", "lanes")
-_ORDER: Final = ("items", "sites", "supply", "demand", "lanes", "rules", "control")
+_ORDER: Final = (
+    *("items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates", "control"),
+)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -33,6 +33,7 @@ def flat_tables(document: Mapping[str, Any]) -> dict[str, FlatTable]:
         "items": items,
         "packs": packs,
         "rules": document.get("rules") or (),
+        "exchange_rates": document.get("exchange_rates") or (),
         "control": [document["control"]] if document.get("control") else (),
     }
     rows |= {name: document[name] for name in ("sites", "supply", "demand", "lanes")}
@@ -70,8 +71,10 @@ def _flat(row: Mapping[str, Any]) -> dict[str, str]:
     return cells
 
 
-def _list(texts: Sequence[str]) -> str:
-    """Return texts as one cell."""
+def _list(texts: Sequence[Any]) -> str:
+    """Return texts, or objects, as one cell."""
+    if not isinstance(texts[0], str):
+        return json.dumps(texts, ensure_ascii=False)
     if any(LIST_SEPARATOR in text or text.startswith("[") or not text for text in texts):
         return json.dumps(list(texts), ensure_ascii=False)
     return LIST_SEPARATOR.join(texts)

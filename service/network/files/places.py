@@ -99,7 +99,7 @@ def swapped(number: str) -> str:
 
 
 _SWAP = str.maketrans(",.", ".,")
-_LISTS = frozenset({"items", "sites", "supply", "demand", "lanes", "rules"})
+_LISTS = frozenset({"items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates"})
 
 
 def _column(grid: Grid, row: int | None, names: Sequence[str]) -> str:

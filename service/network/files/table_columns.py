@@ -20,6 +20,7 @@ class Kind(Enum):
     MOMENT = auto()  # RFC 3339, with its offset
     DATE = auto()
     PAIRS = auto()  # a JSON object of texts
+    OBJECTS = auto()  # a JSON array of objects
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,6 +65,7 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "gtin": Field(Kind.TEXT, "GTIN with its check digit"),
         "weight_kg": Field(Kind.NUMBER, "kilograms of one unit"),
         "volume_m3": Field(Kind.NUMBER, "cubic metres of one unit"),
+        "value": Field(Kind.NUMBER, "what one unit is worth, in the currency of the plan"),
         "tags": Field(Kind.LIST, _TAGS),
         "extra": _EXTRA,
     },
@@ -93,6 +95,7 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "quantity": Field(Kind.NUMBER, "how much is available", needed=True),
         "unit": Field(Kind.TEXT, "the item's unit if empty; a pack, or a unit of the same kind"),
         "unit_cost": Field(Kind.NUMBER, "money per unit that is drawn"),
+        "currency": Field(Kind.TEXT, "of the unit cost, ISO 4217; the plan's if empty"),
         "on_hand": Field(Kind.NUMBER, "for the record: what lies there"),
         "reserved": Field(Kind.NUMBER, "for the record: what is promised"),
         "on_hold": Field(Kind.NUMBER, "for the record: what is blocked"),
@@ -129,6 +132,11 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "capacity": Field(Kind.NUMBER, "at most so much goes; no limit if empty"),
         "per": Field(Kind.TEXT, "item: the limits hold for each item by itself"),
         "carrier": Field(Kind.TEXT, "who drives"),
+        "currency": Field(Kind.TEXT, "of the unit cost, ISO 4217; the plan's if empty"),
+        "charges": Field(
+            Kind.OBJECTS,
+            'duty and the like as JSON: [{"name": "duty", "basis": "value", "percent": "2.5"}]',
+        ),
         "tags": Field(Kind.LIST, _TAGS),
         "extra": _EXTRA,
     },
@@ -157,6 +165,13 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "maximum": Field(Kind.NUMBER, "throughput: at most so much"),
         "quantity": Field(Kind.NUMBER, "fixed_quantity: exactly so much"),
         "per": Field(Kind.TEXT, "throughput: each, where several sites are picked"),
+    },
+    "exchange_rates": {
+        "currency": Field(Kind.TEXT, "ISO 4217, such as NOK", needed=True),
+        "rate": Field(Kind.NUMBER, "what it is in the currency of the plan", needed=True),
+        "per": Field(Kind.NUMBER, "for so many units of it; 1 if empty"),
+        "as_of": Field(Kind.DATE, "the day of the rate"),
+        "source": Field(Kind.TEXT, "who says so"),
     },
     "control": {
         "demand_rows": Field(Kind.WHOLE, "how many order lines there must be"),

@@ -75,7 +75,6 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("items", 0, "volume_m3", value="1e-3"), "/items/0/volume_m3", "not_a_number"),
     (put("items", 0, "packs", 0, "unit", value="bag"), "/items/0/packs/0/unit", "bad_pack"),
     (put("items", 0, "packs", 0, "unit", value="weight_kg"), "/items/0/packs/0/unit", "bad_pack"),
-    (put("items", 0, "value", value="1"), "/items/0/value", "not_yet"),
     (put("items", 1, "id", value="ROAD-25"), "/items/1/id", "duplicate_id"),
     # Sites.
     (put("sites", 0, "roles", value=[]), "/sites/0/roles", "bad_roles"),

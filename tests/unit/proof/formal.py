@@ -5,7 +5,8 @@ from typing import Any
 
 from service.network.columns import Network
 from service.network.options import Options
-from service.proof.arcs import ItemArcs, item_arcs, scaled_costs
+from service.proof.arcs import ItemArcs, item_arcs
+from service.proof.costs import scaled_costs
 from service.proof.rulings import Rulings
 from tests.factories import network_document
 from tests.unit.proof.by_hand import Document

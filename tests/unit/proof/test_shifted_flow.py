@@ -8,7 +8,8 @@ import numpy as np
 import orjson
 
 from service.network.options import Options
-from service.proof.arcs import ItemArcs, item_arcs, scaled_costs
+from service.proof.arcs import ItemArcs, item_arcs
+from service.proof.costs import scaled_costs
 from service.proof.feasibility import broken_limits
 from service.proof.flows import Names, item_flows
 from service.proof.rulings import Rulings
