@@ -10,7 +10,7 @@ from service.network.rules import Throughput
 from service.proof.groups import Wanted
 from service.proof.rulings import Rulings, UnusableNetworkError, measure_of
 from service.proof.stock import Stock
-from service.proof.usable import cross_docks, stock_behind
+from service.proof.usable import cross_docks, of_rows, stock_behind
 
 UNLIMITED = -1
 
@@ -62,18 +62,19 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
 ) -> dict[int, SiteSides]:
     """Return the sites that matter to ``item``, ascending, and what each is made of."""
     lanes = network.lanes
-    ends = np.zeros((2, len(network.sites)), dtype=np.bool_)
-    ends[0, lanes.origin[rows]] = True
-    ends[1, lanes.destination[rows]] = True
+    starting = np.zeros(len(network.sites), dtype=np.bool_)
+    starting[of_rows(lanes.origin, rows)] = True
+    ending = np.zeros(len(network.sites), dtype=np.bool_)
+    ending[of_rows(lanes.destination, rows)] = True
     choosy = {group.site for group in wanted.groups if group.origins is not None}
     relevant = (
         set(stock)
         | {group.site for group in wanted.groups}
-        | set(np.flatnonzero(ends.any(axis=0)).tolist())
+        | set(np.flatnonzero(starting | ending).tolist())
     )
     passing = cross_docks(network).tolist()
     closed = rulings.closed_sites(item, len(network.sites)).tolist()
-    start_at, end_at = ends.tolist()
+    start_at, end_at = starting.tolist(), ending.tolist()
     limits = _throughput_limits(network, rulings, item, relevant)
     sides: dict[int, SiteSides] = {}
     # Most sites are like all others that pass goods on, or do not, and share what is said of them.
