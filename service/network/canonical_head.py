@@ -8,7 +8,7 @@ from fractions import Fraction
 from typing import Any
 
 from service.network.column_bytes import NormalFormError
-from service.network.columns import Item, Pack, Site
+from service.network.columns import NOTHING_MORE, Item, Pack, Site
 from service.network.quantities import exact_text
 
 ROLES = frozenset({"warehouse", "cross_dock", "ship_to"})
@@ -105,6 +105,9 @@ def site_of(document: object, items: frozenset[str]) -> Site:
     roles = _ROLES_OF.get(_key(known.get("roles")))
     if roles is None:
         raise NormalFormError("roles are not normal")
+    # Id and roles are all that most sites say: the other fields are not asked for one by one.
+    if known.keys() == {"id", "roles"}:
+        return Site(id=_id(known), roles=roles, **NOTHING_MORE)
     handling = known.get("handling_cost")
     by_item: dict[str, Fraction] = {}
     if isinstance(handling, dict):

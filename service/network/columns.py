@@ -8,6 +8,7 @@ in which it was sent. Everything numeric is exact: integers with one decimal exp
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -108,6 +109,16 @@ class Site:
         if own is not None:
             return own
         return Fraction(0) if self.handling_cost_any is None else self.handling_cost_any
+
+
+# The fields of a site that says no more than its id and its roles, as most of many sites do.
+NOTHING_MORE: Mapping[str, Any] = {
+    **dict.fromkeys(("name", "gln", "latitude", "longitude", "time_zone", "country")),
+    "handling_cost_any": None,
+    "handling_cost": {},
+    "tags": (),
+    "extra": {},
+}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -8,11 +8,11 @@ import itertools
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import Any, TypeVar
+from typing import TypeVar
 
 import numpy as np
 
-from service.network.columns import BoolArray, Item, Pack, Site
+from service.network.columns import NOTHING_MORE, BoolArray, Item, Pack, Site
 from service.network.definition import ItemPart, SitePart, validated
 from service.network.faults import FaultList, pointer
 from service.network.table_reading import UNSURE
@@ -179,16 +179,7 @@ def _plain_site(value: object) -> Site | None:
     if not all(type(role) is str for role in roles):
         return None
     known = _ROLES_IN_ANY_ORDER.get(tuple(roles))
-    return None if known is None else Site(id=identifier, roles=known, **_NOTHING_MORE)
-
-
-_NOTHING_MORE: Mapping[str, Any] = {
-    **dict.fromkeys(("name", "gln", "latitude", "longitude", "time_zone", "country")),
-    "handling_cost_any": None,
-    "handling_cost": {},
-    "tags": (),
-    "extra": {},
-}
+    return None if known is None else Site(id=identifier, roles=known, **NOTHING_MORE)
 
 
 _Value = TypeVar("_Value", str, Fraction)
