@@ -33,6 +33,7 @@ BLOCK_BYTES: Final = 1 << 20
 _QUOTE: Final = ord('"')
 _OPEN: Final = ord("{")
 _NO_TEXT: Final = -1
+_NO_NAME: Final = b'""'
 _STRING_OR_COMMA: Final = re.compile(rb'"[^"]*"|,')
 _NEXT_ROW: Final = re.compile(rb'[ \t\n\r]*,[ \t\n\r]*\{[ \t\n\r]*(?=")')
 _COLON: Final = re.compile(rb":[ \t\n\r]*")
@@ -148,7 +149,7 @@ class _Scan:
         if text[end - 1 : end] != b"}":
             raise _OddRowsError
         # Behind the last object stands what would follow if there were one more.
-        behind = style.next_row[style.next_row.index(b"}") + 1 :] + b'""'
+        behind = style.next_row[style.next_row.index(b"}") + 1 :] + _NO_NAME
         places: list[IntArray] = []
         rows = 0
         window = skipped(text, first + 1)
@@ -156,6 +157,9 @@ class _Scan:
             last = window + block_bytes >= end
             content = text[window:end] + behind if last else text[window : window + block_bytes]
             gaps = _gaps(content, style)
+            if last and int(gaps.opens[-1]) - LEAD != len(content) - len(_NO_NAME):
+                # A quote too many or too few somewhere: the last objects are none.
+                raise _OddRowsError
             _check(gaps, style)
             last_strings = np.flatnonzero(gaps.ends)
             firsts = np.append(gaps.opens[:1], gaps.opens[last_strings[:-1] + 1])

@@ -225,8 +225,9 @@ def test_rows_become_columns(
     )
 
     if scanned is None:
-        # The first object shows how members are parted; a quote inside of a text is escaped.
-        assert len(rows[0]) == 1 or "\\" in text
+        # The first object shows how members are parted; a quote inside of a text is escaped; an
+        # empty id is left to the exact reader to refuse.
+        assert len(rows[0]) == 1 or "\\" in text or any(one.get("id") == "" for one in rows)
         return
     assert scanned[1] == len(text.encode())
     for name in {name for one in rows for name in one}:

@@ -194,3 +194,17 @@ def test_faults_in_scanned_tables_point_to_their_rows(tmp_path: Path) -> None:
         "/lanes/capacity/7",
         "/lanes/capacity/8",
     }
+
+
+@pytest.mark.parametrize("form", FORMS)
+def test_a_quote_too_many_or_too_few_is_seen_anywhere(form: str) -> None:
+    """Each quote of the lanes taken away or doubled, in turn: the exact reader's outcome."""
+    text = json.dumps(document(form), separators=(",", ":")).encode()
+    lanes = text.index(b'"lanes":') + len(b'"lanes":')
+    places = [place for place in range(lanes, len(text)) if text[place : place + 1] == b'"']
+
+    for place in places:
+        for patch in (b"", b'""'):
+            exact, fast = both(text[:place] + patch + text[place + 1 :])
+
+            assert fast == exact, (place, patch)
