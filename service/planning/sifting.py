@@ -25,10 +25,13 @@ ROUNDS_MAX = 12
 # The first shortlist has so many lanes a place, by nearness (2.0 now and then costs a round, 2.6
 # always costs time), and later ones what is at most half as far off, by better prices.
 LISTED_LANES = 2.2
+# Where hardly more is there than is wanted a short list cannot share it out, and rounds are many:
+# with 2.2 lanes a place 5 to 12 and more at 200 x 5,000, with 6 one to six (2026-12-01).
+TIGHT, TIGHT_LANES = 1.05, 6
 KEPT_PART = 2
 # How far prices may move in one round, in terms of how near a lane must be to be listed, and how
 # much further each time that this was not enough.
-REACH, REACH_STEP = 4, 16
+REACH, REACH_STEP = 4, 4
 # Lanes that come in at a time, for each place that has any.
 JOINING = 4
 
@@ -110,13 +113,16 @@ def _rounds(
     return None
 
 
+def _spare(sieve: Sieve) -> float:
+    """Return how many times over all that is wanted is there."""
+    _, offers = sieve.places.offers()
+    return float(offers.steps.sum()) / max(1.0, float(sieve.places.fixed.sum()))
+
+
 def _must_be_short(sieve: Sieve) -> bool:
     """Return whether stock or lanes cannot suffice, whatever the prices."""
     places = sieve.places
-    _, offers = places.offers()
-    return float(offers.steps.sum()) < float(places.fixed.sum()) or bool(
-        (places.ends & ~places.enters & (places.fixed > 0)).any()
-    )
+    return _spare(sieve) < 1 or bool((places.ends & ~places.enters & (places.fixed > 0)).any())
 
 
 def _first_list(sieve: Sieve, nearest: Nearest, price: IntArray) -> tuple[IntArray, int, IntArray]:
@@ -127,7 +133,8 @@ def _first_list(sieve: Sieve, nearest: Nearest, price: IntArray) -> tuple[IntArr
     price[nearest.ends[~leaves]] = level[~leaves]
     dearer = nearest.cost + price[nearest.tails] - price[nearest.ends]
     far = nearest.absent | (dearer < 0)
-    near = int(spread(np.where(far, np.inf, dearer), LISTED_LANES))
+    lanes_each = TIGHT_LANES if _spare(sieve) < TIGHT else LISTED_LANES
+    near = int(spread(np.where(far, np.inf, dearer), lanes_each))
     listed = nearest.lanes[~nearest.absent & (dearer <= near)]
     lanes, _ = sieve.blocks.not_above(price, near)
     # Where very many lanes tie the nearest ones suffice: each place has its own of them.
