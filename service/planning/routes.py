@@ -16,10 +16,12 @@ from service.planning.scarcity_prices import FloatArray
 from service.planning.sieve import Sieve, fits
 from service.planning.sifting import RoundSeen, Sifted, sift
 
-# Below these the full solve is about as fast: it takes some 15 ms for so many lanes, and where only
-# few lanes end in a place the shortlist is most of the network. A judgement (decision 27).
-LANES_MIN = 20_000
+# Below these the full solve is as fast. Swept on seeds of its own, CPU time sifted over full
+# (ortools 9.15.6755, 2026-12-01): 15 x 2,000 0.92, 15 x 1,000 1.44; 10 x 5,000 1.25, 15 x 4,000
+# 0.76; 200 x 100 3.0, 200 x 200 1.6, 200 x 400 0.59.
+LANES_MIN = 30_000
 LANES_PER_END_MIN = 15
+ENDS_PER_ORIGIN_MIN = 2
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -172,8 +174,15 @@ def chosen_route(
     lanes = own.lanes.rows.shape[0]
     if lanes < LANES_MIN or not fits(weighted, contraction):
         return FullRoute(own, contraction, weighted)
-    ends = np.zeros(own.node_count, np.bool_)
-    ends[own.arcs.head[:lanes]] = True
-    if lanes < LANES_PER_END_MIN * int(ends.sum()):
+    ends = _distinct(own.arcs.head[:lanes], own.node_count)
+    origins = _distinct(own.arcs.tail[:lanes], own.node_count)
+    if lanes < LANES_PER_END_MIN * ends or ends < ENDS_PER_ORIGIN_MIN * origins:
         return FullRoute(own, contraction, weighted)
     return SiftedRoute(own, contraction, weighted, start=start, seen=seen)
+
+
+def _distinct(nodes: IntArray, count: int) -> int:
+    """Return how many different ones of ``count`` nodes there are."""
+    met = np.zeros(count, np.bool_)
+    met[nodes] = True
+    return int(met.sum())

@@ -19,7 +19,7 @@ TINY = Programme(
         Case(recipe=SMALL, repetitions=1, rivals=("networkx", "SciPy HiGHS"), forms=ALL_FORMS),
         # Enough lanes for a shortlist, which is what a later run can start from.
         Case(
-            recipe=Recipe(warehouses=120, ship_tos=200, seed=302),
+            recipe=Recipe(warehouses=100, ship_tos=320, seed=302),
             repetitions=1,
             changes=("demand 10 %", "outage"),
         ),

@@ -213,11 +213,11 @@ class Reached(Exception):  # noqa: N818 - no error: it ends the solve where enou
 
 
 def test_route_is_chosen_by_what_pays() -> None:
-    """Many lanes into each place are sifted; few lanes, or few into each, are solved at once."""
+    """Sifted: many lanes into each place. Solved at once: few, few into each, few places."""
     options, _ = read_options({})
     assert options is not None
     chosen = []
-    for origins, ends in ((60, 400), (60, 40), (4, 5_500)):
+    for origins, ends in ((60, 600), (60, 40), (6, 5_500), (200, 200)):
         document = wide_network(random(151), origins=origins, ends=ends, costs=plain)
         made, _ = compiled(document)
         (own,) = compile_network(made.network, options).items
@@ -229,4 +229,4 @@ def test_route_is_chosen_by_what_pays() -> None:
         with pytest.raises(Reached):
             solve_item(made.network, own, front=front)
 
-    assert chosen == [SiftedRoute, FullRoute, FullRoute]
+    assert chosen == [SiftedRoute, FullRoute, FullRoute, FullRoute]
