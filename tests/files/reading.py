@@ -4,7 +4,7 @@ import tempfile
 from collections.abc import Mapping
 from pathlib import Path
 
-from service.network.faults import Fault
+from service.network.faults import Fault, Status
 from service.network.files.media_types import ZIP
 from service.network.intake import IntakeReport, Limits
 from service.network.options import Options
@@ -69,3 +69,9 @@ def digest(report: IntakeReport) -> object:
     """Return the digest of an accepted network."""
     assert report.summary is not None, places(report)
     return report.summary["network_digest"]
+
+
+def refused(report: IntakeReport) -> tuple[Status, str]:
+    """Return how a body was refused as a whole."""
+    (fault,) = report.faults
+    return report.status, fault.code

@@ -11,9 +11,8 @@ from service.network.files.media_types import XLSX
 from service.network.files.table_columns import TABLES as COLUMNS
 from tests.files.odd_networks import AWKWARD
 from tests.files.reading import TABLES, files, read
-from tests.files.test_hostile import with_part
 from tests.files.test_workbook import workbook
-from tests.files.writing import zipped
+from tests.files.writing import with_part, zipped
 
 tables = st.sampled_from(sorted(TABLES))
 names = st.sampled_from(sorted({name for columns in COLUMNS.values() for name in columns}))

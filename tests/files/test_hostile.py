@@ -8,27 +8,20 @@ import zlib
 from collections.abc import Callable
 from pathlib import Path
 
-import openpyxl
 import pyarrow as pa
 import pytest
 import zstandard
 
 from service.network.faults import Status
 from service.network.files import arrow_tables, workbook_guard, zips
-from service.network.files.media_types import XLSX, ZIP
-from service.network.intake import IntakeReport, Limits
-from tests.files.reading import files, places, read
+from service.network.files.media_types import XLSX
+from service.network.intake import Limits
+from tests.files.reading import files, read, refused
 from tests.files.test_workbook import workbook
-from tests.files.writing import arrow_bytes, parquet_bytes, zipped
+from tests.files.writing import arrow_bytes, parquet_bytes, with_part, zipped
 
 MEBIBYTE = 1 << 20
 SMALL = Limits(unpacked_bytes_max=MEBIBYTE)
-
-
-def refused(report: IntakeReport) -> tuple[Status, str]:
-    """Return how a body was refused as a whole."""
-    (fault,) = report.faults
-    return report.status, fault.code
 
 
 @pytest.mark.parametrize(
@@ -68,13 +61,6 @@ def test_a_workbook_that_unpacks_to_too_much_is_cut_off() -> None:
         body = with_part(workbook(), name, b" " * (2 * MEBIBYTE))
 
         assert refused(read(body, XLSX, limits=SMALL)) == (Status.TOO_LARGE, "body_too_large")
-
-
-def with_part(book: bytes, name: str, content: bytes) -> bytes:
-    """Return a workbook with another part in the place of one of its own."""
-    with zipfile.ZipFile(io.BytesIO(book)) as archive:
-        parts = {part: archive.read(part) for part in archive.namelist()}
-    return zipped(parts | {name: content})
 
 
 def test_the_size_that_a_zip_states_is_not_believed() -> None:
@@ -209,97 +195,6 @@ def test_damaged_columns_are_unreadable_or_read_as_they_are(form: str) -> None:
         report = read(files(lanes=None) | {f"lanes.{form}": bytes(damaged)})
 
         assert report.status in {Status.ACCEPTED, Status.INVALID, Status.UNREADABLE}
-
-
-def test_a_cell_far_away_does_not_make_a_huge_sheet() -> None:
-    """A rectangle of 17 thousand million cells is refused by its last cell."""
-    book = openpyxl.load_workbook(io.BytesIO(workbook()))
-    book["lanes"]["XFD1048576"] = "x"
-    target = io.BytesIO()
-    book.save(target)
-
-    report = read(target.getvalue(), XLSX)
-
-    assert refused(report) == (Status.UNREADABLE, "workbook_too_large")
-
-
-def test_a_text_that_many_cells_share_counts_for_each() -> None:
-    """A few kilobytes of workbook would come to gigabytes of texts."""
-    book = with_part(workbook(), "xl/sharedStrings.xml", shared_strings("x" * 30_000))
-    cells = "".join(f'<c r="A{row}" t="s"><v>0</v></c>' for row in range(1, 40_000))
-    sheet = f"<worksheet><sheetData><row>{cells}</row></sheetData></worksheet>"
-    body = with_part(book, "xl/worksheets/sheet1.xml", sheet.encode())
-
-    assert refused(read(body, XLSX)) == (Status.UNREADABLE, "workbook_too_large")
-
-
-def test_a_text_that_few_of_many_cells_share_is_read() -> None:
-    """The most that it could come to is only looked at more closely."""
-    texts = ["x" * 60_000, *"y" * 99]
-    cells = "".join(f'<c r="A{row}" t="s"><v>1</v></c>' for row in range(1, 40_000))
-    sheet = f"<worksheet><sheetData><row>{cells}</row></sheetData></worksheet>"
-    book = with_part(workbook(), "xl/sharedStrings.xml", shared_strings(*texts))
-    body = with_part(book, "xl/worksheets/sheet1.xml", sheet.encode())
-
-    report = read(body, XLSX)
-
-    assert report.status == Status.INVALID
-
-
-def shared_strings(*texts: str) -> bytes:
-    """Return the shared texts of a workbook."""
-    items = "".join(f"<si><t>{text}</t></si>" for text in texts)
-    space = "http://schemas.openxmlformats.org/spreadsheetml/2006/main"
-    return f'<sst xmlns="{space}">{items}</sst>'.encode()
-
-
-@pytest.mark.parametrize(
-    ("part", "content"),
-    [
-        ("xl/workbook.xml", b"<workbook"),
-        ("xl/worksheets/sheet1.xml", b"<worksheet><sheetData><row><c r="),
-        ("xl/_rels/workbook.xml.rels", b"no xml"),
-        ("[Content_Types].xml", b""),
-    ],
-)
-def test_a_broken_workbook_is_unreadable_or_incomplete(part: str, content: bytes) -> None:
-    """It is never half a network."""
-    report = read(with_part(workbook(), part, content), XLSX)
-
-    assert report.status in {Status.UNREADABLE, Status.INVALID} or part.startswith("[")
-
-
-def test_entities_that_grow_are_stopped() -> None:
-    """Ten lines of text that stand for a thousand million."""
-    levels = "".join(f'<!ENTITY e{level} "{f"&e{level - 1};" * 10}">' for level in range(1, 10))
-    bomb = f'<!DOCTYPE w [<!ENTITY e0 "ha">{levels}]><workbook>&e9;</workbook>'
-
-    report = read(with_part(workbook(), "xl/workbook.xml", bomb.encode()), XLSX)
-
-    assert report.status == Status.UNREADABLE
-
-
-def test_a_zip_that_is_no_workbook_is_none() -> None:
-    """And a workbook that is sent as a zip of tables holds no table."""
-    assert refused(read(zipped(files()), XLSX)) == (Status.UNREADABLE, "broken_workbook")
-    assert {told[1] for told in places(read(workbook(), ZIP))} >= {"unknown_file"}
-
-
-def test_cells_are_seen_whatever_a_program_calls_them() -> None:
-    """With a prefix, with other quotes, with the reference last; nothing hides behind that."""
-    plain = b"""<c r="B7" t="e"><v>#N/A</v></c><c r='C8' t='e'><v>#REF!</v></c>"""
-    other = (
-        b"""<x:c s="1" t="e" r="B7"><x:v>#N/A</x:v></x:c><x:c t="e" r="C8"><x:v>#REF!</x:v></x:c>"""
-    )
-    for sheet in (plain, other):
-        look = workbook_guard._Look()
-        for piece in workbook_guard._whole_cells(iter([sheet[:20], sheet[20:70], sheet[70:]])):
-            look.at(piece)
-
-        assert {place: cell.value for place, cell in look.odd.items()} == {
-            (6, 1): "#N/A",
-            (7, 2): "#REF!",
-        }
 
 
 def test_a_piece_without_the_end_of_a_cell_is_not_carried_for_ever() -> None:

@@ -33,6 +33,13 @@ def zipped(files: Mapping[str, bytes]) -> bytes:
     return target.getvalue()
 
 
+def with_part(book: bytes, name: str, content: bytes) -> bytes:
+    """Return a workbook with another part in the place of one of its own."""
+    with zipfile.ZipFile(io.BytesIO(book)) as archive:
+        parts = {part: archive.read(part) for part in archive.namelist()}
+    return zipped(parts | {name: content})
+
+
 def csv_bytes(table: FlatTable, *, delimiter: str = ",") -> bytes:
     """Return a table as CSV."""
     text = io.StringIO(newline="")

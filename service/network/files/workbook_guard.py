@@ -24,14 +24,14 @@ AREA_MAX: Final = 16 * (1 << 20)
 TEXT_BYTES_MAX: Final = 1 << 30
 # No cell is so long; what goes on without the end of one is not about cells.
 _CARRIED_BYTES_MAX: Final = 4 << 20
-SHEET: Final = re.compile(r"xl/worksheets/[^/]+\.xml")
 _SHARED: Final = "xl/sharedStrings.xml"
 _PREFIX: Final = rb"(?:[\w.-]+:)?"
-# How nearly all programs write a cell that holds something, and how any may.
+# How nearly all programs write a cell that holds something, and how any may write rows and cells.
 _USUAL: Final = re.compile(rb'<c r="([A-Z]{1,3})([0-9]{1,7})"[^>/]*>')
-_ANY: Final = re.compile(
-    rb"<" + _PREFIX + rb"""c\s[^>/]*?\br\s*=\s*["']([A-Za-z]{1,3})([0-9]{1,7})["'][^>/]*>"""
-)
+_UNUSUAL: Final = (b"'", b":c", b":row", b"<c>", b"<c/", b"<c\n", b"<c\r", b"<c\t", b"<row\n")
+_TAG: Final = re.compile(rb"<" + _PREFIX + rb"(c|row)(?=[\s/>])([^>]*)>")
+_PLACES: Final = re.compile(rb"""(?<![^\s"'])r\s*=\s*(?:"([^"]*)"|'([^']*)')""")
+_PLACE: Final = re.compile(rb"\s*([A-Za-z]{0,3})([0-9]{1,7})\s*")
 _CELL: Final = re.compile(
     rb"<%(p)sc\b([^>/]*)>((?:(?!</%(p)sc>).)*)</%(p)sc>" % {b"p": _PREFIX}, re.DOTALL
 )
@@ -54,6 +54,11 @@ _TOO_LARGE_ADVICE: Final = (
     "CSV or Parquet files."
 )
 
+_HIDDEN_ADVICE: Final = (
+    "A row or a cell says in an unknown way where it stands. Open the workbook in a spreadsheet "
+    "program and save it."
+)
+
 OddCells = Mapping[tuple[int, int], Odd]
 
 
@@ -66,12 +71,9 @@ def look_through(path: Path, allowance: Allowance) -> Mapping[str, OddCells]:
         found: dict[str, OddCells] = {}
         shared: dict[str, int] = {}
         for name in archive.namelist():
-            if not SHEET.fullmatch(name):
-                # Unpacked for nothing but to see that it is no bomb: the reader does not count.
-                if name != _SHARED:
-                    for _ in pieces(archive, name, allowance):
-                        pass
+            if name == _SHARED:
                 continue
+            # Any part may be a sheet, whatever it is called, and none may be a bomb.
             look = _Look()
             for piece in _whole_cells(pieces(archive, name, allowance)):
                 look.at(piece)
@@ -84,29 +86,32 @@ def look_through(path: Path, allowance: Allowance) -> Mapping[str, OddCells]:
 
 
 class _Look:
-    """What was seen of one sheet so far."""
+    """What was seen of one part so far."""
 
     def __init__(self) -> None:
         """Begin with nothing seen."""
         self.odd: dict[tuple[int, int], Odd] = {}
         self.shared = 0
-        self._rows = 0
-        self._columns = 0
+        # How far the cells reach, and the place of the last one; from 1, as sheets count.
+        self._rows = self._columns = 0
+        self._row = self._column = 0
 
     def at(self, piece: bytes) -> None:
         """Look at some whole cells."""
+        places = piece.count(b'<c r="')
         usual = (
-            piece.count(b'<c r="') == piece.count(b"<c ")
-            and b":c " not in piece
-            and b"'" not in piece
+            places == piece.count(b"<c ")
+            and places + piece.count(b'<row r="') == piece.count(b' r="') == piece.count(b" r=")
+            and piece.count(b'<row r="') == piece.count(b"<row")
+            and not any(mark in piece for mark in _UNUSUAL)
+            and b"\0" not in piece
         )
-        filled = (_USUAL if usual else _ANY).findall(piece)
-        if filled:
-            rows = int(np.array([row for _, row in filled]).astype(np.int64).max())
-            columns = max(_column(letters) for letters in {letters for letters, _ in filled})
-            self._rows, self._columns = max(self._rows, rows), max(self._columns, columns + 1)
-            if self._rows * self._columns > AREA_MAX:
-                raise HostileZipError("workbook_too_large", _TOO_LARGE_ADVICE)
+        if usual:
+            self._reach(piece)
+        else:
+            self._reach_one_by_one(piece)
+        if self._rows * self._columns > AREA_MAX:
+            raise HostileZipError("workbook_too_large", _TOO_LARGE_ADVICE)
         self.shared += piece.count(b't="s"') if usual else len(_SHARED_CELL.findall(piece))
         # A look for the bytes themselves is ten times as fast as one for a pattern.
         if (
@@ -115,6 +120,35 @@ class _Look:
             else _ERROR.search(piece) or _FORMULA.search(piece)
         ):
             self._look_closely(piece)
+
+    def _reach(self, piece: bytes) -> None:
+        """See how far cells reach that all say where they stand; empty ones do not count."""
+        filled = _USUAL.findall(piece)
+        if filled:
+            rows = int(np.array([row for _, row in filled]).astype(np.int64).max())
+            columns = max(_column(letters) for letters in {letters for letters, _ in filled})
+            self._rows, self._columns = max(self._rows, rows), max(self._columns, columns + 1)
+            self._row, self._column = int(filled[-1][1]), _column(filled[-1][0]) + 1
+
+    def _reach_one_by_one(self, piece: bytes) -> None:
+        """See how far cells reach of which some stand where the one before lets them."""
+        if b"\0" in piece and b"<" in piece:
+            # Text of two bytes a character, in which no pattern here finds anything.
+            raise HostileZipError("broken_workbook", _HIDDEN_ADVICE)
+        for tag, attributes in _TAG.findall(piece):
+            stated = [one or other for one, other in _PLACES.findall(attributes)]
+            places = [_PLACE.fullmatch(place) for place in stated]
+            if len(places) > 1 or None in places:
+                raise HostileZipError("broken_workbook", _HIDDEN_ADVICE)
+            place = places[0] if places else None
+            if tag == b"row":
+                self._row, self._column = int(place[2]) if place else self._row + 1, 0
+                continue
+            self._column += 1
+            if place:
+                self._row, self._column = int(place[2]), _column(place[1]) + 1
+            self._rows = max(self._rows, self._row)
+            self._columns = max(self._columns, self._column)
 
     def _look_closely(self, piece: bytes) -> None:
         """Find the cells with an error or a formula without a value."""
