@@ -3,24 +3,39 @@
 The seed is fixed and the number small, unless ``--long``.
 """
 
+import json
 from collections.abc import Iterator
 from typing import Any
 
 import pytest
 import schemathesis
 from fastapi import FastAPI
+from hypothesis import strategies as st
 from schemathesis.config import SchemathesisConfig
 from schemathesis.specs.openapi.checks import negative_data_rejection, positive_data_acceptance
 
 from service.doors.http.app import create_app
 from service.doors.http.contract import FOLDER
 from service.main import working_application
+from service.network.files.media_types import XLSX, ZIP
 from service.settings import Settings
 from tests.doors.http.fakes import await_true, client_of, real_server
+from tests.files.writing import FORMS
 
 # What a network means (that a lane's origin is one of its sites, that totals match) cannot be said
 # in JSON Schema, so a network of the right form may well be refused.
 EXCLUDED: list[Any] = [positive_data_acceptance]
+
+
+def files_of(form: str) -> st.SearchStrategy[bytes]:
+    """Return bodies in a form that no schema describes: whole, cut off, and no such file."""
+    whole = FORMS[form][1](json.loads((FOLDER / "examples" / "network.json").read_bytes()))
+    cut = st.integers(0, len(whole)).map(lambda length: whole[:length])
+    return st.just(whole) | cut | st.binary(max_size=200)
+
+
+schemathesis.openapi.media_type(ZIP, files_of("csv"))
+schemathesis.openapi.media_type(XLSX, files_of("workbook"))
 
 
 @pytest.fixture(scope="module")
