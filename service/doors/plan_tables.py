@@ -34,6 +34,8 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "cost",
         "stated",
         "charge_parts",
+        "departs",
+        "arrives",
     ),
     "order_lines": (
         "reference",
@@ -49,6 +51,10 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "sources",
         "tags",
         "extra",
+        "earliest",
+        "due",
+        "latest",
+        "days_late",
     ),
     "consignments": (
         "lane",
@@ -60,6 +66,8 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "volume_m3",
         "cost",
         "order_references",
+        "departs",
+        "arrives",
     ),
     "shortages": (
         "reference",
@@ -107,7 +115,7 @@ AMOUNTS: Mapping[str, tuple[str, ...]] = {
 }
 OPTIONAL: Final = frozenset({"currencies"})
 # What is a whole number in JSON too; amounts are text there, and decimals in typed files.
-WHOLE: Final = frozenset({"priority", "rows"})
+WHOLE: Final = frozenset({"priority", "rows", "days_late"})
 _NOT_ADDED: Final = frozenset(
     {"unit_cost", "ordered", "shortage_cost", "pallets", "weight_kg", "volume_m3"}
 )

@@ -61,6 +61,7 @@ SUPPLY_FORMS = (
     _form("unit", "texts", required=True),
     *(_form(name, "decimal") for name in ("unit_cost", "on_hand", "reserved", "on_hold")),
     *(_form(name, "texts") for name in ("currency", "as_of", "lot", "best_before")),
+    _form("available_from", "texts"),
     _form("keep_quantity", "decimal"),
     _form("keep_priority", "small"),
     _form("extra", "texts"),
@@ -76,6 +77,8 @@ DEMAND_FORMS = (
     _form("priority", "small"),
     _form("shortage_cost", "decimal"),
     _form("worth_at_most", "decimal"),
+    *(_form(name, "texts") for name in ("earliest", "due", "latest")),
+    _form("late_cost_per_day", "decimal"),
     *(_form(name, "texts") for name in ("origins", "tags", "extra")),
 )
 LANE_FORMS = (
@@ -87,7 +90,9 @@ LANE_FORMS = (
     _form("measure", "texts", required=True),
     _form("must_ship", "decimal"),
     _form("capacity", "decimal"),
-    *(_form(name, "texts") for name in ("per", "carrier", "currency", "charges", "tags", "extra")),
+    *(_form(name, "texts") for name in ("per", "carrier", "currency", "charges")),
+    _form("transit_days", "decimal"),
+    *(_form(name, "texts") for name in ("closes", "departs", "arrives", "tags", "extra")),
 )
 TABLE_FORMS = {"demand": DEMAND_FORMS, "lanes": LANE_FORMS, "supply": SUPPLY_FORMS}
 

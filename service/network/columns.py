@@ -132,7 +132,9 @@ class LaneTable:
     ``measure`` is ``unit``, ``weight_kg``, ``volume_m3`` or the unit of a pack, never absent.
     ``per`` is ``item`` or absent. ``currency`` is that of ``unit_cost`` (absent: the plan's);
     ``charges`` holds JSON arrays of charges in normal form (``network/money.py``), ``tags`` JSON
-    arrays of sorted tags, ``extra`` JSON objects.
+    arrays of sorted tags, ``extra`` JSON objects. ``transit_days`` are whole days. ``closes``,
+    ``departs`` and ``arrives`` are RFC 3339 in the time zone of the site where they happen, so that
+    the first ten characters are its date.
     """
 
     ids: IdArray
@@ -147,6 +149,10 @@ class LaneTable:
     carrier: Texts
     currency: Texts
     charges: Texts
+    transit_days: Decimals
+    closes: Texts
+    departs: Texts
+    arrives: Texts
     tags: Texts
     extra: Texts
 
@@ -157,11 +163,14 @@ class LaneTable:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class SupplyTable:
-    """Stock, one row each, sorted by (site, item, unit cost per item unit, best_before, lot, rest).
+    """Stock, one row each; the order is (site, item, available_from, cost, best_before, lot, rest).
+
+    The cost is the unit cost per item unit; a row without a date (available now) comes first.
 
     ``quantity``, ``on_hand``, ``reserved``, ``on_hold`` and ``keep_quantity`` are in the row's
     ``unit``, ``unit_cost`` is money per ``unit`` (absent: 0) in ``currency`` (absent: the plan's);
-    ``unit`` is never absent. ``as_of`` is RFC 3339 in UTC with ``Z``, ``best_before`` a date.
+    ``unit`` is never absent. ``as_of`` is RFC 3339 in UTC with ``Z``, ``best_before`` and
+    ``available_from`` are dates.
     ``keep_priority`` is 0 where no stock is kept.
     """
 
@@ -177,6 +186,7 @@ class SupplyTable:
     as_of: Texts
     lot: Texts
     best_before: Texts
+    available_from: Texts
     keep_quantity: Decimals
     keep_priority: CodeArray
     extra: Texts
@@ -193,6 +203,8 @@ class DemandTable:
     ``quantity`` is in the row's ``unit``; ``shortage_cost`` and ``worth_at_most`` are money per
     ``unit``. ``priority`` is 0 where the row names none (then option and default decide).
     ``origins`` holds JSON arrays of sorted site ids, absent where every origin may serve the line.
+    ``earliest``, ``due`` and ``latest`` are dates; ``late_cost_per_day`` is money per ``unit`` and
+    day after ``due``.
     """
 
     reference: IdArray
@@ -205,6 +217,10 @@ class DemandTable:
     priority: CodeArray
     shortage_cost: Decimals
     worth_at_most: Decimals
+    earliest: Texts
+    due: Texts
+    latest: Texts
+    late_cost_per_day: Decimals
     origins: Texts
     tags: Texts
     extra: Texts
@@ -220,8 +236,9 @@ class Network:
 
     ``head`` holds what is neither a table, an item nor a site, as plain JSON values with every
     decimal a shortest decimal string: ``format``, ``name``, ``currency``, ``cut_off``,
-    ``release_by``, ``rules`` (sorted by id, see ``network/rules.py``), ``exchange_rates`` (sorted
-    by currency, see ``network/money.py``) and ``extra``.
+    ``planned_at``, ``release_by``, ``periods`` (sorted dates), ``rules`` (sorted by id, see
+    ``network/rules.py``), ``exchange_rates`` (sorted by currency, see ``network/money.py``) and
+    ``extra``.
 
     ``known_digest`` is the digest of the bytes that this very object was read from, else None; it
     does not pass on to a network that ``dataclasses.replace`` makes of it.

@@ -85,7 +85,17 @@ class Head(Part):
     name: Name = None
     currency: Annotated[str, *_needed(kinds.CURRENCY)]
     cut_off: Annotated[Instant, *_needed(kinds.INSTANT)]
+    planned_at: OptionalMoment = Field(
+        default=None,
+        description="When the plan is made; what closed before is left out. cut_off if absent.",
+        examples=["2026-02-03T16:05:00+01:00"],
+    )
     release_by: OptionalMoment = None
+    periods: Annotated[tuple[date, ...] | None, *_optional(kinds.DATES)] = Field(
+        default=None,
+        description="The dates on which goods may leave; that of the cut-off alone if absent.",
+        examples=[["2026-02-03", "2026-02-04", "2026-02-05"]],
+    )
     extra: Extra = None
 
 

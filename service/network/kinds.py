@@ -37,6 +37,7 @@ from service.network.value_schemas import (
     ROLES_SCHEMA,
     SIGNED_SCHEMA,
     Schema,
+    dates_schema,
 )
 from service.network.wording import (
     EXTRA_ADVICE,
@@ -50,6 +51,8 @@ from service.network.wording import (
     is_note,
 )
 
+# More days than a plan can be made for, and few enough to be looked at one by one.
+DATES_MAX: Final = 400
 # A name is up to three ids with every character percent-encoded, and a number.
 LANE_NAME_CHARACTERS_MAX: Final = 3 * 3 * 64 + 24
 
@@ -288,10 +291,23 @@ _read_zone = _checked(
     is_time_zone, "unknown_time_zone", "Say a time zone of the IANA database: Europe/Oslo."
 )
 _read_country = _checked(is_country, "bad_country", "Say two capital letters (ISO 3166): NO.")
+
+
+def _dates(value: object) -> tuple[date, ...]:
+    """Read different dates, in whatever order."""
+    if not isinstance(value, list) or not 1 <= len(value) <= DATES_MAX:
+        raise RefusedError("bad_periods", f"Send an array of 1 to {DATES_MAX} dates.")
+    found = sorted(_date(element) for element in value)
+    if len(set(found)) < len(found):
+        raise RefusedError("bad_periods", "A date stands here twice.")
+    return tuple(found)
+
+
 FORMAT = Kind(read=_format, schema={"const": 1})
 CURRENCY = Kind(read=_currency, schema={"type": "string", "pattern": "^[A-Z]{3}$"})
 INSTANT = Kind(read=_instant, schema=INSTANT_SCHEMA)
 DATE = Kind(read=_date, schema=DATE_SCHEMA)
+DATES = Kind(read=_dates, schema=dates_schema(DATES_MAX))
 ID = Kind(read=_read_id, schema=ID_SCHEMA)
 NAME = Kind(read=_read_name, schema=NAME_SCHEMA)
 NOTE = Kind(read=_read_note, schema=NOTE_SCHEMA)

@@ -53,6 +53,11 @@ def identical_lanes(network: Network) -> IntArray:
         & (lanes.capacity.present[former] == lanes.capacity.present[latter])
         & (lanes.capacity.values[former] == lanes.capacity.values[latter])
         & (lanes.tags.codes[former] == lanes.tags.codes[latter])
+        & (lanes.transit_days.present[former] == lanes.transit_days.present[latter])
+        & (lanes.transit_days.values[former] == lanes.transit_days.values[latter])
+        & (lanes.departs.codes[former] == lanes.departs.codes[latter])
+        & (lanes.arrives.codes[former] == lanes.arrives.codes[latter])
+        & (lanes.closes.codes[former] == lanes.closes.codes[latter])
     )
     found: IntArray = latter[same]
     return found

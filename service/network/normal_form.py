@@ -1,8 +1,9 @@
 """One order and one spelling for a network, however it was sent.
 
 Items and sites go by the UTF-8 bytes of their id, demand by reference, supply by (site, item, unit
-cost per item unit, currency, best before, lot), lanes by (origin, destination, item, id, carrier,
-unit cost, must-ship, capacity, tags); what is left decides the rest, so that the order is total.
+cost per item unit, currency, best before, lot; before the cost goes the date from which it is
+available), lanes by (origin, destination, item, id, carrier, unit cost, must-ship, capacity, tags);
+what is left decides the rest, so that the order is total.
 """
 
 from collections.abc import Mapping, Sequence
@@ -91,6 +92,10 @@ def lane_order(lanes: LaneTable) -> IntArray:
         lanes.charges.codes[rows],
         lanes.currency.codes[rows],
         lanes.extra.codes[rows],
+        lanes.closes.codes[rows],
+        lanes.arrives.codes[rows],
+        lanes.departs.codes[rows],
+        np.where(lanes.transit_days.present, lanes.transit_days.values, -1)[rows],
         lanes.per.codes[rows],
         lanes.measure.codes[rows],
         lanes.tags.codes[rows],
@@ -122,7 +127,7 @@ def supply_order(
     rest: list[NDArray[np.generic]] = []
     for field in fields(SupplyTable):
         column = getattr(supply, field.name)
-        if field.name in ("site", "item", "currency", "best_before", "lot"):
+        if field.name in ("site", "item", "available_from", "currency", "best_before", "lot"):
             continue
         if isinstance(column, Decimals):
             rest += (column.present, column.values)
@@ -135,6 +140,7 @@ def supply_order(
             np.where(best_before < 0, _LAST, best_before),
             *((supply.currency.codes,) if supply.currency.values else ()),
             _rank_of_cost(supply, items, worth),
+            supply.available_from.codes,
             supply.item,
             supply.site,
         )

@@ -22,6 +22,7 @@ from service.network.columns import (
     SupplyTable,
     Texts,
 )
+from service.network.moments import read_date, read_instant
 from service.network.money import factors
 from service.network.naming import rows_with_ids
 from service.network.normal_form import lane_order, rule_key, supply_order
@@ -36,9 +37,10 @@ _ROWS_MAX = 2**31 - 1
 # So many possible pairs are marked off one by one; more of them would cost more than sorting.
 _PAIRS_MARKED_MAX = 2**22
 
-_HEAD_TEXTS = ("name", "currency", "cut_off", "release_by")
+_HEAD_TEXTS = ("name", "currency", "cut_off", "planned_at", "release_by")
 _HEAD_FIELDS = frozenset(
-    {"format", "rules", "extra", "exchange_rates", "items", "sites", "tables", *_HEAD_TEXTS}
+    {"format", "periods", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
+    | {*_HEAD_TEXTS}
 )
 _COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
 _CURRENCY = re.compile(r"[A-Z]{3}")
@@ -51,7 +53,14 @@ def check_head(head: Mapping[str, Any]) -> None:
     for field in _HEAD_TEXTS:
         _check(isinstance(head.get(field, ""), str), f"{field} is not text")
     _check(_CURRENCY.fullmatch(head.get("currency", "")) is not None, "no currency")
-    _check(bool(head.get("cut_off")), "no cut-off")
+    for field in ("cut_off", "planned_at"):
+        if field in head or field == "cut_off":
+            _check(_is_moment(head.get(field)), f"{field} is no point in time")
+    if "periods" in head:
+        periods = head["periods"]
+        _check(isinstance(periods, list) and bool(periods), "periods is not an array")
+        _check(all(_is_date(day) for day in periods), "a period is no date")
+        _check(periods == sorted(set(periods)), "periods are not sorted and distinct")
     for field in ("items", "sites", "rules"):
         _check(isinstance(head.get(field), list), f"{field} is not an array")
     rules = head["rules"]
@@ -107,6 +116,7 @@ def _check_supply(
     _check(np.array_equal(kept, supply.keep_quantity.present), "keep without its priority")
     pairs = supply.site[kept].astype(np.int64) * max(1, len(items)) + supply.item[kept]
     _check(len(np.unique(pairs)) == len(pairs), "keep twice at one site and item")
+    _check_dates(supply.available_from)
     _check_objects(supply.extra)
 
 
@@ -125,6 +135,11 @@ def _check_demand(network: Network) -> None:
         + demand.worth_at_most.present
     )
     _check(not bool((ways > 1).any()), "an order line with two kinds of importance")
+    for dates in (demand.earliest, demand.due, demand.latest):
+        _check_dates(dates)
+    _check_not_negative(demand.late_cost_per_day)
+    late = demand.late_cost_per_day.present & (demand.due.codes < 0)
+    _check(not bool(late.any()), "a late cost without a date")
     known = {site.id for site in network.sites}
     for origins in _check_lists(demand.origins):
         _check(set(origins) <= known, "an unknown site in origins")
@@ -143,6 +158,14 @@ def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
     _check(set(lanes.per.values) <= {"item"}, "an unknown per")
     _check_not_negative(lanes.capacity)
     _check(bool((lanes.must_ship.values[lanes.must_ship.present] > 0).all()), "a must-ship of 0")
+    _check_not_negative(lanes.transit_days)
+    _check(lanes.transit_days.exponent == 0, "a part of a day")
+    for moments in (lanes.closes, lanes.departs, lanes.arrives):
+        _check(all(_is_moment(text) for text in moments.values), "no point in time")
+    lone = (lanes.departs.codes < 0) & ((lanes.closes.codes >= 0) | (lanes.arrives.codes >= 0))
+    _check(not bool(lone.any()), "an arrival without a departure")
+    both = lanes.transit_days.present & (lanes.arrives.codes >= 0)
+    _check(not bool(both.any()), "two arrivals of a lane")
     own = lanes.item >= 0
     at = slice(None) if own.all() else own
     for item, measure in _pairs(lanes.item[at], lanes.measure.codes[at], lanes.measure):
@@ -187,6 +210,27 @@ def _check_required(column: Decimals) -> None:
 def _check_not_negative(column: Decimals) -> None:
     """Raise if any value is below 0."""
     _check(int(column.values.min(initial=0)) >= 0, "a negative quantity")
+
+
+def _check_dates(column: Texts) -> None:
+    """Raise unless every text is a calendar date."""
+    _check(all(_is_date(text) for text in column.values), "no date")
+
+
+def _is_date(text: object) -> bool:
+    """Return whether ``text`` is a calendar date."""
+    try:
+        return isinstance(text, str) and read_date(text).isoformat() == text
+    except ValueError:
+        return False
+
+
+def _is_moment(text: object) -> bool:
+    """Return whether ``text`` is a point in time in its one spelling."""
+    try:
+        return isinstance(text, str) and read_instant(text).local == text
+    except ValueError:
+        return False
 
 
 def _check_lists(column: Texts) -> list[list[str]]:

@@ -9,6 +9,8 @@ from service.network.charge_checks import check_charges
 from service.network.columns import Network
 from service.network.control import check_control
 from service.network.currency_reading import Currencies, read_exchange_rates
+from service.network.date_checks import check_days, check_demand_dates, check_lane_dates
+from service.network.days import day_number
 from service.network.definition import Control, Head, validated
 from service.network.doubts import doubt
 from service.network.faults import FaultList, pointer
@@ -78,6 +80,8 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     check_supply(tables.supply, things)
     check_demand(tables.demand, things, options)
     check_lanes(tables.lanes, things)
+    check_lane_dates(tables.lanes)
+    check_demand_dates(tables.demand, None if head is None else day_number(head.cut_off.local))
     set_aside = _refuse_or_set_aside(tables, options, faults)
     if head is not None:
         _doubt_head(head, faults)
@@ -126,7 +130,9 @@ def _head_document(head: Head, currencies: Currencies) -> dict[str, object]:
         "name": head.name,
         "currency": head.currency,
         "cut_off": head.cut_off.local,
+        "planned_at": None if head.planned_at is None else head.planned_at.local,
         "release_by": None if head.release_by is None else head.release_by.local,
+        "periods": [day.isoformat() for day in head.periods] if head.periods else None,
         "extra": dict(sorted(head.extra.items())) if head.extra else None,
         "exchange_rates": [dict(rate) for rate in currencies.documents] or None,
     }
@@ -135,6 +141,10 @@ def _head_document(head: Head, currencies: Currencies) -> dict[str, object]:
 
 def _doubt_head(head: Head, faults: FaultList) -> None:
     """Doubt a plan that is needed before its orders close."""
+    planned = head.planned_at
+    if planned is not None and planned.nanoseconds > head.cut_off.nanoseconds:
+        detail = "The plan is made (planned_at) after its orders closed (cut_off)."
+        faults.caution("planned_after_cut_off", detail, [("/planned_at", planned.local)])
     release = head.release_by
     if release is not None and release.nanoseconds < head.cut_off.nanoseconds:
         detail = "The plan is needed (release_by) before its orders close (cut_off)."
@@ -204,5 +214,6 @@ def _check_together(
     check_loops(assembly, use, faults)
     check_origins(assembly, use, faults)
     check_rules(assembly, use, faults)
+    check_days(assembly, faults)
     check_stock_age(assembly, cut_off, options.maximum_age_minutes, faults)
     doubt(assembly, use, faults)

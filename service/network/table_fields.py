@@ -12,6 +12,14 @@ PRIORITY_MAX: Final = 9
 PRIORITY_DEFAULT: Final = 5
 
 _PRIORITY: Schema = {"type": "integer", "minimum": 1, "maximum": PRIORITY_MAX}
+# A year and a day: what travels longer is more likely a slip.
+TRANSIT_DAYS_MAX: Final = 366
+_DAYS: Schema = {
+    "anyOf": [
+        {"type": "integer", "minimum": 0, "maximum": TRANSIT_DAYS_MAX},
+        {"type": "string", "pattern": "^(0|[1-9][0-9]{0,2})$"},
+    ]
+}
 _QUANTITY = decimal_schema(3, signed=False)
 _MONEY = decimal_schema(6, signed=False)
 _RATE = decimal_schema(6, signed=True)
@@ -35,6 +43,9 @@ SUPPLY_FIELDS: Final[Mapping[str, Schema]] = {
     "as_of": schemas.INSTANT_SCHEMA,
     "lot": schemas.ID_SCHEMA,
     "best_before": schemas.DATE_SCHEMA,
+    "available_from": schemas.described(
+        schemas.DATE_SCHEMA, "The first date on which it can be drawn; now if absent.", "2026-02-05"
+    ),
     "keep": {
         "type": "object",
         "properties": {"quantity": _QUANTITY, "priority": _PRIORITY},
@@ -54,6 +65,18 @@ DEMAND_FIELDS: Final[Mapping[str, Schema]] = {
     "priority": _PRIORITY,
     "shortage_cost": _MONEY,
     "worth_at_most": _MONEY,
+    "earliest": schemas.described(
+        schemas.DATE_SCHEMA, "Nothing may arrive before this date.", "2026-02-04"
+    ),
+    "due": schemas.described(
+        schemas.DATE_SCHEMA, "The date it is wished for; every day after it is late.", "2026-02-05"
+    ),
+    "latest": schemas.described(
+        schemas.DATE_SCHEMA, "Nothing may arrive after this date.", "2026-02-09"
+    ),
+    "late_cost_per_day": schemas.described(
+        _MONEY, "Money for each unit and day after due; else lateness counts before money.", "0.50"
+    ),
     "origins": {**schemas.IDS_SCHEMA, "minItems": 1},
     "tags": schemas.IDS_SCHEMA,
     "extra": schemas.EXTRA_SCHEMA,
@@ -71,6 +94,24 @@ LANE_FIELDS: Final[Mapping[str, Schema]] = {
     "carrier": schemas.ID_SCHEMA,
     "currency": _CURRENCY,
     "charges": {"type": "array", "items": CHARGE_SCHEMA, "maxItems": CHARGES_MAX},
+    "transit_days": schemas.described(
+        _DAYS, "Calendar days from departure to arrival; 0 if absent.", 1
+    ),
+    "closes": schemas.described(
+        schemas.INSTANT_SCHEMA,
+        "When the departure closes; one that closed before planned_at is left out.",
+        "2026-02-03T17:00:00+01:00",
+    ),
+    "departs": schemas.described(
+        schemas.INSTANT_SCHEMA,
+        "The one time when it leaves; its date is that of the origin's time zone.",
+        "2026-02-03T19:30:00+01:00",
+    ),
+    "arrives": schemas.described(
+        schemas.INSTANT_SCHEMA,
+        "When it arrives, instead of transit_days; in the destination's time zone.",
+        "2026-02-04T06:00:00+01:00",
+    ),
     "tags": schemas.IDS_SCHEMA,
     "extra": schemas.EXTRA_SCHEMA,
 }
@@ -87,14 +128,21 @@ REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
 # Fields whose single value is itself an array, so that an array need not be a column of a table.
 LISTED_FIELDS: Final = frozenset({"tags", "origins", "charges"})
 
+
+def _plain(schema: Schema) -> Schema:
+    """Return a schema without the words about it."""
+    words = ("description", "examples")
+    return {key: value for key, value in schema.items() if key not in words}
+
+
 # Fields whose values are texts or numbers; the others hold arrays or objects.
-_NUMBERS: Final = (_QUANTITY, _MONEY, _RATE, _PRIORITY)
+_NUMBERS: Final = (_QUANTITY, _MONEY, _RATE, _PRIORITY, _DAYS)
 _STRUCTURES: Final = LISTED_FIELDS | {"extra", "keep"}
 _IDS: Final = frozenset({"id", "reference"})
 FLAT_FIELDS: Final[Mapping[str, Mapping[str, FieldKind]]] = {
     table: {
         field: FieldKind.NUMBER
-        if schema in _NUMBERS
+        if _plain(schema) in _NUMBERS
         else FieldKind.ID
         if field in _IDS
         else FieldKind.TEXT

@@ -31,7 +31,11 @@ from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
 from service.network.table_reading import Spelled, TableReader
 from service.network.table_rows import with_measure, with_units
 from service.network.things import Things
+from service.network.time_zones import at_sites
 from service.network.wording import ID_ADVICE, is_id
+
+# Instants of these years are nanoseconds in 64 bits, and have a date in every time zone.
+YEARS = (1971, 2200)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -92,6 +96,7 @@ def read_supply(sheet: Sheet, things: Things, currencies: Currencies) -> ReadSup
         as_of=reader.texts("as_of", _instant),
         lot=reader.texts("lot", _id),
         best_before=reader.texts("best_before", _date),
+        available_from=reader.texts("available_from", _date),
         keep_quantity=keep_quantity,
         keep_priority=keep_priority,
         extra=reader.extras(),
@@ -126,6 +131,12 @@ def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
         priority=reader.small("priority", most=PRIORITY_MAX),
         shortage_cost=reader.decimals("shortage_cost", decimals_max=RATE_DECIMALS_MAX, least=0),
         worth_at_most=reader.decimals("worth_at_most", decimals_max=RATE_DECIMALS_MAX, least=0),
+        earliest=reader.texts("earliest", _date),
+        due=reader.texts("due", _date),
+        latest=reader.texts("latest", _date),
+        late_cost_per_day=reader.decimals(
+            "late_cost_per_day", decimals_max=RATE_DECIMALS_MAX, least=0
+        ),
         origins=reader.lists("origins", things.site_positions, empty=False),
         tags=reader.lists("tags", empty=True),
         extra=reader.extras(),
@@ -168,6 +179,10 @@ def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLane
         carrier=reader.texts("carrier", _id),
         currency=reader.texts("currency", currencies.spelled),
         charges=reader.structures("charges", charge_speller(things.item_positions, currencies)),
+        transit_days=reader.decimals("transit_days", decimals_max=0, least=0),
+        closes=at_sites(reader.texts("closes", _local), origin, things.sites),
+        departs=at_sites(reader.texts("departs", _local), origin, things.sites),
+        arrives=at_sites(reader.texts("arrives", _local), destination, things.sites),
         tags=reader.lists("tags", empty=True),
         extra=reader.extras(),
     )
@@ -220,6 +235,18 @@ def _instant(text: str) -> Spelled:
         return Spelled(read_instant(text).utc)
     except ValueError as error:
         return Spelled(None, "bad_time", str(error))
+
+
+def _local(text: str) -> Spelled:
+    """Spell a point in time: with the offset it was sent with."""
+    try:
+        instant = read_instant(text)
+    except ValueError as error:
+        return Spelled(None, "bad_time", str(error))
+    if not YEARS[0] <= instant.local_date.year <= YEARS[1]:
+        detail = f"No lane is planned with in that year. Say one from {YEARS[0]} to {YEARS[1]}."
+        return Spelled(None, "bad_time", detail)
+    return Spelled(instant.local)
 
 
 def _date(text: str) -> Spelled:

@@ -20,6 +20,17 @@ INSTANT_SCHEMA: Final[Schema] = {"type": "string", "format": "date-time"}
 DATE_SCHEMA: Final[Schema] = {"type": "string", "format": "date"}
 
 
+def described(schema: Schema, what: str, example: object) -> Schema:
+    """Return a schema with a sentence about what it means, and an example."""
+    return {**schema, "description": what, "examples": [example]}
+
+
+def dates_schema(most: int) -> Schema:
+    """Return the schema of an array of 1 to ``most`` different dates."""
+    dates: Schema = {"type": "array", "items": DATE_SCHEMA, "minItems": 1}
+    return dates | {"maxItems": most, "uniqueItems": True}
+
+
 def decimal_schema(decimals_max: int, *, signed: bool) -> Schema:
     """Return the schema of a decimal: a number, or better its exact digits as text."""
     number_pattern = rf"(0|[1-9][0-9]*)(\.[0-9]{{1,{decimals_max}}})?"

@@ -9,6 +9,7 @@ import numpy as np
 
 from service.network.canonical import canonical_json, digest
 from service.network.columns import CodeArray, IntArray, Network
+from service.network.days import is_dated, movements_of
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -38,15 +39,21 @@ class Workload:
 def workload_of(network: Network, *, file_bytes: int) -> Workload:
     """Return how much work ``network`` is."""
     usable, touched = _usable_lanes(network)
+    lanes = len(network.lanes)
+    # A lane is as many as it has days of departure, and a site as many as it has days.
+    times = 1
+    if lanes and is_dated(network):
+        times = -(-len(movements_of(network).row) // lanes)
+        usable, touched = usable * times, touched * times
     return Workload(
         items=len(network.items),
         sites=len(network.sites),
         supply_rows=len(network.supply),
         order_lines=len(network.demand),
-        lanes=len(network.lanes),
+        lanes=lanes * times,
         usable_lanes=int(usable.sum()),
         usable_lanes_of_one=int(usable.max(initial=0)),
-        places=int(np.minimum(touched + 2 * usable, len(network.sites)).sum()),
+        places=int(np.minimum(touched + 2 * usable, times * len(network.sites)).sum()),
         file_bytes=file_bytes,
     )
 

@@ -120,11 +120,13 @@ class Nodes:
     ``side`` is a position in ``SIDES``, ``site`` one in ``Network.sites`` (-1: root);
     ``qualifier`` tells nodes of one side apart: the group (a position in the item's groups) for
     demand, the origin site for received (or -1), the 1-based tier number for stock, else -1.
+    ``place`` is that of the item's places (``site_days.py``), -1 where a node has no day.
     """
 
     side: NDArray[np.int8]
     site: CodeArray
     qualifier: CodeArray
+    place: IntArray
 
     def __len__(self) -> int:
         """Return the number of nodes, the root included."""

@@ -6,6 +6,7 @@ from fractions import Fraction
 import numpy as np
 
 from service.network.columns import BoolArray, Decimals, IntArray, Item, Network
+from service.network.days import Movements, gone_lanes
 from service.network.lane_rates import lane_rates
 from service.network.rules import FixedQuantity
 from service.network.units import per_unit
@@ -23,7 +24,8 @@ class LaneBounds:
     which ``charges`` are a part (None: there are none). ``stated_minimum`` and ``stated_capacity``
     are those without any rule. ``at`` picks the lanes from a column of the network: ``rows``, or a
     slice where they are all. Columns that say the same of every lane are views of one value, which
-    nobody can write to.
+    nobody can write to. In a network with dates a lane stands here once for each day of departure:
+    ``departs`` and ``arrives`` are its days.
     """
 
     rows: IntArray
@@ -36,11 +38,22 @@ class LaneBounds:
     fixed: BoolArray
     stated_minimum: IntArray
     stated_capacity: IntArray
+    departs: IntArray | None = None
+    arrives: IntArray | None = None
 
 
-def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> LaneBounds:
-    """Return bounds and costs of the lanes at ``rows`` for ``item``."""
-    lanes, thing, count = network.lanes, network.items[item], rows.shape[0]
+def lane_bounds(
+    network: Network,
+    item: int,
+    rows: IntArray,
+    book: RuleBook,
+    *,
+    movements: Movements | None = None,
+) -> LaneBounds:
+    """Return bounds and costs of the lanes at ``rows`` for ``item``, of all their ``movements``."""
+    lanes, thing = network.lanes, network.items[item]
+    rows, departs, arrives = _moves(rows, movements)
+    count = rows.shape[0]
     every = np.array_equal(rows, np.arange(len(lanes)))
     at: IntArray | slice = slice(None) if every else rows
     codes = lanes.measure.codes[at]
@@ -72,9 +85,10 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
             steps(lanes.capacity, "capacity of a lane"),
             UNLIMITED,
         )
-    quantities, closures = book.fixed_quantities(item), book.closures(item)
+    quantities = book.fixed_quantities(item)
+    closings = [entry.lanes for entry in book.closures(item)] + _gone(network, movements)
     fixed = closed = np.broadcast_to(np.False_, (count,))
-    if quantities or closures:
+    if quantities or closings:
         minimum, capacity = minimum.copy(), capacity.copy()
         fixed, closed = fixed.copy(), closed.copy()
     for entry in quantities:
@@ -88,9 +102,9 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
             ).rounded(up=False, what="quantity of a fixed_quantity rule")
             minimum[picked] = quantity
             capacity[picked] = quantity
-    for entry in closures:
-        closed |= entry.lanes[at]
-    if closures:
+    for shut in closings:
+        closed |= shut[at]
+    if closings:
         minimum[closed] = 0
         capacity[closed] = 0
     money, charges = _money(network, item, at, rows.shape[0])
@@ -105,7 +119,26 @@ def lane_bounds(network: Network, item: int, rows: IntArray, book: RuleBook) -> 
         fixed=fixed & ~closed if quantities else fixed,
         stated_minimum=stated_minimum,
         stated_capacity=stated_capacity,
+        departs=departs,
+        arrives=arrives,
     )
+
+
+def _moves(
+    rows: IntArray, movements: Movements | None
+) -> tuple[IntArray, IntArray | None, IntArray | None]:
+    """Return the lanes at ``rows``, each once for every day on which it departs, and its days."""
+    if movements is None:
+        return rows, None, None
+    moves = movements.of_lanes(rows)
+    return movements.row[moves], movements.departs[moves], movements.arrives[moves]
+
+
+def _gone(network: Network, movements: Movements | None) -> list[BoolArray]:
+    """Return which lanes closed before the plan is made; nothing where none has a departure."""
+    if movements is None or not network.lanes.departs.values:
+        return []
+    return [gone_lanes(network)]
 
 
 def _of_all(value: int, count: int) -> IntArray:

@@ -54,6 +54,9 @@ def proved_certificate(  # noqa: PLR0913 - the parts of one document
                     "bound": quantity,
                 }
             )
+        if result.late is not None:
+            late = text(result.late * item.step)
+            steps.append({"item": item.id, "of": "lateness", "achieved": late, "bound": late})
         money = text(money_of(result.money, compiled.cost_scale))
         steps.append({"item": item.id, "of": "cost", "achieved": money, "bound": money})
     return {

@@ -4,6 +4,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from service.network.columns import Network
+from service.network.days import is_dated, movements_of
 from service.network.options import Options
 from service.network.reach import LaneUse
 from service.planning.item_arcs import item_arcs
@@ -37,8 +38,10 @@ def compile_network(network: Network, options: Options) -> Compiled:
     Raises ``NumbersTooLargeError`` where a quantity in steps reaches 2**62.
     """
     use, book = LaneUse(network), rule_book(network)
+    movements = movements_of(network) if is_dated(network) else None
     raw = [
-        item_arcs(network, options, item, use=use, book=book) for item in range(len(network.items))
+        item_arcs(network, options, item, use=use, book=book, movements=movements)
+        for item in range(len(network.items))
     ]
     grids = [own.grid() for own in raw]
     # What is charged on a lane is shown by itself, so that it must be whole by itself.

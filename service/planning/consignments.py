@@ -25,20 +25,21 @@ def consignments(
     plans: Sequence[ItemPlan],
     scale: Fraction,
     *,
-    references: Mapping[int, set[bytes]],
+    references: Mapping[tuple[int, int], set[bytes]],
 ) -> list[dict[str, object]]:
-    """Return the table ``consignments``: one row for each lane in use, in the lanes' order.
+    """Return the table ``consignments``: one row for each lane in use and day that it departs.
 
-    ``references`` are the order lines with goods on each lane, by its row in the network.
+    They are in the lanes' order. ``references`` are the order lines with goods on each lane, by its
+    row in the network and the day (0 without dates).
     Pallets, weight and volume are ``unknown`` where an item on the lane lacks the figure.
     """
-    by_lane: dict[int, list[_OnLane]] = {}
+    by_lane: dict[tuple[int, int], list[_OnLane]] = {}
     for plan in plans:
         for goods in _goods(network, plan, scale):
-            by_lane.setdefault(goods.line.row, []).append(goods)
+            by_lane.setdefault((goods.line.row, goods.line.departs), []).append(goods)
     sites = [site.id for site in network.sites]
     rows: list[dict[str, object]] = []
-    for row, own in sorted(by_lane.items()):
+    for (row, day), own in sorted(by_lane.items()):
         first = own[0] if len(own) == 1 else _together(network, own, scale)
         rows.append(
             {
@@ -46,12 +47,13 @@ def consignments(
                 "carrier": network.lanes.carrier.text(row),
                 "origin": sites[first.line.origin],
                 "destination": sites[first.line.destination],
+                **(first.line.dates() if day else {}),
                 "pallets": first.pallets,
                 "weight_kg": first.weight,
                 "volume_m3": first.volume,
                 "cost": first.cost,
                 "order_references": [
-                    reference.decode() for reference in sorted(references.get(row, ()))
+                    reference.decode() for reference in sorted(references.get((row, day), ()))
                 ],
             }
         )

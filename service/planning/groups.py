@@ -6,13 +6,16 @@ from fractions import Fraction
 
 import numpy as np
 
-from service.network.columns import CodeArray, IntArray, Network
+from service.network.columns import BoolArray, CodeArray, IntArray, Network
+from service.network.days import days_of
 from service.network.options import Options
 from service.planning.scaling import Rationals
 from service.planning.stock import factors_of
 
 DEFAULT_PRIORITY = 5
 IN_MONEY = 0
+# After the last day of any calendar.
+NEVER = 2**40
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -25,6 +28,8 @@ class Groups:
     step short, ``row_exact`` what it wants in steps before rounding. Groups: ``site``,
     ``steps``, ``priority``, ``money`` for a step short (0 where a priority decides), ``label`` (the
     row of the smallest reference) and ``origins`` (site positions, or None where any may serve).
+    ``earliest``, ``due`` and ``latest`` are days (0 and ``NEVER`` where there is none);
+    ``late_money`` is money for a step and a day after ``due`` where ``late_paid``.
     """
 
     rows: IntArray
@@ -39,6 +44,20 @@ class Groups:
     money: Rationals
     label: IntArray
     origins: tuple[frozenset[int] | None, ...]
+    earliest: IntArray
+    due: IntArray
+    latest: IntArray
+    late_money: Rationals
+    late_paid: BoolArray
+
+    def late_weight(self, group: IntArray | CodeArray) -> IntArray:
+        """Return what a day late weighs a step of each group, 0 where it costs money instead.
+
+        Who competes in money weighs as little as the last priority.
+        """
+        priority = self.priority[group]
+        weight = np.where(priority == IN_MONEY, 1, 10 - priority)
+        return np.where(self.late_paid[group], 0, weight).astype(np.int64)
 
 
 def groups_of(network: Network, item: int, options: Options) -> Groups:
@@ -58,7 +77,27 @@ def groups_of(network: Network, item: int, options: Options) -> Groups:
     priority, money = _claims(network, rows, codes, factors, step=thing.step, options=options)
     wanting = np.flatnonzero(row_steps > 0)
     _, money_code = np.unique(money.on(money.grid() or Fraction(1)), return_inverse=True)
+    late = Rationals(
+        values=demand.late_cost_per_day.values[rows],
+        codes=codes,
+        multipliers=tuple(
+            thing.step / (factor * 10**demand.late_cost_per_day.exponent) for factor in factors
+        ),
+    )
+    dates = (
+        days_of(demand.earliest, absent=0)[rows],
+        days_of(demand.due, absent=NEVER)[rows],
+        days_of(demand.latest, absent=NEVER)[rows],
+    )
+    paid = demand.late_cost_per_day.present[rows]
+    named = demand.earliest.values or demand.due.values or demand.latest.values
+    lateness = (
+        *(day[wanting] for day in dates),
+        paid[wanting],
+        late.on(late.grid() or Fraction(1))[wanting],
+    )
     keys = (
+        *(lateness if named else ()),
         demand.origins.codes[rows][wanting],
         money_code[wanting],
         priority[wanting],
@@ -90,6 +129,11 @@ def groups_of(network: Network, item: int, options: Options) -> Groups:
         money=money.at(first),
         label=rows[first],
         origins=_origins(network, rows[first]),
+        earliest=dates[0][first],
+        due=dates[1][first],
+        latest=dates[2][first],
+        late_money=late.at(first),
+        late_paid=paid[first],
     )
 
 

@@ -1,5 +1,6 @@
 """The arcs of one item: lanes, stock, what passes a site, who may serve whom, what is wanted."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any, NamedTuple
@@ -8,15 +9,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.network.columns import CodeArray, IntArray, Network
+from service.network.days import Movements
 from service.network.options import Options
 from service.network.reach import LaneUse
 from service.planning.arcs import ROOT, UNLIMITED, Arcs, Kind, largest
 from service.planning.bounds import LaneBounds, lane_bounds
 from service.planning.groups import IN_MONEY, Groups, groups_of
-from service.planning.item_network import ItemNetwork
+from service.planning.item_network import ItemNetwork, with_weight
 from service.planning.layout import Layout, layout_of
 from service.planning.rule_book import RuleBook
 from service.planning.scaling import Rationals, common_grid
+from service.planning.serving import add_serving
+from service.planning.site_days import each_place
 from service.planning.stock import Stock, stock_of
 
 # Positions of nodes or of what arcs stand for: as wide as they come.
@@ -33,6 +37,7 @@ class Block(NamedTuple):
     capacity: IntArray
     subject: CodeArray
     money: Rationals
+    late: IntArray
 
 
 @dataclass(slots=True, kw_only=True)
@@ -56,8 +61,9 @@ class ArcList:
         minimum: IntArray | int = 0,
         capacity: IntArray | int = UNLIMITED,
         money: Rationals | None = None,
+        days_late: IntArray | None = None,
     ) -> None:
-        """Add arcs of one kind; a missing cost is 0."""
+        """Add arcs of one kind; a missing cost is 0, and so is lateness."""
         shape = subject.shape
         self.blocks.append(
             Block(
@@ -68,12 +74,45 @@ class ArcList:
                 capacity=np.broadcast_to(np.asarray(capacity, np.int64), shape),
                 subject=subject.astype(np.int32, copy=False),
                 money=Rationals.zeros(shape[0]) if money is None else money,
+                late=np.broadcast_to(np.int64(0), shape) if days_late is None else days_late,
             )
         )
 
     def grid(self) -> Fraction:
         """Return the largest number of which the money of every arc is a whole multiple."""
         return common_grid(block.money.grid() for block in self.blocks)
+
+    def add_serving(  # noqa: PLR0913 - the columns of an arc
+        self,
+        kind: Kind,
+        tail: IntArray,
+        group: IntArray,
+        place: IntArray,
+        *,
+        capacity: IntArray | int = UNLIMITED,
+        handling: Sequence[Fraction] | None = None,
+    ) -> None:
+        """Add arcs to groups from ``place``; what is late costs money, if it costs any."""
+        groups, day = self.groups, self.layout.places.day
+        money = None if handling is None else Rationals.given(handling)
+        late = None
+        if day is not None:
+            late = np.maximum(day[place] - groups.due[group], 0)
+            costly = np.flatnonzero((late > 0) & groups.late_paid[group])
+            if costly.shape[0]:
+                amounts = [Fraction(0)] * group.shape[0] if handling is None else list(handling)
+                for at in costly.tolist():
+                    amounts[at] += int(late[at]) * groups.late_money.fraction(int(group[at]))
+                money = Rationals.given(amounts)
+        self.add(
+            kind,
+            tail,
+            self.layout.demand[group],
+            group,
+            capacity=capacity,
+            money=money,
+            days_late=late,
+        )
 
     def finish(self, scale: Fraction) -> ItemNetwork:
         """Return the item's network at ``scale``."""
@@ -83,6 +122,14 @@ class ArcList:
             (set(self.groups.priority.tolist()) | set(self.stock.kept_priority.tolist()))
             - {IN_MONEY}
         )
+        subject = np.concatenate([block.subject for block in blocks])
+        late, weight = self._lateness(subject)
+        nodes = len(self.layout.nodes)
+        # Any loop trades at most one short step for another and gains at most n * max|c|
+        # twice over in money; more than that for each step of priority. So it is for each step
+        # and day late, and those weights count as costs for the priorities.
+        late_base = 2 * nodes * largest(cost) + 1 if weight.any() else 0
+        counted = with_weight(cost, weight, late_base)
         return ItemNetwork(
             item=self.item,
             lanes=self.lanes,
@@ -99,19 +146,37 @@ class ArcList:
             kind=np.concatenate(
                 [np.full(len(block.subject), int(block.kind), np.int8) for block in blocks]
             ),
-            subject=np.concatenate([block.subject for block in blocks]),
+            subject=subject,
+            days_late=late,
+            late_weight=weight,
+            late_base=late_base,
             priorities=tuple(priorities),
-            # Any loop trades at most one short step for another and gains at most n * max|c|
-            # twice over in money; more than that for each step of priority.
-            base=2 * len(self.layout.nodes) * largest(cost) + 1,
+            base=2 * nodes * largest(counted) + 1,
         )
 
+    def _lateness(self, subject: CodeArray) -> tuple[IntArray, IntArray]:
+        """Return how many days late goods on each arc are, and what that weighs if not money."""
+        if not any(block.late.any() for block in self.blocks):
+            none = np.broadcast_to(np.int64(0), subject.shape)
+            return none, none
+        late = np.concatenate([block.late for block in self.blocks])
+        weight = np.zeros_like(late)
+        serving = np.flatnonzero(late)
+        weight[serving] = late[serving] * self.groups.late_weight(subject[serving])
+        return late, weight
 
-def item_arcs(
-    network: Network, options: Options, item: int, *, use: LaneUse, book: RuleBook
+
+def item_arcs(  # noqa: PLR0913 - the tables of one item
+    network: Network,
+    options: Options,
+    item: int,
+    *,
+    use: LaneUse,
+    book: RuleBook,
+    movements: Movements | None = None,
 ) -> ArcList:
-    """Build the arcs of one item."""
-    lanes = lane_bounds(network, item, use.rows(item), book)
+    """Build the arcs of one item; ``movements`` are those of a network with dates."""
+    lanes = lane_bounds(network, item, use.rows(item), book, movements=movements)
     stock, groups = stock_of(network, item), groups_of(network, item, options)
     layout = layout_of(
         network,
@@ -130,9 +195,7 @@ def item_arcs(
         layout=layout,
         blocks=[],
     )
-    tail, head = layout.lane_ends(
-        network.lanes.origin[lanes.at], network.lanes.destination[lanes.at]
-    )
+    tail, head = layout.lane_ends(network.lanes.origin[lanes.at])
     arcs.add(
         Kind.LANE,
         tail,
@@ -144,7 +207,7 @@ def item_arcs(
     )
     _add_stock(arcs)
     _add_sites(arcs, network, item)
-    _add_serving(arcs, network, item, use)
+    add_serving(arcs, network, item, use)
     _add_wanting(arcs, shortages=options.shortages == "allow")
     return arcs
 
@@ -152,39 +215,51 @@ def item_arcs(
 def _add_stock(arcs: ArcList) -> None:
     """Add what can be drawn, and what of it is kept."""
     stock, layout = arcs.stock, arcs.layout
+    days = layout.places
     tiers = np.arange(stock.site.shape[0])
     plain, kept = tiers[layout.stock < 0], tiers[layout.stock >= 0]
     root = np.array(ROOT)
+    place = days.first[stock.site[plain]]
+    there = np.ones(plain.shape[0], np.bool_)
+    if days.day is not None:
+        there = stock.from_day[plain] <= days.day[place]
     arcs.add(
         Kind.SUPPLY,
         root,
-        layout.inside[stock.site[plain]],
+        layout.inside[place],
         plain,
-        capacity=stock.steps[plain],
+        capacity=np.where(there, stock.steps[plain], 0),
         money=stock.money.at(plain),
     )
     at = layout.stock[kept]
     arcs.add(Kind.SUPPLY, root, at, kept, capacity=stock.steps[kept])
-    arcs.add(Kind.DRAW, at, layout.inside[stock.site[kept]], kept, money=stock.money.at(kept))
+    tier, place = each_place(days, stock.site[kept])
+    tier = kept[tier]
+    if days.day is not None:
+        open_ = stock.from_day[tier] <= days.day[place]
+        tier, place = tier[open_], place[open_]
+    arcs.add(Kind.DRAW, layout.stock[tier], layout.inside[place], tier, money=stock.money.at(tier))
     keep_of_site = dict(zip(stock.kept_site.tolist(), layout.keep.tolist(), strict=True))
-    keep = np.array([keep_of_site[site] for site in stock.site[kept].tolist()], np.int64)
-    arcs.add(Kind.KEPT, at, keep, kept)
+    keep = np.array([keep_of_site.get(site, -1) for site in stock.site[kept].tolist()], np.int64)
+    arcs.add(Kind.KEPT, at[keep >= 0], keep[keep >= 0], kept[keep >= 0])
 
 
 def _add_sites(arcs: ArcList, network: Network, item: int) -> None:
-    """Add what passes a site: handling, throughput limits, closures."""
+    """Add what passes a place: handling, throughput limits, closures."""
     layout = arcs.layout
-    places = layout.relevant
+    places, site_of = layout.relevant, layout.places.site
     thing = network.items[item]
     handling = Rationals.given(
-        [network.sites[place].handling(thing.id) * thing.step for place in places.tolist()]
+        [network.sites[site].handling(thing.id) * thing.step for site in site_of[places].tolist()]
     )
     arcs.add(
         Kind.THROUGH,
         layout.inside[places],
         layout.outside[places],
         places,
-        capacity=np.where(layout.closed[places], 0, layout.limit["through"][places]),
+        capacity=np.where(
+            layout.closed[site_of[places]], 0, layout.limit["through"][site_of[places]]
+        ),
         money=handling,
     )
     sending = places[layout.sent[places] >= 0]
@@ -193,79 +268,27 @@ def _add_sites(arcs: ArcList, network: Network, item: int) -> None:
         layout.outside[sending],
         layout.sent[sending],
         sending,
-        capacity=layout.limit["sent"][sending],
+        capacity=layout.limit["sent"][site_of[sending]],
     )
-    node, site, _ = layout.arrivals
+    node, place, _ = layout.arrivals
+    site = site_of[place]
     joined = np.flatnonzero(~layout.apart[site])
     arcs.add(
         Kind.ARRIVE,
         node[joined],
-        layout.inside[site[joined]],
-        site[joined],
+        layout.inside[place[joined]],
+        place[joined],
         capacity=layout.limit["received"][site[joined]],
     )
     passing = np.flatnonzero(layout.apart[site] & layout.passes_on[site])
     arcs.add(
         Kind.PASS,
         node[passing],
-        layout.sent[site[passing]],
-        site[passing],
+        layout.sent[place[passing]],
+        place[passing],
         capacity=np.where(layout.closed[site[passing]], 0, UNLIMITED),
-        money=handling.at(np.searchsorted(places, site[passing])),
+        money=handling.at(np.searchsorted(places, place[passing])),
     )
-
-
-def _add_serving(arcs: ArcList, network: Network, item: int, use: LaneUse) -> None:
-    """Add who may serve which group."""
-    groups, layout = arcs.groups, arcs.layout
-    own = np.array(
-        [
-            allowed is None or int(site) in allowed
-            for site, allowed in zip(groups.site, groups.origins, strict=True)
-        ],
-        np.bool_,
-    )
-    served = np.flatnonzero(own)
-    arcs.add(Kind.SERVE, layout.outside[groups.site[served]], layout.demand[served], served)
-    node, site, origin = layout.arrivals
-    stock_at = {
-        place: frozenset(np.flatnonzero(use.stock_reaching(item, place)).tolist())
-        for place in sorted(set(origin[origin >= 0].tolist()))
-    }
-    arrivals_of: dict[int, list[int]] = {}
-    for at in np.flatnonzero(layout.apart[site]).tolist():
-        arrivals_of.setdefault(int(site[at]), []).append(at)
-    pairs = [
-        (at, group)
-        for group, (place, allowed) in enumerate(
-            zip(groups.site.tolist(), groups.origins, strict=True)
-        )
-        for at in arrivals_of.get(place, ())
-        if allowed is None or _all_named(stock_at[int(origin[at])], allowed)
-    ]
-    arrived, group = np.array(pairs, np.int64).reshape(len(pairs), 2).T
-    thing = network.items[item]
-    arcs.add(
-        Kind.SERVE_ARRIVED,
-        node[arrived],
-        layout.demand[group],
-        group,
-        capacity=np.where(layout.closed[site[arrived]], 0, UNLIMITED),
-        money=Rationals.given(
-            [
-                network.sites[place].handling(thing.id) * thing.step
-                for place in site[arrived].tolist()
-            ]
-        ),
-    )
-
-
-def _all_named(stock: frozenset[int], allowed: frozenset[int]) -> bool:
-    """Return whether some stock can come this way and all of it may serve.
-
-    Where only a part is named the intake has refused the line (``origins_behind_cross_dock``).
-    """
-    return bool(stock) and stock <= allowed
 
 
 def _add_wanting(arcs: ArcList, *, shortages: bool) -> None:

@@ -6,11 +6,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.network.columns import CodeArray, IntArray
-from service.planning.arcs import Arcs, Kind, MoneyArray, largest, widened
+from service.planning.arcs import SAFE, Arcs, Kind, MoneyArray, largest, widened
 from service.planning.bounds import LaneBounds
 from service.planning.groups import IN_MONEY, Groups
 from service.planning.layout import Layout
 from service.planning.stock import Stock
+
+
+def with_weight(cost: MoneyArray, weight: IntArray, base: int) -> MoneyArray:
+    """Return ``cost`` plus ``weight`` times ``base`` on each arc."""
+    if not base:
+        return cost
+    bound = largest(cost) + largest(weight) * base
+    wide: MoneyArray = weight.astype(object) if bound >= SAFE else weight
+    counted: MoneyArray = widened(cost, bound=bound) + wide * base
+    return counted
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -20,7 +30,9 @@ class ItemNetwork:
     ``arcs.cost`` is scaled money per step. ``kind`` (a ``Kind``) and ``subject`` say what each arc
     stands for; lanes come first, in the order of ``lanes.rows``, so that the position of a lane's
     arc is its position there. ``priorities`` are those that occur, ascending; ``base`` is C: the
-    r-th of T priorities weighs (T + 1 - r) * C.
+    r-th of T priorities weighs (T + 1 - r) * C. ``days_late`` says how late goods on an arc are;
+    where that costs no money it has a ``late_weight``, each of which weighs ``late_base`` (0 where
+    nothing has a weight).
     """
 
     item: int
@@ -33,6 +45,9 @@ class ItemNetwork:
     subject: CodeArray
     priorities: tuple[int, ...]
     base: int
+    days_late: IntArray
+    late_weight: IntArray
+    late_base: int
 
     @property
     def node_count(self) -> int:
@@ -47,9 +62,10 @@ class ItemNetwork:
         return np.concatenate((np.arange(lanes), others)) if Kind.LANE in kinds else others
 
     def weighted(self) -> MoneyArray:
-        """Return what the solver minimises: money, and the weight of its priority a step short."""
-        bound = largest(self.arcs.cost) + len(self.priorities) * self.base
-        cost = widened(self.arcs.cost, bound=bound).copy()
+        """Return what the solver minimises: money, and the weights of lateness and shortage."""
+        money = with_weight(self.arcs.cost, self.late_weight, self.late_base)
+        bound = largest(money) + len(self.priorities) * self.base
+        cost = widened(money, bound=bound).copy()
         arcs, ranks = self.ranked_shortages()
         if arcs.shape[0]:
             # Only here is the base within the bound: without priorities it may be beyond int64.

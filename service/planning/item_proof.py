@@ -19,11 +19,37 @@ def item_proof(network: Network, solved: ItemFlow) -> Document:
     """
     own = solved.own
     stock, step = own.stock, network.items[own.item].step
+    days = own.layout.places
     sites = [site.id for site in network.sites]
     shelved = own.layout.stock >= 0
     plain = {
         tier: steps for tier, steps in solved.amounts(Kind.SUPPLY).items() if not shelved[tier]
     }
+
+    def drawn() -> list[Document]:
+        if days.day is None:
+            # Stock that may be kept is drawn where it leaves the shelf, other stock where it
+            # enters.
+            return tiers(plain | solved.amounts(Kind.DRAW))
+        arcs = own.of_kind(Kind.SUPPLY, Kind.DRAW)
+        at_place = own.layout.nodes.place[own.arcs.head[arcs]]
+        arcs = arcs[(solved.flow[arcs] != 0) & (at_place >= 0)]
+        place, tier = own.layout.nodes.place[own.arcs.head[arcs]], own.subject[arcs]
+        order = np.lexsort((place, stock.number[tier], stock.site[tier]))
+        return [
+            {
+                "site": sites[stock.site[own_tier]],
+                "day": days.date_of(at),
+                "tier": int(stock.number[own_tier]),
+                "quantity": quantity,
+            }
+            for own_tier, at, quantity in zip(
+                tier[order].tolist(),
+                place[order].tolist(),
+                texts(solved.flow[arcs[order]].tolist(), step),
+                strict=True,
+            )
+        ]
 
     def tiers(amounts: Mapping[int, int]) -> list[Document]:
         order = sorted(amounts, key=lambda tier: (int(stock.site[tier]), int(stock.number[tier])))
@@ -44,8 +70,8 @@ def item_proof(network: Network, solved: ItemFlow) -> Document:
     return {
         "item": network.items[own.item].id,
         "base": str(own.base),
-        # Stock that may be kept is drawn where it leaves the shelf, other stock where it enters.
-        "draws": tiers(plain | solved.amounts(Kind.DRAW)),
+        **({"late_base": str(own.late_base)} if own.late_base else {}),
+        "draws": drawn(),
         "kept": tiers(solved.amounts(Kind.KEPT)),
         "serves": _serves(network, solved),
         "passes": _passes(network, solved),
@@ -65,8 +91,10 @@ def named_nodes(network: Network, own: ItemNetwork) -> list[tuple[int, Document]
     order = _in_order(own)
     order = order[order != ROOT]
     named: list[tuple[int, Document]] = []
-    for node, site, side, qualifier in zip(
+    days = own.layout.places
+    for node, place, site, side, qualifier in zip(
         order.tolist(),
+        nodes.place[order].tolist(),
         nodes.site[order].tolist(),
         nodes.side[order].tolist(),
         nodes.qualifier[order].tolist(),
@@ -79,7 +107,10 @@ def named_nodes(network: Network, own: ItemNetwork) -> list[tuple[int, Document]
             text = str(qualifier)
         elif side == received and qualifier >= 0:
             text = sites[qualifier]
-        named.append((node, {"site": sites[site], "side": sides[side], "qualifier": text}))
+        name: Document = {"site": sites[site], "side": sides[side], "qualifier": text}
+        if days.day is not None and place >= 0:
+            name["day"] = days.date_of(place)
+        named.append((node, name))
     return named
 
 
@@ -98,7 +129,7 @@ def _in_order(own: ItemNetwork) -> IntArray:
     numbers = sorted({int(number) for number in qualifier[stock]}, key=str)
     rank = {number: at for at, number in enumerate(numbers)}
     qualifier[stock] = [rank[number] for number in qualifier[stock].tolist()]
-    return np.lexsort((qualifier, side_rank[nodes.side], nodes.site))
+    return np.lexsort((qualifier, nodes.place, side_rank[nodes.side], nodes.site))
 
 
 def _serves(network: Network, solved: ItemFlow) -> list[Document]:
@@ -108,9 +139,9 @@ def _serves(network: Network, solved: ItemFlow) -> list[Document]:
     arcs = own.of_kind(Kind.SERVE, Kind.SERVE_ARRIVED)
     arcs = arcs[solved.flow[arcs] != 0]
     group, arrived = own.subject[arcs], own.kind[arcs] == Kind.SERVE_ARRIVED
-    origin = nodes.qualifier[own.arcs.tail[arcs]]
+    origin, place = nodes.qualifier[own.arcs.tail[arcs]], nodes.place[own.arcs.tail[arcs]]
     label = groups.label[group]
-    order = np.lexsort((origin, arrived, label, groups.site[group]))
+    order = np.lexsort((place, origin, arrived, label, groups.site[group]))
     sites = [site.id for site in network.sites]
     return [
         {
@@ -118,17 +149,25 @@ def _serves(network: Network, solved: ItemFlow) -> list[Document]:
             "group": reference.decode(),
             "from": "received" if came else "out",
             "origin": sites[whose] if whose >= 0 else None,
+            **_on_day(own, at),
             "quantity": quantity,
         }
-        for site, reference, came, whose, quantity in zip(
+        for site, reference, came, whose, at, quantity in zip(
             groups.site[group[order]].tolist(),
             network.demand.reference[label[order]].tolist(),
             arrived[order].tolist(),
             origin[order].tolist(),
+            place[order].tolist(),
             texts(solved.flow[arcs[order]].tolist(), network.items[own.item].step),
             strict=True,
         )
     ]
+
+
+def _on_day(own: ItemNetwork, place: int) -> Document:
+    """Return the day of a place, as it stands in a row; nothing where there are no dates."""
+    day = own.layout.places.date_of(place)
+    return {} if day is None else {"day": day}
 
 
 def _passes(network: Network, solved: ItemFlow) -> list[Document]:
@@ -141,11 +180,12 @@ def _passes(network: Network, solved: ItemFlow) -> list[Document]:
     sites = [site.id for site in network.sites]
     return [
         {
-            "site": sites[site],
+            "site": sites[own.layout.places.site[place]],
             "origin": sites[whose] if whose >= 0 else None,
+            **_on_day(own, place),
             "quantity": quantity,
         }
-        for site, whose, quantity in zip(
+        for place, whose, quantity in zip(
             own.subject[arcs[order]].tolist(),
             origin[order].tolist(),
             texts(solved.flow[arcs[order]].tolist(), network.items[own.item].step),

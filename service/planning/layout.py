@@ -4,11 +4,13 @@ A site is *apart* where its own stock and what arrives must not mix: because wha
 leave again, or because an order line says whose stock may serve it. Otherwise it is *joined*.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
 from service.network.columns import BoolArray, CodeArray, IntArray, Network
+from service.network.days import cut_off_day
 from service.network.rules import Closure, Throughput
 from service.network.units import per_unit
 from service.planning.arcs import SIDES, UNLIMITED, Nodes, Side
@@ -16,6 +18,7 @@ from service.planning.bounds import LaneBounds
 from service.planning.groups import Groups
 from service.planning.rule_book import RuleBook
 from service.planning.scaling import Rationals
+from service.planning.site_days import SiteDays, dated_places, undated_places
 from service.planning.stock import Stock
 
 FLOWS = ("received", "sent", "through")
@@ -23,14 +26,17 @@ FLOWS = ("received", "sent", "through")
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Layout:
-    """Nodes of one item, and for each site of the network where things attach (-1: nowhere).
+    """Nodes of one item, and for each of its places where things attach (-1: nowhere).
 
-    ``inside``, ``outside`` and ``sent`` are node positions of shape (sites,); ``sent`` is where
-    lanes leave from. ``limit`` holds, for each throughput flow, the least limit in steps by site
-    (``UNLIMITED``: none). ``arrivals`` lists received nodes as (node, site, origin site or -1).
+    ``inside``, ``outside`` and ``sent`` are node positions of shape (places,); ``sent`` is where
+    lanes leave from; ``relevant`` are the places that matter to the item. ``apart``, ``by_origin``,
+    ``closed`` and ``passes_on`` have shape (sites,). ``limit`` holds, for each throughput flow, the
+    least limit in steps by site (``UNLIMITED``: none). ``arrivals`` lists received nodes as (node,
+    place, origin site or -1).
     """
 
     nodes: Nodes
+    places: SiteDays
     relevant: IntArray
     apart: BoolArray
     by_origin: BoolArray
@@ -43,25 +49,25 @@ class Layout:
     demand: IntArray
     stock: IntArray
     keep: IntArray
-    arrivals: tuple[IntArray, CodeArray, CodeArray]
+    arrivals: tuple[IntArray, IntArray, CodeArray]
 
-    def lane_ends(self, origin: CodeArray, destination: CodeArray) -> tuple[CodeArray, CodeArray]:
-        """Return the nodes that lanes between some sites leave and enter."""
+    def lane_ends(self, origin: CodeArray) -> tuple[CodeArray, CodeArray]:
+        """Return the nodes that lanes from some sites leave and enter, at the item's places."""
         sites = self.by_origin.shape[0]
         leaves = np.where(self.sent >= 0, self.sent, self.outside).astype(np.int32)
-        arrival, site, came_from = self.arrivals
+        arrival, place, came_from = self.arrivals
         enters = self.inside.astype(np.int32)
-        enters[site[came_from < 0]] = arrival[came_from < 0]
-        head = enters[destination]
+        enters[place[came_from < 0]] = arrival[came_from < 0]
+        head = enters[self.places.head]
         if self.by_origin.any():
-            tagged = np.flatnonzero(self.by_origin[destination])
-            pairs = site.astype(np.int64) * sites + came_from
+            tagged = np.flatnonzero(self.by_origin[self.places.site[self.places.head]])
+            pairs = place.astype(np.int64) * sites + came_from
             named = np.flatnonzero(came_from >= 0)
             found = np.searchsorted(
-                pairs[named], destination[tagged].astype(np.int64) * sites + origin[tagged]
+                pairs[named], self.places.head[tagged].astype(np.int64) * sites + origin[tagged]
             )
             head[tagged] = arrival[named[found]]
-        return leaves[origin], head
+        return leaves[self.places.tail], head
 
 
 def layout_of(  # noqa: PLR0913 - the tables of one item
@@ -88,25 +94,45 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
     by_origin[groups.site[named]] = True
     apart = by_origin | (~passes_on & arrives & (has_stock | leaves))
     limit = _limits(network, item, book)
+    if lanes.departs is None:
+        days = undated_places(sites, origin, destination)
+    else:
+        limited = np.logical_or.reduce([limit[flow] != UNLIMITED for flow in FLOWS])
+        days = dated_places(
+            (origin, destination),
+            lanes,
+            stock,
+            groups,
+            apart_by_day=passes_on | limited,
+            today=cut_off_day(network.head),
+        )
     received = relevant & ~apart & (limit["received"] != UNLIMITED)
     sent = relevant & (apart | (limit["sent"] != UNLIMITED))
-    places = np.flatnonzero(relevant)
-    kept = np.zeros(sites, np.bool_)
-    kept[stock.kept_site] = True
-    tiers = np.flatnonzero(kept[stock.site])
-    single = np.flatnonzero(received | (apart & arrives & ~by_origin))
+    count = days.site.shape[0]
+    places = np.flatnonzero(relevant[days.site])
+    sending = np.flatnonzero(sent[days.site])
+    shelved = days.counts() > 1
+    shelved[stock.kept_site] = True
+    tiers = np.flatnonzero(shelved[stock.site])
+    single = np.flatnonzero((received | (apart & arrives & ~by_origin))[days.site])
     tagged = np.flatnonzero(by_origin[destination]) if by_origin.any() else np.zeros(0, np.int64)
-    pairs = np.unique(destination[tagged].astype(np.int64) * sites + origin[tagged])
+    pairs = np.unique(days.head[tagged].astype(np.int64) * sites + origin[tagged])
+    none = np.array([-1])
     blocks = [
-        (Side.ROOT, np.array([-1]), np.array([-1])),
-        (Side.IN, places, np.full(places.shape[0], -1)),
-        (Side.OUT, places, np.full(places.shape[0], -1)),
-        (Side.SENT, np.flatnonzero(sent), np.full(int(sent.sum()), -1)),
-        (Side.RECEIVED, single, np.full(single.shape[0], -1)),
-        (Side.RECEIVED, pairs // max(sites, 1), pairs % max(sites, 1)),
-        (Side.DEMAND, groups.site, np.arange(groups.site.shape[0])),
-        (Side.STOCK, stock.site[tiers], stock.number[tiers]),
-        (Side.KEEP, stock.kept_site, np.full(stock.kept_site.shape[0], -1)),
+        (Side.ROOT, none, none, none),
+        (Side.IN, days.site[places], places, None),
+        (Side.OUT, days.site[places], places, None),
+        (Side.SENT, days.site[sending], sending, None),
+        (Side.RECEIVED, days.site[single], single, None),
+        (
+            Side.RECEIVED,
+            days.site[pairs // max(sites, 1)],
+            pairs // max(sites, 1),
+            pairs % max(sites, 1),
+        ),
+        (Side.DEMAND, groups.site, None, np.arange(groups.site.shape[0])),
+        (Side.STOCK, stock.site[tiers], None, stock.number[tiers]),
+        (Side.KEEP, stock.kept_site, None, None),
     ]
     starts = np.cumsum([0] + [block[1].shape[0] for block in blocks])
     nodes = Nodes(
@@ -114,21 +140,24 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
             [np.full(block[1].shape[0], SIDES.index(block[0]), np.int8) for block in blocks]
         ),
         site=np.concatenate([block[1] for block in blocks]).astype(np.int32),
-        qualifier=np.concatenate([block[2] for block in blocks]).astype(np.int32),
+        qualifier=_filled([block[3] for block in blocks], starts).astype(np.int32),
+        place=_filled([block[2] for block in blocks], starts),
     )
     numbers = [np.arange(starts[at], starts[at + 1]) for at in range(len(blocks))]
 
-    def attached(at: int) -> IntArray:
-        found = np.full(sites, -1, np.int64)
-        found[blocks[at][1]] = numbers[at]
+    def attached(at: int, own: IntArray) -> IntArray:
+        found = np.full(count, -1, np.int64)
+        found[own] = numbers[at]
         return found
 
-    inside, outside, sent_at = (attached(at) for at in (1, 2, 3))
+    inside, outside = attached(1, places), attached(2, places)
+    sent_at = attached(3, sending)
     stock_at = np.full(stock.site.shape[0], -1, np.int64)
     stock_at[tiers] = numbers[7]
     arrivals = np.concatenate((numbers[4], numbers[5]))
     return Layout(
         nodes=nodes,
+        places=days,
         relevant=places,
         apart=apart,
         by_origin=by_origin,
@@ -141,8 +170,17 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
         demand=numbers[6],
         stock=stock_at,
         keep=numbers[8],
-        arrivals=(arrivals, nodes.site[arrivals], nodes.qualifier[arrivals]),
+        arrivals=(arrivals, nodes.place[arrivals], nodes.qualifier[arrivals]),
     )
+
+
+def _filled(columns: Sequence[IntArray | CodeArray | None], starts: IntArray) -> IntArray:
+    """Return columns one after the other, -1 where there is none; they begin at ``starts``."""
+    whole = np.full(int(starts[-1]), -1, np.int64)
+    for column, start, stop in zip(columns, starts[:-1], starts[1:], strict=True):
+        if column is not None:
+            whole[start:stop] = column
+    return whole
 
 
 def _closed_sites(network: Network, item: int, book: RuleBook) -> BoolArray:

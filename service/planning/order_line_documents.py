@@ -3,14 +3,16 @@
 import json
 from collections.abc import Mapping, Sequence
 
-from service.network.columns import Network
+from service.network.columns import Network, Texts
+from service.network.days import day_text, days_of
 from service.planning.amounts import Document, text, texts
-from service.planning.groups import IN_MONEY
+from service.planning.bounds import LaneBounds
+from service.planning.groups import IN_MONEY, NEVER
 from service.planning.order_lines import Share
 from service.planning.plan_lines import ItemPlan
 
 # Where a part of an order line comes from: site, lot and legs.
-_Source = tuple[int, str | None, tuple[int, ...]]
+_Source = tuple[int, str | None, tuple[int, ...], int]
 
 
 def order_line_documents(
@@ -38,6 +40,8 @@ def order_line_documents(
         sources,
         strict=True,
     )
+    dated = own.layout.places.day is not None
+    due = days_of(demand.due, absent=NEVER) if dated else None
     documents: dict[int, Document] = {}
     for at, (
         row,
@@ -66,14 +70,29 @@ def order_line_documents(
         if not exact:
             line["ordered"] = text(groups.row_exact.fraction(at) * item.step)
         line["sources"] = own_sources
+        if due is not None:
+            late = (path.arrives - due[row] for path, _ in shares.get(row, ()))
+            line["days_late"] = max(0, int(max(late, default=0)))
         documents[row] = line
-    for name, column in (("tags", demand.tags), ("extra", demand.extra)):
-        if column.values:
-            for row in rows:
-                value = column.text(row)
-                if value is not None:
-                    documents[row][name] = json.loads(value)
+    for name, column in (
+        ("earliest", demand.earliest),
+        ("due", demand.due),
+        ("latest", demand.latest),
+        ("tags", demand.tags),
+        ("extra", demand.extra),
+    ):
+        _echo(documents, name, column, plain=name not in {"tags", "extra"})
     return documents
+
+
+def _echo(documents: Mapping[int, Document], name: str, column: Texts, *, plain: bool) -> None:
+    """Put what a column says of order lines into their documents; it is JSON unless plain."""
+    if not column.values:
+        return
+    for row, document in documents.items():
+        value = column.text(row)
+        if value is not None:
+            document[name] = value if plain else json.loads(value)
 
 
 class _Sources:
@@ -84,10 +103,20 @@ class _Sources:
         own = plan.solved.own
         item = network.items[own.item]
         self._item, self._step, self._names = item.id, item.step, plan.names
+        self._dated = own.layout.places.day is not None
+        self._legs = {lane: self._leg(own.lanes, lane) for lane in plan.names}
         self._sites = [site.id for site in network.sites]
         lots = network.supply.lot
         codes = lots.codes[own.stock.rows].tolist()
         self._lots = [None if code < 0 else lots.values[code] for code in codes]
+
+    def _leg(self, lanes: LaneBounds, lane: int) -> Document:
+        """Return one leg as it is shown."""
+        leg: Document = {"lane": self._names[lane]}
+        if lanes.departs is not None and lanes.arrives is not None:
+            leg["departs"] = day_text(int(lanes.departs[lane]))
+            leg["arrives"] = day_text(int(lanes.arrives[lane]))
+        return leg
 
     def of(self, shares: Sequence[Sequence[Share]]) -> list[list[Document]]:
         """Return the sources of each order line, those alike in origin, lot and legs as one."""
@@ -102,17 +131,18 @@ class _Sources:
                     "item": self._item,
                     "lot": lot,
                     "quantity": next(quantities),
-                    "legs": [{"lane": self._names[leg]} for leg in legs],
+                    "legs": [dict(self._legs[leg]) for leg in legs],
+                    **({"arrives": day_text(arrives)} if self._dated else {}),
                 }
-                for site, lot, legs in own
+                for site, lot, legs, arrives in own
             ]
             for own in together
         ]
 
     def _together(self, shares: Sequence[Share]) -> dict[_Source, int]:
-        """Return the steps of one order line by origin, lot and legs."""
+        """Return the steps of one order line by origin, lot, legs and arrival."""
         together: dict[_Source, int] = {}
         for path, steps in shares:
-            key = (path.site, self._lots[path.row], path.legs)
+            key = (path.site, self._lots[path.row], path.legs, path.arrives)
             together[key] = together.get(key, 0) + steps
         return together

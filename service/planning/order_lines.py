@@ -23,7 +23,7 @@ def shares_of(
 ) -> dict[int, list[Share]]:
     """Return the shares of each order line, by its row in the network's demand.
 
-    Within a group, sources (by origin, lanes, stock row) and lines (by time of order, reference)
+    Within a group, sources (by arrival, origin, lanes, row) and lines (by time of order, reference)
     are walked side by side: at most one line for each source but the last is split, a line that
     equals what is left of a source takes it whole, and what is short falls on the last lines.
     ``names`` are those of the lanes in use, by position in ``LaneBounds.rows``.
@@ -35,7 +35,15 @@ def shares_of(
     for group, lines in _lines(network, groups).items():
         sources = waiting.get(group, [])
         if len(sources) > 1:
-            sources.sort(key=lambda path: (path.site, [names[leg] for leg in path.legs], path.row))
+            sources.sort(
+                key=lambda path: (
+                    path.arrives,
+                    path.site,
+                    [names[leg] for leg in path.legs],
+                    path.legs,
+                    path.row,
+                )
+            )
         at, left = 0, sources[0].steps if sources else 0
         for row, wanted in lines:
             missing = wanted

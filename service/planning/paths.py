@@ -12,6 +12,7 @@ from service.planning.solve import ItemFlow
 # What goods move on; the other arcs say where they come from and what is wanted.
 MOVING = (
     Kind.LANE,
+    Kind.DRAW,
     Kind.THROUGH,
     Kind.ARRIVE,
     Kind.LEAVE,
@@ -25,6 +26,7 @@ class Path(NamedTuple):
     """``steps`` of stock ``row`` (a position in ``Stock.rows``), over ``legs``, to ``group``.
 
     ``legs`` are positions in ``LaneBounds.rows``; none where goods are served where they lie.
+    ``arrives`` is the day on which they are served (0 without dates).
     """
 
     site: int
@@ -32,6 +34,7 @@ class Path(NamedTuple):
     legs: tuple[int, ...]
     group: int
     steps: int
+    arrives: int = 0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -52,18 +55,22 @@ def paths_of(solved: ItemFlow, *, lane_key: Callable[[list[int]], list[bytes]]) 
     its flow circles and belongs to no order line.
     """
     walker = _Walker(solved, lane_key)
-    paths: dict[tuple[int, int, tuple[int, ...], int], int] = {}
+    paths: dict[tuple[int, int, tuple[int, ...], int, int], int] = {}
+    layout, tier_of = solved.own.layout, solved.own.stock.row_tier.tolist()
+    shelves, first = layout.stock.tolist(), layout.places.first
     for site, row, steps in drawn_rows(solved):
         left = steps
+        shelf = shelves[tier_of[row]]
+        start = shelf if shelf >= 0 else int(layout.inside[first[site]])
         while left:
-            legs, group, amount = walker.walk(int(solved.own.layout.inside[site]), left)
-            key = (site, row, legs, group)
+            legs, group, arrives, amount = walker.walk(start, left)
+            key = (site, row, legs, group, arrives)
             paths[key] = paths.get(key, 0) + amount
             left -= amount
     return Paths(
         paths=tuple(
-            Path(site=site, row=row, legs=legs, group=group, steps=steps)
-            for (site, row, legs, group), steps in paths.items()
+            Path(site=site, row=row, legs=legs, group=group, steps=steps, arrives=arrives)
+            for (site, row, legs, group, arrives), steps in paths.items()
         ),
         circling=walker.lanes_left(),
     )
@@ -103,6 +110,7 @@ class _Walker:
         tail = own.arcs.tail[moving]
         order = np.lexsort((subject, rank, ~serves, tail))
         self._head = own.arcs.head[moving][order].tolist()
+        self._tail = tail[order]
         self._is_lane = (kind[order] == Kind.LANE).tolist()
         self._subject = subject[order].tolist()
         self._left = solved.flow[moving][order].tolist()
@@ -110,10 +118,13 @@ class _Walker:
         bounds = np.searchsorted(tail[order], np.arange(own.node_count + 1))
         self._next = bounds[:-1].tolist()
         self._circling: dict[int, int] = {}
+        self._arrives = solved.own.lanes.arrives
+        self._day = own.layout.places.day
+        self._place = own.layout.nodes.place
         self._wants = (own.layout.nodes.side == SIDES.index(Side.DEMAND)).tolist()
 
-    def walk(self, node: int, most: int) -> tuple[tuple[int, ...], int, int]:
-        """Take at most ``most`` steps from ``node`` to a group; return legs, group, steps."""
+    def walk(self, node: int, most: int) -> tuple[tuple[int, ...], int, int, int]:
+        """Take at most ``most`` steps from ``node`` to a group; return legs, group, day, steps."""
         while True:
             way, seen, loop_from = [], {node: 0}, UNLIMITED
             at = node
@@ -130,7 +141,12 @@ class _Walker:
             amount = min(most, *(self._left[arc] for arc in way))
             self._take(way, amount, circling=False)
             legs = tuple(self._subject[arc] for arc in way if self._is_lane[arc])
-            return legs, self._subject[way[-1]], amount
+            day = 0
+            if self._arrives is not None and legs:
+                day = int(self._arrives[legs[-1]])
+            elif self._day is not None:
+                day = int(self._day[self._place[self._tail[way[-1]]]])
+            return legs, self._subject[way[-1]], day, amount
 
     def lanes_left(self) -> dict[int, int]:
         """Return the flow of lanes that circles: taken as loops, or never reached from stock."""

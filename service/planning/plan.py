@@ -5,6 +5,8 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
+import numpy as np
+
 from service.network.columns import Network
 from service.network.currencies import minor_units
 from service.planning.amounts import Document, Measured, text
@@ -50,15 +52,16 @@ class _Tables:
     kept_short: list[tuple[tuple[int, int], Document]]
     site_use: list[tuple[tuple[int, int], Document]]
     quantities: list[Document]
-    references: dict[int, set[bytes]]
+    references: dict[tuple[int, int], set[bytes]]
     shortage_money: Fraction
+    late_money: Fraction
     circling: list[str]
 
 
 def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> PlanDocument:
     """Return the document of a plan from the flow of all items."""
     network = compiled.network
-    tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), [])
+    tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), Fraction(0), [])
     for flow in solved:
         _add_item(network, flow, tables, scale=compiled.cost_scale)
     scale = compiled.cost_scale
@@ -69,7 +72,7 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
         "transport": sum(line.transport for line in lines) / scale,
         "charges": sum(line.charges for line in lines) / scale,
         "shortage": tables.shortage_money,
-        "lateness": Fraction(0),
+        "lateness": tables.late_money,
     }
     cost = sum(parts.values(), Fraction(0))
     rounded = rounded_money(cost, str(network.head["currency"]))
@@ -177,9 +180,17 @@ def _totals(order_lines: list[Document], quantities: list[Document], setting: Se
         "lines_complete": complete,
         "lines_in_part": len(order_lines) - complete - none,
         "lines_none": none,
+        **_late_lines(order_lines),
         "set_aside": len(setting.set_aside),
         "quantities": quantities,
     }
+
+
+def _late_lines(order_lines: list[Document]) -> Document:
+    """Return how many lines come late, in a plan that shows dates."""
+    if not any("days_late" in line for line in order_lines):
+        return {}
+    return {"lines_late": sum(line["days_late"] > 0 for line in order_lines)}
 
 
 def _add_item(network: Network, flow: ItemFlow, tables: _Tables, *, scale: Fraction) -> None:
@@ -188,12 +199,13 @@ def _add_item(network: Network, flow: ItemFlow, tables: _Tables, *, scale: Fract
     groups, item = flow.own.groups, network.items[flow.own.item]
     shares = shares_of(network, groups, plan.paths.paths, names=plan.name_bytes())
     served = dict.fromkeys(groups.rows.tolist(), 0)
-    references = network.demand.reference.tolist()
+    references, departs = network.demand.reference.tolist(), flow.own.lanes.departs
     for row, own_shares in shares.items():
         served[row] = sum(share.steps for share in own_shares)
         for share in own_shares:
             for leg in share.path.legs:
-                tables.references.setdefault(plan.rows[leg], set()).add(references[row])
+                on_day = plan.rows[leg], 0 if departs is None else int(departs[leg])
+                tables.references.setdefault(on_day, set()).add(references[row])
     tables.plans.append(plan)
     tables.order_lines.update(order_line_documents(network, plan, shares, served))
     lines, kept = shortage_rows(network, flow, served=served)
@@ -203,6 +215,7 @@ def _add_item(network: Network, flow: ItemFlow, tables: _Tables, *, scale: Fract
         (steps * groups.money.fraction(group) for group, steps in flow.amounts(Kind.SHORT).items()),
         Fraction(0),
     )
+    tables.late_money += _late_money(flow)
     tables.site_use.extend(_site_use(network, flow))
     tables.circling.extend(plan.names[lane] for lane in plan.paths.circling)
     wanted = sum(groups.row_steps.tolist())
@@ -218,6 +231,27 @@ def _add_item(network: Network, flow: ItemFlow, tables: _Tables, *, scale: Fract
                 "weight_kg": Measured().plus(goes, item.weight_kg).text,
             }
         )
+
+
+def _late_money(flow: ItemFlow) -> Fraction:
+    """Return what lateness of one item costs in money."""
+    own = flow.own
+    if not own.days_late.any():
+        return Fraction(0)
+    late = np.flatnonzero(own.days_late)
+    late = late[flow.flow[late] > 0]
+    return sum(
+        (
+            steps * days * own.groups.late_money.fraction(group)
+            for steps, days, group in zip(
+                flow.flow[late].tolist(),
+                own.days_late[late].tolist(),
+                own.subject[late].tolist(),
+                strict=True,
+            )
+        ),
+        Fraction(0),
+    )
 
 
 def _site_use(network: Network, flow: ItemFlow) -> list[tuple[tuple[int, int], Document]]:

@@ -8,6 +8,7 @@ from typing import NamedTuple
 import numpy as np
 
 from service.network.columns import IntArray, Network
+from service.network.days import day_text
 from service.network.naming import lane_names
 from service.planning.amounts import texts
 from service.planning.arcs import Kind, MoneyArray
@@ -21,7 +22,8 @@ class PlanLine(NamedTuple):
     """One item on one lane, or (``lane`` None) served where it lies.
 
     ``row`` is the lane's row in the network, -1 without a lane. ``steps`` are those of the item;
-    money is scaled (``Compiled.cost_scale``), ``rate`` the transport of one step.
+    money is scaled (``Compiled.cost_scale``), ``rate`` the transport of one step. ``departs`` and
+    ``arrives`` are days, 0 where there are none.
     """
 
     row: int
@@ -34,6 +36,19 @@ class PlanLine(NamedTuple):
     supply: int
     handling: int
     charges: int
+    departs: int = 0
+    arrives: int = 0
+
+    @property
+    def cost(self) -> int:
+        """Return all that it costs."""
+        return self.transport + self.supply + self.handling + self.charges
+
+    def dates(self) -> dict[str, object]:
+        """Return both dates as they are shown; goods that are used where they lie have none."""
+        if not self.departs:
+            return {"departs": None, "arrives": None}
+        return {"departs": day_text(self.departs), "arrives": day_text(self.arrives)}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -109,6 +124,10 @@ def _lines(  # noqa: PLR0913 - what a line says comes from all of these
         own.arcs.cost[lanes].tolist(),
         _charges(solved, lanes, scale),
         on_lanes.items(),
+        *(
+            [0] * len(rows) if days is None else days[lanes].tolist()
+            for days in (own.lanes.departs, own.lanes.arrives)
+        ),
         strict=True,
     )
     lines = [
@@ -123,8 +142,10 @@ def _lines(  # noqa: PLR0913 - what a line says comes from all of these
             drawn.get(lane, 0),
             steps * handling[origin] + used_up.get(lane, 0) * handling[destination],
             steps * charge,
+            departs,
+            arrives,
         )
-        for row, origin, destination, rate, charge, (lane, steps) in columns
+        for row, origin, destination, rate, charge, (lane, steps), departs, arrives in columns
     ]
     lines += [
         PlanLine(-1, None, site, site, steps, 0, 0, money, steps * handling[site], 0)
@@ -149,7 +170,8 @@ def _stock_costs(solved: ItemFlow) -> dict[int, int]:
 
 def _handling(solved: ItemFlow) -> dict[int, int]:
     """Return the scaled cost of a step that passes a site, by site."""
-    return _costs(solved, Kind.THROUGH)
+    site_of = solved.own.layout.places.site
+    return {int(site_of[place]): cost for place, cost in _costs(solved, Kind.THROUGH).items()}
 
 
 def _costs(solved: ItemFlow, kind: Kind) -> dict[int, int]:
@@ -163,15 +185,15 @@ def _costs(solved: ItemFlow, kind: Kind) -> dict[int, int]:
 def plan_line_documents(
     network: Network, plans: Sequence[ItemPlan], scale: Fraction, *, complete: Completing | None
 ) -> list[dict[str, object]]:
-    """Return the table ``plan_lines``, sorted by origin, destination, item and lane.
+    """Return the table ``plan_lines``, sorted by origin, destination, item, departure, lane.
 
     ``complete`` adds to the lines of one item what only some networks have.
     """
     sites = [site.id for site in network.sites]
-    keyed: list[tuple[tuple[int, int, int, bytes], dict[str, object]]] = []
+    keyed: list[tuple[tuple[int, int, int, int, bytes], dict[str, object]]] = []
     for plan in plans:
         item, lines = network.items[plan.solved.own.item], plan.lines
-        money = 1 / scale
+        money, dated = 1 / scale, plan.solved.own.layout.places.day is not None
         columns = zip(
             lines,
             texts([line.steps for line in lines], item.step),
@@ -180,19 +202,26 @@ def plan_line_documents(
             texts([line.supply for line in lines], money),
             texts([line.handling for line in lines], money),
             texts([line.charges for line in lines], money),
-            texts([sum(line[-4:]) for line in lines], money),
+            texts([line.cost for line in lines], money),
             strict=True,
         )
         own = [
             (
                 line,
-                (line.origin, line.destination, plan.solved.own.item, (line.lane or "").encode()),
+                (
+                    line.origin,
+                    line.destination,
+                    plan.solved.own.item,
+                    line.departs,
+                    (line.lane or "").encode(),
+                ),
                 {
                     "lane": line.lane,
                     "origin": sites[line.origin],
                     "destination": sites[line.destination],
                     "item": item.id,
                     "quantity": quantity,
+                    **(line.dates() if dated else {}),
                     "unit_cost": unit_cost,
                     "transport_cost": transport,
                     "supply_cost": supply,

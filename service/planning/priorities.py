@@ -11,10 +11,14 @@ from service.planning.solve import ItemFlow
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Achieved:
-    """Steps short by priority (ascending) and the scaled money of one item."""
+    """Steps short by priority (ascending), weighted lateness and scaled money of one item.
+
+    ``late`` is the sum of steps, days and weights; None where nothing could be late.
+    """
 
     short: tuple[tuple[int, int], ...]
     money: int
+    late: int | None = None
 
 
 def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
@@ -36,6 +40,7 @@ def achieved(solved: ItemFlow, *, shortages: bool) -> Achieved:
         if shortages
         else (),
         money=product_total(solved.flow, own.arcs.cost),
+        late=product_total(solved.flow, own.late_weight) if own.late_base else None,
     )
 
 

@@ -1,10 +1,10 @@
 """Why an order line is short: the one reason that a planner can act on, and who went first.
 
-The reasons that need no dates, in the order in which they are tried for a demand group (or kept
-stock) that is short by s:
+The reasons in the order in which they are tried for a demand group (or kept stock) that is short:
 
 ``no_lane``      no way leads from any stock to it, capacities ignored and closures open.
-``closed``       ways lead to it, but only through closures.
+``too_late``     ways lead to it, but on none of them goods arrive within its dates.
+``closed``       ways lead to it, but only through closures or departures that closed.
 Then: could it be served in full if no other demand counted? All minimums still hold.
 If so:
 ``not_worth_it`` it competes in money and could be served without taking from a priority, only for
@@ -35,6 +35,7 @@ class Reason(StrEnum):
 
     NO_LANE = "no_lane"
     CLOSED = "closed"
+    TOO_LATE = "too_late"
     NO_STOCK = "no_stock"
     LANE_FULL = "lane_full"
     SITE_FULL = "site_full"
@@ -66,7 +67,7 @@ class Reasons:
         if not bool(self._own.stock.steps.any()):
             return Reason.NO_STOCK
         if not self._reached_open[node]:
-            return Reason.NO_LANE
+            return Reason.TOO_LATE if self._in_time_some_day(short_arc) else Reason.NO_LANE
         if not self._reached[node]:
             return Reason.CLOSED
         want = int(self._arcs.minimum[self.bottlenecks.want_of[node]])
@@ -81,6 +82,29 @@ class Reasons:
             if lifted > alone and more is None:
                 more = relief
         return more or Reason.NO_STOCK
+
+    def _in_time_some_day(self, short_arc: int) -> bool:
+        """Return whether stock could come to a demand if dates did not matter."""
+        own, layout = self._own, self._own.layout
+        if layout.places.day is None or own.kind[short_arc] != Kind.SHORT:
+            return False
+        group = int(own.subject[short_arc])
+        allowed = own.groups.origins[group]
+        sites = layout.passes_on.shape[0]
+        stocked = np.zeros(sites, np.bool_)
+        stocked[own.stock.site[own.stock.steps > 0]] = True
+        if allowed is not None:
+            stocked &= np.isin(np.arange(sites), list(allowed))
+        origin = layout.nodes.site[self._arcs.tail[self._lanes]]
+        destination = layout.nodes.site[self._arcs.head[self._lanes]]
+        reached = stocked.copy()
+        while True:
+            # What arrives leaves again only at a cross-dock.
+            sending = stocked | (reached & layout.passes_on)
+            fresh = destination[sending[origin] & ~reached[destination]]
+            if fresh.shape[0] == 0:
+                return bool(reached[own.groups.site[group]])
+            reached[fresh] = True
 
     def _could_be_paid_for(self, short_arc: int) -> bool:
         """Return whether a line that competes in money could have more, only not at its worth.
@@ -166,7 +190,8 @@ class Reasons:
         shut = np.zeros(len(self._arcs), np.bool_)
         shut[self._lanes] = own.lanes.closed
         at_site = own.of_kind(Kind.THROUGH, Kind.PASS)
-        shut[at_site] = own.layout.closed[own.subject[at_site]]
+        site_of = own.layout.places.site
+        shut[at_site] = own.layout.closed[site_of[own.subject[at_site]]]
         serving = own.of_kind(Kind.SERVE_ARRIVED)
         shut[serving] = own.layout.closed[own.groups.site[own.subject[serving]]]
         return shut

@@ -53,8 +53,9 @@ def _binds(entry: Entry, flow: ItemFlow, gain: IntArray) -> bool:
     if isinstance(rule, Throughput):
         kind = {"received": Kind.ARRIVE, "sent": Kind.LEAVE, "through": Kind.THROUGH}[rule.flow]
         arcs = own.of_kind(kind)
-        arcs = arcs[entry.sites[own.subject[arcs]]]
-        limit = own.layout.limit[rule.flow][own.subject[arcs]]
+        site = own.layout.places.site[own.subject[arcs]]
+        arcs, site = arcs[entry.sites[site]], site[entry.sites[site]]
+        limit = own.layout.limit[rule.flow][site]
         return bool((flow.flow[arcs] == limit).any())
     picked = entry.lanes[own.lanes.rows]
     on_lanes = gain[: picked.shape[0]][picked]
@@ -63,4 +64,5 @@ def _binds(entry: Entry, flow: ItemFlow, gain: IntArray) -> bool:
     if bool((on_lanes < 0).any()):
         return True
     arcs = own.of_kind(Kind.THROUGH, Kind.PASS)
-    return bool((gain[arcs[entry.sites[own.subject[arcs]]]] < 0).any())
+    site = own.layout.places.site[own.subject[arcs]]
+    return bool((gain[arcs[entry.sites[site]]] < 0).any())

@@ -5,6 +5,7 @@ from collections.abc import Mapping
 import numpy as np
 
 from service.network.columns import Network
+from service.network.days import cut_off_day, day_text
 from service.planning.amounts import text
 from service.planning.arcs import Kind
 from service.planning.groups import IN_MONEY
@@ -33,7 +34,7 @@ def shortage_rows(
     outranking = Outranking(network, solved, reasons.bottlenecks, served=served)
 
     def because(arc: int, reason: Reason, itself: int | None) -> Row:
-        row: Row = {"reason": reason.value, "next_chance": None}
+        row: Row = {"reason": reason.value, "next_chance": _next_chance(network, solved, reason)}
         if reason == Reason.OUTRANKED:
             largest = outranking.ahead_of(arc, itself=itself)
             if largest is not None:
@@ -76,3 +77,12 @@ def shortage_rows(
             **because(arc, reason, at if served[demand_row] else None),
         }
     return lines, kept
+
+
+def _next_chance(network: Network, solved: ItemFlow, reason: Reason) -> str | None:
+    """Return when more stock of the item comes, where that is what is missing."""
+    if reason not in {Reason.NO_STOCK, Reason.TOO_LATE, Reason.OUTRANKED}:
+        return None
+    stock, today = solved.own.stock, cut_off_day(network.head)
+    later = stock.from_day[(stock.from_day > today) & (stock.steps > 0)]
+    return day_text(int(later.min())) if later.shape[0] else None

@@ -7,6 +7,7 @@ from fractions import Fraction
 import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Item, Network, Texts
+from service.network.days import days_of
 from service.network.money import factors
 from service.network.units import item_units
 from service.planning.arcs import SAFE, largest
@@ -20,7 +21,8 @@ class Stock:
 
     ``rows`` are positions in the network's supply, ``row_tier`` their tier, ``row_steps`` what
     each adds to its site in whole steps. Tiers: ``site``, ``number`` (1-based at its site),
-    ``steps`` and ``money`` per step. Kept rows: ``kept_site``, ``kept_steps``, ``kept_priority``.
+    ``steps``, ``money`` per step and ``from_day``, the first day on which it can be drawn (0: any).
+    Kept rows: ``kept_site``, ``kept_steps``, ``kept_priority``.
     """
 
     rows: IntArray
@@ -30,6 +32,7 @@ class Stock:
     number: CodeArray
     steps: IntArray
     money: Rationals
+    from_day: IntArray
     kept_site: CodeArray
     kept_steps: IntArray
     kept_priority: CodeArray
@@ -59,7 +62,8 @@ def stock_of(network: Network, item: int) -> Stock:
         ),
     )
     new_site = _changes(site)
-    new_tier = new_site | _changes(money.on(money.grid() or Fraction(1)))
+    from_day = days_of(supply.available_from, absent=0)[rows]
+    new_tier = new_site | _changes(money.on(money.grid() or Fraction(1))) | _changes(from_day)
     new_tier |= _changes(supply.currency.codes[rows])
     row_tier = np.cumsum(new_tier) - 1
     first = np.flatnonzero(new_tier)
@@ -88,6 +92,7 @@ def stock_of(network: Network, item: int) -> Stock:
         number=(np.arange(first.shape[0]) - first_of_site + 1).astype(np.int32),
         steps=steps,
         money=money.at(first),
+        from_day=from_day[first],
         kept_site=site[kept],
         kept_steps=kept_steps[whole],
         kept_priority=supply.keep_priority[rows][kept],

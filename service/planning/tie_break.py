@@ -6,6 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.network.columns import IntArray, Network
+from service.network.days import day_text
 from service.network.naming import encoded, lane_names
 from service.planning.arcs import SIDES, Kind, Side
 from service.planning.item_network import ItemNetwork
@@ -48,11 +49,22 @@ class ItemTieBreak:
         own = self.own
         kinds, subjects = own.kind[positions], own.subject[positions]
         lanes = np.flatnonzero(kinds == Kind.LANE)
-        names = lane_names(self.network, own.lanes.rows[subjects[lanes]])
+        names = [
+            name + self._on_day(lane)
+            for lane, name in zip(
+                subjects[lanes].tolist(),
+                lane_names(self.network, own.lanes.rows[subjects[lanes]]),
+                strict=True,
+            )
+        ]
         said = np.isin(kinds, [Kind.SUPPLY, Kind.SHORT, Kind.KEEP_SHORT])
         serving = np.flatnonzero(np.isin(kinds, [Kind.SERVE, Kind.SERVE_ARRIVED]))
-        # Elsewhere who serves a group follows from what is short.
-        said[serving] = own.layout.apart[own.groups.site[subjects[serving]]]
+        # Elsewhere who serves a group follows from what is short, and when from who.
+        several = own.layout.places.counts() > 1
+        site = own.groups.site[subjects[serving]]
+        said[serving] = own.layout.apart[site] | several[site]
+        drawing = np.flatnonzero(kinds == Kind.DRAW)
+        said[drawing] = several[own.stock.site[subjects[drawing]]]
         others = np.flatnonzero(said)
         return np.concatenate((lanes, others)), [
             *(("lane", name) for name in names),
@@ -71,13 +83,33 @@ class ItemTieBreak:
         """Return (kind, id) of an arc that is no lane."""
         own = self.own
         if kind == Kind.SUPPLY:
-            return "supply", f"{self._site(own.stock.site[subject])}#{own.stock.number[subject]}"
+            return "supply", self._tier(subject)
+        if kind == Kind.DRAW:
+            return "draw", f"{self._tier(subject)}@{self._date(int(own.arcs.head[position]))}"
         if kind == Kind.SHORT:
             return "short", self._group(subject)
         if kind == Kind.KEEP_SHORT:
             return "short", f"{self._site(own.stock.kept_site[subject])}#keep"
         site = int(own.groups.site[subject])
-        return "serve", f"{self._group(subject)}#{self._origin(position, site)}"
+        day = f"@{self._date(int(own.arcs.tail[position]))}" if self._has_days(site) else ""
+        return "serve", f"{self._group(subject)}#{self._origin(position, site)}{day}"
+
+    def _on_day(self, lane: int) -> str:
+        """Return what tells a lane from itself on other days; nothing where there are none."""
+        lanes = self.own.lanes
+        near = [at for at in (lane - 1, lane + 1) if 0 <= at < lanes.rows.shape[0]]
+        if lanes.departs is None or all(lanes.rows[at] != lanes.rows[lane] for at in near):
+            return ""
+        return f"@{day_text(int(lanes.departs[lane]))}"
+
+    def _has_days(self, site: int) -> bool:
+        """Return whether a site has several places."""
+        return len(self.own.layout.places.of_site(site)) > 1
+
+    def _date(self, node: int) -> str | None:
+        """Return the date of a node that belongs to a place."""
+        layout = self.own.layout
+        return layout.places.date_of(int(layout.nodes.place[node]))
 
     def _origin(self, position: int, site: int) -> str:
         """Return whose goods a serving arc brings: the site's own, or those of an origin."""
@@ -86,6 +118,11 @@ class ItemTieBreak:
         if nodes.side[tail] != _RECEIVED:
             return self._site(site)
         return self._site(nodes.qualifier[tail]) if nodes.qualifier[tail] >= 0 else ""
+
+    def _tier(self, tier: int) -> str:
+        """Return the id of a tier: its site and its number."""
+        stock = self.own.stock
+        return f"{self._site(stock.site[tier])}#{stock.number[tier]}"
 
     def _group(self, group: int) -> str:
         """Return the id of a group: its site and its label."""

@@ -6,7 +6,7 @@ of the item. Every lane that the item can use has its arc, also one that no solv
 """
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import partial
 from typing import Literal, NamedTuple
@@ -16,7 +16,7 @@ import numpy as np
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
 from service.proof.exact import Whole, joined, magnitude, whole
-from service.proof.groups import Group, Wanted, wanted_of
+from service.proof.groups import Group, Late, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
 from service.proof.sides import UNLIMITED, SiteSides, site_sides
 from service.proof.stock import Stock, stock_of
@@ -87,6 +87,7 @@ class ItemArcs:
     ``rows`` are the usable lanes (shape (lanes,), ascending), which are the first arcs; ``arcs``
     are the others. ``lane_tail`` and ``lane_head`` are positions in ``nodes``, of which the root is
     the first. ``others`` are ``arcs`` as columns. ``priorities`` are those that occur, ascending.
+    ``late`` has what comes late, by position in ``arcs``; its money is part of the arc's.
     """
 
     item: int
@@ -102,6 +103,7 @@ class ItemArcs:
     priorities: tuple[int, ...]
     stock: Mapping[int, Stock]
     wanted: Wanted
+    late: Mapping[int, Late] = field(default_factory=dict)
 
     def tails(self) -> CodeArray:
         """Return the node that each arc leaves, lanes first."""
@@ -177,7 +179,7 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
         lane_head=head,
         limits=limits,
         arcs=tuple(build.arcs),
-        others=_as_columns(build.arcs),
+        others=as_columns(build.arcs),
         # Node itself would be called through Python; this makes the same thing of each tuple.
         nodes=tuple(map(partial(tuple.__new__, Node), build.place)),
         place=build.place,
@@ -187,7 +189,7 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
     )
 
 
-def _as_columns(arcs: Sequence[Arc]) -> Part:
+def as_columns(arcs: Sequence[Arc]) -> Part:
     """Return ends and limits of arcs that are no lanes as columns."""
     return Part(
         np.array([arc.tail for arc in arcs], dtype=np.int32),

@@ -24,20 +24,24 @@ def check_bounds(  # noqa: PLR0913 - the claims stand in two documents
     For one network a feasible flow without contradictions is optimal in every step, so that each
     bound is what was achieved and the gap is 0.
     """
-    expected: list[tuple[str, int | None, Fraction]] = []
+    expected: list[tuple[str, int | str, Fraction]] = []
     for result in results:
         item = network.items[result.item].id
         if shortages:
             for priority, steps in result.short_by_priority.items():
                 expected.append((item, priority, steps * result.step))
-        expected.append((item, None, sum(result.money.values(), Fraction(0))))
+        if result.late is not None:
+            expected.append((item, "lateness", result.late * result.step))
+        expected.append((item, "cost", sum(result.money.values(), Fraction(0))))
     steps = certificate["steps"]
-    stated = [(step["item"], step.get("priority"), amount(step["achieved"])) for step in steps]
+    stated = [
+        (step["item"], step.get("priority", step["of"]), amount(step["achieved"])) for step in steps
+    ]
     if stated != expected:
         findings.add("bound_wrong", "the steps are not what was achieved", place="/steps")
     if any(amount(step["bound"]) != amount(step["achieved"]) for step in steps):
         findings.add("bound_wrong", "a bound is not what was achieved", place="/steps")
-    total = sum((money for _, priority, money in expected if priority is None), Fraction(0))
+    total = sum((money for _, of, money in expected if of == "cost"), Fraction(0))
     for place, value in (
         ("/total_cost", certificate["total_cost"]),
         ("/lower_bound", certificate["lower_bound"]),

@@ -25,6 +25,7 @@ _TEXT_OR_NULL = or_null(is_text)
 _EMPTY = one_of([])
 _AMOUNT_OR_UNKNOWN: Shape = lambda value: None if value == "unknown" else is_amount(value)  # noqa: E731 - one line says it
 
+_DATES: Final = {"departs": is_text, "arrives": is_text}
 _COST_PARTS = ("supply", "handling", "transport", "charges", "shortage", "lateness")
 _PLAN_LINE = record(
     {
@@ -41,6 +42,8 @@ _PLAN_LINE = record(
         "cost": is_amount,
     },
     {
+        "departs": _TEXT_OR_NULL,
+        "arrives": _TEXT_OR_NULL,
         "stated": record({"currency": is_text, "transport_cost": is_amount}),
         "charge_parts": list_of(
             record(
@@ -65,8 +68,9 @@ _SOURCE = record(
         "item": is_text,
         "lot": _TEXT_OR_NULL,
         "quantity": is_amount,
-        "legs": list_of(record({"lane": is_text})),
-    }
+        "legs": list_of(record({"lane": is_text}, _DATES)),
+    },
+    {"arrives": is_text},
 )
 _ORDER_LINE = record(
     {
@@ -83,6 +87,10 @@ _ORDER_LINE = record(
     {
         "shortage_cost": is_amount,
         "ordered": is_amount,
+        "earliest": is_text,
+        "due": is_text,
+        "latest": is_text,
+        "days_late": is_count,
         "tags": list_of(is_text),
         "extra": is_texts,
     },
@@ -98,7 +106,8 @@ _CONSIGNMENT = record(
         "volume_m3": _AMOUNT_OR_UNKNOWN,
         "cost": is_amount,
         "order_references": list_of(is_text),
-    }
+    },
+    _DATES,
 )
 _SHORTAGE = record(
     {
@@ -108,7 +117,7 @@ _SHORTAGE = record(
         "priority": or_null(is_count),
         "quantity": is_amount,
         "reason": is_text,
-        "next_chance": one_of(None),
+        "next_chance": _TEXT_OR_NULL,
     },
     {"outranked_by": is_any_object, "kept": one_of(True)},  # noqa: FBT003 - the value that JSON may have,
 )
@@ -188,7 +197,9 @@ _PLANNED = record(
         "total_cost_rounded": is_amount,
         "rounding_difference": is_amount,
         "cost_parts": record(dict.fromkeys(_COST_PARTS, is_amount)),
-        "totals": record({**_PLAN_LINES_COUNTS, "quantities": list_of(_QUANTITIES)}),
+        "totals": record(
+            {**_PLAN_LINES_COUNTS, "quantities": list_of(_QUANTITIES)}, {"lines_late": is_count}
+        ),
         "plan_lines": list_of(_PLAN_LINE),
         "order_lines": list_of(_ORDER_LINE),
         "consignments": list_of(_CONSIGNMENT),
@@ -219,7 +230,9 @@ _NO_PLAN = record(
     }
 )
 
-_AT_TIER = record({"site": is_text, "tier": is_count, "quantity": is_amount})
+# Where dates matter, a place is a site on a day.
+_DAY: Final = {"day": is_text}
+_AT_TIER = record({"site": is_text, "tier": is_count, "quantity": is_amount}, _DAY)
 _ITEM_PROOF = record(
     {
         "item": is_text,
@@ -234,11 +247,12 @@ _ITEM_PROOF = record(
                     "from": one_of("out", "received"),
                     "origin": _TEXT_OR_NULL,
                     "quantity": is_amount,
-                }
+                },
+                _DAY,
             )
         ),
         "passes": list_of(
-            record({"site": is_text, "origin": _TEXT_OR_NULL, "quantity": is_amount})
+            record({"site": is_text, "origin": _TEXT_OR_NULL, "quantity": is_amount}, _DAY)
         ),
         "shortages": list_of(
             record({"site": is_text, "group": _TEXT_OR_NULL, "quantity": is_amount})
@@ -250,10 +264,12 @@ _ITEM_PROOF = record(
                     "side": one_of(*SIDES),
                     "qualifier": _TEXT_OR_NULL,
                     "price": is_whole,
-                }
+                },
+                _DAY,
             )
         ),
-    }
+    },
+    {"late_base": is_whole},
 )
 _SHORTAGE_STEP = record(
     {
@@ -265,13 +281,13 @@ _SHORTAGE_STEP = record(
     }
 )
 _COST_STEP = record(
-    {"item": is_text, "of": one_of("cost"), "achieved": is_amount, "bound": is_amount}
+    {"item": is_text, "of": one_of("cost", "lateness"), "achieved": is_amount, "bound": is_amount}
 )
 _CUT = record(
     {
         "item": is_text,
         "nodes": list_of(
-            record({"site": is_text, "side": one_of(*SIDES), "qualifier": _TEXT_OR_NULL})
+            record({"site": is_text, "side": one_of(*SIDES), "qualifier": _TEXT_OR_NULL}, _DAY)
         ),
         "root": is_flag,
         "forced_out": is_amount,
@@ -290,7 +306,7 @@ _CERTIFICATE_HEAD: dict[str, Shape] = {
 
 def _step(value: object) -> str | None:
     """Accept a step of shortage or of cost."""
-    costs = isinstance(value, dict) and value.get("of") == "cost"
+    costs = isinstance(value, dict) and value.get("of") != "shortage"
     return _COST_STEP(value) if costs else _SHORTAGE_STEP(value)
 
 

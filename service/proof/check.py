@@ -14,11 +14,12 @@ import numpy as np
 from service.network.canonical import canonical_json, digest, network_digest
 from service.network.columns import Network
 from service.network.options import Options
-from service.proof.arcs import item_arcs
 from service.proof.bounds import check_bounds
+from service.proof.calendar import Calendar, calendar_of
 from service.proof.certificate import certificate_shape, plan_shape
 from service.proof.consignments import check_consignments
 from service.proof.cuts import check_cuts
+from service.proof.dated_arcs import arcs_of
 from service.proof.feasibility import check_feasibility
 from service.proof.flows import Names, PlanLine, item_flows
 from service.proof.heads import check_heads, check_rules_listed
@@ -80,7 +81,8 @@ def check_documents(  # noqa: PLR0913 - what a proof is about comes in four docu
     check_heads(network, plan, certificate, digests=digests, findings=findings)
     rulings = Rulings.of(network)
     check_rules_listed(network, rulings, plan["rules_in_force"], findings)
-    names = Names(network)
+    calendar = calendar_of(network)
+    rulings = rulings.over(calendar.lane) if calendar.dated else rulings
     try:
         _check_limits_are_clear(network)
     except UnusableNetworkError as error:
@@ -90,9 +92,9 @@ def check_documents(  # noqa: PLR0913 - what a proof is about comes in four docu
         findings.add("bound_wrong", "plan and certificate are about different answers")
     elif plan["status"] == "no_plan":
         cuts = certificate["cuts"]
-        check_cuts(network, options, rulings, cuts, names=names, findings=findings)
+        check_cuts(options, rulings, cuts, names=Names(calendar), findings=findings)
     else:
-        _check_planned(network, options, rulings, plan, certificate, findings=findings)
+        _check_planned(calendar, options, rulings, plan, certificate, findings=findings)
 
 
 def _check_limits_are_clear(network: Network) -> None:
@@ -108,7 +110,7 @@ def _check_limits_are_clear(network: Network) -> None:
 
 
 def _check_planned(  # noqa: PLR0913 - see check_documents
-    network: Network,
+    calendar: Calendar,
     options: Options,
     rulings: Rulings,
     plan: Mapping[str, Any],
@@ -117,7 +119,7 @@ def _check_planned(  # noqa: PLR0913 - see check_documents
     findings: Findings,
 ) -> None:
     """Note what is wrong with a plan that serves something."""
-    names = Names(network)
+    network, names = calendar.network, Names(calendar)
     lines = names.plan_lines(plan["plan_lines"], findings)
     proofs = certificate["items"]
     if [proof["item"] for proof in proofs] != [item.id for item in network.items]:
@@ -136,7 +138,6 @@ def _check_planned(  # noqa: PLR0913 - see check_documents
             by_item[line.item].append(line)
     for item, proof in enumerate(proofs):
         result = _check_item(
-            network,
             options,
             rulings,
             by_item[item],
@@ -148,11 +149,10 @@ def _check_planned(  # noqa: PLR0913 - see check_documents
         if result is not None:
             results.append(result)
     if len(results) == len(network.items):
-        _check_tables(network, options, rulings, results, lines, plan, certificate, findings)
+        _check_tables(calendar, options, rulings, results, lines, plan, certificate, findings)
 
 
 def _check_item(  # noqa: PLR0913 - see check_documents
-    network: Network,
     options: Options,
     rulings: Rulings,
     lines: Sequence[PlanLine],
@@ -163,8 +163,9 @@ def _check_item(  # noqa: PLR0913 - see check_documents
     findings: Findings,
 ) -> ItemResult | None:
     """Note what is wrong with one item; return what its flow comes to, if it can be read."""
+    network = names.calendar.network
     try:
-        arcs = item_arcs(network, options, rulings, names.items[proof["item"]])
+        arcs = arcs_of(names.calendar, options, rulings, names.items[proof["item"]])
         check_costs_known(network, arcs.item, arcs.rows)
     except UnusableNetworkError as error:
         findings.add("network_unusable", str(error), place=proof["item"])
@@ -178,7 +179,7 @@ def _check_item(  # noqa: PLR0913 - see check_documents
 
 
 def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
-    network: Network,
+    calendar: Calendar,
     options: Options,
     rulings: Rulings,
     results: Sequence[ItemResult],
@@ -188,15 +189,15 @@ def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
     findings: Findings,
 ) -> None:
     """Note what is wrong with totals, bounds and tables, whose items are all known."""
-    allowed = options.shortages == "allow"
+    allowed, network = options.shortages == "allow", calendar.network
     check_bounds(network, results, plan, certificate, shortages=allowed, findings=findings)
-    check_site_limits(network, rulings, results, findings)
+    check_site_limits(calendar, rulings, results, findings)
     check_site_use(network, results, plan["site_use"], findings)
-    check_totals(network, results, plan, findings)
-    paths = check_order_lines(network, results, lines, plan["order_lines"], findings)
+    check_totals(calendar, results, plan, findings)
+    paths = check_order_lines(calendar, results, lines, plan["order_lines"], findings)
     if paths is None:
         return
     check_shortages(network, results, plan, findings)
     check_plan_lines(network, results, lines, paths, findings)
     check_stated(network, results, lines, plan, findings)
-    check_consignments(network, results, lines, paths, plan["consignments"], findings=findings)
+    check_consignments(calendar, results, lines, paths, plan["consignments"], findings=findings)

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import Item, Network
-from service.network.naming import lane_names
+from service.proof.calendar import Calendar
 from service.proof.flows import PlanLine
 from service.proof.numbers import numbers, numbers_of, together
 from service.proof.order_lines import Paths
@@ -21,7 +21,7 @@ _FIELDS = ("pallets", "weight_kg", "volume_m3")
 
 
 def check_consignments(  # noqa: PLR0913 - a consignment repeats something of everything
-    network: Network,
+    calendar: Calendar,
     results: Sequence[ItemResult],
     lines: Sequence[PlanLine],
     paths: Paths,
@@ -30,6 +30,7 @@ def check_consignments(  # noqa: PLR0913 - a consignment repeats something of ev
     findings: Findings,
 ) -> None:
     """Note when consignments are not what plan lines put on each lane, in the lanes' order."""
+    network = calendar.network
     lanes = network.lanes
     loads: dict[int, list[tuple[int, int]]] = {}
     for result in results:
@@ -50,7 +51,11 @@ def check_consignments(  # noqa: PLR0913 - a consignment repeats something of ev
     stated = numbers([entry["cost"] for entry in documents])
     # What is stated beside what should be, a column at a time: most are right as a whole.
     columns: list[tuple[list[Any], list[Any]]] = [
-        ([entry["lane"] for entry in documents], lane_names(network, at)),
+        ([entry["lane"] for entry in documents], calendar.names(at)),
+        (
+            [calendar.is_dated(entry, row) for entry, row in zip(documents, rows, strict=False)],
+            [True] * min(len(documents), len(rows)),
+        ),
         ([entry["carrier"] for entry in documents], carriers[lanes.carrier.codes[at]].tolist()),
         ([entry["origin"] for entry in documents], names[lanes.origin[at]].tolist()),
         ([entry["destination"] for entry in documents], names[lanes.destination[at]].tolist()),

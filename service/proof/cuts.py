@@ -9,18 +9,17 @@ from typing import Any
 
 import numpy as np
 
-from service.network.columns import Network
 from service.network.options import Options
-from service.proof.arcs import ItemArcs, item_arcs
+from service.proof.arcs import ItemArcs
+from service.proof.dated_arcs import arcs_of
 from service.proof.exact import total
-from service.proof.flows import Names
+from service.proof.flows import Names, node_of
 from service.proof.rulings import Rulings, UnusableNetworkError
 from service.proof.shapes import amount
 from service.proof.violations import Findings
 
 
-def check_cuts(  # noqa: PLR0913 - a cut is about all of a run
-    network: Network,
+def check_cuts(
     options: Options,
     rulings: Rulings,
     cuts: Sequence[Mapping[str, Any]],
@@ -38,7 +37,7 @@ def check_cuts(  # noqa: PLR0913 - a cut is about all of a run
             findings.add("name_unknown", "there is no such item", place=place)
             continue
         try:
-            arcs = item_arcs(network, options, rulings, item)
+            arcs = arcs_of(names.calendar, options, rulings, item)
         except UnusableNetworkError as error:
             findings.add("network_unusable", str(error), place=cut["item"])
             continue
@@ -52,8 +51,7 @@ def _check_cut(
     inside = np.zeros(len(arcs.nodes), dtype=np.bool_)
     inside[0] = cut["root"]
     for entry in cut["nodes"]:
-        site = names.sites.get(entry["site"], -1)
-        node = arcs.place.get((site, entry["side"], entry["qualifier"]))
+        node = node_of(arcs, entry, names)
         if node is None:
             findings.add("name_unknown", "a cut names a node that is not there", place=place)
             return

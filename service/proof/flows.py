@@ -6,11 +6,17 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from service.network.columns import Network
-from service.network.naming import lane_rows
 from service.proof.arcs import Arc, ItemArcs
+from service.proof.calendar import Calendar, on_day
 from service.proof.exact import Positions, Whole, sums_at, whole
 from service.proof.numbers import numbers
 from service.proof.violations import Findings
+
+
+def node_of(arcs: ItemArcs, entry: Mapping[str, Any], names: "Names") -> int | None:
+    """Return the position of the node that a certificate names, None if there is none."""
+    side = on_day(entry["side"], entry.get("day"))
+    return arcs.place.get((names.sites.get(entry["site"], -1), side, entry["qualifier"]))
 
 
 class PlanLine(NamedTuple):
@@ -27,9 +33,10 @@ class PlanLine(NamedTuple):
 class Names:
     """Finds sites, items and lanes by what documents call them."""
 
-    def __init__(self, network: Network) -> None:
+    def __init__(self, calendar: Calendar) -> None:
         """Index the ids of sites and items."""
-        self.network = network
+        self.calendar = calendar
+        network = calendar.network
         self.sites = {site.id: place for place, site in enumerate(network.sites)}
         self.items = {item.id: place for place, item in enumerate(network.items)}
 
@@ -37,8 +44,12 @@ class Names:
         self, documents: Sequence[Mapping[str, Any]], findings: Findings
     ) -> list[PlanLine] | None:
         """Return the plan lines with names found; None if one of them names what is not there."""
-        names = [line["lane"] for line in documents if line["lane"] is not None]
-        rows = iter(lane_rows(self.network, names))
+        moving = [line for line in documents if line["lane"] is not None]
+        rows = iter(
+            self.calendar.rows(
+                [line["lane"] for line in moving], [line.get("departs") for line in moving]
+            )
+        )
         lines = []
         seen: set[tuple[int, int, int]] = set()
         sound = True
@@ -48,7 +59,8 @@ class Names:
             origin = self.sites.get(line["origin"], -1)
             destination = self.sites.get(line["destination"], -1)
             item = self.items.get(line["item"], -1)
-            if min(origin, destination, item) < 0 or (row < 0 and line["lane"] is not None):
+            unknown = min(origin, destination, item) < 0 or (row < 0 and line["lane"] is not None)
+            if unknown or not self.calendar.is_dated(line, row):
                 findings.add("name_unknown", "a plan line names what is not there", place=place)
                 sound = False
                 continue
@@ -180,7 +192,11 @@ def _stated(
         entries = proof[table]
         steps = numbers([entry["quantity"] for entry in entries]).in_steps(arcs.step)
         sites = [names.sites.get(entry["site"], -1) for entry in entries]
-        keys = zip(sites, *([entry[field] for entry in entries] for field in fields), strict=True)
+        named = [(*fields, "day") if "day" in entry else fields for entry in entries]
+        keys = (
+            (site, *(entry[field] for field in own))
+            for site, entry, own in zip(sites, entries, named, strict=True)
+        )
         for position, (key, quantity) in enumerate(zip(keys, steps, strict=True)):
             at = known[kind].get(key)
             if at is not None and quantity is not None and at not in flows:

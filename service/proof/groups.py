@@ -1,6 +1,7 @@
 """What is wanted of one item: order lines, and the groups that need not be told apart."""
 
 import json
+from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import NamedTuple
@@ -10,6 +11,7 @@ import numpy as np
 from service.network.columns import Network
 from service.network.options import Options
 from service.network.units import item_units
+from service.proof.calendar import day_of
 from service.proof.rulings import UnusableNetworkError
 
 # Who names no importance has this priority.
@@ -35,7 +37,10 @@ class OrderLine(NamedTuple):
 
 
 class Group(NamedTuple):
-    """Order lines of one site with one importance and the same origins, wanted together."""
+    """Order lines of one site with one importance, the same origins and dates, wanted together.
+
+    Dates are days; ``late_cost`` is money per item unit and day.
+    """
 
     label: str
     site: int
@@ -43,6 +48,18 @@ class Group(NamedTuple):
     priority: int
     shortage_cost: Fraction | None
     origins: frozenset[int] | None
+    earliest: int | None = None
+    due: int | None = None
+    latest: int | None = None
+    late_cost: Fraction | None = None
+
+
+class Late(NamedTuple):
+    """How late goods on an arc to a group are: days, and what a step weighs, or costs in money."""
+
+    days: int
+    weight: int
+    money: Fraction
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -74,6 +91,7 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
     # Who says neither what it costs nor how important it is.
     worth = options.worth_at_most
     unnamed = (PRIORITY_DEFAULT, None) if worth is None else (0, worth)
+    dates_of = _dates(network, item)
     places: dict[tuple[object, ...], int] = {}
     lines: list[OrderLine] = []
     firsts: list[OrderLine] = []
@@ -95,7 +113,7 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
         priority, cost = (named, None) if named else unnamed
         if paid:
             priority, cost = 0, _own_worth(network, row, units[code])
-        key = (site, priority, cost, allowed)
+        key = (site, priority, cost, allowed, *dates_of(row))
         group = places.setdefault(key, len(places)) if wanted else -1
         accepted = origins[allowed] if allowed >= 0 else None
         line = OrderLine(row, site, wanted, not over, priority, cost, accepted, group)
@@ -105,17 +123,47 @@ def wanted_of(network: Network, options: Options, item: int) -> Wanted:
             sums.append(0)
         if group >= 0:
             sums[group] += wanted
+    dates = [dates_of(line.row) for line in firsts]
     labels: list[bytes] = demand.reference[[line.row for line in firsts]].tolist() if firsts else []
     return Wanted(
         lines=tuple(lines),
         groups=tuple(
             # Order lines are sorted by reference: the first of a group has the smallest.
             Group(
-                label.decode(), line.site, together, line.priority, line.shortage_cost, line.origins
+                label.decode(),
+                line.site,
+                together,
+                line.priority,
+                line.shortage_cost,
+                line.origins,
+                *own,
             )
-            for label, line, together in zip(labels, firsts, sums, strict=True)
+            for label, line, together, own in zip(labels, firsts, sums, dates, strict=True)
         ),
     )
+
+
+_Dates = tuple[int | None, int | None, int | None, Fraction | None]
+
+
+def _dates(network: Network, item: int) -> Callable[[int], _Dates]:
+    """Return what tells the dates of an order line: its window, its wish, and money for a day."""
+    demand = network.demand
+    columns = (demand.earliest, demand.due, demand.latest)
+    if not any(column.values for column in columns):
+        return lambda _: (None, None, None, None)
+    known = [[*map(day_of, column.values), None] for column in columns]
+
+    def dates(row: int) -> _Dates:
+        earliest, due, latest = (
+            days[column.codes[row]] for days, column in zip(known, columns, strict=True)
+        )
+        money = demand.late_cost_per_day.fraction(row)
+        if money is not None:
+            money /= _units(network, item, str(demand.unit.text(row)))
+        return earliest, due, latest, money
+
+    return dates
 
 
 def _origins(network: Network) -> list[frozenset[int]]:

@@ -12,12 +12,14 @@ import numpy as np
 
 from service.network.columns import Network
 from service.network.units import item_units
+from service.proof.calendar import Calendar
 from service.proof.flows import PlanLine
 from service.proof.groups import OrderLine
 from service.proof.numbers import numbers, together
+from service.proof.order_dates import OrderDates
 from service.proof.results import ItemResult, lane_ends
+from service.proof.routes import Routes
 from service.proof.shapes import amount
-from service.proof.usable import cross_docks
 from service.proof.violations import Findings
 
 _QUANTITIES = ("quantity", "served", "short")
@@ -41,7 +43,7 @@ class Paths:
 
 
 def check_order_lines(
-    network: Network,
+    calendar: Calendar,
     results: Sequence[ItemResult],
     lines: Sequence[PlanLine],
     documents: Sequence[Mapping[str, Any]],
@@ -51,16 +53,18 @@ def check_order_lines(
 
     ``lines`` are the plan lines: a leg goes over one of them, or over a lane that carries nothing.
     """
+    network = calendar.network
     references = [reference.decode() for reference in network.demand.reference.tolist()]
     if [line["reference"] for line in documents] != references:
         findings.add("order_line_wrong", "not the order lines of the network", place="/order_lines")
         return None
     amounts = _Amounts(documents)
-    legs = _Legs(network, lines)
+    legs = Routes(calendar, lines)
     sums = _Sums(network, results)
+    dates = OrderDates(calendar)
     sound = True
     for result in results:
-        ordered = _Ordered(network, result, amounts)
+        ordered = _Ordered(network, result, amounts, dates)
         steps_of = amounts.in_steps(result.step)
         for line in result.wanted.lines:
             document = documents[line.row]
@@ -81,6 +85,7 @@ def check_order_lines(
                     findings.add("route_wrong", "no way from its origin to its site", place=where)
                     sound = False
                 else:
+                    sums.late[(result.item, line.group)] += steps * dates.late(line.row, source)
                     sums.add(line, source, rows, steps=steps, item=result.item, origin=origin)
             sums.served[(result.item, line.group)] += amounts.served[line.row]
     if not sound:
@@ -116,7 +121,12 @@ class _Amounts:
         if last - first > 1:
             sources = self._documents[row]["sources"]
             ways = {
-                (source["origin"], source["lot"], tuple(leg["lane"] for leg in source["legs"]))
+                (
+                    source["origin"],
+                    source["lot"],
+                    source.get("arrives"),
+                    tuple((leg["lane"], leg.get("departs")) for leg in source["legs"]),
+                )
                 for source in sources
             }
             if len(ways) != len(sources):
@@ -132,8 +142,11 @@ class _Amounts:
 class _Ordered:
     """Compares order lines of one item with what the network says about them."""
 
-    def __init__(self, network: Network, result: ItemResult, amounts: _Amounts) -> None:
+    def __init__(
+        self, network: Network, result: ItemResult, amounts: _Amounts, dates: OrderDates
+    ) -> None:
         """Look up what is the same for all of them."""
+        self._dates = dates
         self._amounts = amounts
         self._step, self._below_step = result.step.numerator, result.step.denominator
         self._network, self._result = network, result
@@ -156,11 +169,15 @@ class _Ordered:
                 and self._amounts.quantity[line.row] * self._below_step
                 == line.wanted * self._step * self._amounts.below
             )
-        return _is_ordered(self._network, self._result, line, document)
+        return _is_ordered(self._network, self._result, line, document, self._dates)
 
 
 def _is_ordered(
-    network: Network, result: ItemResult, line: OrderLine, document: Mapping[str, Any]
+    network: Network,
+    result: ItemResult,
+    line: OrderLine,
+    document: Mapping[str, Any],
+    dates: OrderDates,
 ) -> bool:
     """Return whether an order line repeats what the network says about it."""
     demand, row, item = network.demand, line.row, network.items[result.item]
@@ -179,6 +196,7 @@ def _is_ordered(
         expected["shortage_cost"] = line.shortage_cost
     if ordered != wanted:
         expected["ordered"] = ordered
+    expected |= dates.repeated(row, document)
     for field, column in (("tags", demand.tags), ("extra", demand.extra)):
         text = column.text(row)
         if text is not None:
@@ -192,42 +210,6 @@ def _is_ordered(
     return stated == expected
 
 
-class _Legs:
-    """Follows sources over lanes."""
-
-    def __init__(self, network: Network, lines: Sequence[PlanLine]) -> None:
-        """Look up the lanes of all plan lines."""
-        self._rows = {line.document["lane"]: line.row for line in lines if line.row >= 0}
-        self._ends = lane_ends(network, np.array(sorted(set(self._rows.values())), dtype=np.int64))
-        self._passing = cross_docks(network).tolist()
-        self._items = [item.id for item in network.items]
-        self._sites = {site.id: place for place, site in enumerate(network.sites)}
-
-    def route(
-        self, result: ItemResult, line: OrderLine, source: Mapping[str, Any]
-    ) -> tuple[int, list[int] | None]:
-        """Return a source's origin and the lanes from there to the site of its line.
-
-        None if there is no way. Only lanes that carry something of the item count, and only
-        cross-docks pass goods on.
-        """
-        origin = self._sites.get(source["origin"], -1)
-        if origin < 0 or source["item"] != self._items[result.item]:
-            return origin, None
-        if line.origins is not None and origin not in line.origins:
-            return origin, None
-        rows = [self._rows.get(leg["lane"], -1) for leg in source["legs"]]
-        here = origin
-        for position, row in enumerate(rows):
-            if row not in result.on_lane:
-                return origin, None
-            start, end = self._ends[row]
-            if start != here or (position and not self._passing[here]):
-                return origin, None
-            here = end
-        return origin, rows if here == line.site else None
-
-
 class _Sums:
     """Adds up what sources use, and compares it with what the flow has."""
 
@@ -238,6 +220,8 @@ class _Sums:
         self._names = [reference.decode() for reference in network.demand.reference.tolist()]
         # Over the denominator of ``_Amounts``.
         self.served: defaultdict[tuple[int, int], int] = defaultdict(int)
+        # In steps and days.
+        self.late: defaultdict[tuple[int, int], int] = defaultdict(int)
         self._lots: defaultdict[tuple[int, int, str | None], int] = defaultdict(int)
         self._on: defaultdict[tuple[int, int], int] = defaultdict(int)
         self._first: defaultdict[tuple[int, int], int] = defaultdict(int)
@@ -288,6 +272,10 @@ class _Sums:
                 flow = result.served.get((group.site, group.label), 0)
                 if self.served[(result.item, number)] * under != flow * above:
                     detail = "the lines of a group get other than its flow"
+                    findings.add("order_line_wrong", detail, place=f"{item}: {group.label}")
+                late = result.late_days.get((group.site, group.label), 0)
+                if self.late[(result.item, number)] != late:
+                    detail = "the lines of a group are later, or earlier, than its flow"
                     findings.add("order_line_wrong", detail, place=f"{item}: {group.label}")
             if not self._is_balanced(result):
                 findings.add("lane_use_wrong", "sources and flow differ on a lane", place=item)

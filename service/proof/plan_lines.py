@@ -68,7 +68,13 @@ def check_plan_lines(
 def _key(line: PlanLine) -> tuple[str, ...]:
     """Return what plan lines are sorted by."""
     document = line.document
-    return document["origin"], document["destination"], document["item"], document["lane"] or ""
+    return (
+        document["origin"],
+        document["destination"],
+        document["item"],
+        document.get("departs") or "",
+        document["lane"] or "",
+    )
 
 
 class _Costs:
@@ -150,7 +156,8 @@ class _Costs:
 
     def _supply_range(self, site: int, steps: int) -> tuple[int, int]:
         """Return the least and the most that ``steps`` of what is drawn at ``site`` can cost."""
-        tiers = self._tiers.get(site, [])
+        # Later tiers may be cheaper.
+        tiers = sorted(self._tiers.get(site, []))
         if len(tiers) == 1:
             only = min(steps, tiers[0][1]) * tiers[0][0]
             return only, only

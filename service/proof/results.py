@@ -20,8 +20,9 @@ from service.proof.stock import Stock
 class ItemResult:
     """A checked item. Quantities are in steps, by row of a lane, site, tier or group.
 
-    ``money`` are the parts of landed cost and shortage; ``short_by_priority`` has every priority
-    that occurs, ascending.
+    ``money`` are the parts of landed cost, shortage and lateness; ``short_by_priority`` has every
+    priority that occurs, ascending; ``late`` is the weighted lateness in steps and days (None:
+    nothing could weigh). ``drawn_on`` is by site and date, ``late_days`` by group.
     """
 
     item: int
@@ -35,6 +36,9 @@ class ItemResult:
     keep_short: Mapping[int, int]
     money: Mapping[str, Fraction]
     short_by_priority: Mapping[int, int]
+    late: int | None
+    late_days: Mapping[tuple[int, str], int]
+    drawn_on: Mapping[tuple[int, object], int]
 
 
 def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
@@ -47,6 +51,7 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
     served: dict[tuple[int, str], int] = {}
     keep_short: dict[int, int] = {}
     money = dict.fromkeys(_MONEY, Fraction(0)) | _lane_money(network, arcs, on_lane)
+    drawn_on: dict[tuple[int, object], int] = {}
     paid: dict[str, list[tuple[int, Fraction]]] = {part: [] for part in money}
     short = dict.fromkeys(arcs.priorities, 0)
     for arc, steps in zip(arcs.arcs, flow[lanes:].tolist(), strict=True):
@@ -61,7 +66,10 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
             group = (_site(arc), str(arc.key[1]))
             served[group] = served.get(group, 0) + steps
         elif kind == "draw":
-            drawn[(_site(arc), int(str(arc.key[1])))] = steps
+            tier = (_site(arc), int(str(arc.key[1])))
+            drawn[tier] = drawn.get(tier, 0) + steps
+            spot = (_site(arc), arc.key[2] if len(arc.key) > 2 else None)
+            drawn_on[spot] = drawn_on.get(spot, 0) + steps
         elif kind == "keep":
             kept[_site(arc)] = kept.get(_site(arc), 0) + steps
         elif kind == "short" and arc.key[1] is None:
@@ -70,6 +78,7 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
         rates = numbers_of(rate for _, rate in amounts)
         whole = sum(steps * rate for (steps, _), rate in zip(amounts, rates.whole, strict=True))
         money[part] += Fraction(whole, rates.below)
+    late_days = _late_days(arcs, flow, money)
     return ItemResult(
         item=arcs.item,
         step=arcs.step,
@@ -82,6 +91,9 @@ def item_result(network: Network, arcs: ItemArcs, flow: Whole) -> ItemResult:
         keep_short=keep_short,
         money=money,
         short_by_priority=short,
+        late=_weighed(arcs, flow),
+        late_days=late_days,
+        drawn_on=drawn_on,
     )
 
 
@@ -97,7 +109,34 @@ def _lane_money(
     return money
 
 
-_MONEY = ("supply", "handling", "transport", "charges", "shortage")
+_MONEY = ("supply", "handling", "transport", "charges", "shortage", "lateness")
+
+
+def _late_days(
+    arcs: ItemArcs, flow: Whole, money: dict[str, Fraction]
+) -> dict[tuple[int, str], int]:
+    """Return the steps and days that each group is late, and move what they cost to lateness.
+
+    It is part of what arcs to groups cost, which counted as handling.
+    """
+    days: dict[tuple[int, str], int] = {}
+    for position, late in arcs.late.items():
+        steps, arc = int(flow[len(arcs.rows) + position]), arcs.arcs[position]
+        group = (_site(arc), str(arc.key[1]))
+        days[group] = days.get(group, 0) + steps * late.days
+        money["handling"] -= steps * late.money
+        money["lateness"] += steps * late.money
+    return days
+
+
+def _weighed(arcs: ItemArcs, flow: Whole) -> int | None:
+    """Return the lateness that weighs, in steps and days and weights; None if none could."""
+    if not any(late.weight for late in arcs.late.values()):
+        return None
+    first = len(arcs.rows)
+    return sum(int(flow[first + at]) * late.weight for at, late in arcs.late.items())
+
+
 _PARTS: Mapping[str, str] = {
     "draw": "supply",
     "handle": "handling",

@@ -1,7 +1,7 @@
 """What the rules in force close, fix and limit for one item."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Self
 
@@ -66,6 +66,13 @@ class Rulings:
                 for rule in rules_of(network)
                 if in_force(rule, cut_off)
             )
+        )
+
+    def over(self, lanes: IntArray) -> Self:
+        """Return the same rules over lanes that stand for those at ``lanes``."""
+        return replace(
+            self,
+            rulings=tuple(replace(ruling, lanes=ruling.lanes[lanes]) for ruling in self.rulings),
         )
 
     def closed_sites(self, item: int, sites: int) -> BoolArray:

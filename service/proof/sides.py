@@ -59,8 +59,13 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
     rows: IntArray,
     stock: Mapping[int, Stock],
     wanted: Wanted,
+    ways: tuple[Network, IntArray] | None = None,
 ) -> dict[int, SiteSides]:
-    """Return the sites that matter to ``item``, ascending, and what each is made of."""
+    """Return the sites that matter to ``item``, ascending, and what each is made of.
+
+    ``ways`` are the lanes over which stock can come, if they are others than ``rows``.
+    """
+    stated, usable = (network, rows) if ways is None else ways
     lanes = network.lanes
     starting = np.zeros(len(network.sites), dtype=np.bool_)
     starting[of_rows(lanes.origin, rows)] = True
@@ -93,7 +98,7 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
         if site in choosy:
             before = np.unique(lanes.origin[rows[lanes.destination[rows] == site]]).tolist()
             origins = list(before)
-            behind = {origin: stock_behind(network, item, rows, origin) for origin in before}
+            behind = {origin: stock_behind(stated, item, usable, origin) for origin in before}
         elif (apart and arrives) or "received" in limit:
             origins = [None]
         plain = not (apart or limit or closed[site])

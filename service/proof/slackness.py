@@ -17,7 +17,7 @@ from service.network.columns import IntArray, Network
 from service.proof.arcs import Costs, ItemArcs
 from service.proof.costs import scaled_costs
 from service.proof.exact import ROOM, Whole, magnitude, plus, times, whole
-from service.proof.flows import Names, describe
+from service.proof.flows import Names, describe, node_of
 from service.proof.violations import EXAMPLES_MAX, Findings
 
 
@@ -39,7 +39,12 @@ def check_slackness(  # noqa: PLR0913 - network, flow and prices come from three
     price = _prices(network, arcs, proof, names, findings)
     if money is None:
         return
-    base = int(proof["base"])
+    base, late_base = int(proof["base"]), int(proof.get("late_base", "0"))
+    weights = late_weights(arcs)
+    weighs = bool((weights != 0).any())
+    if weighs != ("late_base" in proof) or (weighs and late_base < least_base(arcs, money)):
+        findings.add("weights_too_small", "the base of lateness does not prove it", place=place)
+    money = Costs(money.lanes, plus(money.others, times(weights, late_base)))
     if base < least_base(arcs, money):
         findings.add("weights_too_small", "the base of the weights is too small", place=place)
     if price is None:
@@ -53,6 +58,11 @@ def check_slackness(  # noqa: PLR0913 - network, flow and prices come from three
 def least_base(arcs: ItemArcs, money: Costs) -> int:
     """Return the least C that proves the order of priorities: 2 * nodes * max |cost| + 1."""
     return 2 * len(arcs.nodes) * money.magnitude() + 1
+
+
+def late_weights(arcs: ItemArcs) -> Whole:
+    """Return what lateness on each arc that is no lane weighs, a step of it."""
+    return whole([arcs.late[at].weight if at in arcs.late else 0 for at in range(len(arcs.arcs))])
 
 
 def weighted(arcs: ItemArcs, money: Costs, base: int) -> Costs:
@@ -97,10 +107,7 @@ def _prices(
 ) -> Whole | None:
     """Return the price of each node, 0 at the root; None if the certificate does not say them."""
     entries = proof["prices"]
-    nodes = [
-        arcs.place.get((names.sites.get(entry["site"], -1), entry["side"], entry["qualifier"]))
-        for entry in entries
-    ]
+    nodes = [node_of(arcs, entry, names) for entry in entries]
     seen = {0}
     for position, node in enumerate(nodes):
         if node is not None and node not in seen:

@@ -194,17 +194,17 @@ COLUMNS = {
     "supply": (
         "site!sites item!items quantity!decimal unit!texts unit_cost:decimal currency:texts "
         "on_hand:decimal reserved:decimal on_hold:decimal as_of:texts lot:texts best_before:texts "
-        "keep_quantity:decimal keep_priority:small extra:texts"
+        "available_from:texts keep_quantity:decimal keep_priority:small extra:texts"
     ),
     "demand": (
         "reference!text order:texts ordered_at:texts site!sites item!items quantity!decimal "
-        "unit!texts priority:small shortage_cost:decimal worth_at_most:decimal origins:texts "
-        "tags:texts extra:texts"
+        "unit!texts priority:small shortage_cost:decimal worth_at_most:decimal earliest:texts "
+        "due:texts latest:texts late_cost_per_day:decimal origins:texts tags:texts extra:texts"
     ),
     "lanes": (
         "id:text origin!sites destination!sites item:items unit_cost!decimal measure!texts "
         "must_ship:decimal capacity:decimal per:texts carrier:texts currency:texts charges:texts "
-        "tags:texts extra:texts"
+        "transit_days:decimal closes:texts departs:texts arrives:texts tags:texts extra:texts"
     ),
 }
 
@@ -439,17 +439,52 @@ def read_charges(text: str, item_ids: set[str], known: set[str | None]) -> list[
     return charges
 
 
+def day_number(text: str) -> int:
+    """Return the day of a date, or of the date with which an instant begins."""
+    try:
+        return dt.date.fromisoformat(text[:10]).toordinal()
+    except ValueError:
+        raise Bad("not a date") from None
+
+
+def day_text(day: int) -> str:
+    """Return the date of a day."""
+    return dt.date.fromordinal(day).isoformat()
+
+
+MOMENT = re.compile(
+    "([0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9]{2}:[0-9]{2}:[0-9]{2})(?:[.]([0-9]{0,8}[1-9]))?"
+    "(Z|[+-][0-9]{2}:[0-9]{2})"
+)
+
+
+def instant(text: Value) -> tuple[dt.datetime, str]:
+    """Return a point in time (RFC 3339) to compare: its whole second, and the digits below."""
+    match = MOMENT.fullmatch(text) if isinstance(text, str) else None
+    if match is None:
+        raise Bad("not a point in time")
+    try:
+        moment = dt.datetime.fromisoformat(match[1] + match[3].replace("Z", "+00:00"))
+        return moment.astimezone(dt.timezone.utc), match[2] or ""  # noqa: UP017 - Python 3.9
+    except (ValueError, OverflowError):
+        raise Bad("not a point in time") from None
+
+
 def read_head(data: bytes) -> dict[str, Any]:
     """Return the head of the network, its items and sites read."""
     head: dict[str, Any] = parse_canonical(data)
     need(isinstance(head, dict), "the head is not an object")
-    texts = {"name", "currency", "cut_off", "release_by"}
-    fields = {"format", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
+    texts = {"name", "currency", "cut_off", "planned_at", "release_by"}
+    fields = {"format", "periods", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
     need(set(head) <= fields | texts, "other fields in the head")
     need(is_whole(head.get("format")) and head["format"] == 1, "another format")
     need(all(isinstance(head.get(field, ""), str) for field in texts), "a field is not text")
     need(re.fullmatch("[A-Z]{3}", head.get("currency", "")), "no currency")
-    need(head.get("cut_off"), "no cut-off")
+    instant(head.get("cut_off"))
+    if "planned_at" in head:
+        instant(head["planned_at"])
+    if "periods" in head:
+        need(all(map(is_date, filled_texts(head["periods"]))), "a period is no date")
     need(all(isinstance(head.get(f), list) for f in ("items", "sites", "rules")), "no arrays")
     if "extra" in head:
         text_members(head["extra"])
@@ -667,6 +702,7 @@ class Network:
         self._check_demand()
         self._check_lanes()
         self.lane_names = LaneNames(self)
+        self._count_days()
         self._rows: dict[str, dict[int, list[int]]] = {}
 
     def _of(self, table: dict[str, Any], name: str, item: int) -> list[int]:
@@ -678,9 +714,131 @@ class Network:
             self._rows[name] = dict(rows)
         return self._rows[name].get(item, [])
 
+    def _count_days(self) -> None:
+        """Put movements, lanes on a day of departure, in the place of lanes.
+
+        From here on ``lanes`` has a row for each of them; ``lane_of`` is the lane that it is of.
+        ``departs`` and ``arrives`` are days, None in a network that says nothing of dates.
+        """
+        lanes, demand = self.lanes, self.demand
+        self.stated = lanes
+        self.today = day_number(self.head["cut_off"])
+        self.lane_of: Any = range(lanes["rows"])
+        self.departs: Any = None
+        self.arrives: Any = None
+        named = [self.supply["available_from"]]
+        named += [demand[column] for column in ("earliest", "due", "latest")]
+        named += [lanes[column] for column in ("closes", "departs", "arrives")]
+        transit = lanes["transit_days"]
+        self.dated = (
+            "periods" in self.head
+            or any(column.values for column in named)
+            or any(map(transit.has, range(lanes["rows"])))
+        )
+        if not self.dated:
+            return
+        leaving = self._leaving_days()
+        self.lane_of, self.departs, self.arrives = [], array("q"), array("q")
+        for row in range(lanes["rows"]):
+            departs, arrives = lanes["departs"][row], lanes["arrives"][row]
+            days = [day_number(departs)] if departs else leaving(lanes["origin"][row])
+            for day in days:
+                self.lane_of.append(row)
+                self.departs.append(day)
+                self.arrives.append(day_number(arrives) if arrives else day + transit.numbers[row])
+        if self.lane_of != list(range(lanes["rows"])):
+            self.lanes = {
+                name: column if name == "rows" else taken(column, self.lane_of)
+                for name, column in lanes.items()
+            }
+            self.lanes["rows"] = len(self.lane_of)
+        self.movements = {
+            pair: at
+            for at, pair in enumerate(zip(self.lane_of, self.departs))  # noqa: B905 - Python 3.9
+        }
+
+    def _leaving_days(self) -> Any:  # noqa: ANN401, C901 - a function; one argument, from top to bottom
+        """Return what tells the days on which lanes without a departure leave a site.
+
+        They leave on the periods from today on, or today; and a cross-dock when goods arrive
+        there (if there are periods: on those of them), which is followed from dock to dock as many
+        times as there are cross-docks.
+        """
+        lanes = self.lanes
+        periods = None
+        if "periods" in self.head:
+            periods = {day for day in map(day_number, self.head["periods"]) if day >= self.today}
+        usual = sorted(periods) if periods is not None else [self.today]
+        stocked = {
+            site
+            for site, quantity in zip(self.supply["site"], self.supply["quantity"].numbers)  # noqa: B905 - Python 3.9
+            if quantity > 0
+        }
+        came: dict[int, set[int]] = defaultdict(set)
+        onward = set()
+        for row in range(lanes["rows"]):
+            start, end = lanes["origin"][row], lanes["destination"][row]
+            if not self.passing[end]:
+                continue
+            departs, arrives = lanes["departs"][row], lanes["arrives"][row]
+            transit = lanes["transit_days"].numbers[row]
+            if departs:
+                day = day_number(arrives) if arrives else day_number(departs) + transit
+                came[end].add(day)
+                continue
+            if not self.passing[start] or start in stocked:
+                came[end].update(day + transit for day in usual)
+            if self.passing[start]:
+                onward.add((start, end, transit))
+        for _ in range(sum(self.passing)):
+            new = {
+                (end, day + transit)
+                for start, end, transit in onward
+                for day in came[start]
+                if periods is None or day in periods
+            }
+            if all(day in came[end] for end, day in new):
+                break
+            for end, day in new:
+                came[end].add(day)
+
+        def leaving(site: int) -> list[int]:
+            if not self.passing[site]:
+                return usual
+            days = {day for day in came[site] if periods is None or day in periods}
+            if site in stocked or not came[site]:
+                days.update(usual)
+            return sorted(days)
+
+        return leaving
+
+    def movement(self, name: str, departs: str | None) -> int:
+        """Return the row of a lane on a date of departure (None: without dates), -1 if none."""
+        row = self.lane_names.row(name)
+        if not self.dated:
+            return row if departs is None else -1
+        if departs is None or not is_date(departs):
+            return -1
+        return self.movements.get((row, day_number(departs)), -1)
+
+    def lane_name(self, row: int) -> str:
+        """Return the name of the lane of a movement."""
+        return self.lane_names.name(self.lane_of[row])
+
+    def dates_of(self, row: int) -> dict[str, str | None]:
+        """Return how the dates of a movement are written; nothing in a network without dates.
+
+        Goods that are used where they are drawn (row -1) depart and arrive never.
+        """
+        if not self.dated:
+            return {}
+        if row < 0:
+            return {"departs": None, "arrives": None}
+        return {"departs": day_text(self.departs[row]), "arrives": day_text(self.arrives[row])}
+
     def lanes_of(self, item: int) -> list[int]:
-        """Return the lanes of one item only, or (-1) of any item."""
-        return self._of(self.lanes, "lanes", item)
+        """Return the lanes, as they were stated, of one item only, or (-1) of any item."""
+        return self._of(self.stated, "lanes", item)
 
     def supply_of(self, item: int) -> list[int]:
         """Return the supply rows of an item."""
@@ -746,6 +904,7 @@ class Network:
         need(len(pairs) == len(kept), "stock is kept twice at one site")
         for text in supply["extra"].values:
             text_members(parse_canonical(text.encode()))
+        need(all(map(is_date, supply["available_from"].values)), "not a date")
         keys = [self._supply_key(row) for row in range(supply["rows"])]
         need(keys == sorted(keys), "supply is not sorted")
 
@@ -767,7 +926,8 @@ class Network:
                 rest += (values.has(row), values.numbers[row])
         rest += (supply["keep_priority"][row], supply["extra"].codes[row])
         currency, lot = supply["currency"].codes[row], supply["lot"].codes[row]
-        return (site, item, cost, currency, date < 0, date, lot, *rest)
+        start = supply["available_from"].codes[row]
+        return (site, item, start, cost, currency, date < 0, date, lot, *rest)
 
     def _check_demand(self) -> None:
         """Check the order lines."""
@@ -776,6 +936,9 @@ class Network:
         need(rises(demand["reference"]), "order lines are not sorted")
         need(not_below_0(demand["shortage_cost"]), "a cost below 0")
         need(not_below_0(demand["worth_at_most"]), "a cost below 0")
+        need(not_below_0(demand["late_cost_per_day"]), "a cost below 0")
+        for column in ("earliest", "due", "latest"):
+            need(all(map(is_date, demand[column].values)), "not a date")
         for row in range(demand["rows"]):
             ways = (
                 demand["priority"][row] > 0,
@@ -783,6 +946,8 @@ class Network:
                 demand["worth_at_most"].has(row),
             )
             need(sum(ways) <= 1, "an order line with two kinds of importance")
+            paid = demand["late_cost_per_day"].has(row)
+            need(not paid or demand["due"][row], "a late cost without a date")
         self.origins = [
             filled_texts(parse_canonical(text.encode())) for text in demand["origins"].values
         ]
@@ -798,10 +963,19 @@ class Network:
         lanes = self.lanes
         need(set(lanes["per"].values) <= {"item"}, "an unknown per")
         need(not_below_0(lanes["capacity"]), "a capacity below 0")
+        need(not_below_0(lanes["transit_days"]), "days below 0")
+        need(lanes["transit_days"].power == 1, "a part of a day")
+        for column in ("closes", "departs", "arrives"):
+            for text in lanes[column].values:
+                instant(text)
         must = lanes["must_ship"]
         for row in range(lanes["rows"]):
             need(lanes["origin"][row] != lanes["destination"][row], "a lane to where it starts")
             need(must.numbers[row] > 0 or not must.has(row), "a must-ship of 0")
+            ends = (lanes["closes"][row], lanes["arrives"][row])
+            need(lanes["departs"][row] or ends == (None, None), "no departure")
+            twice = lanes["transit_days"].has(row) and ends[1]
+            need(not twice, "two arrivals of a lane")
         named = [name for name in lanes["id"] if name]
         need(len(set(named)) == len(named), "a lane id occurs twice")
         for item, code in set(zip(lanes["item"], lanes["measure"].codes)):  # noqa: B905 - Python 3.9
@@ -811,18 +985,21 @@ class Network:
             filled_texts(parse_canonical(text.encode()))
         for text in lanes["extra"].values:
             text_members(parse_canonical(text.encode()))
-        ends = (lanes["origin"], lanes["destination"], lanes["item"])
+        same_ends = (lanes["origin"], lanes["destination"], lanes["item"])
         for row in range(1, lanes["rows"]):
-            before = tuple(column[row - 1] for column in ends)
-            here = tuple(column[row] for column in ends)
+            before = tuple(column[row - 1] for column in same_ends)
+            here = tuple(column[row] for column in same_ends)
             same = before == here and self._lane_key(row - 1) <= self._lane_key(row)
             need(before < here or same, "lanes are not sorted")
 
     def _lane_key(self, row: int) -> Key:
         """Return what lanes between the same sites are sorted by."""
         lanes, capacity = self.lanes, self.lanes["capacity"]
-        columns = ("tags", "measure", "per", "extra", "currency", "charges")
-        codes = (lanes[column].codes[row] for column in columns)
+        codes = [lanes[column].codes[row] for column in ("tags", "measure", "per")]
+        transit = lanes["transit_days"]
+        codes.append(transit.numbers[row] if transit.has(row) else -1)
+        last = ("departs", "arrives", "closes", "extra", "currency", "charges")
+        codes += [lanes[column].codes[row] for column in last]
         return (
             lanes["id"][row],
             lanes["carrier"].codes[row],
@@ -839,13 +1016,29 @@ def not_below_0(column: Decimals) -> bool:
     return not len(column.numbers) or min(column.numbers) >= 0
 
 
+def taken(column: Value, rows: list[int]) -> Value:
+    """Return some rows of a column."""
+    if isinstance(column, Decimals):
+        absent = column.absent
+        return Decimals(
+            array("q", (column.numbers[row] for row in rows)),
+            column.power,
+            None if absent is None else bytes(absent[row] for row in rows),
+        )
+    if isinstance(column, Texts):
+        return Texts(array("i", (column.codes[row] for row in rows)), column.values)
+    if isinstance(column, list):
+        return [column[row] for row in rows]
+    return array("i", (column[row] for row in rows))
+
+
 class LaneNames:
     """Lanes by name: the id that was given, or ORIGIN>DESTINATION[>ITEM][#NUMBER]."""
 
     def __init__(self, network: Network) -> None:
         """Index given ids and the ends of lanes."""
         self.network = network
-        lanes = network.lanes
+        self.lanes = lanes = network.lanes
         self.given = {name.decode(): row for row, name in enumerate(lanes["id"]) if name}
         self.sites = {encoded(site["id"]): at for at, site in enumerate(network.sites)}
         self.items = {encoded(item["id"]): at for at, item in enumerate(network.items)}
@@ -867,7 +1060,7 @@ class LaneNames:
         )
         first = self.first_row(ends)
         row = first + int(match[4] or 1) - 1
-        lanes = self.network.lanes
+        lanes = self.lanes
         columns = (lanes["origin"], lanes["destination"], lanes["item"])
         if first < 0 or row >= lanes["rows"] or lanes["id"][row]:
             return -1
@@ -876,7 +1069,7 @@ class LaneNames:
     def first_row(self, ends: Key) -> int:
         """Return the first lane with these ends, -1 if there is none."""
         if self.ends is None:
-            lanes = self.network.lanes
+            lanes = self.lanes
             self.ends = {}
             keys = zip(lanes["origin"], lanes["destination"], lanes["item"])  # noqa: B905 - Python 3.9
             for row, key in enumerate(keys):
@@ -885,7 +1078,7 @@ class LaneNames:
 
     def name(self, row: int) -> str:
         """Return the name of a lane."""
-        network, lanes = self.network, self.network.lanes
+        network, lanes = self.network, self.lanes
         given: bytes = lanes["id"][row]
         if given:
             return given.decode()
@@ -1003,7 +1196,7 @@ PLAN: dict[str, Any] = {
     **keys("total_cost total_cost_rounded rounding_difference", "amount"),
     "cost_parts": keys("supply handling transport charges shortage lateness", "amount"),
     "totals": {
-        **keys("lines_complete lines_in_part lines_none set_aside", "count"),
+        **keys("lines_complete lines_in_part lines_none ?lines_late set_aside", "count"),
         "quantities": [
             {
                 **keys("item unit", "text"),
@@ -1016,6 +1209,7 @@ PLAN: dict[str, Any] = {
         {
             "lane": "?text",
             **keys("origin destination item", "text"),
+            **keys("?departs ?arrives", "?text"),
             **keys("quantity unit_cost transport_cost supply_cost", "amount"),
             **keys("handling_cost charges cost", "amount"),
             "?stated": {"currency": "text", "transport_cost": "amount"},
@@ -1042,9 +1236,12 @@ PLAN: dict[str, Any] = {
                     **keys("origin item", "text"),
                     "lot": "?text",
                     "quantity": "amount",
-                    "legs": [{"lane": "text"}],
+                    "legs": [{"lane": "text", **keys("?departs ?arrives", "text")}],
+                    "?arrives": "text",
                 }
             ],
+            **keys("?earliest ?due ?latest", "text"),
+            "?days_late": "count",
             **keys("?shortage_cost ?ordered", "amount"),
             "?tags": ["text"],
             "?extra": "texts",
@@ -1054,6 +1251,7 @@ PLAN: dict[str, Any] = {
         {
             **keys("lane origin destination", "text"),
             "carrier": "?text",
+            **keys("?departs ?arrives", "text"),
             **keys("pallets weight_kg volume_m3", "known"),
             "cost": "amount",
             "order_references": ["text"],
@@ -1065,7 +1263,7 @@ PLAN: dict[str, Any] = {
             **keys("site item reason", "text"),
             "priority": "?count",
             "quantity": "amount",
-            "next_chance": (None,),
+            "next_chance": "?text",
             "?outranked_by": "object",
             "?kept": (True,),
         }
@@ -1104,7 +1302,8 @@ CERTIFICATE_HEAD = {
     "versions": "texts",
 }
 SIDES = ("received", "in", "out", "sent", "demand", "stock", "keep")
-TIER_FLOW = {"site": "text", "tier": "count", "quantity": "amount"}
+TIER_FLOW = {"site": "text", "tier": "count", "quantity": "amount", "?day": "text"}
+NODE = {"site": "text", "side": SIDES, "qualifier": "?text", "?day": "text"}
 CERTIFICATE = {
     **CERTIFICATE_HEAD,
     **keys("cost_scale total_cost lower_bound", "amount"),
@@ -1114,7 +1313,7 @@ CERTIFICATE = {
     "items": [
         {
             "item": "text",
-            "base": "whole",
+            **keys("base ?late_base", "whole"),
             "draws": [TIER_FLOW],
             "kept": [TIER_FLOW],
             "serves": [
@@ -1123,11 +1322,12 @@ CERTIFICATE = {
                     "from": ("out", "received"),
                     "origin": "?text",
                     "quantity": "amount",
+                    "?day": "text",
                 }
             ],
-            "passes": [{"site": "text", "origin": "?text", "quantity": "amount"}],
+            "passes": [{"site": "text", "origin": "?text", "quantity": "amount", "?day": "text"}],
             "shortages": [{"site": "text", "group": "?text", "quantity": "amount"}],
-            "prices": [{"site": "text", "side": SIDES, "qualifier": "?text", "price": "whole"}],
+            "prices": [{**NODE, "price": "whole"}],
         }
     ],
 }
@@ -1137,7 +1337,7 @@ SHORTAGE_STEP = {
     "priority": "count",
     **keys("achieved bound", "amount"),
 }
-COST_STEP = {"item": "text", "of": ("cost",), **keys("achieved bound", "amount")}
+COST_STEP = {"item": "text", "of": ("cost", "lateness"), **keys("achieved bound", "amount")}
 NO_PLAN_CERTIFICATE = {
     **CERTIFICATE_HEAD,
     **keys("cost_scale total_cost lower_bound gap", (None,)),
@@ -1145,7 +1345,7 @@ NO_PLAN_CERTIFICATE = {
     "cuts": [
         {
             "item": "text",
-            "nodes": [{"site": "text", "side": SIDES, "qualifier": "?text"}],
+            "nodes": [NODE],
             "root": "flag",
             **keys("forced_out can_enter", "amount"),
         }
@@ -1164,7 +1364,7 @@ def is_certificate(certificate: Value) -> bool:
     if isinstance(certificate, dict) and certificate.get("lexicographic") == "no_plan":
         return has_shape(certificate, NO_PLAN_CERTIFICATE)
     return has_shape(certificate, CERTIFICATE) and all(
-        has_shape(step, COST_STEP if step.get("of") == "cost" else SHORTAGE_STEP)
+        has_shape(step, COST_STEP if step.get("of") in COST_STEP["of"] else SHORTAGE_STEP)
         for step in certificate["steps"]
     )
 
@@ -1255,7 +1455,8 @@ def lanes_picked(network: Network, selector: dict[str, list[str]]) -> set[int]:
     rows = set(range(lanes["rows"]))
     for key, texts in selector.items():
         if key == "ids":
-            rows &= {network.lane_names.row(name) for name in texts}
+            named = {network.lane_names.row(name) for name in texts}
+            rows = {row for row in rows if network.lane_of[row] in named}
         elif key in ("origin", "destination"):
             sites = {network.site_at.get(site, -1) for site in texts}
             rows = {row for row in rows if lanes[key][row] in sites}
@@ -1284,7 +1485,7 @@ def usable_lanes(network: Network, item: int) -> list[int]:
     behind that, moving on only at cross-docks. An own lane that must ship from a cross-dock wants
     stock there. Closures do not matter.
     """
-    lanes = network.lanes
+    lanes = network.stated
     own, general = network.lanes_of(item), network.lanes_of(-1)
     if not general:
         return own
@@ -1334,7 +1535,7 @@ class Arc:
     ``high`` is None where there is no limit; ``rank`` is 1 for shortage of the first priority.
     """
 
-    __slots__ = ("head", "high", "key", "kind", "low", "money", "rank", "tail")
+    __slots__ = ("days", "head", "high", "key", "kind", "late", "low", "money", "rank", "tail")
 
     def __init__(  # noqa: PLR0913, PLR0917 - what an arc is
         self,
@@ -1350,6 +1551,8 @@ class Arc:
         """Keep the parts."""
         self.kind, self.tail, self.head, self.low, self.high = kind, tail, head, low, high
         self.money, self.rank, self.key = money, rank, key
+        # How much of the money is for being late; how many days that is, if it costs none.
+        self.late, self.days = Fraction(0), 0
 
 
 class Tiers:
@@ -1360,6 +1563,7 @@ class Tiers:
         self.costs: list[Fraction] = []
         self.stated: list[tuple[str | None, Fraction]] = []  # currency, money in it
         self.steps: list[int] = []
+        self.since: list[int] = []  # the first day of each tier, 0: any
         self.rows: list[tuple[int, int, str | None]] = []  # tier from 1, steps, lot
         self.keep = self.keep_priority = 0
 
@@ -1368,10 +1572,34 @@ class Line:
     """An order line in steps: what it wants, and how much it matters."""
 
     def __init__(self, row: int, site: int, wanted: int, rank: Key) -> None:
-        """Keep the parts; ``rank`` is priority (0 for money), money, and a position of origins."""
-        self.row, self.site, self.wanted = row, site, wanted
-        self.priority, self.money, self.origins = rank
+        """Keep the parts.
+
+        ``rank`` is priority (0 for money), money, a position of origins, dates, money for lateness.
+        """
+        self.row, self.site, self.wanted, self.rank = row, site, wanted, rank
+        self.priority, self.money, self.origins = rank[:3]
+        # Days; None where there is none. The money is for a unit and a day.
+        self.earliest, self.due, self.latest, self.late_money = rank[3:]
         self.group = ""
+
+
+def place_key(site: int, side: str, qualifier: str | None, day: int | None) -> Key:
+    """Return what a place is known by; only some have a day."""
+    key = (site, side, qualifier)
+    return key if day is None else (*key, day_text(day))
+
+
+def node_key(network: Network, entry: dict[str, Any]) -> Key:
+    """Return what the place is known by that a certificate names."""
+    key = (network.site_at.get(entry["site"], -1), entry["side"], entry["qualifier"])
+    return (*key, entry["day"]) if "day" in entry else key
+
+
+def g_late(group: Line, day: int) -> int | None:
+    """Return how many days late a group is served on a day, None if it may not be then."""
+    if day < (group.earliest or 0) or (group.latest is not None and day > group.latest):
+        return None
+    return max(0, day - group.due) if group.due is not None else 0
 
 
 class Formal:
@@ -1389,13 +1617,19 @@ class Formal:
         self.name = network.items[item]["id"]
         self.step: Fraction = network.items[item]["step"]
         self.rules = [rule for rule in rules if item in rule.items]
-        self.rows = usable_lanes(network, item)
+        # Which lanes are of use is not a matter of dates.
+        self.usable = usable_lanes(network, item)
+        self.rows = self.usable
+        if network.dated:
+            used = set(self.usable)
+            self.rows = [row for row, lane in enumerate(network.lane_of) if lane in used]
         self.amounts = self._measures()
         for row in self.rows if network.charges else ():
             self.charge(row)  # raises where it is not known
         self.low: dict[int, int] = {}
         self.high: dict[int, int] = {}
         self._limit_lanes()
+        self._leave_out_what_closed()
         self.stock = self._stock()
         self.lines = self._lines()
         self.groups = self._groups()
@@ -1463,6 +1697,15 @@ class Formal:
         if any(low > self.high[row] for row, low in self.low.items() if row in self.high):
             raise Unusable("a must-ship is above its capacity")
 
+    def _leave_out_what_closed(self) -> None:
+        """Let nothing go on departures that closed before the plan is made."""
+        lanes, head = self.network.lanes, self.network.head
+        made = instant(head.get("planned_at", head["cut_off"]))
+        for row in self.rows:
+            last = lanes["closes"][row] or lanes["departs"][row]
+            if last is not None and instant(last) < made:
+                self.low[row] = self.high[row] = 0
+
     def _stock(self) -> dict[int, Tiers]:
         """Return the stock by site; running sums are rounded down to steps, then differenced."""
         network, supply = self.network, self.network.supply
@@ -1474,9 +1717,16 @@ class Formal:
             units = network.units(self.item, supply["unit"][row])
             currency, money = supply["currency"][row], (supply["unit_cost"][row] or 0) / units
             cost = money * network.worth[currency]
-            if not tiers.costs or (tiers.costs[-1], tiers.stated[-1][0]) != (cost, currency):
+            named = supply["available_from"][row]
+            since = 0 if named is None else day_number(named)
+            of_tier = (cost, currency, since)
+            if (
+                not tiers.costs
+                or (tiers.costs[-1], tiers.stated[-1][0], tiers.since[-1]) != of_tier
+            ):
                 tiers.costs.append(cost)
                 tiers.stated.append((currency, money))
+                tiers.since.append(since)
                 tiers.steps.append(0)
             before = held.get(site, Fraction(0))
             held[site] = before + supply["quantity"][row] * units
@@ -1511,7 +1761,18 @@ class Formal:
                 money = self.options["worth_at_most"]
             elif not priority:
                 priority = 5
-            rank = (priority if money is None else 0, money, demand["origins"].codes[row])
+            days = [
+                None if demand[column][row] is None else day_number(demand[column][row])
+                for column in ("earliest", "due", "latest")
+            ]
+            late = demand["late_cost_per_day"][row]
+            rank = (
+                priority if money is None else 0,
+                money,
+                demand["origins"].codes[row],
+                *days,
+                None if late is None else late / units,
+            )
             lines.append(Line(row, demand["site"][row], wanted, rank))
         return lines
 
@@ -1522,16 +1783,18 @@ class Formal:
         for line in self.lines:
             if not line.wanted:
                 continue
-            rank = (line.priority, line.money, line.origins)
+            rank = line.rank
             label = self.network.demand["reference"][line.row].decode()
             line.group = labels.setdefault((line.site, *rank), label)
             group = groups.setdefault(line.group, Line(line.row, line.site, 0, rank))
             group.wanted += line.wanted
         return groups
 
-    def place(self, site: int, side: str, qualifier: str | None = None) -> int:
-        """Return the number of a place, a new one if it is not known."""
-        return self.places.setdefault((site, side, qualifier), len(self.places))
+    def place(
+        self, site: int, side: str, qualifier: str | None = None, day: int | None = None
+    ) -> int:
+        """Return the number of a place (on a day), a new one if it is not known."""
+        return self.places.setdefault(place_key(site, side, qualifier, day), len(self.places))
 
     def arc(  # noqa: PLR0913, PLR0917 - what an arc is
         self,
@@ -1558,33 +1821,82 @@ class Formal:
         lanes = self.network.lanes
         self.starts = {lanes["origin"][row] for row in self.rows}
         self.before = defaultdict(set)
+        for row in self.usable:
+            ends = self.network.stated
+            self.before[ends["destination"][row]].add(ends["origin"][row])
+        self.arriving = defaultdict(set)
         for row in self.rows:
-            self.before[lanes["destination"][row]].add(lanes["origin"][row])
+            self.arriving[lanes["destination"][row]].add(lanes["origin"][row])
         at_site = defaultdict(list)
         for label, group in self.groups.items():
             at_site[group.site].append((label, group))
-        relevant = self.starts | set(self.before) | set(self.stock) | set(at_site)
+        relevant = self.starts | set(self.arriving) | set(self.stock) | set(at_site)
         self.closed = set()
         for rule in self.rules:
             if rule.kind == "closure":
                 self.closed |= rule.sites
         self.limits = self._throughput(relevant)
-        self.leave: dict[int, int] = {}
-        self.enter: dict[int, int] = {}
+        self._find_days(at_site)
+        self.leave: dict[Key, int] = {}
+        self.enter: dict[Key, int] = {}
         for site in sorted(relevant):
-            self._build_site(site, at_site[site])
+            for day in self.days[site]:
+                self._build_site(site, day, at_site[site])
+            for label, group in at_site[site]:
+                node = self.place(site, "demand", label)
+                self._want(node, group.wanted, (site, label), group.priority, group.money)
             if site in self.stock:
                 self._build_stock(site, self.stock[site])
-        self.lane_tail = array("i", [self.leave[lanes["origin"][row]] for row in self.rows])
+        self.lane_tail = array("i", [self._start(row) for row in self.rows])
         self.lane_head = array("i", [self._end(row) for row in self.rows])
+
+    def _find_days(self, at_site: dict[int, list[tuple[str, Line]]]) -> None:
+        """Find the days of each site; those that nothing tells apart are named by the first.
+
+        In a network without dates every site has the one day None.
+        """
+        network, lanes = self.network, self.network.lanes
+        self.days: dict[int, list[int | None]] = defaultdict(lambda: [None])
+        self.same: dict[Key, int] = {}
+        if not network.dated:
+            return
+        found: dict[int, set[int]] = defaultdict(set)
+        for row in self.rows:
+            found[lanes["origin"][row]].add(network.departs[row])
+            found[lanes["destination"][row]].add(network.arrives[row])
+        for site in set(at_site) | set(self.stock):
+            since = self.stock[site].since if site in self.stock else ()
+            for day, (_, group) in itertools.product(since, at_site.get(site, ())):
+                found[site].add(max(network.today, day, group.earliest or 0))
+            if not found[site]:
+                found[site].add(network.today)
+        for site, own in found.items():
+            since = self.stock[site].since if site in self.stock else []
+            groups = [group for _, group in at_site.get(site, ())]
+            looks: dict[Value, int] = {}
+            for day in sorted(own):
+                look: Value = day
+                if not network.passing[site] and not self.limits.get(site):
+                    look = ([day >= first for first in since], [g_late(g, day) for g in groups])
+                self.same[(site, day)] = looks.setdefault(str(look), day)
+            self.days[site] = list(dict.fromkeys(looks.values()))
+
+    def _spot(self, site: int, days: Value, row: int) -> Key:
+        """Return a site, and the day that names the place where it is on one of the days."""
+        return (site, None if days is None else self.same[(site, days[row])])
+
+    def _start(self, row: int) -> int:
+        """Return the place where a lane starts."""
+        return self.leave[self._spot(self.network.lanes["origin"][row], self.network.departs, row)]
 
     def _end(self, row: int) -> int:
         """Return the place where a lane ends."""
         lanes = self.network.lanes
-        site = lanes["destination"][row]
-        if site in self.enter:
-            return self.enter[site]
-        return self.places[(site, "received", self.network.sites[lanes["origin"][row]]["id"])]
+        spot = self._spot(lanes["destination"][row], self.network.arrives, row)
+        if spot in self.enter:
+            return self.enter[spot]
+        name = self.network.sites[lanes["origin"][row]]["id"]
+        return self.places[place_key(spot[0], "received", name, spot[1])]
 
     def _throughput(self, relevant: set[int]) -> dict[int, dict[str, int]]:
         """Return by site and flow the least limit in steps."""
@@ -1598,10 +1910,14 @@ class Formal:
                 limits[site][flow] = min(most, limits[site].get(flow, most))
         return limits
 
-    def _build_site(self, site: int, groups: list[tuple[str, Line]]) -> None:  # noqa: C901 - a site is built in one place
-        """Add what a site is made of, and the order lines there."""
+    def _build_site(  # noqa: C901, PLR0912 - a site is built in one place
+        self, site: int, day: int | None, groups: list[tuple[str, Line]]
+    ) -> None:
+        """Add what a site is made of on a day, and the ways to the order lines there."""
         network, limit = self.network, self.limits.get(site, {})
-        passing, arrivals = network.passing[site], self.before.get(site, set())
+        passing, arrivals = network.passing[site], self.arriving.get(site, set())
+        own: Key = (site,) if day is None else (site, day)
+        on = () if day is None else (day_text(day),)
         choosy = any(group.origins >= 0 for _, group in groups)
         mixed = not passing and arrivals and (site in self.stock or site in self.starts)
         apart = bool(choosy or mixed)
@@ -1610,34 +1926,60 @@ class Formal:
         handling = network.sites[site]["handling"](self.name) * self.step
         shut = 0 if site in self.closed else UNLIMITED
         through = 0 if site in self.closed else limit.get("through")
-        entry, exit_ = self.place(site, "in"), self.place(site, "out")
-        self.arc("handle", entry, exit_, (site,), handling, through)
-        self.leave[site] = exit_
+        entry = self.place(site, "in", None, day)
+        leave = exit_ = self.place(site, "out", None, day)
+        self.arc("handle", entry, exit_, own, handling, through)
         if apart or "sent" in limit:
-            self.leave[site] = self.place(site, "sent")
-            self.arc("leave", exit_, self.leave[site], (site,), high=limit.get("sent"))
+            leave = self.place(site, "sent", None, day)
+            self.arc("leave", exit_, leave, own, high=limit.get("sent"))
+        self.leave[(site, day)] = leave
         received: list[tuple[int | None, str | None]] = []
         if choosy:
-            received = [(origin, network.sites[origin]["id"]) for origin in sorted(arrivals)]
+            here = self._arriving(site, day) if network.dated else arrivals
+            received = [(origin, network.sites[origin]["id"]) for origin in sorted(here)]
         elif (apart and arrivals) or "received" in limit:
             received = [(None, None)]
         if not choosy:
-            self.enter[site] = self.place(site, "received") if received else entry
+            at = self.place(site, "received", None, day) if received else entry
+            self.enter[(site, day)] = at
         for _, name in received:
-            at = self.place(site, "received", name)
+            at = self.place(site, "received", name, day)
             if not apart:
-                self.arc("enter", at, entry, (site,), high=limit["received"])
+                self.arc("enter", at, entry, own, high=limit["received"])
             elif passing:
-                self.arc("pass", at, self.leave[site], (site, name), handling, shut)
+                self.arc("pass", at, leave, (site, name, *on), handling, shut)
         for label, group in groups:
             node, allowed = self.place(site, "demand", label), self.allowed(group)
+            late = None if day is None else g_late(group, day)
+            if day is not None and late is None:
+                continue
             if allowed is None or site in allowed:
-                self.arc("serve", exit_, node, (site, label, "out", None))
+                self.arc("serve", exit_, node, (site, label, "out", None, *on))
+                self._mark_late(group, late)
             for origin, name in received if apart else ():
                 if allowed is None or self._accepts(origin, allowed):
-                    at, key = self.place(site, "received", name), (site, label, "received", name)
+                    at = self.place(site, "received", name, day)
+                    key = (site, label, "received", name, *on)
                     self.arc("serve", at, node, key, handling, shut)
-            self._want(node, group.wanted, (site, label), group.priority, group.money)
+                    self._mark_late(group, late)
+
+    def _arriving(self, site: int, day: int | None) -> set[int]:
+        """Return the sites from which something arrives at a place of a site."""
+        lanes, arrives = self.network.lanes, self.network.arrives
+        return {
+            lanes["origin"][row]
+            for row in self.rows
+            if lanes["destination"][row] == site and self.same[(site, arrives[row])] == day
+        }
+
+    def _mark_late(self, group: Line, late: int | None) -> None:
+        """Let the arc that was added last cost or weigh that goods on it are late."""
+        arc = self.arcs[-1]
+        if late and group.late_money is not None:
+            arc.late = late * group.late_money * self.step
+            arc.money += arc.late
+        elif late:
+            arc.days = late * (10 - group.priority if group.priority else 1)
 
     def _accepts(self, origin: int | None, allowed: set[int]) -> bool:
         """Return whether all stock that can come from ``origin`` is allowed; none of it: no."""
@@ -1656,16 +1998,26 @@ class Formal:
 
     def _build_stock(self, site: int, tiers: Tiers) -> None:
         """Add the stock of a site, and what of it should stay."""
-        entry = self.place(site, "in")
+        days = self.days[site]
         for tier, (cost, steps) in enumerate(zip(tiers.costs, tiers.steps), 1):  # noqa: B905 - 3.9
-            key, money = (site, tier), cost * self.step
-            if not tiers.keep:
-                self.arc("draw", ROOT, entry, key, money, steps)
+            key, money, since = (site, tier), cost * self.step, tiers.since[tier - 1]
+            spots = [
+                (self.place(site, "in", None, day), key if day is None else (*key, day_text(day)))
+                for day in days
+                if day is None or since <= day
+            ]
+            if len(days) == 1 and not tiers.keep:
+                there, day = steps if spots else 0, days[0]
+                entry = self.place(site, "in", None, day)
+                named = key if day is None else (*key, day_text(day))
+                self.arc("draw", ROOT, entry, named, money, there)
                 continue
             at = self.place(site, "stock", str(tier))
             self.arc("supply", ROOT, at, key, high=steps)
-            self.arc("draw", at, entry, key, money)
-            self.arc("keep", at, self.place(site, "keep"), key)
+            for entry, named in spots:
+                self.arc("draw", at, entry, named, money)
+            if tiers.keep:
+                self.arc("keep", at, self.place(site, "keep"), key)
         if tiers.keep:
             keep = self.place(site, "keep")
             self._want(keep, tiers.keep, (site, None), tiers.keep_priority, None)
@@ -1687,7 +2039,7 @@ class Formal:
 class Flow:
     """The flow of one item as plan and certificate state it, on lanes and on other arcs."""
 
-    def __init__(  # noqa: C901 - three passes over the arcs, each needing the one before
+    def __init__(  # noqa: C901, PLR0912 - three passes over the arcs, each needing the one before
         self, formal: Formal, on_lane: dict[int, int], stated: dict[Key, int]
     ) -> None:
         """Put stated flows on their arcs, and work out the rest: entering, handling, leaving."""
@@ -1700,13 +2052,15 @@ class Flow:
             came[formal.lane_head[at]] += steps
             went[formal.lane_tail[at]] += steps
         self.arcs = [0] * len(formal.arcs)
+        shelves: dict[Key, int] = defaultdict(int)
+        for key, steps in stated.items():
+            if key[0] in ("draw", "keep"):
+                shelves[key[1:3]] += steps
         for at, arc in enumerate(formal.arcs):
             if arc.kind == "want":
                 self.arcs[at] = arc.low
             elif arc.kind == "supply":
-                self.arcs[at] = stated.get(("draw", *arc.key), 0) + stated.get(
-                    ("keep", *arc.key), 0
-                )
+                self.arcs[at] = shelves.get(arc.key, 0)
             else:
                 self.arcs[at] = stated.get((arc.kind, *arc.key), 0)
             if arc.kind == "draw":
@@ -1719,9 +2073,16 @@ class Flow:
                 came[arc.head] += came[arc.tail]
             elif arc.kind == "leave":
                 self.arcs[at] = went[arc.head]
+        self._drawn: dict[Key, int] = defaultdict(int)
         for at, arc in enumerate(formal.arcs):
             if arc.kind == "handle":
                 self.arcs[at] = came[arc.tail]
+            elif arc.kind == "draw":
+                self._drawn[arc.key[:2]] += self.arcs[at]
+
+    def drawn(self, site: int, tier: int) -> int:
+        """Return what is drawn of a tier, on all days together."""
+        return self._drawn.get((site, tier), 0)
 
     def of(self, kind: str) -> dict[Key, int]:
         """Return the flows above 0 on arcs of a kind, by their key."""
@@ -1769,6 +2130,8 @@ def read_flow(
             place = f"items/{formal.name}/{table}/{number}"
             site = formal.network.site_at.get(entry["site"], -1)
             key = (kind, site, *(entry[field] for field in fields))
+            if "day" in entry:
+                key = (*key, entry["day"])
             steps = in_steps(entry["quantity"], formal.step)
             if key not in known:
                 report.add("name_unknown", "there is no such arc", place)
@@ -1789,10 +2152,10 @@ def check_flow(flow: Flow, report: Report) -> None:
     balance: dict[int, int] = defaultdict(int)
     for row, low in formal.low.items():
         if flow.on_lane.get(row, 0) < low:
-            report.add("limit_broken", "less than must go", formal.network.lane_names.name(row))
+            report.add("limit_broken", "less than must go", formal.network.lane_name(row))
     for row, high in formal.high.items():
         if flow.on_lane.get(row, 0) > high:
-            report.add("limit_broken", "more than can go", formal.network.lane_names.name(row))
+            report.add("limit_broken", "more than can go", formal.network.lane_name(row))
     for at, steps in flow.lanes.items():
         balance[formal.lane_tail[at]] -= steps
         balance[formal.lane_head[at]] += steps
@@ -1811,8 +2174,7 @@ def read_prices(formal: Formal, proof: dict[str, Any], report: Report) -> list[i
     prices, sound = {ROOT: 0}, True
     for number, entry in enumerate(proof["prices"]):
         place = f"items/{formal.name}/prices/{number}"
-        site = formal.network.site_at.get(entry["site"], -1)
-        node = formal.places.get((site, entry["side"], entry["qualifier"]))
+        node = formal.places.get(node_key(formal.network, entry))
         if node is None:
             report.add("name_unknown", "there is no such place", place)
             sound = False
@@ -1860,7 +2222,8 @@ def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Rep
     Where it is above 0 nothing beyond the minimum may flow; below 0 the arc must be full. Then any
     other flow costs at least as much. One step short of the r-th of T priorities costs
     (T + 1 - r) * base; a base above what any way round the network can cost makes less shortage
-    of a priority better than any saving, and better than any shortage of later priorities.
+    of a priority better than any saving, and better than any shortage of later priorities. A step
+    a day late weighs ``late_base`` times its weight, between shortage and money likewise.
     """
     formal = flow.formal
     prices = read_prices(formal, proof, report)
@@ -1869,7 +2232,14 @@ def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Rep
     if not whole or any(cost.denominator != 1 for cost in arc_costs):
         report.add("cost_scale_wrong", "a scaled cost is not whole", formal.name)
         return
-    base = int(proof["base"])
+    base, late_base = int(proof["base"]), int(proof.get("late_base", "0"))
+    largest = max(map(abs, itertools.chain([0], lane_costs, arc_costs)))
+    weighs = any(arc.days for arc in formal.arcs)
+    if weighs != ("late_base" in proof) or (
+        weighs and late_base < 2 * len(formal.places) * largest + 1
+    ):
+        report.add("weights_too_small", "the base of lateness does not prove it", formal.name)
+    arc_costs = [cost + arc.days * late_base for arc, cost in zip(formal.arcs, arc_costs)]  # noqa: B905 - Python 3.9
     largest = max(map(abs, itertools.chain([0], lane_costs, arc_costs)))
     if base < 2 * len(formal.places) * largest + 1:
         report.add("weights_too_small", "the base does not prove the order", formal.name)
@@ -1881,7 +2251,7 @@ def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Rep
             row, steps = formal.rows[at], flow.lanes.get(at, 0)
             right = formal.low.get(row, 0) if reduced > 0 else formal.high.get(row)
             if steps != right:
-                name = formal.network.lane_names.name(row)
+                name = formal.network.lane_name(row)
                 report.add("not_optimal", f"{steps} steps contradict the prices", name)
     for arc, steps, cost in zip(formal.arcs, flow.arcs, arc_costs):  # noqa: B905 - Python 3.9
         weight = (len(formal.priorities) + 1 - arc.rank) * base if arc.rank else 0
@@ -1894,8 +2264,7 @@ def check_cut(formal: Formal, cut: dict[str, Any], place: str, report: Report) -
     """Check that more must leave a set of places than can come into it."""
     inside = {ROOT} if cut["root"] else set()
     for entry in cut["nodes"]:
-        site = formal.network.site_at.get(entry["site"], -1)
-        node = formal.places.get((site, entry["side"], entry["qualifier"]))
+        node = formal.places.get(node_key(formal.network, entry))
         if node is None or node in inside:
             code = "name_unknown" if node is None else "listed_twice"
             report.add(code, "a place of the cut", place)
@@ -1940,12 +2309,14 @@ def read_plan_lines(
     lines, seen, sound = [], set(), True
     for number, document in enumerate(plan["plan_lines"]):
         local = document["lane"] is None
-        row = -1 if local else network.lane_names.row(document["lane"])
+        row = -1 if local else network.movement(document["lane"], document.get("departs"))
         origin = network.site_at.get(document["origin"], -1)
         destination = network.site_at.get(document["destination"], -1)
         item = network.item_at.get(document["item"], -1)
         line = PlanLine(document, number, (row, origin, destination, item))
-        if min(origin, destination, item) < 0 or (row < 0 and not local):
+        dates = {field: document[field] for field in ("departs", "arrives") if field in document}
+        unknown = min(origin, destination, item) < 0 or (row < 0 and not local)
+        if unknown or dates != network.dates_of(row):
             report.add("name_unknown", "a plan line names what is not there", line.place)
             sound = False
             continue
@@ -2034,7 +2405,7 @@ class Audit:
 
     def _has_unclear_limits(self) -> bool:
         """Return whether a limit on a lane of several items does not say that it is per item."""
-        lanes = self.network.lanes
+        lanes = self.network.stated
         unclear = {
             row
             for row in self.network.lanes_of(-1)
@@ -2104,7 +2475,6 @@ class Tables:
         self.network, self.plan, self.report = audit.network, audit.plan, audit.report
         self.certificate, self.options = audit.certificate, audit.options
         self.flows, self.lines, self.rules = audit.flows, lines, rules
-        self.drawn = [flow.of("draw") for flow in self.flows]
         # What sources of order lines use, in steps: by lane and item, or by site and item.
         self.used: dict[Key, int] = defaultdict(int)
         self.first: dict[Key, int] = defaultdict(int)
@@ -2155,11 +2525,12 @@ class Tables:
         }
         parts = []
         for flow in self.flows:
-            named = ("supply", "handling", "transport", "charges", "shortage")
+            named = ("supply", "handling", "transport", "charges", "shortage", "lateness")
             money = dict.fromkeys(named, Fraction(0))
             for arc, steps in zip(flow.formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
                 if arc.kind in kinds:
-                    money[kinds[arc.kind]] += steps * arc.money
+                    money[kinds[arc.kind]] += steps * (arc.money - arc.late)
+                    money["lateness"] += steps * arc.late
             for row, steps in flow.on_lane.items():
                 per_step = self.lane_money(row, flow.formal.item) * flow.formal.step
                 money["transport"] += steps * per_step
@@ -2169,7 +2540,7 @@ class Tables:
 
     def _check_steps(self, parts: list[dict[str, Fraction]]) -> None:
         """Check the steps of what is minimised, and the bounds."""
-        expected: list[tuple[str, int | None, Fraction]] = []
+        expected: list[tuple[str, int | str, Fraction]] = []
         total = Fraction(0)
         for flow, money in zip(self.flows, parts):  # noqa: B905 - Python 3.9
             formal = flow.formal
@@ -2179,10 +2550,15 @@ class Tables:
                     short[formal.priorities[arc.rank - 1]] += steps
             if self.options["shortages"] == "allow":
                 expected += [(formal.name, p, steps * formal.step) for p, steps in short.items()]
-            expected.append((formal.name, None, sum(money.values(), Fraction(0))))
+            if any(arc.days for arc in formal.arcs):
+                late = sum(arc.days * steps for arc, steps in zip(formal.arcs, flow.arcs))  # noqa: B905 - Python 3.9
+                expected.append((formal.name, "lateness", late * formal.step))
+            expected.append((formal.name, "cost", sum(money.values(), Fraction(0))))
             total += expected[-1][2]
         steps_ = self.certificate["steps"]
-        stated = [(one["item"], one.get("priority"), amount(one["achieved"])) for one in steps_]
+        stated = [
+            (one["item"], one.get("priority", one["of"]), amount(one["achieved"])) for one in steps_
+        ]
         if stated != expected:
             self.wrong("bound_wrong", "not what was achieved", "steps")
         if any(amount(one["achieved"]) != amount(one["bound"]) for one in steps_):
@@ -2201,20 +2577,27 @@ class Tables:
         for rule in self.rules:
             if rule.kind != "throughput":
                 continue
-            passed: dict[int, Fraction] = defaultdict(Fraction)
-            end = lanes["origin" if rule.rule["flow"] == "sent" else "destination"]
+            passed: dict[Key, Fraction] = defaultdict(Fraction)
+            sent = rule.rule["flow"] == "sent"
+            end = lanes["origin" if sent else "destination"]
+            days = self.network.departs if sent else self.network.arrives
             for flow in self.flows:
                 formal = flow.formal
-                moved = [(end[row], steps) for row, steps in flow.on_lane.items()]
+                moved = [
+                    ((end[row], days and days[row]), steps) for row, steps in flow.on_lane.items()
+                ]
                 if rule.rule["flow"] == "through":
-                    moved += [(key[0], steps) for key, steps in flow.of("draw").items()]
-                moved = [(site, steps) for site, steps in moved if site in rule.sites]
+                    moved += [
+                        ((key[0], day_number(key[2]) if len(key) > 2 else None), steps)
+                        for key, steps in flow.of("draw").items()
+                    ]
+                moved = [(spot, steps) for spot, steps in moved if spot[0] in rule.sites]
                 if formal.item not in rule.items or not moved:
                     continue
                 measure = rule.rule.get("measure", "unit")
                 per = self.network.measure(formal.item, measure) * formal.step
-                for site, steps in moved:
-                    passed[site] += steps * per
+                for spot, steps in moved:
+                    passed[spot] += steps * per
             if any(quantity > Fraction(rule.rule["maximum"]) for quantity in passed.values()):
                 self.wrong("limit_broken", "a throughput limit over items", rule.rule["id"])
 
@@ -2222,11 +2605,11 @@ class Tables:
         """Check the use of stock."""
         expected = []
         for flow in self.flows:
-            drawn, kept = flow.of("draw"), flow.of("keep")
+            kept = flow.of("keep")
             for site, tiers in flow.formal.stock.items():
                 there = sum(tiers.steps)
                 numbers = range(1, len(tiers.steps) + 1)
-                shipped = sum(drawn.get((site, tier), 0) for tier in numbers)
+                shipped = sum(flow.drawn(site, tier) for tier in numbers)
                 stays = sum(kept.get((site, tier), 0) for tier in numbers)
                 if there:
                     steps = (there, shipped, stays, there - shipped - stays)
@@ -2261,7 +2644,10 @@ class Tables:
         none = sum(bool(short) and not served for served, short in lines)
         counts = (complete, len(lines) - complete - none, none, len(plan["set_aside"]))
         fields = ("lines_complete", "lines_in_part", "lines_none", "set_aside")
-        if tuple(totals[field] for field in fields) != counts:
+        late = [line["days_late"] > 0 for line in plan["order_lines"] if "days_late" in line]
+        dated = self.network.dated and bool(plan["order_lines"])
+        right = totals.get("lines_late") == (sum(late) if dated else None)
+        if tuple(totals[field] for field in fields) != counts or not right:
             self.wrong("total_wrong", "not the number of order lines", "totals")
         expected = []
         for flow in self.flows:
@@ -2299,6 +2685,8 @@ class Tables:
                     self.wrong("order_line_wrong", "it does not add up", place)
                 for source in document["sources"]:
                     sound = self._follow(flow, line, source, place) and sound
+                if not self._is_dated(line, document):
+                    self.wrong("order_line_wrong", "its dates do not follow", place)
                 served[(formal.item, line.group)] += amount(document["served"])
         if not sound:
             return False
@@ -2333,18 +2721,59 @@ class Tables:
             text = document.get(field)
             if (None if text is None else amount(text)) != value:
                 return False
+        for field in ("earliest", "due", "latest"):
+            if document.get(field) != demand[field][row]:
+                return False
         for field in ("tags", "extra"):
             text = demand[field][row]
             if document.get(field) != (None if text is None else json.loads(text)):
                 return False
         return said == right
 
+    def _is_dated(self, line: Line, document: dict[str, Any]) -> bool:
+        """Return whether an order line says how late it is, and gets nothing out of its window."""
+        arrivals = [source.get("arrives") for source in document["sources"]]
+        if not self.network.dated:
+            return "days_late" not in document and not any(arrivals)
+        late = [g_late(line, day_number(day)) for day in arrivals if day and is_date(day)]
+        return (
+            len(late) == len(arrivals)
+            and None not in late
+            and document.get("days_late") == max((days or 0 for days in late), default=0)
+        )
+
+    def _is_on_time(self, rows: list[int], source: dict[str, Any]) -> bool:
+        """Return whether legs follow each other by their days, and the last is the arrival.
+
+        Goods leave a cross-dock on the day on which they reach it. Where they are drawn they are
+        from lots that are there by then.
+        """
+        network, supply = self.network, self.network.supply
+        dates = [{k: leg[k] for k in leg if k != "lane"} for leg in source["legs"]]
+        if dates != [network.dates_of(row) for row in rows]:
+            return False
+        if not network.dated:
+            return True
+        arrives, departs = network.arrives, network.departs
+        turns = zip(rows, rows[1:])  # noqa: B905, RUF007 - Python 3.9
+        if any(arrives[before] != departs[after] for before, after in turns):
+            return False
+        if rows and source["arrives"] != day_text(arrives[rows[-1]]):
+            return False
+        first = day_text(departs[rows[0]]) if rows else source["arrives"]
+        return any(
+            (supply["available_from"][row] or "") <= first
+            for row in network.supply_of(network.item_at[source["item"]])
+            if supply["lot"][row] == source["lot"]
+            and network.sites[supply["site"][row]]["id"] == source["origin"]
+        )
+
     def _follow(self, flow: Flow, line: Line, source: dict[str, Any], place: str) -> bool:
         """Follow one source from its origin to the site of its line, and count what it uses."""
         network, formal = self.network, flow.formal
         steps = in_steps(source["quantity"], formal.step)
         origin = network.site_at.get(source["origin"], -1)
-        rows = [network.lane_names.row(leg["lane"]) for leg in source["legs"]]
+        rows = [network.movement(leg["lane"], leg.get("departs")) for leg in source["legs"]]
         allowed = formal.allowed(line)
         here, right = origin, origin >= 0 and source["item"] == formal.name
         right = right and (allowed is None or origin in allowed)
@@ -2355,7 +2784,7 @@ class Tables:
         if steps is None:
             self.wrong("order_line_wrong", "not a whole number of steps above 0", place)
             return False
-        if not right or here != line.site:
+        if not right or here != line.site or not self._is_on_time(rows, source):
             self.wrong("route_wrong", "no way from origin to site", place)
             return False
         self.lots[(origin, formal.item, source["lot"])] += steps
@@ -2374,11 +2803,9 @@ class Tables:
         lanes = self.network.lanes
         lots: dict[Key, int] = defaultdict(int)
         for flow in self.flows:
-            item, drawn = flow.formal.item, flow.of("draw")
+            item = flow.formal.item
             for site, tiers in flow.formal.stock.items():
-                left = {
-                    tier + 1: drawn.get((site, tier + 1), 0) for tier in range(len(tiers.steps))
-                }
+                left = {tier + 1: flow.drawn(site, tier + 1) for tier in range(len(tiers.steps))}
                 for tier, steps, lot in tiers.rows:
                     taken = min(steps, left[tier])
                     left[tier] -= taken
@@ -2424,8 +2851,10 @@ class Tables:
 
     def _check_plan_lines(self) -> None:
         """Check the order of plan lines and all their costs."""
-        fields = ("origin", "destination", "item", "lane")
-        keys_ = [tuple((line.document[f] or "").encode() for f in fields) for line in self.lines]
+        fields = ("origin", "destination", "item", "departs", "lane")
+        keys_ = [
+            tuple((line.document.get(f) or "").encode() for f in fields) for line in self.lines
+        ]
         if not rises(keys_):
             self.wrong("plan_line_wrong", "not sorted", "plan_lines")
         supply: dict[Key, Fraction] = defaultdict(Fraction)
@@ -2437,10 +2866,10 @@ class Tables:
         if local != set(self.local):
             self.wrong("plan_line_wrong", "goods used where they are drawn", "plan_lines")
         for flow in self.flows:
-            formal, drawn = flow.formal, flow.of("draw")
+            formal = flow.formal
             for site, tiers in formal.stock.items():
                 money = sum(
-                    drawn.get((site, tier), 0) * formal.step * cost
+                    flow.drawn(site, tier) * formal.step * cost
                     for tier, cost in enumerate(tiers.costs, 1)
                 )
                 if supply[(site, formal.item)] != money:
@@ -2466,10 +2895,9 @@ class Tables:
             right = ends == (line.origin, line.destination)
         supply, transport = amount(document["supply_cost"]), quantity * unit_cost
         site, tiers = line.origin, flow.formal.stock.get(line.origin, Tiers())
-        drawn = self.drawn[line.item]
-        pile = [
-            (cost * step, drawn.get((site, tier), 0)) for tier, cost in enumerate(tiers.costs, 1)
-        ]
+        pile = [(cost * step, flow.drawn(site, tier)) for tier, cost in enumerate(tiers.costs, 1)]
+        # Tiers of later days may be cheaper: what is drawn first is not known then.
+        pile.sort()
         return (
             right
             and cost_of_first(pile, first) <= supply <= cost_of_first(pile[::-1], first)
@@ -2483,8 +2911,8 @@ class Tables:
     def _check_currencies(self) -> None:
         """Check what is paid in other currencies, line by line and in all, and each charge."""
         worth, spent = self.network.worth, self._spent_on_lanes()
-        for flow, drawn in zip(self.flows, self.drawn):  # noqa: B905 - Python 3.9
-            for (site, tier), steps in drawn.items():
+        for flow in self.flows:
+            for (site, tier, *_), steps in flow.of("draw").items():
                 code, money = flow.formal.stock[site].stated[tier - 1]
                 if code is not None:
                     spent[(code, "supply")] += steps * flow.formal.step * money
@@ -2551,10 +2979,11 @@ class Tables:
             pallets = total_of(load, per_pallet)
             expected.append(
                 {
-                    "lane": network.lane_names.name(row),
+                    "lane": network.lane_name(row),
                     "carrier": lanes["carrier"][row],
                     "origin": network.sites[lanes["origin"][row]]["id"],
                     "destination": network.sites[lanes["destination"][row]]["id"],
+                    **network.dates_of(row),
                     "pallets": pallets,
                     "weight_kg": total_of(load, lambda item: item.get("weight_kg")),
                     "volume_m3": total_of(load, lambda item: item.get("volume_m3")),
@@ -2584,7 +3013,12 @@ def adds_up(document: dict[str, Any]) -> bool:
     served, short = amount(document["served"]), amount(document["short"])
     sources = document["sources"]
     ways = {
-        (source["origin"], source["lot"], *(leg["lane"] for leg in source["legs"]))
+        (
+            source["origin"],
+            source["lot"],
+            source.get("arrives"),
+            *((leg["lane"], leg.get("departs")) for leg in source["legs"]),
+        )
         for source in sources
     }
     return (

@@ -8,6 +8,7 @@ import numpy as np
 
 from service.network.columns import Network
 from service.network.units import item_units
+from service.proof.calendar import day_of
 from service.proof.money import in_plan_money
 from service.proof.rulings import UnusableNetworkError
 
@@ -27,13 +28,15 @@ class Stock:
     """The stock of an item at a site.
 
     ``tier_cost`` is money per item unit in the currency of the plan, ``tier_stated`` the currency
-    (None: that one) and the money in it, ``tier_steps`` what there is; dearer tiers come later.
+    (None: that one) and the money in it, ``tier_steps`` what there is, ``tier_from`` the first day
+    on which it can be drawn (0: any); later tiers come later, and of these dearer ones.
     ``keep_steps`` is what should stay (0: no node for it), of ``keep_priority``.
     """
 
     tier_cost: tuple[Fraction, ...]
     tier_stated: tuple[tuple[str | None, Fraction], ...]
     tier_steps: tuple[int, ...]
+    tier_from: tuple[int, ...]
     rows: tuple[StockRow, ...]
     keep_steps: int
     keep_priority: int
@@ -58,6 +61,7 @@ def _stock(network: Network, item: int, rows: list[int]) -> Stock:
     costs: list[Fraction] = []
     stated: list[tuple[str | None, Fraction]] = []
     steps: list[int] = []
+    since: list[int] = []
     parts: list[StockRow] = []
     held = Fraction(0)
     keep_steps = keep_priority = 0
@@ -66,9 +70,13 @@ def _stock(network: Network, item: int, rows: list[int]) -> Stock:
         money = (supply.unit_cost.fraction(row) or Fraction(0)) / units
         currency = supply.currency.text(row)
         cost = money * in_plan_money(network.head, currency)
-        if not costs or cost != costs[-1] or currency != stated[-1][0]:
+        named = supply.available_from.text(row)
+        first = 0 if named is None else day_of(named)
+        tier = (cost, currency, first)
+        if not costs or tier != (costs[-1], stated[-1][0], since[-1]):
             costs.append(cost)
             stated.append((currency, money))
+            since.append(first)
             steps.append(0)
         before = held // step
         held += (supply.quantity.fraction(row) or Fraction(0)) * units
@@ -83,6 +91,7 @@ def _stock(network: Network, item: int, rows: list[int]) -> Stock:
         tier_cost=tuple(costs),
         tier_stated=tuple(stated),
         tier_steps=tuple(steps),
+        tier_from=tuple(since),
         rows=tuple(parts),
         keep_steps=keep_steps,
         keep_priority=keep_priority,

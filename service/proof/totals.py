@@ -8,6 +8,7 @@ from typing import Any
 from service.network.columns import Network
 from service.network.currencies import minor_units
 from service.network.rules import Throughput
+from service.proof.calendar import Calendar
 from service.proof.results import ItemResult
 from service.proof.rulings import Ruling, Rulings, measure_of
 from service.proof.shapes import amount
@@ -17,7 +18,7 @@ _ROUNDED = re.compile(r"-?(?:0|[1-9][0-9]*)(?:\.([0-9]+))?")
 
 
 def check_totals(
-    network: Network,
+    calendar: Calendar,
     results: Sequence[ItemResult],
     plan: Mapping[str, Any],
     findings: Findings,
@@ -38,8 +39,8 @@ def check_totals(
         findings.add("total_wrong", "not the total, rounded", place="/total_cost_rounded")
     if amount(plan["rounding_difference"]) != amount(rounded) - total:
         findings.add("total_wrong", "not the difference", place="/rounding_difference")
-    _check_line_counts(plan, findings)
-    _check_quantities(network, results, plan["totals"]["quantities"], findings)
+    _check_line_counts(plan, findings, dated=calendar.dated)
+    _check_quantities(calendar.network, results, plan["totals"]["quantities"], findings)
 
 
 def is_rounded(text: str, total: Fraction, *, decimals: int | None) -> bool:
@@ -57,7 +58,7 @@ def is_rounded(text: str, total: Fraction, *, decimals: int | None) -> bool:
     return written and amount(text) == (rounded if total >= 0 else -rounded)
 
 
-def _check_line_counts(plan: Mapping[str, Any], findings: Findings) -> None:
+def _check_line_counts(plan: Mapping[str, Any], findings: Findings, *, dated: bool) -> None:
     """Note a wrong number of order lines that go complete, in part, not at all, or set aside."""
     complete = none = 0
     for line in plan["order_lines"]:
@@ -71,6 +72,8 @@ def _check_line_counts(plan: Mapping[str, Any], findings: Findings) -> None:
         "lines_none": none,
         "set_aside": len(plan["set_aside"]),
     }
+    if dated and plan["order_lines"]:
+        expected["lines_late"] = sum(line.get("days_late", 0) > 0 for line in plan["order_lines"])
     totals = plan["totals"]
     if {key: totals[key] for key in totals if key != "quantities"} != expected:
         findings.add("total_wrong", "not the number of order lines", place="/totals")
@@ -167,41 +170,45 @@ def check_shortages(
 
 
 def check_site_limits(
-    network: Network, rulings: Rulings, results: Sequence[ItemResult], findings: Findings
+    calendar: Calendar, rulings: Rulings, results: Sequence[ItemResult], findings: Findings
 ) -> None:
     """Note every throughput limit that the items of a rule break together.
 
     Each item alone was bounded by the limit; where more than one passes, their sum must be too.
     A plan that is optimal under the weaker limits and respects the stronger one is optimal.
     """
+    network = calendar.network
     for ruling in rulings.rulings:
         if not isinstance(ruling.rule, Throughput):
             continue
-        passed: dict[int, Fraction] = {}
+        passed: dict[tuple[int, object], Fraction] = {}
         for result in results:
             if not ruling.items[result.item]:
                 continue
-            for site, steps in _passing(network, ruling, result).items():
+            for spot, steps in _passing(calendar, ruling, result).items():
                 per = measure_of(network.items[result.item], ruling.rule.measure) * result.step
-                passed[site] = passed.get(site, Fraction(0)) + steps * per
-        for site, quantity in passed.items():
+                passed[spot] = passed.get(spot, Fraction(0)) + steps * per
+        for (site, _), quantity in passed.items():
             if ruling.sites[site] and quantity > ruling.rule.maximum:
                 place = f"{ruling.rule.id}: {network.sites[site].id}"
                 findings.add("limit_broken", "a throughput limit over items", place=place)
 
 
-def _passing(network: Network, ruling: Ruling, result: ItemResult) -> dict[int, int]:
-    """Return by site what of an item counts towards a throughput limit, in steps."""
-    lanes = network.lanes
+def _passing(
+    calendar: Calendar, ruling: Ruling, result: ItemResult
+) -> dict[tuple[int, object], int]:
+    """Return by site and date what of an item counts towards a throughput limit, in steps."""
+    lanes = calendar.network.lanes
     flow = ruling.rule.flow if isinstance(ruling.rule, Throughput) else ""
-    passed: dict[int, int] = {}
+    passed: dict[tuple[int, object], int] = {}
     ends = lanes.origin if flow == "sent" else lanes.destination
     for row, steps in result.on_lane.items():
         site = int(ends[row])
         if ruling.sites[site]:
-            passed[site] = passed.get(site, 0) + steps
+            date = calendar.dates(row)[flow != "sent"] if calendar.dated else None
+            passed[(site, date)] = passed.get((site, date), 0) + steps
     if flow == "through":
-        for (site, _), steps in result.drawn.items():
+        for (site, on), steps in result.drawn_on.items():
             if ruling.sites[site]:
-                passed[site] = passed.get(site, 0) + steps
+                passed[(site, on)] = passed.get((site, on), 0) + steps
     return passed

@@ -82,14 +82,16 @@ def _lines_sentence(totals: Document) -> str:
     every = complete + in_part + none
     if every == 0:
         return "No order lines were asked for."
+    late = totals.get("lines_late", 0)
+    behind = f" {grouped(late)} late." if late else ""
     if complete == every:
-        return f"{count_of(every, 'order line')}. Every line goes complete."
+        return f"{count_of(every, 'order line')}. Every line goes complete.{behind}"
     parts = [f"{grouped(complete)} go complete" if complete else "none goes complete"]
     if in_part:
         parts.append(f"{grouped(in_part)} in part")
     if none:
         parts.append(f"{grouped(none)} not at all")
-    return f"{count_of(every, 'order line')}: {', '.join(parts)}."
+    return f"{count_of(every, 'order line')}: {', '.join(parts)}.{behind}"
 
 
 def _quantities_sentence(quantities: Sequence[Document]) -> str:

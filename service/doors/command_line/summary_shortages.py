@@ -9,6 +9,7 @@ SHORTAGES_SHOWN = 7
 _BECAUSE = {
     "no_lane": "no lane leads there",
     "closed": "only closed lanes lead there",
+    "too_late": "nothing arrives within its dates",
     "no_stock": "not enough stock",
     "lane_full": "the lanes there are full",
     "site_full": "a site on the way is full",

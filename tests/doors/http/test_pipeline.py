@@ -225,12 +225,12 @@ def test_every_fault_is_told_with_its_place(house: House) -> None:
 def test_part_of_a_later_issue_is_refused_by_name(house: House) -> None:
     """It is said that it is not built yet; it is never ignored."""
     network = orjson.loads(EXAMPLE)
-    network["lanes"][0]["transit_days"] = 1
+    network["lanes"][0]["distance_km"] = 1
 
     answer = house.post(orjson.dumps(network))
 
     assert answer.status_code == 422
-    assert codes(answer.json()) == [("/lanes/0/transit_days", "not_yet")]
+    assert codes(answer.json()) == [("/lanes/0/distance_km", "not_yet")]
 
 
 def test_check_out_of_memory_is_told_as_too_large(tmp_path: Path) -> None:

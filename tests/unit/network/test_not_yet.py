@@ -20,23 +20,23 @@ from tests.network_samples import check, found, sound
 # The promised fields that are read, required ones first.
 FIELDS = {
     "network": "format currency cut_off items sites supply demand lanes "
-    "name release_by rules control exchange_rates extra",
+    "name planned_at release_by periods rules control exchange_rates extra",
     "items": "id unit name step gtin weight_kg volume_m3 value packs tags extra",
     "sites": "id roles name gln latitude longitude time_zone country handling_cost tags extra",
     "supply": "site item quantity unit unit_cost on_hand reserved on_hold as_of lot best_before "
-    "keep currency extra",
+    "available_from keep currency extra",
     "demand": "site item quantity reference order ordered_at unit priority shortage_cost "
-    "worth_at_most origins tags extra",
-    "lanes": "origin destination unit_cost id item measure must_ship capacity per carrier tags "
-    "currency charges extra",
+    "worth_at_most earliest due latest late_cost_per_day origins tags extra",
+    "lanes": "origin destination unit_cost id item measure must_ship capacity per carrier "
+    "transit_days closes departs arrives tags currency charges extra",
 }
 # Promised for later: dates, charges, commitments and what several items share.
 LATER_FIELDS = {
-    "network": "tariffs storage periods committed shortage_measure committed_deducted planned_at",
+    "network": "tariffs storage committed shortage_measure committed_deducted",
     "items": "divisible",
-    "supply": "available_from",
-    "demand": "earliest due latest late_cost_per_day partial split",
-    "lanes": "transit_days closes departs arrives tariff distance_km",
+    "supply": "",
+    "demand": "partial split",
+    "lanes": "tariff distance_km",
 }
 RULES = "closure fixed_quantity throughput"
 LATER_RULES = (

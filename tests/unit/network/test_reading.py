@@ -41,6 +41,20 @@ def add(table: str, **row: object) -> Change:
 
 SELF = {"origin": "X", "destination": "X", "unit_cost": "1"}
 ROUND = {"origin": "X", "destination": "Y", "unit_cost": "-1"}
+NOON, EVENING = "2026-02-03T12:00:00+01:00", "2026-02-03T18:00:00+01:00"
+LATE = "late_cost_per_day"
+LINE = sound()["demand"][0]
+
+
+def departure(**times: object) -> Change:
+    """Return a change that gives the first lane some times."""
+
+    def change(document: dict[str, Any]) -> None:
+        document["lanes"][0] |= times
+
+    return change
+
+
 FAULTS: list[tuple[Change, str, str]] = [
     # The head.
     (put("format", value=2), "/format", "unknown_format"),
@@ -56,6 +70,10 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("name", value=None), "", ""),
     (put("strange", value=1), "/strange", "unknown_field"),
     (put("tariffs", value=[]), "/tariffs", "not_yet"),
+    (put("planned_at", value="noon"), "/planned_at", "bad_time"),
+    (put("periods", value=["2026-02-03", "2026-02-05"]), "", ""),
+    (put("periods", value=["2026-02-03", "2026-02-03"]), "/periods", "bad_periods"),
+    (put("periods", value=["2026-02-02"]), "/periods", "periods_over"),
     (put("extra", value={str(n): "" for n in range(17)}), "/extra", "bad_extra"),
     (put("extra", value={str(n): "" for n in range(1, 17)}), "", ""),
     (put("extra", value={"a": 1}), "/extra", "bad_extra"),
@@ -102,7 +120,7 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("supply", 1, "unit", value="kg"), "/supply/1/unit", "unknown_unit"),
     (put("supply", 1, "best_before", value="2026-02-30"), "/supply/1/best_before", "bad_date"),
     (put("supply", 1, "as_of", value="yesterday"), "/supply/1/as_of", "bad_time"),
-    (put("supply", 1, "available_from", value="x"), "/supply/1/available_from", "not_yet"),
+    (put("supply", 1, "available_from", value="x"), "/supply/1/available_from", "bad_date"),
     (put("supply", 0, "keep", value=10), "/supply/0/keep", "bad_keep"),
     (put("supply", 0, "keep", value={}), "/supply/0/keep/quantity", "missing_field"),
     (put("supply", 0, "keep", "priority", value=10), "/supply/0/keep/priority", "bad_number"),
@@ -132,7 +150,16 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("demand", 0, "reference", value="#2"), "/demand/0/reference", "duplicate_reference"),
     (put("demand", 0, "reference", value="a\x00"), "/demand/0/reference", "bad_id"),
     (put("demand", 0, "reference", value="r" * 65), "/demand/0/reference", "bad_id"),
-    (put("demand", 0, "due", value="2026-02-05"), "/demand/0/due", "not_yet"),
+    (put("demand", 0, "due", value="2026-02-05"), "", ""),
+    (put("demand", 0, "due", value="2026-2-5"), "/demand/0/due", "bad_date"),
+    (put("demand", 0, "latest", value="2026-02-03"), "", ""),
+    (put("demand", 0, "latest", value="2026-02-02"), "/demand/0/latest", "latest_before_cut_off"),
+    (
+        put("demand", 0, value=LINE | {"earliest": "2026-02-06", "latest": "2026-02-05"}),
+        "/demand/0/latest",
+        "window_reversed",
+    ),
+    (put("demand", 0, LATE, value="1"), f"/demand/0/{LATE}", "due_missing"),
     (put("demand", 0, "colour", value="red"), "/demand/0/colour", "unknown_field"),
     (put("demand", 0, "extra", value={"": "x"}), "/demand/0/extra", "bad_extra"),
     (put("demand", 0, value=5), "/demand/0", "wrong_type"),
@@ -149,7 +176,20 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("lanes", 0, "measure", value="pallet"), "", ""),
     (put("lanes", 0, "per", value="together"), "/lanes/0/per", "not_yet"),
     (put("lanes", 1, "per", value="each"), "/lanes/1/per", "bad_choice"),
-    (put("lanes", 0, "departs", value="x"), "/lanes/0/departs", "not_yet"),
+    (put("lanes", 0, "transit_days", value=1), "", ""),
+    (put("lanes", 0, "transit_days", value="1.5"), "/lanes/0/transit_days", "too_many_decimals"),
+    (put("lanes", 0, "transit_days", value=367), "/lanes/0/transit_days", "transit_too_long"),
+    (put("lanes", 0, "departs", value="x"), "/lanes/0/departs", "bad_time"),
+    (put("lanes", 0, "departs", value="2026-02-03T18:00:00"), "/lanes/0/departs", "bad_time"),
+    (put("lanes", 0, "arrives", value=EVENING), "/lanes/0/arrives", "departs_missing"),
+    (put("lanes", 0, "closes", value=EVENING), "/lanes/0/closes", "departs_missing"),
+    (departure(departs=EVENING, arrives=NOON), "/lanes/0/arrives", "arrives_before_departs"),
+    (departure(departs=NOON, closes=EVENING), "/lanes/0/closes", "closes_after_departs"),
+    (
+        departure(departs=NOON, arrives=EVENING, transit_days=1),
+        "/lanes/0/transit_days",
+        "two_arrivals",
+    ),
     (put("lanes", 1, "id", value="L1"), "/lanes/0/id", "duplicate_id"),
     (put("lanes", 0, "id", value="X>YARD-07"), "/lanes/0/id", "lane_name_taken"),
     (put("lanes", 3, "unit_cost", value="0.10"), "/lanes/3", "identical_lanes"),

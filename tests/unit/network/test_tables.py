@@ -200,8 +200,8 @@ LANES: list[tuple[object, str, str]] = [
         "unknown_field",
     ),
     (
-        {"origins": ["X"], "destinations": ["YARD-07"], "unit_cost": [["1"]], "departs": None},
-        "/lanes/departs",
+        {"origins": ["X"], "destinations": ["YARD-07"], "unit_cost": [["1"]], "tariff": None},
+        "/lanes/tariff",
         "not_yet",
     ),
     (

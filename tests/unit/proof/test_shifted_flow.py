@@ -9,6 +9,7 @@ import orjson
 
 from service.network.options import Options
 from service.proof.arcs import ItemArcs, item_arcs
+from service.proof.calendar import calendar_of
 from service.proof.costs import scaled_costs
 from service.proof.feasibility import broken_limits
 from service.proof.flows import Names, item_flows
@@ -55,7 +56,7 @@ def _shift(seed: int) -> int:
         orjson.loads(entries["certificate.json"]),
     )
     rng = Random(seed)  # noqa: S311 - a test that repeats
-    names, findings = Names(network), Findings()
+    names, findings = Names(calendar_of(network)), Findings()
     lines = names.plan_lines(plan["plan_lines"], findings)
     assert lines is not None
     tried = 0
