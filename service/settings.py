@@ -55,6 +55,7 @@ class Settings(BaseSettings):
     warm_start_bytes_max: Annotated[int, Field(ge=0)] = 256 * MEBIBYTE
     crashes_max: Annotated[int, Field(ge=1, le=10)] = CRASHES_MAX
     lease_seconds: Annotated[int, Field(ge=3, le=600)] = 30
+    # How often a lease is renewed, and the pause after a run was given back.
     poll_seconds: Annotated[float, Field(gt=0, le=60)] = 0.5
     log_level: Annotated[str, Field(pattern="^(debug|info|warning|error)$")] = "info"
 

@@ -1,4 +1,7 @@
-"""Cost tables of lanes: the ids once, a cost for each pair, null where there is no lane."""
+"""Cost tables of lanes: the ids once, a value for each pair; a cost of null is no lane at all.
+
+In other members null is as good as absent: no limit, say.
+"""
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace

@@ -1,9 +1,9 @@
 """Supply, demand and lanes read from the definition straight into columns.
 
 Each reader returns all rows as sent, faulty ones included (their codes are below 0, their numbers
-absent), with a ``TableFaults`` that says which rows those are. Repeated ids are found here; checks
-that need more than one table follow in ``row_checks.py`` and, for what lanes are used for and
-called, ``lane_use_checks.py``.
+absent), with a ``TableFaults`` that says which rows those are. Single cells and repeated ids are
+checked here; cells of a row against each other, and rows beside others, in ``row_checks.py`` and,
+for what lanes are used for and called, ``lane_use_checks.py``.
 """
 
 from dataclasses import dataclass, replace

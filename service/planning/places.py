@@ -15,6 +15,18 @@ FOLLOWED_MAX = 8
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Wishes:
+    """Goods wanted at a ``place``, in steps, and what a step ``short`` would cost as seen there.
+
+    ``short`` is infinite where nothing may be short.
+    """
+
+    place: IntArray
+    wanted: IntArray
+    short: FloatArray
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Places:
     """The arcs of a contracted network that are no lanes, and what follows from them by place.
 
@@ -79,22 +91,28 @@ class Places:
         steps[row, column] = np.where(room == UNLIMITED, float(self.fixed.sum()), room)
         return place, Offers(cost=cost, steps=steps)
 
-    def pulled(self) -> IntArray:
+    def wishes(self) -> Wishes:
         """Return what is wanted at each place or, through arcs that are no lanes, behind it."""
-        wanted = self.fixed.copy()
+        place = np.flatnonzero(self.fixed > 0)
+        short = np.full(self.nodes, np.inf)
+        np.minimum.at(short, self.core.head[self.short], self.core.cost[self.short])
+        cost = short[place]
         inner = ~self.short & (self.core.tail != ROOT) & (self.core.head != ROOT)
         inner &= self.core.tail != self.core.head
-        tail, head = self.core.tail[inner], self.core.head[inner]
+        tail, head, between = self.core.tail[inner], self.core.head[inner], self.core.cost[inner]
         ways_in = np.bincount(head, minlength=self.nodes) + self.enters
         lone = ways_in[head] == 1
-        tail, head = tail[lone], head[lone]
+        onward = np.arange(self.nodes)
+        onward[head[lone]] = tail[lone]
+        dearer = np.zeros(self.nodes)
+        dearer[head[lone]] = between[lone]
+        wanted = self.fixed[place]
         for _ in range(FOLLOWED_MAX):
-            moved = wanted[head]
-            if not moved.any():
+            if (onward[place] == place).all():
                 break
-            wanted[head] = 0
-            np.add.at(wanted, tail, moved)
-        return wanted
+            cost = cost - dearer[place]
+            place = onward[place]
+        return Wishes(place=place, wanted=wanted, short=cost)
 
 
 class Upstream:

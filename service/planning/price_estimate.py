@@ -6,14 +6,18 @@ from service.network.columns import IntArray
 from service.planning.arcs import UNLIMITED
 from service.planning.lane_blocks import LaneBlocks
 from service.planning.nearest_lanes import Nearest, nearest_lanes
-from service.planning.places import Places, Upstream
-from service.planning.scarcity_prices import FAR, Balance, Choices, FloatArray
+from service.planning.places import Places, Upstream, Wishes
+from service.planning.scarcity_prices import FAR, Balance, Choices, FloatArray, Offers
 
 # Measured at 200 x 5,000 and 500 x 20,000 on seeds of their own (2026-12-01): more of any of these
 # costs more time than it saves later.
 SAMPLE_MIN = 1_000
 SAMPLE_PER_STOCK = 5
 COARSE_CHOICES, COARSE_LISTS, COARSE_STEPS = 16, 4, 2
+# Where hardly more is there than is wanted, prices spread far, and stock that became cheap must be
+# among the choices: with so many, one round suffices where with 16 it took 5 to 10.
+TIGHT = 1.05
+TIGHT_CHOICES, TIGHT_LISTS, TIGHT_STEPS = 200, 1, 12
 FINE_CHOICES, FINE_STEPS_MAX, HALF_UNTIL = 12, 14, 4
 COLDEST = 1 / 8
 COARSE_IMBALANCE, FINE_IMBALANCE = 0.1, 0.005
@@ -31,8 +35,12 @@ class Estimator:
         """Look at the stock; ``capacity`` is that of every lane."""
         self._blocks, self._capacity = blocks, capacity
         self._limited = bool((capacity != UNLIMITED).any())
-        self._wanted = places.pulled()
+        self._wishes = places.wishes()
         self.stock, self.offers = places.offers()
+        self._level = _scarce_level(self._wishes, self.offers)
+        self.tight = bool(
+            self.offers.steps.sum() < TIGHT * max(1.0, float(self._wishes.wanted.sum()))
+        )
         self._upstream = Upstream(places, self.stock, blocks)
 
     def cold(self) -> FloatArray:
@@ -40,12 +48,21 @@ class Estimator:
         ends = max(SAMPLE_MIN, SAMPLE_PER_STOCK * self.stock.shape[0])
         sample = self._blocks.sample(ends)
         price = self.offers.cost[:, 0].copy()
+        if self._level is not None:
+            # Goods are worth what the last of them saves, less the way there.
+            way = self._nearest(sample, price, 1).cost
+            price = np.maximum(price, self._level - float(np.median(way)))
         temperature, imbalance = 0.0, 1.0
-        for _ in range(COARSE_LISTS):
-            nearest = self._nearest(sample, price, COARSE_CHOICES)
+        choices, lists, steps = (
+            (TIGHT_CHOICES, TIGHT_LISTS, TIGHT_STEPS)
+            if self.tight
+            else (COARSE_CHOICES, COARSE_LISTS, COARSE_STEPS)
+        )
+        for _ in range(lists):
+            nearest = self._nearest(sample, price, choices)
             temperature = temperature or self._heat(nearest, price)
             balance = self._balance(nearest, price)
-            for _ in range(COARSE_STEPS):
+            for _ in range(steps):
                 imbalance = balance.step(temperature)
             price = balance.price
             if imbalance < COARSE_IMBALANCE:
@@ -114,8 +131,11 @@ class Estimator:
         """Return the balance over the nearest lanes of places that want something."""
         landed, source = self._upstream.prices(price)
         absent = nearest.absent | ~np.isfinite(landed[nearest.tails])
-        wanting = np.flatnonzero((self._wanted[nearest.ends] > 0) & ~absent.all(axis=0))
-        wanted = self._wanted[nearest.ends[wanting]].astype(np.float32)
+        column = np.full(landed.shape[0], -1)
+        column[nearest.ends[~absent.all(axis=0)]] = np.flatnonzero(~absent.all(axis=0))
+        wishes = np.flatnonzero(column[self._wishes.place] >= 0)
+        wanting = column[self._wishes.place[wishes]]
+        wanted = self._wishes.wanted[wishes].astype(np.float32)
         lanes, tails = nearest.lanes[:, wanting], nearest.tails[:, wanting]
         absent = absent[:, wanting]
         source = source[tails]
@@ -125,17 +145,27 @@ class Estimator:
             capacity = self._capacity[lanes]
             room = np.where(capacity == UNLIMITED, np.inf, capacity / wanted).astype(np.float32)
         # A sample stands for all.
-        wanted *= np.float32(self._wanted.sum() / max(1.0, float(wanted.sum())))
+        wanted *= np.float32(self._wishes.wanted.sum() / max(1.0, float(wanted.sum())))
+        cost = np.where(absent, FAR, between)
+        if self._level is None:
+            choices = Choices(source=source, cost=cost.astype(np.float32), wanted=wanted, room=room)
+            return Balance(choices, self.offers, price)
         return Balance(
-            Choices(
-                source=source,
-                cost=np.where(absent, FAR, between).astype(np.float32),
-                wanted=wanted,
-                room=room,
-            ),
+            Choices(source=source, cost=cost.astype(np.float64), wanted=wanted, room=room),
             self.offers,
             price,
+            short=np.minimum(self._wishes.short[wishes], FAR),
         )
+
+
+def _scarce_level(wishes: Wishes, offers: Offers) -> float | None:
+    """Return what a step short costs at the margin, if stock cannot serve all; else None."""
+    order = np.argsort(-wishes.short, kind="stable")
+    served = np.cumsum(wishes.wanted[order]) <= float(offers.steps.sum())
+    if served.all():
+        return None
+    level = float(wishes.short[order[int(served.argmin())]])
+    return level if np.isfinite(level) else None
 
 
 def spread(dearer: FloatArray, lanes: float) -> float:

@@ -77,8 +77,8 @@ class Choices:
     """The lanes that places choose from, of shape (choices, places); cost ``FAR`` if absent.
 
     ``source`` is the place of stock that a choice draws on (a position in ``Offers``), ``cost``
-    what lies between there and here. ``room`` is what a lane can take of what is ``wanted``, as a
-    fraction, None where no lane has a limit.
+    what lies between there and here, in 64 bits where shortages are among the choices. ``room`` is
+    what a lane can take of what is ``wanted``, as a fraction, None where no lane has a limit.
     """
 
     source: IntArray
@@ -103,8 +103,18 @@ class Taken:
 class Balance:
     """What is taken at prices of a temperature, and how that changes with the prices."""
 
-    def __init__(self, choices: Choices, offers: Offers, price: FloatArray) -> None:
-        """Start from ``price``."""
+    def __init__(
+        self,
+        choices: Choices,
+        offers: Offers,
+        price: FloatArray,
+        *,
+        short: FloatArray | None = None,
+    ) -> None:
+        """Start from ``price``; ``short`` is what it costs each place to go without a step."""
+        self._given = price.shape[0]
+        if short is not None:
+            choices, offers, price = _with_shortage(choices, offers, price, short)
         self._choices, self._offers = choices, offers
         self._places = offers.cost.shape[0]
         competing = min(COMPETING, choices.source.shape[0])
@@ -112,17 +122,22 @@ class Balance:
         self._whole = self._places <= PLACES_MAX
         self._wanted = max(1.0, float(choices.wanted.sum()))
         self._temperature, self._taken = 0.0, None
-        self.price = price
+        self._price: FloatArray = price
         self._trusted = TRUSTED
 
     _taken: Taken | None
+
+    @property
+    def price(self) -> FloatArray:
+        """The price of each place of stock."""
+        return self._price[: self._given]
 
     def step(self, temperature: float) -> float:
         """Improve the prices; return how much of all that is wanted the former ones had wrong."""
         if self._places == 0 or self._choices.wanted.shape[0] == 0:
             return 0.0
         if self._taken is None or temperature != self._temperature:
-            self._temperature, self._taken = temperature, self._take(self.price, temperature)
+            self._temperature, self._taken = temperature, self._take(self._price, temperature)
         taken = self._taken
         excess, scale = self._excess(taken)
         imbalance = float(np.abs(excess).sum()) / self._wanted
@@ -132,16 +147,16 @@ class Balance:
         move: FloatArray = np.zeros(self._places)
         move[free] = self._newton(taken, excess, scale=scale, free=free)
         self._trusted = min(2 * self._trusted, TRUSTED_MAX)
-        price = self.price
+        price = self._price
         for _ in range(CUTS_MAX + 1):
-            price = self.price + temperature * np.clip(move, -STEP_MAX, STEP_MAX)
-            price = self._offers.within(self.price, price)
+            price = self._price + temperature * np.clip(move, -STEP_MAX, STEP_MAX)
+            price = self._offers.within(self._price, price)
             self._taken = self._take(price, temperature)
             if self._taken.value >= taken.value:
                 break
             move /= 4
             self._trusted = max(self._trusted / 4, TRUSTED)
-        self.price = price
+        self._price = price
         return imbalance
 
     def _excess(self, taken: Taken) -> tuple[FloatArray, FloatArray]:
@@ -150,19 +165,20 @@ class Balance:
         load = np.bincount(
             self._choices.source.ravel(), weights=amount.ravel(), minlength=self._places
         )
-        least, most = self._offers.between(self.price)
+        least, most = self._offers.between(self._price)
         excess = np.where(load > most, load - most, np.where(load < least, load - least, 0))
         # At its lowest price a place simply keeps what nobody takes.
-        excess[(self.price <= self._offers.cost[:, 0]) & (excess < 0)] = 0
+        excess[(self._price <= self._offers.cost[:, 0]) & (excess < 0)] = 0
         return excess, load + most + self._wanted / self._places * DAMPING
 
     def _take(self, price: FloatArray, temperature: float) -> Taken:
         """Return what is taken at ``price``."""
         choices = self._choices
         heat = np.float32(temperature)
-        landed = choices.cost + price.astype(np.float32)[choices.source]
-        nearest = landed.min(axis=0)
-        weight = np.exp((nearest - landed) / heat)
+        # Costs of very different size stand in 64 bits; how near ones differ fits into 32.
+        landed: FloatArray = choices.cost + price.astype(choices.cost.dtype)[choices.source]
+        nearest: FloatArray = landed.min(axis=0)
+        weight = np.exp((nearest - landed).astype(np.float32) / heat)
         factor = 1 / weight.sum(axis=0)
         value = nearest + heat * np.log(factor)
         if choices.room is None:
@@ -228,3 +244,33 @@ class Balance:
         np.fill_diagonal(curvature, own[free])
         solved: FloatArray = np.linalg.solve(curvature, excess[free])
         return solved
+
+
+def _with_shortage(
+    choices: Choices, offers: Offers, price: FloatArray, short: FloatArray
+) -> tuple[Choices, Offers, FloatArray]:
+    """Return the same with one more place of stock, of which all can have what they go without.
+
+    It is the first choice of each place, so that it counts as competing, and costs no more however
+    much is taken.
+    """
+    nowhere = np.full((1, short.shape[0]), price.shape[0])
+    room = choices.room
+    if room is not None:
+        room = np.concatenate((np.full((1, short.shape[0]), np.inf, room.dtype), room))
+    one = np.full((1, offers.cost.shape[1]), np.inf)
+    one[0, 0] = 0
+    plenty = np.zeros((1, offers.cost.shape[1]))
+    plenty[0, 0] = FAR
+    return (
+        Choices(
+            source=np.concatenate((nowhere, choices.source)),
+            cost=np.concatenate((short[None], choices.cost)),
+            wanted=choices.wanted,
+            room=room,
+        ),
+        Offers(
+            cost=np.concatenate((offers.cost, one)), steps=np.concatenate((offers.steps, plenty))
+        ),
+        np.append(price, 0.0),
+    )

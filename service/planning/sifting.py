@@ -25,9 +25,8 @@ ROUNDS_MAX = 12
 # The first shortlist has so many lanes a place, by nearness (2.0 now and then costs a round, 2.6
 # always costs time), and later ones what is at most half as far off, by better prices.
 LISTED_LANES = 2.2
-# Where hardly more is there than is wanted a short list cannot share it out, and rounds are many:
-# with 2.2 lanes a place 5 to 12 and more at 200 x 5,000, with 6 one to six (2026-12-01).
-TIGHT, TIGHT_LANES = 1.05, 6
+# Where hardly more is there than is wanted a shorter list can often not share it out.
+TIGHT_LANES = 6
 KEPT_PART = 2
 # How far prices may move in one round, in terms of how near a lane must be to be listed, and how
 # much further each time that this was not enough.
@@ -67,7 +66,9 @@ def sift(
         found = estimator.fine(estimator.cold(), warm=False)
     assert found is not None  # noqa: S101 - only warm prices can be refused
     stock, nearest = found
-    price, near, listed = _first_list(sieve, nearest, estimator.places(stock))
+    lanes_each = TIGHT_LANES if estimator.tight else LISTED_LANES
+    first = _first_list(sieve, nearest, estimator.places(stock), lanes_each=lanes_each)
+    price, near, listed = first
     try:
         return _rounds(sieve, sieve.shortlist(listed), price, near=near, seen=seen)
     except (NoFlowError, NumbersTooLargeError):
@@ -125,20 +126,33 @@ def _must_be_short(sieve: Sieve) -> bool:
     return _spare(sieve) < 1 or bool((places.ends & ~places.enters & (places.fixed > 0)).any())
 
 
-def _first_list(sieve: Sieve, nearest: Nearest, price: IntArray) -> tuple[IntArray, int, IntArray]:
+def _first_list(
+    sieve: Sieve, nearest: Nearest, price: IntArray, *, lanes_each: float
+) -> tuple[IntArray, int, IntArray]:
     """Return prices of all places, how near a lane must be to be listed, and the lanes that are."""
-    level = _levels(sieve, nearest, price)
+    level = np.minimum(_levels(sieve, nearest, price), _dearest_short(sieve)[nearest.ends])
     leaves = sieve.places.leaves[nearest.ends]
     price = price.copy()
     price[nearest.ends[~leaves]] = level[~leaves]
     dearer = nearest.cost + price[nearest.tails] - price[nearest.ends]
     far = nearest.absent | (dearer < 0)
-    lanes_each = TIGHT_LANES if _spare(sieve) < TIGHT else LISTED_LANES
-    near = int(spread(np.where(far, np.inf, dearer), lanes_each))
+    # Where all that is wanted will be short, no lane is of use.
+    served = (~far & (dearer <= 0)).any(axis=0)
+    near = int(spread(np.where(far, np.inf, dearer)[:, served], lanes_each))
     listed = nearest.lanes[~nearest.absent & (dearer <= near)]
     lanes, _ = sieve.blocks.not_above(price, near)
     # Where very many lanes tie the nearest ones suffice: each place has its own of them.
     return price, near, lanes if lanes.shape[0] <= 2 * listed.shape[0] else listed
+
+
+def _dearest_short(sieve: Sieve) -> IntArray:
+    """Return, by place, the most that a step short of what is wanted there would cost."""
+    wishes = sieve.places.wishes()
+    dearest = np.full(sieve.places.nodes, -np.inf)
+    np.maximum.at(dearest, wishes.place, wishes.short)
+    most = np.iinfo(np.int64).max // 4
+    level: IntArray = np.where(np.isfinite(dearest), dearest, most).astype(np.int64)
+    return level
 
 
 def _levels(sieve: Sieve, nearest: Nearest, price: IntArray) -> IntArray:

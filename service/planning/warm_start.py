@@ -23,12 +23,18 @@ from service.planning.solve import ItemFlow
 
 FORMAT = 1
 
+Price = tuple[int, float]
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class WarmStart:
-    """Prices of stock in money per item unit: by item id, then by the name of the place."""
+    """Prices of stock: by item id, then by the name of the place.
 
-    prices: Mapping[str, Mapping[str, float]]
+    Each is so many weights of a priority, and money per item unit: where stock is scarce a step
+    more is worth what it saves, and how much that weighs differs from network to network.
+    """
+
+    prices: Mapping[str, Mapping[str, Price]]
 
     @staticmethod
     def read(path: Path) -> "WarmStart":
@@ -38,7 +44,10 @@ class WarmStart:
             if document["format"] != FORMAT:
                 return WarmStart(prices={})
             prices = {
-                str(item): {str(place): float(price) for place, price in known.items()}
+                str(item): {
+                    str(place): (int(weights), float(money))
+                    for place, (weights, money) in known.items()
+                }
                 for item, known in document["prices"].items()
             }
         except (OSError, ValueError, TypeError, KeyError, AttributeError):
@@ -63,14 +72,15 @@ class WarmStart:
         if not known:
             return None
         nodes = _stocked(own)
-        price = np.array([known.get(name, np.nan) for name in _names(network, own, nodes)])
-        if not np.isfinite(price).any():
+        unknown = (0, np.nan)
+        stated = np.array([known.get(name, unknown) for name in _names(network, own, nodes)])
+        weights, money = stated[:, 0], stated[:, 1]
+        if not np.isfinite(money).any():
             return None
+        price = weights * _weight(own) + money * _scaled(network, own, cost_scale)
         offset = contraction.offsets(weighted)
         found: FloatArray = np.full(contraction.nodes, np.nan)
-        found[contraction.place[nodes]] = price * _scaled(network, own, cost_scale) - (
-            offset[nodes].astype(np.float64)
-        )
+        found[contraction.place[nodes]] = price - offset[nodes].astype(np.float64)
         return found
 
 
@@ -79,9 +89,12 @@ def left_by(network: Network, flows: Sequence[ItemFlow], *, cost_scale: Fraction
     prices = {}
     for flow in flows:
         nodes = _stocked(flow.own)
-        price = flow.price[nodes].astype(np.float64) / _scaled(network, flow.own, cost_scale)
+        price, weight = flow.price[nodes].astype(np.float64), _weight(flow.own)
+        weights = np.rint(price / weight) if weight else np.zeros(price.shape[0])
+        money = (price - weights * weight) / _scaled(network, flow.own, cost_scale)
+        stated = zip(weights.astype(np.int64).tolist(), money.tolist(), strict=True)
         prices[network.items[flow.own.item].id] = dict(
-            zip(_names(network, flow.own, nodes), price.tolist(), strict=True)
+            zip(_names(network, flow.own, nodes), stated, strict=True)
         )
     return WarmStart(prices=prices)
 
@@ -109,3 +122,8 @@ def _names(network: Network, own: ItemNetwork, nodes: IntArray) -> list[str]:
 def _scaled(network: Network, own: ItemNetwork, cost_scale: Fraction) -> float:
     """Return the scaled money per step in one unit of money per item unit."""
     return float(cost_scale * network.items[own.item].step)
+
+
+def _weight(own: ItemNetwork) -> float:
+    """Return what a step short of the last priority weighs, 0 where none has one."""
+    return float(own.base) if own.priorities else 0.0

@@ -33,14 +33,14 @@ def dear_and_cheap(rng: Random) -> int:
     return rng.randint(100, 9_999)
 
 
-def document_of(seed: int, *, unit: int = 1) -> Document:
-    """Return a wide network; with ``unit`` all its costs are so many times as high."""
+def document_of(seed: int, *, unit: int = 1, ratio: float = 1.05) -> Document:
+    """Return a wide network; its costs are ``unit`` times as high, stock ``ratio`` times demand."""
     return wide_network(
         Random(seed),  # noqa: S311 - draws networks, hides nothing
         origins=8,
         ends=90,
         costs=lambda rng: unit * dear_and_cheap(rng),
-        ratio=1.05,
+        ratio=ratio,
     )
 
 
@@ -84,9 +84,23 @@ def test_prices_are_kept_in_money_per_unit_by_where_the_stock_lies(tmp_path: Pat
     (prices,) = WarmStart.read(tmp_path / "out" / WARM_START_FILE).prices.values()
     supplied = {row["site"] for row in document["supply"]}
     assert {name.rsplit(" ", 1)[1] for name in prices} == supplied
-    assert min(prices.values()) >= 0
+    assert {weights for weights, _ in prices.values()} == {0}
+    money = [money for _, money in prices.values()]
+    assert min(money) >= 0
     # The supply is nearly all used: at some place it is worth more than it costs.
-    assert max(prices.values()) > 0
+    assert max(money) > 0
+
+
+def test_scarce_stock_is_worth_what_a_step_short_weighs(tmp_path: Path) -> None:
+    """Its price is told in weights, which differ from network to network, and in money."""
+    document = document_of(3, ratio=0.8)
+
+    planned(document, tmp_path)
+
+    (prices,) = WarmStart.read(tmp_path / "out" / WARM_START_FILE).prices.values()
+    assert {weights for weights, _ in prices.values()} == {1}
+    # Less by the way to the place that is served last.
+    assert all(-10_000 < money < 0 for _, money in prices.values())
 
 
 def test_prices_do_not_depend_on_the_scale_that_costs_were_given_in(tmp_path: Path) -> None:
@@ -101,7 +115,7 @@ def test_prices_do_not_depend_on_the_scale_that_costs_were_given_in(tmp_path: Pa
     (other,) = WarmStart.read(tmp_path / "halves" / "out" / WARM_START_FILE).prices.values()
 
     assert whole.keys() == other.keys()
-    assert np.allclose(list(whole.values()), list(other.values()), rtol=1e-9)
+    assert np.allclose(list(whole.values()), list(other.values()), rtol=1e-9, atol=1e-9)
 
 
 def test_warm_run_ends_with_the_plan_of_a_cold_one(tmp_path: Path) -> None:
