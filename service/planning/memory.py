@@ -10,14 +10,14 @@ from typing import Final
 # Bytes for each. Measured on 2026-12-01 on a grid of shapes up to a million lanes, fitted from
 # above, 5 % added (tests/engine/memory_grid.py; Linux, Python 3.11, NumPy 2.4, OR-Tools 9.15).
 WEIGHTS: Final[Mapping[str, int]] = {
-    "base": 325_000_000,
-    "lanes": 72,
-    "usable_lanes": 103,
-    "usable_lanes_of_one": 113,
-    "places": 8_700,
-    "order_lines": 8_300,
+    "base": 331_000_000,
+    "lanes": 43,
+    "usable_lanes": 36,
+    "usable_lanes_of_one": 49,
+    "places": 6_400,
+    "order_lines": 6_400,
     "supply_rows": 500,
-    "items": 99_000,
+    "items": 86_000,
     "file_bytes": 3,
 }
 """Weights of ``network/workload.py``'s counts; ``base`` is a child that has loaded the solver."""
