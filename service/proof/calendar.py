@@ -63,9 +63,9 @@ class Calendar:
 
         Goods that are used where they are drawn (row -1) depart and arrive never.
         """
+        if self.departs is None:
+            return "departs" not in line and "arrives" not in line
         stated = {field: line[field] for field in ("departs", "arrives") if field in line}
-        if not self.dated:
-            return not stated
         departs, arrives = (None, None) if row < 0 else self.dates(row)
         return stated == {"departs": departs, "arrives": arrives}
 
