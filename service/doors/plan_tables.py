@@ -66,6 +66,7 @@ COLUMNS: Mapping[str, tuple[str, ...]] = {
         "volume_m3",
         "cost",
         "order_references",
+        "freight",
         "departs",
         "arrives",
     ),

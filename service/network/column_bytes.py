@@ -86,11 +86,11 @@ LANE_FORMS = (
     ColumnForm(name="origin", field="origin", kind="code", of="sites", required=True),
     ColumnForm(name="destination", field="destination", kind="code", of="sites", required=True),
     ColumnForm(name="item", field="item", kind="code", of="items"),
-    _form("unit_cost", "decimal", required=True),
+    _form("unit_cost", "decimal"),
     _form("measure", "texts", required=True),
     _form("must_ship", "decimal"),
     _form("capacity", "decimal"),
-    *(_form(name, "texts") for name in ("per", "carrier", "currency", "charges")),
+    *(_form(name, "texts") for name in ("per", "carrier", "currency", "charges", "tariff")),
     _form("transit_days", "decimal"),
     *(_form(name, "texts") for name in ("closes", "departs", "arrives", "tags", "extra")),
 )

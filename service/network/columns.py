@@ -134,7 +134,8 @@ class LaneTable:
     ``charges`` holds JSON arrays of charges in normal form (``network/money.py``), ``tags`` JSON
     arrays of sorted tags, ``extra`` JSON objects. ``transit_days`` are whole days. ``closes``,
     ``departs`` and ``arrives`` are RFC 3339 in the time zone of the site where they happen, so that
-    the first ten characters are its date.
+    the first ten characters are its date. ``tariff`` is the id of a tariff of the head, and absent
+    exactly where ``unit_cost`` is there.
     """
 
     ids: IdArray
@@ -149,6 +150,7 @@ class LaneTable:
     carrier: Texts
     currency: Texts
     charges: Texts
+    tariff: Texts
     transit_days: Decimals
     closes: Texts
     departs: Texts
@@ -237,8 +239,8 @@ class Network:
     ``head`` holds what is neither a table, an item nor a site, as plain JSON values with every
     decimal a shortest decimal string: ``format``, ``name``, ``currency``, ``cut_off``,
     ``planned_at``, ``release_by``, ``periods`` (sorted dates), ``rules`` (sorted by id, see
-    ``network/rules.py``), ``exchange_rates`` (sorted by currency, see ``network/money.py``) and
-    ``extra``.
+    ``network/rules.py``), ``exchange_rates`` (sorted by currency, see ``network/money.py``),
+    ``tariffs`` (see ``network/tariffs.py``) and ``extra``.
 
     ``known_digest`` is the digest of the bytes that this very object was read from, else None; it
     does not pass on to a network that ``dataclasses.replace`` makes of it.

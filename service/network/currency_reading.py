@@ -4,9 +4,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Final
 
-from service.network.definition import ExchangeRatePart, validated
+from service.network.definition import validated
 from service.network.faults import FaultList, pointer
 from service.network.kinds import CURRENCY, RefusedError
+from service.network.money_definition import ExchangeRatePart
 from service.network.quantities import exact_text
 from service.network.table_reading import Spelled
 

@@ -44,32 +44,32 @@ def _read(kind: Kind, *, optional: bool) -> Callable[[object], Any]:
     return read
 
 
-def _needed(kind: Kind) -> tuple[Any, Any]:
+def needed(kind: Kind) -> tuple[Any, Any]:
     """Return the annotations of a field that must be there."""
     return PlainValidator(_read(kind, optional=False)), WithJsonSchema(kind.schema)
 
 
-def _optional(kind: Kind) -> tuple[Any, Any]:
+def optional(kind: Kind) -> tuple[Any, Any]:
     """Return the annotations of a field that may be absent or null."""
     schema = {"anyOf": [*kind.schema.get("anyOf", [kind.schema]), {"type": "null"}]}
     return PlainValidator(_read(kind, optional=True)), WithJsonSchema(schema)
 
 
-Id = Annotated[str, *_needed(kinds.ID)]
-OptionalId = Annotated[str | None, *_optional(kinds.ID)]
-Name = Annotated[str | None, *_optional(kinds.NAME)]
-Note = Annotated[str | None, *_optional(kinds.NOTE)]
-Tags = Annotated[tuple[str, ...] | None, *_optional(kinds.TAGS)]
-Extra = Annotated[Mapping[str, str] | None, *_optional(kinds.EXTRA)]
-OptionalMoment = Annotated[Instant | None, *_optional(kinds.INSTANT)]
-OptionalDate = Annotated[date | None, *_optional(kinds.DATE)]
-OptionalRate = Annotated[Fraction | None, *_optional(kinds.RATE)]
-Quantity = Annotated[Fraction, *_needed(kinds.QUANTITY)]
-OptionalQuantity = Annotated[Fraction | None, *_optional(kinds.QUANTITY)]
-OptionalCount = Annotated[int | None, *_optional(kinds.COUNT)]
-Picks = Annotated[tuple[str, ...] | None, *_optional(kinds.PICKS)]
-PicksLanes = Annotated[tuple[str, ...] | None, *_optional(kinds.PICKS_LANES)]
-PicksRoles = Annotated[tuple[str, ...] | None, *_optional(kinds.ROLE_LIST)]
+Id = Annotated[str, *needed(kinds.ID)]
+OptionalId = Annotated[str | None, *optional(kinds.ID)]
+Name = Annotated[str | None, *optional(kinds.NAME)]
+Note = Annotated[str | None, *optional(kinds.NOTE)]
+Tags = Annotated[tuple[str, ...] | None, *optional(kinds.TAGS)]
+Extra = Annotated[Mapping[str, str] | None, *optional(kinds.EXTRA)]
+OptionalMoment = Annotated[Instant | None, *optional(kinds.INSTANT)]
+OptionalDate = Annotated[date | None, *optional(kinds.DATE)]
+OptionalRate = Annotated[Fraction | None, *optional(kinds.RATE)]
+Quantity = Annotated[Fraction, *needed(kinds.QUANTITY)]
+OptionalQuantity = Annotated[Fraction | None, *optional(kinds.QUANTITY)]
+OptionalCount = Annotated[int | None, *optional(kinds.COUNT)]
+Picks = Annotated[tuple[str, ...] | None, *optional(kinds.PICKS)]
+PicksLanes = Annotated[tuple[str, ...] | None, *optional(kinds.PICKS_LANES)]
+PicksRoles = Annotated[tuple[str, ...] | None, *optional(kinds.ROLE_LIST)]
 
 
 class Part(BaseModel):
@@ -81,17 +81,17 @@ class Part(BaseModel):
 class Head(Part):
     """What a network says of itself beside its tables."""
 
-    format: Annotated[int, *_needed(kinds.FORMAT)]
+    format: Annotated[int, *needed(kinds.FORMAT)]
     name: Name = None
-    currency: Annotated[str, *_needed(kinds.CURRENCY)]
-    cut_off: Annotated[Instant, *_needed(kinds.INSTANT)]
+    currency: Annotated[str, *needed(kinds.CURRENCY)]
+    cut_off: Annotated[Instant, *needed(kinds.INSTANT)]
     planned_at: OptionalMoment = Field(
         default=None,
         description="When the plan is made; what closed before is left out. cut_off if absent.",
         examples=["2026-02-03T16:05:00+01:00"],
     )
     release_by: OptionalMoment = None
-    periods: Annotated[tuple[date, ...] | None, *_optional(kinds.DATES)] = Field(
+    periods: Annotated[tuple[date, ...] | None, *optional(kinds.DATES)] = Field(
         default=None,
         description="The dates on which goods may leave; that of the cut-off alone if absent.",
         examples=[["2026-02-03", "2026-02-04", "2026-02-05"]],
@@ -99,29 +99,11 @@ class Head(Part):
     extra: Extra = None
 
 
-class ExchangeRatePart(Part):
-    """What ``per`` units (1 if absent) of a currency are in the currency of the plan."""
-
-    currency: Annotated[str, *_needed(kinds.CURRENCY)] = Field(
-        description="ISO 4217.", examples=["NOK"]
-    )
-    rate: Annotated[Fraction, *_needed(kinds.POSITIVE_RATE)] = Field(
-        description="Money of the plan's currency for `per` units.", examples=["8.73"]
-    )
-    per: Annotated[Fraction | None, *_optional(kinds.POSITIVE_RATE)] = Field(
-        default=None, description="Units of this currency; 1 if absent.", examples=["100"]
-    )
-    as_of: OptionalDate = Field(
-        default=None, description="The day of the rate.", examples=["2026-02-02"]
-    )
-    source: Name = Field(default=None, description="Who says so.", examples=["central bank"])
-
-
 class PackPart(Part):
     """A trade pack of an item."""
 
     unit: Id
-    contains: Annotated[Fraction, *_needed(kinds.POSITIVE)]
+    contains: Annotated[Fraction, *needed(kinds.POSITIVE)]
 
 
 class ItemPart(Part):
@@ -130,8 +112,8 @@ class ItemPart(Part):
     id: Id
     unit: Id
     name: Name = None
-    step: Annotated[Fraction | None, *_optional(kinds.POSITIVE)] = None
-    gtin: Annotated[str | None, *_optional(kinds.GTIN)] = None
+    step: Annotated[Fraction | None, *optional(kinds.POSITIVE)] = None
+    gtin: Annotated[str | None, *optional(kinds.GTIN)] = None
     weight_kg: OptionalRate = None
     volume_m3: OptionalRate = None
     value: OptionalRate = Field(
@@ -148,14 +130,14 @@ class SitePart(Part):
     """A place."""
 
     id: Id
-    roles: Annotated[tuple[str, ...], *_needed(kinds.ROLE_LIST)]
+    roles: Annotated[tuple[str, ...], *needed(kinds.ROLE_LIST)]
     name: Name = None
-    gln: Annotated[str | None, *_optional(kinds.GLN)] = None
-    latitude: Annotated[Fraction | None, *_optional(kinds.LATITUDE)] = None
-    longitude: Annotated[Fraction | None, *_optional(kinds.LONGITUDE)] = None
-    time_zone: Annotated[str | None, *_optional(kinds.ZONE)] = None
-    country: Annotated[str | None, *_optional(kinds.COUNTRY)] = None
-    handling_cost: Annotated[Mapping[str, Fraction] | None, *_optional(kinds.HANDLING_COST)] = None
+    gln: Annotated[str | None, *optional(kinds.GLN)] = None
+    latitude: Annotated[Fraction | None, *optional(kinds.LATITUDE)] = None
+    longitude: Annotated[Fraction | None, *optional(kinds.LONGITUDE)] = None
+    time_zone: Annotated[str | None, *optional(kinds.ZONE)] = None
+    country: Annotated[str | None, *optional(kinds.COUNTRY)] = None
+    handling_cost: Annotated[Mapping[str, Fraction] | None, *optional(kinds.HANDLING_COST)] = None
     tags: Tags = None
     extra: Extra = None
 
@@ -231,10 +213,10 @@ class ThroughputPart(RulePart):
     """A site handles at most so much."""
 
     sites: SitePick
-    flow: Annotated[str, *_needed(kinds.FLOW)]
+    flow: Annotated[str, *needed(kinds.FLOW)]
     measure: OptionalId = None
     maximum: Quantity
-    per: Annotated[str | None, *_optional(kinds.PER)] = None
+    per: Annotated[str | None, *optional(kinds.PER)] = None
 
 
 class Control(Part):
@@ -292,6 +274,8 @@ def _report(
 
 
 _OWN_WORDS: Final[Mapping[str, str]] = {
+    "too_short": "Send at least one.",
+    "too_long": "Send fewer.",
     "model_type": "Send an object.",
     "list_type": "Send an array.",
 }

@@ -1,6 +1,7 @@
 """Doubts about a sound network: it is planned all the same, and the plan carries them."""
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
@@ -8,7 +9,7 @@ from service.network.assembly import Assembly
 from service.network.columns import BoolArray, CodeArray, IntArray, Network
 from service.network.faults import FaultList
 from service.network.reach import LaneUse
-from service.network.table_rows import by_item_and_text, off_grid
+from service.network.table_rows import by_item_and_text, off_grid, rows_of
 from service.network.units import item_units
 
 # A carrier's rate that much above its median is more likely a slip of the decimal point.
@@ -132,6 +133,10 @@ def _rates_out_of_line(network: Network) -> IntArray:
     middle one counts, so that the comparison stays exact.
     """
     lanes = network.lanes
+    priced = np.flatnonzero(lanes.unit_cost.present)
+    if len(priced) < len(lanes):
+        # Lanes with a tariff have no rate of their own.
+        return priced[_rates_out_of_line(replace(network, lanes=rows_of(lanes, priced)))]
     rates = lanes.unit_cost.values
     keys = (lanes.carrier.codes.astype(np.int64) + 1) * (len(lanes.measure.values) + 1)
     keys = keys + lanes.measure.codes

@@ -234,7 +234,7 @@ def _choices(characters_max: int) -> Callable[[object], tuple[str, ...]]:
     return read
 
 
-def _one_of(*choices: str) -> Callable[[object], str]:
+def one_of(*choices: str) -> Callable[[object], str]:
     """Return a reader of one of a few words."""
     return _checked(choices.__contains__, "bad_choice", f"Say one of: {', '.join(choices)}.")
 
@@ -345,6 +345,6 @@ PICKS_LANES = Kind(
 )
 COUNT = Kind(read=_count, schema={"type": "integer", "minimum": 0})
 FLOW = Kind(
-    read=_one_of("received", "sent", "through"), schema={"enum": ["received", "sent", "through"]}
+    read=one_of("received", "sent", "through"), schema={"enum": ["received", "sent", "through"]}
 )
-PER = Kind(read=_one_of("each", "together"), schema={"enum": ["each", "together"]})
+PER = Kind(read=one_of("each", "together"), schema={"enum": ["each", "together"]})

@@ -14,6 +14,8 @@ from service.network.units import per_unit
 class LaneRates:
     """Money per item unit: lane r costs ``unit_cost.values[r] * rates[codes[r]]``, and charges.
 
+    The freight of lanes with a tariff is not in it.
+
     ``codes`` int32 of shape (rows,) tell apart what lanes have in common: measure, currency and
     charges; ``charges[codes[r]]`` is added. None stands for what the item does not say.
     """
@@ -49,7 +51,9 @@ def lane_rates(network: Network, item: int, rows: IntArray | slice) -> LaneRates
     for measure, currency, charge in distinct.T.tolist():
         amount = measures[measure]
         own = None if currency < 0 else lanes.currency.values[currency]
-        priced.append(None if amount is None else amount * scale * worth[own])
+        # A currency without a rate is a fault of its own.
+        known = amount is not None and own in worth
+        priced.append(amount * scale * worth[own] if known else None)
         charges.append(Fraction(0) if charge < 0 else due[charge])
     return LaneRates(
         codes=codes.ravel().astype(np.int32), rates=tuple(priced), charges=tuple(charges)

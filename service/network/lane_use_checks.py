@@ -71,7 +71,7 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
         ],
         len(forced),
     )
-    rows = assembly.lane_rows[np.flatnonzero(unlike)]
+    rows = assembly.lane_rows[np.flatnonzero(unlike & lanes.unit_cost.present)]
     rows = np.sort(rows[~assembly.sent.lanes.measured[rows]])
     doubts.caution(
         "rate_for_unlike_units",

@@ -15,8 +15,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.network.columns import IntArray, Network
+from service.network.lane_freight import freight_runs
 from service.network.lane_rates import lane_rates
 from service.network.reach import LaneUse
+from service.network.tariffs import departure_day
 
 # int64, or Python integers where a sum of as many costs as a loop has sites could leave 64 bits.
 _Costs = NDArray[Any]
@@ -58,17 +60,29 @@ def _costs(network: Network, rows: IntArray, item: int) -> tuple[IntArray, _Cost
         return rows, np.zeros(0, dtype=np.int64)
     rates = [rate or Fraction(0) for rate, _ in pairs]
     charges = [charge or Fraction(0) for _, charge in pairs]
+    # What the first step costs: on a loop below zero that is where it begins.
+    step = Fraction(thing.step)
+    runs = freight_runs(network, item, departure_day(network.head))
+    first = [
+        runs[code][0].money / step if code in runs else Fraction(0)
+        for code in range(len(lanes.tariff.values))
+    ]
     handling = [site.handling(thing.id) for site in network.sites]
-    scale = lcm(*(number.denominator for number in (*rates, *charges, *handling)))
+    scale = lcm(*(number.denominator for number in (*rates, *charges, *first, *handling)))
     rate = [int(number * scale) for number in rates]
     charge = [int(number * scale) for number in charges]
     extra = [int(number * scale) for number in handling]
     values = lanes.unit_cost.values[rows]
     largest = int(np.abs(values).max()) * max(map(abs, rate)) + max(map(abs, extra)) + max(charge)
+    largest += max(int(money * scale) for money in (*first, Fraction(0)))
     kind: Any = np.int64 if largest * 2 * (len(network.sites) + 1) < 2**62 else object
     costs: _Costs = values.astype(kind) * np.array(rate, dtype=kind)[codes]
     if any(charge):
         costs += np.array(charge, dtype=kind)[codes]
+    if first:
+        # Code -1, no tariff, finds the last entry.
+        freight = [*(int(money * scale) for money in first), 0]
+        costs += np.array(freight, dtype=kind)[lanes.tariff.codes[rows]]
     return rows, costs + np.array(extra, dtype=kind)[lanes.destination[rows]]
 
 

@@ -108,7 +108,7 @@ def charged(
         if not charge.concerns(item):
             continue
         amount = charge.per_item_unit(item)
-        if amount is None:
+        if amount is None or charge.currency not in worth:
             return None
         total += amount * worth[charge.currency]
     return total

@@ -89,6 +89,7 @@ def lane_order(lanes: LaneTable) -> IntArray:
     tied = np.flatnonzero(np.append(same, False) | np.insert(same, 0, False))
     rows = order[tied]
     by_last_first: tuple[NDArray[np.generic], ...] = (
+        lanes.tariff.codes[rows],
         lanes.charges.codes[rows],
         lanes.currency.codes[rows],
         lanes.extra.codes[rows],

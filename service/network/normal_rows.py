@@ -28,6 +28,7 @@ from service.network.naming import rows_with_ids
 from service.network.normal_form import lane_order, rule_key, supply_order
 from service.network.normal_money import check_exchange_rates, check_money
 from service.network.normal_rules import check_rule
+from service.network.normal_tariffs import check_tariffs, check_tariffs_named
 from service.network.strict_json import StrictJsonError, strict_json
 from service.network.units import item_units
 
@@ -39,7 +40,7 @@ _PAIRS_MARKED_MAX = 2**22
 
 _HEAD_TEXTS = ("name", "currency", "cut_off", "planned_at", "release_by")
 _HEAD_FIELDS = frozenset(
-    {"format", "periods", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
+    {"format", "periods", "rules", "extra", "exchange_rates", "tariffs", "items", "sites", "tables"}
     | {*_HEAD_TEXTS}
 )
 _COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
@@ -72,6 +73,7 @@ def check_head(head: Mapping[str, Any]) -> None:
     if "extra" in head:
         _check(_is_texts(head["extra"]) and bool(head["extra"]), "extra is not an object of text")
     check_exchange_rates(head)
+    check_tariffs(head)
     tables = head.get("tables")
     _check(isinstance(tables, dict) and set(tables) == {"supply", "demand", "lanes"}, "no tables")
     for described in head["tables"].values():
@@ -96,6 +98,7 @@ def _check_table(described: object) -> None:
 def check_rows(network: Network) -> None:
     """Raise ``NormalFormError`` unless rows are sorted, distinct and make sense one by one."""
     check_money(network)
+    check_tariffs_named(network)
     _check_supply(network.supply, network.items, factors(network.head))
     _check_demand(network)
     _check_lanes(network.lanes, network.items)
@@ -153,7 +156,9 @@ def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
     _check(not bool((lanes.origin == lanes.destination).any()), "a lane from a site to itself")
     named = lanes.ids[rows_with_ids(lanes)].tolist()
     _check(len(set(named)) == len(named), "a lane id occurs twice")
-    _check(bool(lanes.unit_cost.present.all()), "a lane without a cost")
+    by_tariff = lanes.tariff.codes >= 0
+    _check(bool((lanes.unit_cost.present != by_tariff).all()), "a lane without one cost")
+    _check(not bool((by_tariff & (lanes.currency.codes >= 0)).any()), "a tariff in a currency")
     _check(int(lanes.measure.codes.min(initial=0)) >= 0, "a lane without a measure")
     _check(set(lanes.per.values) <= {"item"}, "an unknown per")
     _check_not_negative(lanes.capacity)

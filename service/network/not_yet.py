@@ -10,7 +10,6 @@ from typing import Final
 DATES = "dates and departures"
 SHARED = "limits that several items share"
 WHOLE = "choices in whole numbers"
-MONEY = "freight tariffs"
 COMMITTED = "committed order lines"
 STABILITY = "planning close to a former run"
 FAIRNESS = "fair shares"
@@ -18,7 +17,6 @@ EMISSIONS = "emissions"
 
 NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
     "network": {
-        "tariffs": MONEY,
         "storage": DATES,
         "committed": COMMITTED,
         "committed_deducted": COMMITTED,
@@ -32,7 +30,6 @@ NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
         "split": WHOLE,
     },
     "lanes": {
-        "tariff": MONEY,
         "distance_km": EMISSIONS,
     },
     "rules": {"over": DATES},

@@ -31,10 +31,12 @@ from service.network.stock_age import check_stock_age
 from service.network.table_fields import LISTED_FIELDS, TABLE_FIELDS
 from service.network.table_forms import sheet_of
 from service.network.tables import ReadTables, read_demand, read_lanes, read_supply
+from service.network.tariff_checks import check_tariffs
+from service.network.tariff_reading import SentTariffs, read_tariffs
 from service.network.things import read_things
 
 LISTS: Final = ("items", "sites", "supply", "demand", "lanes")
-PARTS: Final = (*LISTS, "rules", "control", "exchange_rates")
+PARTS: Final = (*LISTS, "rules", "control", "exchange_rates", "tariffs")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -65,6 +67,7 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     rules = read_rules(document.get("rules"), faults)
     own = None if head is None else head.currency
     currencies = read_exchange_rates(document.get("exchange_rates"), own, faults)
+    tariffs = read_tariffs(document.get("tariffs"), currencies, faults)
     control = _read_control(document.get("control"), faults)
     things = read_things(document.get("items"), document.get("sites"), faults)
     sheets = _take_sheets(document, faults)
@@ -73,7 +76,7 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     tables = ReadTables(
         supply=read_supply(sheets["supply"], things, currencies),
         demand=read_demand(sheets["demand"], things),
-        lanes=read_lanes(sheets["lanes"], things, currencies),
+        lanes=read_lanes(sheets["lanes"], things, currencies, tariffs),
     )
     if control is not None:
         check_control(control, tables, faults)
@@ -85,7 +88,7 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     set_aside = _refuse_or_set_aside(tables, options, faults)
     if head is not None:
         _doubt_head(head, faults)
-        assembly = assemble(_head_document(head, currencies), things, tables, rules)
+        assembly = assemble(_head_document(head, currencies, tariffs), things, tables, rules)
         _check_together(assembly, head.cut_off, options, faults)
     else:
         assembly = None
@@ -123,7 +126,7 @@ def _read_head(document: Mapping[str, object], faults: FaultList) -> Head | None
     return validated(Head, head, path=(), table="network", faults=faults)
 
 
-def _head_document(head: Head, currencies: Currencies) -> dict[str, object]:
+def _head_document(head: Head, currencies: Currencies, tariffs: SentTariffs) -> dict[str, object]:
     """Return the head in its normal form."""
     document: dict[str, object | None] = {
         "format": head.format,
@@ -135,6 +138,7 @@ def _head_document(head: Head, currencies: Currencies) -> dict[str, object]:
         "periods": [day.isoformat() for day in head.periods] if head.periods else None,
         "extra": dict(sorted(head.extra.items())) if head.extra else None,
         "exchange_rates": [dict(rate) for rate in currencies.documents] or None,
+        "tariffs": [dict(tariff) for tariff in tariffs.documents] or None,
     }
     return {name: value for name, value in document.items() if value is not None}
 
@@ -211,6 +215,7 @@ def _check_together(
     check_names(assembly)
     check_lanes_for_any_item(assembly, use, faults)
     check_charges(assembly, use)
+    check_tariffs(assembly, use, faults)
     check_loops(assembly, use, faults)
     check_origins(assembly, use, faults)
     check_rules(assembly, use, faults)

@@ -10,6 +10,7 @@ from typing import Final
 from pydantic import BaseModel
 
 from service.network.definition import RULE_PARTS, Control, Head, ItemPart, SitePart
+from service.network.money_definition import ExchangeRatePart, TariffPart
 from service.network.table_fields import REQUIRED_FIELDS, TABLE_FIELDS
 from service.network.value_schemas import Schema
 
@@ -35,6 +36,8 @@ def network_schema() -> Schema:
             "sites": {"type": "array", "items": _named(SitePart, definitions)},
             **tables,
             "rules": {"anyOf": [{"type": "array", "items": {"anyOf": rules}}, {"type": "null"}]},
+            "exchange_rates": _optional_list(ExchangeRatePart, definitions),
+            "tariffs": _optional_list(TariffPart, definitions),
             "control": {"anyOf": [_named(Control, definitions), {"type": "null"}]},
         },
         "required": [*head["required"], "items", "sites", *TABLE_FIELDS],
@@ -56,6 +59,12 @@ def _named(part: type[BaseModel], definitions: Schema, override: Schema | None =
     schema["properties"] |= override or {}
     definitions[part.__name__] = schema
     return {"$ref": f"#/$defs/{part.__name__}"}
+
+
+def _optional_list(part: type[BaseModel], definitions: Schema) -> Schema:
+    """Return the schema of an array of parts that may be absent."""
+    array = {"type": "array", "items": _named(part, definitions)}
+    return {"anyOf": [array, {"type": "null"}]}
 
 
 def _plain(schema: Schema) -> Schema:
@@ -90,6 +99,9 @@ def _table(name: str) -> Schema:
     }
     forms = [{"type": "array", "items": row}, columns]
     if name == "lanes":
+        # A tariff may stand instead of the cost.
+        one_cost = [{"required": ["unit_cost"]}, {"required": ["tariff"]}]
+        row["anyOf"], columns["anyOf"] = one_cost, one_cost
         table = _cost_table()
         forms += [table, {"type": "array", "items": table}]
     return {"anyOf": forms}

@@ -94,6 +94,11 @@ LANE_FIELDS: Final[Mapping[str, Schema]] = {
     "carrier": schemas.ID_SCHEMA,
     "currency": _CURRENCY,
     "charges": {"type": "array", "items": CHARGE_SCHEMA, "maxItems": CHARGES_MAX},
+    "tariff": {
+        **schemas.ID_SCHEMA,
+        "description": "The id of a freight tariff, instead of unit_cost.",
+        "examples": ["ROAD-2026"],
+    },
     "transit_days": schemas.described(
         _DAYS, "Calendar days from departure to arrival; 0 if absent.", 1
     ),
@@ -123,7 +128,7 @@ TABLE_FIELDS: Final[Mapping[str, Mapping[str, Schema]]] = {
 REQUIRED_FIELDS: Final[Mapping[str, tuple[str, ...]]] = {
     "supply": ("site", "item", "quantity"),
     "demand": ("site", "item", "quantity"),
-    "lanes": ("origin", "destination", "unit_cost"),
+    "lanes": ("origin", "destination"),
 }
 # Fields whose single value is itself an array, so that an array need not be a column of a table.
 LISTED_FIELDS: Final = frozenset({"tags", "origins", "charges"})

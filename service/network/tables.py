@@ -30,6 +30,7 @@ from service.network.table_faults import TableFaults
 from service.network.table_fields import PRIORITY_DEFAULT, PRIORITY_MAX
 from service.network.table_reading import Spelled, TableReader
 from service.network.table_rows import with_measure, with_units
+from service.network.tariff_reading import SentTariffs
 from service.network.things import Things
 from service.network.time_zones import at_sites
 from service.network.wording import ID_ADVICE, is_id
@@ -145,7 +146,9 @@ def read_demand(sheet: Sheet, things: Things) -> ReadDemand:
     return ReadDemand(table=table, faults=faults)
 
 
-def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLanes:
+def read_lanes(
+    sheet: Sheet, things: Things, currencies: Currencies, tariffs: SentTariffs
+) -> ReadLanes:
     """Read the lanes. A must-ship of 0 and the ``per`` of a lane with an item say nothing."""
     faults = TableFaults(sheet)
     reader = TableReader(faults)
@@ -164,6 +167,7 @@ def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLane
     item = reader.codes("item", things.item_positions, unknown="unknown_item", thing="item")
     unit_cost = reader.decimals("unit_cost", decimals_max=RATE_DECIMALS_MAX, least=None)
     must_ship = _quantity(reader, "must_ship")
+    tariff = reader.texts("tariff", tariffs.spelled)
     measure = reader.texts("measure", _id)
     per = reader.texts("per", _per)
     table = LaneTable(
@@ -179,6 +183,7 @@ def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLane
         carrier=reader.texts("carrier", _id),
         currency=reader.texts("currency", currencies.spelled),
         charges=reader.structures("charges", charge_speller(things.item_positions, currencies)),
+        tariff=tariff,
         transit_days=reader.decimals("transit_days", decimals_max=0, least=0),
         closes=at_sites(reader.texts("closes", _local), origin, things.sites),
         departs=at_sites(reader.texts("departs", _local), origin, things.sites),
@@ -188,8 +193,25 @@ def read_lanes(sheet: Sheet, things: Things, currencies: Currencies) -> ReadLane
     )
     reader.require("origin", origin != -1)
     reader.require("destination", destination != -1)
-    reader.require("unit_cost", unit_cost.present)
+    _require_one_cost(reader, faults, unit_cost.present, reader.given("tariff"))
     return ReadLanes(table=table, faults=faults, measured=measure.codes >= 0)
+
+
+def _require_one_cost(
+    reader: TableReader, faults: TableFaults, costs: BoolArray, by_tariff: BoolArray
+) -> None:
+    """Report lanes that have neither a cost nor a tariff, or both."""
+    if not by_tariff.any():
+        reader.require("unit_cost", costs)
+        return
+    neither = ~costs & ~by_tariff & ~faults.faulty("unit_cost")
+    detail = "Every lane needs unit_cost, or a tariff."
+    faults.at_rows("unit_cost", np.flatnonzero(neither), "missing_field", detail)
+    detail = "A tariff stands instead of unit_cost. Drop one of them."
+    faults.at_rows("tariff", np.flatnonzero(costs & by_tariff), "two_costs", detail)
+    stated = reader.given("currency") & by_tariff
+    detail = "A tariff has a currency of its own. Drop that of the lane."
+    faults.at_rows("currency", np.flatnonzero(stated), "currency_of_tariff", detail)
 
 
 def _quantity(reader: TableReader, name: str) -> Decimals:

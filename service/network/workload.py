@@ -10,6 +10,7 @@ import numpy as np
 from service.network.canonical import canonical_json, digest
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.days import is_dated, movements_of
+from service.network.tariffs import tariffs_of
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -45,6 +46,9 @@ def workload_of(network: Network, *, file_bytes: int) -> Workload:
     if lanes and is_dated(network):
         times = -(-len(movements_of(network).row) // lanes)
         usable, touched = usable * times, touched * times
+    if network.lanes.tariff.values:
+        # It is also as many as its steps have prices: at most two for each break but the first.
+        usable = usable * -(-_prices(network) // lanes)
     return Workload(
         items=len(network.items),
         sites=len(network.sites),
@@ -56,6 +60,15 @@ def workload_of(network: Network, *, file_bytes: int) -> Workload:
         places=int(np.minimum(touched + 2 * usable, times * len(network.sites)).sum()),
         file_bytes=file_bytes,
     )
+
+
+def _prices(network: Network) -> int:
+    """Return the number of lanes, those with a tariff counted once for each price of a step."""
+    most: dict[str, int] = {}
+    for tariff in tariffs_of(network.head):
+        most[tariff.id] = max(most.get(tariff.id, 1), 2 * len(tariff.breaks) - 1)
+    of_code = np.array([*(most[name] for name in network.lanes.tariff.values), 1], np.int64)
+    return int(of_code[network.lanes.tariff.codes].sum())
 
 
 def likeness_of(network: Network) -> str:

@@ -26,6 +26,10 @@ class LaneBounds:
     slice where they are all. Columns that say the same of every lane are views of one value, which
     nobody can write to. In a network with dates a lane stands here once for each day of departure:
     ``departs`` and ``arrives`` are its days.
+
+    A lane with a tariff has an entry for each run of steps that cost the same
+    (``planning/tariff_segments.py``): ``first`` is the position of the first of them and ``width``
+    how many steps fit each (``UNLIMITED``: any number); both are None where no lane is split.
     """
 
     rows: IntArray
@@ -40,6 +44,8 @@ class LaneBounds:
     stated_capacity: IntArray
     departs: IntArray | None = None
     arrives: IntArray | None = None
+    first: IntArray | None = None
+    width: IntArray | None = None
 
 
 def lane_bounds(

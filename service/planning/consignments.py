@@ -7,6 +7,7 @@ from typing import NamedTuple
 from service.network.columns import Network
 from service.planning.amounts import UNKNOWN, Measured, pallets_per_unit, text, texts
 from service.planning.plan_lines import ItemPlan, PlanLine
+from service.planning.shipments import Shipments
 
 
 class _OnLane(NamedTuple):
@@ -38,6 +39,7 @@ def consignments(
         for goods in _goods(network, plan, scale):
             by_lane.setdefault((goods.line.row, goods.line.departs), []).append(goods)
     sites = [site.id for site in network.sites]
+    shipments = Shipments(network)
     rows: list[dict[str, object]] = []
     for (row, day), own in sorted(by_lane.items()):
         first = own[0] if len(own) == 1 else _together(network, own, scale)
@@ -57,6 +59,10 @@ def consignments(
                 ],
             }
         )
+        tariff = shipments.tariff(row, day)
+        if tariff is not None:
+            together = [(goods.item, goods.line.steps) for goods in own]
+            rows[-1]["freight"] = shipments.document(tariff, together)
     return rows
 
 

@@ -55,7 +55,8 @@ def _outside(network: Network, own: ItemNetwork, cut: NoCirculationError) -> lis
 def _words(network: Network, own: ItemNetwork, arcs: IntArray) -> str:
     """Return what some arcs stand for, in words, the first few of each kind by name."""
     lanes = arcs[own.kind[arcs] == Kind.LANE]
-    names = [f"lane {name}" for name in lane_names(network, own.lanes.rows[own.subject[lanes]])]
+    rows = np.unique(own.lanes.rows[own.subject[lanes]])
+    names = [f"lane {name}" for name in lane_names(network, rows)]
     for arc in arcs[own.kind[arcs] != Kind.LANE].tolist():
         kind, subject = Kind(int(own.kind[arc])), int(own.subject[arc])
         if kind == Kind.WANT:

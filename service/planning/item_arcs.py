@@ -22,6 +22,7 @@ from service.planning.scaling import Rationals, common_grid
 from service.planning.serving import add_serving
 from service.planning.site_days import each_place
 from service.planning.stock import Stock, stock_of
+from service.planning.tariff_segments import with_segments
 
 # Positions of nodes or of what arcs stand for: as wide as they come.
 Codes = NDArray[np.integer[Any]]
@@ -176,7 +177,8 @@ def item_arcs(  # noqa: PLR0913 - the tables of one item
     movements: Movements | None = None,
 ) -> ArcList:
     """Build the arcs of one item; ``movements`` are those of a network with dates."""
-    lanes = lane_bounds(network, item, use.rows(item), book, movements=movements)
+    bounds = lane_bounds(network, item, use.rows(item), book, movements=movements)
+    lanes = with_segments(bounds, network, item)
     stock, groups = stock_of(network, item), groups_of(network, item, options)
     layout = layout_of(
         network,
@@ -200,7 +202,7 @@ def item_arcs(  # noqa: PLR0913 - the tables of one item
         Kind.LANE,
         tail,
         head,
-        np.arange(lanes.rows.shape[0], dtype=np.int32),
+        np.arange(lanes.rows.shape[0], dtype=np.int32) if lanes.first is None else lanes.first,
         minimum=lanes.minimum,
         capacity=lanes.capacity,
         money=lanes.money,

@@ -9,6 +9,7 @@ from service.network.quantities import exact_text
 from service.network.units import item_units, per_unit
 from service.planning.amounts import Document, text
 from service.planning.plan_lines import ItemPlan, PlanLine
+from service.planning.shipments import Shipments
 
 PARTS = ("supply", "transport", "charges")
 
@@ -20,6 +21,7 @@ class MoneyShown:
         """Look up what all lanes share."""
         self._network = network
         self._worth = factors(network.head)
+        self._shipments = Shipments(network)
         self._charges = [charges_of(charges) for charges in network.lanes.charges.values]
         # By currency and part, in that currency.
         self._spent: dict[tuple[str, str], Fraction] = {}
@@ -58,14 +60,18 @@ class MoneyShown:
         lanes, thing = self._network.lanes, self._network.items[item]
         quantity = line.steps * thing.step
         currency = lanes.currency.text(line.row)
-        if currency is not None:
+        tariff = self._shipments.tariff(line.row, line.departs)
+        if tariff is not None:
+            document["unit_cost"] = text(Fraction(document["transport_cost"]) / quantity)
+            if tariff.currency is not None:
+                amount = self._shipments.money(tariff, item, line.steps)
+                self._state(document, tariff.currency, amount)
+        elif currency is not None:
             measure = per_unit(thing, lanes.measure.values[lanes.measure.codes[line.row]])
             rate = lanes.unit_cost.fraction(line.row)
             assert rate is not None  # noqa: S101 - the intake refuses a lane without a cost
             assert measure is not None  # noqa: S101 - and one whose measure says nothing
-            amount = quantity * measure * rate
-            self._spend(currency, "transport", amount)
-            document["stated"] = {"currency": currency, "transport_cost": text(amount)}
+            self._state(document, currency, quantity * measure * rate)
         code = int(lanes.charges.codes[line.row])
         parts: list[Document] = []
         for charge in self._charges[code] if code >= 0 else ():
@@ -80,6 +86,11 @@ class MoneyShown:
             parts.append(part)
         if parts:
             document["charge_parts"] = parts
+
+    def _state(self, document: Document, currency: str, amount: Fraction) -> None:
+        """Say on a plan line what its transport costs in another currency."""
+        self._spend(currency, "transport", amount)
+        document["stated"] = {"currency": currency, "transport_cost": text(amount)}
 
     def _supply(self, plan: ItemPlan) -> None:
         """Add up what stock costs that is priced in another currency."""
@@ -104,8 +115,9 @@ class MoneyShown:
 
 
 def shows_money(network: Network) -> bool:
-    """Return whether anything is paid in another currency or charged."""
-    columns = (network.lanes.currency, network.lanes.charges, network.supply.currency)
+    """Return whether anything is paid in another currency, charged, or paid by a tariff."""
+    lanes, supply = network.lanes, network.supply
+    columns = (lanes.currency, lanes.charges, lanes.tariff, supply.currency)
     return any(column.values for column in columns)
 
 

@@ -13,6 +13,7 @@ from service.network.naming import lane_names
 from service.planning.amounts import texts
 from service.planning.arcs import Kind, MoneyArray
 from service.planning.paths import Paths, paths_of
+from service.planning.shipments import Shipments
 from service.planning.solve import ItemFlow
 
 Completing = Callable[["ItemPlan", Mapping["PlanLine", dict[str, object]]], None]
@@ -22,8 +23,9 @@ class PlanLine(NamedTuple):
     """One item on one lane, or (``lane`` None) served where it lies.
 
     ``row`` is the lane's row in the network, -1 without a lane. ``steps`` are those of the item;
-    money is scaled (``Compiled.cost_scale``), ``rate`` the transport of one step. ``departs`` and
-    ``arrives`` are days, 0 where there are none.
+    money is scaled (``Compiled.cost_scale``), ``rate`` the transport of one step (0 on a lane with
+    a tariff, on which steps cost different money). ``departs`` and ``arrives`` are days, 0 where
+    there are none.
     """
 
     row: int
@@ -147,11 +149,25 @@ def _lines(  # noqa: PLR0913 - what a line says comes from all of these
         )
         for row, origin, destination, rate, charge, (lane, steps), departs, arrives in columns
     ]
+    if network.lanes.tariff.values:
+        shipments = Shipments(network)
+        lines = [_shipped(shipments, line, own.item, scale) for line in lines]
     lines += [
         PlanLine(-1, None, site, site, steps, 0, 0, money, steps * handling[site], 0)
         for site, (steps, money) in local.items()
     ]
     return tuple(lines)
+
+
+def _shipped(shipments: Shipments, line: PlanLine, item: int, scale: Fraction) -> PlanLine:
+    """Return a line with the freight that its tariff asks for, if its lane has one."""
+    tariff = shipments.tariff(line.row, line.departs)
+    if tariff is None:
+        return line
+    money = shipments.in_plan_money(tariff, shipments.money(tariff, item, line.steps)) * scale
+    # The scale makes every further step whole, and the first of them starts from nothing.
+    assert money.denominator == 1  # noqa: S101 - see above
+    return line._replace(rate=0, transport=money.numerator)
 
 
 def _charges(solved: ItemFlow, lanes: IntArray, scale: Fraction) -> list[int]:

@@ -9,6 +9,7 @@ from service.planning.compile import Compiled
 from service.planning.prices import reduced_cost
 from service.planning.rule_book import Entry
 from service.planning.solve import ItemFlow
+from service.planning.tariff_segments import natural
 
 
 def rules_in_force(compiled: Compiled, solved: list[ItemFlow]) -> list[dict[str, object]]:
@@ -60,6 +61,11 @@ def _binds(entry: Entry, flow: ItemFlow, gain: IntArray) -> bool:
     picked = entry.lanes[own.lanes.rows]
     on_lanes = gain[: picked.shape[0]][picked]
     if isinstance(rule, FixedQuantity):
+        first, width = own.lanes.first, own.lanes.width
+        if first is not None and width is not None:
+            lanes = slice(0, picked.shape[0])
+            follow = natural(width, flow.flow[lanes], gain[lanes], first)
+            on_lanes = on_lanes[~follow[picked]]
         return bool((on_lanes != 0).any())
     if bool((on_lanes < 0).any()):
         return True

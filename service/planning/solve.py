@@ -32,7 +32,13 @@ class ItemFlow:
         """Return the flow above 0 on the arcs of one kind, by subject."""
         if kind == Kind.LANE:
             lanes = np.flatnonzero(self.flow[: self.own.lanes.rows.shape[0]])
-            return dict(zip(lanes.tolist(), self.flow[lanes].tolist(), strict=True))
+            on_lanes = zip(self.own.subject[lanes].tolist(), self.flow[lanes].tolist(), strict=True)
+            if self.own.lanes.first is None:
+                return dict(on_lanes)
+            sums: dict[int, int] = {}
+            for lane, steps in on_lanes:
+                sums[lane] = sums.get(lane, 0) + steps
+            return sums
         arcs = self.own.of_kind(kind)
         carried = self.flow[arcs]
         used = carried != 0

@@ -2,6 +2,7 @@
 
 from typing import Final
 
+from service.proof.money_shapes import CHARGE_PART, CURRENCY, FREIGHT, STATED
 from service.proof.shapes import (
     Shape,
     is_amount,
@@ -44,23 +45,9 @@ _PLAN_LINE = record(
     {
         "departs": _TEXT_OR_NULL,
         "arrives": _TEXT_OR_NULL,
-        "stated": record({"currency": is_text, "transport_cost": is_amount}),
-        "charge_parts": list_of(
-            record(
-                {"name": is_text, "cost": is_amount},
-                {"currency": is_text, "stated_cost": is_amount},
-            )
-        ),
+        "stated": STATED,
+        "charge_parts": list_of(CHARGE_PART),
     },
-)
-_CURRENCY = record(
-    {
-        "currency": is_text,
-        "as_of": _TEXT_OR_NULL,
-        "source": _TEXT_OR_NULL,
-        **dict.fromkeys(("rate", "per", "supply", "transport", "charges"), is_amount),
-        **dict.fromkeys(("amount", "converted"), is_amount),
-    }
 )
 _SOURCE = record(
     {
@@ -107,7 +94,7 @@ _CONSIGNMENT = record(
         "cost": is_amount,
         "order_references": list_of(is_text),
     },
-    _DATES,
+    {**_DATES, "freight": FREIGHT},
 )
 _SHORTAGE = record(
     {
@@ -209,7 +196,7 @@ _PLANNED = record(
             feasible=True, bound=is_amount, gap=one_of("0"), lexicographic="proved"
         ),
     },
-    {"currencies": list_of(_CURRENCY)},
+    {"currencies": list_of(CURRENCY)},
 )
 _NO_PLAN = record(
     {

@@ -31,6 +31,7 @@ from service.proof.rulings import Rulings, UnusableNetworkError, check_limits_ar
 from service.proof.shapes import amount
 from service.proof.slackness import check_slackness
 from service.proof.stated import check_stated
+from service.proof.tariff_lanes import freights_of, on_days
 from service.proof.totals import check_shortages, check_site_limits, check_site_use, check_totals
 from service.proof.usable import usable_lanes
 from service.proof.violations import Findings, Violation
@@ -85,6 +86,10 @@ def check_documents(  # noqa: PLR0913 - what a proof is about comes in four docu
     rulings = rulings.over(calendar.lane) if calendar.dated else rulings
     try:
         _check_limits_are_clear(network)
+        calendar = on_days(calendar)
+        freights = freights_of(calendar.network)
+        if freights is not None:
+            freights.check_usable()
     except UnusableNetworkError as error:
         findings.add("network_unusable", str(error))
         return

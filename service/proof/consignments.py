@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import Item, Network
+from service.proof.bills import due_bills, stated_bills
 from service.proof.calendar import Calendar
 from service.proof.flows import PlanLine
 from service.proof.numbers import numbers, numbers_of, together
@@ -68,6 +69,7 @@ def check_consignments(  # noqa: PLR0913 - a consignment repeats something of ev
             [cost * below for cost in stated.whole],
             [costs[row] * stated.below for row in rows],
         ),
+        (stated_bills(documents), due_bills(network, rows, [loads[row] for row in rows])),
         *_measures(network, documents, [loads[row] for row in rows]),
     ]
     wrong = {position for column in columns for position in _differing(*column)}

@@ -9,6 +9,7 @@ from service.proof.arcs import NO_MONEY, Costs, ItemArcs
 from service.proof.exact import Whole, plus, whole, whole_of
 from service.proof.money import is_plain, lane_kinds
 from service.proof.rulings import measures_on
+from service.proof.tariff_lanes import Freights, freights_of, steepest_costs
 from service.proof.usable import of_rows
 
 
@@ -55,7 +56,10 @@ def _plain(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | None:
 
 
 def _charged(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | None:
-    """Return the scaled money of a step on each lane: its rate, and its charges; each is whole."""
+    """Return the scaled money of a step on each lane: its rate, and its charges; each is whole.
+
+    On a lane with a tariff, whose steps cost different money, it is that of the dearest.
+    """
     values = of_rows(network.lanes.unit_cost.values, arcs.rows)
     lane_costs: Whole = np.zeros(len(values), dtype=np.int64)
     for kind in lane_kinds(network, arcs.item, arcs.rows):
@@ -67,4 +71,17 @@ def _charged(network: Network, arcs: ItemArcs, scale: Fraction) -> Whole | None:
         if part.dtype == object:
             lane_costs = lane_costs.astype(object)
         lane_costs[kind.places] = part
-    return lane_costs
+    freights = freights_of(network)
+    return lane_costs if freights is None else _dearest(network, arcs, scale, lane_costs, freights)
+
+
+def _dearest(
+    network: Network, arcs: ItemArcs, scale: Fraction, lane_costs: Whole, freights: Freights
+) -> Whole | None:
+    """Return costs with the dearest step of each lane that has a tariff: none costs more."""
+    at, steepest = steepest_costs(freights, arcs, network, scale)
+    if any(cost.denominator != 1 for cost in steepest):
+        return None
+    dearest = np.zeros(len(lane_costs), dtype=object)
+    dearest[at] = [cost.numerator for cost in steepest]
+    return plus(lane_costs, dearest)

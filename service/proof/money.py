@@ -87,6 +87,17 @@ def lane_kinds(network: Network, item: int, rows: IntArray) -> list[LaneKind]:
     return kinds
 
 
+def charges_by_code(network: Network, item: int, rows: IntArray) -> dict[int, Fraction]:
+    """Return what a unit of ``item`` is charged on ``rows``, by code of the column (-1: none)."""
+    found = {-1: Fraction(0)}
+    charges = network.lanes.charges
+    for code in np.unique(charges.codes[rows]).tolist():
+        due = charges_due(None if code < 0 else charges.values[code], network.items[item])
+        money = (one.per_unit * in_plan_money(network.head, one.currency) for one in due)
+        found[code] = sum(money, Fraction(0))
+    return found
+
+
 def unit_costs(network: Network, rows: IntArray, item: int) -> tuple[Numbers, Numbers]:
     """Return transport and charges of one unit of ``item`` on each of the lanes ``rows``."""
     kinds = lane_kinds(network, item, rows)
@@ -108,4 +119,5 @@ def check_costs_known(network: Network, item: int, rows: IntArray) -> None:
 
 def is_plain(network: Network) -> bool:
     """Return whether lanes cost no more than their rate in the currency of the plan."""
-    return not network.lanes.currency.values and not network.lanes.charges.values
+    lanes = network.lanes
+    return not (lanes.currency.values or lanes.charges.values or lanes.tariff.values)

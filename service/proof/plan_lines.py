@@ -3,6 +3,7 @@
 import itertools
 from collections import defaultdict
 from collections.abc import Mapping, Sequence
+from fractions import Fraction
 
 import numpy as np
 
@@ -11,6 +12,7 @@ from service.proof.flows import PlanLine
 from service.proof.numbers import numbers, numbers_of, together
 from service.proof.order_lines import Paths
 from service.proof.results import ItemResult, lane_costs, lane_ends
+from service.proof.tariff_lanes import freights_of
 from service.proof.violations import Findings
 
 _MONEY = ("transport_cost", "supply_cost", "handling_cost", "charges", "cost")
@@ -91,6 +93,12 @@ class _Costs:
         self._rate_below = rates.below
         self._charge = dict(zip(rows.tolist(), charges.whole, strict=True))
         self._charge_below = charges.below
+        freights = freights_of(network)
+        self._freight = {
+            row: freights.money(row, result.item, steps)
+            for row, steps in (result.on_lane.items() if freights is not None else ())
+            if freights is not None and freights.tariff(row) is not None
+        }
         self._ends = lane_ends(network, rows)
         name = network.items[result.item].id
         handling = numbers_of(site.handling(name) for site in network.sites)
@@ -142,12 +150,18 @@ class _Costs:
             key = (line.row, self._item)
             first, used_up = self._paths.first.get(key, 0), self._paths.last.get(key, 0)
             handled += used_up * self._step * self._handling[line.destination] * goods_below
+        if line.row in self._freight:
+            paid = self._freight[line.row]
+            right = Fraction(transport, below) == paid == Fraction(*rate) * Fraction(*quantity)
+        else:
+            right = rate[0] * self._rate_below == per_unit * rate[1] and (
+                transport * goods_below * self._rate_below == goods * per_unit * below
+            )
         least, most = self._supply_range(line.origin, first)
         stocked = supply * self.stock_below
         return (
-            ends == (line.origin, line.destination)
-            and rate[0] * self._rate_below == per_unit * rate[1]
-            and transport * goods_below * self._rate_below == goods * per_unit * below
+            right
+            and ends == (line.origin, line.destination)
             and handling * goods_below * self._below_step * self._handling_below == handled * below
             and charges * goods_below * self._charge_below == charged * below
             and least * below <= stocked <= most * below

@@ -14,6 +14,7 @@ from service.proof.groups import Wanted
 from service.proof.money import is_plain, unit_costs
 from service.proof.numbers import Numbers, numbers_of
 from service.proof.stock import Stock
+from service.proof.tariff_lanes import freights_of
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -106,6 +107,11 @@ def _lane_money(
     for part, costs in lane_costs(network, rows, arcs.item).items():
         carried = sum(map(int.__mul__, on_lane.values(), costs.whole))
         money[part] = carried * arcs.step / costs.below
+    freights = freights_of(network)
+    if freights is not None:
+        for row, steps in on_lane.items():
+            if freights.tariff(row) is not None:
+                money["transport"] += freights.money(row, arcs.item, steps)
     return money
 
 

@@ -18,6 +18,8 @@ from service.proof.arcs import Costs, ItemArcs
 from service.proof.costs import scaled_costs
 from service.proof.exact import ROOM, Whole, magnitude, plus, times, whole
 from service.proof.flows import Names, describe, node_of
+from service.proof.money import charges_by_code
+from service.proof.tariff_lanes import freights_of, tariff_contradictions, with_tariffs
 from service.proof.violations import EXAMPLES_MAX, Findings
 
 
@@ -50,7 +52,17 @@ def check_slackness(  # noqa: PLR0913 - network, flow and prices come from three
     if price is None:
         return
     cost = weighted(arcs, money, base)
-    for position in contradictions(arcs, flow, cost=cost, price=price)[: EXAMPLES_MAX + 1].tolist():
+    found = contradictions(arcs, flow, cost=cost, price=price).tolist()
+    freights = freights_of(network)
+    if freights is not None:
+        by_tariff = with_tariffs(arcs.rows, network)
+        found = [at for at in found if at >= len(arcs.rows) or not by_tariff[at]]
+        per_unit = charges_by_code(network, arcs.item, arcs.rows)
+        charges = {code: money * arcs.step for code, money in per_unit.items()}
+        found += tariff_contradictions(
+            freights, network, arcs, flow, price=price, charges=charges, scale=scale
+        )
+    for position in found[: EXAMPLES_MAX + 1]:
         detail = f"{int(flow[position])} steps contradict the prices at its ends"
         findings.add("not_optimal", detail, place=describe(arcs, position, network))
 

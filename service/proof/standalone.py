@@ -39,6 +39,9 @@ Key = tuple[Any, ...]
 # A value of JSON, or a column; what it is in truth is checked where it is read.
 Value = Any
 
+# From a break on, so much of the measure, at a rate.
+Parted = tuple[Fraction, Fraction, Fraction]
+
 NOTHING_BEFORE = "sha-256:" + "0" * 64
 PROBLEMS_OF_A_KIND_MAX = 20
 
@@ -202,9 +205,10 @@ COLUMNS = {
         "due:texts latest:texts late_cost_per_day:decimal origins:texts tags:texts extra:texts"
     ),
     "lanes": (
-        "id:text origin!sites destination!sites item:items unit_cost!decimal measure!texts "
+        "id:text origin!sites destination!sites item:items unit_cost:decimal measure!texts "
         "must_ship:decimal capacity:decimal per:texts carrier:texts currency:texts charges:texts "
-        "transit_days:decimal closes:texts departs:texts arrives:texts tags:texts extra:texts"
+        "tariff:texts transit_days:decimal closes:texts departs:texts arrives:texts tags:texts "
+        "extra:texts"
     ),
 }
 
@@ -416,6 +420,163 @@ def read_exchange_rates(head: dict[str, Any]) -> dict[str | None, Fraction]:
     return worth
 
 
+def read_tariffs(head: dict[str, Any]) -> None:
+    """Check the tariffs of the head and read them."""
+    tariffs = head.get("tariffs", ())
+    need(tariffs == () or (isinstance(tariffs, list) and tariffs), "no tariffs")
+    before = ("", "")  # id of the tariff before, and until when it holds
+    head["read_tariffs"] = []
+    for tariff in tariffs:
+        need(isinstance(tariff, dict), "not a tariff")
+        read_tariff(tariff)
+        need(tariff.get("currency") in head["worth"], "a tariff in another currency")
+        need(tariff.get("currency", "") is not None, "a tariff in no currency")
+        starts, ends = tariff.get("valid_from", ""), tariff.get("valid_until", "9999-99")
+        need(before[0].encode() <= tariff["id"].encode(), "tariffs are not sorted")
+        need(before[0] != tariff["id"] or before[1] < starts, "two tariffs of one id at a time")
+        before = (tariff["id"], ends)
+        head["read_tariffs"].append(Tariff(tariff))
+
+
+def read_tariff(tariff: dict[str, Any]) -> None:
+    """Check one tariff."""
+    words = {"id", "basis", "carrier", "currency", "version", "source"}
+    dates, amounts = {"valid_from", "valid_until"}, {"kg_per_m3", "minimum_charge"}
+    amounts |= {"round_up_to", "round_money"}
+    others = {"breaks", "break_type", "pay_up", "surcharge_percent"}
+    need({"id", "basis", "breaks"} <= set(tariff), "a tariff lacks something")
+    need(set(tariff) <= words | dates | amounts | others, "other fields of a tariff")
+    for field, value in tariff.items():
+        if field in words:
+            need(isinstance(value, str) and value, "not a text")
+        elif field in dates:
+            need(isinstance(value, str) and is_date(value), "not a date")
+        elif field in amounts:
+            need(decimal(value) > 0, "an amount of 0 or less")
+    percent = decimal(tariff.get("surcharge_percent", "1"))
+    need(percent > -100 and percent != 0, "not a surcharge")
+    chargeable = tariff["basis"] == "chargeable_weight"
+    need(("kg_per_m3" in tariff) == chargeable, "kilograms of a cubic metre")
+    need(isinstance(tariff["breaks"], list) and tariff["breaks"], "no breaks")
+    for one in tariff["breaks"]:
+        need(isinstance(one, dict) and set(one) == {"from", "rate"}, "not a break")
+        need(decimal(one["rate"]) >= 0, "a rate below 0")
+    starts = [decimal(one["from"]) for one in tariff["breaks"]]
+    need(starts[0] == 0 and rises(starts), "breaks do not ascend from 0")
+    kinds = ("incremental", "all_units") if len(starts) > 1 else (None,)
+    kind = tariff.get("break_type")
+    need(kind in kinds and ("break_type" in tariff) == (kind is not None), "a break type")
+    need(tariff.get("pay_up", True) is True, "pay up or not")
+    need("pay_up" not in tariff or kind == "all_units", "paying up without all units")
+    need(tariff.get("valid_from", "") <= tariff.get("valid_until", "9999-99"), "a period")
+
+
+class Tariff:
+    """A tariff, and what it asks for a shipment: all goods on a lane on one departure."""
+
+    def __init__(self, document: dict[str, Any]) -> None:
+        """Read its numbers; Bad if they are none."""
+        self.document, self.id = document, document["id"]
+        self.starts, self.ends = (
+            document.get("valid_from", ""),
+            document.get("valid_until", "9999-99"),
+        )
+        self.currency: str | None = document.get("currency")
+        self.breaks = [(decimal(one["from"]), decimal(one["rate"])) for one in document["breaks"]]
+        self.all_units = document.get("break_type") == "all_units"
+        self.pay_up = "pay_up" in document
+        self.dense, self.least, self.grid, self.cent = (
+            decimal(document.get(field, "0"))
+            for field in ("kg_per_m3", "minimum_charge", "round_up_to", "round_money")
+        )
+        self.more = decimal(document.get("surcharge_percent", "0"))
+        flat = not (self.least or self.grid or self.cent)
+        self.even = flat and len({rate for _, rate in self.breaks}) == 1
+
+    def measure(self, network: Network, load: list[tuple[int, Fraction]]) -> Fraction:
+        """Return how much of the basis goods are, each of them an item and a quantity."""
+        names = {"weight": ["weight_kg"], "volume": ["volume_m3"]}
+        basis = self.document["basis"]
+        fields = ["weight_kg", "volume_m3"] if self.dense else names.get(basis, [basis])
+        sums = []
+        for field in fields:
+            amounts = [(network.measure(at, field), quantity) for at, quantity in load]
+            if any(per is None for per, _ in amounts):
+                raise Unusable(f"an item cannot be charged by {self.id!r}")
+            sums.append(sum((per * quantity for per, quantity in amounts), Fraction(0)))
+        return max(sums[0], sums[1] * self.dense) if self.dense else sums[0]
+
+    def parts(self, charged: Fraction) -> list[Parted]:
+        """Return what is paid at which rate, as (from, quantity, rate)."""
+        below = [at for at, (start, _) in enumerate(self.breaks) if start < charged]
+        if not self.all_units:
+            ends = [start for start, _ in self.breaks[1:]] + [charged]
+            pairs = [(self.breaks[at], min(ends[at], charged)) for at in below]
+            return [(start, end - start, rate) for (start, rate), end in pairs]
+        reached = [one for one in self.breaks if one[0] <= charged][-1]
+        best = (reached[0], charged, reached[1])
+        if self.pay_up:
+            for start, rate in self.breaks:
+                if max(start, charged) * rate < best[1] * best[2]:
+                    best = (start, max(start, charged), rate)
+        return [best]
+
+    def price(
+        self, measured: Fraction
+    ) -> tuple[list[tuple[Fraction, Fraction, Fraction]], Fraction]:
+        """Return what a shipment pays at which rate, and in all, in the tariff's currency."""
+        if not measured:
+            return [], Fraction(0)
+        charged = -(-measured // self.grid) * self.grid if self.grid else measured
+        parts = self.parts(charged)
+        base = sum((quantity * rate for _, quantity, rate in parts), Fraction(0))
+        due = max(base, self.least) * (1 + self.more / 100)
+        if self.cent:
+            due = (due / self.cent + Fraction(1, 2)) // 1 * self.cent
+        return parts, due
+
+    def turns(self) -> set[Fraction]:
+        """Return the measures at which another rate, the minimum or paying up begins or ends."""
+        found = {start for start, _ in self.breaks[1:]}
+        for start, rate in self.breaks:
+            if rate and self.all_units:
+                found.add(self.least / rate)
+                found |= {other * dear / rate for other, dear in self.breaks if self.pay_up}
+            elif rate:
+                base = sum(each * own for at, each, own in self.parts(start) if at < start)
+                found.add(start + (self.least - base) / rate)
+        return {turn for turn in found if turn > 0}
+
+    def only_rises(self, of_step: Fraction) -> bool:
+        """Return whether no step costs less than the one before it.
+
+        Between two turns the price is straight, so that only steps around a turn are looked at; at
+        a turn itself it can jump.
+        """
+        if not of_step:
+            return True
+        if self.grid and (of_step / self.grid).denominator != 1:
+            return False
+        near = {0} | {turn // of_step + by for turn in self.turns() for by in (-2, -1, 0)}
+        for count in (count for count in near if count >= 0):
+            first, second, third = (self.price((count + by) * of_step)[1] for by in (0, 1, 2))
+            if third - second < second - first:
+                return False
+            if self.cent and not self._is_exact(count, of_step):
+                return False
+        return True
+
+    def _is_exact(self, count: int, of_step: Fraction) -> bool:
+        """Return whether rounding leaves the price of some steps, and of the next two, as it is."""
+        for by in (0, 1, 2):
+            measured = (count + by) * of_step
+            base = sum((each * rate for _, each, rate in self.parts(measured)), Fraction(0))
+            due = max(base, self.least) * (1 + self.more / 100) if measured else Fraction(0)
+            if (due / self.cent).denominator != 1:
+                return False
+        return True
+
+
 def read_charges(text: str, item_ids: set[str], known: set[str | None]) -> list[dict[str, Any]]:
     """Return the charges of a lane, their numbers read."""
     charges: list[dict[str, Any]] = parse_canonical(text.encode())
@@ -475,7 +636,8 @@ def read_head(data: bytes) -> dict[str, Any]:
     head: dict[str, Any] = parse_canonical(data)
     need(isinstance(head, dict), "the head is not an object")
     texts = {"name", "currency", "cut_off", "planned_at", "release_by"}
-    fields = {"format", "periods", "rules", "extra", "exchange_rates", "items", "sites", "tables"}
+    fields = {"format", "periods", "rules", "extra", "exchange_rates"}
+    fields |= {"tariffs", "items", "sites", "tables"}
     need(set(head) <= fields | texts, "other fields in the head")
     need(is_whole(head.get("format")) and head["format"] == 1, "another format")
     need(all(isinstance(head.get(field, ""), str) for field in texts), "a field is not text")
@@ -489,6 +651,7 @@ def read_head(data: bytes) -> dict[str, Any]:
     if "extra" in head:
         text_members(head["extra"])
     head["worth"] = read_exchange_rates(head)
+    read_tariffs(head)
     for rule in head["rules"]:
         read_rule(rule)
     need(rises([rule["id"].encode() for rule in head["rules"]]), "rules are not sorted")
@@ -692,6 +855,7 @@ class Network:
         self.item_at = {item["id"]: at for at, item in enumerate(self.items)}
         self.passing = ["cross_dock" in site["roles"] for site in self.sites]
         self.worth: dict[str | None, Fraction] = head["worth"]
+        self.held: dict[tuple[str, int], Tariff | None] = {}
         for table in (self.supply, self.lanes):
             need(set(table["currency"].values) <= set(self.worth), "a currency without a rate")
         self.charges = {
@@ -869,6 +1033,46 @@ class Network:
             return item.get(measure)
         return 1 / item["packs"][measure] if measure in item["packs"] else None
 
+    def tariff(self, row: int) -> Tariff | None:
+        """Return the tariff of a lane, None if it has a unit cost; Unusable if none holds."""
+        name = self.lanes["tariff"][row]
+        if name is None:
+            return None
+        day = self.today if self.departs is None else self.departs[row]
+        if (name, day) not in self.held:
+            on, found = day_text(day), None
+            for tariff in self.head["read_tariffs"]:
+                if tariff.id == name and tariff.starts <= on <= tariff.ends:
+                    found = tariff
+            self.held[name, day] = found
+        if self.held[name, day] is None:
+            raise Unusable(f"no tariff {name!r} holds on a day of departure")
+        return self.held[name, day]
+
+    def check_tariffs(self) -> None:
+        """Raise Unusable unless tariffs only get dearer, and items do not meet in them."""
+        users: dict[int, int] = defaultdict(int)
+        kinds: dict[int, set[bool]] = defaultdict(set)
+        rising: dict[tuple[Tariff, int], bool] = {}
+        lanes = [row for row in range(self.lanes["rows"]) if self.tariff(row)]
+        for at in range(len(self.items) if lanes else 0):
+            item = self.items[at]
+            usable = set(usable_lanes(self, at))
+            for row in (row for row in lanes if self.lane_of[row] in usable):
+                tariff = self.tariff(row)
+                assert tariff is not None  # noqa: S101 - so were they picked
+                if (tariff, at) not in rising:
+                    of_step = tariff.measure(self, [(at, item["step"])])
+                    rising[tariff, at] = tariff.only_rises(of_step)
+                if not rising[tariff, at]:
+                    raise Unusable(f"steps get cheaper by {tariff.id!r}")
+                users[row] += 1
+                dense = tariff.dense * item.get("volume_m3", 0) - item.get("weight_kg", 0)
+                if tariff.dense and dense:
+                    kinds[row].add(dense > 0)
+                if users[row] > 1 and not (tariff.even and len(kinds[row]) < 2):
+                    raise Unusable(f"several items meet in {tariff.id!r}")
+
     def charges_on(self, row: int, at: int) -> list[tuple[str, str | None, Fraction]]:
         """Return name, currency and amount of what a lane charges for one unit of an item."""
         item, due = self.items[at], []
@@ -976,6 +1180,11 @@ class Network:
             need(lanes["departs"][row] or ends == (None, None), "no departure")
             twice = lanes["transit_days"].has(row) and ends[1]
             need(not twice, "two arrivals of a lane")
+            by_tariff = lanes["tariff"].codes[row] >= 0
+            need(lanes["unit_cost"].has(row) != by_tariff, "a lane without one cost")
+            need(not by_tariff or lanes["currency"].codes[row] < 0, "a tariff in a currency")
+        known = {tariff["id"] for tariff in self.head.get("tariffs", ())}
+        need(set(lanes["tariff"].values) <= known, "an unknown tariff")
         named = [name for name in lanes["id"] if name]
         need(len(set(named)) == len(named), "a lane id occurs twice")
         for item, code in set(zip(lanes["item"], lanes["measure"].codes)):  # noqa: B905 - Python 3.9
@@ -998,7 +1207,7 @@ class Network:
         codes = [lanes[column].codes[row] for column in ("tags", "measure", "per")]
         transit = lanes["transit_days"]
         codes.append(transit.numbers[row] if transit.has(row) else -1)
-        last = ("departs", "arrives", "closes", "extra", "currency", "charges")
+        last = ("departs", "arrives", "closes", "extra", "currency", "charges", "tariff")
         codes += [lanes[column].codes[row] for column in last]
         return (
             lanes["id"][row],
@@ -1255,6 +1464,13 @@ PLAN: dict[str, Any] = {
             **keys("pallets weight_kg volume_m3", "known"),
             "cost": "amount",
             "order_references": ["text"],
+            "?freight": {
+                **keys("tariff basis currency", "text"),
+                **keys("version source", "?text"),
+                **keys("measured charged rate minimum_charge", "amount"),
+                **keys("surcharge_percent amount cost", "amount"),
+                "parts": [keys("from quantity rate amount", "amount")],
+            },
         }
     ],
     "shortages": [
@@ -1624,6 +1840,7 @@ class Formal:
             used = set(self.usable)
             self.rows = [row for row, lane in enumerate(network.lane_of) if lane in used]
         self.amounts = self._measures()
+        self._freights: dict[tuple[Tariff, int], Fraction] = {}
         for row in self.rows if network.charges else ():
             self.charge(row)  # raises where it is not known
         self.low: dict[int, int] = {}
@@ -1651,6 +1868,27 @@ class Formal:
         """Return what a lane charges for one unit, in the currency of the plan."""
         due = self.network.charges_on(row, self.item)
         return sum((money * self.network.worth[code] for _, code, money in due), Fraction(0))
+
+    def freight(self, row: int, steps: int) -> Fraction:
+        """Return what steps cost by the tariff of a lane, in the currency of the plan."""
+        tariff = self.network.tariff(row)
+        assert tariff is not None  # noqa: S101 - whoever asks knows
+        key = (tariff, steps)
+        if key not in self._freights:
+            measured = tariff.measure(self.network, [(self.item, steps * self.step)])
+            worth = self.network.worth[tariff.currency]
+            self._freights[key] = tariff.price(measured)[1] * worth
+        return self._freights[key]
+
+    def dearest(self, row: int) -> Fraction:
+        """Return the most that a step costs by a tariff: the last that fits, or that for ever."""
+        last = self.high.get(row)
+        if last is None:
+            tariff = self.network.tariff(row)
+            assert tariff is not None  # noqa: S101 - whoever asks knows
+            of_step = tariff.measure(self.network, [(self.item, self.step)])
+            last = int(max(tariff.turns(), default=0) / of_step) + 2 if of_step else 1
+        return self.freight(row, last) - self.freight(row, max(0, last - 1))
 
     def _per_step(self, measure: str) -> Fraction:
         """Return how much of a measure one step of the item is."""
@@ -2211,11 +2449,16 @@ def scaled_lane_costs(formal: Formal, scale: Fraction) -> tuple[list[Any], bool]
         times, over, charged = factors[key]
         cost, rest = divmod(costs.numbers[row] * times, over)
         whole = whole and not rest and charged.denominator == 1
+        if lanes["tariff"].codes[row] >= 0:
+            dearest = formal.dearest(row) * scale
+            cost, whole = dearest.numerator, whole and dearest.denominator == 1
         lane_costs.append(cost + charged.numerator)
     return lane_costs, whole
 
 
-def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Report) -> None:
+def check_prices(  # noqa: C901 - the argument of the proof, from top to bottom
+    flow: Flow, proof: dict[str, Any], scale: Fraction, report: Report
+) -> None:
     """Check that no flow costs less, over every lane (complementary slackness).
 
     With prices at the places, an arc from i to j has the reduced cost: cost + price(i) - price(j).
@@ -2246,6 +2489,10 @@ def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Rep
     if prices is None:
         return
     for at, cost in enumerate(lane_costs):
+        if formal.network.lanes["tariff"].codes[formal.rows[at]] >= 0:
+            gain = prices[formal.lane_head[at]] - prices[formal.lane_tail[at]]
+            check_steps(flow, at, gain / scale, report)
+            continue
         reduced = cost + prices[formal.lane_tail[at]] - prices[formal.lane_head[at]]
         if reduced:
             row, steps = formal.rows[at], flow.lanes.get(at, 0)
@@ -2258,6 +2505,21 @@ def check_prices(flow: Flow, proof: dict[str, Any], scale: Fraction, report: Rep
         reduced = cost.numerator + weight + prices[arc.tail] - prices[arc.head]
         if reduced and steps != (arc.low if reduced > 0 else arc.high):
             report.add("not_optimal", f"{arc.kind} {steps} contradicts the prices", formal.name)
+
+
+def check_steps(flow: Flow, at: int, gain: Fraction, report: Report) -> None:
+    """Check a lane whose steps get dearer: one more would not pay, and the last one does.
+
+    ``gain`` is what a step is worth more where the lane ends than where it starts.
+    """
+    formal = flow.formal
+    row, steps = formal.rows[at], flow.lanes.get(at, 0)
+    paid, cost = gain - formal.charge(row) * formal.step, formal.freight(row, steps)
+    more = steps != formal.high.get(row) and formal.freight(row, steps + 1) - cost < paid
+    less = steps > formal.low.get(row, 0) and cost - formal.freight(row, steps - 1) > paid
+    if more or less:
+        name = formal.network.lane_names.name(row)
+        report.add("not_optimal", f"{steps} steps contradict the prices", name)
 
 
 def check_cut(formal: Formal, cut: dict[str, Any], place: str, report: Report) -> None:
@@ -2361,6 +2623,11 @@ class Audit:
         self._check_heads(network_digest, options_digest)
         rules = rules_in_force(self.network)
         self._check_rules(rules)
+        try:
+            self.network.check_tariffs()
+        except Unusable as error:
+            self.report.add("network_unusable", str(error))
+            return
         if self._has_unclear_limits():
             self.report.add("network_unusable", "a limit of several items does not say per what")
             return
@@ -2502,6 +2769,13 @@ class Tables:
         self._check_currencies()
         self._check_consignments()
 
+    def transport(self, row: int, flow: Flow, steps: int) -> Fraction:
+        """Return what transport of steps of an item costs on a lane."""
+        formal = flow.formal
+        if self.network.tariff(row):
+            return formal.freight(row, steps)
+        return steps * formal.step * self.lane_money(row, formal.item)
+
     def lane_money(self, row: int, item: int) -> Fraction:
         """Return what transport of one unit of an item costs on a lane."""
         worth: Fraction = self.network.worth[self.network.lanes["currency"][row]]
@@ -2532,8 +2806,7 @@ class Tables:
                     money[kinds[arc.kind]] += steps * (arc.money - arc.late)
                     money["lateness"] += steps * arc.late
             for row, steps in flow.on_lane.items():
-                per_step = self.lane_money(row, flow.formal.item) * flow.formal.step
-                money["transport"] += steps * per_step
+                money["transport"] += self.transport(row, flow, steps)
                 money["charges"] += steps * flow.formal.charge(row) * flow.formal.step
             parts.append(money)
         return parts
@@ -2886,7 +3159,7 @@ class Tables:
             right = line.origin == line.destination
             right = right and first == self.local.get((line.origin, line.item), 0)
         else:
-            unit_cost = self.lane_money(line.row, line.item)
+            unit_cost = self.transport(line.row, flow, flow.on_lane[line.row]) / quantity
             charged = quantity * flow.formal.charge(line.row)
             first = Fraction(self.first.get((line.row, line.item), 0))
             consumed = self.last.get((line.row, line.item), 0) * step
@@ -2933,14 +3206,13 @@ class Tables:
 
     def _spent_on_lanes(self) -> dict[Key, Fraction]:
         """Check what plan lines say of other currencies and charges; return it by currency."""
-        worth, lanes = self.network.worth, self.network.lanes
+        worth = self.network.worth
         spent: dict[Key, Fraction] = defaultdict(Fraction)
         for line in self.lines:
             quantity = amount(line.document["quantity"])
             expected: dict[str, Any] = {}
-            currency = None if line.row < 0 else lanes["currency"][line.row]
+            currency, money = self._own_transport(line, quantity)
             if currency is not None:
-                money = quantity * self.stated_money(line.row, line.item)
                 expected["stated"] = {"currency": currency, "transport_cost": money}
                 spent[(currency, "transport")] += money
             due = [] if line.row < 0 else self.network.charges_on(line.row, line.item)
@@ -2962,14 +3234,48 @@ class Tables:
                 self.wrong("plan_line_wrong", "not what its lane charges", line.place)
         return spent
 
+    def _own_transport(self, line: PlanLine, quantity: Fraction) -> tuple[str | None, Fraction]:
+        """Return the other currency that transport is paid in, None if there is none, and money."""
+        if line.row < 0:
+            return None, Fraction(0)
+        tariff = self.network.tariff(line.row)
+        if tariff is not None:
+            measured = tariff.measure(self.network, [(line.item, quantity)])
+            return tariff.currency, tariff.price(measured)[1]
+        currency = self.network.lanes["currency"][line.row]
+        return currency, quantity * self.stated_money(line.row, line.item)
+
+    def _bill(self, tariff: Tariff, load: list[tuple[int, Fraction]]) -> dict[str, Any]:
+        """Return how the freight of a lane comes about."""
+        measured = tariff.measure(self.network, load)
+        parts, due = tariff.price(measured)
+        return {
+            "tariff": tariff.id,
+            **{name: tariff.document.get(name) for name in ("version", "source", "basis")},
+            "currency": tariff.currency or self.network.head["currency"],
+            "measured": measured,
+            "charged": sum(quantity for _, quantity, _ in parts),
+            "rate": parts[-1][2] if parts else Fraction(0),
+            "parts": [
+                {"from": start, "quantity": each, "rate": rate, "amount": each * rate}
+                for start, each, rate in parts
+            ],
+            "minimum_charge": tariff.least,
+            "surcharge_percent": tariff.more,
+            "amount": due,
+            "cost": due * self.network.worth[tariff.currency],
+        }
+
     def _check_consignments(self) -> None:
         """Check what is on each lane."""
         network, lanes = self.network, self.network.lanes
         loads = defaultdict(list)
+        loads_at: dict[int, list[tuple[int, Fraction]]] = defaultdict(list)
         for flow in self.flows:
             for row, steps in flow.on_lane.items():
                 item = network.items[flow.formal.item]
                 loads[row].append((item, steps * flow.formal.step))
+                loads_at[row].append((flow.formal.item, steps * flow.formal.step))
         costs: dict[int, Fraction] = defaultdict(Fraction)
         for line in self.lines:
             costs[line.row] += amount(line.document["transport_cost"])
@@ -2991,6 +3297,9 @@ class Tables:
                     "order_references": sorted(self.references[row], key=str.encode),
                 }
             )
+            tariff = network.tariff(row)
+            if tariff is not None:
+                expected[-1]["freight"] = self._bill(tariff, loads_at[row])
         stated = []
         for entry in self.plan["consignments"]:
             numbers = {
@@ -2998,13 +3307,17 @@ class Tables:
                 for field in ("pallets", "weight_kg", "volume_m3", "cost")
             }
             stated.append({**entry, **numbers})
+            if "freight" in entry:
+                said = with_numbers({k: v for k, v in entry["freight"].items() if k != "parts"})
+                said["parts"] = [with_numbers(part) for part in entry["freight"]["parts"]]
+                stated[-1]["freight"] = said
         if stated != expected:
             self.wrong("consignment_wrong", "not what is on the lanes", "consignments")
 
 
 def with_numbers(document: dict[str, Any]) -> dict[str, Any]:
     """Return an object of texts with the amounts in it as numbers."""
-    words = ("name", "currency", "as_of", "source")
+    words = ("name", "currency", "as_of", "source", "tariff", "version", "basis")
     return {key: text if key in words else amount(text) for key, text in document.items()}
 
 

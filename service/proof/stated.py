@@ -11,6 +11,7 @@ from service.proof.flows import PlanLine
 from service.proof.money import charges_due, in_plan_money, is_plain
 from service.proof.results import ItemResult
 from service.proof.shapes import amount
+from service.proof.tariff_lanes import Freights, freights_of
 from service.proof.violations import Findings
 
 _PARTS = ("supply", "transport", "charges")
@@ -25,9 +26,9 @@ def check_stated(
 ) -> None:
     """Note where the money of other currencies, or a charge, is not what the flow comes to."""
     spent: defaultdict[tuple[str, str], Fraction] = defaultdict(Fraction)
-    plain = is_plain(network)
+    plain, freights = is_plain(network), freights_of(network)
     for line in lines:
-        stated, parts = (None, []) if plain else _of_lane(network, line, spent)
+        stated, parts = (None, []) if plain else _of_lane(network, line, freights, spent)
         document = line.document
         if (
             _exact(document.get("stated"), "transport_cost") != stated
@@ -46,7 +47,10 @@ def check_stated(
 
 
 def _of_lane(
-    network: Network, line: PlanLine, spent: defaultdict[tuple[str, str], Fraction]
+    network: Network,
+    line: PlanLine,
+    freights: Freights | None,
+    spent: defaultdict[tuple[str, str], Fraction],
 ) -> tuple[dict[str, object] | None, list[dict[str, object] | None]]:
     """Return what a line must state, adding to what is ``spent`` in other currencies."""
     if line.row < 0:
@@ -54,6 +58,13 @@ def _of_lane(
     lanes, item = network.lanes, network.items[line.item]
     quantity = amount(line.document["quantity"])
     stated: dict[str, object] | None = None
+    if freights is not None and (tariff := freights.tariff(line.row)) is not None:
+        currency = tariff.get("currency")
+        if currency is not None:
+            steps = quantity / item.step
+            paid = freights.bill(line.row, [(line.item, int(steps))]).amount
+            stated = {"currency": currency, "transport_cost": paid}
+            spent[(currency, "transport")] += paid
     currency, measure = lanes.currency.text(line.row), lanes.measure.text(line.row)
     of_unit = None if measure is None else per_unit(item, measure)
     rate = lanes.unit_cost.fraction(line.row)

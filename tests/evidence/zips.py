@@ -26,6 +26,7 @@ from service.proof.evidence import write_evidence
 from tests.factories import NetworkRefused, take_in
 from tests.random_money import in_other_money
 from tests.random_networks import draw_network
+from tests.random_tariffs import by_tariffs
 
 Entries = dict[str, bytes]
 Document = dict[str, Any]
@@ -112,13 +113,13 @@ def packed(network: Network, options: Options, plan_: bytes, certificate: bytes)
 
 @cache
 def good_zip(seed: int) -> bytes:
-    """Return the evidence of the random network of ``seed``; later ones have other money too."""
+    """Return the evidence of the random network of ``seed``; later ones have other money, too."""
     rng = random.Random(seed)  # noqa: S311 - a test that repeats, no secret
     drawn = draw_network(rng)
     if seed < WITH_MONEY_FROM:
         return evidence_of(drawn.document, drawn.options)
     stated, _ = in_other_money(drawn.document, rng)
-    return evidence_of(stated, drawn.options)
+    return evidence_of(by_tariffs(stated, rng) if seed % 2 else stated, drawn.options)
 
 
 def entries_of(data: bytes) -> Entries:

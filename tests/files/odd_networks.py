@@ -66,6 +66,7 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
     items = draw(st.lists(ids, min_size=1, max_size=3, unique=True))
     sites = draw(st.lists(ids, min_size=2, max_size=4, unique=True))
     quantities, rates = decimals(3), decimals(6, least=-(10**6))
+    rate = draw(decimals(6))
 
     def some(fields: Mapping[str, st.SearchStrategy[Any]]) -> dict[str, Any]:
         return {name: draw(values) for name, values in fields.items() if draw(st.booleans())}
@@ -159,13 +160,15 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
                 "id": name,
                 "origin": sites[0],
                 "destination": draw(st.sampled_from(sites[1:])),
-                "unit_cost": draw(decimals(6)),
+                **draw(
+                    st.fixed_dictionaries({"unit_cost": decimals(6)})
+                    | st.just({"tariff": items[0]})
+                ),
                 **some(
                     {
                         "item": st.sampled_from(items),
                         "capacity": quantities,
                         "carrier": ids,
-                        "currency": st.sampled_from(("EUR", "NOK")),
                         "charges": st.just(
                             [
                                 {"name": draw(ids), "basis": "unit", "rate": draw(decimals(6))},
@@ -180,6 +183,20 @@ def documents(draw: st.DrawFn) -> Mapping[str, Any]:
             for name in draw(st.lists(ids, max_size=4, unique=True))
         ],
         "rules": rules(),
+        "tariffs": [
+            {
+                "id": items[0],
+                "basis": "unit",
+                "breaks": [
+                    {"from": start, "rate": rate}
+                    for start in draw(st.sampled_from((("0",), ("0", "7.5"))))
+                ],
+                "break_type": "incremental",
+                **some({"valid_from": st.just("2026-01-01"), "currency": st.just("NOK")}),
+                **some({"source": ids, "version": ids, "surcharge_percent": st.just("-2.5")}),
+                **some({"pay_up": st.just(value=False)}),
+            }
+        ],
         "exchange_rates": [
             {
                 "currency": "NOK",

@@ -5,7 +5,6 @@ import pytest
 from service.network.definition import (
     RULE_PARTS,
     Control,
-    ExchangeRatePart,
     Head,
     ItemPart,
     LanePick,
@@ -15,6 +14,7 @@ from service.network.definition import (
 
 from service.network.definition import ItemPick, SitePick  # isort: skip
 from service.network.files.table_columns import FAMILIES, TABLES, WANTED, Kind, field_of
+from service.network.money_definition import ExchangeRatePart, TariffPart
 from service.network.not_yet import NOT_YET_FIELDS
 from service.network.table_fields import REQUIRED_FIELDS, TABLE_FIELDS
 from tests.files.reading import files, places, read
@@ -46,6 +46,7 @@ def test_the_small_tables_have_a_column_for_each_field() -> None:
     assert set(TABLES["sites"]) == names(SitePart)
     assert set(TABLES["control"]) == names(Control)
     assert set(TABLES["exchange_rates"]) == names(ExchangeRatePart)
+    assert set(TABLES["tariffs"]) == names(TariffPart)
     assert set(TABLES["rules"]) == rules | {
         f"{name}.{key}" for name, part in picks.items() for key in names(part)
     }
@@ -60,6 +61,7 @@ def test_what_is_needed_is_what_the_check_asks_for(table: str) -> None:
         "packs": PackPart,
         "sites": SitePart,
         "exchange_rates": ExchangeRatePart,
+        "tariffs": TariffPart,
     }
     if table in parts:
         fields = parts[table].model_fields  # type: ignore[attr-defined] # a model
@@ -67,7 +69,9 @@ def test_what_is_needed_is_what_the_check_asks_for(table: str) -> None:
         assert {name for name, field in TABLES[table].items() if field.needed} == needed | (
             {"item"} if table == "packs" else set()
         )
-    assert (table in WANTED) == (table not in {"packs", "rules", "exchange_rates", "control"})
+    assert (table in WANTED) == (
+        table in {"network", "items", "sites", "supply", "demand", "lanes"}
+    )
 
 
 @pytest.mark.parametrize(

@@ -247,9 +247,9 @@ def test_sheets_are_found_by_name_whatever_their_case() -> None:
 
 def test_a_sheet_too_many_is_a_fault() -> None:
     """Nothing that was sent is ever ignored."""
-    report = read(workbook(tariffs=[["id"], ["T1"]]), XLSX)
+    report = read(workbook(colours=[["id"], ["T1"]]), XLSX)
 
-    assert places(report) == [("tariffs", "unknown_sheet", None)]
+    assert places(report) == [("colours", "unknown_sheet", None)]
 
 
 def test_one_number_is_exact_and_its_neighbour_is_not() -> None:

@@ -41,6 +41,7 @@ _REFUSALS: Final = {
     Kind.TEXT: "texts, zeros in front included; its type is {0}. Write it as strings.",
     Kind.PAIRS: "JSON objects as text; its type is {0}. Write it as strings.",
     Kind.OBJECTS: "JSON arrays as text; its type is {0}. Write it as strings.",
+    Kind.FLAG: "true or false; its type is {0}. Write it as strings.",
 }
 _FLOAT: Final = (
     "A column of binary floats was rounded already. Write decimal128, whole numbers, or text."

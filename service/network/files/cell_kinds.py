@@ -57,6 +57,11 @@ def _list(text: str) -> object:
     return found.value
 
 
+def _flag(text: str) -> object:
+    """Read true or false, also as spreadsheets write it."""
+    return {"true": True, "false": False}.get(text.lower(), text)
+
+
 def _objects(text: str) -> object:
     """Read an array of objects."""
     found = read_json(text.encode("utf-8", "surrogatepass"), nesting_max=_NESTING_MAX + 1)
@@ -78,4 +83,5 @@ _READERS: Final[Mapping[Kind, Callable[[str], object]]] = {
     Kind.LIST: _list,
     Kind.PAIRS: _pairs,
     Kind.OBJECTS: _objects,
+    Kind.FLAG: _flag,
 }

@@ -27,7 +27,17 @@ from service.network.table_fields import FLAT_FIELDS
 
 _BIG: Final = ("supply", "demand", "lanes")
 _ORDER: Final = (
-    *("items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates", "control"),
+    *(
+        "items",
+        "sites",
+        "supply",
+        "demand",
+        "lanes",
+        "rules",
+        "exchange_rates",
+        "tariffs",
+        "control",
+    ),
 )
 
 

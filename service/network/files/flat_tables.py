@@ -34,6 +34,7 @@ def flat_tables(document: Mapping[str, Any]) -> dict[str, FlatTable]:
         "packs": packs,
         "rules": document.get("rules") or (),
         "exchange_rates": document.get("exchange_rates") or (),
+        "tariffs": document.get("tariffs") or (),
         "control": [document["control"]] if document.get("control") else (),
     }
     rows |= {name: document[name] for name in ("sites", "supply", "demand", "lanes")}
@@ -44,7 +45,10 @@ def _table(name: str, rows: Iterable[Mapping[str, str]]) -> FlatTable:
     """Return rows of named cells as a table; columns in the order in which they are explained."""
     cells = list(rows)
     used = {column: None for row in cells for column in row}
-    known = [name for name, field in TABLES[name].items() if field.needed or name in used]
+    # Lanes have a cost where they have no tariff.
+    cost = () if name != "lanes" or "tariff" in used else ("unit_cost",)
+    fields = TABLES[name].items()
+    known = [name for name, field in fields if field.needed or name in used or name in cost]
     columns = (*known, *(column for column in used if column not in TABLES[name]))
     return FlatTable(
         columns=columns,
@@ -66,6 +70,8 @@ def _flat(row: Mapping[str, Any]) -> dict[str, str]:
         elif isinstance(value, Sequence) and not isinstance(value, str):
             if value:
                 cells[name] = _list(value)
+        elif isinstance(value, bool):
+            cells[name] = str(value).lower()
         elif value is not None:
             cells[name] = str(value)
     return cells

@@ -99,7 +99,9 @@ def swapped(number: str) -> str:
 
 
 _SWAP = str.maketrans(",.", ".,")
-_LISTS = frozenset({"items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates"})
+_LISTS = frozenset(
+    {"items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates", "tariffs"}
+)
 
 
 def _column(grid: Grid, row: int | None, names: Sequence[str]) -> str:

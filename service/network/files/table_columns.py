@@ -21,6 +21,7 @@ class Kind(Enum):
     DATE = auto()
     PAIRS = auto()  # a JSON object of texts
     OBJECTS = auto()  # a JSON array of objects
+    FLAG = auto()  # true or false
 
 
 @dataclass(frozen=True, slots=True)
@@ -133,7 +134,7 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "origin": Field(Kind.TEXT, "from which site", needed=True),
         "destination": Field(Kind.TEXT, "to which site", needed=True),
         "item": Field(Kind.TEXT, "of what; any item if empty"),
-        "unit_cost": Field(Kind.NUMBER, "money per unit of the measure", needed=True),
+        "unit_cost": Field(Kind.NUMBER, "money per unit of the measure; or else a tariff"),
         "measure": Field(Kind.TEXT, "unit if empty; weight_kg, volume_m3, or a pack"),
         "must_ship": Field(Kind.NUMBER, "at least so much goes"),
         "capacity": Field(Kind.NUMBER, "at most so much goes; no limit if empty"),
@@ -144,6 +145,7 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
             Kind.OBJECTS,
             'duty and the like as JSON: [{"name": "duty", "basis": "value", "percent": "2.5"}]',
         ),
+        "tariff": Field(Kind.TEXT, "a freight tariff by id, instead of unit_cost"),
         "transit_days": Field(Kind.WHOLE, "calendar days from departure to arrival; 0 if empty"),
         "closes": Field(Kind.MOMENT, "when a departure closes"),
         "departs": Field(Kind.MOMENT, "when a departure leaves its origin"),
@@ -183,6 +185,30 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "per": Field(Kind.NUMBER, "for so many units of it; 1 if empty"),
         "as_of": Field(Kind.DATE, "the day of the rate"),
         "source": Field(Kind.TEXT, "who says so"),
+    },
+    "tariffs": {
+        "id": Field(Kind.TEXT, _ID, needed=True),
+        "carrier": Field(Kind.TEXT, "whose tariff it is"),
+        "currency": Field(Kind.TEXT, "ISO 4217; the plan's if empty"),
+        "valid_from": Field(Kind.DATE, "the first day of departure"),
+        "valid_until": Field(Kind.DATE, "the last day of departure"),
+        "version": Field(Kind.TEXT, "its version"),
+        "source": Field(Kind.TEXT, "where it stands"),
+        "basis": Field(
+            Kind.TEXT, "unit, weight, volume, chargeable_weight, or a pack", needed=True
+        ),
+        "kg_per_m3": Field(Kind.NUMBER, "chargeable_weight: what a cubic metre counts as"),
+        "breaks": Field(
+            Kind.OBJECTS,
+            'rates by quantity as JSON: [{"from": "0", "rate": "5"}, {"from": "100", "rate": "6"}]',
+            needed=True,
+        ),
+        "break_type": Field(Kind.TEXT, "incremental or all_units, where there are several breaks"),
+        "pay_up": Field(Kind.FLAG, "all_units: true where a cheaper break may be paid in full"),
+        "minimum_charge": Field(Kind.NUMBER, "money that is due at least"),
+        "surcharge_percent": Field(Kind.NUMBER, "percent on top"),
+        "round_up_to": Field(Kind.NUMBER, "what is charged is a multiple of this"),
+        "round_money": Field(Kind.NUMBER, "the freight is rounded to a multiple of this"),
     },
     "control": {
         "demand_rows": Field(Kind.WHOLE, "how many order lines there must be"),

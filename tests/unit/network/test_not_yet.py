@@ -20,7 +20,7 @@ from tests.network_samples import check, found, sound
 # The promised fields that are read, required ones first.
 FIELDS = {
     "network": "format currency cut_off items sites supply demand lanes "
-    "name planned_at release_by periods rules control exchange_rates extra",
+    "name planned_at release_by periods rules control exchange_rates tariffs extra",
     "items": "id unit name step gtin weight_kg volume_m3 value packs tags extra",
     "sites": "id roles name gln latitude longitude time_zone country handling_cost tags extra",
     "supply": "site item quantity unit unit_cost on_hand reserved on_hold as_of lot best_before "
@@ -28,15 +28,15 @@ FIELDS = {
     "demand": "site item quantity reference order ordered_at unit priority shortage_cost "
     "worth_at_most earliest due latest late_cost_per_day origins tags extra",
     "lanes": "origin destination unit_cost id item measure must_ship capacity per carrier "
-    "transit_days closes departs arrives tags currency charges extra",
+    "transit_days closes departs arrives tags currency charges tariff extra",
 }
 # Promised for later: dates, charges, commitments and what several items share.
 LATER_FIELDS = {
-    "network": "tariffs storage committed shortage_measure committed_deducted",
+    "network": "storage committed shortage_measure committed_deducted",
     "items": "divisible",
     "supply": "",
     "demand": "partial split",
-    "lanes": "tariff distance_km",
+    "lanes": "distance_km",
 }
 RULES = "closure fixed_quantity throughput"
 LATER_RULES = (

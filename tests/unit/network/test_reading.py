@@ -69,7 +69,6 @@ FAULTS: list[tuple[Change, str, str]] = [
     (put("name", value="a\tb"), "/name", "bad_text"),
     (put("name", value=None), "", ""),
     (put("strange", value=1), "/strange", "unknown_field"),
-    (put("tariffs", value=[]), "/tariffs", "not_yet"),
     (put("planned_at", value="noon"), "/planned_at", "bad_time"),
     (put("periods", value=["2026-02-03", "2026-02-05"]), "", ""),
     (put("periods", value=["2026-02-03", "2026-02-03"]), "/periods", "bad_periods"),

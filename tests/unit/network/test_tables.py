@@ -200,8 +200,8 @@ LANES: list[tuple[object, str, str]] = [
         "unknown_field",
     ),
     (
-        {"origins": ["X"], "destinations": ["YARD-07"], "unit_cost": [["1"]], "tariff": None},
-        "/lanes/tariff",
+        {"origins": ["X"], "destinations": ["YARD-07"], "unit_cost": [["1"]], "distance_km": 1},
+        "/lanes/distance_km",
         "not_yet",
     ),
     (
