@@ -25,6 +25,7 @@ _.size_bytes  # tests/unit/network look at it
 _.extract_id  # pydantic checks it; it stays with the body as received
 _.extracted_at  # likewise
 usable_lanes_of_one  # planning/memory.py takes it out of a document by its name
+sharing_lanes  # likewise
 Format  # imported for a quoted annotation
 Worksheet  # likewise
 _.writeable  # NumPy reads it: nobody may change what a digest is known of

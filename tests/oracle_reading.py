@@ -40,14 +40,14 @@ def read_items(document: Document, options: Mapping[str, Any]) -> list[ItemProbl
 
 def _read_item(document: Document, item: Document, options: Mapping[str, Any]) -> ItemProblem:
     step = exact(item.get("step", "1"))
-    rules = [rule for rule in document.get("rules", []) if _applies(document, rule, item)]
+    rules = [rule for rule in document.get("rules", []) if applies(document, rule, item)]
     sites = {site["id"]: site for site in document["sites"]}
     closed = frozenset(
         site["id"]
         for rule in rules
         if rule["rule"] == "closure" and "sites" in rule
         for site in document["sites"]
-        if _site_selected(site, rule["sites"])
+        if site_selected(site, rule["sites"])
     )
     return ItemProblem(
         item=item["id"],
@@ -65,7 +65,7 @@ def _read_item(document: Document, item: Document, options: Mapping[str, Any]) -
     )
 
 
-def _applies(document: Document, rule: Document, item: Document) -> bool:
+def applies(document: Document, rule: Document, item: Document) -> bool:
     """Return whether ``rule`` is in force on the local date of the cut-off and touches ``item``."""
     today = datetime.fromisoformat(document["cut_off"]).date()
     if "from" in rule and today < date.fromisoformat(rule["from"]):
@@ -85,11 +85,13 @@ def _matches(selector: Document, **properties: object) -> bool:
     return True
 
 
-def _site_selected(site: Document, selector: Document) -> bool:
+def site_selected(site: Document, selector: Document) -> bool:
+    """Return whether a selector picks a site."""
     return _matches(selector, ids=site["id"], role=site["roles"], tag=site.get("tags", []))
 
 
-def _lane_selected(lane: Document, selector: Document) -> bool:
+def lane_selected(lane: Document, selector: Document) -> bool:
+    """Return whether a selector picks a lane."""
     return _matches(
         selector,
         ids=lane.get("id"),
@@ -115,7 +117,7 @@ def _factor(item: Document, unit: str | None) -> Fraction:
     return RECOMMENDATION_20[item["unit"], unit]
 
 
-def _per_unit(item: Document, measure: str | None) -> Fraction:
+def per_unit(item: Document, measure: str | None) -> Fraction:
     """Return how much of ``measure`` one item unit is."""
     if measure in {None, "unit"}:
         return Fraction(1)
@@ -130,16 +132,18 @@ def _read_lanes(
     step = exact(item.get("step", "1"))
     for row in _usable_rows(document, item):
         lane = document["lanes"][row]
-        per_step = _per_unit(item, lane.get("measure")) * step
-        least = exact(lane.get("must_ship", "0")) / per_step
+        per_step = per_unit(item, lane.get("measure")) * step
+        # What all items must reach together no one of them must reach.
+        together = lane.get("per") == "together" and "item" not in lane
+        least = Fraction(0) if together else exact(lane.get("must_ship", "0")) / per_step
         most = floor(exact(lane["capacity"]) / per_step) if "capacity" in lane else None
         for rule in rules:
-            if rule["rule"] == "fixed_quantity" and _lane_selected(lane, rule["lanes"]):
+            if rule["rule"] == "fixed_quantity" and lane_selected(lane, rule["lanes"]):
                 least = exact(rule["quantity"]) / per_step
                 most = floor(least)
         for rule in rules:
             shut = rule["rule"] == "closure" and "lanes" in rule
-            if shut and _lane_selected(lane, rule["lanes"]):
+            if shut and lane_selected(lane, rule["lanes"]):
                 least, most = Fraction(0), 0
         if closed & {lane["origin"], lane["destination"]}:
             least, most = Fraction(0), 0
@@ -278,10 +282,10 @@ def _read_limits(
     step = exact(item.get("step", "1"))
     for rule in rules:
         if rule["rule"] == "throughput":
-            per_step = _per_unit(item, rule.get("measure")) * step
+            per_step = per_unit(item, rule.get("measure")) * step
             steps = floor(exact(rule["maximum"]) / per_step)
             for site in document["sites"]:
-                if _site_selected(site, rule["sites"]):
+                if site_selected(site, rule["sites"]):
                     place = (site["id"], rule["flow"])
                     limits[place] = min(steps, limits.get(place, steps))
     return limits

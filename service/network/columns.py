@@ -130,12 +130,12 @@ class LaneTable:
     ``Network.items``, or -1 for a lane that carries any item. ``unit_cost`` is money per unit of
     ``measure``; ``must_ship`` and ``capacity`` are in ``measure`` too (absent: 0, unlimited).
     ``measure`` is ``unit``, ``weight_kg``, ``volume_m3`` or the unit of a pack, never absent.
-    ``per`` is ``item`` or absent. ``currency`` is that of ``unit_cost`` (absent: the plan's);
-    ``charges`` holds JSON arrays of charges in normal form (``network/money.py``), ``tags`` JSON
-    arrays of sorted tags, ``extra`` JSON objects. ``transit_days`` are whole days. ``closes``,
-    ``departs`` and ``arrives`` are RFC 3339 in the time zone of the site where they happen, so that
-    the first ten characters are its date. ``tariff`` is the id of a tariff of the head, and absent
-    exactly where ``unit_cost`` is there.
+    ``per`` is ``item``, ``together`` (the limits are for all items) or absent. ``currency`` is that
+    of ``unit_cost`` (absent: the plan's); ``charges`` holds JSON arrays of charges in normal form
+    (``network/money.py``), ``tags`` JSON arrays of sorted tags, ``extra`` JSON objects.
+    ``transit_days`` are whole days. ``closes``, ``departs`` and ``arrives`` are RFC 3339 in the
+    time zone of the site where they happen, so that the first ten characters are its date.
+    ``tariff`` is the id of a tariff of the head, and absent exactly where ``unit_cost`` is there.
     """
 
     ids: IdArray
@@ -238,9 +238,9 @@ class Network:
 
     ``head`` holds what is neither a table, an item nor a site, as plain JSON values with every
     decimal a shortest decimal string: ``format``, ``name``, ``currency``, ``cut_off``,
-    ``planned_at``, ``release_by``, ``periods`` (sorted dates), ``rules`` (sorted by id, see
-    ``network/rules.py``), ``exchange_rates`` (sorted by currency, see ``network/money.py``),
-    ``tariffs`` (see ``network/tariffs.py``) and ``extra``.
+    ``planned_at``, ``release_by``, ``shortage_measure``, ``periods`` (sorted dates), ``rules``
+    (sorted by id, see ``network/rules.py``), ``exchange_rates`` (sorted by currency, see
+    ``network/money.py``), ``tariffs`` (see ``network/tariffs.py``) and ``extra``.
 
     ``known_digest`` is the digest of the bytes that this very object was read from, else None; it
     does not pass on to a network that ``dataclasses.replace`` makes of it.

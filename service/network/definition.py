@@ -96,6 +96,7 @@ class Head(Part):
         description="The dates on which goods may leave; that of the cut-off alone if absent.",
         examples=[["2026-02-03", "2026-02-04", "2026-02-05"]],
     )
+    shortage_measure: OptionalId = None
     extra: Extra = None
 
 
@@ -219,6 +220,15 @@ class ThroughputPart(RulePart):
     per: Annotated[str | None, *optional(kinds.PER)] = None
 
 
+class SharedCapacityPart(RulePart):
+    """Lanes carry at most so much of all items."""
+
+    lanes: LanePick
+    measure: OptionalId = None
+    maximum: Quantity
+    per: Annotated[str | None, *optional(kinds.PER)] = None
+
+
 class Control(Part):
     """Totals that the sender counted itself, to notice rows that were lost on the way."""
 
@@ -235,6 +245,7 @@ RULE_PARTS: Final[Mapping[str, type[RulePart]]] = {
     "closure": ClosurePart,
     "fixed_quantity": FixedQuantityPart,
     "throughput": ThroughputPart,
+    "shared_capacity": SharedCapacityPart,
 }
 
 _Part = TypeVar("_Part", bound=Part)

@@ -5,14 +5,18 @@ import json
 import numpy as np
 
 from service.network.assembly import Assembly
-from service.network.columns import IntArray, Network
+from service.network.columns import BoolArray, IntArray, Network, Texts
+from service.network.days import is_dated
 from service.network.faults import FaultList
 from service.network.lane_names import identical_lanes, taken_names
 from service.network.loops import loop_below_zero
 from service.network.naming import lane_names
+from service.network.not_yet import SHARED, refusal
 from service.network.reach import LaneUse
 from service.network.row_checks import MEASURE_ADVICE, measure_grain, off_step_detail
+from service.network.sharing import UNITS_ADVICE, Sharing
 from service.network.table_rows import off_grid
+from service.network.tariffs import tariffs_of
 from service.network.units import per_unit
 
 LANES_NAMED_MAX = 8
@@ -29,7 +33,9 @@ def check_names(assembly: Assembly) -> None:
     faults.at_rows("id", rows, "lane_name_taken", detail)
 
 
-def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList) -> None:
+def check_lanes_for_any_item(
+    assembly: Assembly, use: LaneUse, sharing: Sharing, doubts: FaultList
+) -> None:
     """Find what a lane without an item leaves open, or says in a measure that an item lacks."""
     network, lanes = assembly.network, assembly.network.lanes
     if len(use.any_item) == 0:
@@ -40,9 +46,11 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
         # Without limits and unlike units there is nothing to ask of a lane's users.
         return
     any_item = lanes.item < 0
-    users = np.zeros(len(lanes), dtype=np.int32)
+    users = np.zeros(len(lanes), dtype=np.int64)
     first_unit = np.full(len(lanes), -1, dtype=np.int32)
     unlike = np.zeros(len(lanes), dtype=np.bool_)
+    shared = any_item & _together(network)
+    on_shared: list[IntArray] = []
     for item, thing in enumerate(network.items):
         rows = use.rows(item)
         rows = rows[any_item[rows]]
@@ -50,12 +58,22 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
         unit = units[thing.unit]
         unlike[rows] |= (first_unit[rows] >= 0) & (first_unit[rows] != unit)
         first_unit[rows] = unit
+        on_shared.append(rows[shared[rows]])
         if not plain:
             _check_measures(assembly, item, rows)
+    if shared.any() and (is_dated(network) or tariffs_of(network.head)):
+        detail = refusal("per: together, with dates or tariffs", SHARED)
+        rows = np.sort(assembly.lane_rows[np.flatnonzero(shared)])
+        assembly.sent.lanes.faults.at_rows("per", rows, "not_yet", detail)
+    elif shared.any():
+        sharing.on_lanes(on_shared, users)
+        summed = shared & unlike & (lanes.measure.codes == _code_of("unit", lanes.measure))
+        rows = np.sort(assembly.lane_rows[np.flatnonzero(summed)])
+        assembly.sent.lanes.faults.at_rows("per", rows, "units_differ", UNITS_ADVICE)
     open_limit = (users > 1) & (lanes.per.codes < 0)
     detail = (
         "More than one item can use this lane, so its limit must say per: item "
-        "(for each item by itself); together comes later."
+        "(for each item by itself) or per: together (for all of them)."
     )
     for name, column in (("must_ship", lanes.must_ship), ("capacity", lanes.capacity)):
         rows = assembly.lane_rows[np.flatnonzero(open_limit & column.present)]
@@ -81,6 +99,19 @@ def check_lanes_for_any_item(assembly: Assembly, use: LaneUse, doubts: FaultList
     )
 
 
+def _code_of(word: str, column: Texts) -> int:
+    """Return the code of a text in a column, -2 (no row's) where it does not occur."""
+    return column.values.index(word) if word in column.values else -2
+
+
+def _together(network: Network) -> BoolArray:
+    """Return, in shape (lanes,), which lanes have limits for all their items together."""
+    per = network.lanes.per
+    limited = network.lanes.must_ship.present | network.lanes.capacity.present
+    shared: BoolArray = limited & (per.codes == _code_of("together", per))
+    return shared
+
+
 def _check_measures(assembly: Assembly, item: int, rows: IntArray) -> None:
     """Check the measures and forced quantities of lanes without an item for one of their users."""
     network, lanes = assembly.network, assembly.network.lanes
@@ -95,7 +126,8 @@ def _check_measures(assembly: Assembly, item: int, rows: IntArray) -> None:
             faults.at_rows(name, sent, "measure_unknown", detail, once=True)
             continue
         size = measure_grain(thing, measure)
-        forced = members[lanes.must_ship.present[members]]
+        # What several items must reach together is kept exact and need not be whole steps of each.
+        forced = members[lanes.must_ship.present[members] & ~_together(network)[members]]
         if size is not None and len(forced):
             off = np.sort(assembly.lane_rows[off_grid(lanes.must_ship, forced, size)])
             faults.at_rows("must_ship", off, "off_step", off_step_detail(thing, size, measure))

@@ -38,7 +38,7 @@ _ROWS_MAX = 2**31 - 1
 # So many possible pairs are marked off one by one; more of them would cost more than sorting.
 _PAIRS_MARKED_MAX = 2**22
 
-_HEAD_TEXTS = ("name", "currency", "cut_off", "planned_at", "release_by")
+_HEAD_TEXTS = ("name", "currency", "cut_off", "planned_at", "release_by", "shortage_measure")
 _HEAD_FIELDS = frozenset(
     {"format", "periods", "rules", "extra", "exchange_rates", "tariffs", "items", "sites", "tables"}
     | {*_HEAD_TEXTS}
@@ -160,7 +160,7 @@ def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
     _check(bool((lanes.unit_cost.present != by_tariff).all()), "a lane without one cost")
     _check(not bool((by_tariff & (lanes.currency.codes >= 0)).any()), "a tariff in a currency")
     _check(int(lanes.measure.codes.min(initial=0)) >= 0, "a lane without a measure")
-    _check(set(lanes.per.values) <= {"item"}, "an unknown per")
+    _check(set(lanes.per.values) <= {"item", "together"}, "an unknown per")
     _check_not_negative(lanes.capacity)
     _check(bool((lanes.must_ship.values[lanes.must_ship.present] > 0).all()), "a must-ship of 0")
     _check_not_negative(lanes.transit_days)

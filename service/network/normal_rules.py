@@ -75,7 +75,11 @@ _RULES: Final[Mapping[str, tuple[_Checks, _Checks]]] = {
             "flow": _is_one_of("received", "sent", "through"),
             "maximum": _is_quantity,
         },
-        {"measure": _is_text, "per": _is_one_of("each")},
+        {"measure": _is_text, "per": _is_one_of("each", "together")},
+    ),
+    "shared_capacity": (
+        {"lanes": _is_selector("lanes"), "maximum": _is_quantity},
+        {"measure": _is_text, "per": _is_one_of("each", "together")},
     ),
 }
 

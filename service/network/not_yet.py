@@ -20,7 +20,6 @@ NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
         "storage": DATES,
         "committed": COMMITTED,
         "committed_deducted": COMMITTED,
-        "shortage_measure": SHARED,
     },
     "items": {"divisible": SHARED},
     "sites": {},
@@ -37,7 +36,6 @@ NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
 
 NOT_YET_RULES: Final[Mapping[str, str]] = {
     "transit_limit": DATES,
-    "shared_capacity": SHARED,
     "commitment": SHARED,
     "source_share": SHARED,
     "cost_limit": SHARED,

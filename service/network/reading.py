@@ -26,6 +26,7 @@ from service.network.reach import LaneUse
 from service.network.row_checks import check_demand, check_lanes, check_supply
 from service.network.rule_checks import check_rules
 from service.network.rule_reading import read_rules
+from service.network.sharing import Sharing
 from service.network.sheets import Sheet, refuse_field
 from service.network.stock_age import check_stock_age
 from service.network.table_fields import LISTED_FIELDS, TABLE_FIELDS
@@ -136,6 +137,7 @@ def _head_document(head: Head, currencies: Currencies, tariffs: SentTariffs) -> 
         "planned_at": None if head.planned_at is None else head.planned_at.local,
         "release_by": None if head.release_by is None else head.release_by.local,
         "periods": [day.isoformat() for day in head.periods] if head.periods else None,
+        "shortage_measure": head.shortage_measure,
         "extra": dict(sorted(head.extra.items())) if head.extra else None,
         "exchange_rates": [dict(rate) for rate in currencies.documents] or None,
         "tariffs": [dict(tariff) for tariff in tariffs.documents] or None,
@@ -213,12 +215,14 @@ def _check_together(
     """
     use = LaneUse(assembly.network)
     check_names(assembly)
-    check_lanes_for_any_item(assembly, use, faults)
+    sharing = Sharing(assembly.network)
+    check_lanes_for_any_item(assembly, use, sharing, faults)
     check_charges(assembly, use)
     check_tariffs(assembly, use, faults)
     check_loops(assembly, use, faults)
     check_origins(assembly, use, faults)
-    check_rules(assembly, use, faults)
+    check_rules(assembly, use, sharing, faults)
+    sharing.check(faults)
     check_days(assembly, faults)
     check_stock_age(assembly, cut_off, options.maximum_age_minutes, faults)
     doubt(assembly, use, faults)

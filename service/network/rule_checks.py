@@ -10,6 +10,7 @@ import numpy as np
 
 from service.network.assembly import Assembly
 from service.network.columns import BoolArray, IntArray, Network
+from service.network.days import is_dated
 from service.network.faults import FaultList, pointer
 from service.network.naming import lane_rows
 from service.network.not_yet import SHARED, refusal
@@ -20,18 +21,21 @@ from service.network.rule_reading import SentRule
 from service.network.rules import (
     Closure,
     FixedQuantity,
+    SharedCapacity,
     Throughput,
     in_force,
     items_selected,
     lanes_selected,
     sites_selected,
 )
+from service.network.sharing import UNITS_ADVICE, Sharing
+from service.network.tariffs import tariffs_of
 from service.network.units import per_unit
 
 
-def check_rules(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
+def check_rules(assembly: Assembly, use: LaneUse, sharing: Sharing, faults: FaultList) -> None:
     """Find rules that contradict the network or each other, and doubts about the others."""
-    checks = _RuleChecks(assembly=assembly, use=use, faults=faults)
+    checks = _RuleChecks(assembly=assembly, use=use, sharing=sharing, faults=faults)
     cut_off = str(assembly.network.head["cut_off"])
     selectables = _Selectables(assembly.network) if assembly.rules else None
     for sent in assembly.rules:
@@ -46,8 +50,10 @@ def check_rules(assembly: Assembly, use: LaneUse, faults: FaultList) -> None:
             checks.closure(rule)
         elif isinstance(rule, FixedQuantity):
             checks.fixed_quantity(sent, rule)
-        else:
+        elif isinstance(rule, Throughput):
             checks.throughput(sent, rule)
+        else:
+            checks.shared_capacity(sent, rule)
 
 
 @dataclass(slots=True)
@@ -56,6 +62,7 @@ class _RuleChecks:
 
     assembly: Assembly
     use: LaneUse
+    sharing: Sharing
     faults: FaultList
     _fixed_by: dict[int, IntArray] = field(default_factory=dict)
     _fixing: list[FixedQuantity] = field(default_factory=list)
@@ -115,35 +122,82 @@ class _RuleChecks:
                 self.faults.add(place, "off_step", detail, exact_text(quantity))
 
     def throughput(self, sent: SentRule, rule: Throughput) -> None:
-        """Refuse what needs a limit that items share, or a measure that an item does not have."""
+        """Find a limit that does not say for whom, or in what, it holds."""
         network = self.assembly.network
         sites = np.flatnonzero(sites_selected(network, rule)).tolist()
-        place = ("rules", sent.place)
-        if len(sites) > 1 and not sent.per_said:
-            detail = "The rule picks several sites: say per: each, a limit for each of them."
-            self.faults.add(pointer(*place, "per"), "per_missing", detail)
+        self._say_for_whom(sent, len(sites), "sites")
         allowed = np.flatnonzero(items_selected(network, rule)).tolist()
-        passing = {
-            site: [item for item in allowed if self._can_pass(item, rule.flow)[site]]
-            for site in sites
-        }
-        for site, items in passing.items():
-            if len(items) > 1:
-                detail = (
-                    f"{len(items)} items can be {rule.flow} at {network.sites[site].id}: "
-                    f"{refusal('a limit over several items', SHARED)} Name one item."
-                )
-                self.faults.add(pointer(*place, "items"), "not_yet", detail)
-            for item in items:
-                if not per_unit(network.items[item], rule.measure):
-                    self.faults.add(
-                        pointer(*place, "measure"), "measure_unknown", MEASURE_ADVICE, rule.measure
-                    )
-            # Also where nothing can pass: goods of such a site have no one place to be counted at.
-            by_two_ways = rule.flow != "sent" or self.use.passes_on[site]
-            if by_two_ways and any(self.use.apart(item)[site] for item in allowed):
-                detail = refusal(f"{rule.flow} at a site that keeps what it receives apart", SHARED)
-                self.faults.add(pointer(*place, "flow"), "not_yet", detail, rule.flow)
+        passing = [
+            {item for item in allowed if self._can_pass(item, rule.flow)[site]} for site in sites
+        ]
+        if is_dated(network) or tariffs_of(network.head):
+            by_ways = [
+                (rule.flow != "sent" or self.use.passes_on[site])
+                and any(self.use.apart(item)[site] for item in allowed)
+                for site in sites
+            ]
+            together = rule.per == "together" and len(sites) > 1
+            if together or any(by_ways) or any(len(items) > 1 for items in passing):
+                self._refuse_on_days(sent)
+                return
+        self._share(sent, rule.measure, passing, together=rule.per == "together")
+
+    def _refuse_on_days(self, sent: SentRule) -> None:
+        """Refuse a limit that items share where goods move on several days, or by tariffs."""
+        detail = refusal("a limit that items or lanes share, with dates or tariffs", SHARED)
+        self.faults.add(pointer("rules", sent.place), "not_yet", detail, sent.rule.id)
+
+    def shared_capacity(self, sent: SentRule, rule: SharedCapacity) -> None:
+        """Find a limit that does not say for whom, or in what, it holds."""
+        network = self.assembly.network
+        if is_dated(network) or tariffs_of(network.head):
+            self._refuse_on_days(sent)
+            return
+        picked = lanes_selected(network, rule)
+        self._say_for_whom(sent, int(picked.sum()), "lanes")
+        users = np.zeros(len(network.lanes), np.int64)
+        on_lanes = []
+        for item in np.flatnonzero(items_selected(network, rule)).tolist():
+            rows = self.use.rows(item)
+            rows = rows[picked[rows]]
+            users[rows] += 1
+            on_lanes.append((item, rows))
+        together = rule.per == "together"
+        using = {item for item, rows in on_lanes if len(rows)}
+        sharing = {item for item, rows in on_lanes if (users[rows] > 1).any()}
+        self._share(sent, rule.measure, [using if together else sharing], together=True)
+        for item in using - sharing:
+            self._share(sent, rule.measure, [{item}], together=False)
+
+    def _say_for_whom(self, sent: SentRule, picked: int, what: str) -> None:
+        """Find a limit on several things that does not say whether it is one for all of them."""
+        if picked > 1 and not sent.per_said:
+            detail = (
+                f"The rule picks several {what}: say per: each (a limit for each of them) or "
+                "per: together (one for all)."
+            )
+            self.faults.add(pointer("rules", sent.place, "per"), "per_missing", detail)
+
+    def _share(
+        self, sent: SentRule, measure: str, groups: list[set[int]], *, together: bool
+    ) -> None:
+        """Note which items share the limits of a rule, in a measure that all of them have.
+
+        ``groups`` are the items at each limit; ``together``, all of them are at one.
+        """
+        network, place = self.assembly.network, ("rules", sent.place)
+        using = set().union(*groups)
+        for item in sorted(using):
+            if not per_unit(network.items[item], measure):
+                detail = f"{network.items[item].id} counts here. {MEASURE_ADVICE}"
+                self.faults.add(pointer(*place, "measure"), "measure_unknown", detail, measure)
+        for items in [using] if together else groups:
+            self.sharing.among(items)
+            units = {network.items[item].unit for item in items}
+            if measure == "unit" and len(units) > 1:
+                place_of = pointer(*place, "measure")
+                self.faults.add(place_of, "units_differ", UNITS_ADVICE, sorted(units))
+                return
 
     def _can_pass(self, item: int, flow: str) -> BoolArray:
         """Return, in shape (sites,), where an item can be received, sent, or pass through."""

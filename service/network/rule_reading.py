@@ -14,11 +14,12 @@ from service.network.definition import (
     FixedQuantityPart,
     Part,
     RulePart,
+    SharedCapacityPart,
     ThroughputPart,
     validated,
 )
 from service.network.faults import FaultList, pointer
-from service.network.not_yet import NOT_YET_RULES, SHARED, refusal
+from service.network.not_yet import NOT_YET_RULES, refusal
 from service.network.quantities import exact_text
 from service.network.rules import Rule, rule_of
 
@@ -64,11 +65,7 @@ def read_rules(value: object, faults: FaultList) -> list[SentRule]:
             faults.add(pointer("rules", place, "id"), "duplicate_id", detail, part.id)
             continue
         seen.add(part.id)
-        per_said = isinstance(part, ThroughputPart) and part.per is not None
-        if isinstance(part, ThroughputPart) and part.per == "together":
-            detail = refusal("per: together", SHARED)
-            faults.add(pointer("rules", place, "per"), "not_yet", detail, "together")
-            continue
+        per_said = isinstance(part, ThroughputPart | SharedCapacityPart) and part.per is not None
         normal = _normal(part)
         found.append(
             SentRule(place=place, document=normal, rule=rule_of(normal), per_said=per_said)
@@ -97,8 +94,21 @@ def _normal(part: RulePart) -> dict[str, object]:
             "flow": part.flow,
             "measure": None if part.measure == "unit" else part.measure,
             "maximum": exact_text(part.maximum),
+            "per": _per(part.per),
+        }
+    elif isinstance(part, SharedCapacityPart):
+        document |= {
+            "lanes": _selector(part.lanes),
+            "measure": None if part.measure == "unit" else part.measure,
+            "maximum": exact_text(part.maximum),
+            "per": _per(part.per),
         }
     return {key: value for key, value in document.items() if value is not None}
+
+
+def _per(word: str | None) -> str | None:
+    """Return for whom a limit holds; each is what goes without saying."""
+    return None if word == "each" else word
 
 
 def _selector(part: Part | None) -> dict[str, Any] | None:

@@ -87,7 +87,8 @@ class FixedQuantity(_RuleBase):
 class Throughput(_RuleBase):
     """At each picked site at most ``maximum`` is ``received``, ``sent`` or passes ``through``.
 
-    ``maximum`` is in ``measure``; ``per`` is ``each``, the only form that is built.
+    ``maximum`` is in ``measure``, over all picked items; ``per`` is ``each`` or ``together``: of
+    every site by itself, or of all picked sites.
     """
 
     sites: SiteSelector
@@ -99,7 +100,22 @@ class Throughput(_RuleBase):
     name = "throughput"
 
 
-Rule = Closure | FixedQuantity | Throughput
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SharedCapacity(_RuleBase):
+    """The picked lanes carry at most ``maximum`` of the picked items, in ``measure``.
+
+    ``per`` is ``each`` or ``together``: every lane by itself, or all picked lanes.
+    """
+
+    lanes: LaneSelector
+    measure: str
+    maximum: Fraction
+    per: str
+
+    name = "shared_capacity"
+
+
+Rule = Closure | FixedQuantity | Throughput | SharedCapacity
 
 
 def rules_of(network: Network) -> tuple[Rule, ...]:
@@ -136,6 +152,14 @@ def rule_of(document: Mapping[str, Any]) -> Rule:
             **common,
             sites=_selector(SiteSelector, document["sites"]),
             flow=document["flow"],
+            measure=document.get("measure", "unit"),
+            maximum=parse_exact(document["maximum"]),
+            per=document.get("per", "each"),
+        )
+    if kind == "shared_capacity":
+        return SharedCapacity(
+            **common,
+            lanes=_selector(LaneSelector, document["lanes"]),
             measure=document.get("measure", "unit"),
             maximum=parse_exact(document["maximum"]),
             per=document.get("per", "each"),
@@ -185,7 +209,7 @@ def pick_lanes(network: Network, selector: LaneSelector) -> BoolArray:
 
 def sites_selected(network: Network, rule: Rule) -> BoolArray:
     """Return, in shape (sites,), which sites a rule is about; none for a rule about lanes."""
-    if isinstance(rule, FixedQuantity) or rule.sites is None:
+    if isinstance(rule, FixedQuantity | SharedCapacity) or rule.sites is None:
         return np.zeros(len(network.sites), dtype=np.bool_)
     return pick_sites(network, rule.sites)
 

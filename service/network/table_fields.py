@@ -90,7 +90,7 @@ LANE_FIELDS: Final[Mapping[str, Schema]] = {
     "measure": schemas.ID_SCHEMA,
     "must_ship": _QUANTITY,
     "capacity": _QUANTITY,
-    "per": {"enum": ["item"]},
+    "per": {"enum": ["item", "together"]},
     "carrier": schemas.ID_SCHEMA,
     "currency": _CURRENCY,
     "charges": {"type": "array", "items": CHARGE_SCHEMA, "maxItems": CHARGES_MAX},

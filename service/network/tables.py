@@ -23,7 +23,6 @@ from service.network.columns import (
 )
 from service.network.currency_reading import Currencies
 from service.network.moments import read_date, read_instant
-from service.network.not_yet import SHARED, refusal
 from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
 from service.network.sheets import Sheet, column_of_cells
 from service.network.table_faults import TableFaults
@@ -281,10 +280,9 @@ def _date(text: str) -> Spelled:
 
 def _per(text: str) -> Spelled:
     """Spell whom a limit of a lane for any item concerns."""
-    if text == "together":
-        return Spelled(None, "not_yet", refusal("per: together", SHARED))
-    if text != "item":
-        return Spelled(None, "bad_choice", "Say 'item': the limit holds for each item by itself.")
+    if text not in {"item", "together"}:
+        detail = "Say 'item' (the limits hold for each item by itself) or 'together' (for all)."
+        return Spelled(None, "bad_choice", detail)
     return Spelled(text)
 
 

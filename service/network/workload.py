@@ -10,6 +10,7 @@ import numpy as np
 from service.network.canonical import canonical_json, digest
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.days import is_dated, movements_of
+from service.network.rules import SharedCapacity, Throughput, rules_of
 from service.network.tariffs import tariffs_of
 
 
@@ -19,7 +20,8 @@ class Workload:
 
     ``usable_lanes`` bounds from above the pairs of a lane and an item that can use it, and
     ``usable_lanes_of_one`` those of the item that has most; ``places`` bounds the pairs of a site
-    and an item that meet there. ``file_bytes`` is the size of the normal form.
+    and an item that meet there. ``sharing_lanes`` are the pairs of a lane and an item where items
+    may share limits, else 0. ``file_bytes`` is the size of the normal form.
     """
 
     items: int
@@ -31,6 +33,7 @@ class Workload:
     usable_lanes_of_one: int
     places: int
     file_bytes: int
+    sharing_lanes: int = 0
 
     def to_document(self) -> dict[str, int]:
         """Return the counts as a JSON object."""
@@ -59,6 +62,18 @@ def workload_of(network: Network, *, file_bytes: int) -> Workload:
         usable_lanes_of_one=int(usable.max(initial=0)),
         places=int(np.minimum(touched + 2 * usable, times * len(network.sites)).sum()),
         file_bytes=file_bytes,
+        sharing_lanes=int(usable.sum()) if _may_share(network) else 0,
+    )
+
+
+def _may_share(network: Network) -> bool:
+    """Return whether items may share a limit, of lanes or of a rule."""
+    several = len(network.items) > 1
+    return "together" in network.lanes.per.values or any(
+        isinstance(rule, SharedCapacity)
+        or (isinstance(rule, Throughput) and rule.per == "together")
+        or (isinstance(rule, Throughput) and several and not rule.items)
+        for rule in rules_of(network)
     )
 
 

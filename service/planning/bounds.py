@@ -81,7 +81,9 @@ def lane_bounds(
 
     minimum = stated_minimum = _of_all(0, count)
     if lanes.must_ship.present.any():
-        minimum = stated_minimum = steps(lanes.must_ship, "must_ship of a lane")
+        stated_minimum = steps(lanes.must_ship, "must_ship of a lane")
+        stated_minimum[_together(network, at)] = 0
+        minimum = stated_minimum
     capacity = stated_capacity = _of_all(UNLIMITED, count)
     if lanes.capacity.present.any():
         # What weighs nothing fits any number of times.
@@ -145,6 +147,16 @@ def _gone(network: Network, movements: Movements | None) -> list[BoolArray]:
     if movements is None or not network.lanes.departs.values:
         return []
     return [gone_lanes(network)]
+
+
+def _together(network: Network, at: IntArray | slice) -> BoolArray:
+    """Return on which lanes the least is one of all items together, and of none by itself."""
+    lanes = network.lanes
+    per = lanes.per.codes[at]
+    if "together" not in lanes.per.values:
+        return np.broadcast_to(np.False_, per.shape)
+    together: BoolArray = per == lanes.per.values.index("together")
+    return together & (lanes.item[at] < 0)
 
 
 def _of_all(value: int, count: int) -> IntArray:

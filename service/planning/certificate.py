@@ -8,11 +8,10 @@ from importlib.metadata import version
 from service.planning.amounts import Document, text
 from service.planning.arcs import ROOT
 from service.planning.compile import Compiled
-from service.planning.item_network import ItemNetwork
+from service.planning.coupled_proof import contradiction_proof, coupled_proof, coupled_steps
 from service.planning.item_proof import item_proof, named_nodes
-from service.planning.limits import NoCirculationError
 from service.planning.priorities import Achieved, money_of
-from service.planning.solve import ItemFlow
+from service.planning.solution import Solution, Why
 
 FORMAT = 1
 
@@ -31,17 +30,22 @@ def versions() -> dict[str, str]:
 
 def proved_certificate(  # noqa: PLR0913 - the parts of one document
     compiled: Compiled,
-    solved: list[ItemFlow],
+    solution: Solution,
     achieved: list[Achieved],
     *,
     total_cost: Fraction,
     network_digest: str,
     options_digest: str,
 ) -> Document:
-    """Return the certificate of a plan: every step's bound equals what it achieves."""
-    network = compiled.network
+    """Return the certificate of a plan: every step with what it achieves, and its bound.
+
+    They are equal but where items share limits.
+    """
+    network, scale = compiled.network, compiled.cost_scale
     steps: list[Document] = []
-    for flow, result in zip(solved, achieved, strict=True):
+    for flow, result in zip(solution.flows, achieved, strict=True):
+        if flow.reduced is not None:
+            continue
         item = network.items[flow.own.item]
         for priority, short in result.short:
             quantity = text(short * item.step)
@@ -59,29 +63,39 @@ def proved_certificate(  # noqa: PLR0913 - the parts of one document
             steps.append({"item": item.id, "of": "lateness", "achieved": late, "bound": late})
         money = text(money_of(result.money, compiled.cost_scale))
         steps.append({"item": item.id, "of": "cost", "achieved": money, "bound": money})
-    return {
+    for made in solution.coupled:
+        steps += coupled_steps(network, made, scale)
+    document = {
         **_head(compiled, network_digest=network_digest, options_digest=options_digest),
-        "cost_scale": text(compiled.cost_scale),
+        "cost_scale": text(scale),
         "total_cost": text(total_cost),
-        "lower_bound": text(total_cost),
-        "gap": "0",
-        "lexicographic": "proved",
+        "lower_bound": text(total_cost - solution.gap(scale)),
+        "gap": text(solution.gap(scale)),
+        "lexicographic": "proved" if solution.proved else "best_found",
         "versions": versions(),
         "steps": steps,
-        "items": [item_proof(network, flow) for flow in solved],
+        "items": [item_proof(network, flow) for flow in solution.flows],
     }
+    if solution.coupled:
+        document["coupled"] = [
+            coupled_proof(network, made, compiled.items, scale) for made in solution.coupled
+        ]
+    return document
 
 
 def contradiction_certificate(
     compiled: Compiled,
-    cuts: list[tuple[ItemNetwork, NoCirculationError]],
+    why: Why,
     *,
     network_digest: str,
     options_digest: str,
 ) -> Document:
-    """Return the certificate of a network without a plan: a set that no flow satisfies an item."""
+    """Return the certificate of a network without a plan.
+
+    For an item a set of nodes that no flow satisfies; for items that share limits their prices.
+    """
     network = compiled.network
-    return {
+    document = {
         **_head(compiled, network_digest=network_digest, options_digest=options_digest),
         "cost_scale": None,
         "total_cost": None,
@@ -97,9 +111,14 @@ def contradiction_certificate(
                 "forced_out": text(cut.forced_out * network.items[own.item].step),
                 "can_enter": text(cut.can_enter * network.items[own.item].step),
             }
-            for own, cut in cuts
+            for own, cut in why.cuts
         ],
     }
+    if why.contradictions:
+        document["contradictions"] = [
+            contradiction_proof(network, found, compiled.items) for found in why.contradictions
+        ]
+    return document
 
 
 def _head(compiled: Compiled, *, network_digest: str, options_digest: str) -> Document:

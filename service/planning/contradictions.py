@@ -6,20 +6,29 @@ from service.network.columns import IntArray, Network
 from service.network.naming import lane_names
 from service.planning.amounts import Document, text
 from service.planning.arcs import ROOT, SIDES, UNLIMITED, Kind, Side
+from service.planning.compile import Compiled
+from service.planning.coupled_reason import coupled_reason, listed
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoCirculationError
+from service.planning.solution import Why
 
 NAMES_MAX = 3
 
 
-def contradiction_reason(
-    network: Network, cuts: list[tuple[ItemNetwork, NoCirculationError]]
-) -> Document:
-    """Return the ``reason`` of a network without a plan: one row for each item that has none."""
-    items = [_item(network, own, cut) for own, cut in cuts]
-    details = " ".join(str(row["detail"]) for row in items[:NAMES_MAX])
-    more = f" So it is for {len(items) - NAMES_MAX} more items." if len(items) > NAMES_MAX else ""
-    return {"detail": details + more, "items": items}
+def contradiction_reason(compiled: Compiled, why: Why) -> Document:
+    """Return the ``reason`` of a network without a plan.
+
+    One row for each item that has none by itself, and one for each circle of items whose shared
+    limits contradict each other.
+    """
+    network = compiled.network
+    items = [_item(network, own, cut) for own, cut in why.cuts]
+    circles = [coupled_reason(compiled, found) for found in why.contradictions]
+    details = " ".join(str(row["detail"]) for row in (items + circles)[:NAMES_MAX])
+    rest = len(items) + len(circles) - NAMES_MAX
+    more = f" So it is for {rest} more items." if rest > 0 else ""
+    reason: Document = {"detail": details + more, "items": items}
+    return reason | {"together": circles} if circles else reason
 
 
 def _item(network: Network, own: ItemNetwork, cut: NoCirculationError) -> Document:
@@ -33,9 +42,9 @@ def _item(network: Network, own: ItemNetwork, cut: NoCirculationError) -> Docume
     must = _words(network, own, np.flatnonzero(leaving))
     can = _words(network, own, np.flatnonzero(coming)) or "nothing"
     if cut.places[ROOT]:
-        place = "everything but " + _list(_outside(network, own, cut))
+        place = "everything but " + listed(_outside(network, own, cut))
     else:
-        place = _list([network.sites[site].id for site in sites])
+        place = listed([network.sites[site].id for site in sites])
     return {
         "item": item.id,
         "places": [network.sites[site].id for site in sites],
@@ -72,13 +81,4 @@ def _words(network: Network, own: ItemNetwork, arcs: IntArray) -> str:
             what = "arrives at" if side == Side.RECEIVED else "passes"
             site = int(own.layout.nodes.site[own.arcs.tail[arc]])
             names.append(f"what {what} {network.sites[site].id}")
-    return _list(list(dict.fromkeys(names)))
-
-
-def _list(names: list[str]) -> str:
-    """Return names as a list in a sentence, the rest of a long one as a number."""
-    if len(names) > NAMES_MAX + 1:
-        names = [*names[:NAMES_MAX], f"{len(names) - NAMES_MAX} more"]
-    if len(names) <= 1:
-        return "".join(names)
-    return ", ".join(names[:-1]) + " and " + names[-1]
+    return listed(list(dict.fromkeys(names)))

@@ -63,13 +63,15 @@ def item_proof(network: Network, solved: ItemFlow) -> Document:
             for tier, quantity in zip(order, quantities, strict=True)
         ]
 
-    prices = named_nodes(network, own)
+    # Prices of items that share limits stand with those of the limits.
+    shares = solved.reduced is not None
+    prices = [] if shares else named_nodes(network, own)
     amounts = solved.price.tolist()
     for node, name in prices:
         name["price"] = str(int(amounts[node]))
     return {
         "item": network.items[own.item].id,
-        "base": str(own.base),
+        "base": "0" if shares else str(own.base),
         **({"late_base": str(own.late_base)} if own.late_base else {}),
         "draws": drawn(),
         "kept": tiers(solved.amounts(Kind.KEPT)),

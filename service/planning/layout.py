@@ -94,6 +94,11 @@ def layout_of(  # noqa: PLR0913 - the tables of one item
     by_origin[groups.site[named]] = True
     apart = by_origin | (~passes_on & arrives & (has_stock | leaves))
     limit = _limits(network, item, book)
+    # Where goods are kept apart no one arc carries all that is received, passes or is sent on:
+    # there the limit is a row over the lanes (``shared_limits``).
+    limit["received"][apart] = UNLIMITED
+    limit["through"][apart] = UNLIMITED
+    limit["sent"][apart & passes_on] = UNLIMITED
     if lanes.departs is None:
         days = undated_places(sites, origin, destination)
     else:
@@ -200,10 +205,8 @@ def _limits(network: Network, item: int, book: RuleBook) -> dict[str, IntArray]:
         if not isinstance(entry.rule, Throughput):
             continue
         amount = per_unit(thing, entry.rule.measure)
-        if amount is None:
-            raise ValueError(f"item {thing.id} says nothing of {entry.rule.measure}")
-        if amount == 0:
-            continue  # What weighs nothing passes any number of times.
+        if not amount:
+            continue  # It cannot pass, as the intake has seen, or weighs nothing.
         most = int(
             Rationals.given([entry.rule.maximum / (amount * thing.step)]).rounded(
                 up=False, what="maximum of a throughput rule"

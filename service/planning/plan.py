@@ -19,6 +19,7 @@ from service.planning.order_lines import shares_of
 from service.planning.plan_lines import ItemPlan, item_plan, plan_line_documents
 from service.planning.rules_in_force import rules_in_force
 from service.planning.shortages import shortage_rows
+from service.planning.solution import Solution
 from service.planning.solve import ItemFlow
 
 FORMAT = 1
@@ -58,11 +59,11 @@ class _Tables:
     circling: list[str]
 
 
-def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> PlanDocument:
+def planned(compiled: Compiled, solution: Solution, setting: Setting) -> PlanDocument:
     """Return the document of a plan from the flow of all items."""
     network = compiled.network
     tables = _Tables([], {}, {}, [], [], [], {}, Fraction(0), Fraction(0), [])
-    for flow in solved:
+    for flow in solution.flows:
         _add_item(network, flow, tables, scale=compiled.cost_scale)
     scale = compiled.cost_scale
     lines = [line for plan in tables.plans for line in plan.lines]
@@ -95,15 +96,15 @@ def planned(compiled: Compiled, solved: list[ItemFlow], setting: Setting) -> Pla
             *(row for _, row in sorted(tables.kept_short, key=lambda pair: pair[0])),
         ],
         "site_use": [row for _, row in sorted(tables.site_use, key=lambda pair: pair[0])],
-        "rules_in_force": rules_in_force(compiled, solved),
+        "rules_in_force": rules_in_force(compiled, solution),
         "set_aside": list(setting.set_aside),
         "warnings": [*setting.warnings, *_doubts(tables.circling)],
         "certificate": {
             "format": FORMAT,
             "feasible": True,
-            "lower_bound": text(cost),
-            "gap": "0",
-            "lexicographic": "proved",
+            "lower_bound": text(cost - solution.gap(scale)),
+            "gap": text(solution.gap(scale)),
+            "lexicographic": "proved" if solution.proved else "best_found",
             "solver_bound": None,
             "reproducible": True,
             "network_digest": setting.network_digest,
@@ -126,7 +127,7 @@ def unplanned(compiled: Compiled, reason: Document, setting: Setting) -> Documen
         "consignments": [],
         "shortages": [],
         "site_use": [],
-        "rules_in_force": rules_in_force(compiled, []),
+        "rules_in_force": rules_in_force(compiled, Solution(flows=(), coupled=())),
         "set_aside": list(setting.set_aside),
         "warnings": list(setting.warnings),
         "reason": reason,

@@ -21,12 +21,15 @@ class ItemFlow:
     """The plan of one item as flow: steps on every arc, and the price of every node.
 
     ``contraction`` is kept for questions that are asked of the plan later (reasons of shortages).
+    ``reduced`` are the reduced costs of all arcs where items share limits: what an arc takes of
+    them is paid for in it, and ``price`` is empty.
     """
 
     own: ItemNetwork
     contraction: Contraction
     flow: IntArray
     price: MoneyArray
+    reduced: MoneyArray | None = None
 
     def amounts(self, kind: Kind) -> dict[int, int]:
         """Return the flow above 0 on the arcs of one kind, by subject."""

@@ -21,7 +21,7 @@ from service.planning.compile import Compiled, compile_network
 from service.planning.contraction import Contraction
 from service.planning.contradictions import contradiction_reason
 from service.planning.item_network import ItemNetwork
-from service.planning.limits import NoCirculationError, NumbersTooLargeError
+from service.planning.limits import NumbersTooLargeError
 from service.planning.outcome import (
     CERTIFICATE_FILE,
     PLAN_FILE,
@@ -33,6 +33,7 @@ from service.planning.outcome import (
 from service.planning.plan import Setting, planned, unplanned
 from service.planning.priorities import achieved
 from service.planning.routes import Route, SiftedRoute, chosen_route
+from service.planning.solution import Solution, solve_all
 from service.planning.solve import ItemFlow, solve_item
 from service.planning.warm_start import WarmStart, left_by
 from service.proof.check import Violation, check
@@ -77,29 +78,29 @@ def plan(
         arcs = sum(len(own.arcs) for own in compiled.items)
         clock.phase("compiled", items=len(compiled.items), arcs=arcs)
         search = _Search(compiled, WarmStart.read(input_folder / WARM_START_FILE), progress)
-        solved, cuts = _solve(compiled, search)
+        solution, why = solve_all(compiled, search.flow)
     except NumbersTooLargeError as error:
         return clock.outcome("failed", FailureReason.NUMBERS_TOO_LARGE, str(error))
-    clock.phase("solved", items=len(solved))
-    if cuts:
-        document = unplanned(compiled, contradiction_reason(network, cuts), setting)
+    clock.phase("solved", items=len(solution.flows))
+    if why:
+        document = unplanned(compiled, contradiction_reason(compiled, why), setting)
         certificate = contradiction_certificate(
             compiled,
-            cuts,
+            why,
             network_digest=setting.network_digest,
             options_digest=setting.options_digest,
         )
     else:
-        document, certificate = _documents(compiled, solved, setting)
+        document, certificate = _documents(compiled, solution, setting)
     plan_bytes, certificate_bytes = orjson.dumps(document), orjson.dumps(certificate)
     (output_folder / PLAN_FILE).write_bytes(plan_bytes)
     (output_folder / CERTIFICATE_FILE).write_bytes(certificate_bytes)
     clock.phase("written", bytes=len(plan_bytes) + len(certificate_bytes))
-    state: State = "no_plan" if cuts else "planned"
+    state: State = "no_plan" if why else "planned"
     sifted = search.sifted
     left = left_by(network, sifted, cost_scale=compiled.cost_scale) if sifted else None
     # The proof reads network and documents alone; what planning made would double its memory.
-    del compiled, search, sifted, solved, cuts, document, certificate
+    del compiled, search, sifted, solution, why, document, certificate
     found = prove(network, options, orjson.loads(plan_bytes), orjson.loads(certificate_bytes))
     clock.phase("proved", violations=len(found))
     if found:
@@ -147,30 +148,16 @@ class _Search:
             self._progress("round", counts)
 
 
-def _solve(
-    compiled: Compiled, search: _Search
-) -> tuple[list[ItemFlow], list[tuple[ItemNetwork, NoCirculationError]]]:
-    """Solve every item; return the flows, and the contradictions of items without any."""
-    solved: list[ItemFlow] = []
-    cuts: list[tuple[ItemNetwork, NoCirculationError]] = []
-    for own in compiled.items:
-        try:
-            solved.append(search.flow(own))
-        except NoCirculationError as cut:
-            cuts.append((own, cut))
-    return solved, cuts
-
-
 def _documents(
-    compiled: Compiled, solved: list[ItemFlow], setting: Setting
+    compiled: Compiled, solution: Solution, setting: Setting
 ) -> tuple[Document, Document]:
     """Return plan and certificate."""
-    made = planned(compiled, solved, setting)
+    made = planned(compiled, solution, setting)
     shortages = compiled.options.shortages == "allow"
     certificate = proved_certificate(
         compiled,
-        solved,
-        [achieved(flow, shortages=shortages) for flow in solved],
+        solution,
+        [achieved(flow, shortages=shortages) for flow in solution.flows],
         total_cost=made.total_cost,
         network_digest=setting.network_digest,
         options_digest=setting.options_digest,

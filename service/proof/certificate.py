@@ -2,6 +2,12 @@
 
 from typing import Final
 
+from service.proof.coupled_shapes import (
+    CIRCLE,
+    CONTRADICTION,
+    ONE_MORE,
+    SIDES,
+)
 from service.proof.money_shapes import CHARGE_PART, CURRENCY, FREIGHT, STATED
 from service.proof.shapes import (
     Shape,
@@ -18,12 +24,14 @@ from service.proof.shapes import (
     or_null,
     record,
 )
+from service.proof.step_shapes import step
 
 FORMAT: Final = 1
-SIDES: Final = ("received", "in", "out", "sent", "demand", "stock", "keep")
 
 _TEXT_OR_NULL = or_null(is_text)
 _EMPTY = one_of([])
+_METHOD = one_of("min_cost_flow", "linear_program")
+_HOW_GOOD = ("proved", "best_found")
 _AMOUNT_OR_UNKNOWN: Shape = lambda value: None if value == "unknown" else is_amount(value)  # noqa: E731 - one line says it
 
 _DATES: Final = {"departs": is_text, "arrives": is_text}
@@ -126,7 +134,8 @@ _RULE = record(
         "owner": _TEXT_OR_NULL,
         "applied": is_flag,
         "binding": is_flag,
-    }
+    },
+    {"one_more": list_of(ONE_MORE)},
 )
 _QUANTITIES = record(
     {
@@ -140,8 +149,8 @@ _QUANTITIES = record(
 )
 _PLAN_HEAD: dict[str, Shape] = {
     "format": one_of(FORMAT),
-    "method": one_of("min_cost_flow"),
-    "method_reasons": _EMPTY,
+    "method": _METHOD,
+    "method_reasons": list_of(is_text),
     "name": _TEXT_OR_NULL,
     "currency": is_text,
     "cut_off": is_text,
@@ -160,7 +169,7 @@ _PLAN_LINES_COUNTS: dict[str, Shape] = {
 }
 
 
-def _summary(*, feasible: bool, bound: Shape, gap: Shape, lexicographic: str) -> Shape:
+def _summary(*, feasible: bool, bound: Shape, gap: Shape, lexicographic: tuple[str, ...]) -> Shape:
     """Return the shape of the certificate's summary on the plan."""
     return record(
         {
@@ -168,7 +177,7 @@ def _summary(*, feasible: bool, bound: Shape, gap: Shape, lexicographic: str) ->
             "feasible": one_of(feasible),
             "lower_bound": bound,
             "gap": gap,
-            "lexicographic": one_of(lexicographic),
+            "lexicographic": one_of(*lexicographic),
             "solver_bound": one_of(None),
             "reproducible": is_flag,
             "network_digest": is_digest,
@@ -193,7 +202,7 @@ _PLANNED = record(
         "shortages": list_of(_SHORTAGE),
         "site_use": list_of(_SITE_USE),
         "certificate": _summary(
-            feasible=True, bound=is_amount, gap=one_of("0"), lexicographic="proved"
+            feasible=True, bound=is_amount, gap=is_amount, lexicographic=_HOW_GOOD
         ),
     },
     {"currencies": list_of(CURRENCY)},
@@ -212,7 +221,7 @@ _NO_PLAN = record(
         ),
         "reason": is_any_object,
         "certificate": _summary(
-            feasible=False, bound=one_of(None), gap=one_of(None), lexicographic="no_plan"
+            feasible=False, bound=one_of(None), gap=one_of(None), lexicographic=("no_plan",)
         ),
     }
 )
@@ -258,18 +267,6 @@ _ITEM_PROOF = record(
     },
     {"late_base": is_whole},
 )
-_SHORTAGE_STEP = record(
-    {
-        "item": is_text,
-        "of": one_of("shortage"),
-        "priority": is_count,
-        "achieved": is_amount,
-        "bound": is_amount,
-    }
-)
-_COST_STEP = record(
-    {"item": is_text, "of": one_of("cost", "lateness"), "achieved": is_amount, "bound": is_amount}
-)
 _CUT = record(
     {
         "item": is_text,
@@ -283,18 +280,12 @@ _CUT = record(
 )
 _CERTIFICATE_HEAD: dict[str, Shape] = {
     "format": one_of(FORMAT),
-    "method": one_of("min_cost_flow"),
+    "method": _METHOD,
     "network_digest": is_digest,
     "options_digest": is_digest,
     "currency": is_text,
     "versions": is_texts,
 }
-
-
-def _step(value: object) -> str | None:
-    """Accept a step of shortage or of cost."""
-    costs = isinstance(value, dict) and value.get("of") != "shortage"
-    return _COST_STEP(value) if costs else _SHORTAGE_STEP(value)
 
 
 _PROVED = record(
@@ -303,11 +294,12 @@ _PROVED = record(
         "cost_scale": is_amount,
         "total_cost": is_amount,
         "lower_bound": is_amount,
-        "gap": one_of("0"),
-        "lexicographic": one_of("proved"),
-        "steps": list_of(_step),
+        "gap": is_amount,
+        "lexicographic": one_of(*_HOW_GOOD),
+        "steps": list_of(step),
         "items": list_of(_ITEM_PROOF),
-    }
+    },
+    {"coupled": list_of(CIRCLE)},
 )
 _CUT_OFF = record(
     {
@@ -315,7 +307,8 @@ _CUT_OFF = record(
         **dict.fromkeys(("cost_scale", "total_cost", "lower_bound", "gap"), one_of(None)),
         "lexicographic": one_of("no_plan"),
         "cuts": list_of(_CUT),
-    }
+    },
+    {"contradictions": list_of(CONTRADICTION)},
 )
 
 

@@ -14,12 +14,15 @@ import numpy as np
 from service.network.canonical import canonical_json, digest, network_digest
 from service.network.columns import Network
 from service.network.options import Options
+from service.proof.arcs import ItemArcs
 from service.proof.bounds import check_bounds
 from service.proof.calendar import Calendar, calendar_of
 from service.proof.certificate import certificate_shape, plan_shape
 from service.proof.consignments import check_consignments
+from service.proof.coupled_bounds import Circle
 from service.proof.cuts import check_cuts
 from service.proof.dated_arcs import arcs_of
+from service.proof.exact import Whole
 from service.proof.feasibility import check_feasibility
 from service.proof.flows import Names, PlanLine, item_flows
 from service.proof.heads import check_heads, check_rules_listed
@@ -29,10 +32,16 @@ from service.proof.plan_lines import check_plan_lines
 from service.proof.results import ItemResult, item_result
 from service.proof.rulings import Rulings, UnusableNetworkError, check_limits_are_clear
 from service.proof.shapes import amount
+from service.proof.shared_limits import SharedLimits, shares_limits
 from service.proof.slackness import check_slackness
 from service.proof.stated import check_stated
 from service.proof.tariff_lanes import freights_of, on_days
-from service.proof.totals import check_shortages, check_site_limits, check_site_use, check_totals
+from service.proof.totals import (
+    check_shortages,
+    check_site_limits,
+    check_site_use,
+    check_totals,
+)
 from service.proof.usable import usable_lanes
 from service.proof.violations import Findings, Violation
 
@@ -96,8 +105,7 @@ def check_documents(  # noqa: PLR0913 - what a proof is about comes in four docu
     if (plan["status"] == "no_plan") != (certificate["lexicographic"] == "no_plan"):
         findings.add("bound_wrong", "plan and certificate are about different answers")
     elif plan["status"] == "no_plan":
-        cuts = certificate["cuts"]
-        check_cuts(options, rulings, cuts, names=Names(calendar), findings=findings)
+        check_cuts(options, rulings, certificate, names=Names(calendar), findings=findings)
     else:
         _check_planned(calendar, options, rulings, plan, certificate, findings=findings)
 
@@ -136,25 +144,77 @@ def _check_planned(  # noqa: PLR0913 - see check_documents
     if scale <= 0:
         findings.add("cost_scale_wrong", "the scale is not above 0", place="/cost_scale")
         return
+    circles = _circles(calendar, certificate, findings)
+    if circles is None:
+        return
+    coupled = {item for circle in circles for item in circle}
+    sharing = bool(circles) or shares_limits(network, rulings)
+    read: list[tuple[ItemArcs, Whole]] = []
     results = []
-    by_item: list[list[PlanLine]] = [[] for _ in network.items]
-    for line in lines:
-        if line.row >= 0:
-            by_item[line.item].append(line)
+    by_item = _by_item(network, lines)
     for item, proof in enumerate(proofs):
         result = _check_item(
             options,
             rulings,
             by_item[item],
             proof,
-            scale=scale,
+            scale=None if item in coupled else scale,
             names=names,
             findings=findings,
         )
         if result is not None:
-            results.append(result)
-    if len(results) == len(network.items):
-        _check_tables(calendar, options, rulings, results, lines, plan, certificate, findings)
+            results.append(result[2])
+            # Most networks share nothing: their arcs need not all be held at once.
+            read += [result[:2]] if sharing else []
+    if len(results) < len(network.items):
+        return
+    shared = _shared(calendar, rulings, options, circles, read, results, names, findings)
+    if shared is None:
+        return
+    _check_tables(calendar, options, results, shared, lines, plan, certificate, findings)
+
+
+def _by_item(network: Network, lines: Sequence[PlanLine]) -> list[list[PlanLine]]:
+    """Return the plan lines with a lane, by item."""
+    by_item: list[list[PlanLine]] = [[] for _ in network.items]
+    for line in lines:
+        if line.row >= 0:
+            by_item[line.item].append(line)
+    return by_item
+
+
+def _shared(  # noqa: PLR0913, PLR0917 - see check_documents
+    calendar: Calendar,
+    rulings: Rulings,
+    options: Options,
+    circles: Sequence[Sequence[int]],
+    read: Sequence[tuple[ItemArcs, Whole]],
+    results: Sequence[ItemResult],
+    names: Names,
+    findings: Findings,
+) -> list[Circle] | None:
+    """Note every limit that items break together; return the circles, None if they cannot be."""
+    network = calendar.network
+    if calendar.dated or network.head.get("tariffs"):
+        # Here each limit is of one item: no circle is stated.
+        check_site_limits(calendar, rulings, results, findings)
+        return []
+    if not read:
+        return []
+    limits = SharedLimits(network, rulings)
+    try:
+        limits.check(read, findings)
+    except UnusableNetworkError as error:
+        findings.add("network_unusable", str(error))
+        return None
+    found = []
+    for circle in circles:
+        others = [arcs for item, (arcs, _) in enumerate(read) if item not in circle]
+        own = [read[item][0] for item in circle]
+        made = Circle(network, own, others, limits=limits, names=names)
+        made.achieves([results[item] for item in circle], shortages=options.shortages == "allow")
+        found.append(made)
+    return found
 
 
 def _check_item(  # noqa: PLR0913 - see check_documents
@@ -163,11 +223,14 @@ def _check_item(  # noqa: PLR0913 - see check_documents
     lines: Sequence[PlanLine],
     proof: Mapping[str, Any],
     *,
-    scale: Fraction,
+    scale: Fraction | None,
     names: Names,
     findings: Findings,
-) -> ItemResult | None:
-    """Note what is wrong with one item; return what its flow comes to, if it can be read."""
+) -> tuple[ItemArcs, Whole, ItemResult] | None:
+    """Note what is wrong with one item; return its flow and what that comes to, if it can be read.
+
+    Without a ``scale`` the item is proved together with others.
+    """
     network = names.calendar.network
     try:
         arcs = arcs_of(names.calendar, options, rulings, names.items[proof["item"]])
@@ -179,15 +242,44 @@ def _check_item(  # noqa: PLR0913 - see check_documents
     if flow is None:
         return None
     check_feasibility(network, arcs, flow, findings)
-    check_slackness(network, arcs, flow, proof, scale=scale, names=names, findings=findings)
-    return item_result(network, arcs, flow)
+    if scale is not None:
+        check_slackness(network, arcs, flow, proof, scale=scale, names=names, findings=findings)
+    return arcs, flow, item_result(network, arcs, flow)
+
+
+def _circles(
+    calendar: Calendar, certificate: Mapping[str, Any], findings: Findings
+) -> list[list[int]] | None:
+    """Return the items that are proved together; None if a certificate does not say them soundly.
+
+    Which they are is its own choice: items that share no limit can be proved together, too.
+    """
+    network = calendar.network
+    if certificate.get("coupled") and (calendar.dated or network.head.get("tariffs")):
+        findings.add("bound_wrong", "with dates or tariffs all are proved alone", place="/coupled")
+        return None
+    at = {item.id: place for place, item in enumerate(network.items)}
+    found: list[list[int]] = []
+    seen: set[str] = set()
+    for circle in certificate.get("coupled", ()):
+        items = circle["items"]
+        if not items or not set(items) <= at.keys() or seen & set(items):
+            findings.add("name_unknown", "no circle of items", place="/coupled")
+            return None
+        places = [at[item] for item in items]
+        if places != sorted(set(places)):
+            findings.add("listed_twice", "items are not in their order", place="/coupled")
+            return None
+        seen |= set(items)
+        found.append(places)
+    return found
 
 
 def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
     calendar: Calendar,
     options: Options,
-    rulings: Rulings,
     results: Sequence[ItemResult],
+    circles: Sequence[Circle],
     lines: Sequence[PlanLine],
     plan: Mapping[str, Any],
     certificate: Mapping[str, Any],
@@ -195,8 +287,7 @@ def _check_tables(  # noqa: PLR0913, PLR0917 - see check_documents
 ) -> None:
     """Note what is wrong with totals, bounds and tables, whose items are all known."""
     allowed, network = options.shortages == "allow", calendar.network
-    check_bounds(network, results, plan, certificate, shortages=allowed, findings=findings)
-    check_site_limits(calendar, rulings, results, findings)
+    check_bounds(network, results, circles, plan, certificate, shortages=allowed, findings=findings)
     check_site_use(network, results, plan["site_use"], findings)
     check_totals(calendar, results, plan, findings)
     paths = check_order_lines(calendar, results, lines, plan["order_lines"], findings)

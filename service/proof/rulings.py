@@ -11,6 +11,7 @@ from service.network.columns import BoolArray, IntArray, Item, LaneTable, Networ
 from service.network.rules import (
     Closure,
     FixedQuantity,
+    Rule,
     Throughput,
     in_force,
     items_selected,
@@ -31,7 +32,7 @@ class UnusableNetworkError(ValueError):
 class Ruling:
     """One rule in force and what it picks: bool of shape (lanes,), (sites,) and (items,)."""
 
-    rule: Closure | FixedQuantity | Throughput
+    rule: Rule
     lanes: BoolArray
     sites: BoolArray
     items: BoolArray
@@ -158,7 +159,12 @@ def check_limits_are_clear(lanes: LaneTable, several: BoolArray) -> None:
 def must_ship_steps(network: Network, item: int, rows: IntArray) -> tuple[Whole, BoolArray]:
     """Return what must go on each lane in steps, and which of it is off the step."""
     column = network.lanes.must_ship
-    if not of_rows(column.present, rows).any():
+    present = of_rows(column.present, rows)
+    if "together" in network.lanes.per.values:
+        # A least of all items together is none of any one.
+        shared = network.lanes.per.values.index("together")
+        present = present & (of_rows(network.lanes.per.codes, rows) != shared)
+    if not present.any():
         return repeated(0, len(rows)), np.broadcast_to(np.False_, (len(rows),))
     broken = np.zeros(len(rows), dtype=np.bool_)
 
@@ -166,7 +172,10 @@ def must_ship_steps(network: Network, item: int, rows: IntArray) -> tuple[Whole,
         part, broken[here] = whole_of(column.values[rows[here]], 1 / (10**column.exponent * amount))
         return part
 
-    return _by_measure(network, item, rows, steps), broken
+    must = _by_measure(network, item, rows, steps)
+    must[~present] = 0
+    broken[~present] = False
+    return must, broken
 
 
 def capacity_steps(network: Network, item: int, rows: IntArray) -> Whole:

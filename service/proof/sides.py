@@ -7,6 +7,7 @@ import numpy as np
 
 from service.network.columns import IntArray, Network
 from service.network.rules import Throughput
+from service.network.units import per_unit
 from service.proof.groups import Wanted
 from service.proof.rulings import Rulings, UnusableNetworkError, measure_of
 from service.proof.stock import Stock
@@ -89,10 +90,11 @@ def site_sides(  # noqa: PLR0913 - all that an item has is looked at here
         mixed = not passing[site] and arrives and (site in stock or starts)
         apart = site in choosy or mixed
         limit = limits.get(site, {})
-        if apart and (limit.keys() & {"through", "received"} or (passing[site] and limit)):
-            raise UnusableNetworkError(
-                f"a throughput limit at {network.sites[site].id!r} is not built"
-            )
+        if apart:
+            # No one arc carries all that is received or passes here, nor all that a cross-dock
+            # sends on: such a limit is one that several lanes share.
+            kept = set() if passing[site] else {"sent"}
+            limit = {flow: steps for flow, steps in limit.items() if flow in kept}
         origins: list[int | None] = []
         behind = {}
         if site in choosy:
@@ -131,6 +133,8 @@ def _throughput_limits(
     for ruling in rulings.throughputs(item):
         rule = ruling.rule
         assert isinstance(rule, Throughput)  # noqa: S101 - what throughputs() returns
+        if not per_unit(thing, rule.measure):
+            continue  # It cannot pass, or the limit itself says that it is not known.
         for site in np.flatnonzero(ruling.sites).tolist():
             if site not in relevant:
                 continue

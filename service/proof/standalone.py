@@ -32,7 +32,10 @@ import zlib
 from array import array
 from collections import defaultdict
 from fractions import Fraction
-from typing import Any
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
 
 # Sites, references and the like, in the order that is written where it is made.
 Key = tuple[Any, ...]
@@ -363,6 +366,7 @@ def read_rule(rule: Value) -> None:
         "closure": ("", "lanes sites"),
         "fixed_quantity": ("lanes quantity", ""),
         "throughput": ("sites flow maximum", "measure per"),
+        "shared_capacity": ("lanes maximum", "measure per"),
     }
     need(isinstance(rule.get("rule"), str) and rule["rule"] in kinds, "an unknown rule")
     first, second = kinds[rule["rule"]]
@@ -386,7 +390,7 @@ def read_rule(rule: Value) -> None:
         elif field in ("id", "measure"):
             need(value, "an empty field of a rule")
     need(rule.get("flow", "sent") in ("received", "sent", "through"), "an unknown flow")
-    need(rule.get("per", "each") == "each", "an unknown per")
+    need(rule.get("per", "each") in ("each", "together"), "an unknown per")
     if rule["rule"] == "closure":
         need(("lanes" in rule) != ("sites" in rule), "a closure is of lanes or of sites")
 
@@ -636,6 +640,7 @@ def read_head(data: bytes) -> dict[str, Any]:
     head: dict[str, Any] = parse_canonical(data)
     need(isinstance(head, dict), "the head is not an object")
     texts = {"name", "currency", "cut_off", "planned_at", "release_by"}
+    texts.add("shortage_measure")
     fields = {"format", "periods", "rules", "extra", "exchange_rates"}
     fields |= {"tariffs", "items", "sites", "tables"}
     need(set(head) <= fields | texts, "other fields in the head")
@@ -1165,7 +1170,7 @@ class Network:
     def _check_lanes(self) -> None:
         """Check the lanes."""
         lanes = self.lanes
-        need(set(lanes["per"].values) <= {"item"}, "an unknown per")
+        need(set(lanes["per"].values) <= {"item", "together"}, "an unknown per")
         need(not_below_0(lanes["capacity"]), "a capacity below 0")
         need(not_below_0(lanes["transit_days"]), "days below 0")
         need(lanes["transit_days"].power == 1, "a part of a day")
@@ -1384,12 +1389,13 @@ def has_shape(value: Value, shape: Value) -> bool:  # noqa: PLR0911 - one return
     return all(has_shape(member, allowed[key]) for key, member in value.items())
 
 
+METHODS = ("min_cost_flow", "linear_program")
 SUMMARY = {
     "format": (1,),
     "feasible": (True,),
     "lower_bound": "amount",
-    "gap": ("0",),
-    "lexicographic": ("proved",),
+    "gap": "amount",
+    "lexicographic": ("proved", "best_found"),
     "solver_bound": (None,),
     "reproducible": "flag",
     "network_digest": "digest",
@@ -1397,8 +1403,8 @@ SUMMARY = {
 PLAN: dict[str, Any] = {
     "format": (1,),
     "status": ("planned",),
-    "method": ("min_cost_flow",),
-    "method_reasons": [],
+    "method": METHODS,
+    "method_reasons": ["text"],
     **keys("name release_by", "?text"),
     **keys("currency cut_off", "text"),
     **keys("network_digest options_digest", "digest"),
@@ -1490,6 +1496,7 @@ PLAN: dict[str, Any] = {
             **keys("rule id", "text"),
             **keys("note owner", "?text"),
             **keys("applied binding", "flag"),
+            "?one_more": [{**keys("site lane", "?text"), "measure": "text", "cost": "amount"}],
         }
     ],
     "set_aside": ["object"],
@@ -1512,7 +1519,7 @@ NO_PLAN: dict[str, Any] = {
 }
 CERTIFICATE_HEAD = {
     "format": (1,),
-    "method": ("min_cost_flow",),
+    "method": METHODS,
     **keys("network_digest options_digest", "digest"),
     "currency": "text",
     "versions": "texts",
@@ -1522,9 +1529,8 @@ TIER_FLOW = {"site": "text", "tier": "count", "quantity": "amount", "?day": "tex
 NODE = {"site": "text", "side": SIDES, "qualifier": "?text", "?day": "text"}
 CERTIFICATE = {
     **CERTIFICATE_HEAD,
-    **keys("cost_scale total_cost lower_bound", "amount"),
-    "gap": ("0",),
-    "lexicographic": ("proved",),
+    **keys("cost_scale total_cost lower_bound gap", "amount"),
+    "lexicographic": ("proved", "best_found"),
     "steps": ["object"],
     "items": [
         {
@@ -1546,6 +1552,13 @@ CERTIFICATE = {
             "prices": [{**NODE, "price": "whole"}],
         }
     ],
+    "?coupled": [{"items": ["text"], "proofs": ["?object"]}],
+}
+PROOF_TOGETHER = {
+    "scale": "amount",
+    "multipliers": [{**keys("rule site lane", "?text"), "value": "amount"}],
+    "caps": [{"priority": "count", "value": "amount"}],
+    "prices": [{"item": "text", "nodes": [{**NODE, "price": "whole"}]}],
 }
 SHORTAGE_STEP = {
     "item": "text",
@@ -1554,10 +1567,19 @@ SHORTAGE_STEP = {
     **keys("achieved bound", "amount"),
 }
 COST_STEP = {"item": "text", "of": ("cost", "lateness"), **keys("achieved bound", "amount")}
+SHORTAGE_TOGETHER = {
+    "items": ["text"],
+    "of": ("shortage",),
+    "priority": "count",
+    "measure": "text",
+    **keys("achieved bound", "amount"),
+}
+COST_TOGETHER = {"items": ["text"], "of": ("cost",), **keys("achieved bound", "amount")}
 NO_PLAN_CERTIFICATE = {
     **CERTIFICATE_HEAD,
     **keys("cost_scale total_cost lower_bound gap", (None,)),
     "lexicographic": ("no_plan",),
+    "?contradictions": [{"items": ["text"], "proof": "?object"}],
     "cuts": [
         {
             "item": "text",
@@ -1578,9 +1600,18 @@ def is_plan(plan: Value) -> bool:
 def is_certificate(certificate: Value) -> bool:
     """Return whether a value has the shape of a certificate."""
     if isinstance(certificate, dict) and certificate.get("lexicographic") == "no_plan":
-        return has_shape(certificate, NO_PLAN_CERTIFICATE)
-    return has_shape(certificate, CERTIFICATE) and all(
+        return has_shape(certificate, NO_PLAN_CERTIFICATE) and all(
+            circle["proof"] is None or has_shape(circle["proof"], PROOF_TOGETHER)
+            for circle in certificate.get("contradictions", ())
+        )
+    if not has_shape(certificate, CERTIFICATE):
+        return False
+    proofs = [proof for circle in certificate.get("coupled", ()) for proof in circle["proofs"]]
+    if not all(proof is None or has_shape(proof, PROOF_TOGETHER) for proof in proofs):
+        return False
+    return all(
         has_shape(step, COST_STEP if step.get("of") in COST_STEP["of"] else SHORTAGE_STEP)
+        or has_shape(step, COST_TOGETHER if step.get("of") == "cost" else SHORTAGE_TOGETHER)
         for step in certificate["steps"]
     )
 
@@ -1903,7 +1934,8 @@ class Formal:
         must, capacity = lanes["must_ship"], lanes["capacity"]
         broken = set()
         for row in self.rows:
-            if must.has(row):
+            # What all items must reach together no item must by itself.
+            if must.has(row) and lanes["per"][row] != "together":
                 steps = must[row] / self.amounts[codes[row]]
                 self.low[row] = steps.numerator // steps.denominator
                 if steps.denominator != 1:
@@ -2142,6 +2174,8 @@ class Formal:
         for rule in self.rules:
             if rule.kind != "throughput":
                 continue
+            if not self.network.measure(self.item, rule.rule.get("measure", "unit")):
+                continue  # It cannot pass, or the limit itself says that it is not known.
             for site in rule.sites & relevant:
                 per = self._per_step(rule.rule.get("measure", "unit"))
                 most, flow = Fraction(rule.rule["maximum"]) // per, rule.rule["flow"]
@@ -2159,8 +2193,9 @@ class Formal:
         choosy = any(group.origins >= 0 for _, group in groups)
         mixed = not passing and arrivals and (site in self.stock or site in self.starts)
         apart = bool(choosy or mixed)
-        if apart and limit and (passing or set(limit) != {"sent"}):
-            raise Unusable("a throughput limit is not built")
+        if apart:
+            # No one arc carries all of it: several lanes share the limit.
+            limit = {flow: most for flow, most in limit.items() if flow == "sent" and not passing}
         handling = network.sites[site]["handling"](self.name) * self.step
         shut = 0 if site in self.closed else UNLIMITED
         through = 0 if site in self.closed else limit.get("through")
@@ -2522,6 +2557,314 @@ def check_steps(flow: Flow, at: int, gain: Fraction, report: Report) -> None:
         report.add("not_optimal", f"{steps} steps contradict the prices", name)
 
 
+class Limit:
+    """A limit that items share: what counts, in whole grains of a measure, and how much may."""
+
+    def __init__(self, name: Key, grain: Fraction, numbers: dict[int, int]) -> None:
+        """Keep its name (rule, site, lane) and how many grains a step of each item is."""
+        self.name, self.grain, self.numbers = name, grain, numbers
+        self.least: int | None = None
+        self.most: int | None = None
+
+
+class Shared:
+    """All limits that items may share: by name, and by the lanes and the stock that count."""
+
+    def __init__(self, network: Network, rules: list[Rule]) -> None:
+        """Find them."""
+        self.network, self.rules = network, rules
+        self.limits: dict[Key, Limit] = {}
+        self.on_lane: dict[int, list[Limit]] = defaultdict(list)
+        self.on_stock: dict[int, list[Limit]] = defaultdict(list)
+        self._of_lanes()
+        for rule in rules:
+            if rule.kind in ("throughput", "shared_capacity"):
+                self._of_rule(rule)
+
+    def _grains(self, measure: str, items: set[int]) -> tuple[Fraction, dict[int, int]]:
+        """Return the largest amount that steps of all items are multiples of, and how many."""
+        steps = {}
+        for item in sorted(items):
+            per = self.network.measure(item, measure)
+            if per is not None and per > 0:
+                steps[item] = per * self.network.items[item]["step"]
+        grain = Fraction(0)
+        for step in steps.values():
+            rest = step
+            while rest:
+                grain, rest = rest, grain % rest
+        return grain or Fraction(1), {item: int(step / grain) for item, step in steps.items()}
+
+    def _of_lanes(self) -> None:
+        """Add what lanes state for all items together."""
+        network, lanes = self.network, self.network.lanes
+        everything = set(range(len(network.items)))
+        known: dict[str, tuple[Fraction, dict[int, int]]] = {}
+        for row in network.lanes_of(-1):
+            must, capacity = lanes["must_ship"][row], lanes["capacity"][row]
+            if lanes["per"][row] != "together" or (must is None and capacity is None):
+                continue
+            measure = lanes["measure"][row]
+            if measure not in known:
+                known[measure] = self._grains(measure, everything)
+            limit = Limit((None, None, network.lane_names.name(row)), *known[measure])
+            if capacity is not None:
+                limit.most = int(capacity // limit.grain)
+            # What is closed for all items need not carry anything.
+            if must is not None and not all(
+                any(r.kind == "closure" and item in r.items and row in r.lanes for r in self.rules)
+                for item in limit.numbers
+            ):
+                limit.least = int(-(-must // limit.grain))
+            self.limits[limit.name] = limit
+            self.on_lane[row].append(limit)
+
+    def _of_rule(self, rule: Rule) -> None:
+        """Add the limits of one rule."""
+        network, lanes, says = self.network, self.network.lanes, rule.rule
+        grain, numbers = self._grains(says.get("measure", "unit"), rule.items)
+        about_sites = rule.kind == "throughput"
+        each = says.get("per", "each") == "each"
+        things = sorted(rule.sites if about_sites else rule.lanes)
+        of_thing: dict[int, Limit] = {}
+        for thing in things:
+            name: Key = (says["id"], None, None)
+            if each and about_sites:
+                name = (says["id"], network.sites[thing]["id"], None)
+            elif each:
+                name = (says["id"], None, network.lane_names.name(thing))
+            limit = self.limits.setdefault(name, Limit(name, grain, numbers))
+            limit.most = int(Fraction(says["maximum"]) // grain)
+            of_thing[thing] = limit
+        if not about_sites:
+            for row, limit in of_thing.items():
+                self.on_lane[row].append(limit)
+            return
+        end = lanes["origin" if says["flow"] == "sent" else "destination"]
+        for row, site in enumerate(end):
+            if site in of_thing:
+                self.on_lane[row].append(of_thing[site])
+        if says["flow"] == "through":
+            for site, limit in of_thing.items():
+                self.on_stock[site].append(limit)
+
+    def taken(self, formal: Formal) -> Iterator[tuple[int, Limit, int]]:
+        """Yield (place among lanes and then arcs, limit, grains of a step) of all that counts."""
+        for rule in self.rules:
+            if rule.kind in ("throughput", "shared_capacity") and formal.item in rule.items:
+                measure = rule.rule.get("measure", "unit")
+                if not self.network.measure(formal.item, measure) and any(
+                    limit.name[0] == rule.rule["id"]
+                    for row in formal.rows
+                    for limit in self.on_lane.get(row, ())
+                ):
+                    raise Unusable(f"item {formal.name!r} has no {measure}")
+        for at, row in enumerate(formal.rows):
+            for limit in self.on_lane.get(row, ()):
+                if formal.item in limit.numbers:
+                    yield at, limit, limit.numbers[formal.item]
+        for at, arc in enumerate(formal.arcs):
+            for limit in self.on_stock.get(arc.key[0], ()) if arc.kind == "draw" else ():
+                if formal.item in limit.numbers:
+                    yield len(formal.rows) + at, limit, limit.numbers[formal.item]
+
+    def check(self, flows: list[Flow], report: Report) -> None:
+        """Check that the flows of all items keep every limit."""
+        sums: dict[Key, int] = defaultdict(int)
+        for flow in flows:
+            lanes = len(flow.formal.rows)
+            for at, limit, number in self.taken(flow.formal):
+                steps = flow.lanes.get(at, 0) if at < lanes else flow.arcs[at - lanes]
+                sums[limit.name] += steps * number
+        for name, limit in self.limits.items():
+            least = limit.least is not None and sums[name] < limit.least
+            if least or (limit.most is not None and sums[name] > limit.most):
+                report.add("limit_broken", "a limit that items share", str(name))
+
+
+class NoBound(Exception):  # noqa: N818 - short, and read aloud
+    """A proof gives no bound: a code, and why."""
+
+
+class Circle:
+    """Items that share limits, and the proofs of what they achieve together.
+
+    With a price m for each grain of a limit, every plan that keeps the limit costs at least what
+    the items cost by themselves when they pay m for what they take, less m times the limit. What
+    an item costs at least follows from prices at its places: each arc at the better of its limits.
+    """
+
+    def __init__(  # noqa: PLR0913, PLR0917 - what a circle is about
+        self,
+        shared: Shared,
+        flows: list[Flow],
+        others: list[Flow],
+        parts: list[dict[str, Fraction]],
+        options: dict[str, Any],
+        scale: Fraction,
+    ) -> None:
+        """Work out what the circle achieves in each step."""
+        self.shared, self.flows, self.others, self.scale = shared, flows, others, scale
+        network = shared.network
+        self.names = [flow.formal.name for flow in flows]
+        self.measure = network.head.get("shortage_measure", "unit") if len(flows) > 1 else "unit"
+        self.per: list[Fraction] = [
+            (network.measure(flow.formal.item, self.measure) or 0) * flow.formal.step
+            for flow in flows
+        ]
+        self.short: dict[int, Fraction] = {}
+        if options["shortages"] == "allow":
+            self.short = dict.fromkeys(
+                sorted({p for f in flows for p in f.formal.priorities}), Fraction(0)
+            )
+            for flow, per in zip(flows, self.per):  # noqa: B905 - Python 3.9
+                for arc, steps in zip(flow.formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
+                    if arc.rank:
+                        self.short[flow.formal.priorities[arc.rank - 1]] += steps * per
+        self.cost = sum((sum(money.values(), Fraction(0)) for money in parts), Fraction(0))
+
+    def steps(self) -> list[tuple[int | None, Fraction]]:
+        """Return the priority of each step (None for the cost) and what it achieved."""
+        return [*self.short.items(), (None, self.cost)]
+
+    def bound(self, priority: int | None, proof: Value) -> Fraction:
+        """Return what a proof shows that no plan comes below."""
+        if proof is None and priority is None:
+            raise NoBound("bound_wrong", "the cost has no proof")
+        if proof is None:
+            return Fraction(0)
+        total = self._total(priority, proof)
+        grid = Fraction(0)
+        for step in self.per if priority is not None else [1 / self.scale]:
+            rest = step
+            while rest:
+                grid, rest = rest, grid % rest
+        grid = grid or Fraction(1)
+        grains = total / grid
+        return -(-grains.numerator // grains.denominator) * grid
+
+    def least_of_nothing(self, proof: Value) -> Fraction:
+        """Return what a proof shows of every plan where nothing costs anything."""
+        return self._total(0, proof)
+
+    def _total(self, priority: int | None, proof: Value) -> Fraction:
+        """Return the bound of a step: shortage of a priority (0 is none), or (None) the cost."""
+        scale = amount(proof["scale"])
+        if scale <= 0:
+            raise NoBound("cost_scale_wrong", "not above 0")
+        every = [
+            self._costs(flow.formal, priority, at, scale) for at, flow in enumerate(self.flows)
+        ]
+        worth, paid = self._limit_prices(proof, scale)
+        caps = self._caps(priority, proof, scale)
+        total = -worth - sum(price * scale * self.short[former] for former, price in caps.items())
+        for flow, costs, per in zip(self.flows, every, self.per):  # noqa: B905 - Python 3.9
+            formal, lanes = flow.formal, len(flow.formal.rows)
+            for at, limit, number in self.shared.taken(formal) if paid else ():
+                if limit.name in paid:
+                    costs[at] += paid[limit.name] * number
+            for at, arc in enumerate(formal.arcs):
+                if arc.rank and formal.priorities[arc.rank - 1] in caps:
+                    costs[lanes + at] += int(caps[formal.priorities[arc.rank - 1]] * per * scale)
+            total += self._least(formal, costs, proof)
+        return total / scale
+
+    def _limit_prices(
+        self,
+        proof: Value,
+        scale: Fraction,
+    ) -> tuple[int, dict[Key, int]]:
+        """Return what the limits are worth at their prices, and the price of a grain of each."""
+        worth, paid = 0, {}
+        for entry in proof["multipliers"]:
+            name = (entry["rule"], entry["site"], entry["lane"])
+            limit = self.shared.limits.get(name)
+            if limit is None or name in paid:
+                raise NoBound("name_unknown", "a price of no limit, or a second one")
+            price = amount(entry["value"]) * limit.grain * scale
+            bound = limit.most if price > 0 else limit.least
+            if price.denominator != 1 or bound is None:
+                raise NoBound("multiplier_wrong", "this price proves nothing")
+            paid[name] = price.numerator
+            worth += price.numerator * bound
+        for flow in self.others if paid else ():
+            formal = flow.formal
+            for at, limit, _ in self.shared.taken(formal):
+                lane = at < len(formal.rows)
+                high = (
+                    formal.high.get(formal.rows[at])
+                    if lane
+                    else formal.arcs[at - len(formal.rows)].high
+                )
+                if limit.name in paid and high != 0:
+                    raise NoBound("multiplier_wrong", "others take of this limit, too")
+        return worth, paid
+
+    def _caps(self, priority: int | None, proof: Value, scale: Fraction) -> dict[int, Fraction]:
+        """Return the prices of shortage of former priorities."""
+        caps: dict[int, Fraction] = {}
+        for entry in proof["caps"]:
+            former, price = entry["priority"], amount(entry["value"])
+            known = former in self.short and (priority is None or former < priority)
+            whole = all((price * per * scale).denominator == 1 for per in self.per)
+            if not known or former in caps or price < 0 or not whole:
+                raise NoBound("multiplier_wrong", "this price proves nothing")
+            caps[former] = price
+        return caps
+
+    def _costs(self, formal: Formal, priority: int | None, flow: int, scale: Fraction) -> list[int]:
+        """Return what a step minimises on each lane and arc of a flow."""
+        lanes, whole = [0] * len(formal.rows), True
+        others = [Fraction(0)] * len(formal.arcs)
+        if priority is None:
+            lanes, whole = scaled_lane_costs(formal, scale)
+            others = [arc.money * scale for arc in formal.arcs]
+        for at, arc in enumerate(formal.arcs):
+            if arc.rank and formal.priorities[arc.rank - 1] == priority:
+                others[at] = self.per[flow] * scale
+        if not whole or any(cost.denominator != 1 for cost in others):
+            raise NoBound("cost_scale_wrong", "a scaled cost is not whole")
+        return [*lanes, *(cost.numerator for cost in others)]
+
+    def _least(
+        self,
+        formal: Formal,
+        costs: list[int],
+        proof: Value,
+    ) -> int:
+        """Return what every flow of an item costs at least: each arc at the better limit."""
+        prices = [0] * len(formal.places)
+        seen = {ROOT}
+        for entry in proof["prices"]:
+            for node in entry["nodes"] if entry["item"] == formal.name else ():
+                site = formal.network.site_at.get(node["site"], -1)
+                at = formal.places.get((site, node["side"], node["qualifier"]))
+                if at is None or at in seen:
+                    raise NoBound("name_unknown", "a price of no place, or a second one")
+                seen.add(at)
+                prices[at] = int(node["price"])
+        lanes = (
+            (
+                formal.lane_tail[at],
+                formal.lane_head[at],
+                formal.low.get(row, 0),
+                formal.high.get(row),
+            )
+            for at, row in enumerate(formal.rows)
+        )
+        others = ((arc.tail, arc.head, arc.low, arc.high) for arc in formal.arcs)
+        total = 0
+        for cost, (tail, head, low, high) in zip(costs, itertools.chain(lanes, others)):  # noqa: B905 - Python 3.9
+            reduced = cost + prices[tail] - prices[head]
+            if reduced > 0:
+                total += reduced * low
+            elif reduced < 0 and high is not None:
+                total += reduced * high
+            elif reduced < 0:
+                raise NoBound("not_optimal", "an arc without limit gains without end")
+        return total
+
+
 def check_cut(formal: Formal, cut: dict[str, Any], place: str, report: Report) -> None:
     """Check that more must leave a set of places than can come into it."""
     inside = {ROOT} if cut["root"] else set()
@@ -2667,6 +3010,7 @@ class Audit:
         right = [rule.pop("applied") == (rule["id"] in applied) for rule in stated]
         for rule in stated:
             del rule["binding"]
+            rule.pop("one_more", None)
         if stated != expected or not all(right):
             self.report.add("rules_wrong", "not the rules of the network", "rules_in_force")
 
@@ -2687,9 +3031,13 @@ class Audit:
 
     def _check_cuts(self, rules: list[Rule]) -> None:
         """Check the proof that there is no plan."""
-        cuts = self.certificate["cuts"]
-        if not cuts:
+        cuts, circles = self.certificate["cuts"], self.certificate.get("contradictions", ())
+        if not cuts and not circles:
             self.report.add("cut_wrong", "there is no cut")
+        try:
+            self._check_contradictions(rules, circles)
+        except Unusable as error:
+            self.report.add("network_unusable", str(error))
         for number, cut in enumerate(cuts):
             item = self.network.item_at.get(cut["item"])
             if item is None:
@@ -2701,6 +3049,44 @@ class Audit:
                 self.report.add("network_unusable", str(error), cut["item"])
                 continue
             check_cut(formal, cut, f"cuts/{number}", self.report)
+
+    def _check_contradictions(self, rules: list[Rule], circles: Value) -> None:
+        """Check the proofs that limits which items share contradict each other.
+
+        Where nothing costs anything, a bound above 0 shows that no flow keeps all limits. Without a
+        proof a circle only states that no plan was found in whole steps.
+        """
+        alone = self.network.departs is not None or self.network.head.get("tariffs")
+        if alone and circles:
+            self.report.add("cut_wrong", "with dates or tariffs limits are of one item", "cuts")
+            return
+        shared = Shared(self.network, rules) if circles else None
+        for number, circle in enumerate(circles):
+            place = f"contradictions/{number}"
+            places = [self.network.item_at.get(item, -1) for item in circle["items"]]
+            if not places or places[0] < 0 or not rises(places):
+                self.report.add("name_unknown", "no circle of items", place)
+            elif circle["proof"] is not None and shared is not None:
+                empty: dict[int, int] = {}
+                flows = [
+                    Flow(Formal(self.network, self.options, rules, item), empty, {})
+                    for item in range(len(self.network.items))
+                ]
+                made = Circle(
+                    shared,
+                    [flows[item] for item in places],
+                    [flow for item, flow in enumerate(flows) if item not in places],
+                    [],
+                    self.options,
+                    Fraction(1),
+                )
+                try:
+                    if made.least_of_nothing(circle["proof"]) <= 0:
+                        detail = "the limits do not contradict each other"
+                        self.report.add("cut_wrong", detail, place)
+                except NoBound as flaw:
+                    self.report.add(flaw.args[0], flaw.args[1], place)
+                    self.report.add("cut_wrong", "no contradiction is shown", place)
 
     def _check_planned(self, rules: list[Rule]) -> None:
         """Check each item, and then what is said of all of them."""
@@ -2715,11 +3101,22 @@ class Audit:
         if scale <= 0:
             report.add("cost_scale_wrong", "not above 0", "cost_scale")
             return
+        if not self._read_circles():
+            return
         on_lanes = defaultdict(list)
         for line in lines:
             if line.row >= 0:
                 on_lanes[line.item].append(line)
-        for item, proof in enumerate(proofs):
+        self._read_flows(rules, on_lanes, scale)
+        if len(self.flows) == len(proofs):
+            Tables(self, lines, rules).check()
+
+    def _read_flows(
+        self, rules: list[Rule], on_lanes: dict[int, list[PlanLine]], scale: Fraction
+    ) -> None:
+        """Check each item; keep the flows that are stated."""
+        report = self.report
+        for item, proof in enumerate(self.certificate["items"]):
             try:
                 formal = Formal(self.network, self.options, rules, item)
             except Unusable as error:
@@ -2728,10 +3125,29 @@ class Audit:
             flow = read_flow(formal, on_lanes[item], proof, report)
             if flow is not None:
                 check_flow(flow, report)
-                check_prices(flow, proof, scale, report)
+                if proof["item"] not in self.together:
+                    check_prices(flow, proof, scale, report)
                 self.flows.append(flow)
-        if len(self.flows) == len(proofs):
-            Tables(self, lines, rules).check()
+
+    def _read_circles(self) -> bool:
+        """Find which items are proved together; return whether that is said soundly."""
+        self.together: set[str] = set()
+        alone = self.network.departs is not None or self.network.head.get("tariffs")
+        if alone and self.certificate.get("coupled"):
+            self.report.add(
+                "bound_wrong", "with dates or tariffs items are proved alone", "coupled"
+            )
+            return False
+        for circle in self.certificate.get("coupled", ()):
+            places = [self.network.item_at.get(item, -1) for item in circle["items"]]
+            if not places or places[0] < 0 or not rises(places):
+                self.report.add("name_unknown", "no circle of items", "coupled")
+                return False
+            if self.together.intersection(circle["items"]):
+                self.report.add("listed_twice", "an item is in two circles", "coupled")
+                return False
+            self.together.update(circle["items"])
+        return True
 
 
 class Tables:
@@ -2742,6 +3158,7 @@ class Tables:
         self.network, self.plan, self.report = audit.network, audit.plan, audit.report
         self.certificate, self.options = audit.certificate, audit.options
         self.flows, self.lines, self.rules = audit.flows, lines, rules
+        self.shared, self.together = Shared(audit.network, rules), audit.together
         # What sources of order lines use, in steps: by lane and item, or by site and item.
         self.used: dict[Key, int] = defaultdict(int)
         self.first: dict[Key, int] = defaultdict(int)
@@ -2757,8 +3174,16 @@ class Tables:
     def check(self) -> None:
         """Check all tables."""
         parts = self._money()
-        self._check_steps(parts)
-        self._check_site_limits()
+        try:
+            # With dates or tariffs each limit is of one item.
+            if self.network.departs is not None or self.network.head.get("tariffs"):
+                self._check_site_limits()
+            else:
+                self.shared.check(self.flows, self.report)
+            self._check_steps(parts)
+        except Unusable as error:
+            self.wrong("network_unusable", str(error), "rules")
+            return
         self._check_site_use()
         self._check_totals(parts)
         if not self._check_order_lines():
@@ -2817,6 +3242,8 @@ class Tables:
         total = Fraction(0)
         for flow, money in zip(self.flows, parts):  # noqa: B905 - Python 3.9
             formal = flow.formal
+            if formal.name in self.together:
+                continue
             short = dict.fromkeys(formal.priorities, 0)
             for arc, steps in zip(formal.arcs, flow.arcs):  # noqa: B905 - Python 3.9
                 if arc.rank:
@@ -2828,7 +3255,13 @@ class Tables:
                 expected.append((formal.name, "lateness", late * formal.step))
             expected.append((formal.name, "cost", sum(money.values(), Fraction(0))))
             total += expected[-1][2]
-        steps_ = self.certificate["steps"]
+        circles = self._circles(parts)
+        steps_ = self.certificate["steps"][: len(expected)]
+        rest = self.certificate["steps"][len(expected) :]
+        together = sum(len(circle.steps()) for circle in circles)
+        if len(rest) != together or any("items" in one for one in steps_):
+            self.wrong("bound_wrong", "not the steps of the plan", "steps")
+            return
         stated = [
             (one["item"], one.get("priority", one["of"]), amount(one["achieved"])) for one in steps_
         ]
@@ -2836,13 +3269,71 @@ class Tables:
             self.wrong("bound_wrong", "not what was achieved", "steps")
         if any(amount(one["achieved"]) != amount(one["bound"]) for one in steps_):
             self.wrong("bound_wrong", "a bound that is not achieved", "steps")
-        for value in (
-            self.certificate["total_cost"],
-            self.certificate["lower_bound"],
-            self.plan["certificate"]["lower_bound"],
+        cost, gap, proved = self._check_circles(circles, rest)
+        self._check_ends(total + cost, gap, proved)
+
+    def _check_ends(self, total: Fraction, gap: Fraction, proved: bool) -> None:  # noqa: FBT001 - as stated
+        """Check what both documents state at last."""
+        for value, right in (
+            (self.certificate["total_cost"], total),
+            (self.certificate["lower_bound"], total - gap),
+            (self.certificate["gap"], gap),
+            (self.plan["certificate"]["lower_bound"], total - gap),
+            (self.plan["certificate"]["gap"], gap),
         ):
-            if amount(value) != total:
-                self.wrong("bound_wrong", "not the cost of the plan", "lower_bound")
+            if amount(value) != right:
+                self.wrong("bound_wrong", "it does not follow from the steps", "lower_bound")
+        for document in (self.certificate, self.plan["certificate"]):
+            if document["lexicographic"] != ("proved" if proved else "best_found"):
+                self.wrong("bound_wrong", "it does not follow from the steps", "lexicographic")
+
+    def _circles(self, parts: list[dict[str, Fraction]]) -> list[Circle]:
+        """Return the circles of items that are proved together."""
+        found = []
+        for circle in self.certificate.get("coupled", ()):
+            inside = [flow.formal.name in circle["items"] for flow in self.flows]
+            made = Circle(
+                self.shared,
+                [flow for flow, own in zip(self.flows, inside) if own],  # noqa: B905 - Python 3.9
+                [flow for flow, own in zip(self.flows, inside) if not own],  # noqa: B905 - same
+                [money for money, own in zip(parts, inside) if own],  # noqa: B905 - same
+                self.options,
+                amount(self.certificate["cost_scale"]),
+            )
+            found.append(made)
+        return found
+
+    def _check_circles(
+        self, circles: list[Circle], stated: list[Value]
+    ) -> tuple[Fraction, Fraction, bool]:
+        """Check the steps of items that share limits; return cost, gap, and if all are proved."""
+        cost, gap, proved = Fraction(0), Fraction(0), True
+        for made, circle in zip(circles, self.certificate.get("coupled", ())):  # noqa: B905 - 3.9
+            steps, proofs = made.steps(), circle["proofs"]
+            place = "coupled/" + circle["items"][0]
+            own, stated = stated[: len(steps)], stated[len(steps) :]
+            cost += made.cost
+            if len(proofs) != len(steps):
+                self.wrong("bound_wrong", "not a proof for each step", place)
+                continue
+            for (priority, achieved), one, proof in zip(steps, own, proofs):  # noqa: B905 - same
+                says = (one.get("items"), one.get("priority"), one.get("measure"))
+                measure = None if priority is None else made.measure
+                if says != (made.names, priority, measure):
+                    self.wrong("bound_wrong", "not the step that belongs here", place)
+                    continue
+                if amount(one["achieved"]) != achieved:
+                    self.wrong("bound_wrong", "not what was achieved", place)
+                bound = amount(one["bound"])
+                try:
+                    if bound > made.bound(priority, proof):
+                        self.wrong("bound_wrong", "the proof gives less", place)
+                except NoBound as flaw:
+                    self.wrong(flaw.args[0], flaw.args[1], place)
+                proved = proved and bound == amount(one["achieved"])
+                if priority is None:
+                    gap += amount(one["achieved"]) - bound
+        return cost, gap, proved
 
     def _check_site_limits(self) -> None:
         """Check throughput limits over all items of a rule together."""

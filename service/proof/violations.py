@@ -39,6 +39,7 @@ CODES: Final[Mapping[str, str]] = {
     "weights_too_small": "the weights of shortage cannot prove the order of priorities",
     "price_missing": "a node has no price",
     "not_optimal": "flow and prices contradict that the plan is of least cost",
+    "multiplier_wrong": "a price of a limit that items share proves nothing",
     "bound_wrong": "a step or a bound of the certificate is not what follows from it",
     "cut_wrong": "a cut does not prove that there is no plan",
     # The documents.

@@ -19,7 +19,14 @@ MUTANTS = 1_000
 MUTANTS_LONG = 10_000
 
 # What random changes do not reach; tests/unit/proof has a case for each.
-RARE = {"cut_wrong", "digest_mismatch", "event_chain", "plan_head", "shortage_wrong"}
+RARE = {
+    "cut_wrong",
+    "multiplier_wrong",
+    "digest_mismatch",
+    "event_chain",
+    "plan_head",
+    "shortage_wrong",
+}
 
 
 def both_verdicts(data: bytes, folder: Path) -> tuple[str, AbstractSet[str]]:

@@ -58,6 +58,9 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "planned_at": Field(Kind.MOMENT, "what closed before it is left out; cut_off if empty"),
         "release_by": Field(Kind.MOMENT, "when the plan is needed"),
         "periods": Field(Kind.LIST, "the dates on which goods may leave, with | between"),
+        "shortage_measure": Field(
+            Kind.TEXT, "adds up shortages of items in different units that share a limit"
+        ),
         "extra": _EXTRA,
     },
     "items": {
@@ -138,7 +141,7 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "measure": Field(Kind.TEXT, "unit if empty; weight_kg, volume_m3, or a pack"),
         "must_ship": Field(Kind.NUMBER, "at least so much goes"),
         "capacity": Field(Kind.NUMBER, "at most so much goes; no limit if empty"),
-        "per": Field(Kind.TEXT, "item: the limits hold for each item by itself"),
+        "per": Field(Kind.TEXT, "item: the limits hold for each item by itself; together: for all"),
         "carrier": Field(Kind.TEXT, "who drives"),
         "currency": Field(Kind.TEXT, "of the unit cost, ISO 4217; the plan's if empty"),
         "charges": Field(
@@ -154,7 +157,9 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "extra": _EXTRA,
     },
     "rules": {
-        "rule": Field(Kind.TEXT, "closure, fixed_quantity or throughput", needed=True),
+        "rule": Field(
+            Kind.TEXT, "closure, fixed_quantity, throughput, shared_capacity", needed=True
+        ),
         "id": Field(Kind.TEXT, _ID, needed=True),
         "note": Field(Kind.TEXT, "why"),
         "owner": Field(Kind.TEXT, "whose rule it is"),
@@ -174,10 +179,10 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "items.ids": Field(Kind.LIST, "items by id, with | between"),
         "items.tag": Field(Kind.LIST, "items by tag"),
         "flow": Field(Kind.TEXT, "throughput: received, sent or through"),
-        "measure": Field(Kind.TEXT, "throughput: unit if empty"),
-        "maximum": Field(Kind.NUMBER, "throughput: at most so much"),
+        "measure": Field(Kind.TEXT, "throughput, shared_capacity: unit if empty"),
+        "maximum": Field(Kind.NUMBER, "throughput, shared_capacity: at most so much"),
         "quantity": Field(Kind.NUMBER, "fixed_quantity: exactly so much"),
-        "per": Field(Kind.TEXT, "throughput: each, where several sites are picked"),
+        "per": Field(Kind.TEXT, "each site or lane by itself, or all together"),
     },
     "exchange_rates": {
         "currency": Field(Kind.TEXT, "ISO 4217, such as NOK", needed=True),

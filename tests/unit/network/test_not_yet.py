@@ -20,7 +20,8 @@ from tests.network_samples import check, found, sound
 # The promised fields that are read, required ones first.
 FIELDS = {
     "network": "format currency cut_off items sites supply demand lanes "
-    "name planned_at release_by periods rules control exchange_rates tariffs extra",
+    "name planned_at release_by shortage_measure periods rules control exchange_rates "
+    "tariffs extra",
     "items": "id unit name step gtin weight_kg volume_m3 value packs tags extra",
     "sites": "id roles name gln latitude longitude time_zone country handling_cost tags extra",
     "supply": "site item quantity unit unit_cost on_hand reserved on_hold as_of lot best_before "
@@ -32,15 +33,15 @@ FIELDS = {
 }
 # Promised for later: dates, charges, commitments and what several items share.
 LATER_FIELDS = {
-    "network": "storage committed shortage_measure committed_deducted",
+    "network": "storage committed committed_deducted",
     "items": "divisible",
     "supply": "",
     "demand": "partial split",
     "lanes": "distance_km",
 }
-RULES = "closure fixed_quantity throughput"
+RULES = "closure fixed_quantity throughput shared_capacity"
 LATER_RULES = (
-    "transit_limit shared_capacity commitment source_share cost_limit emissions single_source "
+    "transit_limit commitment source_share cost_limit emissions single_source "
     "complete_or_none minimum_or_none fixed_charge vehicles shipping_multiple"
 )
 OPTIONS = {

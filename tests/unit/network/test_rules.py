@@ -202,12 +202,12 @@ LIMIT = {"rule": "throughput", "sites": {"ids": ["X"]}, "flow": "received", "max
         ([LIMIT], []),
         (
             [LIMIT | {"sites": {"ids": ["YARD-07"]}}],
-            [("/rules/0/flow", "not_yet"), ("/rules/0/items", "not_yet")],
+            [("/rules/0/measure", "units_differ"), ("/shortage_measure", "shortage_measure")],
         ),
         ([LIMIT | {"sites": {"ids": ["YARD-07"]}, "items": {"ids": ["ROAD-25"]}}], []),
         (
             [LIMIT | {"sites": {"ids": ["YARD-07"]}, "items": {"ids": ["BRINE"]}}],
-            [("/rules/0/flow", "not_yet")],
+            [],
         ),
         ([LIMIT | {"sites": {"role": ["warehouse"]}, "flow": "sent", "per": "each"}], []),
         (

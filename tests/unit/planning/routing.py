@@ -21,6 +21,7 @@ from service.planning.plan import Setting, planned
 from service.planning.priorities import achieved
 from service.planning.routes import Front, FullRoute, SiftedRoute
 from service.planning.scarcity_prices import FloatArray
+from service.planning.solution import Solution
 from service.planning.solve import ItemFlow, solve_item
 from tests.factories import Document, network_document, take_in
 
@@ -80,11 +81,12 @@ def documents(made: Compiled, flows: list[ItemFlow]) -> tuple[bytes, bytes]:
         warnings=(),
         set_aside=(),
     )
-    plan = planned(made, flows, setting)
+    solution = Solution(flows=tuple(flows), coupled=())
+    plan = planned(made, solution, setting)
     shortages = made.options.shortages == "allow"
     certificate = proved_certificate(
         made,
-        flows,
+        solution,
         [achieved(flow, shortages=shortages) for flow in flows],
         total_cost=plan.total_cost,
         network_digest=setting.network_digest,

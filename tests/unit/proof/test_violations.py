@@ -137,6 +137,8 @@ def test_codes_are_all_produced_by_some_test() -> None:
         "event_payload",
         # tests/unit/proof/test_cuts.py
         "cut_wrong",
+        # tests/unit/proof/test_coupled_bounds.py
+        "multiplier_wrong",
     }
 
     assert here | elsewhere == set(CODES)
