@@ -151,6 +151,13 @@ def test_a_sheet_in_characters_of_two_bytes_is_refused() -> None:
     assert refused(read(book, XLSX)) == (Status.UNREADABLE, "broken_workbook")
 
 
+def test_a_picture_is_no_sheet() -> None:
+    """Whatever bytes it has, those that begin a tag among them."""
+    book = with_part(workbook(), "xl/media/image1.png", b"\x89PNG\0\0<c <row \0" * 5_000)
+
+    assert read(book, XLSX).status == Status.ACCEPTED
+
+
 def test_cells_that_stand_where_the_one_before_lets_them_are_read() -> None:
     """Not all programs write where a cell stands."""
     with zipfile.ZipFile(io.BytesIO(workbook())) as archive:

@@ -57,8 +57,8 @@ def read_workbook(path: Path, allowance: Allowance, faults: FaultList) -> dict[s
         CalamineWorkbook,
     )
 
-    odd = look_through(path, allowance)
     parts = _parts(path)
+    odd = look_through(path, allowance, parts.values())
     grids: dict[str, Grid] = {}
     try:
         with CalamineWorkbook.from_path(path) as workbook:

@@ -8,7 +8,7 @@ how much text it comes to, and where such cells are.
 
 import re
 import zipfile
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from pathlib import Path
 from typing import Final
 
@@ -62,18 +62,27 @@ _HIDDEN_ADVICE: Final = (
 OddCells = Mapping[tuple[int, int], Odd]
 
 
-def look_through(path: Path, allowance: Allowance) -> Mapping[str, OddCells]:
+def look_through(
+    path: Path, allowance: Allowance, sheets: Collection[str]
+) -> Mapping[str, OddCells]:
     """Return the odd cells of every sheet by (row, column) from 0, by its part of the zip.
 
-    Raises ``HostileZipError`` and ``TooLargeError``.
+    ``sheets`` are the parts that the workbook names as sheets. Raises ``HostileZipError`` and
+    ``TooLargeError``.
     """
     with opened(path) as archive:
+        # The reader finds parts in any case, and may resolve a path as we do not.
+        last = {_last(name) for name in sheets}
         found: dict[str, OddCells] = {}
         shared: dict[str, int] = {}
         for name in archive.namelist():
             if name == _SHARED:
                 continue
-            # Any part may be a sheet, whatever it is called, and none may be a bomb.
+            if _last(name) not in last:
+                # Unpacked for nothing but to see that it is no bomb: the reader does not count.
+                for _ in pieces(archive, name, allowance):
+                    pass
+                continue
             look = _Look()
             for piece in _whole_cells(pieces(archive, name, allowance)):
                 look.at(piece)
@@ -98,13 +107,15 @@ class _Look:
 
     def at(self, piece: bytes) -> None:
         """Look at some whole cells."""
+        if b"\0" in piece:
+            # Text of two bytes a character, in which no pattern here finds anything.
+            raise HostileZipError("broken_workbook", _HIDDEN_ADVICE)
         places = piece.count(b'<c r="')
         usual = (
             places == piece.count(b"<c ")
             and places + piece.count(b'<row r="') == piece.count(b' r="') == piece.count(b" r=")
             and piece.count(b'<row r="') == piece.count(b"<row")
             and not any(mark in piece for mark in _UNUSUAL)
-            and b"\0" not in piece
         )
         if usual:
             self._reach(piece)
@@ -132,9 +143,6 @@ class _Look:
 
     def _reach_one_by_one(self, piece: bytes) -> None:
         """See how far cells reach of which some stand where the one before lets them."""
-        if b"\0" in piece and b"<" in piece:
-            # Text of two bytes a character, in which no pattern here finds anything.
-            raise HostileZipError("broken_workbook", _HIDDEN_ADVICE)
         for tag, attributes in _TAG.findall(piece):
             stated = [one or other for one, other in _PLACES.findall(attributes)]
             places = [_PLACE.fullmatch(place) for place in stated]
@@ -163,6 +171,11 @@ class _Look:
                 self.odd[place] = Odd("error_cell", _ERROR_ADVICE, shown)
             elif value is None and _FORMULA.search(content):
                 self.odd[place] = Odd("formula_without_value", _UNCOMPUTED_ADVICE)
+
+
+def _last(name: str) -> str:
+    """Return the last part of a path, in small letters."""
+    return name.rpartition("/")[2].lower()
 
 
 def _whole_cells(source: Iterator[bytes]) -> Iterator[bytes]:
