@@ -55,6 +55,7 @@ class Paths:
         self._document = document
         self._today = date.fromisoformat(document["cut_off"][:10])
         self._periods = {date.fromisoformat(day) for day in document.get("periods", ())}
+        self._stores = {row["site"] for row in document.get("storage", ())}
         self._docks = {site["id"] for site in document["sites"] if "cross_dock" in site["roles"]}
         self._made = datetime.fromisoformat(document.get("planned_at") or document["cut_off"])
 
@@ -79,10 +80,8 @@ class Paths:
                 yield Way(stock, legs, line, day)
         if here in self._docks:
             for number, lane in self._open_lanes(here):
-                fixed = lane.get("departs")
-                goes = fixed[:10] == day.isoformat() if fixed else self._may_leave(day)
-                if goes:
-                    yield from self._onward((*legs, self._leg(number, day)), stock)
+                for departs in self._onward_days(here, day, lane):
+                    yield from self._onward((*legs, self._leg(number, departs)), stock)
 
     def _from_stock(self, site: str, start: date) -> Iterator[Leg]:
         """Yield the legs that stock of a site can begin with: it waits for whatever leaves."""
@@ -94,9 +93,15 @@ class Paths:
                 if day >= start and ("departs" in lane or day >= self._today):
                     yield self._leg(number, day)
 
-    def _may_leave(self, day: date) -> bool:
-        """Return whether goods that reach a cross-dock on a day leave it without a departure."""
-        return not self._periods or (day in self._periods and day >= self._today)
+    def _onward_days(self, dock: str, day: date, lane: Row) -> list[date]:
+        """Return when goods that reach a cross-dock on a day may leave it over a lane.
+
+        Without storage on that day alone; with it (there must be periods then) on any later one.
+        """
+        days = {day} if not self._periods else {d for d in self._periods if d >= self._today}
+        if "departs" in lane:
+            days = {date.fromisoformat(lane["departs"][:10])}
+        return sorted(d for d in days if d == day or (d > day and dock in self._stores))
 
     def _open_lanes(self, site: str) -> Iterator[tuple[int, Row]]:
         """Yield the lanes from a site, without departures that closed before the plan is made."""

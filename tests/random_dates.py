@@ -32,6 +32,11 @@ def with_dates(document: Document, rng: Random) -> Document:
         _date_line(line, rng)
     if rng.random() < 0.3:
         dated["periods"] = sorted({day(rng.randint(-1, 4)) for _ in range(3)} | {day(0)})
+    docks = [site["id"] for site in dated["sites"] if "cross_dock" in site["roles"]]
+    if docks and rng.random() < 0.4:
+        dated["storage"] = [
+            {"site": site} for site in rng.sample(docks, rng.randint(1, len(docks)))
+        ]
     if rng.random() < 0.2:
         dated["planned_at"] = moment(0, 9)
     for site in dated["sites"]:
@@ -133,6 +138,15 @@ def small_network(rng: Random) -> Document:
         "lanes": lanes,
     }
     dated = with_dates(document, rng)
+    dated.pop("storage", None)
+    # Where the oracle knows when lanes leave, and nobody at the dock itself waits for goods.
+    places = [
+        {"site": site["id"]}
+        for site in sites
+        if site["roles"] == ["cross_dock"] and rng.random() < 0.6
+    ]
+    if places and "periods" in dated:
+        dated["storage"] = places
     for site in dated["sites"]:
         # The oracle reads dates as they are written.
         site.pop("time_zone", None)

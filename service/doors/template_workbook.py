@@ -28,7 +28,7 @@ _CREATED: Final = dt.datetime(1980, 1, 1)  # noqa: DTZ001 - the library wants it
 _INTRODUCTION: Final = """\
 Replace the example by your own rows. Each sheet is a table, its first row names the columns.
 A column may be left out where it is not needed, and so may the sheets packs, rules,
-exchange_rates, tariffs and control.
+exchange_rates, tariffs, storage and control.
 An empty cell says nothing. Keep columns of text formatted as text, or ids lose zeros in front.
 Numbers have at most 3 decimals (quantities) or 6 (money, rates, weights); thousands are not parted.
 This sheet is not read.

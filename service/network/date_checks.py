@@ -8,6 +8,8 @@ import numpy as np
 from service.network.assembly import Assembly
 from service.network.columns import IntArray
 from service.network.days import (
+    LAST_YEAR,
+    TRANSIT_DAYS_MAX,
     Movements,
     cut_off_day,
     days_of,
@@ -20,7 +22,6 @@ from service.network.days import (
 from service.network.faults import FaultList, pointer
 from service.network.not_yet import SHARED, refusal
 from service.network.rules import FixedQuantity, in_force, lanes_selected
-from service.network.table_fields import TRANSIT_DAYS_MAX
 from service.network.tables import ReadDemand, ReadLanes
 
 if TYPE_CHECKING:
@@ -77,6 +78,10 @@ def check_days(assembly: Assembly, faults: FaultList) -> None:
     """Find what the days of the whole network contradict, and what they make doubtful."""
     network = assembly.network
     if not is_dated(network):
+        return
+    stated = [str(network.head["cut_off"]), *network.head.get("periods", ())]  # type: ignore[misc] # texts
+    if any(text[:4] > LAST_YEAR for text in stated):
+        faults.add("/cut_off", "beyond_calendar", f"Nothing is planned after the year {LAST_YEAR}.")
         return
     if "periods" in network.head and not leaving_days(network.head):
         detail = "All periods lie before the date of the cut-off. Send the days that are planned."

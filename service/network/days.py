@@ -9,12 +9,18 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from datetime import date
 from functools import cached_property
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 
 from service.network.columns import BoolArray, IntArray, Network, Texts
 from service.network.moments import read_instant
+from service.network.storage import storing_sites
+
+# A year and a day: what travels longer is more likely a slip.
+TRANSIT_DAYS_MAX: Final = 366
+# What leaves later could arrive where the calendar has no days left.
+LAST_YEAR: Final = "2200"
 
 
 def is_dated(network: Network) -> bool:
@@ -56,6 +62,14 @@ def moments_of(column: Texts, *, absent: int) -> IntArray:
 def cut_off_day(head: Mapping[str, Any]) -> int:
     """Return the local date of the cut-off."""
     return day_number(str(head["cut_off"]))
+
+
+def first_day(head: Mapping[str, Any]) -> int:
+    """Return the first day on which anything can be served from stock.
+
+    That is the cut-off's, or that of ``planned_at`` where this is earlier.
+    """
+    return min(cut_off_day(head), day_number(str(head.get("planned_at", head["cut_off"]))))
 
 
 def leaving_days(head: Mapping[str, Any]) -> tuple[int, ...]:
@@ -129,7 +143,8 @@ def movements_of(network: Network) -> Movements:
 
     A lane with ``departs`` leaves on that day. Another lane leaves a site on the leaving days,
     and a cross-dock on the days on which goods arrive there (of the leaving days, if there are
-    periods); a cross-dock with stock, or at which nothing arrives, on the leaving days as well.
+    periods); a cross-dock with stock, or at which nothing arrives, on the leaving days as well, and
+    so does one with storage where there are periods.
     """
     lanes = network.lanes
     count = len(lanes)
@@ -166,6 +181,16 @@ def _with_arrivals(network: Network, rows: IntArray, departs: IntArray) -> Movem
     return Movements(row=rows, departs=departs, arrives=arrives, lanes=len(lanes))
 
 
+def _holding(network: Network) -> BoolArray:
+    """Return, in shape (sites,), where goods may wait for a leaving day."""
+    holding = np.zeros(len(network.sites), dtype=np.bool_)
+    holding[network.supply.site[network.supply.quantity.values > 0]] = True
+    if "periods" in network.head:
+        # What stays overnight leaves on the next of them.
+        holding |= storing_sites(network, None)
+    return holding
+
+
 def _docks(
     network: Network, departs: IntArray, leaving: tuple[int, ...]
 ) -> dict[int, tuple[int, ...]]:
@@ -179,8 +204,7 @@ def _docks(
     inner = np.flatnonzero(passes[lanes.destination])
     if not len(inner):
         return {}
-    stocked = np.zeros(len(network.sites), dtype=np.bool_)
-    stocked[network.supply.site[network.supply.quantity.values > 0]] = True
+    stocked = _holding(network)
     fixed = lanes.departs.codes[inner] >= 0
     origin, destination = lanes.origin[inner], lanes.destination[inner]
     transit = lanes.transit_days.values[inner]

@@ -78,6 +78,15 @@ class Part(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
 
 
+class StoragePart(Part):
+    """A cross-dock at which goods of one item, or of all, may stay overnight."""
+
+    site: Id = Field(description="A cross-dock.", examples=["HUB"])
+    item: OptionalId = Field(
+        default=None, description="Goods of this item; of all if absent.", examples=["0025"]
+    )
+
+
 class Head(Part):
     """What a network says of itself beside its tables."""
 
@@ -97,6 +106,10 @@ class Head(Part):
         examples=[["2026-02-03", "2026-02-04", "2026-02-05"]],
     )
     shortage_measure: OptionalId = None
+    storage: list[StoragePart] | None = Field(
+        default=None,
+        description="Where goods that arrive may stay overnight, free of charge; else nowhere.",
+    )
     extra: Extra = None
 
 

@@ -22,6 +22,7 @@ from service.network.columns import (
     SupplyTable,
     Texts,
 )
+from service.network.days import LAST_YEAR, TRANSIT_DAYS_MAX, is_dated
 from service.network.moments import read_date, read_instant
 from service.network.money import factors
 from service.network.naming import rows_with_ids
@@ -29,6 +30,7 @@ from service.network.normal_form import lane_order, rule_key, supply_order
 from service.network.normal_money import check_exchange_rates, check_money
 from service.network.normal_rules import check_rule
 from service.network.normal_tariffs import check_tariffs, check_tariffs_named
+from service.network.storage import is_storage
 from service.network.strict_json import StrictJsonError, strict_json
 from service.network.units import item_units
 
@@ -40,8 +42,8 @@ _PAIRS_MARKED_MAX = 2**22
 
 _HEAD_TEXTS = ("name", "currency", "cut_off", "planned_at", "release_by", "shortage_measure")
 _HEAD_FIELDS = frozenset(
-    {"format", "periods", "rules", "extra", "exchange_rates", "tariffs", "items", "sites", "tables"}
-    | {*_HEAD_TEXTS}
+    {"format", "periods", "storage", "rules", "extra", "exchange_rates", "tariffs"}
+    | {"items", "sites", "tables", *_HEAD_TEXTS}
 )
 _COLUMN_FIELDS = frozenset({"type", "exponent", "of", "nulls", "digest"})
 _CURRENCY = re.compile(r"[A-Z]{3}")
@@ -99,6 +101,16 @@ def check_rows(network: Network) -> None:
     """Raise ``NormalFormError`` unless rows are sorted, distinct and make sense one by one."""
     check_money(network)
     check_tariffs_named(network)
+    docks = {site.id for site in network.sites if "cross_dock" in site.roles}
+    known = {site.id for site in network.sites}, docks, {item.id for item in network.items}
+    if is_dated(network):
+        lanes = network.lanes
+        stated = [*lanes.closes.values, *lanes.departs.values, *lanes.arrives.values]
+        periods: Any = network.head.get("periods", ())
+        stated += [str(network.head["cut_off"]), *periods]
+        _check(all(text[:4] <= LAST_YEAR for text in stated), "a date beyond the calendar")
+    if "storage" in network.head:
+        _check(is_storage(network.head["storage"], *known), "storage is not normal")
     _check_supply(network.supply, network.items, factors(network.head))
     _check_demand(network)
     _check_lanes(network.lanes, network.items)
@@ -165,6 +177,7 @@ def _check_lanes(lanes: LaneTable, items: Sequence[Item]) -> None:
     _check(bool((lanes.must_ship.values[lanes.must_ship.present] > 0).all()), "a must-ship of 0")
     _check_not_negative(lanes.transit_days)
     _check(lanes.transit_days.exponent == 0, "a part of a day")
+    _check(int(lanes.transit_days.values.max(initial=0)) <= TRANSIT_DAYS_MAX, "too many days")
     for moments in (lanes.closes, lanes.departs, lanes.arrives):
         _check(all(_is_moment(text) for text in moments.values), "no point in time")
     lone = (lanes.departs.codes < 0) & ((lanes.closes.codes >= 0) | (lanes.arrives.codes >= 0))

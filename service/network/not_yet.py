@@ -17,7 +17,6 @@ EMISSIONS = "emissions"
 
 NOT_YET_FIELDS: Final[Mapping[str, Mapping[str, str]]] = {
     "network": {
-        "storage": DATES,
         "committed": COMMITTED,
         "committed_deducted": COMMITTED,
     },

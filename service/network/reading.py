@@ -29,6 +29,7 @@ from service.network.rule_reading import read_rules
 from service.network.sharing import Sharing
 from service.network.sheets import Sheet, refuse_field
 from service.network.stock_age import check_stock_age
+from service.network.storage_reading import read_storage
 from service.network.table_fields import LISTED_FIELDS, TABLE_FIELDS
 from service.network.table_forms import sheet_of
 from service.network.tables import ReadTables, read_demand, read_lanes, read_supply
@@ -89,7 +90,10 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
     set_aside = _refuse_or_set_aside(tables, options, faults)
     if head is not None:
         _doubt_head(head, faults)
-        assembly = assemble(_head_document(head, currencies, tariffs), things, tables, rules)
+        normal = _head_document(head, currencies, tariffs)
+        if head.storage:
+            normal["storage"] = read_storage(head.storage, things, faults)
+        assembly = assemble(normal, things, tables, rules)
         _check_together(assembly, head.cut_off, options, faults)
     else:
         assembly = None

@@ -5,6 +5,7 @@ from typing import Final
 
 from service.network import value_schemas as schemas
 from service.network.charge_reading import CHARGE_SCHEMA, CHARGES_MAX
+from service.network.days import TRANSIT_DAYS_MAX
 from service.network.scanned import FieldKind
 from service.network.value_schemas import Schema, decimal_schema
 
@@ -12,8 +13,6 @@ PRIORITY_MAX: Final = 9
 PRIORITY_DEFAULT: Final = 5
 
 _PRIORITY: Schema = {"type": "integer", "minimum": 1, "maximum": PRIORITY_MAX}
-# A year and a day: what travels longer is more likely a slip.
-TRANSIT_DAYS_MAX: Final = 366
 _DAYS: Schema = {
     "anyOf": [
         {"type": "integer", "minimum": 0, "maximum": TRANSIT_DAYS_MAX},

@@ -22,6 +22,7 @@ from service.network.columns import (
     SupplyTable,
 )
 from service.network.currency_reading import Currencies
+from service.network.days import LAST_YEAR
 from service.network.moments import read_date, read_instant
 from service.network.quantities import QUANTITY_DECIMALS_MAX, RATE_DECIMALS_MAX
 from service.network.sheets import Sheet, column_of_cells
@@ -35,7 +36,7 @@ from service.network.time_zones import at_sites
 from service.network.wording import ID_ADVICE, is_id
 
 # Instants of these years are nanoseconds in 64 bits, and have a date in every time zone.
-YEARS = (1971, 2200)
+YEARS = (1971, int(LAST_YEAR))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -53,6 +53,7 @@ class Kind(IntEnum):
     SHORT = 11  # root -> demand; subject: group
     KEEP_WANT = 12  # keep -> root; subject: kept row
     KEEP_SHORT = 13  # root -> keep; subject: kept row
+    STORE = 14  # a place -> that of the next day, from where lanes leave; subject: place
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

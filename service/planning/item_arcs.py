@@ -1,7 +1,7 @@
 """The arcs of one item: lanes, stock, what passes a site, who may serve whom, what is wanted."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any, NamedTuple
 
@@ -9,9 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.network.columns import CodeArray, IntArray, Network
-from service.network.days import Movements
+from service.network.days import Movements, first_day
 from service.network.options import Options
 from service.network.reach import LaneUse
+from service.network.storage import storing_sites
 from service.planning.arcs import ROOT, UNLIMITED, Arcs, Kind, largest
 from service.planning.bounds import LaneBounds, lane_bounds
 from service.planning.groups import IN_MONEY, Groups, groups_of
@@ -180,6 +181,11 @@ def item_arcs(  # noqa: PLR0913 - the tables of one item
     bounds = lane_bounds(network, item, use.rows(item), book, movements=movements)
     lanes = with_segments(bounds, network, item)
     stock, groups = stock_of(network, item), groups_of(network, item, options)
+    if movements is not None:
+        # A departure of yesterday makes no yesterday on which stock could serve.
+        own = np.isin(groups.site, stock.site)
+        first = np.maximum(groups.earliest, first_day(network.head))
+        groups = replace(groups, earliest=np.where(own, first, groups.earliest))
     layout = layout_of(
         network,
         item,
@@ -272,6 +278,7 @@ def _add_sites(arcs: ArcList, network: Network, item: int) -> None:
         sending,
         capacity=layout.limit["sent"][site_of[sending]],
     )
+    _add_storage(arcs, network, item)
     node, place, _ = layout.arrivals
     site = site_of[place]
     joined = np.flatnonzero(~layout.apart[site])
@@ -291,6 +298,18 @@ def _add_sites(arcs: ArcList, network: Network, item: int) -> None:
         capacity=np.where(layout.closed[site[passing]], 0, UNLIMITED),
         money=handling.at(np.searchsorted(places, place[passing])),
     )
+
+
+def _add_storage(arcs: ArcList, network: Network, item: int) -> None:
+    """Add that goods at a cross-dock wait for lanes of later days, where they may."""
+    layout, days = arcs.layout, arcs.layout.places
+    if days.day is None or "storage" not in network.head:
+        return
+    waits = storing_sites(network, item) & layout.passes_on
+    place = np.flatnonzero(waits[days.site[:-1]] & (days.site[:-1] == days.site[1:]))
+    # What is kept apart from stock passes to where lanes leave; else it waits before that.
+    at = np.where(layout.apart[days.site], layout.sent, layout.outside)
+    arcs.add(Kind.STORE, at[place], at[place + 1], place)
 
 
 def _add_wanting(arcs: ArcList, *, shortages: bool) -> None:

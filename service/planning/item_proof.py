@@ -77,6 +77,7 @@ def item_proof(network: Network, solved: ItemFlow) -> Document:
         "kept": tiers(solved.amounts(Kind.KEPT)),
         "serves": _serves(network, solved),
         "passes": _passes(network, solved),
+        **_stored(network, solved),
         "shortages": _shortages(network, solved),
         "prices": [name for _, name in prices],
     }
@@ -164,6 +165,26 @@ def _serves(network: Network, solved: ItemFlow) -> list[Document]:
             strict=True,
         )
     ]
+
+
+def _stored(network: Network, solved: ItemFlow) -> Document:
+    """Return what stays overnight, by site and the day before; nothing where nothing does."""
+    own, days = solved.own, solved.own.layout.places
+    amounts = solved.amounts(Kind.STORE)
+    if not amounts:
+        return {}
+    order = sorted(amounts)
+    quantities = texts([amounts[place] for place in order], network.items[own.item].step)
+    return {
+        "stored": [
+            {
+                "site": network.sites[days.site[place]].id,
+                "day": days.date_of(place),
+                "quantity": quantity,
+            }
+            for place, quantity in zip(order, quantities, strict=True)
+        ]
+    }
 
 
 def _on_day(own: ItemNetwork, place: int) -> Document:

@@ -19,6 +19,7 @@ MOVING = (
     Kind.PASS,
     Kind.SERVE,
     Kind.SERVE_ARRIVED,
+    Kind.STORE,
 )
 
 
@@ -106,6 +107,8 @@ class _Walker:
         rank = np.zeros(moving.shape[0], np.int64)
         # Names are distinct, so that their ranks sort as they do; nothing else has one.
         rank[lanes[sorted(range(len(names)), key=names.__getitem__)]] = np.arange(1, len(names) + 1)
+        # What leaves today does not wait for tomorrow.
+        rank[kind == Kind.STORE] = len(names) + 1
         serves = np.isin(kind, [Kind.SERVE, Kind.SERVE_ARRIVED])
         tail = own.arcs.tail[moving]
         order = np.lexsort((subject, rank, ~serves, tail))
@@ -142,10 +145,11 @@ class _Walker:
             self._take(way, amount, circling=False)
             legs = tuple(self._subject[arc] for arc in way if self._is_lane[arc])
             day = 0
-            if self._arrives is not None and legs:
-                day = int(self._arrives[legs[-1]])
-            elif self._day is not None:
+            if self._day is not None:
                 day = int(self._day[self._place[self._tail[way[-1]]]])
+            if self._arrives is not None and legs:
+                # A place is named by the first of its days; only storage makes it a later one.
+                day = max(day, int(self._arrives[legs[-1]]))
             return legs, self._subject[way[-1]], day, amount
 
     def lanes_left(self) -> dict[int, int]:

@@ -23,7 +23,7 @@ from service.proof.stock import Stock, stock_of
 from service.proof.usable import of_rows, usable_lanes
 
 Kind = Literal[
-    "supply", "draw", "keep", "enter", "handle", "leave", "serve", "pass", "want", "short"
+    "supply", "draw", "keep", "enter", "handle", "leave", "store", "serve", "pass", "want", "short"
 ]
 
 

@@ -177,6 +177,9 @@ def _dock_days(
     if not docks:
         return {}
     stocked = set(supply.site[supply.quantity.values > 0].tolist())
+    if periods is not None:
+        # Goods that may stay overnight leave on the next of them.
+        stocked |= storing(network, None)
     arrivals, onward = _first_arrivals(network, plain, docks, stocked)
     for _ in docks:
         fresh = [
@@ -196,6 +199,13 @@ def _dock_days(
             leaves.update(plain)
         result[dock] = sorted(leaves)
     return result
+
+
+def storing(network: Network, item: str | None) -> set[int]:
+    """Return the cross-docks at which goods of an item (None: of any) may stay overnight."""
+    rows: Any = network.head.get("storage", ())
+    named = {row["site"] for row in rows if item is None or row.get("item") in (None, item)}
+    return {place for place, site in enumerate(network.sites) if site.id in named}
 
 
 def _first_arrivals(

@@ -265,7 +265,10 @@ _ITEM_PROOF = record(
             )
         ),
     },
-    {"late_base": is_whole},
+    {
+        "late_base": is_whole,
+        "stored": list_of(record({"site": is_text, "day": is_text, "quantity": is_amount})),
+    },
 )
 _CUT = record(
     {

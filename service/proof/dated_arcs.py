@@ -4,7 +4,9 @@ What a site is made of stands here once for each of its places; what is drawn, k
 stands once. The lanes of the network are its movements (``calendar.py``).
 """
 
+import itertools
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from fractions import Fraction
 
 import numpy as np
@@ -12,8 +14,8 @@ import numpy as np
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
 from service.proof.arcs import NO_MONEY, Arc, ItemArcs, Kind, Node, as_columns, item_arcs
-from service.proof.calendar import Calendar, closed_departures, date_of, on_day
-from service.proof.groups import Group, Late, wanted_of
+from service.proof.calendar import Calendar, closed_departures, date_of, day_of, on_day, storing
+from service.proof.groups import Group, Late, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
 from service.proof.sides import UNLIMITED, SiteSides, site_sides
 from service.proof.site_days import DAYS, SiteDays, lateness
@@ -35,7 +37,8 @@ def dated_item_arcs(calendar: Calendar, options: Options, rulings: Rulings, item
     usable = usable_lanes(calendar.stated, item)
     rows = np.flatnonzero(np.isin(calendar.lane, usable))
     measures_on(network, item, rows)
-    stock, wanted = stock_of(network, item), wanted_of(network, options, item)
+    stock = stock_of(network, item)
+    wanted = _from_today(calendar, wanted_of(network, options, item), stock)
     sides = site_sides(
         network,
         rulings,
@@ -57,6 +60,9 @@ def dated_item_arcs(calendar: Calendar, options: Options, rulings: Rulings, item
         if site in stock:
             build.stock(site, stock[site])
             build.keep(site, stock[site], priorities=priorities, shortage=shortage)
+    for site in storing(network, network.items[item].id):
+        if site in sides:
+            build.storage(site, sides[site])
     for group in wanted.groups:
         build.group(group, sides[group.site], priorities=priorities, shortage=shortage)
     tail, head = build.lane_ends(rows, sides)
@@ -76,6 +82,17 @@ def dated_item_arcs(calendar: Calendar, options: Options, rulings: Rulings, item
         wanted=wanted,
         late=build.late,
     )
+
+
+def _from_today(calendar: Calendar, wanted: Wanted, stock: Mapping[int, Stock]) -> Wanted:
+    """Return what is wanted, served no earlier than plan and cut-off where there is stock."""
+    head = calendar.network.head
+    first = min(calendar.today, day_of(str(head.get("planned_at", head["cut_off"]))))
+    groups = tuple(
+        group._replace(earliest=max(group.earliest or 0, first)) if group.site in stock else group
+        for group in wanted.groups
+    )
+    return replace(wanted, groups=groups)
 
 
 def _limits(network: Network, rulings: Rulings, item: int, rows: IntArray) -> LaneLimits:
@@ -153,6 +170,13 @@ class _Build:
                         money=handling,
                         key=(site, self._id(origin), date_of(day)),
                     )
+
+    def storage(self, site: int, made: SiteSides) -> None:
+        """Let what is about to leave a cross-dock wait for its next day."""
+        side, days = "sent" if made.apart else "out", self.places.days[site]
+        for before, after in itertools.pairwise(days):
+            tail, head = self.node(site, side, before), self.node(site, side, after)
+            self.add("store", tail, head, key=(site, date_of(before)))
 
     def stock(self, site: int, held: Stock) -> None:
         """Add the tiers of a site's stock, each on the places from its first day on."""

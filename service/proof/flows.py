@@ -123,7 +123,9 @@ def _follow(
     for position, arc in enumerate(arcs.arcs):
         if arc.kind == "draw":
             inflow[arc.head] += flow[position]
-        elif arc.kind == "pass":
+        elif arc.kind in {"pass", "store"}:
+            # The node before a pass is a received one, of whose outflow nothing is asked.
+            outflow[arc.tail] += flow[position]
             outflow[arc.head] -= flow[position]
         elif arc.kind == "enter":
             flow[position] = inflow[arc.tail]
@@ -174,6 +176,7 @@ _TABLES: tuple[tuple[str, str, tuple[str, ...]], ...] = (
     ("kept", "keep", ("tier",)),
     ("serves", "serve", ("group", "from", "origin")),
     ("passes", "pass", ("origin",)),
+    ("stored", "store", ()),
     ("shortages", "short", ("group",)),
 )
 
@@ -189,7 +192,7 @@ def _stated(
     flows: dict[int, int] = {}
     sound = True
     for table, kind, fields in _TABLES:
-        entries = proof[table]
+        entries = proof.get(table, ())
         steps = numbers([entry["quantity"] for entry in entries]).in_steps(arcs.step)
         sites = [names.sites.get(entry["site"], -1) for entry in entries]
         named = [(*fields, "day") if "day" in entry else fields for entry in entries]

@@ -17,7 +17,7 @@ class OrderDates:
     def __init__(self, calendar: Calendar) -> None:
         """Read the dates of all order lines."""
         demand = calendar.network.demand
-        self._dated = calendar.dated
+        self.dated = calendar.dated
         self._columns: Mapping[str, Texts] = {name: getattr(demand, name) for name in _SHOWN}
         self._days = {
             name: [*map(day_of, column.values), 0] for name, column in self._columns.items()
@@ -33,7 +33,7 @@ class OrderDates:
 
         Something that is in no document, and so wrong, where a source misses its window.
         """
-        if not self._dated:
+        if not self.dated:
             return {}
         shown: dict[str, object] = {
             name: column.text(row)

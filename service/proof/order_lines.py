@@ -154,7 +154,7 @@ class _Ordered:
         self._sites = [site.id for site in network.sites]
         demand = network.demand
         # Most lines say nothing but where, what, how much and how urgently.
-        self._plain = not (demand.tags.values or demand.extra.values)
+        self._plain = not (dates.dated or demand.tags.values or demand.extra.values)
         codes = demand.order.codes.tolist()
         self._order = [None if code < 0 else demand.order.values[code] for code in codes]
 

@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from service.proof.calendar import Calendar, date_of
+from service.proof.calendar import Calendar, date_of, day_of, storing
 from service.proof.flows import PlanLine
 from service.proof.groups import OrderLine
 from service.proof.results import ItemResult, lane_ends
@@ -59,8 +59,9 @@ class Routes:
 def follows_by_days(calendar: Calendar, source: Mapping[str, Any], rows: Sequence[int]) -> bool:
     """Return whether the dates of a source are those of its movements ``rows``, one after another.
 
-    Goods leave a cross-dock on the day on which they reach it, and are there when they are drawn:
-    some stock of that lot is available on the first day.
+    Goods leave a cross-dock on the day on which they reach it, or later where they may stay
+    overnight, and are there when they are drawn: some stock of that lot is available on the first
+    day.
     """
     if not calendar.dated:
         shown = (
@@ -74,13 +75,26 @@ def follows_by_days(calendar: Calendar, source: Mapping[str, Any], rows: Sequenc
     assert calendar.departs is not None  # noqa: S101 - a dated network
     assert calendar.arrives is not None  # noqa: S101 - a dated network
     for before, after in itertools.pairwise(rows):
-        if calendar.arrives[before] != calendar.departs[after]:
+        site = int(calendar.network.lanes.origin[after])
+        if not _waits(calendar, source, site, calendar.arrives[before], calendar.departs[after]):
             return False
     arrives = source.get("arrives")
-    if rows and arrives != date_of(int(calendar.arrives[rows[-1]])):
-        return False
+    if rows:
+        site = int(calendar.network.lanes.destination[rows[-1]])
+        last = calendar.arrives[rows[-1]]
+        if not _waits(calendar, source, site, last, day_of(arrives or "")):
+            return False
     first = date_of(int(calendar.departs[rows[0]])) if rows else arrives
     return first is not None and _is_there(calendar, source, first)
+
+
+def _waits(
+    calendar: Calendar, source: Mapping[str, Any], site: int, since: int, until: int
+) -> bool:
+    """Return whether goods of a source may be at a site from a day to another."""
+    if since == until:
+        return True
+    return bool(since < until) and site in storing(calendar.network, source["item"])
 
 
 def _is_there(calendar: Calendar, source: Mapping[str, Any], date: str) -> bool:

@@ -404,6 +404,22 @@ def is_date(text: str) -> bool:
     return re.fullmatch("[0-9]{4}-[0-9]{2}-[0-9]{2}", text) is not None
 
 
+def read_storage(head: dict[str, Any]) -> None:
+    """Check the rows that say where goods may stay overnight."""
+    rows = head["storage"]
+    need(isinstance(rows, list) and rows, "no storage")
+    docks = {site["id"] for site in head["sites"] if "cross_dock" in site["roles"]}
+    items = {item["id"] for item in head["items"]}
+    keys_ = []
+    for row in rows:
+        need(isinstance(row, dict) and {"site"} <= set(row) <= {"site", "item"}, "no storage")
+        need(isinstance(row["site"], str) and row["site"] in docks, "storage at no cross-dock")
+        item = row.get("item")
+        need("item" not in row or (isinstance(item, str) and item in items), "storage of no item")
+        keys_.append((row["site"].encode(), (item or "").encode()))
+    need(rises(keys_), "storage is not sorted")
+
+
 def read_exchange_rates(head: dict[str, Any]) -> dict[str | None, Fraction]:
     """Return what one unit of each currency is in the plan's, which is called None here."""
     rates = head.get("exchange_rates", ())
@@ -641,7 +657,7 @@ def read_head(data: bytes) -> dict[str, Any]:
     need(isinstance(head, dict), "the head is not an object")
     texts = {"name", "currency", "cut_off", "planned_at", "release_by"}
     texts.add("shortage_measure")
-    fields = {"format", "periods", "rules", "extra", "exchange_rates"}
+    fields = {"format", "periods", "storage", "rules", "extra", "exchange_rates"}
     fields |= {"tariffs", "items", "sites", "tables"}
     need(set(head) <= fields | texts, "other fields in the head")
     need(is_whole(head.get("format")) and head["format"] == 1, "another format")
@@ -666,6 +682,8 @@ def read_head(data: bytes) -> dict[str, Any]:
         read_site(site, {item["id"] for item in head["items"]})
     for things in (head["items"], head["sites"]):
         need(rises([thing["id"].encode() for thing in things]), "ids are not sorted")
+    if "storage" in head:
+        read_storage(head)
     need(isinstance(head.get("tables"), dict) and set(head["tables"]) == set(COLUMNS), "no tables")
     return head
 
@@ -906,6 +924,9 @@ class Network:
         )
         if not self.dated:
             return
+        stated = [self.head["cut_off"], *self.head.get("periods", ())]
+        stated += [text for name in ("closes", "departs", "arrives") for text in lanes[name].values]
+        need(all(text[:4] <= "2200" for text in stated), "a date beyond the calendar")
         leaving = self._leaving_days()
         self.lane_of, self.departs, self.arrives = [], array("q"), array("q")
         for row in range(lanes["rows"]):
@@ -943,6 +964,9 @@ class Network:
             for site, quantity in zip(self.supply["site"], self.supply["quantity"].numbers)  # noqa: B905 - Python 3.9
             if quantity > 0
         }
+        if periods is not None:
+            # What stays overnight leaves on the next of them.
+            stocked |= {site for site in range(len(self.sites)) if self.stores(site, None)}
         came: dict[int, set[int]] = defaultdict(set)
         onward = set()
         for row in range(lanes["rows"]):
@@ -980,6 +1004,15 @@ class Network:
             return sorted(days)
 
         return leaving
+
+    def stores(self, site: int, item: int | None) -> bool:
+        """Return whether goods of an item (None: of any) may stay overnight at a site."""
+        name = None if item is None else self.items[item]["id"]
+        return any(
+            row["site"] == self.sites[site]["id"]
+            and (name is None or row.get("item", name) == name)
+            for row in self.head.get("storage", ())
+        )
 
     def movement(self, name: str, departs: str | None) -> int:
         """Return the row of a lane on a date of departure (None: without dates), -1 if none."""
@@ -1174,6 +1207,7 @@ class Network:
         need(not_below_0(lanes["capacity"]), "a capacity below 0")
         need(not_below_0(lanes["transit_days"]), "days below 0")
         need(lanes["transit_days"].power == 1, "a part of a day")
+        need(max(lanes["transit_days"].numbers, default=0) <= 366, "too many days")
         for column in ("closes", "departs", "arrives"):
             for text in lanes[column].values:
                 instant(text)
@@ -1536,6 +1570,7 @@ CERTIFICATE = {
         {
             "item": "text",
             **keys("base ?late_base", "whole"),
+            "?stored": [{**keys("site day", "text"), "quantity": "amount"}],
             "draws": [TIER_FLOW],
             "kept": [TIER_FLOW],
             "serves": [
@@ -1881,6 +1916,12 @@ class Formal:
         self.stock = self._stock()
         self.lines = self._lines()
         self.groups = self._groups()
+        if network.dated:
+            # Stock serves on no day before plan and cut-off.
+            plan_day = day_number(network.head.get("planned_at", network.head["cut_off"]))
+            for group in self.groups.values():
+                if group.site in self.stock:
+                    group.earliest = max(group.earliest or 0, min(plan_day, network.today))
         self.places: dict[Key, int] = {(-1, "root", None): ROOT}
         self.arcs: list[Arc] = []
         self.priorities = sorted(
@@ -2109,6 +2150,7 @@ class Formal:
         self._find_days(at_site)
         self.leave: dict[Key, int] = {}
         self.enter: dict[Key, int] = {}
+        self.apart: dict[int, bool] = {}
         for site in sorted(relevant):
             for day in self.days[site]:
                 self._build_site(site, day, at_site[site])
@@ -2117,6 +2159,7 @@ class Formal:
                 self._want(node, group.wanted, (site, label), group.priority, group.money)
             if site in self.stock:
                 self._build_stock(site, self.stock[site])
+            self._build_storage(site)
         self.lane_tail = array("i", [self._start(row) for row in self.rows])
         self.lane_head = array("i", [self._end(row) for row in self.rows])
 
@@ -2192,7 +2235,7 @@ class Formal:
         on = () if day is None else (day_text(day),)
         choosy = any(group.origins >= 0 for _, group in groups)
         mixed = not passing and arrivals and (site in self.stock or site in self.starts)
-        apart = bool(choosy or mixed)
+        apart = self.apart[site] = bool(choosy or mixed)
         if apart:
             # No one arc carries all of it: several lanes share the limit.
             limit = {flow: most for flow, most in limit.items() if flow == "sent" and not passing}
@@ -2235,6 +2278,16 @@ class Formal:
                     key = (site, label, "received", name, *on)
                     self.arc("serve", at, node, key, handling, shut)
                     self._mark_late(group, late)
+
+    def _build_storage(self, site: int) -> None:
+        """Let what is about to leave a cross-dock wait for its next day."""
+        if not self.network.dated or not self.network.stores(site, self.item):
+            return
+        days = self.days[site]
+        side = "sent" if self.apart[site] else "out"
+        for before, after in zip(days, days[1:]):  # noqa: B905, RUF007 - Python 3.9
+            tail, head = (self.place(site, side, None, day) for day in (before, after))
+            self.arc("store", tail, head, (site, day_text(before or 0)))
 
     def _arriving(self, site: int, day: int | None) -> set[int]:
         """Return the sites from which something arrives at a place of a site."""
@@ -2340,6 +2393,9 @@ class Flow:
                 came[arc.head] += self.arcs[at]
             elif arc.kind == "pass":
                 went[arc.head] -= self.arcs[at]
+            elif arc.kind == "store":
+                went[arc.tail] += self.arcs[at]
+                went[arc.head] -= self.arcs[at]
         for at, arc in enumerate(formal.arcs):
             if arc.kind == "enter":
                 self.arcs[at] = came[arc.tail]
@@ -2396,10 +2452,11 @@ def read_flow(
         ("kept", "keep", ("tier",)),
         ("serves", "serve", ("group", "from", "origin")),
         ("passes", "pass", ("origin",)),
+        ("stored", "store", ()),
         ("shortages", "short", ("group",)),
     )
     for table, kind, fields in tables:
-        for number, entry in enumerate(proof[table]):
+        for number, entry in enumerate(proof.get(table, ())):
             place = f"items/{formal.name}/{table}/{number}"
             site = formal.network.site_at.get(entry["site"], -1)
             key = (kind, site, *(entry[field] for field in fields))
@@ -3518,12 +3575,21 @@ class Tables:
             return False
         if not network.dated:
             return True
+        if not is_date(source.get("arrives", "")):
+            return False
         arrives, departs = network.arrives, network.departs
         turns = zip(rows, rows[1:])  # noqa: B905, RUF007 - Python 3.9
-        if any(arrives[before] != departs[after] for before, after in turns):
-            return False
-        if rows and source["arrives"] != day_text(arrives[rows[-1]]):
-            return False
+        stays = [
+            (network.lanes["origin"][after], arrives[before], departs[after])
+            for before, after in turns
+        ]
+        if rows:
+            end = network.lanes["destination"][rows[-1]]
+            stays.append((end, arrives[rows[-1]], day_number(source["arrives"])))
+        item = network.item_at[source["item"]]
+        for site, since, until in stays:
+            if since != until and (since > until or not network.stores(site, item)):
+                return False
         first = day_text(departs[rows[0]]) if rows else source["arrives"]
         return any(
             (supply["available_from"][row] or "") <= first

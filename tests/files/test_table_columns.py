@@ -10,6 +10,7 @@ from service.network.definition import (
     LanePick,
     PackPart,
     SitePart,
+    StoragePart,
 )
 
 from service.network.definition import ItemPick, SitePick  # isort: skip
@@ -40,7 +41,8 @@ def test_the_small_tables_have_a_column_for_each_field() -> None:
     picks = {"lanes": LanePick, "sites": SitePick, "items": ItemPick}
     rules = set().union(*map(names, RULE_PARTS.values()))
 
-    assert set(TABLES["network"]) == names(Head)
+    assert set(TABLES["network"]) == names(Head) - {"storage"}
+    assert set(TABLES["storage"]) == names(StoragePart)
     assert set(TABLES["items"]) == names(ItemPart) - {"packs"}
     assert set(TABLES["packs"]) == names(PackPart) | {"item"}
     assert set(TABLES["sites"]) == names(SitePart)
@@ -62,6 +64,7 @@ def test_what_is_needed_is_what_the_check_asks_for(table: str) -> None:
         "sites": SitePart,
         "exchange_rates": ExchangeRatePart,
         "tariffs": TariffPart,
+        "storage": StoragePart,
     }
     if table in parts:
         fields = parts[table].model_fields  # type: ignore[attr-defined] # a model

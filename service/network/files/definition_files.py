@@ -27,17 +27,8 @@ from service.network.table_fields import FLAT_FIELDS
 
 _BIG: Final = ("supply", "demand", "lanes")
 _ORDER: Final = (
-    *(
-        "items",
-        "sites",
-        "supply",
-        "demand",
-        "lanes",
-        "rules",
-        "exchange_rates",
-        "tariffs",
-        "control",
-    ),
+    *("items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates", "tariffs"),
+    *("storage", "control"),
 )
 
 

@@ -35,6 +35,7 @@ def flat_tables(document: Mapping[str, Any]) -> dict[str, FlatTable]:
         "rules": document.get("rules") or (),
         "exchange_rates": document.get("exchange_rates") or (),
         "tariffs": document.get("tariffs") or (),
+        "storage": document.get("storage") or (),
         "control": [document["control"]] if document.get("control") else (),
     }
     rows |= {name: document[name] for name in ("sites", "supply", "demand", "lanes")}

@@ -101,6 +101,7 @@ def swapped(number: str) -> str:
 _SWAP = str.maketrans(",.", ".,")
 _LISTS = frozenset(
     {"items", "sites", "supply", "demand", "lanes", "rules", "exchange_rates", "tariffs"}
+    | {"storage"}
 )
 
 

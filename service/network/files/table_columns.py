@@ -215,6 +215,10 @@ TABLES: Final[Mapping[str, Mapping[str, Field]]] = {
         "round_up_to": Field(Kind.NUMBER, "what is charged is a multiple of this"),
         "round_money": Field(Kind.NUMBER, "the freight is rounded to a multiple of this"),
     },
+    "storage": {
+        "site": Field(Kind.TEXT, "a cross-dock where goods may stay overnight", needed=True),
+        "item": Field(Kind.TEXT, "goods of this item; of all if empty"),
+    },
     "control": {
         "demand_rows": Field(Kind.WHOLE, "how many order lines there must be"),
         "demand_quantity": Field(Kind.NUMBER, "the sum of their quantities as written"),

@@ -3,12 +3,14 @@
 from pathlib import Path
 from typing import Any
 
+import pytest
+
 from service.network.canonical import read_network
 from service.network.columns import Network
 from service.network.days import day_text, movements_of
 from service.network.naming import lane_names
 from tests.factories import Document, network_document
-from tests.network_samples import check, doubted
+from tests.network_samples import check, doubted, found
 from tests.random_dates import day, moment
 
 
@@ -162,3 +164,31 @@ def test_what_dates_make_doubtful_is_said(tmp_path: Path) -> None:
     assert {"departure_closed", "due_overdue", "supply_too_late"} <= set(doubts)
     assert doubts["due_overdue"]["examples"] == [{"pointer": "/demand/0/due", "value": day(-2)}]
     assert doubts["supply_too_late"]["examples"][0]["pointer"] == "/supply/1/available_from"
+
+
+@pytest.mark.parametrize(
+    ("rows", "place", "code"),
+    [
+        ([{"site": "SHOP"}], "/storage/0/site", "role_missing"),
+        ([{"site": "NOWHERE"}], "/storage/0/site", "unknown_site"),
+        ([{"site": "DOCK-1", "item": "X"}], "/storage/0/item", "unknown_item"),
+        ([{"site": "DOCK-1"}, {"site": "DOCK-1"}], "/storage/1", "duplicate_value"),
+        ([{"site": "DOCK-1", "capacity": "1"}], "/storage/0/capacity", "unknown_field"),
+    ],
+)
+def test_storage_that_makes_no_sense_is_refused(
+    rows: list[Document], place: str, code: str, tmp_path: Path
+) -> None:
+    """Goods that arrive wait at cross-docks alone; a limit on them is not to be had yet."""
+    report = check(document(lane("STORE>DOCK-1"), storage=rows), tmp_path)
+
+    assert found(report) == [(place, code)]
+
+
+def test_rows_of_storage_have_one_order(tmp_path: Path) -> None:
+    """By site and item."""
+    rows = [{"site": "DOCK-2"}, {"site": "DOCK-1", "item": "GOODS"}, {"site": "DOCK-1"}]
+
+    network = read(document(lane("STORE>DOCK-1"), storage=rows), tmp_path)
+
+    assert network.head["storage"] == [rows[2], rows[1], rows[0]]

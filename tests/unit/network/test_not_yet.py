@@ -20,7 +20,7 @@ from tests.network_samples import check, found, sound
 # The promised fields that are read, required ones first.
 FIELDS = {
     "network": "format currency cut_off items sites supply demand lanes "
-    "name planned_at release_by shortage_measure periods rules control exchange_rates "
+    "name planned_at release_by shortage_measure periods storage rules control exchange_rates "
     "tariffs extra",
     "items": "id unit name step gtin weight_kg volume_m3 value packs tags extra",
     "sites": "id roles name gln latitude longitude time_zone country handling_cost tags extra",
@@ -33,7 +33,7 @@ FIELDS = {
 }
 # Promised for later: dates, charges, commitments and what several items share.
 LATER_FIELDS = {
-    "network": "storage committed committed_deducted",
+    "network": "committed committed_deducted",
     "items": "divisible",
     "supply": "",
     "demand": "partial split",

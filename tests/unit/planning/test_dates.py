@@ -157,6 +157,60 @@ def test_periods_let_stock_leave_on_several_days() -> None:
     ]
 
 
+def test_a_departure_of_yesterday_makes_no_yesterday() -> None:
+    """Stock at the shop itself serves today at the earliest, and so comes a day late."""
+    document = network(
+        lane("SHOP", "DOCK", 1, departs=moment(-1, 9)),
+        sites=[STORE, DOCK, {"id": "SHOP", "roles": ["ship_to", "warehouse"]}],
+        supply=[{"site": "SHOP", "item": "GOODS", "quantity": "10"}],
+        demand=[line(due=day(-1))],
+    )
+
+    planned = plan_network(document)
+
+    assert planned.plan["order_lines"][0]["days_late"] == 1
+    assert planned.plan["order_lines"][0]["sources"][0]["arrives"] == day(0)
+
+
+def test_goods_stay_overnight_only_where_storage_allows() -> None:
+    """They reach the dock a day before the only lorry; with a bed for the night all of them go."""
+    document = network(
+        lane("STORE", "DOCK", 1, transit_days=1),
+        lane("DOCK", "SHOP", 1, departs=moment(2, 8), arrives=moment(2, 12)),
+    )
+
+    (short,) = plan_network(document).plan["shortages"]
+    planned = plan_network(document | {"storage": [{"site": "DOCK"}]})
+
+    assert (short["quantity"], short["reason"]) == ("10", "too_late")
+    assert planned.plan["shortages"] == []
+    assert planned.certificate["items"][0]["stored"] == [
+        {"site": "DOCK", "day": day(1), "quantity": "10"}
+    ]
+    legs = planned.plan["order_lines"][0]["sources"][0]["legs"]
+    assert [(leg["departs"], leg["arrives"]) for leg in legs] == [
+        (day(0), day(1)),
+        (day(2), day(2)),
+    ]
+
+
+def test_storage_smooths_a_lane_that_carries_little_a_day() -> None:
+    """10 arrive at once and 4 a day can go on: 4, 4 and 2 on three days."""
+    document = network(
+        lane("STORE", "DOCK", 1, transit_days=0),
+        lane("DOCK", "SHOP", 1, capacity="4"),
+        periods=[day(0), day(1), day(2)],
+        storage=[{"site": "DOCK", "item": "GOODS"}],
+        demand=[line(earliest=day(0), due=day(0))],
+    )
+
+    assert [row[1:] for row in shown(document) if row[0] == "DOCK-SHOP-1"] == [
+        (day(0), day(0), "4"),
+        (day(1), day(1), "4"),
+        (day(2), day(2), "2"),
+    ]
+
+
 def test_a_departure_that_closed_is_left_out_with_a_warning() -> None:
     """It closed at nine and the plan is made at ten; a closing time counts, not the departure."""
     document = network(
