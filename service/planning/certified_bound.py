@@ -104,6 +104,13 @@ def certified_bound(  # noqa: PLR0913 - a program in parts
     )
 
 
+def least_cost_alone(own: ItemNetwork, cost: MoneyArray) -> IntArray:
+    """Return a flow of least ``cost`` of one item by itself."""
+    whole = contract(own.arcs, nodes=own.node_count, lanes=own.lanes.rows.shape[0])
+    optimum = chosen_route(own, whole, cost).optimum()
+    return whole.flow(optimum.flow, at=optimum.at)
+
+
 def least_cost(own: ItemNetwork, cost: MoneyArray) -> tuple[IntArray, MoneyArray]:
     """Return a flow of least ``cost`` of one item by itself, and node prices that prove it."""
     whole = contract(own.arcs, nodes=own.node_count, lanes=own.lanes.rows.shape[0])

@@ -10,7 +10,7 @@ import numpy as np
 
 from service.network.columns import BoolArray, IntArray, Network
 from service.planning.arcs import MoneyArray, product_total
-from service.planning.certified_bound import CertifiedBound, certified_bound
+from service.planning.certified_bound import CertifiedBound, certified_bound, least_cost
 from service.planning.coupled_contradiction import (
     Contradiction,
     ContradictionError,
@@ -27,6 +27,8 @@ from service.planning.item_by_item import plan_item_by_item
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoFlowError, SolverFaultError
 from service.planning.linear_program import Relaxed, Rows, relaxed_optimum
+from service.planning.priced_columns import COLUMNS_MIN, near_columns, priced_optimum
+from service.planning.prices import reduced_cost
 from service.planning.shared_limits import NO_LEAST, NO_MOST, SharedLimits
 from service.planning.whole_steps import Task, whole_plan
 
@@ -195,7 +197,9 @@ class _Ladder:
         caps = [cap or NO_MOST for cap in self._caps]
         lower = np.concatenate((program.limits.lower, np.full(self._levels, NO_LEAST)))
         upper = np.concatenate((program.limits.upper, np.array(caps, np.int64)))
-        relaxed = self._relaxed(costs, capacity, lower, upper)
+        relaxed = self._priced(objective, costs, capacity, closed, lower=lower, upper=upper)
+        if relaxed is None:
+            relaxed = self._relaxed(costs, capacity, lower, upper)
         bound = self._bound(objective, relaxed, closed, lower=lower, upper=upper)
         task = Task(
             objective=costs,
@@ -204,7 +208,10 @@ class _Ladder:
             upper=upper,
             bound=bound.rounded_up(),
         )
-        flows = plan_item_by_item(program, relaxed.value, closed=closed)
+        near = near_columns(program, relaxed)
+        flows = plan_item_by_item(program, relaxed.value, closed=closed, near=near)
+        if flows is None and near is not None:
+            flows = plan_item_by_item(program, relaxed.value, closed=closed)
         found = None if flows is None else program.on_columns(flows)
         plan = whole_plan(program, task, relaxed, known=(self._plan, found))
         if plan is None:
@@ -219,6 +226,39 @@ class _Ladder:
             if trivial
             else replace(bound, multiplier=bound.multiplier[: len(program.limits)]),
             caps=() if trivial else self._cap_prices(objective, bound, closed),
+        )
+
+    def _priced(  # noqa: PLR0913 - a step of a program in parts
+        self,
+        objective: Sequence[MoneyArray],
+        costs: MoneyArray,
+        capacity: IntArray,
+        closed: BoolArray,
+        *,
+        lower: IntArray,
+        upper: IntArray,
+    ) -> Relaxed | None:
+        """Return an optimum of the relaxation of a wide program, None where it is not wide."""
+        program = self._program
+        if costs.shape[0] < COLUMNS_MIN:
+            return None
+        flows, reduced = [], []
+        try:
+            for own, cost in zip(program.items, objective, strict=True):
+                alone = shut(own, closed, program.priorities)
+                flow, price = least_cost(alone, cost)
+                flows.append(flow)
+                reduced.append(reduced_cost(alone.arcs.with_cost(cost), price))
+        except (NoFlowError, SolverFaultError):
+            return None
+        return priced_optimum(
+            program,
+            costs,
+            capacity,
+            lower=lower,
+            upper=upper,
+            alone=program.on_columns(flows),
+            reduced=program.on_columns(reduced).astype(np.float64),
         )
 
     def _relaxed(

@@ -12,7 +12,7 @@ import numpy as np
 
 from service.network.columns import BoolArray, IntArray
 from service.planning.arcs import SAFE, UNLIMITED
-from service.planning.certified_bound import least_cost
+from service.planning.certified_bound import least_cost_alone
 from service.planning.coupled_program import CoupledProgram, shut
 from service.planning.item_network import ItemNetwork
 from service.planning.limits import NoFlowError
@@ -20,15 +20,16 @@ from service.planning.linear_program import FloatArray
 from service.planning.shared_limits import NO_LEAST, NO_MOST, SharedLimits, arc_of_site
 
 # The first round starts from the shares of the relaxation, the others from whole plans.
-ROUNDS: Final = 3
+ROUNDS: Final = 2
 
 
 def plan_item_by_item(
-    program: CoupledProgram, shares: FloatArray, *, closed: BoolArray
+    program: CoupledProgram, shares: FloatArray, *, closed: BoolArray, near: BoolArray | None = None
 ) -> list[IntArray] | None:
     """Return flows of all items that keep the limits which single arcs stand for, if found.
 
     ``shares`` is the relaxation by column; ``closed`` are the priorities that must not be short.
+    Only columns that are ``near`` carry anything (None: all may).
     """
     limits = program.limits
     flows = program.shares(shares)
@@ -42,16 +43,27 @@ def plan_item_by_item(
                 if other != at:
                     others += taken[other]
             own = shut(program.items[at], closed, program.priorities)
+            own = own if near is None else _only(own, program, at, near)
             left = _within(own, limits, at, others)
             if left is None:
                 return None
             try:
-                flow, _ = least_cost(left, left.weighted())
+                flow = least_cost_alone(left, left.weighted())
             except NoFlowError:
                 return None
             whole[at] = flow
             taken[at] = (limits.of_item[at] @ flow).astype(np.float64)
     return whole
+
+
+def _only(own: ItemNetwork, program: CoupledProgram, at: int, near: BoolArray) -> ItemNetwork:
+    """Return an item that uses only near columns, and what must carry something."""
+    kept = program.contractions[at].kept
+    far = kept[~near[program.first[at] : program.first[at + 1]]]
+    far = far[own.arcs.minimum[far] == 0]
+    capacity = own.arcs.capacity.copy()
+    capacity[far] = 0
+    return replace(own, arcs=replace(own.arcs, capacity=capacity))
 
 
 def _weight(limits: SharedLimits, at: int) -> int:
