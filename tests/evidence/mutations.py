@@ -5,7 +5,9 @@ at, the digests that would give it away are put right, as a forger would do.
 """
 
 import json
+import re
 from collections.abc import Callable
+from datetime import date, timedelta
 from random import Random
 from typing import Any
 
@@ -124,14 +126,17 @@ change_history = _document_change("history.json")
 
 
 def change_numbers(entries: Entries, rng: Random) -> bytes:
-    """Add something small to one number of plan or certificate, keeping it a number."""
+    """Add something small to one number, or date, of plan or certificate."""
     name = rng.choice(["plan.json", "certificate.json", "certificate.json"])
     document = orjson.loads(entries[name])
     places = [place for place in _places(document) if _is_number(place[0][place[1]])]
     if places:
         holder, key = rng.choice(places)
         value = holder[key]
-        if isinstance(value, str):
+        if isinstance(value, str) and re.fullmatch("[0-9]{4}-[0-9]{2}-[0-9]{2}", value):
+            day = date.fromisoformat(value) + timedelta(days=rng.choice([-1, 1]))
+            holder[key] = day.isoformat()
+        elif isinstance(value, str):
             holder[key] = str(int(value.partition(".")[0].partition("/")[0]) + rng.choice([-1, 1]))
         else:
             holder[key] = max(0, value + rng.choice([-1, 1]))

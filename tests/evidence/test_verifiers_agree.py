@@ -2,6 +2,7 @@
 
 import random
 from collections import Counter
+from collections.abc import Callable
 from collections.abc import Set as AbstractSet
 from pathlib import Path
 
@@ -11,11 +12,12 @@ from service.proof import standalone
 from service.proof.evidence import verify_evidence
 from service.proof.violations import CODES
 from tests.evidence.mutations import MUTATIONS
-from tests.evidence.zips import entries_of, good_zip
+from tests.evidence.zips import dated_zip, entries_of, good_zip
 
 # Random networks with and without a plan; drawn afresh, they would hide what broke.
 SEEDS = 36
 MUTANTS = 1_000
+DATED_MUTANTS = 400
 MUTANTS_LONG = 10_000
 
 # What random changes do not reach; tests/unit/proof has a case for each.
@@ -48,14 +50,20 @@ def test_real_evidence_is_intact_for_both(seed: int, tmp_path: Path) -> None:
     assert (verdict, codes) == ("intact", set())
 
 
-def _compare(count: int, *, first: int, folder: Path) -> tuple[Counter[str], Counter[str]]:
+def _compare(
+    count: int,
+    *,
+    first: int,
+    folder: Path,
+    evidence: Callable[[int], bytes] = good_zip,
+) -> tuple[Counter[str], Counter[str]]:
     """Spoil evidence ``count`` times and return how often each verdict and each code came."""
     verdicts: Counter[str] = Counter()
     found: Counter[str] = Counter()
     for number in range(first, first + count):
         rng = random.Random(number)  # noqa: S311 - a test that repeats, no secret
         mutation = MUTATIONS[number % len(MUTATIONS)]
-        verdict, codes = both_verdicts(mutation(entries_of(good_zip(number % SEEDS)), rng), folder)
+        verdict, codes = both_verdicts(mutation(entries_of(evidence(number % SEEDS)), rng), folder)
         verdicts[verdict] += 1
         found.update(codes)
     return verdicts, found
@@ -70,6 +78,13 @@ def test_both_agree_on_a_thousand_spoilt_files(tmp_path: Path) -> None:
     assert verdicts["broken"] > MUTANTS // 2
     assert verdicts["unreadable"] > MUTANTS // 20
     assert set(CODES) - set(found) <= RARE
+
+
+def test_both_agree_on_spoilt_files_of_plans_on_days(tmp_path: Path) -> None:
+    """Dates that are moved, days left out, lateness that is not that of the flow."""
+    verdicts, _ = _compare(DATED_MUTANTS, first=0, folder=tmp_path, evidence=dated_zip)
+
+    assert verdicts["broken"] > DATED_MUTANTS // 2
 
 
 @pytest.mark.long

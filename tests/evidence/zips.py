@@ -24,6 +24,7 @@ from service.network.stored_zip import read_stored_zip, stored_zip
 from service.planning.task import plan
 from service.proof.evidence import write_evidence
 from tests.factories import NetworkRefused, take_in
+from tests.random_dates import with_dates
 from tests.random_money import in_other_money
 from tests.random_networks import draw_network
 from tests.random_tariffs import by_tariffs
@@ -120,6 +121,19 @@ def good_zip(seed: int) -> bytes:
         return evidence_of(drawn.document, drawn.options)
     stated, _ = in_other_money(drawn.document, rng)
     return evidence_of(by_tariffs(stated, rng) if seed % 2 else stated, drawn.options)
+
+
+@cache
+def dated_zip(seed: int) -> bytes:
+    """Return the evidence of a random network on days; ``seed`` is the first that is tried."""
+    rng = random.Random(seed)  # noqa: S311 - a test that repeats, no secret
+    while True:
+        drawn = draw_network(rng)
+        try:
+            return evidence_of(with_dates(drawn.document, rng), drawn.options)
+        except NetworkRefused:
+            # What must move on several days waits for limits over days.
+            continue
 
 
 def entries_of(data: bytes) -> Entries:
