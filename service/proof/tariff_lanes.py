@@ -9,6 +9,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from fractions import Fraction
 from functools import cache
+from math import floor
 from typing import Any
 
 import numpy as np
@@ -16,7 +17,7 @@ import numpy as np
 from service.network.columns import BoolArray, IntArray, Network, Texts
 from service.proof.arcs import ItemArcs
 from service.proof.calendar import Calendar, date_of
-from service.proof.exact import Whole
+from service.proof.exact import ROOM, Whole, magnitude, whole
 from service.proof.freight import (
     Bill,
     bill,
@@ -178,6 +179,9 @@ def tariff_contradictions(  # noqa: PLR0913 - flow and prices, and what they are
     """
     lanes = network.lanes
     at = np.flatnonzero(with_tariffs(arcs.rows, network))
+    busy = flow[at] != 0
+    idle = _idle(freights, network, arcs, at[~busy], price=price, charges=charges, scale=scale)
+    at = at[busy]
     rows = arcs.rows[at]
     columns = zip(
         at.tolist(),
@@ -198,4 +202,36 @@ def tariff_contradictions(  # noqa: PLR0913 - flow and prices, and what they are
             steps > least and cost - freights.cost(code, arcs.item, steps - 1) > paid
         ):
             found.append(position)
+    return idle + found
+
+
+def _idle(  # noqa: PLR0913 - see above
+    freights: Freights,
+    network: Network,
+    arcs: ItemArcs,
+    at: IntArray,
+    *,
+    price: Whole,
+    charges: Mapping[int, Fraction],
+    scale: Fraction,
+) -> list[int]:
+    """Return the lanes without flow, by position, on which a first step would pay.
+
+    They are nearly all, so that those of one tariff and charge are looked at together.
+    """
+    at = at[arcs.limits.capacity[at] != 0]
+    rows = arcs.rows[at]
+    kinds = np.stack((network.lanes.tariff.codes[rows], network.lanes.charges.codes[rows]))
+    distinct, kind = np.unique(kinds, axis=1, return_inverse=True)
+    # Prices are whole, so that more than a cost is more than its whole part.
+    most = whole(
+        [
+            floor((freights.cost(code, arcs.item, 1) + charges[charge]) * scale)
+            for code, charge in distinct.T.tolist()
+        ]
+    )
+    gain = price[arcs.lane_head[at]].astype(object) - price[arcs.lane_tail[at]]
+    if magnitude(price) < ROOM // 2:
+        gain = gain.astype(np.int64)
+    found: list[int] = at[(gain > most[kind.ravel()]).astype(np.bool_)].tolist()
     return found
