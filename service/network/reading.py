@@ -94,7 +94,7 @@ def read_network(document: object, options: Options, faults: FaultList | None = 
         if head.storage:
             normal["storage"] = read_storage(head.storage, things, faults)
         assembly = assemble(normal, things, tables, rules)
-        _check_together(assembly, head.cut_off, options, faults)
+        _check_together(assembly, head.cut_off, options, faults, unsure=tariffs.unsure)
     else:
         assembly = None
     tables.supply.faults.refuse(faults)
@@ -210,9 +210,14 @@ def _refuse_or_set_aside(
 
 
 def _check_together(
-    assembly: Assembly, cut_off: Instant, options: Options, faults: FaultList
+    assembly: Assembly,
+    cut_off: Instant,
+    options: Options,
+    faults: FaultList,
+    *,
+    unsure: frozenset[str],
 ) -> None:
-    """Check what takes more than one table.
+    """Check what takes more than one table; ``unsure`` are the ids of tariffs that are refused.
 
     All that is wrong among the sound rows stays wrong with the others added, so that these checks
     need not wait until everything else is mended.
@@ -222,7 +227,7 @@ def _check_together(
     sharing = Sharing(assembly.network)
     check_lanes_for_any_item(assembly, use, sharing, faults)
     check_charges(assembly, use)
-    check_tariffs(assembly, use, faults)
+    check_tariffs(assembly, use, faults, unsure=unsure)
     check_loops(assembly, use, faults)
     check_origins(assembly, use, faults)
     check_rules(assembly, use, sharing, faults)

@@ -15,13 +15,18 @@ from service.network.row_checks import MEASURE_ADVICE
 from service.network.tariffs import CHARGEABLE, Tariff, tariffs_of
 
 
-def check_tariffs(assembly: Assembly, use: LaneUse, doubts: FaultList) -> None:
-    """Find lanes without a tariff on their day, and tariffs that cannot be planned with yet."""
+def check_tariffs(
+    assembly: Assembly, use: LaneUse, doubts: FaultList, *, unsure: frozenset[str]
+) -> None:
+    """Find lanes without a tariff on their day, and tariffs that cannot be planned with yet.
+
+    ``unsure`` are the ids of tariffs that are refused themselves: their lanes are not blamed.
+    """
     network, lanes = assembly.network, assembly.network.lanes
     if not lanes.tariff.values:
         return
     checks = _Checks(assembly)
-    held = checks.days()
+    held = checks.days(unsure)
     for check in (checks.users, checks.rising):
         for item in range(len(network.items)):
             rows = use.rows(item)
@@ -46,21 +51,19 @@ class _Checks:
         self._seen = np.full(count, "", dtype=object)
         self._heavy, self._bulky, self._told = np.zeros((3, count), dtype=np.bool_)
 
-    def days(self) -> dict[int, list[Tariff]]:
+    def days(self, unsure: frozenset[str]) -> dict[int, list[Tariff]]:
         """Find lanes whose tariff does not hold on a day on which goods leave.
 
         Return the tariffs that do, by code of the column.
         """
         network, lanes = self._assembly.network, self._lanes
-        # A tariff that is itself refused is not in the head: its lanes are not blamed for it.
         tariffs = tariffs_of(network.head)
-        sound = {tariff.id for tariff in tariffs}
         found: dict[int, list[Tariff]] = {}
         for code, day, rows in days_of_tariffs(network):
             name = lanes.tariff.values[code]
             held = [own for own in tariffs if own.id == name and own.holds_on(day)]
             found.setdefault(code, []).extend(own for own in held if own not in found.get(code, []))
-            if name in sound and not held:
+            if not held and name not in unsure:
                 detail = f"No tariff of this id holds on {day}, a day of departure."
                 self._refuse(rows, "tariff_not_valid", detail)
         return found

@@ -82,6 +82,7 @@ def _dearest(
     at, steepest = steepest_costs(freights, arcs, network, scale)
     if any(cost.denominator != 1 for cost in steepest):
         return None
-    dearest = np.zeros(len(lane_costs), dtype=object)
-    dearest[at] = [cost.numerator for cost in steepest]
+    most = whole([cost.numerator for cost in steepest])
+    dearest: Whole = np.zeros(len(lane_costs), dtype=most.dtype)
+    dearest[at] = most
     return plus(lane_costs, dearest)

@@ -121,6 +121,16 @@ def test_each_fault_of_a_tariff_has_its_place(
     assert found(report) == ([(place, code)] if code else [])
 
 
+def test_a_faulty_version_of_a_tariff_is_reported_once(tmp_path: Path) -> None:
+    """It may be the one that would hold: lanes are not blamed for it."""
+    document = sound()
+    under({}, RISING | {"valid_from": "2026-02-03", "basis": ""}, valid_until="2026-02-02")(
+        document
+    )
+
+    assert found(check(document, tmp_path)) == [("/tariffs/1/basis", "bad_id")]
+
+
 def test_a_lane_needs_a_cost_or_a_tariff(tmp_path: Path) -> None:
     """Beside lanes with tariffs, one with neither is told so."""
     document = sound()
