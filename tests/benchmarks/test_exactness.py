@@ -2,13 +2,14 @@
 
 import shutil
 from dataclasses import asdict, replace
+from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
 import pytest
 
 from service.planning.outcome import WARM_START_FILE
-from tests.benchmarks import work
+from tests.benchmarks import sharing, work
 from tests.benchmarks.forms import FORMS
 from tests.benchmarks.instances import CENTS, Change, Recipe, dense
 from tests.benchmarks.lemon import LEMON_PROBLEM, find_lemon
@@ -154,3 +155,15 @@ def test_a_seed_draws_one_network(recipe: Recipe) -> None:
 
     assert columns(first) == columns(again)
     assert columns(first) != columns(other)
+
+
+@pytest.mark.parametrize("seed", [301, 302, 303])
+def test_bound_and_plan_of_shared_limits_enclose_what_highs_finds(seed: int) -> None:
+    """Limits are rounded to what whole bags weigh, so that ours is no looser; the plan is near."""
+    one = sharing.drawn(seed, origins=5, ends=40, items=3)
+
+    _, relaxed = sharing.by_highs(one)
+    _, cost, bound = sharing.by_us(one)
+
+    assert relaxed - 0.01 <= bound <= cost
+    assert cost <= bound * Fraction("1.02")
