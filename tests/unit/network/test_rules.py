@@ -278,3 +278,17 @@ def test_a_rule_that_does_not_hold_is_listed(
 ) -> None:
     """Expired rules are listed, not applied."""
     assert code in doubted(report_of(tmp_path, {"rule": "closure", "lanes": {}} | period))
+
+
+@pytest.mark.parametrize("dated", [True, False])
+def test_limits_that_items_share_are_refused_by_name_where_there_are_dates(
+    dated: bool,  # noqa: FBT001 - drawn by name
+    tmp_path: Path,
+) -> None:
+    """What is not built together is refused, not dropped: a lane's room on several days."""
+    shared = {"rule": "shared_capacity", "lanes": {"ids": ["L1"]}, "maximum": "5"}
+    periods = {"periods": ["2026-02-03", "2026-02-04"]} if dated else {}
+
+    entries = found(report_of(tmp_path, shared, **periods))
+
+    assert ("/rules/0", "not_yet") in entries if dated else not entries
