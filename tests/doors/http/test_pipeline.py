@@ -222,7 +222,7 @@ def test_every_fault_is_told_with_its_place(house: House) -> None:
     }
 
 
-def test_part_of_a_later_issue_is_refused_by_name(house: House) -> None:
+def test_what_is_not_built_is_refused_by_name(house: House) -> None:
     """It is said that it is not built yet; it is never ignored."""
     network = orjson.loads(EXAMPLE)
     network["lanes"][0]["distance_km"] = 1
