@@ -14,6 +14,7 @@ from typing import Any, Final, cast
 
 import orjson
 
+from service.engine.child import collect_seldom
 from service.network.intake import IntakeReport, Limits, intake
 from service.network.options import Options
 from service.planning.outcome import PLAN_FILE, WARM_START_FILE
@@ -174,12 +175,13 @@ def _tiny_problem() -> Problem:
 
 
 def _warm_up(form: str) -> None:
-    """Take the tiny network in and plan it once."""
+    """Take the tiny network in and plan it once; then collect garbage as a child does."""
     make, media_type = FORMS[form]
     with tempfile.TemporaryDirectory() as name:
         folder = Path(name)
         _take_in(make(_tiny()), folder, media_type)
         _planned(folder, folder)
+    collect_seldom()
 
 
 TASKS: Final[Mapping[str, Callable[[Request], Answer]]] = {
