@@ -119,7 +119,7 @@ def supply_order(
     """Return the row numbers of ``supply`` in the order of the normal form.
 
     This is the stored form: another order changes every digest and makes stored networks
-    unreadable. Which stock is used up first is decided elsewhere (``planning/paths.py``).
+    unreadable. Which stock is used up first is decided elsewhere (``planning/documents/paths.py``).
 
     ``worth`` is what one unit of each currency is in that of the plan. Texts must be spelled
     normally, so that their codes sort as they do.

@@ -6,13 +6,13 @@ from fractions import Fraction
 
 import numpy as np
 
-from service.planning.compile import Compiled
-from service.planning.contraction import contract
-from service.planning.coupled_contradiction import Contradiction, ContradictionError
-from service.planning.coupled_items import CoupledPlan, solve_coupled
-from service.planning.forced_flow import contradiction
-from service.planning.item_network import ItemNetwork
-from service.planning.limits import NoCirculationError
+from service.planning.coupled.contradiction import Contradiction, ContradictionError
+from service.planning.coupled.items import CoupledPlan, solve_coupled
+from service.planning.flow.contraction import contract
+from service.planning.flow.forced_flow import contradiction
+from service.planning.model.compile import Compiled
+from service.planning.model.item_network import ItemNetwork
+from service.planning.model.limits import NoCirculationError
 from service.planning.solve import ItemFlow
 
 Cuts = list[tuple[ItemNetwork, NoCirculationError]]

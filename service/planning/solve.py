@@ -6,14 +6,14 @@ from typing import Any
 import numpy as np
 
 from service.network.columns import IntArray, Network
-from service.planning.arcs import ROOT, Kind, MoneyArray
-from service.planning.canonical_plan import canonical_flow
-from service.planning.contraction import Contraction, contract
-from service.planning.forced_flow import contradiction
-from service.planning.item_network import ItemNetwork
-from service.planning.limits import NoCirculationError, NoFlowError, SolverFaultError
-from service.planning.routes import Front, chosen_route
-from service.planning.tie_break import ItemTieBreak
+from service.planning.flow.canonical_plan import canonical_flow
+from service.planning.flow.contraction import Contraction, contract
+from service.planning.flow.forced_flow import contradiction
+from service.planning.flow.tie_break import ItemTieBreak
+from service.planning.model.arcs import ROOT, Kind, MoneyArray
+from service.planning.model.item_network import ItemNetwork
+from service.planning.model.limits import NoCirculationError, NoFlowError, SolverFaultError
+from service.planning.wide.routes import Front, chosen_route
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -11,17 +11,19 @@ from service.network.canonical import canonical_json, digest, network_digest, re
 from service.network.columns import Network
 from service.network.intake_files import INTAKE_FILE, NETWORK_FILE
 from service.network.options import Options
-from service.planning.amounts import Document
-from service.planning.arcs import MoneyArray
-from service.planning.certificate import (
+from service.planning.documents.amounts import Document
+from service.planning.documents.certificate import (
     contradiction_certificate,
     proved_certificate,
 )
-from service.planning.compile import Compiled, compile_network
-from service.planning.contraction import Contraction
-from service.planning.contradictions import contradiction_reason
-from service.planning.item_network import ItemNetwork
-from service.planning.limits import NumbersTooLargeError
+from service.planning.documents.contradictions import contradiction_reason
+from service.planning.documents.plan import Setting, planned, unplanned
+from service.planning.documents.priorities import achieved
+from service.planning.flow.contraction import Contraction
+from service.planning.model.arcs import MoneyArray
+from service.planning.model.compile import Compiled, compile_network
+from service.planning.model.item_network import ItemNetwork
+from service.planning.model.limits import NumbersTooLargeError
 from service.planning.outcome import (
     CERTIFICATE_FILE,
     PLAN_FILE,
@@ -30,12 +32,10 @@ from service.planning.outcome import (
     Outcome,
     State,
 )
-from service.planning.plan import Setting, planned, unplanned
-from service.planning.priorities import achieved
-from service.planning.routes import Route, SiftedRoute, chosen_route
 from service.planning.solution import Solution, solve_all
 from service.planning.solve import ItemFlow, solve_item
 from service.planning.warm_start import WarmStart, left_by
+from service.planning.wide.routes import Route, SiftedRoute, chosen_route
 from service.proof.check import Violation, check
 
 Progress = Callable[[str, Mapping[str, int]], None]

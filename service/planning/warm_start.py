@@ -15,11 +15,11 @@ import numpy as np
 import orjson
 
 from service.network.columns import IntArray, Network
-from service.planning.arcs import SIDES, Kind, MoneyArray
-from service.planning.contraction import Contraction
-from service.planning.item_network import ItemNetwork
-from service.planning.scarcity_prices import FloatArray
+from service.planning.flow.contraction import Contraction
+from service.planning.model.arcs import SIDES, Kind, MoneyArray
+from service.planning.model.item_network import ItemNetwork
 from service.planning.solve import ItemFlow
+from service.planning.wide.scarcity_prices import FloatArray
 
 FORMAT = 1
 

@@ -22,7 +22,7 @@ from scipy.sparse import csr_array, vstack
 
 from service.network.canonical import read_network
 from service.network.options import read_options
-from service.planning.compile import compile_network
+from service.planning.model.compile import compile_network
 from service.planning.solution import solve_all
 from service.planning.solve import solve_item
 from tests.factories import Document, take_in

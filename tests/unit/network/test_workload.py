@@ -9,7 +9,7 @@ from service.network.files.json import read_json
 from service.network.options import Options, read_options
 from service.network.reading import read_network
 from service.network.workload import Workload, likeness_of, workload_of
-from service.planning.compile import compile_network
+from service.planning.model.compile import compile_network
 from tests.factories import Document
 from tests.random_networks import RandomNetwork
 from tests.strategies import networks

@@ -6,8 +6,8 @@ import networkx as nx
 import numpy as np
 
 from service.network.columns import IntArray
-from service.planning.arcs import UNLIMITED, Arcs, MoneyArray
-from service.planning.prices import reduced_cost
+from service.planning.flow.prices import reduced_cost
+from service.planning.model.arcs import UNLIMITED, Arcs, MoneyArray
 
 Row = tuple[int, int, int, int, int]
 

@@ -12,17 +12,17 @@ import orjson
 
 from service.network.canonical import read_network
 from service.network.options import Options, read_options
-from service.planning.arcs import MoneyArray
-from service.planning.certificate import proved_certificate
-from service.planning.compile import Compiled, compile_network
-from service.planning.contraction import Contraction
-from service.planning.item_network import ItemNetwork
-from service.planning.plan import Setting, planned
-from service.planning.priorities import achieved
-from service.planning.routes import Front, FullRoute, SiftedRoute
-from service.planning.scarcity_prices import FloatArray
+from service.planning.documents.certificate import proved_certificate
+from service.planning.documents.plan import Setting, planned
+from service.planning.documents.priorities import achieved
+from service.planning.flow.contraction import Contraction
+from service.planning.model.arcs import MoneyArray
+from service.planning.model.compile import Compiled, compile_network
+from service.planning.model.item_network import ItemNetwork
 from service.planning.solution import Solution
 from service.planning.solve import ItemFlow, solve_item
+from service.planning.wide.routes import Front, FullRoute, SiftedRoute
+from service.planning.wide.scarcity_prices import FloatArray
 from tests.factories import Document, network_document, take_in
 
 

@@ -9,12 +9,12 @@ import pytest
 
 from service.network.canonical import read_network
 from service.network.options import Options
-from service.planning import routes
-from service.planning.compile import compile_network
-from service.planning.contraction import contract
+from service.planning.flow.contraction import contract
+from service.planning.model.compile import compile_network
 from service.planning.outcome import CERTIFICATE_FILE, PLAN_FILE, WARM_START_FILE
 from service.planning.task import plan
 from service.planning.warm_start import WarmStart
+from service.planning.wide import routes
 from tests.factories import Document, take_in
 from tests.unit.planning.routing import wide_network
 

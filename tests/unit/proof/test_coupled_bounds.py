@@ -14,7 +14,7 @@ from service.proof.check import check
 from tests.evidence.test_verifiers_agree import both_verdicts
 from tests.evidence.zips import packed
 from tests.factories import Planned, plan_network
-from tests.unit.planning.test_shared_limits import network
+from tests.unit.planning.model.test_shared_limits import network
 
 Edit = Callable[[dict[str, Any], dict[str, Any]], None]
 
