@@ -31,9 +31,9 @@ def check_exchange_rates(head: Mapping[str, Any]) -> None:
         code = rate.get("currency", "")
         _check(_CURRENCY.fullmatch(code) is not None, "no currency of a rate")
         _check(code != head.get("currency"), "an exchange rate of the plan's own currency")
-        _check(_number(rate.get("rate")) > 0, "an exchange rate of 0 or less")
-        _check("per" not in rate or _number(rate["per"]) not in (0, 1), "per is not normal")
-        _check("per" not in rate or _number(rate["per"]) > 0, "per is below 0")
+        _check(decimal_of(rate.get("rate")) > 0, "an exchange rate of 0 or less")
+        _check("per" not in rate or decimal_of(rate["per"]) not in (0, 1), "per is not normal")
+        _check("per" not in rate or decimal_of(rate["per"]) > 0, "per is below 0")
         _check("as_of" not in rate or _is_date(rate["as_of"]), "as_of is no date")
     codes = [rate["currency"] for rate in rates]
     _check(all(former < latter for former, latter in pairwise(codes)), "rates are not sorted")
@@ -69,7 +69,7 @@ def _check_charge(charge: Mapping[str, Any], items: set[str], known: set[str | N
         _check(isinstance(charge.get(field), str) and bool(charge[field]), f"a charge's {field}")
     amount = "percent" if charge["basis"] == VALUE else "rate"
     _check(len({"rate", "percent"} & set(charge)) == 1, "a charge of two amounts, or none")
-    _check(_number(charge.get(amount)) >= 0, "a charge below 0")
+    _check(decimal_of(charge.get(amount)) >= 0, "a charge below 0")
     _check("currency" not in charge or charge["currency"] in known, "a charge's currency")
     _check("currency" not in charge or amount == "rate", "a percentage in a currency")
     if "items" in charge:
@@ -79,14 +79,17 @@ def _check_charge(charge: Mapping[str, Any], items: set[str], known: set[str | N
         _check(named == sorted(set(named)) and set(named) <= items, "items of a charge")
 
 
-def _number(text: object) -> Fraction:
-    """Return the value of an exact text in its one spelling."""
+def decimal_of(text: object) -> Fraction:
+    """Return the value of a decimal in its one spelling; raises ``NormalFormError``.
+
+    A fraction is no decimal, although it is exact: where it may stand, another reader is asked.
+    """
     try:
-        value = parse_exact(text) if isinstance(text, str) else None
+        value = parse_exact(text) if isinstance(text, str) and "/" not in text else None
     except ValueError:
         value = None
     if value is None or exact_text(value) != text:
-        raise NormalFormError("not a number in normal form")
+        raise NormalFormError("not a decimal in normal form")
     return value
 
 

@@ -3,14 +3,13 @@
 import re
 from collections.abc import Mapping
 from datetime import date
-from fractions import Fraction
 from itertools import pairwise
 from typing import Any
 
 from service.network.column_bytes import NormalFormError
 from service.network.columns import Network
 from service.network.money import factors
-from service.network.quantities import exact_text, parse_exact
+from service.network.normal_money import decimal_of
 from service.network.tariffs import CHARGEABLE
 
 _TEXTS = frozenset({"id", "carrier", "currency", "version", "source", "basis"})
@@ -56,16 +55,16 @@ def _check_tariff(tariff: Mapping[str, Any]) -> None:
     for field in _DATES & set(tariff):
         _check(_is_date(tariff[field]), f"a tariff's {field}")
     for field in _AMOUNTS & set(tariff):
-        _check(_number(tariff[field]) > 0, f"a tariff's {field}")
+        _check(decimal_of(tariff[field]) > 0, f"a tariff's {field}")
     percent = tariff.get("surcharge_percent", "1")
-    _check(_number(percent) > -100 and percent != "0", "a surcharge")
+    _check(decimal_of(percent) > -100 and percent != "0", "a surcharge")
     _check(("kg_per_m3" in tariff) == (tariff["basis"] == CHARGEABLE), "kg_per_m3")
     breaks = tariff.get("breaks")
     _check(isinstance(breaks, list) and bool(breaks), "no breaks")
     for one in tariff["breaks"]:
         _check(isinstance(one, dict) and set(one) == {"from", "rate"}, "no break")
-        _check(_number(one["rate"]) >= 0, "a rate below 0")
-    starts = [_number(one["from"]) for one in tariff["breaks"]]
+        _check(decimal_of(one["rate"]) >= 0, "a rate below 0")
+    starts = [decimal_of(one["from"]) for one in tariff["breaks"]]
     _check(starts[0] == 0, "breaks do not begin at 0")
     _check(all(former < latter for former, latter in pairwise(starts)), "breaks are not sorted")
     several = len(starts) > 1
@@ -75,17 +74,6 @@ def _check_tariff(tariff: Mapping[str, Any]) -> None:
     _check("pay_up" not in tariff or tariff.get("break_type") == "all_units", "pay_up")
     ends = tariff.get("valid_from", ""), tariff.get("valid_until", "9999-99")
     _check(ends[0] <= ends[1], "a tariff ends before it begins")
-
-
-def _number(text: object) -> Fraction:
-    """Return the value of an exact text in its one spelling."""
-    try:
-        value = parse_exact(text) if isinstance(text, str) else None
-    except ValueError:
-        value = None
-    if value is None or exact_text(value) != text:
-        raise NormalFormError("not a number in normal form")
-    return value
 
 
 def _is_date(text: object) -> bool:
