@@ -263,12 +263,12 @@ def _circles(
     seen: set[str] = set()
     for circle in certificate.get("coupled", ()):
         items = circle["items"]
-        if not items or not set(items) <= at.keys() or seen & set(items):
+        places = [at.get(item, -1) for item in items]
+        if not places or min(places) < 0 or places != sorted(set(places)):
             findings.add("name_unknown", "no circle of items", place="/coupled")
             return None
-        places = [at[item] for item in items]
-        if places != sorted(set(places)):
-            findings.add("listed_twice", "items are not in their order", place="/coupled")
+        if seen & set(items):
+            findings.add("listed_twice", "an item is in two circles", place="/coupled")
             return None
         seen |= set(items)
         found.append(places)

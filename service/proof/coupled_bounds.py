@@ -129,7 +129,9 @@ class Circle:
         total = -worth
         for at, arcs in enumerate(self._arcs):
             price = self._prices(arcs, proof, findings, place=place)
-            least = None if price is None else least_sum(arcs, costs[at], price)
+            if price is None:
+                return None
+            least = least_sum(arcs, costs[at], price)
             if least is None:
                 findings.add("not_optimal", f"no bound for {self.items[at]}", place=place)
                 return None
@@ -188,16 +190,18 @@ class Circle:
         )
         worth = 0
         paid: dict[int, tuple[Family, Whole]] = {}
+        seen: set[tuple[int, int]] = set()
         for entry, limit in zip(entries, found, strict=True):
-            if limit is None:
-                findings.add("name_unknown", "a price of no limit", place=place)
+            if limit is None or (id(limit[0]), limit[1]) in seen:
+                findings.add("name_unknown", "a price of no limit, or a second one", place=place)
                 return None
             family, key = limit
+            seen.add((id(family), key))
             number = amount(entry["value"]) * family.grain * scale
             bound = family.most[key] if number > 0 else family.least[key]
             empty: Whole = np.zeros(len(family.things), dtype=object)
             prices = paid.setdefault(id(family), (family, empty))[1]
-            if number.denominator != 1 or bound is None or prices[key]:
+            if number.denominator != 1 or bound is None:
                 findings.add("multiplier_wrong", "this price proves nothing", place=place)
                 return None
             prices[key] = number.numerator

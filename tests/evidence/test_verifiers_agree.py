@@ -12,12 +12,13 @@ from service.proof import standalone
 from service.proof.evidence import verify_evidence
 from service.proof.violations import CODES
 from tests.evidence.mutations import MUTATIONS
-from tests.evidence.zips import dated_zip, entries_of, good_zip
+from tests.evidence.zips import dated_zip, entries_of, good_zip, sharing_zip
 
 # Random networks with and without a plan; drawn afresh, they would hide what broke.
 SEEDS = 36
 MUTANTS = 1_000
 DATED_MUTANTS = 400
+SHARING_MUTANTS = 400
 MUTANTS_LONG = 10_000
 
 # What random changes do not reach; tests/unit/proof has a case for each.
@@ -87,10 +88,18 @@ def test_both_agree_on_spoilt_files_of_plans_on_days(tmp_path: Path) -> None:
     assert verdicts["broken"] > DATED_MUTANTS // 2
 
 
+def test_both_agree_on_spoilt_files_of_plans_with_shared_limits(tmp_path: Path) -> None:
+    """Multipliers, node prices and steps that are not those of the plan."""
+    verdicts, _ = _compare(SHARING_MUTANTS, first=0, folder=tmp_path, evidence=sharing_zip)
+
+    assert verdicts["broken"] > SHARING_MUTANTS // 2
+
+
 @pytest.mark.long
 def test_both_agree_on_ten_thousand_other_spoilt_files(tmp_path: Path) -> None:
     """The same, for longer than a build should take."""
     verdicts, found = _compare(MUTANTS_LONG, first=MUTANTS, folder=tmp_path)
 
     assert sum(verdicts.values()) == MUTANTS_LONG
-    assert set(CODES) - set(found) <= {"cut_wrong"}
+    # A price of a shared limit is in none of these plans.
+    assert set(CODES) - set(found) <= {"cut_wrong", "multiplier_wrong"}

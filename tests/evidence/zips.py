@@ -27,6 +27,7 @@ from tests.factories import NetworkRefused, take_in
 from tests.random_dates import with_dates
 from tests.random_money import in_other_money
 from tests.random_networks import draw_network
+from tests.random_sharing import draw_sharing
 from tests.random_tariffs import by_tariffs
 
 Entries = dict[str, bytes]
@@ -134,6 +135,20 @@ def dated_zip(seed: int) -> bytes:
         except NetworkRefused:
             # What must move on several days waits for limits over days.
             continue
+
+
+@cache
+def sharing_zip(seed: int) -> bytes:
+    """Return the evidence of a random network whose items share limits; ``seed`` as above."""
+    rng = random.Random(seed)  # noqa: S311 - a test that repeats, no secret
+    while True:
+        drawn = draw_sharing(rng)
+        try:
+            data = evidence_of(drawn.document, drawn.options)
+        except NetworkRefused:
+            continue
+        if orjson.loads(entries_of(data)["plan.json"])["method"] == "linear_program":
+            return data
 
 
 def entries_of(data: bytes) -> Entries:
