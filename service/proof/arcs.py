@@ -9,12 +9,13 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import partial
-from typing import Literal, NamedTuple
+from typing import NamedTuple
 
 import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
+from service.proof.arc_build import NO_MONEY, Arc, Build, Node
 from service.proof.exact import Whole, joined, magnitude, whole
 from service.proof.groups import Group, Late, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
@@ -22,42 +23,8 @@ from service.proof.sides import UNLIMITED, SiteSides, site_sides
 from service.proof.stock import Stock, stock_of
 from service.proof.usable import of_rows, usable_lanes
 
-Kind = Literal[
-    "supply", "draw", "keep", "enter", "handle", "leave", "store", "serve", "pass", "want", "short"
-]
-
-
-class Node(NamedTuple):
-    """A place in the formal network; the root has site -1."""
-
-    site: int
-    side: str
-    qualifier: str | None
-
-
-ROOT = Node(-1, "root", None)
-
-# What most arcs that are no lanes cost: known by itself, without looking at a fraction.
-NO_MONEY = Fraction(0)
-
 # Six columns of so many arcs fit 4 MiB of cache (measured: twice as fast as whole columns).
 PART_ARCS = 2**16
-
-
-class Arc(NamedTuple):
-    """An arc that is no lane. ``money`` is per step; ``rank`` is 1 for the first priority, or 0.
-
-    ``capacity`` is -1 where there is no limit. ``key`` says what a certificate calls its flow.
-    """
-
-    kind: Kind
-    tail: int
-    head: int
-    minimum: int
-    capacity: int
-    money: Fraction
-    rank: int
-    key: tuple[object, ...]
 
 
 class Part(NamedTuple):
@@ -157,19 +124,14 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
     stock = stock_of(network, item)
     wanted = wanted_of(network, options, item)
     sides = site_sides(network, rulings, item, rows=rows, stock=stock, wanted=wanted)
-    build = _Build(network=network, item=item, step=network.items[item].step)
-    occurring = {group.priority for group in wanted.groups if group.priority} | {
-        held.keep_priority for held in stock.values() if held.keep_steps
-    }
-    priorities = tuple(sorted(occurring))
-    allowed = options.shortages == "allow"
+    build = _Build(network, item, stock=stock, wanted=wanted, shortage=options.shortages == "allow")
     for site, made in sides.items():
         build.site(site, made)
         if site in stock:
             build.stock(site, stock[site])
-            build.keep(site, stock[site], priorities=priorities, shortage=allowed)
+            build.keep(site, stock[site])
     for group in wanted.groups:
-        build.group(group, sides[group.site], priorities=priorities, shortage=allowed)
+        build.group(group, sides[group.site])
     tail, head = build.lane_ends(rows, sides)
     return ItemArcs(
         item=item,
@@ -183,7 +145,7 @@ def item_arcs(network: Network, options: Options, rulings: Rulings, item: int) -
         # Node itself would be called through Python; this makes the same thing of each tuple.
         nodes=tuple(map(partial(tuple.__new__, Node), build.place)),
         place=build.place,
-        priorities=priorities,
+        priorities=build.priorities,
         stock=stock,
         wanted=wanted,
     )
@@ -199,39 +161,8 @@ def as_columns(arcs: Sequence[Arc]) -> Part:
     )
 
 
-class _Build:
-    """Collects nodes and arcs; node 0 is the root."""
-
-    def __init__(self, *, network: Network, item: int, step: Fraction) -> None:
-        """Start with the root alone."""
-        self.step = step
-        # Plain tuples are made three times as fast as nodes, and equal them.
-        self.place: dict[tuple[int, str, str | None], int] = {ROOT: 0}
-        self.arcs: list[Arc] = []
-        self._network = network
-        name = network.items[item].id
-        self._handling = [
-            cost * step if (cost := site.handling(name)) else NO_MONEY for site in network.sites
-        ]
-
-    def node(self, site: int, side: str, qualifier: str | None = None) -> int:
-        """Return the position of a node, which is made if it is not there."""
-        return self.place.setdefault((site, side, qualifier), len(self.place))
-
-    def add(  # noqa: PLR0913 - an arc has that many numbers
-        self,
-        kind: Kind,
-        tail: int,
-        head: int,
-        *,
-        minimum: int = 0,
-        capacity: int = UNLIMITED,
-        money: Fraction = NO_MONEY,
-        rank: int = 0,
-        key: tuple[object, ...],
-    ) -> None:
-        """Add an arc from ``tail`` to ``head``."""
-        self.arcs.append(Arc(kind, tail, head, minimum, capacity, money, rank, key))
+class _Build(Build):
+    """Collects the nodes and arcs of an item whose network says nothing of dates."""
 
     def site(self, site: int, made: SiteSides) -> None:
         """Add what a site is made of: receiving, handling and sending."""
@@ -243,7 +174,7 @@ class _Build:
         if made.has_sent:
             self.add("leave", exit_, self.node(site, "sent"), capacity=made.sent, key=key)
         for origin in made.received_from:
-            received = self.node(site, "received", self._id(origin))
+            received = self.node(site, "received", self.id_of(origin))
             if not made.apart:
                 self.add("enter", received, entry, capacity=made.received, key=key)
             elif made.passes:
@@ -253,7 +184,7 @@ class _Build:
                     self.node(site, "sent"),
                     capacity=made.past,
                     money=handling,
-                    key=(site, self._id(origin)),
+                    key=(site, self.id_of(origin)),
                 )
 
     def stock(self, site: int, held: Stock) -> None:
@@ -270,37 +201,17 @@ class _Build:
             else:
                 self.add("draw", 0, entry, capacity=steps, money=money, key=key)
 
-    def keep(self, site: int, held: Stock, *, priorities: Sequence[int], shortage: bool) -> None:
-        """Add what should stay of a site's stock, which is wanted like a demand."""
-        if not held.keep_steps:
-            return
-        keep = self.node(site, "keep")
-        for tier in range(1, len(held.tier_cost) + 1):
-            self.add("keep", self.node(site, "stock", str(tier)), keep, key=(site, tier))
-        steps = held.keep_steps
-        self.add("want", keep, 0, minimum=steps, capacity=steps, key=())
-        if shortage:
-            rank = priorities.index(held.keep_priority) + 1
-            self.add("short", 0, keep, rank=rank, key=(site, None))
-
-    def group(
-        self, group: Group, made: SiteSides, *, priorities: Sequence[int], shortage: bool
-    ) -> None:
+    def group(self, group: Group, made: SiteSides) -> None:
         """Add what a group wants, and the ways in which goods at its site reach it."""
-        site, label, add = group.site, group.label, self.arcs.append
+        site, label = group.site, group.label
         node = self.node(site, "demand", label)
         if group.origins is None or site in group.origins:
             key: tuple[object, ...] = (site, label, "out", None)
             exit_ = self.place[(site, "out", None)]
-            add(Arc("serve", exit_, node, 0, UNLIMITED, NO_MONEY, 0, key))
+            self.arcs.append(Arc("serve", exit_, node, 0, UNLIMITED, NO_MONEY, 0, key))
         if made.apart:
             self._serve_arrived(group, made, node)
-        add(Arc("want", node, 0, group.wanted, group.wanted, NO_MONEY, 0, ()))
-        if shortage:
-            rank = priorities.index(group.priority) + 1 if group.priority else 0
-            cost = group.shortage_cost
-            money = cost * self.step if cost else NO_MONEY
-            add(Arc("short", 0, node, 0, UNLIMITED, money, rank, (site, label)))
+        self.want(group, node)
 
     def _serve_arrived(self, group: Group, made: SiteSides, node: int) -> None:
         """Add the ways from where goods are received at the site of a group."""
@@ -308,7 +219,7 @@ class _Build:
         for origin in made.received_from:
             if group.origins is not None and not made.allowed(origin, group.origins):
                 continue
-            name = self._id(origin)
+            name = self.id_of(origin)
             self.add(
                 "serve",
                 self.node(site, "received", name),
@@ -336,10 +247,6 @@ class _Build:
         by_origin = any(made.by_origin for made in sides.values())
         for position in np.flatnonzero(head < 0).tolist() if by_origin else ():
             row = int(rows[position])
-            origin = self._id(int(lanes.origin[row]))
+            origin = self.id_of(int(lanes.origin[row]))
             head[position] = self.place[(int(lanes.destination[row]), "received", origin)]
         return tail, head
-
-    def _id(self, site: int | None) -> str | None:
-        """Return the id of a site, None for none."""
-        return None if site is None else self._network.sites[site].id

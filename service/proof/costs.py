@@ -5,7 +5,8 @@ from fractions import Fraction
 import numpy as np
 
 from service.network.columns import Network
-from service.proof.arcs import NO_MONEY, Costs, ItemArcs
+from service.proof.arc_build import NO_MONEY
+from service.proof.arcs import Costs, ItemArcs
 from service.proof.exact import Whole, plus, whole, whole_of
 from service.proof.money import is_plain, lane_kinds
 from service.proof.rulings import measures_on

@@ -5,7 +5,7 @@ stands once. The lanes of the network are its movements (``calendar.py``).
 """
 
 import itertools
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import replace
 from fractions import Fraction
 
@@ -13,7 +13,8 @@ import numpy as np
 
 from service.network.columns import CodeArray, IntArray, Network
 from service.network.options import Options
-from service.proof.arcs import NO_MONEY, Arc, ItemArcs, Kind, Node, as_columns, item_arcs
+from service.proof.arc_build import NO_MONEY, Build, Node
+from service.proof.arcs import ItemArcs, as_columns, item_arcs
 from service.proof.calendar import Calendar, closed_departures, date_of, day_of, on_day, storing
 from service.proof.groups import Group, Late, Wanted, wanted_of
 from service.proof.rulings import LaneLimits, Rulings, measures_on
@@ -48,23 +49,25 @@ def dated_item_arcs(calendar: Calendar, options: Options, rulings: Rulings, item
         wanted=wanted,
         ways=(calendar.stated, usable),
     )
-    build = _Build(calendar, item, places=SiteDays(calendar, rulings, item, rows, stock, wanted))
-    occurring = {group.priority for group in wanted.groups if group.priority} | {
-        held.keep_priority for held in stock.values() if held.keep_steps
-    }
-    priorities = tuple(sorted(occurring))
-    shortage = options.shortages == "allow"
+    build = _Build(
+        network,
+        item,
+        stock=stock,
+        wanted=wanted,
+        shortage=options.shortages == "allow",
+        places=SiteDays(calendar, rulings, item, rows, stock, wanted),
+    )
     for site, made in sides.items():
         arrivals = build.places.origins(site) if made.by_origin else {}
         build.site(site, made, arrivals=arrivals)
         if site in stock:
             build.stock(site, stock[site])
-            build.keep(site, stock[site], priorities=priorities, shortage=shortage)
+            build.keep(site, stock[site])
     for site in storing(network, network.items[item].id):
         if site in sides:
             build.storage(site, sides[site])
     for group in wanted.groups:
-        build.group(group, sides[group.site], priorities=priorities, shortage=shortage)
+        build.group(group, sides[group.site])
     tail, head = build.lane_ends(rows, sides)
     return ItemArcs(
         item=item,
@@ -77,7 +80,7 @@ def dated_item_arcs(calendar: Calendar, options: Options, rulings: Rulings, item
         others=as_columns(build.arcs),
         nodes=tuple(Node(*key) for key in build.place),
         place=build.place,
-        priorities=priorities,
+        priorities=build.priorities,
         stock=stock,
         wanted=wanted,
         late=build.late,
@@ -107,75 +110,59 @@ def _limits(network: Network, rulings: Rulings, item: int, rows: IntArray) -> La
     return LaneLimits(minimum=minimum, capacity=capacity)
 
 
-class _Build:
-    """Collects nodes and arcs; node 0 is the root."""
+class _Build(Build):
+    """Collects the nodes and arcs of an item on the days of each site."""
 
-    def __init__(self, calendar: Calendar, item: int, *, places: SiteDays) -> None:
+    def __init__(  # noqa: PLR0913 - what any network is built of, and its days
+        self,
+        network: Network,
+        item: int,
+        *,
+        stock: Mapping[int, Stock],
+        wanted: Wanted,
+        shortage: bool,
+        places: SiteDays,
+    ) -> None:
         """Start with the root alone."""
-        network = calendar.network
-        self.step = network.items[item].step
-        self.place: dict[tuple[int, str, str | None], int] = {(-1, "root", None): 0}
-        self.arcs: list[Arc] = []
+        super().__init__(network, item, stock=stock, wanted=wanted, shortage=shortage)
         self.late: dict[int, Late] = {}
         self.places = places
-        self._network = network
-        name = network.items[item].id
-        self._handling = [site.handling(name) * self.step for site in network.sites]
 
-    def node(
-        self, site: int, side: str, day: int | None = None, qualifier: str | None = None
-    ) -> int:
-        """Return the position of a node, which is made if it is not there."""
-        called = on_day(side, None if day is None else date_of(day))
-        return self.place.setdefault((site, called, qualifier), len(self.place))
-
-    def add(  # noqa: PLR0913 - an arc has that many numbers
-        self,
-        kind: Kind,
-        tail: int,
-        head: int,
-        *,
-        minimum: int = 0,
-        capacity: int = UNLIMITED,
-        money: Fraction = NO_MONEY,
-        rank: int = 0,
-        key: tuple[object, ...],
-    ) -> None:
-        """Add an arc from ``tail`` to ``head``."""
-        money = money or NO_MONEY
-        self.arcs.append(Arc(kind, tail, head, minimum, capacity, money, rank, key))
+    def on(self, site: int, side: str, day: int, qualifier: str | None = None) -> int:
+        """Return the position of a node on a day, which is made if it is not there."""
+        return self.node(site, on_day(side, date_of(day)), qualifier)
 
     def site(self, site: int, made: SiteSides, *, arrivals: Mapping[int, set[int]]) -> None:
         """Add what a site is made of, on each of its places."""
         handling = self._handling[site]
         for day in self.places.days[site]:
-            entry, exit_ = self.node(site, "in", day), self.node(site, "out", day)
+            entry, exit_ = self.on(site, "in", day), self.on(site, "out", day)
             key: tuple[object, ...] = (site, day)
             self.add("handle", entry, exit_, capacity=made.through, money=handling, key=key)
             if made.has_sent:
-                sent = self.node(site, "sent", day)
+                sent = self.on(site, "sent", day)
                 self.add("leave", exit_, sent, capacity=made.sent, key=key)
             for origin in made.received_from:
                 if origin is not None and origin not in arrivals.get(day, ()):
                     continue
-                received = self.node(site, "received", day, self._id(origin))
+                received = self.on(site, "received", day, self.id_of(origin))
                 if not made.apart:
                     self.add("enter", received, entry, capacity=made.received, key=key)
                 elif made.passes:
                     self.add(
                         "pass",
                         received,
-                        self.node(site, "sent", day),
+                        self.on(site, "sent", day),
                         capacity=made.past,
                         money=handling,
-                        key=(site, self._id(origin), date_of(day)),
+                        key=(site, self.id_of(origin), date_of(day)),
                     )
 
     def storage(self, site: int, made: SiteSides) -> None:
         """Let what is about to leave a cross-dock wait for its next day."""
         side, days = "sent" if made.apart else "out", self.places.days[site]
         for before, after in itertools.pairwise(days):
-            tail, head = self.node(site, side, before), self.node(site, side, after)
+            tail, head = self.on(site, side, before), self.on(site, side, after)
             self.add("store", tail, head, key=(site, date_of(before)))
 
     def stock(self, site: int, held: Stock) -> None:
@@ -187,44 +174,29 @@ class _Build:
             money = cost * self.step
             if not held.keep_steps and len(days) == 1:
                 there = steps if first <= days[0] else 0
-                entry, key = self.node(site, "in", days[0]), (site, tier, date_of(days[0]))
+                entry, key = self.on(site, "in", days[0]), (site, tier, date_of(days[0]))
                 self.add("draw", 0, entry, capacity=there, money=money, key=key)
                 continue
-            shelf = self.node(site, "stock", None, str(tier))
+            shelf = self.node(site, "stock", str(tier))
             self.add("supply", 0, shelf, capacity=steps, key=(site, tier))
             for day in days:
                 if first <= day:
-                    entry, key = self.node(site, "in", day), (site, tier, date_of(day))
+                    entry, key = self.on(site, "in", day), (site, tier, date_of(day))
                     self.add("draw", shelf, entry, money=money, key=key)
 
-    def keep(self, site: int, held: Stock, *, priorities: Sequence[int], shortage: bool) -> None:
-        """Add what should stay of a site's stock, which is wanted like a demand."""
-        if not held.keep_steps:
-            return
-        keep, steps = self.node(site, "keep"), held.keep_steps
-        for tier in range(1, len(held.tier_cost) + 1):
-            shelf = self.node(site, "stock", None, str(tier))
-            self.add("keep", shelf, keep, key=(site, tier))
-        self.add("want", keep, 0, minimum=steps, capacity=steps, key=())
-        if shortage:
-            rank = priorities.index(held.keep_priority) + 1
-            self.add("short", 0, keep, rank=rank, key=(site, None))
-
-    def group(
-        self, group: Group, made: SiteSides, *, priorities: Sequence[int], shortage: bool
-    ) -> None:
+    def group(self, group: Group, made: SiteSides) -> None:
         """Add what a group wants, and the ways in which goods reach it in time or late."""
         site, label = group.site, group.label
-        node = self.node(site, "demand", None, label)
+        node = self.node(site, "demand", label)
         for day in self.places.days[site]:
             late = lateness(day, (group.earliest or 0, group.due, group.latest))
             if late is None:
                 continue
             if group.origins is None or site in group.origins:
                 key: tuple[object, ...] = (site, label, "out", None, date_of(day))
-                self._serve(group, self.node(site, "out", day), node, late=late, key=key)
+                self._serve(group, self.on(site, "out", day), node, late=late, key=key)
             for origin in made.received_from if made.apart else ():
-                name = self._id(origin)
+                name = self.id_of(origin)
                 received = self.place.get((site, on_day("received", date_of(day)), name))
                 if received is None:
                     continue
@@ -240,11 +212,7 @@ class _Build:
                     capacity=made.past,
                     handling=self._handling[site],
                 )
-        self.add("want", node, 0, minimum=group.wanted, capacity=group.wanted, key=())
-        if shortage:
-            rank = priorities.index(group.priority) + 1 if group.priority else 0
-            money = (group.shortage_cost or NO_MONEY) * self.step
-            self.add("short", 0, node, money=money, rank=rank, key=(site, label))
+        self.want(group, node)
 
     def _serve(  # noqa: PLR0913 - an arc has that many numbers
         self,
@@ -288,14 +256,10 @@ class _Build:
         tail, head = _looked_up(leaving, leaves), _looked_up(entering, enters)
         for position in np.flatnonzero(head < 0).tolist():
             key = int(entering[position])
-            origin = self._id(int(lanes.origin[rows[position]]))
+            origin = self.id_of(int(lanes.origin[rows[position]]))
             side = on_day("received", date_of(key % DAYS))
             head[position] = self.place[(key // DAYS, side, origin)]
         return tail, head
-
-    def _id(self, site: int | None) -> str | None:
-        """Return the id of a site, None for none."""
-        return None if site is None else self._network.sites[site].id
 
 
 def _looked_up(keys: IntArray, known: Mapping[int, int]) -> CodeArray:

@@ -1,16 +1,19 @@
 """The flow on every arc, as plan and certificate say it."""
 
 from collections.abc import Mapping, Sequence
-from typing import Any, NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
 from service.network.columns import Network
-from service.proof.arcs import Arc, ItemArcs
+from service.proof.arcs import ItemArcs
 from service.proof.calendar import Calendar, on_day
 from service.proof.exact import Positions, Whole, sums_at, whole
 from service.proof.numbers import numbers
 from service.proof.violations import Findings
+
+if TYPE_CHECKING:
+    from service.proof.arc_build import Arc
 
 
 def node_of(arcs: ItemArcs, entry: Mapping[str, Any], names: "Names") -> int | None:

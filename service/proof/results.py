@@ -8,7 +8,8 @@ import numpy as np
 
 from service.network.columns import IntArray, Network
 from service.network.units import per_unit
-from service.proof.arcs import NO_MONEY, Arc, ItemArcs
+from service.proof.arc_build import NO_MONEY, Arc
+from service.proof.arcs import ItemArcs
 from service.proof.exact import Whole
 from service.proof.groups import Wanted
 from service.proof.money import is_plain, unit_costs
