@@ -9,6 +9,7 @@ from typing import Any
 
 from service.network.column_bytes import NormalFormError
 from service.network.columns import NOTHING_MORE, Item, Pack, Site
+from service.network.normal_values import must
 from service.network.quantities import exact_text
 
 ROLES = frozenset({"warehouse", "cross_dock", "ship_to"})
@@ -83,7 +84,7 @@ def item_of(document: object) -> Item:
         fields = _object(pack, frozenset({"unit", "contains"}))
         packs.append(Pack(unit=_text(fields, "unit"), contains=_positive(fields, "contains")))
     units = [pack.unit.encode() for pack in packs]
-    _check(units == sorted(set(units)), "packs are not sorted and distinct")
+    must(units == sorted(set(units)), "packs are not sorted and distinct")
     return Item(
         id=_id(known),
         unit=_text(known, "unit"),
@@ -111,7 +112,7 @@ def site_of(document: object, items: frozenset[str]) -> Site:
     handling = known.get("handling_cost")
     by_item: dict[str, Fraction] = {}
     if isinstance(handling, dict):
-        _check(bool(handling) and set(handling) <= items, "handling of an unknown item")
+        must(bool(handling) and set(handling) <= items, "handling of an unknown item")
         by_item = {item: _decimal(handling, item) for item in sorted(handling)}
     return Site(
         id=_id(known),
@@ -141,17 +142,11 @@ _ROLES_OF = {
 }
 
 
-def _check(holds: bool, detail: str) -> None:  # noqa: FBT001 - reads like an assertion
-    """Raise ``NormalFormError`` with ``detail`` unless ``holds``."""
-    if not holds:
-        raise NormalFormError(detail)
-
-
 def _object(document: object, fields: frozenset[str]) -> Mapping[str, Any]:
     """Return ``document`` if it is an object of known fields."""
     if not isinstance(document, dict):
         raise NormalFormError("not an object")
-    _check(set(document) <= fields, "an unknown field in the head")
+    must(set(document) <= fields, "an unknown field in the head")
     return document
 
 
@@ -186,7 +181,7 @@ def _text_or_none(fields: Mapping[str, Any], key: str) -> str | None:
 def _id(fields: Mapping[str, Any]) -> str:
     """Return the id of an item or site."""
     value = _text(fields, "id")
-    _check(_ID.fullmatch(value) is not None, "an id is not 1 to 64 plain characters")
+    must(_ID.fullmatch(value) is not None, "an id is not 1 to 64 plain characters")
     return value
 
 
@@ -206,15 +201,15 @@ def _decimal_or_none(fields: Mapping[str, Any], key: str) -> Fraction | None:
 def _positive(fields: Mapping[str, Any], key: str) -> Fraction:
     """Return a decimal above 0."""
     value = _decimal(fields, key)
-    _check(value > 0, f"{key} is not above 0")
+    must(value > 0, f"{key} is not above 0")
     return value
 
 
 def _tags(fields: Mapping[str, Any]) -> tuple[str, ...]:
     """Return sorted, distinct tags."""
     tags = _list(fields, "tags")
-    _check(all(isinstance(tag, str) for tag in tags), "a tag is not text")
-    _check(tags == sorted(set(tags)), "tags are not sorted and distinct")
+    must(all(isinstance(tag, str) for tag in tags), "a tag is not text")
+    must(tags == sorted(set(tags)), "tags are not sorted and distinct")
     return tuple(tags)
 
 
@@ -225,5 +220,5 @@ def _texts_by_key(fields: Mapping[str, Any], key: str) -> dict[str, str]:
     value = fields[key]
     if not isinstance(value, dict) or not value:
         raise NormalFormError(f"{key} is not an object with members")
-    _check(all(isinstance(text, str) for text in value.values()), f"{key} holds more than text")
+    must(all(isinstance(text, str) for text in value.values()), f"{key} holds more than text")
     return dict(sorted(value.items()))

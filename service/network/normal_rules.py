@@ -2,11 +2,11 @@
 
 import re
 from collections.abc import Callable, Mapping
-from datetime import date
 from typing import Final
 
 from service.network.canonical_head import DECIMAL
 from service.network.column_bytes import NormalFormError
+from service.network.normal_values import is_date
 
 _SELECTORS: Final = {
     "lanes": frozenset({"ids", "origin", "destination", "carrier", "tag"}),
@@ -18,16 +18,6 @@ _DATE = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
 
 def _is_text(value: object) -> bool:
     return isinstance(value, str) and bool(value)
-
-
-def _is_date(value: object) -> bool:
-    if not isinstance(value, str) or not _DATE.fullmatch(value):
-        return False
-    try:
-        date.fromisoformat(value)
-    except ValueError:
-        return False
-    return True
 
 
 def _is_quantity(value: object) -> bool:
@@ -61,8 +51,8 @@ _COMMON: Final[_Checks] = {"rule": _is_text, "id": _is_text}
 _OPTIONAL: Final[_Checks] = {
     "note": lambda value: isinstance(value, str),
     "owner": lambda value: isinstance(value, str),
-    "from": _is_date,
-    "until": _is_date,
+    "from": is_date,
+    "until": is_date,
     "items": _is_selector("items"),
 }
 # What each rule needs, and what it may have, beside the common keys.

@@ -5,8 +5,9 @@ from fractions import Fraction
 import pytest
 
 from service.network.column_bytes import NormalFormError
-from service.network.normal_money import check_exchange_rates, decimal_of
+from service.network.normal_money import check_exchange_rates
 from service.network.normal_tariffs import check_tariffs
+from service.network.normal_values import decimal_of
 
 ODD = ["1/3", "4/2", "1.50", "01", "-0", "1e3", "+1", "", " 1", "NaN", None, 1, 0.5]
 
