@@ -6,9 +6,9 @@ in which it was sent. Everything numeric is exact: integers with one decimal exp
 """
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields, replace
 from fractions import Fraction
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -230,6 +230,29 @@ class DemandTable:
     def __len__(self) -> int:
         """Return the number of order lines."""
         return int(self.site.shape[0])
+
+
+_Table = TypeVar("_Table", SupplyTable, DemandTable, LaneTable)
+
+
+def rows_at(table: _Table, rows: IntArray) -> _Table:
+    """Return the rows of ``table`` at positions ``rows``, some perhaps several times.
+
+    Columns of texts keep all their values. For columns in their one spelling see ``rows_of`` in
+    ``table_rows.py``.
+    """
+    columns: dict[str, object] = {}
+    for one in fields(table):
+        column = getattr(table, one.name)
+        if isinstance(column, Texts):
+            columns[one.name] = replace(column, codes=column.codes[rows])
+        elif isinstance(column, Decimals):
+            columns[one.name] = replace(
+                column, values=column.values[rows], present=column.present[rows]
+            )
+        else:
+            columns[one.name] = column[rows]
+    return replace(table, **columns)  # type: ignore[arg-type] # each of its field's own type
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

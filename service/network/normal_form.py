@@ -27,6 +27,7 @@ from service.network.columns import (
     Site,
     SupplyTable,
     Texts,
+    rows_at,
 )
 from service.network.lane_keys import LaneKeys
 from service.network.money import factors
@@ -253,17 +254,4 @@ def _without_zeros(column: Decimals) -> Decimals:
 
 def _in_order(table: _Table, order: IntArray) -> _Table:
     """Return the rows of ``table`` in ``order``."""
-    if np.array_equal(order, np.arange(len(table))):
-        return table
-    changed: dict[str, object] = {}
-    for field in fields(table):
-        column = getattr(table, field.name)
-        if isinstance(column, Texts):
-            changed[field.name] = replace(column, codes=column.codes[order])
-        elif isinstance(column, Decimals):
-            changed[field.name] = replace(
-                column, values=column.values[order], present=column.present[order]
-            )
-        else:
-            changed[field.name] = column[order]
-    return replace(table, **changed)  # type: ignore[arg-type] # each of its field's own type
+    return table if np.array_equal(order, np.arange(len(table))) else rows_at(table, order)

@@ -5,13 +5,13 @@ movements are the lanes of the network, so that each day is counted by itself.
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, replace
 from datetime import UTC, date, datetime
 from typing import Any
 
 import numpy as np
 
-from service.network.columns import BoolArray, Decimals, IntArray, LaneTable, Network, Texts
+from service.network.columns import BoolArray, IntArray, Network, rows_at
 from service.network.naming import lane_names, lane_rows
 
 
@@ -125,7 +125,7 @@ def calendar_of(network: Network) -> Calendar:
     same = np.array_equal(lane, np.arange(len(lanes)))
     return Calendar(
         stated=network,
-        network=network if same else replace(network, lanes=_taken(lanes, lane)),
+        network=network if same else replace(network, lanes=rows_at(lanes, lane)),
         lane=lane,
         departs=departs,
         arrives=arrives,
@@ -269,19 +269,3 @@ def _instant(text: str) -> tuple[datetime, str]:
     zone = rest[len(digits) :]
     at = datetime.fromisoformat(whole + zone)
     return at.astimezone(UTC), digits
-
-
-def _taken(lanes: LaneTable, rows: IntArray) -> LaneTable:
-    """Return the rows of a table, some of them several times."""
-    columns: dict[str, Any] = {}
-    for field in fields(lanes):
-        column = getattr(lanes, field.name)
-        if isinstance(column, Texts):
-            columns[field.name] = replace(column, codes=column.codes[rows])
-        elif isinstance(column, Decimals):
-            columns[field.name] = replace(
-                column, values=column.values[rows], present=column.present[rows]
-            )
-        else:
-            columns[field.name] = column[rows]
-    return LaneTable(**columns)
