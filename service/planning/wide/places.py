@@ -75,6 +75,10 @@ class Places:
             or (outer & (reduced > 0) & core.can_give_up(flow)).any()
         )
 
+    def some_out_of_reach(self) -> bool:
+        """Return whether something is wanted where neither stock nor lanes can bring it."""
+        return bool((self.ends & ~self.enters & (self.fixed > 0)).any())
+
     def offers(self) -> tuple[IntArray, Offers]:
         """Return the places with stock, and what is offered there."""
         given = np.flatnonzero((self.core.tail == ROOT) & ~self.short & (self.core.head != ROOT))

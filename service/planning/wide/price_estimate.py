@@ -35,12 +35,12 @@ class Estimator:
         """Look at the stock; ``capacity`` is that of every lane."""
         self._blocks, self._capacity = blocks, capacity
         self._limited = bool((capacity != UNLIMITED).any())
-        self._wishes = places.wishes()
+        self.wishes = places.wishes()
         self.stock, self.offers = places.offers()
-        self._level = _scarce_level(self._wishes, self.offers)
-        self.tight = bool(
-            self.offers.steps.sum() < TIGHT * max(1.0, float(self._wishes.wanted.sum()))
-        )
+        self._level = _scarce_level(self.wishes, self.offers)
+        # How many times over all that is wanted is there.
+        self.spare = float(self.offers.steps.sum()) / max(1.0, float(self.wishes.wanted.sum()))
+        self.tight = self.spare < TIGHT
         self._upstream = Upstream(places, self.stock, blocks)
 
     def cold(self) -> FloatArray:
@@ -133,9 +133,9 @@ class Estimator:
         absent = nearest.absent | ~np.isfinite(landed[nearest.tails])
         column = np.full(landed.shape[0], -1)
         column[nearest.ends[~absent.all(axis=0)]] = np.flatnonzero(~absent.all(axis=0))
-        wishes = np.flatnonzero(column[self._wishes.place] >= 0)
-        wanting = column[self._wishes.place[wishes]]
-        wanted = self._wishes.wanted[wishes].astype(np.float32)
+        wishes = np.flatnonzero(column[self.wishes.place] >= 0)
+        wanting = column[self.wishes.place[wishes]]
+        wanted = self.wishes.wanted[wishes].astype(np.float32)
         lanes, tails = nearest.lanes[:, wanting], nearest.tails[:, wanting]
         absent = absent[:, wanting]
         source = source[tails]
@@ -145,7 +145,7 @@ class Estimator:
             capacity = self._capacity[lanes]
             room = np.where(capacity == UNLIMITED, np.inf, capacity / wanted).astype(np.float32)
         # A sample stands for all.
-        wanted *= np.float32(self._wishes.wanted.sum() / max(1.0, float(wanted.sum())))
+        wanted *= np.float32(self.wishes.wanted.sum() / max(1.0, float(wanted.sum())))
         cost = np.where(absent, FAR, between)
         if self._level is None:
             choices = Choices(source=source, cost=cost.astype(np.float32), wanted=wanted, room=room)
@@ -154,7 +154,7 @@ class Estimator:
             Choices(source=source, cost=cost.astype(np.float64), wanted=wanted, room=room),
             self.offers,
             price,
-            short=np.minimum(self._wishes.short[wishes], FAR),
+            short=np.minimum(self.wishes.short[wishes], FAR),
         )
 
 

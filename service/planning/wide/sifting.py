@@ -15,6 +15,7 @@ from service.network.columns import IntArray
 from service.planning.model.arcs import UNLIMITED, largest
 from service.planning.model.limits import NoFlowError, NumbersTooLargeError
 from service.planning.wide.nearest_lanes import Nearest
+from service.planning.wide.places import Wishes
 from service.planning.wide.price_estimate import Estimator, spread
 from service.planning.wide.scarcity_prices import FloatArray
 from service.planning.wide.shortlist import Shortlist, solve_shortlist
@@ -67,21 +68,34 @@ def sift(
     assert found is not None  # noqa: S101 - only warm prices can be refused
     stock, nearest = found
     lanes_each = TIGHT_LANES if estimator.tight else LISTED_LANES
-    first = _first_list(sieve, nearest, estimator.places(stock), lanes_each=lanes_each)
+    most = _dearest_short(estimator.wishes, nodes=sieve.places.nodes)
+    first = _first_list(sieve, nearest, estimator.places(stock), most=most, lanes_each=lanes_each)
     price, near, listed = first
+    shortage = estimator.spare < 1 or sieve.places.some_out_of_reach()
     try:
-        return _rounds(sieve, sieve.shortlist(listed), price, near=near, seen=seen)
+        return _rounds(
+            sieve, sieve.shortlist(listed), price, near=near, shortage=shortage, seen=seen
+        )
     except (NoFlowError, NumbersTooLargeError):
         # Of a shortlist this says little; the full solve says it of the network, or does not.
         return None
 
 
-def _rounds(
-    sieve: Sieve, shortlist: Shortlist, price: IntArray, *, near: int, seen: RoundSeen | None
+def _rounds(  # noqa: PLR0913 - where the rounds begin
+    sieve: Sieve,
+    shortlist: Shortlist,
+    price: IntArray,
+    *,
+    near: int,
+    shortage: bool,
+    seen: RoundSeen | None,
 ) -> Sifted | None:
-    """Solve shortlists until no lane and no shortage would lower the cost."""
+    """Solve shortlists until no lane and no shortage would lower the cost.
+
+    With ``shortage`` some of what is wanted must be short, whatever the prices.
+    """
     places = sieve.places
-    reach, shortage = max(1, REACH * near), _must_be_short(sieve)
+    reach = max(1, REACH * near)
     dearest = largest(sieve.arcs.cost[: sieve.lane_count])
     for number in range(1, ROUNDS_MAX + 1):
         solved = solve_shortlist(shortlist, places, price=price, reach=reach, shortage=shortage)
@@ -114,23 +128,14 @@ def _rounds(
     return None
 
 
-def _spare(sieve: Sieve) -> float:
-    """Return how many times over all that is wanted is there."""
-    _, offers = sieve.places.offers()
-    return float(offers.steps.sum()) / max(1.0, float(sieve.places.fixed.sum()))
-
-
-def _must_be_short(sieve: Sieve) -> bool:
-    """Return whether stock or lanes cannot suffice, whatever the prices."""
-    places = sieve.places
-    return _spare(sieve) < 1 or bool((places.ends & ~places.enters & (places.fixed > 0)).any())
-
-
 def _first_list(
-    sieve: Sieve, nearest: Nearest, price: IntArray, *, lanes_each: float
+    sieve: Sieve, nearest: Nearest, price: IntArray, *, most: IntArray, lanes_each: float
 ) -> tuple[IntArray, int, IntArray]:
-    """Return prices of all places, how near a lane must be to be listed, and the lanes that are."""
-    level = np.minimum(_levels(sieve, nearest, price), _dearest_short(sieve)[nearest.ends])
+    """Return prices of all places, how near a lane must be to be listed, and the lanes that are.
+
+    ``most`` is, by place, what goods may be worth at most.
+    """
+    level = np.minimum(_levels(sieve, nearest, price), most[nearest.ends])
     leaves = sieve.places.leaves[nearest.ends]
     price = price.copy()
     price[nearest.ends[~leaves]] = level[~leaves]
@@ -145,10 +150,9 @@ def _first_list(
     return price, near, lanes if lanes.shape[0] <= 2 * listed.shape[0] else listed
 
 
-def _dearest_short(sieve: Sieve) -> IntArray:
+def _dearest_short(wishes: Wishes, *, nodes: int) -> IntArray:
     """Return, by place, the most that a step short of what is wanted there would cost."""
-    wishes = sieve.places.wishes()
-    dearest = np.full(sieve.places.nodes, -np.inf)
+    dearest = np.full(nodes, -np.inf)
     np.maximum.at(dearest, wishes.place, wishes.short)
     most = np.iinfo(np.int64).max // 4
     level: IntArray = np.where(np.isfinite(dearest), dearest, most).astype(np.int64)
