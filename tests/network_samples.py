@@ -2,7 +2,7 @@
 
 import copy
 import json
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -147,6 +147,21 @@ def check(
 def found(report: IntakeReport) -> list[tuple[str, str]]:
     """Return place and code of each fault."""
     return [(fault.pointer, fault.code) for fault in report.faults]
+
+
+def found_after(change: Callable[[dict[str, Any]], None], folder: Path) -> list[tuple[str, str]]:
+    """Return place and code of each fault of the sound network after a change."""
+    document = sound()
+    change(document)
+    return found(check(document, folder))
+
+
+def digest(document: dict[str, Any], folder: Path) -> str:
+    """Return the digest of a sound network."""
+    folder.mkdir(exist_ok=True)
+    report = check(document, folder)
+    assert report.summary is not None, found(report)
+    return str(report.summary["network_digest"])
 
 
 def doubted(report: IntakeReport) -> dict[str, Any]:

@@ -8,7 +8,7 @@ from typing import Any
 import pytest
 
 from service.network.canonical import read_network
-from tests.network_samples import check, found, sound
+from tests.network_samples import check, digest, found, found_after, sound
 
 Change = Callable[[dict[str, Any]], None]
 RATE: dict[str, Any] = {"currency": "NOK", "rate": "0.0873", "as_of": "2026-02-02"}
@@ -78,20 +78,7 @@ def test_each_fault_of_money_has_its_place(
     change: Change, place: str, code: str, tmp_path: Path
 ) -> None:
     """One change at a time, and one fault for it; no code: the network stays sound."""
-    document = sound()
-    change(document)
-
-    report = check(document, tmp_path)
-
-    assert found(report) == ([(place, code)] if code else [])
-
-
-def digest(document: dict[str, Any], folder: Path) -> str:
-    """Return the digest of a sound network."""
-    folder.mkdir(exist_ok=True)
-    report = check(document, folder)
-    assert report.summary is not None, found(report)
-    return str(report.summary["network_digest"])
+    assert found_after(change, tmp_path) == ([(place, code)] if code else [])
 
 
 def test_one_network_has_one_digest_however_its_money_is_written(tmp_path: Path) -> None:

@@ -8,7 +8,7 @@ from typing import Any
 import pytest
 
 from service.network.canonical import read_network
-from tests.network_samples import check, found, sound
+from tests.network_samples import check, digest, found, found_after, sound
 
 Change = Callable[[dict[str, Any]], None]
 BREAKS = [{"from": "0", "rate": "0.4"}, {"from": "100", "rate": "0.5"}]
@@ -113,12 +113,7 @@ def test_each_fault_of_a_tariff_has_its_place(
     change: Change, place: str, code: str, tmp_path: Path
 ) -> None:
     """One change at a time, and one fault for it; no code: the network stays sound."""
-    document = sound()
-    change(document)
-
-    report = check(document, tmp_path)
-
-    assert found(report) == ([(place, code)] if code else [])
+    assert found_after(change, tmp_path) == ([(place, code)] if code else [])
 
 
 def test_a_faulty_version_of_a_tariff_is_reported_once(tmp_path: Path) -> None:
@@ -170,14 +165,6 @@ def test_a_lane_by_the_tariff_of_another_carrier_is_doubted(tmp_path: Path) -> N
     summary: Any = report.summary
     codes = {caution["code"] for caution in summary["cautions"]}
     assert "tariff_of_another_carrier" in codes
-
-
-def digest(document: dict[str, Any], folder: Path) -> str:
-    """Return the digest of a sound network."""
-    folder.mkdir(exist_ok=True)
-    report = check(document, folder)
-    assert report.summary is not None, found(report)
-    return str(report.summary["network_digest"])
 
 
 def test_what_a_tariff_says_by_default_is_unsaid(tmp_path: Path) -> None:
