@@ -8,13 +8,17 @@ A seen in print or in a test suite, B recalled from memory and reproduced, C com
 """
 
 import gzip
+import json
 from fractions import Fraction
 from pathlib import Path
 from typing import NamedTuple
 
 import pytest
 
+from service.planning.solve import solve_item
+from service.planning.wide import sifting
 from tests.factories import Arc, Document, flow_network, plan_network
+from tests.unit.planning.routing import Seen, compiled, documents
 
 DATA = Path(__file__).parent / "data"
 
@@ -82,3 +86,22 @@ def test_least_cost_equals_the_known_optimum(case: Instance) -> None:
     assert planned.total_cost == case.optimum
     assert planned.gap == 0
     assert all(Fraction(use["left"]) == 0 for use in planned.plan["site_use"])
+
+
+@pytest.mark.parametrize("case", INSTANCES, ids=lambda case: case.name)
+def test_short_lists_end_with_the_known_optimum_after_some_rounds(
+    case: Instance, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Two arcs a node are too few at first; without the full solve they become enough."""
+    for name in ("LISTED_LANES", "TIGHT_LANES"):
+        monkeypatch.setattr(sifting, name, 2.2)
+    seen = Seen()
+    made, _ = compiled(netgen_document(case))
+
+    flows = [solve_item(made.network, own, front=seen.front()) for own in made.items]
+
+    plan, certificate = (json.loads(document) for document in documents(made, flows))
+    assert plan["shortages"] == []
+    assert Fraction(certificate["total_cost"]) == case.optimum
+    assert seen.sifted == [True]
+    assert len(seen.rounds) > 2
